@@ -1,0 +1,18 @@
+//! Progress and notices as values: library code reports, only the console prints.
+
+/// What a run tells whoever watches it. Every method does nothing by default.
+pub trait Observe: Sync {
+    /// A stage begins; `total` counts the units (planes) it will go through.
+    fn stage(&self, _name: &str, _total: u64) {}
+    /// `units` more are done.
+    fn advance(&self, _units: u64) {}
+    /// The current stage is over.
+    fn done(&self) {}
+    /// Something the user should know; also kept in the results.
+    fn warning(&self, _text: &str) {}
+}
+
+/// Watches nothing.
+pub struct Silent;
+
+impl Observe for Silent {}

@@ -1,0 +1,61 @@
+//! The only file that names the thread library: fixed-order maps over work items, and the pool they run in.
+
+use rayon::prelude::*;
+
+use crate::base::error::{Error, Result};
+
+/// A thread pool of a settled size. Everything inside [`Pool::run`] uses its threads.
+pub struct Pool(rayon::ThreadPool);
+
+impl Pool {
+    /// `threads` = 0 takes one per available core.
+    ///
+    /// # Errors
+    /// `Internal` when the system refuses to start threads.
+    pub fn new(threads: usize) -> Result<Pool> {
+        rayon::ThreadPoolBuilder::new()
+            .num_threads(threads)
+            .thread_name(|i| format!("ropewalk-{i}"))
+            .build()
+            .map(Pool)
+            .map_err(|e| Error::internal("cannot start worker threads").found(e.to_string()))
+    }
+
+    /// Runs `f` inside the pool.
+    pub fn run<R: Send>(&self, f: impl FnOnce() -> R + Send) -> R {
+        self.0.install(f)
+    }
+
+    /// Number of threads.
+    pub fn threads(&self) -> usize {
+        self.0.current_num_threads()
+    }
+}
+
+/// Maps every item; results come back in item order whatever the number of threads.
+pub fn map<T: Sync, R: Send>(items: &[T], f: impl Fn(usize, &T) -> R + Sync + Send) -> Vec<R> {
+    items.par_iter().enumerate().with_max_len(1).map(|(i, t)| f(i, t)).collect()
+}
+
+/// Maps the indices `0..n`; results come back in index order.
+pub fn map_range<R: Send>(n: usize, f: impl Fn(usize) -> R + Sync + Send) -> Vec<R> {
+    (0..n).into_par_iter().with_max_len(1).map(f).collect()
+}
+
+/// Consumes and maps every item; results come back in item order.
+pub fn map_owned<T: Send, R: Send>(items: Vec<T>, f: impl Fn(usize, T) -> R + Sync + Send) -> Vec<R> {
+    items.into_par_iter().enumerate().with_max_len(1).map(|(i, t)| f(i, t)).collect()
+}
+
+/// Calls `f(chunk index, chunk)` on consecutive chunks of `size` items (the last may be shorter).
+///
+/// # Panics
+/// When `size` is 0.
+pub fn for_chunks<T: Send>(data: &mut [T], size: usize, f: impl Fn(usize, &mut [T]) + Sync + Send) {
+    data.par_chunks_mut(size).enumerate().for_each(|(i, c)| f(i, c));
+}
+
+/// Runs two closures, at the same time when threads allow.
+pub fn join<A: Send, B: Send>(a: impl FnOnce() -> A + Send, b: impl FnOnce() -> B + Send) -> (A, B) {
+    rayon::join(a, b)
+}

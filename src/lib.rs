@@ -1,0 +1,5 @@
+//! Catalogues of coherent structures from gridded turbulence snapshots.
+
+pub mod base;
+pub mod model;
+pub mod space;

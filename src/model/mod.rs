@@ -1,0 +1,3 @@
+//! Height 4: plain data the stages exchange; no input or output.
+
+pub mod source;

@@ -1,0 +1,159 @@
+//! Where planes come from: files, memory or formulas, all behind one trait that nobody downstream looks behind.
+
+use crate::base::error::Result;
+use crate::base::real::Real;
+use crate::space::grid::Grid;
+
+/// Which fields a snapshot carries. Components are always ordered u, v, w, then bx, by, bz.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Fields {
+    /// Velocity present.
+    pub velocity: bool,
+    /// Magnetic field present.
+    pub magnetic: bool,
+}
+
+impl Fields {
+    /// Number of scalar components: 3 or 6.
+    pub fn components(self) -> usize {
+        3 * (usize::from(self.velocity) + usize::from(self.magnetic))
+    }
+}
+
+/// A snapshot as a supplier of z-planes.
+pub trait PlaneSource<T: Real>: Send {
+    /// The grid.
+    fn grid(&self) -> &Grid;
+
+    /// The fields.
+    fn fields(&self) -> Fields;
+
+    /// Reads the planes `z0..z1` of every component.
+    ///
+    /// `out` has one slice a component, each `(z1 - z0) * ny * nx` long, filled z slowest and x fastest.
+    ///
+    /// # Errors
+    /// `Input` when the file cannot be read.
+    ///
+    /// # Panics
+    /// When `z1` exceeds the number of planes or a slice has another length.
+    fn read(&mut self, z0: usize, z1: usize, out: &mut [&mut [T]]) -> Result<()>;
+
+    /// Planes that are cheapest to read together (the chunk depth of a chunked file), 1 where it does not matter.
+    fn natural_planes(&self) -> usize {
+        1
+    }
+
+    /// Whether every read costs much more than copying memory (decompression, transposition).
+    fn is_costly(&self) -> bool {
+        false
+    }
+}
+
+/// A source of either precision.
+pub enum AnySource {
+    /// Single precision.
+    F32(Box<dyn PlaneSource<f32>>),
+    /// Double precision.
+    F64(Box<dyn PlaneSource<f64>>),
+}
+
+impl AnySource {
+    /// The grid.
+    pub fn grid(&self) -> &Grid {
+        match self {
+            AnySource::F32(s) => s.grid(),
+            AnySource::F64(s) => s.grid(),
+        }
+    }
+
+    /// The fields.
+    pub fn fields(&self) -> Fields {
+        match self {
+            AnySource::F32(s) => s.fields(),
+            AnySource::F64(s) => s.fields(),
+        }
+    }
+}
+
+/// Whole components in memory.
+pub struct MemorySource<T> {
+    grid: Grid,
+    fields: Fields,
+    components: Vec<Vec<T>>,
+}
+
+impl<T: Real> MemorySource<T> {
+    /// Components in the order u, v, w, bx, by, bz (those present), each `nz * ny * nx` long, x fastest.
+    ///
+    /// # Panics
+    /// When the number of components or a length does not fit.
+    pub fn new(grid: Grid, fields: Fields, components: Vec<Vec<T>>) -> Self {
+        assert_eq!(components.len(), fields.components(), "number of components");
+        for c in &components {
+            assert_eq!(c.len() as u64, grid.cells(), "cells of a component");
+        }
+        MemorySource { grid, fields, components }
+    }
+}
+
+impl<T: Real> PlaneSource<T> for MemorySource<T> {
+    fn grid(&self) -> &Grid {
+        &self.grid
+    }
+
+    fn fields(&self) -> Fields {
+        self.fields
+    }
+
+    fn read(&mut self, z0: usize, z1: usize, out: &mut [&mut [T]]) -> Result<()> {
+        let p = self.grid.plane_cells();
+        for (c, o) in self.components.iter().zip(out) {
+            o.copy_from_slice(&c[z0 * p..z1 * p]);
+        }
+        Ok(())
+    }
+}
+
+/// Values computed from a formula when asked for: `f(x, y, z)` in physical coordinates returns all components.
+pub struct FormulaSource<F> {
+    grid: Grid,
+    fields: Fields,
+    formula: F,
+}
+
+impl<F: Fn([f64; 3]) -> [f64; 6] + Sync + Send> FormulaSource<F> {
+    /// The formula returns u, v, w, bx, by, bz; only the fields present are used, and a snapshot of b alone takes the last three.
+    pub fn new(grid: Grid, fields: Fields, formula: F) -> Self {
+        FormulaSource { grid, fields, formula }
+    }
+}
+
+impl<T: Real, F: Fn([f64; 3]) -> [f64; 6] + Sync + Send> PlaneSource<T> for FormulaSource<F> {
+    fn grid(&self) -> &Grid {
+        &self.grid
+    }
+
+    fn fields(&self) -> Fields {
+        self.fields
+    }
+
+    fn read(&mut self, z0: usize, z1: usize, out: &mut [&mut [T]]) -> Result<()> {
+        let g = &self.grid;
+        let first = if self.fields.velocity { 0 } else { 3 };
+        let mut i = 0;
+        for z in z0..z1 {
+            for y in 0..g.n[1] {
+                for x in 0..g.n[0] {
+                    let p = [g.position(0, x as f64), g.position(1, y as f64), g.position(2, z as f64)];
+                    let v = (self.formula)(p);
+                    for (c, o) in out.iter_mut().enumerate() {
+                        o[i] = T::of(v[first + c]);
+                    }
+                    i += 1;
+                }
+            }
+        }
+        Ok(())
+    }
+}

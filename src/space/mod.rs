@@ -1,0 +1,5 @@
+//! Height 1: containers that live in the box.
+
+pub mod grid;
+pub mod mesh;
+pub mod patch;
