@@ -1,3 +1,4 @@
 //! Height 4: plain data the stages exchange; no input or output.
 
+pub mod request;
 pub mod source;

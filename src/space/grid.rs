@@ -19,12 +19,7 @@ pub struct Grid {
 impl Grid {
     /// A periodic grid of `n` samples over a box of the given lengths, first sample at 0.
     pub fn periodic(n: [usize; 3], lengths: [f64; 3]) -> Grid {
-        Grid {
-            n,
-            spacing: std::array::from_fn(|a| lengths[a] / n[a] as f64),
-            origin: [0.0; 3],
-            periodic: [true; 3],
-        }
+        Grid { n, spacing: std::array::from_fn(|a| lengths[a] / n[a] as f64), origin: [0.0; 3], periodic: [true; 3] }
     }
 
     /// The same grid with the given axes periodic.

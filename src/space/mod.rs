@@ -3,3 +3,5 @@
 pub mod grid;
 pub mod mesh;
 pub mod patch;
+pub mod runs;
+pub mod slab;
