@@ -1,6 +1,9 @@
 //! Catalogues of coherent structures from gridded turbulence snapshots.
 
 pub mod base;
+pub mod derive;
+pub mod detect;
 pub mod math;
 pub mod model;
 pub mod space;
+pub mod survey;

@@ -97,13 +97,10 @@ impl Cosine {
     pub fn add<T: Real>(&mut self, row: &[T]) {
         // Slot 20 takes undefined cells; two tables keep successive increments independent.
         let mut slots = [[0u32; COSINE_BINS + 1]; 2];
-        let (one, ten) = (T::of(1.0), T::of(10.0));
         for part in row.chunks(1 << 14) {
             let (mut sum, mut abs_sum, mut aligned) = (0i64, 0i64, 0u32);
             for (i, &c) in part.iter().enumerate() {
-                let defined = c == c;
-                let bin = (((c + one) * ten).wide() as i32).clamp(0, COSINE_BINS as i32 - 1) as usize;
-                slots[i & 1][if defined { bin } else { COSINE_BINS }] += 1;
+                slots[i & 1][slot(c)] += 1;
                 let fixed = (c.wide() * COSINE_SCALE) as i64;
                 sum += fixed;
                 abs_sum += fixed.abs();
@@ -117,6 +114,21 @@ impl Cosine {
             let n = u64::from(slots[0][b]) + u64::from(slots[1][b]);
             self.bins[b] += n;
             self.defined += n;
+        }
+    }
+
+    /// As [`Cosine::add`] for a handful of cells, without its tables.
+    pub fn add_few<T: Real>(&mut self, row: &[T]) {
+        for &c in row {
+            let slot = slot(c);
+            if slot < COSINE_BINS {
+                self.bins[slot] += 1;
+                self.defined += 1;
+                let fixed = (c.wide() * COSINE_SCALE) as i64;
+                self.sum += i128::from(fixed);
+                self.abs_sum += i128::from(fixed.abs());
+                self.aligned += u64::from(c.abs().wide() > 0.9);
+            }
         }
     }
 
@@ -157,6 +169,13 @@ impl Cosine {
     pub fn aligned_share(&self) -> Option<f64> {
         (self.defined > 0).then(|| self.aligned as f64 / self.defined as f64)
     }
+}
+
+/// Bin of a cosine, one past the last bin where it is undefined. Round-off beyond +-1 stays in the outer bins.
+#[inline(always)]
+fn slot<T: Real>(c: T) -> usize {
+    let bin = (((c + T::of(1.0)) * T::of(10.0)).wide() as i32).clamp(0, COSINE_BINS as i32 - 1) as usize;
+    if c == c { bin } else { COSINE_BINS }
 }
 
 /// Bits of the mantissa a [`Quantiles`] bin keeps: bins are 2^-12 of the value wide.

@@ -1,4 +1,8 @@
 //! Height 4: plain data the stages exchange; no input or output.
 
+pub mod columns;
+pub mod object;
 pub mod request;
+pub mod rows;
 pub mod source;
+pub mod statistics;

@@ -1,0 +1,7 @@
+//! From derived rows to objects: runs of cells beyond a level, joined into components, across tiles, blocks and periodic faces.
+
+mod components;
+mod tile;
+
+pub use components::Labeller;
+pub use tile::{Criterion, TileSweep};

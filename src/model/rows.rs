@@ -1,0 +1,62 @@
+//! Derived quantities of one row of cells: filled by the derive stage, read by every stage behind it.
+
+/// What has to be derived for a pass.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+pub struct Need {
+    /// The difference between order 6 and 8 in the divergence, a measure of the truncation error.
+    pub truncation: bool,
+    /// Cosines and squared cross products.
+    pub alignment: bool,
+}
+
+/// Derived quantities of the cells of one row, each `nx` long. Vectors have one array a component (x, y, z).
+///
+/// Arrays of a field that is not there stay empty.
+#[derive(Debug, Clone, Default)]
+pub struct Rows<T> {
+    /// Velocity in the chosen frame.
+    pub u: [Vec<T>; 3],
+    /// Vorticity ∇×u.
+    pub w: [Vec<T>; 3],
+    /// |ω|².
+    pub w2: Vec<T>,
+    /// S:S.
+    pub strain2: Vec<T>,
+    /// ∇·u.
+    pub div_u: Vec<T>,
+    /// Order 8 minus order 6 of ∇·u.
+    pub div_u_miss: Vec<T>,
+    /// Magnetic field.
+    pub b: [Vec<T>; 3],
+    /// Current density ∇×b.
+    pub j: [Vec<T>; 3],
+    /// |j|².
+    pub j2: Vec<T>,
+    /// ∇·b.
+    pub div_b: Vec<T>,
+    /// Order 8 minus order 6 of ∇·b.
+    pub div_b_miss: Vec<T>,
+    /// cos(u, ω), NaN where undefined.
+    pub cos_uw: Vec<T>,
+    /// cos(j, b), NaN where undefined.
+    pub cos_jb: Vec<T>,
+    /// cos(u, b), NaN where undefined.
+    pub cos_ub: Vec<T>,
+    /// |u×ω|².
+    pub lamb2: Vec<T>,
+    /// |u|²|ω|².
+    pub u2w2: Vec<T>,
+    /// |j×b|².
+    pub lorentz2: Vec<T>,
+    /// |j|²|b|².
+    pub j2b2: Vec<T>,
+    /// Indicators, one array a family.
+    pub indicators: Vec<Vec<T>>,
+}
+
+impl<T> Rows<T> {
+    /// The cosines in the order of [`crate::model::object::COSINES`].
+    pub fn cosines(&self) -> [&[T]; 3] {
+        [&self.cos_uw, &self.cos_jb, &self.cos_ub]
+    }
+}

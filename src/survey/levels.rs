@@ -1,0 +1,61 @@
+//! From the level a user asked for to a number, and whether a divergence is more than truncation explains.
+
+use crate::base::real::Real;
+use crate::model::request::{Family, Level, Side};
+use crate::model::statistics::{GradientStats, IndicatorStats};
+
+/// The absolute level of a family, rounded to the storage precision so that later comparisons are exact.
+///
+/// `rms` is the root of the box mean of the squared indicator (for vectors: of the squared magnitude); `volume` is read from
+/// counts whose bins are a relative 2^-12 wide.
+pub fn absolute<T: Real>(family: &Family, stats: &IndicatorStats, cells: u64) -> f64 {
+    let n = cells as f64;
+    let level = match family.level {
+        Level::Absolute(v) => v,
+        Level::Rms(v) => v * (stats.square_sum / n).sqrt(),
+        Level::Mean(v) => v * stats.sum / n,
+        Level::Volume(fraction) => stats.quantiles.as_ref().map_or(f64::NAN, |q| {
+            q.level_above(match family.side {
+                Side::Above => fraction,
+                Side::Below => 1.0 - fraction,
+            })
+        }),
+    };
+    T::of(level).wide()
+}
+
+/// Divergence of a field against its curl, and what the derivative scheme explains of it.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Divergence {
+    /// rms(div) / rms(curl); missing where the curl vanishes.
+    pub ratio: Option<f64>,
+    /// The largest ratio that truncation and round-off explain.
+    pub explained: Option<f64>,
+}
+
+impl Divergence {
+    /// Whether the field's divergence is larger than the scheme explains.
+    pub fn is_suspicious(&self) -> bool {
+        matches!((self.ratio, self.explained), (Some(r), Some(e)) if r > e)
+    }
+}
+
+/// How many times the difference between order 6 and 8 still counts as truncation. The error of order 8 stays below
+/// three times that difference up to wavenumber 2.2 / spacing, beyond the two-thirds limit 2.09 (from the modified
+/// wavenumbers of the two stencils).
+const TRUNCATION_FACTOR: f64 = 3.0;
+
+/// Round-off of a derivative in units of `EPSILON * rms / spacing`.
+const ROUND_OFF_FACTOR: f64 = 8.0;
+
+/// Judges a field's divergence. `rms` is the field's own rms, `spacing` the smallest one.
+pub fn divergence<T: Real>(g: &GradientStats, cells: u64, rms: f64, spacing: f64) -> Divergence {
+    let curl = (g.curl2 / cells as f64).sqrt();
+    if curl == 0.0 || g.sampled == 0 {
+        return Divergence { ratio: None, explained: None };
+    }
+    let div = (g.div2 / cells as f64).sqrt();
+    let miss = (g.div_miss2 / g.sampled as f64).sqrt();
+    let floor = ROUND_OFF_FACTOR * T::EPSILON * rms / spacing;
+    Divergence { ratio: Some(div / curl), explained: Some((TRUNCATION_FACTOR * miss + floor) / curl) }
+}

@@ -1,0 +1,6 @@
+//! Statistics of the whole box in streaming form: what planes hold, gradient sums, indicator sums, levels, alignment.
+
+pub mod box_alignment;
+pub mod levels;
+pub mod moments;
+pub mod scan;
