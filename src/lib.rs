@@ -5,5 +5,6 @@ pub mod derive;
 pub mod detect;
 pub mod math;
 pub mod model;
+pub mod run;
 pub mod space;
 pub mod survey;

@@ -59,3 +59,23 @@ pub fn for_chunks<T: Send>(data: &mut [T], size: usize, f: impl Fn(usize, &mut [
 pub fn join<A: Send, B: Send>(a: impl FnOnce() -> A + Send, b: impl FnOnce() -> B + Send) -> (A, B) {
     rayon::join(a, b)
 }
+
+/// Calls `next` on a thread of its own until it returns `None`, at most `depth` items ahead of `each`, which runs here
+/// and ends the work early by returning `false`.
+pub fn read_ahead<T: Send>(depth: usize, mut next: impl FnMut() -> Option<T> + Send, mut each: impl FnMut(T) -> bool) {
+    std::thread::scope(|scope| {
+        let (send, receive) = std::sync::mpsc::sync_channel(depth);
+        scope.spawn(move || {
+            while let Some(item) = next() {
+                if send.send(item).is_err() {
+                    break;
+                }
+            }
+        });
+        for item in receive {
+            if !each(item) {
+                break;
+            }
+        }
+    });
+}

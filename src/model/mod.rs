@@ -6,3 +6,4 @@ pub mod request;
 pub mod rows;
 pub mod source;
 pub mod statistics;
+pub mod surface;

@@ -1,7 +1,6 @@
 //! Height 1: containers that live in the box.
 
 pub mod grid;
-pub mod mesh;
 pub mod patch;
 pub mod runs;
 pub mod slab;

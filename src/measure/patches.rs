@@ -1,0 +1,207 @@
+//! The shape pass: patches open when their first plane arrives, take the fields they carry from derived rows, and close
+//! when their last plane has arrived.
+
+use std::ops::Range;
+use std::sync::{Mutex, PoisonError};
+
+use crate::base::par;
+use crate::base::real::Real;
+use crate::model::object::Object;
+use crate::model::request::Side;
+use crate::model::rows::Rows;
+use crate::model::source::Fields;
+use crate::space::grid::Grid;
+use crate::space::patch::{PatchShape, Segment};
+
+/// Cells of margin around an object that its surface needs.
+const MARGIN: usize = 1;
+
+/// A complete patch: the stored cells of one object with their fields.
+pub struct Patch<T> {
+    /// Index of the object in its family.
+    pub object: usize,
+    /// Which cells.
+    pub shape: PatchShape,
+    /// Which fields follow the indicator.
+    pub fields: Fields,
+    values: Vec<T>,
+}
+
+impl<T> Patch<T> {
+    /// A field over the stored cells: 0 the indicator with the inside up; then, where carried, u, ω (three components each), b, j.
+    pub fn field(&self, k: usize) -> &[T] {
+        &self.values[k * self.shape.cells..(k + 1) * self.shape.cells]
+    }
+}
+
+struct Open<T> {
+    object: usize,
+    last_plane: usize,
+    shape: PatchShape,
+    values: Mutex<Vec<T>>,
+}
+
+/// One piece of a patch that lies in one row of the box.
+#[derive(Debug, Clone, Copy)]
+struct Delivery {
+    z: u32,
+    y: u32,
+    x: u32,
+    len: u32,
+    /// Index among the open patches.
+    patch: u32,
+    start: usize,
+}
+
+/// The patches of one family while planes stream by in ascending z.
+pub struct Patches<T> {
+    grid: Grid,
+    family: usize,
+    side: Side,
+    /// Fields carried for the vertices; none when no mesh is written.
+    fields: Fields,
+    /// Objects still to open: first plane, last plane, index; ascending from the back.
+    waiting: Vec<(usize, usize, usize)>,
+    open: Vec<Open<T>>,
+    deliveries: Vec<Vec<Delivery>>,
+}
+
+impl<T: Real> Patches<T> {
+    /// Patches for the objects of a family that are no larger than `max_cells`.
+    pub fn new(grid: Grid, family: usize, side: Side, fields: Fields, objects: &[Object], max_cells: u64) -> Self {
+        let mut waiting: Vec<(usize, usize, usize)> = objects
+            .iter()
+            .enumerate()
+            .filter(|(_, o)| o.tally.moments.count <= max_cells)
+            .map(|(k, o)| {
+                let (first, last) = planes(&grid, o);
+                (first, last, k)
+            })
+            .collect();
+        waiting.sort_unstable_by(|a, b| b.cmp(a));
+        Patches { grid, family, side, fields, waiting, open: Vec::new(), deliveries: Vec::new() }
+    }
+
+    fn carried(&self) -> usize {
+        1 + 6 * (usize::from(self.fields.velocity) + usize::from(self.fields.magnetic))
+    }
+
+    /// Opens what begins in the planes `z` and finds out which rows are wanted; `tiles` are the row ranges of the workers.
+    ///
+    /// Takes the intervals of an object when it opens: afterwards they live in the patch.
+    pub fn begin_block(&mut self, z: Range<usize>, tiles: &[Range<usize>], objects: &mut [Object]) {
+        let mut opening = Vec::new();
+        while let Some(&(first, last, object)) = self.waiting.last() {
+            if first >= z.end {
+                break;
+            }
+            self.waiting.pop();
+            let spans = objects[object].spans;
+            opening.push((object, last, std::mem::take(&mut objects[object].intervals), spans.iter().any(|&s| s)));
+        }
+        let grid = self.grid;
+        let carried = self.carried();
+        let opened = par::map_owned(opening, |_, (object, last_plane, intervals, closed)| {
+            let period = std::array::from_fn(|a| (closed && grid.periodic[a]).then_some(grid.n[a] as i32));
+            let shape = PatchShape::around(intervals, MARGIN, grid.n, grid.periodic, period);
+            let values = Mutex::new(vec![T::ZERO; shape.cells * carried]);
+            Open { object, last_plane, shape, values }
+        });
+        self.open.extend(opened);
+        self.deliveries.clear();
+        self.deliveries.resize(tiles.len(), Vec::new());
+        let tile_of: Vec<usize> = tiles.iter().enumerate().flat_map(|(t, r)| r.clone().map(move |_| t)).collect();
+        for (k, patch) in self.open.iter().enumerate() {
+            for segment in segments_in(&patch.shape.stored, &z, grid.n[2] as i32) {
+                self.deliveries_of(segment, k as u32, &tile_of, &grid).into_iter().flatten().for_each(|(t, d)| self.deliveries[t].push(d));
+            }
+        }
+        par::for_chunks(&mut self.deliveries, 1, |_, list| list[0].sort_unstable_by_key(|d| (d.z, d.y, d.patch, d.start)));
+    }
+
+    /// A segment as it lies in the box: one piece, or two where it crosses the x-face.
+    fn deliveries_of(&self, s: &Segment, patch: u32, tile_of: &[usize], grid: &Grid) -> [Option<(usize, Delivery)>; 2] {
+        let [nx, ny, nz] = grid.n.map(|v| v as i32);
+        let (y, z) = (s.y.rem_euclid(ny), s.z.rem_euclid(nz));
+        let x = s.x.rem_euclid(nx);
+        let head = s.len.min((nx - x) as u32);
+        let piece = |x: i32, len: u32, start: usize| {
+            (tile_of[y as usize], Delivery { z: z as u32, y: y as u32, x: x as u32, len, patch, start })
+        };
+        let tail = (head < s.len).then(|| piece(0, s.len - head, s.start + head as usize));
+        [Some(piece(x, head, s.start)), tail]
+    }
+
+    /// The rows (z, y) of a tile that some patch wants, ascending.
+    pub fn wanted_rows(&self, tile: usize) -> impl Iterator<Item = (usize, usize)> + '_ {
+        let list = &self.deliveries[tile];
+        list.iter().enumerate().filter(|(i, d)| *i == 0 || (list[i - 1].z, list[i - 1].y) != (d.z, d.y)).map(|(_, d)| (d.z as usize, d.y as usize))
+    }
+
+    /// Hands the derived row (z, y) to every patch that wants part of it.
+    pub fn deliver(&self, tile: usize, z: usize, y: usize, rows: &Rows<T>) {
+        let list = &self.deliveries[tile];
+        let from = list.partition_point(|d| (d.z as usize, d.y as usize) < (z, y));
+        for d in list[from..].iter().take_while(|d| (d.z as usize, d.y as usize) == (z, y)) {
+            let open = &self.open[d.patch as usize];
+            let mut values = open.values.lock().unwrap_or_else(PoisonError::into_inner);
+            let cells = open.shape.cells;
+            let (x, len) = (d.x as usize, d.len as usize);
+            let mut field = 0;
+            let mut put = |row: &[T]| {
+                let to = field * cells + d.start;
+                values[to..to + len].copy_from_slice(&row[x..x + len]);
+                field += 1;
+            };
+            put(&rows.indicators[self.family]);
+            if self.fields.velocity {
+                rows.u.iter().chain(&rows.w).for_each(|r| put(r));
+            }
+            if self.fields.magnetic {
+                rows.b.iter().chain(&rows.j).for_each(|r| put(r));
+            }
+            if self.side == Side::Below {
+                for v in &mut values[d.start..d.start + len] {
+                    *v = -*v;
+                }
+            }
+        }
+    }
+
+    /// Takes out the patches that are complete once all planes before `z_end` have been delivered, in the order of
+    /// their last plane and number.
+    pub fn end_block(&mut self, z_end: usize) -> Vec<Patch<T>> {
+        let (mut done, open): (Vec<Open<T>>, Vec<Open<T>>) = std::mem::take(&mut self.open).into_iter().partition(|p| p.last_plane < z_end);
+        self.open = open;
+        done.sort_by_key(|p| (p.last_plane, p.object));
+        done.into_iter()
+            .map(|p| Patch {
+                object: p.object,
+                shape: p.shape,
+                fields: self.fields,
+                values: p.values.into_inner().unwrap_or_else(PoisonError::into_inner),
+            })
+            .collect()
+    }
+}
+
+/// First and last plane of the stream that an object's patch needs; the whole box for one that crosses the z-face.
+fn planes(grid: &Grid, object: &Object) -> (usize, usize) {
+    let n = grid.n[2] as i32;
+    let margin = MARGIN as i32;
+    let low = object.intervals.first().map_or(0, |i| i.z) - margin;
+    let high = object.intervals.last().map_or(0, |i| i.z) + margin;
+    if grid.periodic[2] && (low < 0 || high >= n) { (0, n as usize - 1) } else { (low.max(0) as usize, high.min(n - 1) as usize) }
+}
+
+/// The segments whose plane, wrapped, lies in `z`.
+fn segments_in<'a>(stored: &'a [Segment], z: &Range<usize>, n: i32) -> impl Iterator<Item = &'a Segment> {
+    let low = stored.first().map_or(0, |s| s.z.div_euclid(n));
+    let high = stored.last().map_or(-1, |s| s.z.div_euclid(n));
+    let (z0, z1) = (z.start as i32, z.end as i32);
+    (low..=high).flat_map(move |image| {
+        let from = stored.partition_point(|s| s.z < z0 + image * n);
+        let to = stored.partition_point(|s| s.z < z1 + image * n);
+        stored[from..to].iter()
+    })
+}

@@ -1,0 +1,3 @@
+//! Height 6: orders the stages, from a request to a run folder.
+
+pub mod stream;
