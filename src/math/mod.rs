@@ -1,6 +1,13 @@
-//! Height 2: numerics on plain slices.
+//! Height 2: numerical methods on slices, cells and coordinates; knows no flow.
 
 pub mod diff;
 pub mod disjoint;
+pub mod halfedge;
+mod isocubes;
+mod isomesher;
+pub mod isosurface;
+mod isotable;
 pub mod moments;
 pub mod stats;
+pub mod surface;
+mod unwrap;

@@ -1,5 +1,6 @@
 //! Height 1: containers that live in the box.
 
+mod dilate;
 pub mod grid;
 pub mod patch;
 pub mod runs;

@@ -1,0 +1,113 @@
+//! The edges of a triangle mesh with the triangles on them, grouped by counting, without hash maps.
+
+/// One side of a triangle, seen from an edge.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
+pub struct HalfEdge {
+    upper: u32,
+    code: u32,
+}
+
+impl HalfEdge {
+    /// Index of the triangle.
+    #[inline]
+    pub fn triangle(self) -> usize {
+        self.code as usize / 6
+    }
+
+    /// Which side of the triangle: 0, 1, 2 for its vertices 0-1, 1-2, 2-0.
+    #[inline]
+    pub fn side(self) -> usize {
+        self.code as usize / 2 % 3
+    }
+
+    /// Whether the triangle runs along the edge from the higher vertex index to the lower.
+    #[inline]
+    pub fn downward(self) -> bool {
+        self.code & 1 == 1
+    }
+}
+
+/// Calls `visit(lower, upper, sides)` once for every edge: its two vertex indices and the triangle sides on it, by
+/// ascending triangle. Edges come by ascending lower, then upper index. A side joining a vertex to itself counts as an
+/// edge with equal indices.
+///
+/// # Panics
+/// When there are more than 2^32 / 6 triangles, or a triangle names a vertex at or beyond `vertices`.
+pub fn for_each_edge(
+    vertices: usize,
+    triangles: &[[u32; 3]],
+    mut visit: impl FnMut(u32, u32, &[HalfEdge]),
+) {
+    assert!(
+        triangles.len() < u32::MAX as usize / 6,
+        "half-edges: expected fewer than {} triangles, got {}",
+        u32::MAX / 6,
+        triangles.len()
+    );
+    let sides = |t: &[u32; 3]| [(t[0], t[1]), (t[1], t[2]), (t[2], t[0])];
+    let mut starts = vec![0u32; vertices + 1];
+    for t in triangles {
+        for (a, b) in sides(t) {
+            starts[a.min(b) as usize] += 1;
+        }
+    }
+    // Starts of the lists shifted by one place: filling them moves each entry on to the start of the next list.
+    let mut sum = 0;
+    for start in &mut starts {
+        sum += std::mem::replace(start, sum);
+    }
+    let mut halves = vec![HalfEdge { upper: 0, code: 0 }; 3 * triangles.len()];
+    for (i, t) in triangles.iter().enumerate() {
+        for (side, (a, b)) in sides(t).into_iter().enumerate() {
+            let at = &mut starts[a.min(b) as usize];
+            let code = (6 * i + 2 * side) as u32 + (a > b) as u32;
+            halves[*at as usize] = HalfEdge { upper: a.max(b), code };
+            *at += 1;
+        }
+    }
+    let mut begin = 0;
+    for lower in 0..vertices {
+        let end = starts[lower] as usize;
+        let list = &mut halves[begin..end];
+        begin = end;
+        list.sort_unstable();
+        for same in list.chunk_by(|a, b| a.upper == b.upper) {
+            visit(lower as u32, same[0].upper, same);
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn tetrahedron_has_six_edges_with_two_opposite_sides_each() {
+        let triangles = [[0, 2, 1], [0, 1, 3], [1, 2, 3], [2, 0, 3]];
+        let mut found = Vec::new();
+        for_each_edge(4, &triangles, |a, b, sides| {
+            assert_eq!(sides.len(), 2);
+            assert_ne!(sides[0].downward(), sides[1].downward());
+            for s in sides {
+                let t = triangles[s.triangle()];
+                let mut ends = [t[s.side()], t[(s.side() + 1) % 3]];
+                if s.downward() {
+                    ends.reverse();
+                }
+                assert_eq!(ends, [a, b]);
+            }
+            found.push((a, b));
+        });
+        assert_eq!(found, [(0, 1), (0, 2), (0, 3), (1, 2), (1, 3), (2, 3)]);
+    }
+
+    #[test]
+    fn open_and_overfull_edges_keep_their_counts() {
+        let triangles = [[0, 1, 2], [1, 0, 3], [0, 1, 4]];
+        let mut counts = Vec::new();
+        for_each_edge(5, &triangles, |a, b, sides| counts.push((a, b, sides.len())));
+        assert_eq!(counts[0], (0, 1, 3));
+        assert!(counts[1..].iter().all(|c| c.2 == 1));
+        assert_eq!(counts.len(), 7);
+    }
+}

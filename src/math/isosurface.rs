@@ -1,0 +1,176 @@
+//! The triangulated isosurface around one object: vertices on grid edges, interpolation of fields to them, normals.
+//!
+//! The surface is found by marching cubes (Lorensen & Cline 1987) with the asymptotic decider on ambiguous faces
+//! (Nielson & Hamann 1991) and no tunnels inside a cube, so that it is always a closed two-dimensional manifold
+//! except where the object leaves the box through an open face.
+
+use crate::base::real::Real;
+use crate::math::halfedge;
+use crate::math::isocubes;
+use crate::math::unwrap;
+use crate::space::patch::PatchShape;
+
+pub use crate::math::unwrap::Unwrapped;
+
+/// A vertex on the grid edge between two stored cells, one inside the object and one outside.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct EdgeRef {
+    /// Stored index of the lower cell along the edge's axis (the upper one is its neighbour, modulo the period).
+    pub a: u32,
+    /// Stored index of the upper cell.
+    pub b: u32,
+    /// Position between them: 0 at `a`, 1 at `b`; within [1e-4, 1 - 1e-4].
+    pub t: f64,
+}
+
+/// Triangles over shared vertices, counter-clockwise seen from outside (the low side).
+///
+/// The first `edges.len()` vertices lie on grid edges, in the order of `edges`. The remaining ones are centre
+/// vertices: each is the mean of the vertices of one loop around a cube, see [`Isosurface::centre`].
+///
+/// Coordinates along an axis with a period lie within `0..=period`; triangles may join vertices on both sides of the
+/// seam, and a vector between two vertices of a triangle is always the shortest one modulo the period.
+#[derive(Debug, Clone, Default, PartialEq)]
+pub struct Isosurface {
+    /// Period in cells along x, y, z where coordinates wrap, as in the patch.
+    pub period: [Option<i32>; 3],
+    /// Vertex positions x, y, z in fractional cell indices of the patch (cell centres at integers).
+    pub points: Vec<[f64; 3]>,
+    /// Three vertex indices a triangle.
+    pub triangles: Vec<[u32; 3]>,
+    /// Grid edges of the first vertices.
+    pub edges: Vec<EdgeRef>,
+    /// Start of each centre vertex's list in `centre_vertices`, and one past the last.
+    pub(super) centre_starts: Vec<u32>,
+    /// Edge vertices around each centre vertex.
+    pub(super) centre_vertices: Vec<u32>,
+}
+
+/// Extracts the surface `values = level` around the object's own cells.
+///
+/// `values` is parallel to the stored cells of `shape`. A cell is inside when it belongs to the object; cells of other
+/// objects count as outside, at most at the level. Cubes of eight cell centres are visited when one corner at least is
+/// inside; cubes with a corner that is not stored (beyond an open face) are left out and the surface ends there.
+///
+/// A loop of four vertices is closed by its shorter diagonal and one of five by its shortest fan, in cell units; longer
+/// loops, ties and loops whose chords would lie in a cube face get a centre vertex. Nothing depends on the direction
+/// of the axes: a mirrored or axis-permuted field has the mirrored or permuted surface.
+///
+/// # Panics
+/// When `values` and the stored cells differ in number, when an object cell is not stored, or when the margin is 0.
+pub fn isosurface<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
+    assert_eq!(
+        values.len(),
+        shape.cells,
+        "isosurface: expected one value a stored cell ({}), got {}",
+        shape.cells,
+        values.len()
+    );
+    isocubes::extract(shape, values, level)
+}
+
+impl Isosurface {
+    /// Indices of the edge vertices whose mean is the centre vertex `edges.len() + i`.
+    pub fn centre(&self, i: usize) -> &[u32] {
+        let span = self.centre_starts[i] as usize..self.centre_starts[i + 1] as usize;
+        &self.centre_vertices[span]
+    }
+
+    /// Number of centre vertices.
+    pub fn centres(&self) -> usize {
+        self.points.len() - self.edges.len()
+    }
+
+    /// Values of a stored field at all vertices, in vertex order: linear along the grid edge, and the mean over the
+    /// loop at centre vertices. Vector fields go through component by component.
+    ///
+    /// # Panics
+    /// When `field` has fewer values than the patch has stored cells.
+    pub fn interpolate<T: Real>(&self, field: &[T]) -> Vec<f64> {
+        let mut out = Vec::with_capacity(self.points.len());
+        out.extend(self.edges.iter().map(|e| {
+            (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()
+        }));
+        for i in 0..self.centres() {
+            let around = self.centre(i);
+            let sum: f64 = around.iter().map(|&v| out[v as usize]).sum();
+            out.push(sum / around.len() as f64);
+        }
+        out
+    }
+
+    /// The shortest vector from vertex `a` to vertex `b` modulo the periods, in cells.
+    #[inline]
+    pub fn vector(&self, a: u32, b: u32) -> [f64; 3] {
+        let (p, q) = (self.points[a as usize], self.points[b as usize]);
+        std::array::from_fn(|axis| {
+            let d = q[axis] - p[axis];
+            match self.period[axis] {
+                None => d,
+                Some(n) => d - n as f64 * (d / n as f64).round(),
+            }
+        })
+    }
+
+    /// Twice the area of a triangle times its outward unit normal, in physical units for the given spacing.
+    #[inline]
+    pub(super) fn area_vector(&self, triangle: [u32; 3], spacing: [f64; 3]) -> [f64; 3] {
+        let [a, b, c] = triangle;
+        cross(scaled(self.vector(a, b), spacing), scaled(self.vector(a, c), spacing))
+    }
+
+    /// Unit outward vertex normals in physical space, the area-weighted mean over the triangles at each vertex.
+    ///
+    /// A vertex whose triangles cancel exactly has the zero vector.
+    pub fn vertex_normals(&self, spacing: [f64; 3]) -> Vec<[f64; 3]> {
+        let mut normals = vec![[0.0; 3]; self.points.len()];
+        for &triangle in &self.triangles {
+            let area = self.area_vector(triangle, spacing);
+            for v in triangle {
+                for axis in 0..3 {
+                    normals[v as usize][axis] += area[axis];
+                }
+            }
+        }
+        for n in &mut normals {
+            let length = dot(*n, *n).sqrt();
+            if length > 0.0 {
+                *n = n.map(|c| c / length);
+            }
+        }
+        normals
+    }
+
+    /// The surface without triangles across a seam: along axes with a period, positions continue from triangle to
+    /// triangle, and vertices are repeated where the surface meets itself a period further on.
+    pub fn unwrapped(&self) -> Unwrapped {
+        unwrap::unwrap(self)
+    }
+
+    /// For each triangle the triangles across its edges 0-1, 1-2 and 2-0; `u32::MAX` where there is none.
+    pub fn neighbours(&self) -> Vec<[u32; 3]> {
+        let mut across = vec![[u32::MAX; 3]; self.triangles.len()];
+        halfedge::for_each_edge(self.points.len(), &self.triangles, |_, _, sides| {
+            if let [a, b] = *sides {
+                across[a.triangle()][a.side()] = b.triangle() as u32;
+                across[b.triangle()][b.side()] = a.triangle() as u32;
+            }
+        });
+        across
+    }
+}
+
+#[inline]
+pub(super) fn scaled(v: [f64; 3], spacing: [f64; 3]) -> [f64; 3] {
+    [v[0] * spacing[0], v[1] * spacing[1], v[2] * spacing[2]]
+}
+
+#[inline]
+pub(super) fn dot(a: [f64; 3], b: [f64; 3]) -> f64 {
+    a[0] * b[0] + a[1] * b[1] + a[2] * b[2]
+}
+
+#[inline]
+pub(super) fn cross(a: [f64; 3], b: [f64; 3]) -> [f64; 3] {
+    [a[1] * b[2] - a[2] * b[1], a[2] * b[0] - a[0] * b[2], a[0] * b[1] - a[1] * b[0]]
+}

@@ -1,0 +1,94 @@
+//! Lays a surface on the torus out in space, cut where it meets itself a period further on.
+
+use std::collections::VecDeque;
+
+use crate::math::isosurface::Isosurface;
+
+/// A surface laid out without triangles across a seam.
+#[derive(Debug, Clone, Default, PartialEq)]
+pub struct Unwrapped {
+    /// Vertex positions x, y, z in fractional cell indices.
+    pub points: Vec<[f64; 3]>,
+    /// Three vertex indices a triangle, in the order of the surface's triangles.
+    pub triangles: Vec<[u32; 3]>,
+    /// For each vertex the surface vertex it comes from: values at `points[i]` are those at `source[i]`.
+    pub source: Vec<u32>,
+}
+
+/// A surface vertex at one image, in a list of all images of that vertex.
+struct Copy {
+    image: [i32; 3],
+    next: u32,
+}
+
+const NONE: u32 = u32::MAX;
+
+pub(super) fn unwrap(surface: &Isosurface) -> Unwrapped {
+    let count = surface.points.len();
+    if surface.period == [None; 3] {
+        return Unwrapped {
+            points: surface.points.clone(),
+            triangles: surface.triangles.clone(),
+            source: (0..count as u32).collect(),
+        };
+    }
+    let across = surface.neighbours();
+    let mut copies: Vec<Copy> = Vec::with_capacity(count);
+    let mut newest = vec![NONE; count];
+    let mut out = Unwrapped {
+        points: Vec::with_capacity(count),
+        triangles: vec![[NONE; 3]; surface.triangles.len()],
+        source: Vec::with_capacity(count),
+    };
+    let mut place = |v: u32, image: [i32; 3], out: &mut Unwrapped| {
+        let mut at = newest[v as usize];
+        while at != NONE && copies[at as usize].image != image {
+            at = copies[at as usize].next;
+        }
+        if at == NONE {
+            at = copies.len() as u32;
+            copies.push(Copy { image, next: newest[v as usize] });
+            newest[v as usize] = at;
+            let p = surface.points[v as usize];
+            out.points.push(std::array::from_fn(|axis| {
+                p[axis] + (image[axis] * surface.period[axis].unwrap_or(0)) as f64
+            }));
+            out.source.push(v);
+        }
+        at
+    };
+
+    // Breadth first, so that the cut lies as far from the start as it can. A waiting triangle carries the image of
+    // the vertex it shares with the triangle that reached it.
+    let mut waiting: VecDeque<(usize, u32, [i32; 3])> = VecDeque::new();
+    let mut reached = vec![false; surface.triangles.len()];
+    for start in 0..surface.triangles.len() {
+        if reached[start] {
+            continue;
+        }
+        reached[start] = true;
+        waiting.push_back((start, surface.triangles[start][0], [0; 3]));
+        while let Some((t, known, image)) = waiting.pop_front() {
+            let corners = surface.triangles[t];
+            let images = corners.map(|v| image_beside(surface, known, image, v));
+            out.triangles[t] = std::array::from_fn(|k| place(corners[k], images[k], &mut out));
+            for k in 0..3 {
+                let other = across[t][k];
+                if other != NONE && !reached[other as usize] {
+                    reached[other as usize] = true;
+                    waiting.push_back((other as usize, corners[k], images[k]));
+                }
+            }
+        }
+    }
+    out
+}
+
+/// The image of `v` nearest to `known` at its given image.
+fn image_beside(surface: &Isosurface, known: u32, image: [i32; 3], v: u32) -> [i32; 3] {
+    let (p, q) = (surface.points[known as usize], surface.points[v as usize]);
+    std::array::from_fn(|axis| match surface.period[axis] {
+        None => 0,
+        Some(n) => image[axis] - ((q[axis] - p[axis]) / n as f64).round() as i32,
+    })
+}

@@ -1,0 +1,5 @@
+//! Isosurfaces of objects: smooth bodies against closed forms, random fields against the rules of a closed manifold.
+
+mod bodies;
+mod patches;
+mod random;
