@@ -2,4 +2,5 @@
 
 pub mod base;
 pub mod model;
+pub mod read;
 pub mod space;
