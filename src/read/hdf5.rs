@@ -230,7 +230,7 @@ fn find(file: &File, path: &Path, name: &str) -> Result<Dataset> {
         }
         Err(_) => {
             return Err(fault("cannot find the dataset")
-                .found(listing(file))
+                .found(format!("only {}", listing(file)))
                 .hint(HINT));
         }
     }

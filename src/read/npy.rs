@@ -85,7 +85,7 @@ pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: Order) -> Resu
         if !path.is_file() {
             return Err(Error::input("cannot find the file")
                 .at(&path)
-                .found(listing(folder))
+                .found(format!("only {}", listing(folder)))
                 .hint(HINT));
         }
         files.push(read_header(&path, label(folder, name))?);

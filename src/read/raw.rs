@@ -1,7 +1,7 @@
 //! Blocks of a plain array inside a file, by seeking: only the bytes asked for are read.
 
 use std::fs::File;
-use std::io::{Read, Seek, SeekFrom};
+use std::io::{ErrorKind, Read, Seek, SeekFrom};
 
 use crate::base::error::Result;
 use crate::base::real::Real;
@@ -147,7 +147,10 @@ fn fill(file: &mut File, header: &Header, byte: u64, to: &mut [u8]) -> Result<()
         .map_err(|e| {
             header
                 .fault("cannot read values")
-                .found(e.to_string())
+                .found(match e.kind() {
+                    ErrorKind::UnexpectedEof => "the end of the file".into(),
+                    _ => e.to_string(),
+                })
                 .hint("the file changed or its disk failed")
         })
 }

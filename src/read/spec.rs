@@ -61,15 +61,18 @@ impl InputSpec {
         let given = match (&self.lengths, &self.spacing) {
             (Some(l), None) => Ok(("--lengths", l)),
             (None, Some(s)) => Ok(("--spacing", s)),
-            (None, None) => Err("neither"),
-            (Some(_), Some(_)) => Err("both"),
+            (None, None) => Err((
+                "neither",
+                "--lengths 6.283185,6.283185,6.283185 for a 2 pi box",
+            )),
+            (Some(_), Some(_)) => Err(("both", "drop one of them")),
         };
-        let (flag, values) = given.map_err(|found| {
+        let (flag, values) = given.map_err(|(found, hint)| {
             Error::usage("cannot settle the size of the box")
                 .item("--lengths, --spacing")
                 .expected("exactly one of them")
                 .found(found)
-                .hint("--lengths 6.283185,6.283185,6.283185 for a 2 pi box")
+                .hint(hint)
         })?;
         if !values.iter().all(|v| v.is_finite() && *v > 0.0) {
             return Err(Error::usage("cannot settle the size of the box")
