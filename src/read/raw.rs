@@ -1,0 +1,209 @@
+//! Blocks of a plain array inside a file, by seeking: only the bytes asked for are read.
+
+use std::fs::File;
+use std::io::{ErrorKind, Read, Seek, SeekFrom};
+
+use crate::base::error::Result;
+use crate::base::real::Real;
+use crate::read::header::{Header, Precision};
+
+/// Bytes skipped rather than read when they lie between two wanted runs: a seek costs about as much
+/// as copying this many.
+const GAP: u64 = 16 << 10;
+
+/// Most bytes read in one go into the buffer.
+const SPAN: u64 = 4 << 20;
+
+/// An array stored in one piece, slowest axis first.
+pub(super) struct RawArray {
+    header: Header,
+    file: File,
+    offset: u64,
+    swap: bool,
+    buffer: Vec<u8>,
+}
+
+/// A run of values that stand together in the file: first byte, and first place and number in the block.
+#[derive(Clone, Copy)]
+struct Run {
+    byte: u64,
+    place: usize,
+    values: usize,
+}
+
+impl RawArray {
+    /// The array whose first value is at byte `offset` of `file`.
+    pub fn new(header: Header, file: File, offset: u64, big_endian: bool) -> RawArray {
+        RawArray {
+            header,
+            file,
+            offset,
+            swap: big_endian != cfg!(target_endian = "big"),
+            buffer: Vec::new(),
+        }
+    }
+
+    /// Reads `count` values from `start` along every axis into `out`, slowest axis first.
+    ///
+    /// Values are widened where `T` is wider than what is stored.
+    pub fn read_block<T: Real>(
+        &mut self,
+        start: &[usize],
+        count: &[usize],
+        out: &mut [T],
+    ) -> Result<()> {
+        let width = self.header.precision.bytes() as u64;
+        let same = size_of::<T>() as u64 == width;
+        let mut batch: Vec<Run> = Vec::new();
+        for run in runs(&self.header.shape, start, count, self.offset, width) {
+            let end = run.byte + run.values as u64 * width;
+            if let (Some(first), Some(last)) = (batch.first(), batch.last()) {
+                let gap = run.byte - (last.byte + last.values as u64 * width);
+                if gap > GAP || end - first.byte > SPAN {
+                    self.read_batch(&batch, out)?;
+                    batch.clear();
+                }
+            }
+            // A long run needs no company: it goes straight to its place, or through the buffer in parts.
+            if end - run.byte >= SPAN / 4 {
+                self.read_batch(&batch, out)?;
+                batch.clear();
+                let part = if same {
+                    run.values
+                } else {
+                    (SPAN / width) as usize
+                };
+                for first in (0..run.values).step_by(part) {
+                    let values = part.min(run.values - first);
+                    let byte = run.byte + first as u64 * width;
+                    self.read_batch(
+                        &[Run {
+                            byte,
+                            place: run.place + first,
+                            values,
+                        }],
+                        out,
+                    )?;
+                }
+            } else {
+                batch.push(run);
+            }
+        }
+        self.read_batch(&batch, out)
+    }
+
+    fn read_batch<T: Real>(&mut self, batch: &[Run], out: &mut [T]) -> Result<()> {
+        let (Some(first), Some(last)) = (batch.first(), batch.last()) else {
+            return Ok(());
+        };
+        let width = self.header.precision.bytes();
+        if batch.len() == 1 && size_of::<T>() == width {
+            let out = &mut out[first.place..first.place + first.values];
+            fill(
+                &mut self.file,
+                &self.header,
+                first.byte,
+                bytemuck::cast_slice_mut(out),
+            )?;
+            if self.swap {
+                swap_in_place(out);
+            }
+            return Ok(());
+        }
+        let length = (last.byte - first.byte) as usize + last.values * width;
+        self.buffer.resize(length, 0);
+        fill(&mut self.file, &self.header, first.byte, &mut self.buffer)?;
+        for run in batch {
+            let from = &self.buffer[(run.byte - first.byte) as usize..][..run.values * width];
+            let to = &mut out[run.place..run.place + run.values];
+            if size_of::<T>() == width {
+                bytemuck::cast_slice_mut::<T, u8>(to).copy_from_slice(from);
+                if self.swap {
+                    swap_in_place(to);
+                }
+            } else {
+                assert_eq!(
+                    self.header.precision,
+                    Precision::F32,
+                    "values are never narrowed"
+                );
+                for (o, b) in to.iter_mut().zip(from.as_chunks::<4>().0) {
+                    let bits = u32::from_ne_bytes(*b);
+                    *o = T::of(f64::from(f32::from_bits(if self.swap {
+                        bits.swap_bytes()
+                    } else {
+                        bits
+                    })));
+                }
+            }
+        }
+        Ok(())
+    }
+}
+
+fn fill(file: &mut File, header: &Header, byte: u64, to: &mut [u8]) -> Result<()> {
+    file.seek(SeekFrom::Start(byte))
+        .and_then(|_| file.read_exact(to))
+        .map_err(|e| {
+            header
+                .fault("cannot read values")
+                .found(match e.kind() {
+                    ErrorKind::UnexpectedEof => "the end of the file".into(),
+                    _ => e.to_string(),
+                })
+                .hint("the file changed or its disk failed")
+        })
+}
+
+fn swap_in_place<T: Real>(values: &mut [T]) {
+    if size_of::<T>() == 4 {
+        bytemuck::cast_slice_mut::<T, u32>(values)
+            .iter_mut()
+            .for_each(|v| *v = v.swap_bytes());
+    } else {
+        bytemuck::cast_slice_mut::<T, u64>(values)
+            .iter_mut()
+            .for_each(|v| *v = v.swap_bytes());
+    }
+}
+
+/// The runs of a block in ascending order. Trailing axes taken whole join into one run.
+fn runs(
+    shape: &[usize],
+    start: &[usize],
+    count: &[usize],
+    offset: u64,
+    width: u64,
+) -> impl Iterator<Item = Run> + use<> {
+    let mut inner = shape.len() - 1;
+    let mut values = count[inner];
+    while inner > 0 && count[inner] == shape[inner] {
+        inner -= 1;
+        values *= count[inner];
+    }
+    let mut step = vec![width; shape.len()];
+    for a in (0..shape.len() - 1).rev() {
+        step[a] = step[a + 1] * shape[a + 1] as u64;
+    }
+    let base = offset
+        + start
+            .iter()
+            .zip(&step)
+            .map(|(&s, &w)| s as u64 * w)
+            .sum::<u64>();
+    let outer = count[..inner].to_vec();
+    let total: usize = outer.iter().product();
+    (0..total).map(move |i| {
+        let mut rest = i;
+        let mut byte = base;
+        for a in (0..outer.len()).rev() {
+            byte += (rest % outer[a]) as u64 * step[a];
+            rest /= outer[a];
+        }
+        Run {
+            byte,
+            place: i * values,
+            values,
+        }
+    })
+}
