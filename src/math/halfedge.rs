@@ -33,17 +33,8 @@ impl HalfEdge {
 ///
 /// # Panics
 /// When there are more than 2^32 / 6 triangles, or a triangle names a vertex at or beyond `vertices`.
-pub fn for_each_edge(
-    vertices: usize,
-    triangles: &[[u32; 3]],
-    mut visit: impl FnMut(u32, u32, &[HalfEdge]),
-) {
-    assert!(
-        triangles.len() < u32::MAX as usize / 6,
-        "half-edges: expected fewer than {} triangles, got {}",
-        u32::MAX / 6,
-        triangles.len()
-    );
+pub fn for_each_edge(vertices: usize, triangles: &[[u32; 3]], mut visit: impl FnMut(u32, u32, &[HalfEdge])) {
+    assert!(triangles.len() < u32::MAX as usize / 6, "half-edges: expected fewer than {} triangles, got {}", u32::MAX / 6, triangles.len());
     let sides = |t: &[u32; 3]| [(t[0], t[1]), (t[1], t[2]), (t[2], t[0])];
     let mut starts = vec![0u32; vertices + 1];
     for t in triangles {

@@ -9,8 +9,7 @@ use crate::space::patch::{Interval, PatchShape, Segment};
 pub(super) fn extract<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
     let object = Rows::new(shape.object.iter().map(|i| (i.z, i.y)));
     let stored = Rows::new(shape.stored.iter().map(|s| (s.z, s.y)));
-    let mut plane_starts: Vec<usize> =
-        stored.planes.iter().map(|p| shape.stored[stored.rows[p.first].first].start).collect();
+    let mut plane_starts: Vec<usize> = stored.planes.iter().map(|p| shape.stored[stored.rows[p.first].first].start).collect();
     plane_starts.push(shape.cells);
     let mut mesher = Mesher::new(shape, values, level, plane_starts);
     let mut walk = Walk { shape, inside: mark_inside(shape), rows: Vec::new(), spans: Vec::new() };
@@ -141,12 +140,7 @@ struct Walk<'a> {
 
 impl Walk<'_> {
     /// Visits all cubes between two planes: `own` holds the object's rows in them, `cells` the stored rows.
-    fn plane<T: Real>(
-        &mut self,
-        mesher: &mut Mesher<T>,
-        own: [&[Line]; 2],
-        cells: [&[Line]; 2],
-    ) {
+    fn plane<T: Real>(&mut self, mesher: &mut Mesher<T>, own: [&[Line]; 2], cells: [&[Line]; 2]) {
         let period = self.shape.period[1];
         self.rows.clear();
         for line in own.into_iter().flatten() {
@@ -214,14 +208,7 @@ impl Walk<'_> {
 
     /// Visits `count` cubes from `x` on; `near` and `far` are the stored indices of the first cube's corners at lower
     /// and upper x, in row order.
-    fn cubes<T: Real>(
-        &self,
-        mesher: &mut Mesher<T>,
-        x: i32,
-        count: usize,
-        near: [usize; 4],
-        far: [usize; 4],
-    ) {
+    fn cubes<T: Real>(&self, mesher: &mut Mesher<T>, x: i32, count: usize, near: [usize; 4], far: [usize; 4]) {
         let ahead = far.map(|first| &self.inside[first..first + count]);
         let mut left = (0..4).fold(0, |m, r| m | self.inside[near[r]] << r);
         for j in 0..count {
@@ -238,12 +225,7 @@ impl Walk<'_> {
 }
 
 /// Spans of cubes (first, last) along x that touch the object in one of four rows, ascending, disjoint, not adjacent.
-fn gather_spans(
-    spans: &mut Vec<(i32, i32)>,
-    object: &[Interval],
-    rows: [Option<Line>; 4],
-    period: Option<i32>,
-) {
+fn gather_spans(spans: &mut Vec<(i32, i32)>, object: &[Interval], rows: [Option<Line>; 4], period: Option<i32>) {
     spans.clear();
     for line in rows.into_iter().flatten() {
         for i in &object[line.first..line.end] {

@@ -41,12 +41,7 @@ pub(super) struct Mesher<'a, T> {
 }
 
 impl<'a, T: Real> Mesher<'a, T> {
-    pub fn new(
-        shape: &PatchShape,
-        values: &'a [T],
-        level: f64,
-        plane_starts: Vec<usize>,
-    ) -> Mesher<'a, T> {
+    pub fn new(shape: &PatchShape, values: &'a [T], level: f64, plane_starts: Vec<usize>) -> Mesher<'a, T> {
         let largest = plane_starts.windows(2).map(|w| w[1] - w[0]).max().unwrap_or(0);
         let slots = if shape.period[2].is_some() { 3 } else { 2 };
         // Every interval has two crossings along x, rough surfaces have as many along y and z; two triangles a vertex.

@@ -59,13 +59,7 @@ pub struct Isosurface {
 /// # Panics
 /// When `values` and the stored cells differ in number, when an object cell is not stored, or when the margin is 0.
 pub fn isosurface<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
-    assert_eq!(
-        values.len(),
-        shape.cells,
-        "isosurface: expected one value a stored cell ({}), got {}",
-        shape.cells,
-        values.len()
-    );
+    assert_eq!(values.len(), shape.cells, "isosurface: expected one value a stored cell ({}), got {}", shape.cells, values.len());
     isocubes::extract(shape, values, level)
 }
 
@@ -88,9 +82,7 @@ impl Isosurface {
     /// When `field` has fewer values than the patch has stored cells.
     pub fn interpolate<T: Real>(&self, field: &[T]) -> Vec<f64> {
         let mut out = Vec::with_capacity(self.points.len());
-        out.extend(self.edges.iter().map(|e| {
-            (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()
-        }));
+        out.extend(self.edges.iter().map(|e| (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()));
         for i in 0..self.centres() {
             let around = self.centre(i);
             let sum: f64 = around.iter().map(|&v| out[v as usize]).sum();

@@ -74,11 +74,9 @@ impl Table {
     }
 
     fn new() -> Table {
-        let mut table =
-            Table { ambiguous: [0; 256], first: [0; 256], cases: vec![0], loops: Vec::new() };
+        let mut table = Table { ambiguous: [0; 256], first: [0; 256], cases: vec![0], loops: Vec::new() };
         for mask in 0..=255u8 {
-            let ambiguous =
-                (0..6).filter(|&f| face_is_ambiguous(mask, f)).fold(0u8, |m, f| m | 1 << f);
+            let ambiguous = (0..6).filter(|&f| face_is_ambiguous(mask, f)).fold(0u8, |m, f| m | 1 << f);
             table.ambiguous[mask as usize] = ambiguous;
             table.first[mask as usize] = (table.cases.len() - 1) as u16;
             for decisions in 0..1u8 << ambiguous.count_ones() {
@@ -108,10 +106,7 @@ fn face_is_ambiguous(mask: u8, face: usize) -> bool {
 /// The cube edge between two neighbouring corners.
 fn edge_between(a: u8, b: u8) -> usize {
     let (low, bit) = (a & b, (a ^ b) as usize);
-    EDGES
-        .iter()
-        .position(|e| e.corner == low && AXIS_BIT[e.axis as usize] == bit)
-        .expect("corners of a face are neighbours")
+    EDGES.iter().position(|e| e.corner == low && AXIS_BIT[e.axis as usize] == bit).expect("corners of a face are neighbours")
 }
 
 /// Appends the loops of one cube; bit f of `joined` holds the decision of ambiguous face f.
@@ -124,12 +119,7 @@ fn trace(mask: u8, joined: u8, loops: &mut Vec<Loop>) {
         for i in (0..4).filter(|&i| entering(i)) {
             // Walking on from an entry the first exit cuts off the inside corner just entered; the exit before the
             // entry cuts off the outside corner between them, which joins the two inside corners.
-            let mut steps = if face_is_ambiguous(mask, face) && joined >> face & 1 == 1 {
-                [3, 2, 1]
-            } else {
-                [1, 2, 3]
-            }
-            .into_iter();
+            let mut steps = if face_is_ambiguous(mask, face) && joined >> face & 1 == 1 { [3, 2, 1] } else { [1, 2, 3] }.into_iter();
             let exit = steps.find(|s| leaving(i + s)).expect("a face is left as often as entered");
             let edge = |i: usize| edge_between(corners[i % 4], corners[(i + 1) % 4]);
             next[edge(i)] = Some(edge(i + exit) as u8);
@@ -163,11 +153,7 @@ fn allowed_chords(edges: &[u8]) -> u8 {
 /// Whether two cube edges lie on a common face: they agree in the position along an axis neither of them runs along.
 fn share_face(a: u8, b: u8) -> bool {
     let (a, b) = (EDGES[a as usize], EDGES[b as usize]);
-    (0..3u8).any(|axis| {
-        axis != a.axis
-            && axis != b.axis
-            && (a.corner ^ b.corner) as usize & AXIS_BIT[axis as usize] == 0
-    })
+    (0..3u8).any(|axis| axis != a.axis && axis != b.axis && (a.corner ^ b.corner) as usize & AXIS_BIT[axis as usize] == 0)
 }
 
 const fn cube_edges() -> [CubeEdge; 12] {
@@ -226,9 +212,7 @@ mod tests {
     /// neighbour cube sees too: corner bits with the face's own axis cleared.
     fn segments(loops: &[Loop], face: usize) -> Vec<[CubeEdge; 2]> {
         let (axis, high) = (face / 2, face % 2 == 1);
-        let on_face = |e: CubeEdge| {
-            e.axis as usize != axis && (e.corner as usize & AXIS_BIT[axis] != 0) == high
-        };
+        let on_face = |e: CubeEdge| e.axis as usize != axis && (e.corner as usize & AXIS_BIT[axis] != 0) == high;
         let flat = |e: CubeEdge| CubeEdge { corner: e.corner & !(AXIS_BIT[axis] as u8), ..e };
         let mut found = Vec::new();
         for l in loops {

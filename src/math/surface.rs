@@ -26,8 +26,7 @@ pub struct SurfaceMeasures {
 /// Formulas: methods of polyhedral Steiner theory; the edge sum for C is exact for a convex polyhedron. Triangles
 /// without area have no normal and their edges count as flat.
 pub fn measure(surface: &Isosurface, spacing: [f64; 3]) -> SurfaceMeasures {
-    let normals: Vec<[f64; 3]> =
-        surface.triangles.iter().map(|&t| surface.area_vector(t, spacing)).collect();
+    let normals: Vec<[f64; 3]> = surface.triangles.iter().map(|&t| surface.area_vector(t, spacing)).collect();
     let area = normals.iter().map(|&n| 0.5 * dot(n, n).sqrt()).sum();
 
     let (mut edges, mut open_edges, mut nonmanifold_edges) = (0i64, 0, 0);

@@ -60,7 +60,13 @@ mod tests {
     use super::*;
 
     fn shape(planarity: f64, filamentarity: f64) -> &'static str {
-        class(&Evidence { planarity: Some(planarity), filamentarity: Some(filamentarity), euler: Some(1.0), curvature: Some(1.0), ..Evidence::default() })
+        class(&Evidence {
+            planarity: Some(planarity),
+            filamentarity: Some(filamentarity),
+            euler: Some(1.0),
+            curvature: Some(1.0),
+            ..Evidence::default()
+        })
     }
 
     /// Planarity and filamentarity of exact bodies: table of closed forms in Sahni, Sathyaprakash & Shandarin's definition

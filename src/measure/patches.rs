@@ -125,9 +125,8 @@ impl<T: Real> Patches<T> {
         let (y, z) = (s.y.rem_euclid(ny), s.z.rem_euclid(nz));
         let x = s.x.rem_euclid(nx);
         let head = s.len.min((nx - x) as u32);
-        let piece = |x: i32, len: u32, start: usize| {
-            (tile_of[y as usize], Delivery { z: z as u32, y: y as u32, x: x as u32, len, patch, start })
-        };
+        let piece =
+            |x: i32, len: u32, start: usize| (tile_of[y as usize], Delivery { z: z as u32, y: y as u32, x: x as u32, len, patch, start });
         let tail = (head < s.len).then(|| piece(0, s.len - head, s.start + head as usize));
         [Some(piece(x, head, s.start)), tail]
     }
@@ -135,7 +134,10 @@ impl<T: Real> Patches<T> {
     /// The rows (z, y) of a tile that some patch wants, ascending.
     pub fn wanted_rows(&self, tile: usize) -> impl Iterator<Item = (usize, usize)> + '_ {
         let list = &self.deliveries[tile];
-        list.iter().enumerate().filter(|(i, d)| *i == 0 || (list[i - 1].z, list[i - 1].y) != (d.z, d.y)).map(|(_, d)| (d.z as usize, d.y as usize))
+        list.iter()
+            .enumerate()
+            .filter(|(i, d)| *i == 0 || (list[i - 1].z, list[i - 1].y) != (d.z, d.y))
+            .map(|(_, d)| (d.z as usize, d.y as usize))
     }
 
     /// Hands the derived row (z, y) to every patch that wants part of it.

@@ -145,8 +145,8 @@ fn sums(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
         r.number(Col::OhmicShare, ratio(current2, c.current2));
         r.number(Col::LorentzSin2, ratio(sum(Sum::Lorentz2), sum(Sum::Current2Field2)));
     }
-    let undirected = (c.fields.velocity && r.get(Col::LambSin2) == &Value::Missing)
-        || (c.fields.magnetic && r.get(Col::LorentzSin2) == &Value::Missing);
+    let undirected =
+        (c.fields.velocity && r.get(Col::LambSin2) == &Value::Missing) || (c.fields.magnetic && r.get(Col::LorentzSin2) == &Value::Missing);
     if undirected {
         flags.push("undefined_direction");
     }
@@ -212,13 +212,8 @@ fn shape(c: &Context, object: &Object, surface: Option<&SurfaceMeasures>, extent
             if curvature <= 0.0 {
                 flags.push("curvature_not_positive");
             }
-            evidence = Evidence {
-                euler: Some(s.euler_surface as f64 / 2.0),
-                curvature: Some(curvature),
-                planarity,
-                filamentarity,
-                ..evidence
-            };
+            evidence =
+                Evidence { euler: Some(s.euler_surface as f64 / 2.0), curvature: Some(curvature), planarity, filamentarity, ..evidence };
         }
     }
     r.set(Col::Class, Value::Text(class(&evidence).to_string()));

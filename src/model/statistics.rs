@@ -74,7 +74,7 @@ pub struct IndicatorStats {
     pub min: f64,
     /// Largest value.
     pub max: f64,
-    /// Counts for a level by volume, where one was asked for.
+    /// Counts for a level by volume, where one was asked for; they are large, so parts of a box share one.
     pub quantiles: Option<Quantiles>,
 }
 

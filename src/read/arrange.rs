@@ -20,15 +20,8 @@ pub(super) struct Arrangement {
 ///
 /// # Panics
 /// When the numbers of names and headers differ or are zero.
-pub(super) fn arrange(
-    choices: &[Choice],
-    headers: &[Header],
-    order: &Order,
-) -> Result<Arrangement> {
-    let sets: Vec<(Field, usize)> = choices
-        .iter()
-        .flat_map(|(f, names)| names.iter().map(|_| (*f, names.len())))
-        .collect();
+pub(super) fn arrange(choices: &[Choice], headers: &[Header], order: &Order) -> Result<Arrangement> {
+    let sets: Vec<(Field, usize)> = choices.iter().flat_map(|(f, names)| names.iter().map(|_| (*f, names.len()))).collect();
     assert_eq!(sets.len(), headers.len(), "one header a name");
     let mut axes = Vec::with_capacity(headers.len());
     for (header, &(field, names)) in headers.iter().zip(&sets) {
@@ -39,8 +32,7 @@ pub(super) fn arrange(
     for (i, header) in headers.iter().enumerate() {
         let own = samples_of(i);
         if own != samples {
-            let text =
-                |n: [usize; 3]| format!("{} x {} x {} samples along x, y, z", n[0], n[1], n[2]);
+            let text = |n: [usize; 3]| format!("{} x {} x {} samples along x, y, z", n[0], n[1], n[2]);
             return Err(header
                 .fault("cannot use the dataset")
                 .expected(format!("{} as in {}", text(samples), headers[0].label))
@@ -50,9 +42,7 @@ pub(super) fn arrange(
         if own.iter().any(|&n| n < FEWEST) {
             return Err(header
                 .fault("cannot use the dataset")
-                .expected(format!(
-                    "at least {FEWEST} samples along every axis (order-8 differences need 9)"
-                ))
+                .expected(format!("at least {FEWEST} samples along every axis (order-8 differences need 9)"))
                 .found(header.shape_text())
                 .hint("--order gives the axes slowest first, with c for a component axis"));
         }
@@ -70,20 +60,14 @@ fn axes_of(header: &Header, field: Field, names: usize, order: &Order) -> Result
             .fault("cannot use the dataset")
             .expected("rank 3, as one of three components")
             .found(found())
-            .hint(format!(
-                "a dataset with a component axis is named alone: {} NAME",
-                field.flag()
-            )));
+            .hint(format!("a dataset with a component axis is named alone: {} NAME", field.flag())));
     }
     if header.shape.len() != 4 {
         return Err(header
             .fault("cannot use the dataset")
             .expected("rank 4, three space axes and a component axis")
             .found(found())
-            .hint(format!(
-                "{} takes three names where every component has its own dataset",
-                field.flag()
-            )));
+            .hint(format!("{} takes three names where every component has its own dataset", field.flag())));
     }
     let (first, last) = (header.shape[0] == 3, header.shape[3] == 3);
     let end = match (order.component, first, last) {

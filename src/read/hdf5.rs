@@ -5,9 +5,7 @@ use std::path::Path;
 
 use ::hdf5::dataset::Layout;
 use ::hdf5::types::{FloatSize, TypeDescriptor};
-use ::hdf5::{
-    Dataset, Datatype, File, Group, H5Type, Hyperslab, Location, LocationType, SliceOrIndex,
-};
+use ::hdf5::{Dataset, Datatype, File, Group, H5Type, Hyperslab, Location, LocationType, SliceOrIndex};
 use ndarray::IxDyn;
 
 use crate::base::error::{Error, Result};
@@ -35,31 +33,13 @@ pub(super) struct ChunkedArray {
 
 impl ChunkedArray {
     /// Reads `count` values from `start` along every axis into `out`, slowest axis first.
-    pub fn read_block<T: H5Type + Copy>(
-        &self,
-        start: &[usize],
-        count: &[usize],
-        out: &mut [T],
-    ) -> Result<()> {
-        let slices: Vec<SliceOrIndex> = start
-            .iter()
-            .zip(count)
-            .map(|(&s, &c)| (s..s + c).into())
-            .collect();
+    pub fn read_block<T: H5Type + Copy>(&self, start: &[usize], count: &[usize], out: &mut [T]) -> Result<()> {
+        let slices: Vec<SliceOrIndex> = start.iter().zip(count).map(|(&s, &c)| (s..s + c).into()).collect();
         let values = self
             .dataset
             .read_slice::<T, _, IxDyn>(Hyperslab::from(slices))
-            .map_err(|e| {
-                self.header
-                    .fault("cannot read values")
-                    .found(condense(&e))
-                    .hint("the file is damaged: copy or write it again")
-            })?;
-        out.copy_from_slice(
-            values
-                .as_slice()
-                .expect("the library fills in standard order"),
-        );
+            .map_err(|e| self.header.fault("cannot read values").found(condense(&e)).hint("the file is damaged: copy or write it again"))?;
+        out.copy_from_slice(values.as_slice().expect("the library fills in standard order"));
         Ok(())
     }
 }
@@ -67,11 +47,7 @@ impl ChunkedArray {
 /// Opens the file, checks its datasets and readies them for reading.
 pub(super) fn open(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays> {
     super::superblock::check(path)?;
-    let refused = |e: ::hdf5::Error| {
-        Error::input("cannot read the HDF5 file")
-            .at(path)
-            .found(condense(&e))
-    };
+    let refused = |e: ::hdf5::Error| Error::input("cannot read the HDF5 file").at(path).found(condense(&e));
     let file = File::open(path).map_err(refused)?;
     let choices = choose(spec, |name| file.dataset(name).ok().map(|d| d.ndim()));
     if choices.is_empty() {
@@ -81,11 +57,7 @@ pub(super) fn open(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays
             .found(listing(&file))
             .hint(HINT));
     }
-    let names: Vec<String> = choices
-        .iter()
-        .flat_map(|(_, names)| names)
-        .map(|n| rooted(n))
-        .collect();
+    let names: Vec<String> = choices.iter().flat_map(|(_, names)| names).map(|n| rooted(n)).collect();
     let mut datasets = Vec::new();
     let mut headers = Vec::new();
     for name in &names {
@@ -95,11 +67,7 @@ pub(super) fn open(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays
     }
     let arrangement = arrange(&choices, &headers, &order)?;
     let time = time_of(&file).or_else(|| time_of(&datasets[0]));
-    let plans: Vec<Plan> = datasets
-        .iter()
-        .zip(&arrangement.axes)
-        .map(|(d, axes)| Plan::new(path, d, axes))
-        .collect();
+    let plans: Vec<Plan> = datasets.iter().zip(&arrangement.axes).map(|(d, axes)| Plan::new(path, d, axes)).collect();
 
     // The chunk cache is settled when a file is opened first: let go of everything, then open again.
     let cached: Vec<&Plan> = plans.iter().filter(|p| p.layer_chunks > 0).collect();
@@ -107,61 +75,24 @@ pub(super) fn open(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays
         file
     } else {
         let share = CACHE_LIMIT / cached.len();
-        let bytes = cached
-            .iter()
-            .map(|p| p.layer_bytes)
-            .max()
-            .unwrap_or(0)
-            .clamp(CACHE_LEAST, share);
+        let bytes = cached.iter().map(|p| p.layer_bytes).max().unwrap_or(0).clamp(CACHE_LEAST, share);
         // A prime well above the number of chunks held keeps them from evicting each other.
-        let slots = if cached.iter().all(|p| p.layer_chunks < 1242) {
-            12_421
-        } else {
-            1_000_003
-        };
+        let slots = if cached.iter().all(|p| p.layer_chunks < 1242) { 12_421 } else { 1_000_003 };
         drop((datasets, file));
-        File::with_options()
-            .with_fapl(|p| p.chunk_cache(slots, bytes, 1.0))
-            .open(path)
-            .map_err(refused)?
+        File::with_options().with_fapl(|p| p.chunk_cache(slots, bytes, 1.0)).open(path).map_err(refused)?
     };
     let mut arrays = Vec::new();
-    for (((header, axes), plan), name) in headers
-        .into_iter()
-        .zip(arrangement.axes)
-        .zip(plans)
-        .zip(&names)
-    {
+    for (((header, axes), plan), name) in headers.into_iter().zip(arrangement.axes).zip(plans).zip(&names) {
         let store = match plan.offset {
             Some(offset) => {
-                let plain = fs::File::open(path)
-                    .map_err(|e| header.fault("cannot open the file").found(e.to_string()))?;
-                Store::Raw(RawArray::new(
-                    header.clone(),
-                    plain,
-                    offset,
-                    cfg!(target_endian = "big"),
-                ))
+                let plain = fs::File::open(path).map_err(|e| header.fault("cannot open the file").found(e.to_string()))?;
+                Store::Raw(RawArray::new(header.clone(), plain, offset, cfg!(target_endian = "big")))
             }
-            None => Store::Library(ChunkedArray {
-                header: header.clone(),
-                dataset: find(&file, path, name)?,
-            }),
+            None => Store::Library(ChunkedArray { header: header.clone(), dataset: find(&file, path, name)? }),
         };
-        arrays.push(Array {
-            header,
-            axes,
-            store,
-            depth: plan.depth,
-            filtered: plan.filtered,
-        });
+        arrays.push(Array { header, axes, store, depth: plan.depth, filtered: plan.filtered });
     }
-    Ok(Arrays {
-        arrays,
-        fields: fields_of(choices.iter().map(|c| c.0)),
-        samples: arrangement.samples,
-        time,
-    })
+    Ok(Arrays { arrays, fields: fields_of(choices.iter().map(|c| c.0)), samples: arrangement.samples, time })
 }
 
 /// How a dataset is best read.
@@ -180,29 +111,19 @@ impl Plan {
     fn new(path: &Path, dataset: &Dataset, axes: &Axes) -> Plan {
         let shape = dataset.shape();
         let dtype = dataset.dtype().ok();
-        let native = dtype
-            .as_ref()
-            .is_some_and(|t| t.is::<f32>() || t.is::<f64>());
+        let native = dtype.as_ref().is_some_and(|t| t.is::<f32>() || t.is::<f64>());
         // A link may lead into another file, whose bytes are not those of `path`.
         let here = Path::new(&dataset.filename()) == path;
         let contiguous = dataset.layout() == Layout::Contiguous;
         let offset = dataset.offset().filter(|_| native && here && contiguous);
-        let mut plan = Plan {
-            offset,
-            depth: 1,
-            filtered: !dataset.filters().is_empty(),
-            layer_chunks: 0,
-            layer_bytes: 0,
-        };
+        let mut plan = Plan { offset, depth: 1, filtered: !dataset.filters().is_empty(), layer_chunks: 0, layer_bytes: 0 };
         if let Some(chunk) = dataset.chunk() {
             let z = axes.space[2];
             let others = (0..shape.len()).filter(|&a| a != z);
             plan.depth = chunk[z].clamp(1, shape[z]);
             plan.layer_chunks = others.map(|a| shape[a].div_ceil(chunk[a])).product();
             let bytes = dtype.map_or(8, |t| t.size());
-            plan.layer_bytes = chunk
-                .iter()
-                .fold(bytes * plan.layer_chunks, |all, &c| all.saturating_mul(c));
+            plan.layer_bytes = chunk.iter().fold(bytes * plan.layer_chunks, |all, &c| all.saturating_mul(c));
         }
         plan
     }
@@ -217,36 +138,21 @@ fn find(file: &File, path: &Path, name: &str) -> Result<Dataset> {
     match file.loc_type_by_name(name) {
         Ok(LocationType::Dataset) => {}
         Ok(LocationType::Group) => {
-            return Err(fault("cannot use the dataset")
-                .expected("a dataset")
-                .found("a group")
-                .hint(HINT));
+            return Err(fault("cannot use the dataset").expected("a dataset").found("a group").hint(HINT));
         }
         Ok(_) => {
-            return Err(fault("cannot use the dataset")
-                .expected("a dataset")
-                .found("another object")
-                .hint(HINT));
+            return Err(fault("cannot use the dataset").expected("a dataset").found("another object").hint(HINT));
         }
         Err(_) => {
-            return Err(fault("cannot find the dataset")
-                .found(format!("only {}", listing(file)))
-                .hint(HINT));
+            return Err(fault("cannot find the dataset").found(format!("only {}", listing(file))).hint(HINT));
         }
     }
-    file.dataset(name)
-        .map_err(|e| fault("cannot open the dataset").found(condense(&e)))
+    file.dataset(name).map_err(|e| fault("cannot open the dataset").found(condense(&e)))
 }
 
 fn header(path: &Path, name: &str, dataset: &Dataset) -> Result<Header> {
-    let refused = |e: ::hdf5::Error| {
-        Error::input("cannot open the dataset")
-            .at(path)
-            .item(name)
-            .found(condense(&e))
-    };
-    let precision = precision(&dataset.dtype().map_err(refused)?)
-        .map_err(|found| wrong_type(|e| e.at(path).item(name), found))?;
+    let refused = |e: ::hdf5::Error| Error::input("cannot open the dataset").at(path).item(name).found(condense(&e));
+    let precision = precision(&dataset.dtype().map_err(refused)?).map_err(|found| wrong_type(|e| e.at(path).item(name), found))?;
     if let Some(filter) = dataset.filters().iter().find(|f| !f.is_available()) {
         return Err(Error::input("cannot use the dataset")
             .at(path)
@@ -257,13 +163,7 @@ fn header(path: &Path, name: &str, dataset: &Dataset) -> Result<Header> {
     }
     let shape = dataset.get_shape().map_err(refused)?;
     let file = path.file_name().unwrap_or_default().to_string_lossy();
-    Ok(Header {
-        path: path.into(),
-        item: Some(name.into()),
-        label: format!("{file}:{name}"),
-        shape,
-        precision,
-    })
+    Ok(Header { path: path.into(), item: Some(name.into()), label: format!("{file}:{name}"), shape, precision })
 }
 
 /// The width of a type, or its name if it is neither f32 nor f64.
@@ -327,9 +227,6 @@ fn list(group: &Group, prefix: &str, depth: usize, found: &mut Vec<String>) {
 
 /// The innermost, most telling line of the library's stack of messages.
 fn condense(error: &::hdf5::Error) -> String {
-    let text = error
-        .stack()
-        .and_then(|s| s.last().map(|f| f.desc().to_owned()))
-        .unwrap_or_else(|| error.to_string());
+    let text = error.stack().and_then(|s| s.last().map(|f| f.desc().to_owned())).unwrap_or_else(|| error.to_string());
     text.lines().map(str::trim).collect::<Vec<_>>().join(" ")
 }

@@ -64,11 +64,7 @@ pub(super) fn shape_text(shape: &[usize]) -> String {
     if shape.is_empty() {
         return "a single value".into();
     }
-    shape
-        .iter()
-        .map(usize::to_string)
-        .collect::<Vec<_>>()
-        .join("x")
+    shape.iter().map(usize::to_string).collect::<Vec<_>>().join("x")
 }
 
 /// The error for values that are neither f32 nor f64.

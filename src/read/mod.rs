@@ -69,9 +69,7 @@ pub fn open(snapshot: &Path, spec: &InputSpec) -> Result<Opened> {
                 .found("nothing")
                 .hint("check the path")
         } else {
-            Error::input("cannot open the snapshot")
-                .at(snapshot)
-                .found(e.to_string())
+            Error::input("cannot open the snapshot").at(snapshot).found(e.to_string())
         }
     })?;
     let arrays = if kind.is_dir() {
@@ -84,12 +82,7 @@ pub fn open(snapshot: &Path, spec: &InputSpec) -> Result<Opened> {
     let grid = spec.grid(arrays.samples);
     let time = arrays.time;
     let datasets = arrays.labels();
-    Ok(Opened {
-        source: source::assemble(arrays, grid),
-        time,
-        name: name_of(snapshot, kind.is_dir()),
-        datasets,
-    })
+    Ok(Opened { source: source::assemble(arrays, grid), time, name: name_of(snapshot, kind.is_dir()), datasets })
 }
 
 fn name_of(snapshot: &Path, folder: bool) -> String {
@@ -99,7 +92,5 @@ fn name_of(snapshot: &Path, folder: bool) -> String {
         let name = if folder { p.file_name() } else { p.file_stem() };
         name.map(|n| n.to_string_lossy().into_owned())
     };
-    part(snapshot)
-        .or_else(|| full.ok().and_then(|p| part(&p)))
-        .unwrap_or_else(|| "snapshot".into())
+    part(snapshot).or_else(|| full.ok().and_then(|p| part(&p))).unwrap_or_else(|| "snapshot".into())
 }

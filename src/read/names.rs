@@ -24,12 +24,7 @@ impl Field {
 /// One field and the names of its arrays: three, or one with a component axis.
 pub(super) type Choice = (Field, Vec<String>);
 
-const VELOCITY: [&[&str]; 4] = [
-    &["u", "v", "w"],
-    &["ux", "uy", "uz"],
-    &["vx", "vy", "vz"],
-    &["velocity"],
-];
+const VELOCITY: [&[&str]; 4] = [&["u", "v", "w"], &["ux", "uy", "uz"], &["vx", "vy", "vz"], &["velocity"]];
 const MAGNETIC: [&[&str]; 3] = [&["bx", "by", "bz"], &["magnetic"], &["b"]];
 
 /// The guesses as text for messages.
@@ -44,25 +39,16 @@ pub(super) const HINT: &str = "--velocity U,V,W or --magnetic BX,BY,BZ names the
 pub(super) fn choose(spec: &InputSpec, rank: impl Fn(&str) -> Option<usize>) -> Vec<Choice> {
     let mut chosen = Vec::new();
     if spec.velocity.is_some() || spec.magnetic.is_some() {
-        for (field, names) in [
-            (Field::Velocity, &spec.velocity),
-            (Field::Magnetic, &spec.magnetic),
-        ] {
+        for (field, names) in [(Field::Velocity, &spec.velocity), (Field::Magnetic, &spec.magnetic)] {
             if let Some(names) = names {
                 chosen.push((field, names.clone()));
             }
         }
         return chosen;
     }
-    for (field, sets) in [
-        (Field::Velocity, &VELOCITY[..]),
-        (Field::Magnetic, &MAGNETIC[..]),
-    ] {
+    for (field, sets) in [(Field::Velocity, &VELOCITY[..]), (Field::Magnetic, &MAGNETIC[..])] {
         // A lone `b` of rank 3 is a scalar (buoyancy), not a vector field.
-        let complete = |set: &&&[&str]| {
-            set.iter()
-                .all(|name| rank(name).is_some_and(|r| set.len() == 3 || r == 4))
-        };
+        let complete = |set: &&&[&str]| set.iter().all(|name| rank(name).is_some_and(|r| set.len() == 3 || r == 4));
         if let Some(set) = sets.iter().find(complete) {
             chosen.push((field, set.iter().map(|n| n.to_string()).collect()));
         }

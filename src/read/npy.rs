@@ -31,11 +31,7 @@ struct NpyFile {
 
 /// One file: the velocity, unless only the magnetic field is named.
 pub(super) fn open_file(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays> {
-    let own = path
-        .file_name()
-        .unwrap_or_default()
-        .to_string_lossy()
-        .into_owned();
+    let own = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
     let (field, named) = match (&spec.velocity, &spec.magnetic) {
         (Some(_), Some(_)) => {
             return Err(Error::usage("cannot read two fields from one npy file")
@@ -68,8 +64,7 @@ pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: Order) -> Resu
     let rank = |name: &str| {
         let path = file_of(name);
         // A damaged file counts as present, so that its damage is reported and not its absence.
-        path.is_file()
-            .then(|| read_header(&path, String::new()).map_or(4, |f| f.header.shape.len()))
+        path.is_file().then(|| read_header(&path, String::new()).map_or(4, |f| f.header.shape.len()))
     };
     let choices = choose(spec, rank);
     if choices.is_empty() {
@@ -83,10 +78,7 @@ pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: Order) -> Resu
     for name in choices.iter().flat_map(|(_, names)| names) {
         let path = file_of(name);
         if !path.is_file() {
-            return Err(Error::input("cannot find the file")
-                .at(&path)
-                .found(format!("only {}", listing(folder)))
-                .hint(HINT));
+            return Err(Error::input("cannot find the file").at(&path).found(format!("only {}", listing(folder))).hint(HINT));
         }
         files.push(read_header(&path, label(folder, name))?);
     }
@@ -107,26 +99,15 @@ fn assemble(choices: &[Choice], files: Vec<NpyFile>, order: &Order) -> Result<Ar
             filtered: false,
         })
         .collect();
-    Ok(Arrays {
-        arrays,
-        fields: fields_of(choices.iter().map(|c| c.0)),
-        samples: arrangement.samples,
-        time: None,
-    })
+    Ok(Arrays { arrays, fields: fields_of(choices.iter().map(|c| c.0)), samples: arrangement.samples, time: None })
 }
 
 fn with_extension(name: &str) -> String {
-    if name.ends_with(".npy") {
-        name.into()
-    } else {
-        format!("{name}.npy")
-    }
+    if name.ends_with(".npy") { name.into() } else { format!("{name}.npy") }
 }
 
 fn label(folder: &Path, name: &str) -> String {
-    let folder = folder
-        .file_name()
-        .map_or(".".into(), |n| n.to_string_lossy());
+    let folder = folder.file_name().map_or(".".into(), |n| n.to_string_lossy());
     format!("{folder}/{}", with_extension(name))
 }
 
@@ -172,21 +153,14 @@ fn read_header(path: &Path, label: String) -> Result<NpyFile> {
     };
     let mut take = |count: usize| -> Result<Vec<u8>> {
         let mut read = Vec::new();
-        file.by_ref()
-            .take(count as u64)
-            .read_to_end(&mut read)
-            .map_err(io)?;
+        file.by_ref().take(count as u64).read_to_end(&mut read).map_err(io)?;
         Ok(read)
     };
     let head = take(8)?;
     if !head.starts_with(b"\x93NUMPY") {
         return Err(fault()
             .expected("the signature \"\\x93NUMPY\"")
-            .found(if head.is_empty() {
-                "an empty file".into()
-            } else {
-                format!("a file beginning \"{}\"", head.escape_ascii())
-            })
+            .found(if head.is_empty() { "an empty file".into() } else { format!("a file beginning \"{}\"", head.escape_ascii()) })
             .hint("write it with numpy.save"));
     }
     if head.len() < 8 {
@@ -196,23 +170,16 @@ fn read_header(path: &Path, label: String) -> Result<NpyFile> {
         (1, 0) => 2,
         (2 | 3, 0) => 4,
         (major, minor) => {
-            return Err(fault()
-                .expected("format version 1.0, 2.0 or 3.0")
-                .found(format!("{major}.{minor}")));
+            return Err(fault().expected("format version 1.0, 2.0 or 3.0").found(format!("{major}.{minor}")));
         }
     };
     let size = take(digits)?;
     if size.len() < digits {
         return Err(truncated());
     }
-    let size = size
-        .iter()
-        .rev()
-        .fold(0usize, |sum, &b| sum << 8 | usize::from(b));
+    let size = size.iter().rev().fold(0usize, |sum, &b| sum << 8 | usize::from(b));
     if size > HEADER_LIMIT {
-        return Err(fault()
-            .expected(format!("a header of at most {HEADER_LIMIT} bytes"))
-            .found(format!("{size}")));
+        return Err(fault().expected(format!("a header of at most {HEADER_LIMIT} bytes")).found(format!("{size}")));
     }
     let text = take(size)?;
     if text.len() < size {
@@ -222,10 +189,7 @@ fn read_header(path: &Path, label: String) -> Result<NpyFile> {
     let Some(said) = Dictionary::parse(&text) else {
         return Err(fault()
             .expected("a header with descr, fortran_order and shape")
-            .found(format!(
-                "{:?}",
-                text.trim().chars().take(80).collect::<String>()
-            )));
+            .found(format!("{:?}", text.trim().chars().take(80).collect::<String>())));
     };
     let (precision, big_endian) = match said.descr {
         "'<f4'" => (Precision::F32, false),
@@ -239,35 +203,16 @@ fn read_header(path: &Path, label: String) -> Result<NpyFile> {
         shape.reverse();
     }
     let offset = (8 + digits + size) as u64;
-    let bytes = shape.iter().try_fold(precision.bytes() as u64, |all, &n| {
-        all.checked_mul(n as u64)
-    });
+    let bytes = shape.iter().try_fold(precision.bytes() as u64, |all, &n| all.checked_mul(n as u64));
     let wanted = bytes.and_then(|b| b.checked_add(offset));
     if wanted != Some(length) {
         return Err(fault()
-            .expected(wanted.map_or("a possible shape".into(), |w| {
-                format!("{w} bytes, as its header says")
-            }))
-            .found(if wanted.is_some() {
-                format!("{length}")
-            } else {
-                shape_text(&shape)
-            })
+            .expected(wanted.map_or("a possible shape".into(), |w| format!("{w} bytes, as its header says")))
+            .found(if wanted.is_some() { format!("{length}") } else { shape_text(&shape) })
             .hint("the file is truncated or damaged: copy or write it again"));
     }
-    let header = Header {
-        path: path.into(),
-        item: None,
-        label,
-        shape,
-        precision,
-    };
-    Ok(NpyFile {
-        header,
-        file,
-        offset,
-        big_endian,
-    })
+    let header = Header { path: path.into(), item: None, label, shape, precision };
+    Ok(NpyFile { header, file, offset, big_endian })
 }
 
 /// The three entries of a header.
@@ -283,17 +228,10 @@ impl Dictionary<'_> {
         let body = text.trim().strip_prefix('{')?.strip_suffix('}')?;
         let after = |key: &str| {
             let at = body.find(&format!("'{key}'"))? + key.len() + 2;
-            body[at..]
-                .trim_start()
-                .strip_prefix(':')
-                .map(str::trim_start)
+            body[at..].trim_start().strip_prefix(':').map(str::trim_start)
         };
         let descr = after("descr")?;
-        let end = if descr.starts_with('[') {
-            descr.rfind(']')? + 1
-        } else {
-            descr[1..].find('\'')? + 2
-        };
+        let end = if descr.starts_with('[') { descr.rfind(']')? + 1 } else { descr[1..].find('\'')? + 2 };
         let fortran = after("fortran_order")?;
         let fortran = match (fortran.starts_with("True"), fortran.starts_with("False")) {
             (true, _) => true,
@@ -301,16 +239,7 @@ impl Dictionary<'_> {
             _ => return None,
         };
         let shape = after("shape")?.strip_prefix('(')?.split_once(')')?.0;
-        let shape = shape
-            .split(',')
-            .map(str::trim)
-            .filter(|n| !n.is_empty())
-            .map(|n| n.parse().ok())
-            .collect::<Option<_>>()?;
-        Some(Dictionary {
-            descr: descr.get(..end)?,
-            fortran,
-            shape,
-        })
+        let shape = shape.split(',').map(str::trim).filter(|n| !n.is_empty()).map(|n| n.parse().ok()).collect::<Option<_>>()?;
+        Some(Dictionary { descr: descr.get(..end)?, fortran, shape })
     }
 }

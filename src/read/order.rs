@@ -37,11 +37,7 @@ impl Order {
                 let mut letters = ['x'; 3];
                 letters[y] = 'y';
                 letters[z] = 'z';
-                Ok(Order {
-                    places: [x, y, z],
-                    component,
-                    letters,
-                })
+                Ok(Order { places: [x, y, z], component, letters })
             }
             _ => Err(Error::usage("cannot use the axis order")
                 .item("--order")
@@ -70,10 +66,7 @@ impl Axes {
     /// The axes of an array of the given order.
     pub fn new(order: &Order, component: Option<End>) -> Axes {
         let shift = usize::from(component == Some(End::First));
-        Axes {
-            space: order.places.map(|p| p + shift),
-            component,
-        }
+        Axes { space: order.places.map(|p| p + shift), component }
     }
 
     /// Number of axes.
@@ -129,20 +122,11 @@ mod tests {
     fn blocks_pick_planes_and_components() {
         let o = Order::parse("xzy").unwrap();
         let n = [12, 10, 9];
-        assert_eq!(
-            Axes::new(&o, None).block(n, 2, 5, 0),
-            (vec![0, 2, 0], vec![12, 3, 10])
-        );
+        assert_eq!(Axes::new(&o, None).block(n, 2, 5, 0), (vec![0, 2, 0], vec![12, 3, 10]));
         let first = Axes::new(&o, Some(End::First));
-        assert_eq!(
-            first.block(n, 2, 5, 1),
-            (vec![1, 0, 2, 0], vec![1, 12, 3, 10])
-        );
+        assert_eq!(first.block(n, 2, 5, 1), (vec![1, 0, 2, 0], vec![1, 12, 3, 10]));
         let last = Axes::new(&o, Some(End::Last));
-        assert_eq!(
-            last.block(n, 2, 5, 1),
-            (vec![0, 2, 0, 0], vec![12, 3, 10, 3])
-        );
+        assert_eq!(last.block(n, 2, 5, 1), (vec![0, 2, 0, 0], vec![12, 3, 10, 3]));
     }
 
     #[test]

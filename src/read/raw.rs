@@ -34,24 +34,13 @@ struct Run {
 impl RawArray {
     /// The array whose first value is at byte `offset` of `file`.
     pub fn new(header: Header, file: File, offset: u64, big_endian: bool) -> RawArray {
-        RawArray {
-            header,
-            file,
-            offset,
-            swap: big_endian != cfg!(target_endian = "big"),
-            buffer: Vec::new(),
-        }
+        RawArray { header, file, offset, swap: big_endian != cfg!(target_endian = "big"), buffer: Vec::new() }
     }
 
     /// Reads `count` values from `start` along every axis into `out`, slowest axis first.
     ///
     /// Values are widened where `T` is wider than what is stored.
-    pub fn read_block<T: Real>(
-        &mut self,
-        start: &[usize],
-        count: &[usize],
-        out: &mut [T],
-    ) -> Result<()> {
+    pub fn read_block<T: Real>(&mut self, start: &[usize], count: &[usize], out: &mut [T]) -> Result<()> {
         let width = self.header.precision.bytes() as u64;
         let same = size_of::<T>() as u64 == width;
         let mut batch: Vec<Run> = Vec::new();
@@ -68,22 +57,11 @@ impl RawArray {
             if end - run.byte >= SPAN / 4 {
                 self.read_batch(&batch, out)?;
                 batch.clear();
-                let part = if same {
-                    run.values
-                } else {
-                    (SPAN / width) as usize
-                };
+                let part = if same { run.values } else { (SPAN / width) as usize };
                 for first in (0..run.values).step_by(part) {
                     let values = part.min(run.values - first);
                     let byte = run.byte + first as u64 * width;
-                    self.read_batch(
-                        &[Run {
-                            byte,
-                            place: run.place + first,
-                            values,
-                        }],
-                        out,
-                    )?;
+                    self.read_batch(&[Run { byte, place: run.place + first, values }], out)?;
                 }
             } else {
                 batch.push(run);
@@ -99,12 +77,7 @@ impl RawArray {
         let width = self.header.precision.bytes();
         if batch.len() == 1 && size_of::<T>() == width {
             let out = &mut out[first.place..first.place + first.values];
-            fill(
-                &mut self.file,
-                &self.header,
-                first.byte,
-                bytemuck::cast_slice_mut(out),
-            )?;
+            fill(&mut self.file, &self.header, first.byte, bytemuck::cast_slice_mut(out))?;
             if self.swap {
                 swap_in_place(out);
             }
@@ -122,18 +95,10 @@ impl RawArray {
                     swap_in_place(to);
                 }
             } else {
-                assert_eq!(
-                    self.header.precision,
-                    Precision::F32,
-                    "values are never narrowed"
-                );
+                assert_eq!(self.header.precision, Precision::F32, "values are never narrowed");
                 for (o, b) in to.iter_mut().zip(from.as_chunks::<4>().0) {
                     let bits = u32::from_ne_bytes(*b);
-                    *o = T::of(f64::from(f32::from_bits(if self.swap {
-                        bits.swap_bytes()
-                    } else {
-                        bits
-                    })));
+                    *o = T::of(f64::from(f32::from_bits(if self.swap { bits.swap_bytes() } else { bits })));
                 }
             }
         }
@@ -142,39 +107,27 @@ impl RawArray {
 }
 
 fn fill(file: &mut File, header: &Header, byte: u64, to: &mut [u8]) -> Result<()> {
-    file.seek(SeekFrom::Start(byte))
-        .and_then(|_| file.read_exact(to))
-        .map_err(|e| {
-            header
-                .fault("cannot read values")
-                .found(match e.kind() {
-                    ErrorKind::UnexpectedEof => "the end of the file".into(),
-                    _ => e.to_string(),
-                })
-                .hint("the file changed or its disk failed")
-        })
+    file.seek(SeekFrom::Start(byte)).and_then(|_| file.read_exact(to)).map_err(|e| {
+        header
+            .fault("cannot read values")
+            .found(match e.kind() {
+                ErrorKind::UnexpectedEof => "the end of the file".into(),
+                _ => e.to_string(),
+            })
+            .hint("the file changed or its disk failed")
+    })
 }
 
 fn swap_in_place<T: Real>(values: &mut [T]) {
     if size_of::<T>() == 4 {
-        bytemuck::cast_slice_mut::<T, u32>(values)
-            .iter_mut()
-            .for_each(|v| *v = v.swap_bytes());
+        bytemuck::cast_slice_mut::<T, u32>(values).iter_mut().for_each(|v| *v = v.swap_bytes());
     } else {
-        bytemuck::cast_slice_mut::<T, u64>(values)
-            .iter_mut()
-            .for_each(|v| *v = v.swap_bytes());
+        bytemuck::cast_slice_mut::<T, u64>(values).iter_mut().for_each(|v| *v = v.swap_bytes());
     }
 }
 
 /// The runs of a block in ascending order. Trailing axes taken whole join into one run.
-fn runs(
-    shape: &[usize],
-    start: &[usize],
-    count: &[usize],
-    offset: u64,
-    width: u64,
-) -> impl Iterator<Item = Run> + use<> {
+fn runs(shape: &[usize], start: &[usize], count: &[usize], offset: u64, width: u64) -> impl Iterator<Item = Run> + use<> {
     let mut inner = shape.len() - 1;
     let mut values = count[inner];
     while inner > 0 && count[inner] == shape[inner] {
@@ -185,12 +138,7 @@ fn runs(
     for a in (0..shape.len() - 1).rev() {
         step[a] = step[a + 1] * shape[a + 1] as u64;
     }
-    let base = offset
-        + start
-            .iter()
-            .zip(&step)
-            .map(|(&s, &w)| s as u64 * w)
-            .sum::<u64>();
+    let base = offset + start.iter().zip(&step).map(|(&s, &w)| s as u64 * w).sum::<u64>();
     let outer = count[..inner].to_vec();
     let total: usize = outer.iter().product();
     (0..total).map(move |i| {
@@ -200,10 +148,6 @@ fn runs(
             byte += (rest % outer[a]) as u64 * step[a];
             rest /= outer[a];
         }
-        Run {
-            byte,
-            place: i * values,
-            values,
-        }
+        Run { byte, place: i * values, values }
     })
 }

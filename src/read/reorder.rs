@@ -24,11 +24,7 @@ pub(super) fn reorder<T: Copy>(from: &[T], stride: [usize; 3], n: [usize; 3], to
         return;
     }
     // `fast` is the axis along which `from` is read in sequence; tiles span it and x.
-    let (fast, slow) = if stride[1] < stride[2] {
-        (1, 2)
-    } else {
-        (2, 1)
-    };
+    let (fast, slow) = if stride[1] < stride[2] { (1, 2) } else { (2, 1) };
     for s in 0..n[slow] {
         for f0 in (0..n[fast]).step_by(TILE) {
             for x0 in (0..n[0]).step_by(TILE) {
@@ -52,17 +48,7 @@ mod tests {
     #[test]
     fn every_order_and_interleaving_arrives() {
         let n = [37, 18, 21];
-        for (axes, width) in [
-            [0, 1, 2],
-            [0, 2, 1],
-            [1, 0, 2],
-            [1, 2, 0],
-            [2, 0, 1],
-            [2, 1, 0],
-        ]
-        .into_iter()
-        .flat_map(|a| [(a, 1), (a, 3)])
-        {
+        for (axes, width) in [[0, 1, 2], [0, 2, 1], [1, 0, 2], [1, 2, 0], [2, 0, 1], [2, 1, 0]].into_iter().flat_map(|a| [(a, 1), (a, 3)]) {
             // axes: x, y, z named fastest first.
             let mut stride = [0; 3];
             let mut step = width;
@@ -74,8 +60,7 @@ mod tests {
             for z in 0..n[2] {
                 for y in 0..n[1] {
                     for x in 0..n[0] {
-                        from[x * stride[0] + y * stride[1] + z * stride[2]] =
-                            (x + 100 * y + 10_000 * z) as u32;
+                        from[x * stride[0] + y * stride[1] + z * stride[2]] = (x + 100 * y + 10_000 * z) as u32;
                     }
                 }
             }

@@ -22,12 +22,7 @@ pub(super) enum Store {
 }
 
 impl Store {
-    fn read_block<T: Real + H5Type>(
-        &mut self,
-        start: &[usize],
-        count: &[usize],
-        out: &mut [T],
-    ) -> Result<()> {
+    fn read_block<T: Real + H5Type>(&mut self, start: &[usize], count: &[usize], out: &mut [T]) -> Result<()> {
         match self {
             Store::Raw(array) => array.read_block(start, count, out),
             Store::Library(array) => array.read_block(start, count, out),
@@ -70,10 +65,7 @@ impl Arrays {
 
 /// The fields that were chosen.
 pub(super) fn fields_of(chosen: impl Iterator<Item = Field>) -> Fields {
-    let mut fields = Fields {
-        velocity: false,
-        magnetic: false,
-    };
+    let mut fields = Fields { velocity: false, magnetic: false };
     for field in chosen {
         match field {
             Field::Velocity => fields.velocity = true,
@@ -85,11 +77,7 @@ pub(super) fn fields_of(chosen: impl Iterator<Item = Field>) -> Fields {
 
 /// The source: f64 when any array is, else f32.
 pub(super) fn assemble(arrays: Arrays, grid: Grid) -> AnySource {
-    if arrays
-        .arrays
-        .iter()
-        .any(|a| a.header.precision == Precision::F64)
-    {
+    if arrays.arrays.iter().any(|a| a.header.precision == Precision::F64) {
         AnySource::F64(Box::new(FileSource::<f64>::new(arrays, grid)))
     } else {
         AnySource::F32(Box::new(FileSource::<f32>::new(arrays, grid)))
@@ -105,12 +93,7 @@ struct FileSource<T> {
 
 impl<T> FileSource<T> {
     fn new(arrays: Arrays, grid: Grid) -> Self {
-        FileSource {
-            grid,
-            fields: arrays.fields,
-            arrays: arrays.arrays,
-            buffer: Vec::new(),
-        }
+        FileSource { grid, fields: arrays.fields, arrays: arrays.arrays, buffer: Vec::new() }
     }
 }
 
@@ -125,23 +108,12 @@ impl<T: Real + H5Type> PlaneSource<T> for FileSource<T> {
 
     fn read(&mut self, z0: usize, z1: usize, out: &mut [&mut [T]]) -> Result<()> {
         let [nx, ny, nz] = self.grid.n;
-        assert!(
-            z0 <= z1 && z1 <= nz,
-            "planes: expected a range inside 0..{nz}, got {z0}..{z1}"
-        );
-        assert_eq!(
-            out.len(),
-            self.fields.components(),
-            "slices (left) and components (right)"
-        );
+        assert!(z0 <= z1 && z1 <= nz, "planes: expected a range inside 0..{nz}, got {z0}..{z1}");
+        assert_eq!(out.len(), self.fields.components(), "slices (left) and components (right)");
         let planes = [nx, ny, z1 - z0];
         let values = nx * ny * (z1 - z0);
         for o in out.iter() {
-            assert_eq!(
-                o.len(),
-                values,
-                "length of a slice (left) and values of the planes (right)"
-            );
+            assert_eq!(o.len(), values, "length of a slice (left) and values of the planes (right)");
         }
         if z0 == z1 {
             return Ok(());
@@ -160,10 +132,7 @@ impl<T: Real + H5Type> PlaneSource<T> for FileSource<T> {
                 }
                 self.buffer.resize(count.iter().product(), T::ZERO);
                 array.store.read_block(&start, &count, &mut self.buffer)?;
-                let stride = array
-                    .axes
-                    .space
-                    .map(|a| count[a + 1..].iter().product::<usize>());
+                let stride = array.axes.space.map(|a| count[a + 1..].iter().product::<usize>());
                 if together {
                     for (i, o) in out.iter_mut().enumerate() {
                         reorder(&self.buffer[i..], stride, planes, o);

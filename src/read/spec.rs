@@ -61,10 +61,7 @@ impl InputSpec {
         let given = match (&self.lengths, &self.spacing) {
             (Some(l), None) => Ok(("--lengths", l)),
             (None, Some(s)) => Ok(("--spacing", s)),
-            (None, None) => Err((
-                "neither",
-                "--lengths 6.283185,6.283185,6.283185 for a 2 pi box",
-            )),
+            (None, None) => Err(("neither", "--lengths 6.283185,6.283185,6.283185 for a 2 pi box")),
             (Some(_), Some(_)) => Err(("both", "drop one of them")),
         };
         let (flag, values) = given.map_err(|(found, hint)| {
@@ -81,10 +78,7 @@ impl InputSpec {
                 .found(listed(values)));
         }
         if !self.origin.iter().all(|v| v.is_finite()) {
-            return Err(Error::usage("cannot place the box")
-                .item("--origin")
-                .expected("3 finite numbers")
-                .found(listed(&self.origin)));
+            return Err(Error::usage("cannot place the box").item("--origin").expected("3 finite numbers").found(listed(&self.origin)));
         }
         Ok(order)
     }
@@ -96,12 +90,7 @@ impl InputSpec {
             (None, Some(s)) => s,
             (None, None) => unreachable!("refused by check"),
         };
-        Grid {
-            n,
-            spacing,
-            origin: self.origin,
-            periodic: self.periodic,
-        }
+        Grid { n, spacing, origin: self.origin, periodic: self.periodic }
     }
 }
 
@@ -115,9 +104,7 @@ fn check_names(flag: &str, example: &str, names: Option<&[String]>) -> Result<()
             .hint(format!("{flag} {example}"))
     };
     if names.len() != 3 && names.len() != 1 {
-        return Err(fault(
-            "3 names (one dataset a component) or 1 name (a component axis)",
-        ));
+        return Err(fault("3 names (one dataset a component) or 1 name (a component axis)"));
     }
     if names.iter().any(|n| n.is_empty()) {
         return Err(fault("names that are not empty"));

@@ -19,10 +19,7 @@ pub(super) fn check(path: &Path) -> Result<()> {
     let length = file.metadata().map_err(io)?.len();
     let fault = || Error::input(WHAT).at(path);
     if length == 0 {
-        return Err(fault()
-            .expected("an HDF5 signature")
-            .found("an empty file")
-            .hint(TRUNCATED));
+        return Err(fault().expected("an HDF5 signature").found("an empty file").hint(TRUNCATED));
     }
     // The signature stands at 0, or at 512 and its doublings behind a user block.
     let mut at = 0;
@@ -44,10 +41,7 @@ pub(super) fn check(path: &Path) -> Result<()> {
         }
     }
     let block = bytes(&mut file, at, 96).map_err(io)?;
-    let (Some(&version), Some(&width)) = (
-        block.get(8),
-        block.get(if block.get(8) < Some(&2) { 13 } else { 9 }),
-    ) else {
+    let (Some(&version), Some(&width)) = (block.get(8), block.get(if block.get(8) < Some(&2) { 13 } else { 9 })) else {
         return Err(short(fault(), length));
     };
     // End of file is the third address of versions 0 and 1, which begin at 24 and 28, and of versions
@@ -65,24 +59,15 @@ pub(super) fn check(path: &Path) -> Result<()> {
     let Some(end) = block.get(first + 2 * width..first + 3 * width) else {
         return Err(short(fault(), length));
     };
-    let end = end
-        .iter()
-        .rev()
-        .fold(0u64, |sum, &b| sum << 8 | u64::from(b));
+    let end = end.iter().rev().fold(0u64, |sum, &b| sum << 8 | u64::from(b));
     if end > length {
-        return Err(fault()
-            .expected(format!("{end} bytes, as its header says"))
-            .found(format!("{length}"))
-            .hint(TRUNCATED));
+        return Err(fault().expected(format!("{end} bytes, as its header says")).found(format!("{length}")).hint(TRUNCATED));
     }
     Ok(())
 }
 
 fn short(fault: Error, length: u64) -> Error {
-    fault
-        .expected("a complete superblock")
-        .found(format!("a file of {length} bytes"))
-        .hint(TRUNCATED)
+    fault.expected("a complete superblock").found(format!("a file of {length} bytes")).hint(TRUNCATED)
 }
 
 fn bytes(file: &mut File, at: u64, count: u64) -> std::io::Result<Vec<u8>> {

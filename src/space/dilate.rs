@@ -47,12 +47,7 @@ struct Source<'a> {
     shift: i32,
 }
 
-pub(super) fn dilate(
-    object: Vec<Interval>,
-    margin: i32,
-    axes: [Axis; 3],
-    period: [Option<i32>; 3],
-) -> PatchShape {
+pub(super) fn dilate(object: Vec<Interval>, margin: i32, axes: [Axis; 3], period: [Option<i32>; 3]) -> PatchShape {
     let wide = along_x(&object, margin, axes[0]);
     let flat = along_y(&wide, margin, axes[1]);
     let full = along_z(&flat, margin, axes[2]);
@@ -112,10 +107,7 @@ fn along_y(cells: &Cells, margin: i32, axis: Axis) -> Cells {
             // The rows that stay within 0..n after the shift, and those that come back from the other side.
             let (below, above) = match axis {
                 Axis::Endless => (0, rows.len()),
-                Axis::Open(n) | Axis::Wrapped(n) => (
-                    rows.partition_point(|r| r.y + shift < 0),
-                    rows.partition_point(|r| r.y + shift < n),
-                ),
+                Axis::Open(n) | Axis::Wrapped(n) => (rows.partition_point(|r| r.y + shift < 0), rows.partition_point(|r| r.y + shift < n)),
             };
             sources.push(Source { rows: &rows[below..above], shift });
             if let Axis::Wrapped(n) = axis {
@@ -270,13 +262,7 @@ mod tests {
                 for margin in 0..=4 {
                     let periodic = axes.map(|a| !matches!(a, Axis::Open(_)));
                     let period = axes.map(|a| if let Axis::Wrapped(n) = a { Some(n) } else { None });
-                    let shape = PatchShape::around(
-                        object.clone(),
-                        margin as usize,
-                        n.map(|n| n as usize),
-                        periodic,
-                        period,
-                    );
+                    let shape = PatchShape::around(object.clone(), margin as usize, n.map(|n| n as usize), periodic, period);
                     let mut cells = Vec::new();
                     for (k, s) in shape.stored.iter().enumerate() {
                         assert_eq!(s.start, cells.len());

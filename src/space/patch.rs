@@ -58,13 +58,7 @@ impl PatchShape {
     ///
     /// # Panics
     /// When `object` is not sorted and disjoint, `margin` is not below every period, or a period is not that of the grid.
-    pub fn around(
-        object: Vec<Interval>,
-        margin: usize,
-        n: [usize; 3],
-        periodic: [bool; 3],
-        period: [Option<i32>; 3],
-    ) -> PatchShape {
+    pub fn around(object: Vec<Interval>, margin: usize, n: [usize; 3], periodic: [bool; 3], period: [Option<i32>; 3]) -> PatchShape {
         for w in object.windows(2) {
             let follows = (w[0].z, w[0].y, w[0].x + w[0].len as i32) <= (w[1].z, w[1].y, w[1].x);
             assert!(follows, "patch: expected sorted, disjoint intervals, got {:?} before {:?}", w[0], w[1]);

@@ -1,8 +1,8 @@
 //! Sums of gradient quantities and indicators over the box, added up row by row, tile by tile, plane by plane in a fixed order.
 
 use crate::base::real::Real;
-use crate::math::stats::{Quantiles, row_max, row_square_sum, row_sum};
-use crate::model::request::{Family, Level};
+use crate::math::stats::{row_max, row_square_sum, row_sum};
+use crate::model::request::Family;
 use crate::model::rows::Rows;
 use crate::model::statistics::{GradientStats, IndicatorStats, Survey};
 
@@ -11,14 +11,8 @@ pub const SAMPLE_ROWS: usize = 4;
 
 /// An empty sum for a list of families.
 pub fn empty(families: &[Family]) -> Survey {
-    let indicator = |f: &Family| IndicatorStats {
-        sum: 0.0,
-        square_sum: 0.0,
-        min: f64::INFINITY,
-        max: f64::NEG_INFINITY,
-        quantiles: matches!(f.level, Level::Volume(_)).then(Quantiles::default),
-    };
-    Survey { indicators: families.iter().map(indicator).collect(), ..Survey::default() }
+    let indicator = IndicatorStats { sum: 0.0, square_sum: 0.0, min: f64::INFINITY, max: f64::NEG_INFINITY, quantiles: None };
+    Survey { indicators: vec![indicator; families.len()], ..Survey::default() }
 }
 
 /// Adds one derived row. `sampled` rows carry the truncation measure.
@@ -32,9 +26,6 @@ pub fn add_row<T: Real>(survey: &mut Survey, rows: &Rows<T>, sampled: bool) {
         s.square_sum += row_square_sum(row);
         s.max = s.max.max(row_max(row, row[0]).wide());
         s.min = s.min.min(row.iter().fold(row[0], |a, &b| a.lesser(b)).wide());
-        if let Some(q) = &mut s.quantiles {
-            q.add(row);
-        }
     }
     survey.cells += cells as u64;
 }
@@ -68,8 +59,5 @@ pub fn merge(into: &mut Survey, other: &Survey) {
         a.square_sum += b.square_sum;
         a.min = a.min.min(b.min);
         a.max = a.max.max(b.max);
-        if let (Some(p), Some(q)) = (&mut a.quantiles, &b.quantiles) {
-            p.merge(q);
-        }
     }
 }

@@ -16,6 +16,13 @@ pub struct PlaneScan {
     first: Vec<(usize, [usize; 3])>,
 }
 
+impl PlaneScan {
+    /// Whether every value is finite.
+    pub fn is_finite(&self) -> bool {
+        self.not_finite == 0
+    }
+}
+
 /// Scans plane `z`, one slice a component, x fastest.
 pub fn plane<T: Real>(grid: &Grid, z: usize, components: &[&[T]]) -> PlaneScan {
     let mut hasher = blake3::Hasher::new();

@@ -42,11 +42,7 @@ fn local(p: Vector, centre: Vector) -> Vector {
 }
 
 /// Surface of F = 0 sampled at `index * spacing`; F > 0 inside. The body must be connected and off the grid's ends.
-fn surface_of<T: Real>(
-    n: [usize; 3],
-    spacing: Vector,
-    f: impl Fn(Vector) -> f64,
-) -> (PatchShape, Vec<T>, Isosurface) {
+fn surface_of<T: Real>(n: [usize; 3], spacing: Vector, f: impl Fn(Vector) -> f64) -> (PatchShape, Vec<T>, Isosurface) {
     // Rounded to storage precision first: the object is what a detector sees.
     let field = Field::of(n, |c| T::of(f(std::array::from_fn(|a| c[a] as f64 * spacing[a]))).wide());
     let shapes = objects(&field, 0.0, 6, [false; 3], 1);
@@ -77,8 +73,7 @@ fn ball(r: f64) -> Vector {
     [4.0 / 3.0 * PI * r.powi(3), 4.0 * PI * r * r, 4.0 * PI * r]
 }
 
-const CENTRES: [Vector; 4] =
-    [[0.0, 0.0, 0.0], [0.5, 0.5, 0.5], [0.31, 0.77, 0.12], [0.43, 0.05, 0.66]];
+const CENTRES: [Vector; 4] = [[0.0, 0.0, 0.0], [0.5, 0.5, 0.5], [0.31, 0.77, 0.12], [0.43, 0.05, 0.66]];
 
 fn check_spheres<T: Real>() {
     // Relative errors of V, S, C on spheres of R cells: 0.59, 0.31, 0.115 x (1/R)^2, allowed 1.3 x.
@@ -173,11 +168,7 @@ fn tilted_ellipsoid_converges_with_unequal_spacing() {
 fn tilted_spherocylinder_converges() {
     // Source: methods.md §5: V = πr²l + 4πr³/3, S = 2πrl + 4πr², C = πl + 4πr.
     let (r, l) = (0.3, 1.4);
-    let exact = [
-        PI * r * r * l + 4.0 / 3.0 * PI * r * r * r,
-        2.0 * PI * r * l + 4.0 * PI * r * r,
-        PI * l + 4.0 * PI * r,
-    ];
+    let exact = [PI * r * r * l + 4.0 / 3.0 * PI * r * r * r, 2.0 * PI * r * l + 4.0 * PI * r * r, PI * l + 4.0 * PI * r];
     let f = |p: Vector| {
         let q = local(p, [1.213, 1.187, 1.202]);
         r - norm([q[0] - q[0].clamp(-l / 2.0, l / 2.0), q[1], q[2]])
@@ -205,11 +196,7 @@ fn tilted_rounded_box_converges() {
     let (sides, r) = ([1.0, 0.7, 0.4], 0.2);
     let [a, b, c] = sides;
     let (v, s, m) = (a * b * c, 2.0 * (a * b + b * c + c * a), PI * (a + b + c));
-    let exact = [
-        v + s * r + m * r * r + 4.0 / 3.0 * PI * r * r * r,
-        s + 2.0 * m * r + 4.0 * PI * r * r,
-        m + 4.0 * PI * r,
-    ];
+    let exact = [v + s * r + m * r * r + 4.0 / 3.0 * PI * r * r * r, s + 2.0 * m * r + 4.0 * PI * r * r, m + 4.0 * PI * r];
     let f = |p: Vector| {
         let q = local(p, [1.013, 0.987, 0.991]);
         let beyond: Vector = std::array::from_fn(|k| q[k].abs() - sides[k] / 2.0);
@@ -365,11 +352,10 @@ fn wavy_sheet_through_two_axes_closes_on_the_torus() {
     let (length, amplitude, w) = (16.0, 1.7, 1.3);
     let k = 2.0 * PI / length;
     let steps = 4000;
-    let line: f64 = (0..steps)
-        .map(|i| (1.0 + (amplitude * k * (k * (i as f64 + 0.5) * length / steps as f64).cos()).powi(2)).sqrt())
-        .sum::<f64>()
-        * length
-        / steps as f64;
+    let line: f64 =
+        (0..steps).map(|i| (1.0 + (amplitude * k * (k * (i as f64 + 0.5) * length / steps as f64).cos()).powi(2)).sqrt()).sum::<f64>()
+            * length
+            / steps as f64;
     // Along each pair of axes, crossing the seam of the third.
     for normal in 0..3 {
         let along = (normal + 1) % 3;
@@ -396,8 +382,7 @@ fn wavy_sheet_through_two_axes_closes_on_the_torus() {
 fn single_cell_is_an_octahedron() {
     // One cell at 1 among cells at -1, level 0: vertices at half the distance to the six neighbours, a regular
     // octahedron of edge a = √2/2: V = √2/3 a³ = 1/6, S = 2√3 a² = √3, C = ½ · 12 · a · (π - arccos(-1/3)) by its dihedral angle.
-    let shape =
-        PatchShape::around(intervals(vec![[3, 3, 3]]), 1, [7; 3], [false; 3], [None; 3]);
+    let shape = PatchShape::around(intervals(vec![[3, 3, 3]]), 1, [7; 3], [false; 3], [None; 3]);
     let mut values = vec![-1.0f32; 27];
     values[13] = 1.0;
     let surface = isosurface(&shape, &values, 0.0);

@@ -103,13 +103,7 @@ fn offsets(connectivity: usize) -> Vec<[i32; 3]> {
 }
 
 /// Connected cells above the level as patches with a margin, in order of their first cell.
-pub fn objects(
-    field: &Field,
-    level: f64,
-    connectivity: usize,
-    periodic: [bool; 3],
-    margin: usize,
-) -> Vec<PatchShape> {
+pub fn objects(field: &Field, level: f64, connectivity: usize, periodic: [bool; 3], margin: usize) -> Vec<PatchShape> {
     let n = field.n.map(|n| n as i32);
     let mut found = Vec::new();
     let mut owner: BTreeMap<[i32; 3], (usize, [i32; 3])> = BTreeMap::new();

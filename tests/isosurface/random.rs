@@ -57,9 +57,7 @@ fn check_manifold(surface: &Isosurface) -> (usize, usize, usize) {
 fn smallest_area(surface: &Isosurface) -> f64 {
     let area = |t: &[u32; 3]| {
         let (u, v) = (surface.vector(t[0], t[1]), surface.vector(t[0], t[2]));
-        let c: [f64; 3] = std::array::from_fn(|k| {
-            u[(k + 1) % 3] * v[(k + 2) % 3] - u[(k + 2) % 3] * v[(k + 1) % 3]
-        });
+        let c: [f64; 3] = std::array::from_fn(|k| u[(k + 1) % 3] * v[(k + 2) % 3] - u[(k + 2) % 3] * v[(k + 1) % 3]);
         0.5 * c.iter().map(|c| c * c).sum::<f64>().sqrt()
     };
     surface.triangles.iter().map(area).fold(f64::INFINITY, f64::min)
@@ -167,8 +165,7 @@ fn shifted_periodic_fields_measure_the_same() {
         let level = field.quantile(0.2);
         let (reference, count) = total(&field, level, 26, [1.0; 3]);
         for shift in [[6, 0, 0], [0, 5, 0], [0, 0, 7], [4, 8, 2]] {
-            let moved =
-                Field::of(n, |c| field.at(std::array::from_fn(|a| (c[a] + shift[a]) % n[a])));
+            let moved = Field::of(n, |c| field.at(std::array::from_fn(|a| (c[a] + shift[a]) % n[a])));
             let (sum, c) = total(&moved, level, 26, [1.0; 3]);
             assert_eq!((c, sum[3]), (count, reference[3]), "{name} {shift:?}");
             for k in 0..3 {

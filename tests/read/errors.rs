@@ -12,9 +12,7 @@ use crate::npy::npy;
 
 /// Kind and message of the error, with the folder of the test written as `DIR`.
 fn fault(dir: &Path, path: &Path, spec: &InputSpec) -> (Kind, String) {
-    let e = open(path, spec)
-        .err()
-        .unwrap_or_else(|| panic!("{} was accepted", path.display()));
+    let e = open(path, spec).err().unwrap_or_else(|| panic!("{} was accepted", path.display()));
     let text = e.to_string();
     assert_eq!(text.lines().count(), 1, "{text}");
     (e.kind(), text.replace(&dir.display().to_string(), "DIR"))
@@ -30,12 +28,7 @@ fn usage(text: &str) -> (Kind, String) {
 
 fn zeros<T: H5Type + Default + Clone>(file: &File, name: &str, shape: &[usize]) {
     let values = vec![T::default(); shape.iter().product()];
-    file.new_dataset::<T>()
-        .shape(shape)
-        .create(name)
-        .unwrap()
-        .write_raw(&values)
-        .unwrap();
+    file.new_dataset::<T>().shape(shape).create(name).unwrap().write_raw(&values).unwrap();
 }
 
 /// An HDF5 file of f32 datasets.
@@ -50,16 +43,8 @@ fn hdf5(path: &Path, datasets: &[(&str, &[usize])]) {
 /// An HDF5 file of one dataset `velocity` of shape 3x9x10x12 in one deflated chunk.
 fn compressed(path: &Path, values: &[f32]) {
     let file = File::create(path).unwrap();
-    let builder = file
-        .new_dataset::<f32>()
-        .shape([3, 9, 10, 12])
-        .chunk([3, 9, 10, 12])
-        .deflate(6);
-    builder
-        .create("velocity")
-        .unwrap()
-        .write_raw(values)
-        .unwrap();
+    let builder = file.new_dataset::<f32>().shape([3, 9, 10, 12]).chunk([3, 9, 10, 12]).deflate(6);
+    builder.create("velocity").unwrap().write_raw(values).unwrap();
     // The file is complete only once nothing holds it.
     drop((builder, file));
 }
@@ -107,10 +92,7 @@ fn descriptions_that_make_no_sense() {
         &|s| (s.lengths, s.spacing) = (None, Some([1.0, f64::NAN, -1.0])),
         "cannot settle the size of the box: --spacing: expected 3 finite numbers above 0, found 1,NaN,-1",
     );
-    check(
-        &|s| s.origin[2] = f64::INFINITY,
-        "cannot place the box: --origin: expected 3 finite numbers, found 0,0,inf",
-    );
+    check(&|s| s.origin[2] = f64::INFINITY, "cannot place the box: --origin: expected 3 finite numbers, found 0,0,inf");
 }
 
 #[test]
@@ -180,32 +162,24 @@ fn damaged_hdf5_files() {
     std::fs::write(&path, &bytes).unwrap();
     let (kind, text) = fault(dir.path(), &path, &spec("zyx"));
     assert_eq!(kind, Kind::Input);
-    assert!(
-        text.starts_with("cannot read the HDF5 file: DIR/s.h5: found "),
-        "{text}"
-    );
+    assert!(text.starts_with("cannot read the HDF5 file: DIR/s.h5: found "), "{text}");
 
     // A chunk that does not decompress is found when it is read.
     let values: Vec<f32> = (0..3240).map(|i| (i as f32).sin()).collect();
     compressed(&path, &values);
     let mut bytes = std::fs::read(&path).unwrap();
     // The zlib stream begins with 0x78 (RFC 1950) in the largest stretch of the file.
-    let start = (0..bytes.len() - 1)
-        .rfind(|&i| bytes[i] == 0x78 && bytes[i + 1] == 0x9c)
-        .unwrap();
+    let start = (0..bytes.len() - 1).rfind(|&i| bytes[i] == 0x78 && bytes[i + 1] == 0x9c).unwrap();
     for b in &mut bytes[start + 2..start + 64] {
         *b = 0xff;
     }
     std::fs::write(&path, &bytes).unwrap();
-    let AnySource::F32(mut source) = open(&path, &spec("zyx")).unwrap().source else {
-        unreachable!()
-    };
+    let AnySource::F32(mut source) = open(&path, &spec("zyx")).unwrap().source else { unreachable!() };
     let mut store = vec![vec![0.0; 120]; 3];
     let mut out: Vec<&mut [f32]> = store.iter_mut().map(|v| &mut v[..]).collect();
     let e = source.read(0, 1, &mut out).unwrap_err();
     assert_eq!(
-        e.to_string()
-            .replace(&dir.path().display().to_string(), "DIR"),
+        e.to_string().replace(&dir.path().display().to_string(), "DIR"),
         "cannot read values: DIR/s.h5: /velocity: found inflate() failed; hint: the file is damaged: copy or write it again"
     );
 }
@@ -214,38 +188,23 @@ fn damaged_hdf5_files() {
 fn datasets_that_are_not_there() {
     let dir = tempfile::tempdir().unwrap();
     let path = dir.path().join("s.h5");
-    let check =
-        |own: &InputSpec, text: &str| assert_eq!(fault(dir.path(), &path, own), input(text));
+    let check = |own: &InputSpec, text: &str| assert_eq!(fault(dir.path(), &path, own), input(text));
     hdf5(&path, &[]);
     check(
         &spec("zyx"),
         "cannot find a velocity or magnetic field: DIR/s.h5: expected u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by,bz | magnetic | b in the root group, found no dataset; hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)",
     );
-    hdf5(
-        &path,
-        &[
-            ("flow/u", GOOD),
-            ("flow/v", GOOD),
-            ("b", GOOD),
-            ("rho", &[2]),
-        ],
-    );
+    hdf5(&path, &[("flow/u", GOOD), ("flow/v", GOOD), ("b", GOOD), ("rho", &[2])]);
     check(
         &spec("zyx"),
         "cannot find a velocity or magnetic field: DIR/s.h5: expected u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by,bz | magnetic | b in the root group, found /b 9x10x12, /flow/u 9x10x12, /flow/v 9x10x12, /rho 2; hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)",
     );
     check(
-        &InputSpec {
-            velocity: names(&["flow/u", "/flow/v", "flow/w"]),
-            ..spec("zyx")
-        },
+        &InputSpec { velocity: names(&["flow/u", "/flow/v", "flow/w"]), ..spec("zyx") },
         "cannot find the dataset: DIR/s.h5: /flow/w: found only /b 9x10x12, /flow/u 9x10x12, /flow/v 9x10x12, /rho 2; hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)",
     );
     check(
-        &InputSpec {
-            velocity: names(&["flow"]),
-            ..spec("zyx")
-        },
+        &InputSpec { velocity: names(&["flow"]), ..spec("zyx") },
         "cannot use the dataset: DIR/s.h5: /flow: expected a dataset, found a group; hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)",
     );
     let many: Vec<String> = (10..30).map(|i| format!("d{i}")).collect();
@@ -300,10 +259,7 @@ fn datasets_of_a_wrong_kind() {
         &[("u", &[9, 10, 8]), ("v", &[9, 10, 8]), ("w", &[9, 10, 8])],
         "cannot use the dataset: DIR/s.h5: /u: expected at least 9 samples along every axis (order-8 differences need 9), found 9x10x8; hint: --order gives the axes slowest first, with c for a component axis",
     );
-    let named = InputSpec {
-        magnetic: names(&["u"]),
-        ..spec("zyx")
-    };
+    let named = InputSpec { magnetic: names(&["u"]), ..spec("zyx") };
     hdf5(&path, &[("u", GOOD)]);
     assert_eq!(
         fault(dir.path(), &path, &named),
@@ -336,12 +292,8 @@ fn datasets_of_a_wrong_type() {
 
     // An f32 datatype message rewritten as IEEE half precision (HDF5 File Format Specification 3.0, IV.A.2.d).
     hdf5(&path, &[("velocity", &[3, 9, 10, 12])]);
-    let single = [
-        0x11, 0x20, 0x1f, 0, 4, 0, 0, 0, 0, 0, 32, 0, 23, 8, 0, 23, 127, 0, 0, 0,
-    ];
-    let half = [
-        0x11, 0x20, 0x0f, 0, 2, 0, 0, 0, 0, 0, 16, 0, 10, 5, 0, 10, 15, 0, 0, 0,
-    ];
+    let single = [0x11, 0x20, 0x1f, 0, 4, 0, 0, 0, 0, 0, 32, 0, 23, 8, 0, 23, 127, 0, 0, 0];
+    let half = [0x11, 0x20, 0x0f, 0, 2, 0, 0, 0, 0, 0, 16, 0, 10, 5, 0, 10, 15, 0, 0, 0];
     rewrite(&path, &single, &half);
     assert_eq!(
         fault(dir.path(), &path, &spec("zyx")),
@@ -352,11 +304,7 @@ fn datasets_of_a_wrong_type() {
 
     // The deflate filter renamed to one that nobody has registered.
     compressed(&path, &[0.0; 3240]);
-    rewrite(
-        &path,
-        b"\x01\0\x08\0\x01\0\x01\0deflate\0",
-        b"\xff\x7f\x08\0\x01\0\x01\0deflate\0",
-    );
+    rewrite(&path, b"\x01\0\x08\0\x01\0\x01\0deflate\0", b"\xff\x7f\x08\0\x01\0\x01\0deflate\0");
     assert_eq!(
         fault(dir.path(), &path, &spec("zyx")),
         input(
@@ -367,10 +315,7 @@ fn datasets_of_a_wrong_type() {
 
 fn rewrite(path: &Path, from: &[u8], to: &[u8]) {
     let mut bytes = std::fs::read(path).unwrap();
-    let at = bytes
-        .windows(from.len())
-        .position(|w| w == from)
-        .expect("the message is in the file");
+    let at = bytes.windows(from.len()).position(|w| w == from).expect("the message is in the file");
     bytes[at..at + to.len()].copy_from_slice(to);
     std::fs::write(path, bytes).unwrap();
 }
@@ -417,10 +362,7 @@ fn damaged_npy_files() {
         &[&good[..], b"x"].concat(),
         "cannot read the npy file: DIR/s.npy: expected 13088 bytes, as its header says, found 13089; hint: the file is truncated or damaged: copy or write it again",
     );
-    check(
-        &npy(4, "'<f4'", false, &[3], &[]),
-        "cannot read the npy file: DIR/s.npy: expected format version 1.0, 2.0 or 3.0, found 4.0",
-    );
+    check(&npy(4, "'<f4'", false, &[3], &[]), "cannot read the npy file: DIR/s.npy: expected format version 1.0, 2.0 or 3.0, found 4.0");
     check(
         &npy(1, "'<i4'", false, &[3, 9, 10, 12], &[0; 12960]),
         "cannot use the dataset: DIR/s.npy: expected float32 or float64 values, found '<i4'; hint: convert the dataset to float32 or float64",
@@ -430,13 +372,7 @@ fn damaged_npy_files() {
         "cannot use the dataset: DIR/s.npy: expected float32 or float64 values, found '<f2'; hint: convert the dataset to float32 or float64",
     );
     check(
-        &npy(
-            1,
-            "[('u', '<f4'), ('v', '<f4')]",
-            false,
-            &[3, 9, 10, 12],
-            &[0; 25920],
-        ),
+        &npy(1, "[('u', '<f4'), ('v', '<f4')]", false, &[3, 9, 10, 12], &[0; 25920]),
         "cannot use the dataset: DIR/s.npy: expected float32 or float64 values, found [('u', '<f4'), ('v', '<f4')]; hint: convert the dataset to float32 or float64",
     );
     check(
@@ -451,10 +387,7 @@ fn damaged_npy_files() {
     );
     let mut long = npy(2, "'<f4'", false, &[3], &[]);
     long[11] = 0xff;
-    check(
-        &long,
-        "cannot read the npy file: DIR/s.npy: expected a header of at most 1048576 bytes, found 4278190196",
-    );
+    check(&long, "cannot read the npy file: DIR/s.npy: expected a header of at most 1048576 bytes, found 4278190196");
     check(
         &npy(1, "'<f4'", false, &[9, 10, 12], &[0; 4320]),
         "cannot use the dataset: DIR/s.npy: expected rank 4, three space axes and a component axis, found 9x10x12 (rank 3); hint: --velocity takes three names where every component has its own dataset",
@@ -470,21 +403,14 @@ fn names_that_do_not_fit_npy_files() {
     let dir = tempfile::tempdir().unwrap();
     let path = dir.path().join("s.npy");
     std::fs::write(&path, npy(1, "'<f4'", false, &[3, 9, 10, 12], &[0; 12960])).unwrap();
-    let both = InputSpec {
-        velocity: names(&["s"]),
-        magnetic: names(&["s"]),
-        ..spec("zyx")
-    };
+    let both = InputSpec { velocity: names(&["s"]), magnetic: names(&["s"]), ..spec("zyx") };
     assert_eq!(
         fault(dir.path(), &path, &both),
         usage(
             "cannot read two fields from one npy file: DIR/s.npy: --velocity, --magnetic: expected at most one of them, found both; hint: put the files into a folder and give the folder"
         )
     );
-    let other = InputSpec {
-        velocity: names(&["u", "v", "w"]),
-        ..spec("zyx")
-    };
+    let other = InputSpec { velocity: names(&["u", "v", "w"]), ..spec("zyx") };
     assert_eq!(
         fault(dir.path(), &path, &other),
         usage(
@@ -500,11 +426,7 @@ fn names_that_do_not_fit_npy_files() {
             "cannot find a velocity or magnetic field: DIR/run: expected npy files named u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by,bz | magnetic | b, found no npy file; hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)"
         )
     );
-    std::fs::write(
-        run.join("u.npy"),
-        npy(1, "'<f4'", false, &[9, 10, 12], &[0; 4320]),
-    )
-    .unwrap();
+    std::fs::write(run.join("u.npy"), npy(1, "'<f4'", false, &[9, 10, 12], &[0; 4320])).unwrap();
     std::fs::write(run.join("v.npy"), b"nothing").unwrap();
     std::fs::write(run.join("notes.txt"), b"nothing").unwrap();
     assert_eq!(
@@ -513,32 +435,21 @@ fn names_that_do_not_fit_npy_files() {
             "cannot find a velocity or magnetic field: DIR/run: expected npy files named u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by,bz | magnetic | b, found u.npy 9x10x12, v.npy (not usable); hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)"
         )
     );
-    let named = InputSpec {
-        velocity: names(&["u", "w", "v"]),
-        ..spec("zyx")
-    };
+    let named = InputSpec { velocity: names(&["u", "w", "v"]), ..spec("zyx") };
     assert_eq!(
         fault(dir.path(), &run, &named),
         input(
             "cannot find the file: DIR/run/w.npy: found only u.npy 9x10x12, v.npy (not usable); hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)"
         )
     );
-    std::fs::write(
-        run.join("w.npy"),
-        npy(1, "'<f4'", false, &[9, 10, 12], &[0; 4320]),
-    )
-    .unwrap();
+    std::fs::write(run.join("w.npy"), npy(1, "'<f4'", false, &[9, 10, 12], &[0; 4320])).unwrap();
     assert_eq!(
         fault(dir.path(), &run, &spec("zyx")),
         input(
             "cannot read the npy file: DIR/run/v.npy: expected the signature \"\\x93NUMPY\", found a file beginning \"nothing\"; hint: write it with numpy.save"
         )
     );
-    std::fs::write(
-        run.join("v.npy"),
-        npy(1, "'<f4'", true, &[9, 10, 12], &[0; 4320]),
-    )
-    .unwrap();
+    std::fs::write(run.join("v.npy"), npy(1, "'<f4'", true, &[9, 10, 12], &[0; 4320])).unwrap();
     assert_eq!(
         fault(dir.path(), &run, &spec("zyx")),
         input(
@@ -553,16 +464,13 @@ fn files_that_change_while_they_are_read() {
     let path = dir.path().join("s.npy");
     let good = npy(1, "'<f4'", false, &[3, 9, 10, 12], &[0; 12960]);
     std::fs::write(&path, &good).unwrap();
-    let AnySource::F32(mut source) = open(&path, &spec("zyx")).unwrap().source else {
-        unreachable!()
-    };
+    let AnySource::F32(mut source) = open(&path, &spec("zyx")).unwrap().source else { unreachable!() };
     std::fs::write(&path, &good[..1000]).unwrap();
     let mut store = vec![vec![0.0; 120]; 3];
     let mut out: Vec<&mut [f32]> = store.iter_mut().map(|v| &mut v[..]).collect();
     let e = source.read(8, 9, &mut out).unwrap_err();
     assert_eq!(
-        e.to_string()
-            .replace(&dir.path().display().to_string(), "DIR"),
+        e.to_string().replace(&dir.path().display().to_string(), "DIR"),
         "cannot read values: DIR/s.npy: found the end of the file; hint: the file changed or its disk failed"
     );
 }

@@ -37,11 +37,7 @@ macro_rules! value {
                 self.to_bits().into()
             }
             fn bytes(self, big: bool) -> Vec<u8> {
-                if big {
-                    self.to_be_bytes().into()
-                } else {
-                    self.to_le_bytes().into()
-                }
+                if big { self.to_be_bytes().into() } else { self.to_le_bytes().into() }
             }
             fn take(source: AnySource) -> Box<dyn PlaneSource<Self>> {
                 match source {
@@ -53,12 +49,7 @@ macro_rules! value {
     };
 }
 value!(f32, F32, 1.000_123, [0x11, 0x20, 0x1f, 0, 4, 0, 0, 0]);
-value!(
-    f64,
-    F64,
-    1.000_123_456_789_1,
-    [0x11, 0x20, 0x3f, 0, 8, 0, 0, 0]
-);
+value!(f64, F64, 1.000_123_456_789_1, [0x11, 0x20, 0x3f, 0, 8, 0, 0, 0]);
 
 /// Shape and values of an array with the given axes, slowest first; `first` is added to its component index.
 pub fn array<T: Value>(axes: &str, first: usize) -> (Vec<usize>, Vec<T>) {
@@ -71,12 +62,7 @@ pub fn array<T: Value>(axes: &str, first: usize) -> (Vec<usize>, Vec<T>) {
             at.insert(l, rest % n);
             rest /= n;
         }
-        values.push(T::code(
-            first + at.get(&'c').unwrap_or(&0),
-            at[&'x'],
-            at[&'y'],
-            at[&'z'],
-        ));
+        values.push(T::code(first + at.get(&'c').unwrap_or(&0), at[&'x'], at[&'y'], at[&'z']));
     }
     (shape, values)
 }
@@ -93,11 +79,7 @@ pub fn extent(letter: char, space: [usize; 3], component: usize) -> usize {
 
 /// A description with the box 1 x 1 x 1 and the given axis order.
 pub fn spec(order: &str) -> InputSpec {
-    InputSpec {
-        order: order.into(),
-        lengths: Some([1.0; 3]),
-        ..InputSpec::default()
-    }
+    InputSpec { order: order.into(), lengths: Some([1.0; 3]), ..InputSpec::default() }
 }
 
 pub fn names(list: &[&str]) -> Option<Vec<String>> {
@@ -110,13 +92,7 @@ pub fn opened(path: &Path, spec: &InputSpec) -> Opened {
 }
 
 /// Reads planes of a source whose components carry the codes `first..`, and compares every bit.
-pub fn check_planes<T: Value>(
-    source: &mut dyn PlaneSource<T>,
-    first: usize,
-    z0: usize,
-    z1: usize,
-    case: &str,
-) {
+pub fn check_planes<T: Value>(source: &mut dyn PlaneSource<T>, first: usize, z0: usize, z1: usize, case: &str) {
     let count = source.fields().components();
     let mut store = vec![vec![T::of(f64::NAN); (z1 - z0) * N[1] * N[0]]; count];
     let mut out: Vec<&mut [T]> = store.iter_mut().map(|v| &mut v[..]).collect();
@@ -127,11 +103,7 @@ pub fn check_planes<T: Value>(
             for y in 0..N[1] {
                 for x in 0..N[0] {
                     let (got, want) = (*next.next().unwrap(), T::code(first + c, x, y, z));
-                    assert_eq!(
-                        got.bits(),
-                        want.bits(),
-                        "{case}: component {c} at {x} {y} {z}: {got} {want}"
-                    );
+                    assert_eq!(got.bits(), want.bits(), "{case}: component {c} at {x} {y} {z}: {got} {want}");
                 }
             }
         }

@@ -37,9 +37,7 @@ fn write<T: Value>(file: &File, name: &str, axes: &str, first: usize, storage: S
 /// message is the byte order (HDF5 File Format Specification 3.0, IV.A.2.d).
 fn declare_big<T: Value>(path: &Path, count: usize) {
     let mut bytes = std::fs::read(path).unwrap();
-    let places: Vec<usize> = (0..bytes.len())
-        .filter(|&i| bytes[i..].starts_with(&T::MESSAGE))
-        .collect();
+    let places: Vec<usize> = (0..bytes.len()).filter(|&i| bytes[i..].starts_with(&T::MESSAGE)).collect();
     assert_eq!(places.len(), count, "datatype messages in the file");
     for p in places {
         bytes[p + 1] |= 1;
@@ -73,27 +71,13 @@ fn every_form<T: Value>(storage: Storage, big: bool) {
             let got = opened(&path, &own);
             assert_eq!(got.name, format!("{order}-{form}"));
             let named: Vec<String> = match form {
-                "three" => ["u", "v", "w"]
-                    .map(|c| format!("{order}-{form}.h5:/flow/{c}"))
-                    .into(),
+                "three" => ["u", "v", "w"].map(|c| format!("{order}-{form}.h5:/flow/{c}")).into(),
                 _ => vec![format!("{order}-{form}.h5:/velocity")],
             };
             assert_eq!(got.datasets, named);
             let source = T::take(got.source);
-            assert_eq!(
-                source.natural_planes(),
-                if storage == Storage::Contiguous {
-                    1
-                } else {
-                    CHUNK[2]
-                },
-                "{case}"
-            );
-            assert_eq!(
-                source.is_costly(),
-                storage == Storage::Filtered || order != "zyx",
-                "{case}"
-            );
+            assert_eq!(source.natural_planes(), if storage == Storage::Contiguous { 1 } else { CHUNK[2] }, "{case}");
+            assert_eq!(source.is_costly(), storage == Storage::Filtered || order != "zyx", "{case}");
             drop(source);
             check_all::<T>(opened(&path, &own).source, 0, &case);
         }
@@ -127,18 +111,9 @@ fn compressed_of_every_form() {
 #[test]
 fn usual_names_are_guessed() {
     let dir = tempfile::tempdir().unwrap();
-    let both = Fields {
-        velocity: true,
-        magnetic: true,
-    };
-    let velocity = Fields {
-        velocity: true,
-        magnetic: false,
-    };
-    let magnetic = Fields {
-        velocity: false,
-        magnetic: true,
-    };
+    let both = Fields { velocity: true, magnetic: true };
+    let velocity = Fields { velocity: true, magnetic: false };
+    let magnetic = Fields { velocity: false, magnetic: true };
     let sets: [(&[&str], Fields); 8] = [
         (&["u", "v", "w"], velocity),
         (&["ux", "uy", "uz", "bx", "by", "bz"], both),
@@ -155,14 +130,7 @@ fn usual_names_are_guessed() {
         let mut first = 0;
         for name in set {
             let whole = ["velocity", "magnetic", "b"].contains(name);
-            write::<f32>(
-                &file,
-                name,
-                if whole { "czyx" } else { "zyx" },
-                first,
-                Storage::Contiguous,
-                false,
-            );
+            write::<f32>(&file, name, if whole { "czyx" } else { "zyx" }, first, Storage::Contiguous, false);
             first += if whole { 3 } else { 1 };
         }
         file.close().unwrap();
@@ -184,13 +152,7 @@ fn scalar_named_b_is_no_magnetic_field() {
     }
     file.close().unwrap();
     let got = opened(&path, &spec("zyx"));
-    assert_eq!(
-        got.source.fields(),
-        Fields {
-            velocity: true,
-            magnetic: false
-        }
-    );
+    assert_eq!(got.source.fields(), Fields { velocity: true, magnetic: false });
 }
 
 #[test]
@@ -201,34 +163,14 @@ fn only_what_is_named_is_read() {
     write::<f32>(&file, "velocity", "zyxc", 0, Storage::Contiguous, false);
     write::<f32>(&file, "b", "czyx", 3, Storage::Contiguous, false);
     file.close().unwrap();
-    let named = InputSpec {
-        magnetic: names(&["b"]),
-        ..spec("zyx")
-    };
+    let named = InputSpec { magnetic: names(&["b"]), ..spec("zyx") };
     let got = opened(&path, &named);
-    assert_eq!(
-        got.source.fields(),
-        Fields {
-            velocity: false,
-            magnetic: true
-        }
-    );
+    assert_eq!(got.source.fields(), Fields { velocity: false, magnetic: true });
     check_all::<f32>(got.source, 3, "magnetic alone");
-    let named = InputSpec {
-        velocity: names(&["velocity"]),
-        ..spec("zyxc")
-    };
+    let named = InputSpec { velocity: names(&["velocity"]), ..spec("zyxc") };
     check_all::<f32>(opened(&path, &named).source, 0, "velocity alone");
-    let named = InputSpec {
-        velocity: names(&["velocity"]),
-        magnetic: names(&["b"]),
-        ..spec("zyx")
-    };
-    check_all::<f32>(
-        opened(&path, &named).source,
-        0,
-        "both, components on different ends",
-    );
+    let named = InputSpec { velocity: names(&["velocity"]), magnetic: names(&["b"]), ..spec("zyx") };
+    check_all::<f32>(opened(&path, &named).source, 0, "both, components on different ends");
 }
 
 #[test]
@@ -246,9 +188,7 @@ fn mixed_precision_widens_to_f64() {
             let mut store = vec![vec![0.0; 4 * N[0] * N[1]]; 3];
             let mut out: Vec<&mut [f64]> = store.iter_mut().map(|v| &mut v[..]).collect();
             source.read(2, 6, &mut out).unwrap();
-            for (i, at) in
-                (0..4 * N[0] * N[1]).map(|i| (i, (i % N[0], i / N[0] % N[1], 2 + i / N[0] / N[1])))
-            {
+            for (i, at) in (0..4 * N[0] * N[1]).map(|i| (i, (i % N[0], i / N[0] % N[1], 2 + i / N[0] / N[1]))) {
                 let (x, y, z) = at;
                 assert_eq!(store[0][i], f64::from(f32::code(0, x, y, z)));
                 assert_eq!(store[1][i], f64::code(1, x, y, z));
@@ -263,26 +203,13 @@ fn special_values_keep_their_bits() {
     let dir = tempfile::tempdir().unwrap();
     let path = dir.path().join("s.h5");
     let cells = N[0] * N[1] * N[2];
-    let special = [
-        0x7fc0_1234,
-        0xff80_0000,
-        0x8000_0000,
-        0x0000_0001,
-        0x7f7f_ffff,
-        0x7f80_0000,
-    ];
-    let values: Vec<f32> = (0..cells)
-        .map(|i| f32::from_bits(special[i % special.len()]))
-        .collect();
+    let special = [0x7fc0_1234, 0xff80_0000, 0x8000_0000, 0x0000_0001, 0x7f7f_ffff, 0x7f80_0000];
+    let values: Vec<f32> = (0..cells).map(|i| f32::from_bits(special[i % special.len()])).collect();
     for chunked in [false, true] {
         let file = File::create(&path).unwrap();
         for name in ["u", "v", "w"] {
             let builder = file.new_dataset::<f32>().shape([N[2], N[1], N[0]]);
-            let builder = if chunked {
-                builder.chunk([4, 4, 4]).deflate(1)
-            } else {
-                builder
-            };
+            let builder = if chunked { builder.chunk([4, 4, 4]).deflate(1) } else { builder };
             builder.create(name).unwrap().write_raw(&values).unwrap();
         }
         file.close().unwrap();
@@ -291,12 +218,7 @@ fn special_values_keep_their_bits() {
         let mut out: Vec<&mut [f32]> = store.iter_mut().map(|v| &mut v[..]).collect();
         source.read(0, N[2], &mut out).unwrap();
         for component in &store {
-            assert!(
-                component
-                    .iter()
-                    .zip(&values)
-                    .all(|(a, b)| a.to_bits() == b.to_bits())
-            );
+            assert!(component.iter().zip(&values).all(|(a, b)| a.to_bits() == b.to_bits()));
         }
     }
 }
@@ -312,11 +234,7 @@ fn links_into_other_files_and_unwritten_datasets_are_read() {
     file.link_external("other.h5", "/far", "u").unwrap();
     write::<f32>(&file, "near", "zyx", 1, Storage::Contiguous, false);
     file.link_soft("/near", "v").unwrap();
-    file.new_dataset::<f32>()
-        .shape([N[2], N[1], N[0]])
-        .fill_value(2.5f32)
-        .create("w")
-        .unwrap();
+    file.new_dataset::<f32>().shape([N[2], N[1], N[0]]).fill_value(2.5f32).create("w").unwrap();
     file.close().unwrap();
     let mut source = f32::take(opened(&path, &spec("zyx")).source);
     let mut store = vec![vec![0.0; N[0] * N[1]]; 3];
@@ -324,10 +242,7 @@ fn links_into_other_files_and_unwritten_datasets_are_read() {
     source.read(6, 7, &mut out).unwrap();
     for i in 0..N[0] * N[1] {
         let (x, y) = (i % N[0], i / N[0]);
-        assert_eq!(
-            [store[0][i], store[1][i], store[2][i]],
-            [f32::code(0, x, y, 6), f32::code(1, x, y, 6), 2.5]
-        );
+        assert_eq!([store[0][i], store[1][i], store[2][i]], [f32::code(0, x, y, 6), f32::code(1, x, y, 6), 2.5]);
     }
 }
 
@@ -335,18 +250,13 @@ fn links_into_other_files_and_unwritten_datasets_are_read() {
 fn user_block_shifts_nothing() {
     let dir = tempfile::tempdir().unwrap();
     let path = dir.path().join("s.h5");
-    let file = File::with_options()
-        .with_fcpl(|p| p.userblock(1024))
-        .create(&path)
-        .unwrap();
+    let file = File::with_options().with_fcpl(|p| p.userblock(1024)).create(&path).unwrap();
     write::<f32>(&file, "velocity", "czyx", 0, Storage::Contiguous, false);
     file.close().unwrap();
     check_all::<f32>(opened(&path, &spec("zyx")).source, 0, "user block");
     let bytes = std::fs::read(&path).unwrap();
     std::fs::write(&path, &bytes[..bytes.len() - 1]).unwrap();
-    let e = ropewalk::read::open(&path, &spec("zyx"))
-        .err()
-        .expect("one byte is missing");
+    let e = ropewalk::read::open(&path, &spec("zyx")).err().expect("one byte is missing");
     assert!(e.to_string().contains("the file is truncated"), "{e}");
 }
 
@@ -362,17 +272,11 @@ fn grid_follows_lengths_spacing_origin_and_periodicity() {
     own.origin = [1.0, -2.0, 3.0];
     own.periodic = [true, false, true];
     let grid = *opened(&path, &own).source.grid();
-    assert_eq!(
-        (grid.n, grid.spacing, grid.origin),
-        (N, [2.0, 0.5, 0.5], [1.0, -2.0, 3.0])
-    );
+    assert_eq!((grid.n, grid.spacing, grid.origin), (N, [2.0, 0.5, 0.5], [1.0, -2.0, 3.0]));
     assert_eq!(grid.periodic, [true, false, true]);
     (own.lengths, own.spacing) = (None, Some([2.0, 0.5, 0.25]));
     let grid = *opened(&path, &own).source.grid();
-    assert_eq!(
-        (grid.length(0), grid.length(1), grid.length(2)),
-        (24.0, 5.0, 2.25)
-    );
+    assert_eq!((grid.length(0), grid.length(1), grid.length(2)), (24.0, 5.0, 2.25));
 }
 
 #[test]
@@ -389,71 +293,14 @@ fn time_comes_from_the_root_then_the_first_dataset() {
     };
     let none = |_: &::hdf5::Dataset| {};
     assert_eq!(time(&|_| {}, &none), None);
-    assert_eq!(
-        time(
-            &|f| f
-                .new_attr::<f64>()
-                .create("time")
-                .unwrap()
-                .write_scalar(&0.1)
-                .unwrap(),
-            &none
-        ),
-        Some(0.1)
-    );
-    assert_eq!(
-        time(
-            &|f| f
-                .new_attr::<f32>()
-                .create("t")
-                .unwrap()
-                .write_scalar(&1.5f32)
-                .unwrap(),
-            &none
-        ),
-        Some(1.5)
-    );
-    assert_eq!(
-        time(
-            &|f| f
-                .new_attr::<i32>()
-                .create("t")
-                .unwrap()
-                .write_scalar(&-7)
-                .unwrap(),
-            &none
-        ),
-        Some(-7.0)
-    );
-    let dataset = |d: &::hdf5::Dataset| {
-        d.new_attr::<u16>()
-            .create("time")
-            .unwrap()
-            .write_scalar(&9u16)
-            .unwrap()
-    };
+    assert_eq!(time(&|f| f.new_attr::<f64>().create("time").unwrap().write_scalar(&0.1).unwrap(), &none), Some(0.1));
+    assert_eq!(time(&|f| f.new_attr::<f32>().create("t").unwrap().write_scalar(&1.5f32).unwrap(), &none), Some(1.5));
+    assert_eq!(time(&|f| f.new_attr::<i32>().create("t").unwrap().write_scalar(&-7).unwrap(), &none), Some(-7.0));
+    let dataset = |d: &::hdf5::Dataset| d.new_attr::<u16>().create("time").unwrap().write_scalar(&9u16).unwrap();
     assert_eq!(time(&|_| {}, &dataset), Some(9.0));
-    assert_eq!(
-        time(
-            &|f| f
-                .new_attr::<f64>()
-                .create("t")
-                .unwrap()
-                .write_scalar(&2.0)
-                .unwrap(),
-            &dataset
-        ),
-        Some(2.0)
-    );
+    assert_eq!(time(&|f| f.new_attr::<f64>().create("t").unwrap().write_scalar(&2.0).unwrap(), &dataset), Some(2.0));
     // Several numbers are no time.
-    let two = |f: &File| {
-        f.new_attr::<f64>()
-            .shape(2)
-            .create("time")
-            .unwrap()
-            .write_raw(&[1.0, 2.0])
-            .unwrap()
-    };
+    let two = |f: &File| f.new_attr::<f64>().shape(2).create("time").unwrap().write_raw(&[1.0, 2.0]).unwrap();
     assert_eq!(time(&two, &dataset), Some(9.0));
 }
 
@@ -465,9 +312,7 @@ fn planes_outside_the_box_panic() {
     let file = File::create(&path).unwrap();
     write::<f32>(&file, "velocity", "czyx", 0, Storage::Contiguous, false);
     file.close().unwrap();
-    let AnySource::F32(mut source) = opened(&path, &spec("zyx")).source else {
-        unreachable!()
-    };
+    let AnySource::F32(mut source) = opened(&path, &spec("zyx")).source else { unreachable!() };
     let mut values = vec![vec![0.0; 240]; 3];
     let mut out: Vec<&mut [f32]> = values.iter_mut().map(|v| &mut v[..]).collect();
     source.read(8, 10, &mut out).unwrap();

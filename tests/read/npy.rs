@@ -12,10 +12,7 @@ pub fn npy(version: u8, descr: &str, fortran: bool, shape: &[usize], values: &[u
     let order = if fortran { "True" } else { "False" };
     let list: Vec<String> = shape.iter().map(usize::to_string).collect();
     let tail = if shape.len() == 1 { "," } else { "" };
-    let mut header = format!(
-        "{{'descr': {descr}, 'fortran_order': {order}, 'shape': ({}{tail}), }}",
-        list.join(", ")
-    );
+    let mut header = format!("{{'descr': {descr}, 'fortran_order': {order}, 'shape': ({}{tail}), }}", list.join(", "));
     let digits = if version == 1 { 2 } else { 4 };
     while (8 + digits + header.len() + 1) % 64 != 0 {
         header.push(' ');
@@ -46,40 +43,23 @@ fn every_form<T: Value>() {
     for (i, order) in ORDERS.into_iter().enumerate() {
         for (big, fortran) in [(false, false), (false, true), (true, false), (true, true)] {
             let version = 1 + (i % 3) as u8;
-            let case = format!(
-                "{} {order} big-endian {big} fortran {fortran} version {version}",
-                T::NAME
-            );
+            let case = format!("{} {order} big-endian {big} fortran {fortran} version {version}", T::NAME);
             for (c, name) in ["ux.npy", "uy.npy", "uz.npy"].into_iter().enumerate() {
                 write::<T>(&run.join(name), version, order, c, big, fortran);
             }
             let got = opened(&run, &spec(order));
-            assert_eq!(
-                got.datasets,
-                ["run.5/ux.npy", "run.5/uy.npy", "run.5/uz.npy"]
-            );
+            assert_eq!(got.datasets, ["run.5/ux.npy", "run.5/uy.npy", "run.5/uz.npy"]);
             assert_eq!((got.name.as_str(), got.time), ("run.5", None));
             let source = T::take(got.source);
-            assert_eq!(
-                (source.natural_planes(), source.is_costly()),
-                (1, order != "zyx"),
-                "{case}"
-            );
+            assert_eq!((source.natural_planes(), source.is_costly()), (1, order != "zyx"), "{case}");
             check_all::<T>(opened(&run, &spec(order)).source, 0, &case);
             for axes in [format!("c{order}"), format!("{order}c")] {
                 let path = dir.path().join("snap.1.npy");
                 write::<T>(&path, version, &axes, 0, big, fortran);
                 let got = opened(&path, &spec(order));
-                assert_eq!(
-                    (got.name.as_str(), &got.datasets[..]),
-                    ("snap.1", &["snap.1.npy".to_string()][..])
-                );
+                assert_eq!((got.name.as_str(), &got.datasets[..]), ("snap.1", &["snap.1.npy".to_string()][..]));
                 check_all::<T>(got.source, 0, &format!("{case} {axes}"));
-                check_all::<T>(
-                    opened(&path, &spec(&axes)).source,
-                    0,
-                    &format!("{case} {axes} said"),
-                );
+                check_all::<T>(opened(&path, &spec(&axes)).source, 0, &format!("{case} {axes} said"));
             }
         }
     }
@@ -100,14 +80,8 @@ fn names_decide_what_a_file_is() {
     let dir = tempfile::tempdir().unwrap();
     let path = dir.path().join("m.npy");
     write::<f32>(&path, 1, "zyxc", 0, false, false);
-    let velocity = Fields {
-        velocity: true,
-        magnetic: false,
-    };
-    let magnetic = Fields {
-        velocity: false,
-        magnetic: true,
-    };
+    let velocity = Fields { velocity: true, magnetic: false };
+    let magnetic = Fields { velocity: false, magnetic: true };
     let mut own = spec("zyx");
     assert_eq!(opened(&path, &own).source.fields(), velocity);
     own.velocity = names(&["m"]);
@@ -124,21 +98,11 @@ fn folders_hold_both_fields_and_mixed_forms() {
     for (c, name) in ["p.npy", "q.npy", "r.npy"].into_iter().enumerate() {
         write::<f32>(&at(name), 2, "zyx", 3 + c, false, c == 1);
     }
-    let named = InputSpec {
-        velocity: names(&["velocity"]),
-        magnetic: names(&["p", "q.npy", "r"]),
-        ..spec("zyx")
-    };
+    let named = InputSpec { velocity: names(&["velocity"]), magnetic: names(&["p", "q.npy", "r"]), ..spec("zyx") };
     check_all::<f32>(opened(dir.path(), &named).source, 0, "both");
     // Guessed: the other names mean nothing.
     let got = opened(dir.path(), &spec("zyx"));
-    assert_eq!(
-        got.source.fields(),
-        Fields {
-            velocity: true,
-            magnetic: false
-        }
-    );
+    assert_eq!(got.source.fields(), Fields { velocity: true, magnetic: false });
 }
 
 #[test]

@@ -1,0 +1,268 @@
+//! The three passes over a snapshot: survey, detection, shape. Work is cut into tiles of rows; results never depend on the cut.
+
+use std::ops::Range;
+use std::sync::Mutex;
+
+use crate::base::error::Result;
+use crate::base::observe::Observe;
+use crate::base::par;
+use crate::base::real::Real;
+use crate::derive::{Deriver, Scratch};
+use crate::detect::{Criterion, Labeller, TileSweep};
+use crate::math::stats::Quantiles;
+use crate::measure::patches::Patches;
+use crate::measure::surface::{Shaped, shape};
+use crate::model::object::Detected;
+use crate::model::request::{Family, Level};
+use crate::model::rows::Need;
+use crate::model::source::{Fields, PlaneSource};
+use crate::model::statistics::{Alignment, Scan, Survey};
+use crate::model::surface::SurfaceSink;
+use crate::run::stream::blocks;
+use crate::space::grid::Grid;
+use crate::survey::scan::{self, ScanSum};
+use crate::survey::{box_alignment, moments};
+
+/// Everything a pass needs besides its own request.
+pub struct Pass<'a, T> {
+    /// The planes.
+    pub source: &'a mut dyn PlaneSource<T>,
+    /// Planes a block.
+    pub thickness: usize,
+    /// Who watches.
+    pub observe: &'a dyn Observe,
+}
+
+/// Rows a tile: with its halo, a tile of all planes of a stencil stays in the cache of one core.
+fn tiles(grid: &Grid, components: usize, value_bytes: usize) -> Vec<Range<usize>> {
+    const CACHE_BYTES: usize = 1 << 20;
+    const STENCIL_PLANES: usize = 9;
+    let row = grid.n[0] * components * value_bytes * STENCIL_PLANES;
+    let height = (CACHE_BYTES / row.max(1)).clamp(4, 16);
+    (0..grid.n[1]).step_by(height).map(|y| y..(y + height).min(grid.n[1])).collect()
+}
+
+impl<T: Real> Pass<'_, T> {
+    fn tiles(&self) -> Vec<Range<usize>> {
+        tiles(self.source.grid(), self.source.fields().components(), size_of::<T>())
+    }
+
+    /// Reads everything once: digest, bad cells, component sums. With a deriver, surveys the derived quantities as well.
+    ///
+    /// # Errors
+    /// Those of the source. Bad cells are reported in the result; nothing is derived from the block that holds one on.
+    pub fn survey(&mut self, deriver: Option<&Deriver<T>>, with_scan: bool, families: &[Family]) -> Result<(Scan, Survey)> {
+        let grid = *self.source.grid();
+        let components = self.source.fields().components();
+        let tiles = self.tiles();
+        self.observe.stage(if deriver.is_some() { "survey" } else { "read" }, grid.n[2] as u64);
+        let mut scans = ScanSum::new::<T>(&grid, components);
+        let mut survey = moments::empty(families);
+        let wanted: Vec<bool> = families.iter().map(|f| matches!(f.level, Level::Volume(_))).collect();
+        let quantiles: Mutex<Vec<Vec<Option<Quantiles>>>> = Mutex::new(Vec::new());
+        let mut sound = true;
+        let halo = deriver.map_or(0, Deriver::halo);
+        let reach = |z: Range<usize>| deriver.map_or((z.start as isize, z.end as isize), |d| d.reach(z));
+        blocks(self.source, self.thickness, halo, reach, self.observe, |block| {
+            if with_scan {
+                let planes = par::map_range(block.z.len(), |k| {
+                    let z = block.z.start + k;
+                    let slices: Vec<&[T]> = (0..components).map(|c| block.plane(c, z as isize)).collect();
+                    scan::plane(&grid, z, &slices)
+                });
+                for p in &planes {
+                    sound &= p.is_finite();
+                    scans.add(p);
+                }
+            }
+            let Some(deriver) = deriver.filter(|_| sound) else { return Ok(()) };
+            let parts = par::map(&tiles, |_, rows_y| {
+                let mut counts = take(&quantiles).unwrap_or_else(|| wanted.iter().map(|w| w.then(Quantiles::default)).collect());
+                let mut scratch = Scratch::default();
+                let per_plane: Vec<Survey> = block
+                    .z
+                    .clone()
+                    .map(|z| {
+                        let mut part = moments::empty(families);
+                        for y in rows_y.clone() {
+                            let sampled = y % moments::SAMPLE_ROWS == 0;
+                            deriver.row(block, z, y, Need { truncation: sampled, alignment: false }, &mut scratch);
+                            moments::add_row(&mut part, &scratch.rows, sampled);
+                            for (q, row) in counts.iter_mut().zip(&scratch.rows.indicators) {
+                                if let Some(q) = q {
+                                    q.add(row);
+                                }
+                            }
+                        }
+                        part
+                    })
+                    .collect();
+                give(&quantiles, counts);
+                per_plane
+            });
+            for k in 0..block.z.len() {
+                let mut plane = moments::empty(families);
+                for tile in &parts {
+                    moments::merge(&mut plane, &tile[k]);
+                }
+                moments::merge(&mut survey, &plane);
+            }
+            Ok(())
+        })?;
+        while let Some(counts) = take(&quantiles) {
+            for (s, q) in survey.indicators.iter_mut().zip(counts) {
+                match (&mut s.quantiles, q) {
+                    (Some(a), Some(b)) => a.merge(&b),
+                    (a, b) => *a = b.or(a.take()),
+                }
+            }
+        }
+        self.observe.done();
+        Ok((scans.finish(), survey))
+    }
+
+    /// Finds the objects of every family, and the alignment over the whole box.
+    ///
+    /// # Errors
+    /// Those of the source.
+    pub fn detect(&mut self, deriver: &Deriver<T>, criteria: &[Criterion], min_cells: u64) -> Result<(Vec<Detected>, Alignment)> {
+        let grid = *self.source.grid();
+        let tiles = self.tiles();
+        self.observe.stage("detection", grid.n[2] as u64);
+        let mut labellers: Vec<Labeller> = criteria.iter().map(|c| Labeller::new(grid, *c)).collect();
+        let mut whole = Alignment::default();
+        blocks(
+            self.source,
+            self.thickness,
+            deriver.halo(),
+            |z| deriver.reach(z),
+            self.observe,
+            |block| {
+                let parts = par::map(&tiles, |_, rows_y| {
+                    let mut scratch = Scratch::default();
+                    let mut sweeps: Vec<TileSweep> =
+                        criteria.iter().map(|c| TileSweep::new(*c, (rows_y.start, rows_y.end), block.z.start)).collect();
+                    let alignment: Vec<Alignment> = block
+                        .z
+                        .clone()
+                        .map(|z| {
+                            let mut part = Alignment::default();
+                            for y in rows_y.clone() {
+                                deriver.row(block, z, y, Need { truncation: false, alignment: true }, &mut scratch);
+                                box_alignment::add_row(&mut part, &scratch.rows);
+                                for sweep in &mut sweeps {
+                                    sweep.add_row(&grid, &scratch.rows, y, z);
+                                }
+                            }
+                            part
+                        })
+                        .collect();
+                    (sweeps, alignment)
+                });
+                for k in 0..block.z.len() {
+                    let mut plane = Alignment::default();
+                    for (_, alignment) in &parts {
+                        plane.merge(&alignment[k]);
+                    }
+                    whole.merge(&plane);
+                }
+                for (sweeps, _) in parts {
+                    for (labeller, sweep) in labellers.iter_mut().zip(sweeps) {
+                        labeller.add(sweep);
+                    }
+                }
+                Ok(())
+            },
+        )?;
+        let found = par::map_owned(labellers, |_, l| l.finish(min_cells));
+        self.observe.done();
+        Ok((found, whole))
+    }
+
+    /// Measures the surface of every object no larger than `max_cells`; meshes of objects of at least `mesh_cells` cells
+    /// go to the sink. Takes the objects' intervals. Results per family, in object order; missing for larger objects.
+    ///
+    /// # Errors
+    /// Those of the source and of the sink.
+    pub fn shapes(
+        &mut self,
+        deriver: &Deriver<T>,
+        criteria: &[Criterion],
+        found: &mut [Detected],
+        plan: &ShapePlan,
+        sink: &mut dyn SurfaceSink,
+    ) -> Result<Vec<Vec<Option<Shaped>>>> {
+        let grid = *self.source.grid();
+        let fields = if plan.mesh_cells.is_some() { self.source.fields() } else { Fields { velocity: false, magnetic: false } };
+        let tiles = self.tiles();
+        self.observe.stage("shapes", grid.n[2] as u64);
+        let mut patches: Vec<Patches<T>> = criteria
+            .iter()
+            .zip(found.iter())
+            .map(|(c, f)| Patches::new(grid, c.family, c.side, fields, &f.objects, plan.max_cells))
+            .collect();
+        let mut out: Vec<Vec<Option<Shaped>>> = found.iter().map(|f| f.objects.iter().map(|_| None).collect()).collect();
+        blocks(
+            self.source,
+            self.thickness,
+            deriver.halo(),
+            |z| deriver.reach(z),
+            self.observe,
+            |block| {
+                for (p, f) in patches.iter_mut().zip(found.iter_mut()) {
+                    p.begin_block(block.z.clone(), &tiles, &mut f.objects);
+                }
+                par::map_range(tiles.len(), |t| {
+                    let mut scratch = Scratch::default();
+                    let mut wanted: Vec<(usize, usize)> = patches.iter().flat_map(|p| p.wanted_rows(t)).collect();
+                    wanted.sort_unstable();
+                    wanted.dedup();
+                    for (z, y) in wanted {
+                        deriver.row(block, z, y, Need::default(), &mut scratch);
+                        for p in &patches {
+                            p.deliver(t, z, y, &scratch.rows);
+                        }
+                    }
+                });
+                for (k, (p, f)) in patches.iter_mut().zip(found.iter()).enumerate() {
+                    let done = p.end_block(block.z.end);
+                    let Criterion { side, level, .. } = criteria[k];
+                    let shaped = par::map_owned(done, |_, patch| {
+                        let object = &f.objects[patch.object];
+                        let with_mesh = plan.mesh_cells.is_some_and(|least| object.tally.moments.count >= least);
+                        shape(&grid, &patch, level, side, object.id, with_mesh)
+                    });
+                    let mut meshes = Vec::new();
+                    for mut s in shaped {
+                        meshes.extend(s.mesh.take());
+                        let place = s.object;
+                        out[k][place] = Some(s);
+                    }
+                    sink.put(k, meshes)?;
+                }
+                Ok(())
+            },
+        )?;
+        self.observe.done();
+        Ok(out)
+    }
+}
+
+/// Which objects get a surface and a mesh.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct ShapePlan {
+    /// Larger objects get neither.
+    pub max_cells: u64,
+    /// Objects of at least so many cells get a mesh; none where no mesh is wanted.
+    pub mesh_cells: Option<u64>,
+}
+
+fn take<V>(pool: &Mutex<Vec<V>>) -> Option<V> {
+    pool.lock().ok().and_then(|mut p| p.pop())
+}
+
+fn give<V>(pool: &Mutex<Vec<V>>, value: V) {
+    if let Ok(mut p) = pool.lock() {
+        p.push(value);
+    }
+}
