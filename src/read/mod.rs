@@ -72,6 +72,12 @@ pub fn open(snapshot: &Path, spec: &InputSpec) -> Result<Opened> {
             Error::input("cannot open the snapshot").at(snapshot).found(e.to_string())
         }
     })?;
+    if !kind.is_dir() && !kind.is_file() {
+        return Err(Error::input("cannot open the snapshot")
+            .at(snapshot)
+            .expected("a file or a folder")
+            .found("a device or pipe"));
+    }
     let arrays = if kind.is_dir() {
         npy::open_folder(snapshot, spec, order)?
     } else if snapshot.extension() == Some(OsStr::new("npy")) {

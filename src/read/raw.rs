@@ -151,3 +151,72 @@ fn runs(shape: &[usize], start: &[usize], count: &[usize], offset: u64, width: u
         Run { byte, place: i * values, values }
     })
 }
+
+#[cfg(test)]
+mod tests {
+    use std::io::Write;
+
+    use super::*;
+
+    /// Longer than `SPAN`, with rows longer than `GAP`.
+    const SHAPE: [usize; 3] = [20, 9, 8192];
+
+    fn check<T: Real>(array: &mut RawArray, start: [usize; 3], count: [usize; 3]) {
+        let mut out = vec![T::ZERO; count.iter().product()];
+        array.read_block(&start, &count, &mut out).unwrap();
+        for (i, v) in out.iter().enumerate() {
+            let at = [
+                i / count[2] / count[1],
+                i / count[2] % count[1],
+                i % count[2],
+            ];
+            let [a, b, c]: [usize; 3] = std::array::from_fn(|d| start[d] + at[d]);
+            assert_eq!(
+                v.wide(),
+                ((a * SHAPE[1] + b) * SHAPE[2] + c) as f64,
+                "{start:?} {count:?} {i}"
+            );
+        }
+    }
+
+    #[test]
+    fn long_runs_wide_gaps_and_full_buffers_arrive() {
+        for big in [false, true] {
+            let mut file = tempfile::tempfile().unwrap();
+            file.write_all(b"head").unwrap();
+            // Every index is below 2^24 and so exact in f32.
+            let values = (0..SHAPE.iter().product()).map(|i| i as f32);
+            let bytes: Vec<u8> = values
+                .flat_map(|v| {
+                    if big {
+                        v.to_be_bytes()
+                    } else {
+                        v.to_le_bytes()
+                    }
+                })
+                .collect();
+            assert!(bytes.len() as u64 > SPAN && SHAPE[2] as u64 * 4 > GAP);
+            file.write_all(&bytes).unwrap();
+            let header = Header {
+                path: "array".into(),
+                item: None,
+                label: String::new(),
+                shape: SHAPE.into(),
+                precision: Precision::F32,
+            };
+            let mut array = RawArray::new(header, file, 4, big);
+            for (start, count) in [
+                ([0, 0, 0], SHAPE),
+                ([3, 0, 0], [16, 9, 8192]),
+                ([3, 2, 0], [5, 6, 8192]),
+                ([0, 0, 8000], [20, 9, 192]),
+                ([0, 8, 4000], [20, 1, 4100]),
+                ([1, 0, 7], [19, 9, 8185]),
+                ([19, 8, 8191], [1, 1, 1]),
+            ] {
+                check::<f32>(&mut array, start, count);
+                check::<f64>(&mut array, start, count);
+            }
+        }
+    }
+}

@@ -131,6 +131,18 @@ fn files_that_are_not_hdf5() {
     );
 }
 
+#[cfg(unix)]
+#[test]
+fn devices_are_not_waited_for() {
+    let path = Path::new("/dev/null");
+    assert_eq!(
+        fault(Path::new("/nowhere"), path, &spec("zyx")),
+        input(
+            "cannot open the snapshot: /dev/null: expected a file or a folder, found a device or pipe"
+        )
+    );
+}
+
 #[test]
 fn truncated_hdf5_files() {
     let dir = tempfile::tempdir().unwrap();

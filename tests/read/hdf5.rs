@@ -317,3 +317,22 @@ fn planes_outside_the_box_panic() {
     let mut out: Vec<&mut [f32]> = values.iter_mut().map(|v| &mut v[..]).collect();
     source.read(8, 10, &mut out).unwrap();
 }
+
+#[test]
+fn one_file_feeds_several_sources() {
+    let dir = tempfile::tempdir().unwrap();
+    let path = dir.path().join("s.h5");
+    let file = File::create(&path).unwrap();
+    write::<f32>(&file, "velocity", "czyx", 0, Storage::Filtered, false);
+    write::<f32>(&file, "b", "zyxc", 3, Storage::Filtered, false);
+    file.close().unwrap();
+    let both = opened(&path, &spec("zyx"));
+    let own = InputSpec {
+        magnetic: names(&["b"]),
+        ..spec("zyx")
+    };
+    let magnetic = opened(&path, &own);
+    let reader = std::thread::spawn(move || check_all::<f32>(magnetic.source, 3, "second"));
+    check_all::<f32>(both.source, 0, "first");
+    reader.join().unwrap();
+}
