@@ -3,6 +3,7 @@
 pub mod base;
 pub mod derive;
 pub mod detect;
+pub mod export;
 pub mod math;
 pub mod measure;
 pub mod model;

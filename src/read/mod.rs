@@ -73,10 +73,7 @@ pub fn open(snapshot: &Path, spec: &InputSpec) -> Result<Opened> {
         }
     })?;
     if !kind.is_dir() && !kind.is_file() {
-        return Err(Error::input("cannot open the snapshot")
-            .at(snapshot)
-            .expected("a file or a folder")
-            .found("a device or pipe"));
+        return Err(Error::input("cannot open the snapshot").at(snapshot).expected("a file or a folder").found("a device or pipe"));
     }
     let arrays = if kind.is_dir() {
         npy::open_folder(snapshot, spec, order)?

@@ -165,17 +165,9 @@ mod tests {
         let mut out = vec![T::ZERO; count.iter().product()];
         array.read_block(&start, &count, &mut out).unwrap();
         for (i, v) in out.iter().enumerate() {
-            let at = [
-                i / count[2] / count[1],
-                i / count[2] % count[1],
-                i % count[2],
-            ];
+            let at = [i / count[2] / count[1], i / count[2] % count[1], i % count[2]];
             let [a, b, c]: [usize; 3] = std::array::from_fn(|d| start[d] + at[d]);
-            assert_eq!(
-                v.wide(),
-                ((a * SHAPE[1] + b) * SHAPE[2] + c) as f64,
-                "{start:?} {count:?} {i}"
-            );
+            assert_eq!(v.wide(), ((a * SHAPE[1] + b) * SHAPE[2] + c) as f64, "{start:?} {count:?} {i}");
         }
     }
 
@@ -186,24 +178,10 @@ mod tests {
             file.write_all(b"head").unwrap();
             // Every index is below 2^24 and so exact in f32.
             let values = (0..SHAPE.iter().product()).map(|i| i as f32);
-            let bytes: Vec<u8> = values
-                .flat_map(|v| {
-                    if big {
-                        v.to_be_bytes()
-                    } else {
-                        v.to_le_bytes()
-                    }
-                })
-                .collect();
+            let bytes: Vec<u8> = values.flat_map(|v| if big { v.to_be_bytes() } else { v.to_le_bytes() }).collect();
             assert!(bytes.len() as u64 > SPAN && SHAPE[2] as u64 * 4 > GAP);
             file.write_all(&bytes).unwrap();
-            let header = Header {
-                path: "array".into(),
-                item: None,
-                label: String::new(),
-                shape: SHAPE.into(),
-                precision: Precision::F32,
-            };
+            let header = Header { path: "array".into(), item: None, label: String::new(), shape: SHAPE.into(), precision: Precision::F32 };
             let mut array = RawArray::new(header, file, 4, big);
             for (start, count) in [
                 ([0, 0, 0], SHAPE),

@@ -137,9 +137,7 @@ fn devices_are_not_waited_for() {
     let path = Path::new("/dev/null");
     assert_eq!(
         fault(Path::new("/nowhere"), path, &spec("zyx")),
-        input(
-            "cannot open the snapshot: /dev/null: expected a file or a folder, found a device or pipe"
-        )
+        input("cannot open the snapshot: /dev/null: expected a file or a folder, found a device or pipe")
     );
 }
 

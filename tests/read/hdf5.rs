@@ -327,10 +327,7 @@ fn one_file_feeds_several_sources() {
     write::<f32>(&file, "b", "zyxc", 3, Storage::Filtered, false);
     file.close().unwrap();
     let both = opened(&path, &spec("zyx"));
-    let own = InputSpec {
-        magnetic: names(&["b"]),
-        ..spec("zyx")
-    };
+    let own = InputSpec { magnetic: names(&["b"]), ..spec("zyx") };
     let magnetic = opened(&path, &own);
     let reader = std::thread::spawn(move || check_all::<f32>(magnetic.source, 3, "second"));
     check_all::<f32>(both.source, 0, "first");

@@ -1,2 +1,25 @@
-//! The program.
-fn main() {}
+//! The program `ropewalk`: reads the command line, runs one command, sets the exit code.
+
+mod args;
+mod commands;
+mod console;
+mod exit;
+mod settle;
+
+use std::process::ExitCode;
+
+use clap::Parser;
+
+fn main() -> ExitCode {
+    let args = match args::Args::try_parse() {
+        Ok(args) => args,
+        Err(e) => return console::usage(&e),
+    };
+    match commands::run(&args) {
+        Ok(code) => code,
+        Err(e) => {
+            console::error(&e);
+            exit::code(&e)
+        }
+    }
+}

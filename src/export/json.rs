@@ -1,0 +1,32 @@
+//! The data dictionary and pretty JSON.
+
+use serde_json::{Value, json};
+
+use crate::model::columns::COLUMNS;
+
+/// The dictionary of catalogue columns.
+pub fn dictionary() -> Value {
+    let columns: Vec<Value> = COLUMNS
+        .iter()
+        .map(|c| {
+            json!({
+                "name": c.name,
+                "unit": c.unit.text(),
+                "definition": c.definition,
+                "source": c.source,
+                "stage": c.stage.text(),
+            })
+        })
+        .collect();
+    json!({ "columns": columns })
+}
+
+/// Indented text with a final newline.
+pub fn pretty(value: &Value) -> String {
+    format!("{value:#}\n")
+}
+
+/// A number, or null where there is none.
+pub fn number(v: Option<f64>) -> Value {
+    v.filter(|v| v.is_finite()).map_or(Value::Null, |v| json!(v))
+}

@@ -1,0 +1,163 @@
+//! Surface meshes in the PLY format (binary, little-endian): header through the PLY library, payload packed here.
+
+use std::io::{self, Read, Seek, SeekFrom, Write};
+
+use ply_rs::ply::{Addable, DefaultElement, ElementDef, Encoding, Header, PropertyDef, PropertyType, ScalarType};
+use ply_rs::writer::Writer;
+
+use crate::base::par;
+use crate::model::surface::SurfaceMesh;
+
+/// Writes meshes one after the other into one file whose counts are known only at the end.
+///
+/// Vertices go straight to the output behind a header of fixed length; faces wait in `faces` and are appended by
+/// [`PlyWriter::finish`], which rewrites the header with the final counts.
+pub struct PlyWriter<W, S> {
+    out: W,
+    faces: S,
+    values: Vec<&'static str>,
+    comments: Vec<String>,
+    header_bytes: usize,
+    vertex_count: u64,
+    face_count: u64,
+}
+
+/// Room for digits of the two counts, so that the header keeps its length.
+const COUNT_DIGITS: usize = 20;
+
+impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
+    /// Starts a file. `values` names the vertex values behind position and normal; `comments` go into the header.
+    ///
+    /// # Errors
+    /// Those of the output.
+    pub fn new(mut out: W, faces: S, values: Vec<&'static str>, comments: Vec<String>) -> io::Result<Self> {
+        let header = header(&values, &comments, 0, 0, 0)?;
+        let header_bytes = header.len() + 2 * COUNT_DIGITS;
+        out.write_all(&vec![b' '; header_bytes])?;
+        Ok(PlyWriter { out, faces, values, comments, header_bytes, vertex_count: 0, face_count: 0 })
+    }
+
+    /// Appends meshes in order.
+    ///
+    /// # Errors
+    /// Those of the output, and `InvalidData` when vertices outgrow 32-bit indices.
+    pub fn add(&mut self, meshes: &[SurfaceMesh]) -> io::Result<()> {
+        let mut bases = Vec::with_capacity(meshes.len());
+        for m in meshes {
+            bases.push(self.vertex_count);
+            self.vertex_count += m.positions.len() as u64;
+            self.face_count += m.triangles.len() as u64;
+        }
+        if self.vertex_count > u64::from(u32::MAX) {
+            return Err(io::Error::new(io::ErrorKind::InvalidData, "more than 2^32 vertices in one file; write one file an object"));
+        }
+        let packed = par::map(meshes, |i, m| (pack_vertices(m), pack_faces(m, bases[i] as u32)));
+        for (vertices, faces) in packed {
+            self.out.write_all(&vertices)?;
+            self.faces.write_all(&faces)?;
+        }
+        Ok(())
+    }
+
+    /// Appends the faces, writes the header and hands the output back.
+    ///
+    /// # Errors
+    /// Those of the output.
+    pub fn finish(mut self) -> io::Result<W> {
+        self.faces.flush()?;
+        self.faces.seek(SeekFrom::Start(0))?;
+        io::copy(&mut self.faces, &mut self.out)?;
+        let bare = header(&self.values, &self.comments, self.vertex_count, self.face_count, 0)?;
+        let full = header(&self.values, &self.comments, self.vertex_count, self.face_count, self.header_bytes - bare.len())?;
+        self.out.seek(SeekFrom::Start(0))?;
+        self.out.write_all(&full)?;
+        self.out.flush()?;
+        Ok(self.out)
+    }
+}
+
+/// The header, its last comment stretched by `padding` characters.
+fn header(values: &[&'static str], comments: &[String], vertices: u64, faces: u64, padding: usize) -> io::Result<Vec<u8>> {
+    let mut h = Header::new();
+    h.encoding = Encoding::BinaryLittleEndian;
+    for c in comments {
+        h.comments.push(c.clone());
+    }
+    let last = format!("objects are told apart by the vertex property object{}", ".".repeat(padding));
+    h.comments.push(last);
+    let mut vertex = ElementDef::new("vertex".to_string());
+    let floats = ["x", "y", "z", "nx", "ny", "nz"].into_iter().chain(values.iter().copied());
+    for name in floats {
+        vertex.properties.add(PropertyDef::new(name.to_string(), PropertyType::Scalar(ScalarType::Float)));
+    }
+    vertex.properties.add(PropertyDef::new("object".to_string(), PropertyType::Scalar(ScalarType::UInt)));
+    vertex.count = vertices as usize;
+    let mut face = ElementDef::new("face".to_string());
+    let list = PropertyType::List(ScalarType::UChar, ScalarType::UInt);
+    face.properties.add(PropertyDef::new("vertex_indices".to_string(), list));
+    face.count = faces as usize;
+    h.elements.add(vertex);
+    h.elements.add(face);
+    let mut bytes = Vec::new();
+    Writer::<DefaultElement>::new().write_header(&mut bytes, &h)?;
+    Ok(bytes)
+}
+
+fn pack_vertices(m: &SurfaceMesh) -> Vec<u8> {
+    let width = 4 * (6 + m.values.len() + 1);
+    let mut out = Vec::with_capacity(m.positions.len() * width);
+    let id = (m.id as u32).to_le_bytes();
+    for i in 0..m.positions.len() {
+        for v in m.positions[i].iter().chain(&m.normals[i]) {
+            out.extend_from_slice(&v.to_le_bytes());
+        }
+        for values in &m.values {
+            out.extend_from_slice(&values[i].to_le_bytes());
+        }
+        out.extend_from_slice(&id);
+    }
+    out
+}
+
+fn pack_faces(m: &SurfaceMesh, base: u32) -> Vec<u8> {
+    let mut out = Vec::with_capacity(m.triangles.len() * 13);
+    for t in &m.triangles {
+        let mut record = [3u8; 13];
+        for (k, v) in t.iter().enumerate() {
+            record[1 + 4 * k..5 + 4 * k].copy_from_slice(&(v + base).to_le_bytes());
+        }
+        out.extend_from_slice(&record);
+    }
+    out
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use std::io::Cursor;
+
+    /// Read back by the PLY library's own parser.
+    #[test]
+    fn the_library_reads_what_was_packed() {
+        let mesh = |id: u64, shift: f32| SurfaceMesh {
+            id,
+            positions: vec![[shift, 0.0, 0.0], [1.0, shift, 0.0], [0.0, 1.0, 0.5]],
+            normals: vec![[0.0, 0.0, 1.0]; 3],
+            values: vec![vec![2.5, 3.5, 4.5]],
+            triangles: vec![[0, 1, 2]],
+        };
+        let mut w = PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), vec!["indicator"], vec!["a test".into()]).unwrap();
+        w.add(&[mesh(7, 0.25)]).unwrap();
+        w.add(&[mesh(9, 0.75)]).unwrap();
+        let bytes = w.finish().unwrap().into_inner();
+        let parser = ply_rs::parser::Parser::<DefaultElement>::new();
+        let ply = parser.read_ply(&mut Cursor::new(bytes)).unwrap();
+        let vertices = &ply.payload["vertex"];
+        let faces = &ply.payload["face"];
+        assert_eq!((vertices.len(), faces.len()), (6, 2));
+        assert_eq!(format!("{:?}", vertices[3]["x"]), "Float(0.75)");
+        assert_eq!(format!("{:?}", vertices[4]["indicator"]), "Float(3.5)");
+        assert_eq!(format!("{:?}", vertices[5]["object"]), "UInt(9)");
+        assert_eq!(format!("{:?}", faces[1]["vertex_indices"]), "ListUInt([3, 4, 5])");
+    }
+}

@@ -1,0 +1,170 @@
+//! The main job: snapshots in, a run folder out.
+
+use std::path::{Path, PathBuf};
+use std::time::Instant;
+
+use serde_json::{Value, json};
+
+use crate::base::error::{Error, Kind, Result};
+use crate::base::observe::Observe;
+use crate::base::par::Pool;
+use crate::export::atomic::Folder;
+use crate::export::{csv, json as dictionary};
+use crate::model::request::{Request, Surfaces};
+use crate::model::surface::NoSurfaces;
+use crate::read::{self, InputSpec, Opened};
+use crate::run::analysis::{Analysis, Execution, Snapshot, analyse};
+use crate::run::clock::Clock;
+use crate::run::meshes::MeshFiles;
+use crate::run::{provenance, summary};
+
+/// A settled run.
+#[derive(Debug, Clone, PartialEq)]
+pub struct RunConfig {
+    /// Snapshots in the order of the catalogue.
+    pub snapshots: Vec<PathBuf>,
+    /// How to read them.
+    pub input: InputSpec,
+    /// What changes results.
+    pub request: Request,
+    /// What does not.
+    pub execution: Execution,
+    /// Worker threads; 0 takes one per core.
+    pub threads: usize,
+    /// The run folder.
+    pub output: PathBuf,
+    /// Whether an earlier run folder of that name is replaced.
+    pub replace: bool,
+}
+
+/// What came out.
+pub struct Outcome {
+    /// The run folder.
+    pub folder: PathBuf,
+    /// Snapshots that were analysed.
+    pub done: Vec<Analysis>,
+    /// Snapshots that failed, with the reason.
+    pub failed: Vec<(PathBuf, Error)>,
+}
+
+/// Runs the main job.
+///
+/// Headers of all snapshots are checked before anything long. A snapshot that cannot be used is reported and the others go on;
+/// when none can be used, the first reason is the error and nothing is written.
+///
+/// # Errors
+/// `Usage` for a request that fits no snapshot, `Input` or `Data` when no snapshot is usable, `Output` for the run folder.
+pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
+    let started = Instant::now();
+    let pool = Pool::new(config.threads)?;
+    let clock = Clock::new(observe);
+    let mut failed = Vec::new();
+    let mut usable = Vec::new();
+    for path in &config.snapshots {
+        match read::open(path, &config.input).and_then(|o| check(o, &config.request)) {
+            Ok(name) => usable.push((path.clone(), name)),
+            Err(e) if e.kind() == Kind::Usage => return Err(e),
+            Err(e) => fail(&mut failed, path, e, observe),
+        }
+    }
+    for (i, (path, name)) in usable.iter().enumerate() {
+        if let Some((other, _)) = usable[..i].iter().find(|(_, n)| n == name) {
+            return Err(Error::usage("cannot tell two snapshots apart")
+                .at(path)
+                .expected("a name of its own")
+                .found(format!("the name \"{name}\", also that of {}", other.display()))
+                .hint("run them into two folders, or rename one"));
+        }
+    }
+    if usable.is_empty() {
+        return Err(first(failed));
+    }
+    let folder = Folder::create(&config.output, config.replace)?;
+    let mut table = csv::header();
+    let mut done = Vec::new();
+    let mut snapshots: Vec<Value> = Vec::new();
+    for (path, _) in &usable {
+        let one = pool.run(|| one(path, config, &folder, &clock));
+        match one {
+            Ok((analysis, datasets)) => {
+                for row in analysis.families.iter().flat_map(|f| &f.rows) {
+                    csv::push_row(&mut table, row);
+                }
+                snapshots.push(summary::snapshot(&analysis, &path.to_string_lossy(), &datasets));
+                done.push(analysis);
+            }
+            Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => fail(&mut failed, path, e, observe),
+            Err(e) => return Err(e),
+        }
+    }
+    if done.is_empty() {
+        return Err(first(failed));
+    }
+    let failures: Vec<Value> = failed.iter().map(|(p, e)| json!({ "path": p.to_string_lossy(), "error": e.to_string() })).collect();
+    let what = json!({
+        "program": provenance::program(),
+        "request": summary::request(&config.request, &config.input),
+        "conventions": summary::conventions(),
+        "snapshots": snapshots,
+        "failed": failures,
+    });
+    folder.write("catalogue.csv", table.as_bytes())?;
+    folder.write("columns.json", dictionary::pretty(&dictionary::dictionary()).as_bytes())?;
+    folder.write("run.json", dictionary::pretty(&what).as_bytes())?;
+    let how = provenance::timing(&clock.stages(), started.elapsed().as_secs_f64(), pool.threads(), &done);
+    folder.write("timing.json", dictionary::pretty(&how).as_bytes())?;
+    Ok(Outcome { folder: folder.finish()?, done, failed })
+}
+
+fn check(opened: Opened, request: &Request) -> Result<String> {
+    request.families_for(opened.source.fields())?;
+    Ok(opened.name)
+}
+
+fn fail(failed: &mut Vec<(PathBuf, Error)>, path: &Path, e: Error, observe: &dyn Observe) {
+    observe.warning(&format!("snapshot skipped: {e}"));
+    failed.push((path.to_path_buf(), e));
+}
+
+fn first(failed: Vec<(PathBuf, Error)>) -> Error {
+    match failed.into_iter().next() {
+        Some((_, e)) => e,
+        None => Error::usage("no snapshot given").hint("name one or more files"),
+    }
+}
+
+fn one(path: &Path, config: &RunConfig, folder: &Folder, observe: &dyn Observe) -> Result<(Analysis, Vec<String>)> {
+    let opened = read::open(path, &config.input)?;
+    let fields = opened.source.fields();
+    let snapshot =
+        Snapshot { name: opened.name.clone(), time: opened.time, components: component_names(&opened.datasets, fields.components()) };
+    let (request, execution) = (&config.request, &config.execution);
+    let analysis = if request.surfaces == Surfaces::None {
+        analyse(opened.source, snapshot, request, execution, observe, &mut NoSurfaces)?
+    } else {
+        let families = request.families_for(fields)?;
+        let mut files = MeshFiles::new(folder, &opened.name, families, fields, request.surfaces)?;
+        match analyse(opened.source, snapshot, request, execution, observe, &mut files) {
+            Ok(analysis) => {
+                files.finish()?;
+                analysis
+            }
+            Err(e) => {
+                files.abandon();
+                return Err(e);
+            }
+        }
+    };
+    Ok((analysis, opened.datasets))
+}
+
+/// One name a component for messages; an array with a component axis stands for three.
+fn component_names(datasets: &[String], components: usize) -> Vec<String> {
+    if datasets.len() == components {
+        return datasets.to_vec();
+    }
+    if datasets.len() * 3 == components {
+        return datasets.iter().flat_map(|d| (0..3).map(move |c| format!("{d}[{c}]"))).collect();
+    }
+    Vec::new()
+}

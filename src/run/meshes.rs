@@ -1,0 +1,109 @@
+//! Writes the meshes of a snapshot into the run folder as they are finished.
+
+use std::fs::File;
+use std::io::BufWriter;
+
+use crate::base::error::{Error, Result};
+use crate::export::atomic::Folder;
+use crate::export::ply::PlyWriter;
+use crate::model::request::{Family, Surfaces};
+use crate::model::source::Fields;
+use crate::model::surface::{SurfaceMesh, SurfaceSink};
+
+/// One file a family, or one an object.
+pub struct MeshFiles<'a> {
+    folder: &'a Folder,
+    snapshot: String,
+    families: Vec<Family>,
+    values: Vec<&'static str>,
+    each: bool,
+    together: Vec<Option<PlyWriter<BufWriter<File>, File>>>,
+}
+
+/// Where the faces wait while vertices are written.
+const FACES: &str = ".faces";
+
+impl<'a> MeshFiles<'a> {
+    /// Prepares the files of a snapshot; `surfaces` must not be [`Surfaces::None`].
+    pub fn new(folder: &'a Folder, snapshot: &str, families: Vec<Family>, fields: Fields, surfaces: Surfaces) -> Result<Self> {
+        folder.subfolder("surfaces")?;
+        let together = families.iter().map(|_| None).collect();
+        let values = SurfaceMesh::value_names(fields);
+        Ok(MeshFiles { folder, snapshot: snapshot.to_string(), families, values, each: surfaces == Surfaces::Each, together })
+    }
+
+    fn name(&self, family: usize, id: Option<u64>) -> String {
+        let end = id.map_or(String::new(), |i| format!("_{i:06}"));
+        format!("surfaces/{}_{}{end}.ply", self.snapshot, self.families[family].name)
+    }
+
+    fn open(&self, name: &str, family: usize) -> Result<PlyWriter<BufWriter<File>, File>> {
+        let out = BufWriter::with_capacity(1 << 16, self.folder.file(name)?);
+        let faces = self.folder.file(&format!("{name}{FACES}"))?;
+        let comments = vec![
+            format!("ropewalk {}", env!("CARGO_PKG_VERSION")),
+            format!("snapshot {}", self.snapshot),
+            format!("family {}", self.families[family]),
+        ];
+        PlyWriter::new(out, faces, self.values.clone(), comments).map_err(|e| self.failed(name, &e))
+    }
+
+    fn failed(&self, name: &str, e: &std::io::Error) -> Error {
+        Error::output("cannot write a mesh").at(self.folder.path(name)).found(e.to_string())
+    }
+
+    fn close(&self, name: &str, writer: PlyWriter<BufWriter<File>, File>) -> Result<()> {
+        writer.finish().map_err(|e| self.failed(name, &e))?;
+        self.folder.remove(&format!("{name}{FACES}"))
+    }
+
+    /// Completes the files.
+    ///
+    /// # Errors
+    /// `Output`.
+    pub fn finish(mut self) -> Result<()> {
+        for family in 0..self.families.len() {
+            let name = self.name(family, None);
+            if let Some(writer) = self.together[family].take() {
+                self.close(&name, writer)?;
+            }
+        }
+        Ok(())
+    }
+
+    /// Removes what was begun, after a failure.
+    pub fn abandon(self) {
+        for (family, begun) in self.together.iter().enumerate() {
+            if begun.is_some() {
+                let name = self.name(family, None);
+                // The failure that led here is what gets reported.
+                let _ = self.folder.remove(&name);
+                let _ = self.folder.remove(&format!("{name}{FACES}"));
+            }
+        }
+    }
+}
+
+impl SurfaceSink for MeshFiles<'_> {
+    fn put(&mut self, family: usize, meshes: Vec<SurfaceMesh>) -> Result<()> {
+        if self.each {
+            for mesh in &meshes {
+                let name = self.name(family, Some(mesh.id));
+                let mut writer = self.open(&name, family)?;
+                writer.add(std::slice::from_ref(mesh)).map_err(|e| self.failed(&name, &e))?;
+                self.close(&name, writer)?;
+            }
+            return Ok(());
+        }
+        let name = self.name(family, None);
+        if self.together[family].is_none() {
+            self.together[family] = Some(self.open(&name, family)?);
+        }
+        match &mut self.together[family] {
+            Some(writer) => {
+                writer.add(&meshes).map_err(|e| Error::output("cannot write a mesh").at(self.folder.path(&name)).found(e.to_string()))
+            }
+            None => Ok(()),
+        }
+    }
+}

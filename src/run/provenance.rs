@@ -1,0 +1,38 @@
+//! Where a result comes from: the program (part of the results), and how the run went (never part of them).
+
+use serde_json::{Value, json};
+
+use crate::run::analysis::Analysis;
+use crate::run::clock::StageTime;
+
+/// The program and the instruction set that results are identical for.
+pub fn program() -> Value {
+    json!({
+        "name": env!("CARGO_PKG_NAME"),
+        "version": env!("CARGO_PKG_VERSION"),
+        "instruction_set": std::env::consts::ARCH,
+    })
+}
+
+/// `timing.json`: threads, seconds, rates, peak memory, host.
+pub fn timing(stages: &[StageTime], seconds: f64, threads: usize, done: &[Analysis]) -> Value {
+    let cells: u64 = done.iter().map(|a| a.grid.cells()).sum();
+    let stages: Vec<Value> = stages.iter().map(|s| json!({ "stage": s.name, "seconds": s.seconds, "planes": s.planes })).collect();
+    json!({
+        "seconds": seconds,
+        "threads": threads,
+        "stages": stages,
+        "cells": cells,
+        "cells_per_second": cells as f64 / seconds.max(1e-9),
+        "peak_memory_bytes": peak_memory(),
+        "host": std::fs::read_to_string("/proc/sys/kernel/hostname").ok().map(|h| h.trim().to_string()),
+        "finished_unix_seconds": std::time::SystemTime::now().duration_since(std::time::UNIX_EPOCH).ok().map(|d| d.as_secs()),
+    })
+}
+
+/// Peak resident memory of this process, where the system tells.
+fn peak_memory() -> Option<u64> {
+    let status = std::fs::read_to_string("/proc/self/status").ok()?;
+    let line = status.lines().find(|l| l.starts_with("VmHWM:"))?;
+    line.split_whitespace().nth(1)?.parse::<u64>().ok().map(|k| k * 1024)
+}

@@ -1,0 +1,181 @@
+//! `run.json`: what a run was asked, what it read, levels, statistics, shares and warnings. Nothing in it depends on threads or times.
+
+use serde_json::{Value, json};
+
+use crate::export::json::number;
+use crate::math::stats::Cosine;
+use crate::model::object::{COSINES, Scales, Sum, Tally};
+use crate::model::request::{Frame, Request, Surfaces};
+use crate::model::statistics::{Alignment, GradientStats};
+use crate::read::InputSpec;
+use crate::run::analysis::{Analysis, FamilyResult};
+
+/// The request and the reading options.
+pub fn request(request: &Request, input: &InputSpec) -> Value {
+    let families: Vec<String> = request.families.iter().map(ToString::to_string).collect();
+    json!({
+        "families": families,
+        "families_default": request.families.is_empty(),
+        "connectivity": request.connectivity.neighbours(),
+        "min_cells": request.min_cells,
+        "max_object_cells": request.max_object_cells,
+        "viscosity": number(request.viscosity),
+        "resistivity": number(request.resistivity),
+        "frame": match request.frame { Frame::Box => "box", Frame::Stored => "stored" },
+        "derivative": "fd8",
+        "surfaces": match request.surfaces { Surfaces::None => "none", Surfaces::Together => "together", Surfaces::Each => "each" },
+        "surface_min_cells": request.surface_min_cells,
+        "velocity": input.velocity,
+        "magnetic": input.magnetic,
+        "order": input.order,
+        "lengths": input.lengths,
+        "spacing": input.spacing,
+        "origin": input.origin,
+        "periodic": axes(input.periodic),
+    })
+}
+
+/// Conventions a reader of the numbers needs.
+pub fn conventions() -> Value {
+    json!({
+        "rms": "root of the box mean of the square; of the magnitude for vectors",
+        "curl": "right-handed",
+        "q": "(|omega|^2 / 4) - (S:S / 2), S = (A + A^T) / 2, A_ij = du_i/dx_j",
+        "dissipation": "viscous 2 nu S:S, Ohmic eta |j|^2, magnetic field in velocity units",
+        "mean_curvature_integral": "half the surface integral of the two principal curvatures (sphere 4 pi R)",
+        "euler": "of the body, half that of its surface",
+        "ids": "by smallest cell index, z slowest",
+        "digest": "BLAKE3 over the decoded planes: shape and precision, then one hash a z-plane",
+    })
+}
+
+fn axes(flags: [bool; 3]) -> String {
+    let text: String = ["x", "y", "z"].iter().zip(flags).filter(|(_, f)| *f).map(|(a, _)| *a).collect();
+    if text.is_empty() { "none".to_string() } else { text }
+}
+
+/// One snapshot.
+pub fn snapshot(a: &Analysis, path: &str, datasets: &[String]) -> Value {
+    let n = a.survey.cells as f64;
+    let lengths: Vec<f64> = (0..3).map(|k| a.grid.length(k)).collect();
+    let names = ["u", "v", "w", "bx", "by", "bz"];
+    let first = if a.fields.velocity { 0 } else { 3 };
+    let components: Vec<Value> = a
+        .scan
+        .components
+        .iter()
+        .enumerate()
+        .map(|(k, c)| {
+            json!({
+                "name": names[first + k],
+                "mean": c.sum / n,
+                "rms": (c.square_sum / n).sqrt(),
+                "min": c.min,
+                "max": c.max,
+            })
+        })
+        .collect();
+    let families: Vec<Value> = a.families.iter().map(|f| family(a, f)).collect();
+    json!({
+        "snapshot": a.snapshot.name,
+        "path": path,
+        "datasets": datasets,
+        "time": number(a.snapshot.time),
+        "precision": a.precision,
+        "digest": a.scan.digest,
+        "cells": a.grid.n,
+        "spacing": a.grid.spacing,
+        "lengths": lengths,
+        "origin": a.grid.origin,
+        "periodic": axes(a.grid.periodic),
+        "components": components,
+        "frame_velocity": a.frame,
+        "velocity": if a.fields.velocity { gradient(&a.survey.velocity, n, a, 0) } else { Value::Null },
+        "magnetic": if a.fields.magnetic { gradient(&a.survey.magnetic, n, a, 1) } else { Value::Null },
+        "kolmogorov_length": number(a.kolmogorov_length),
+        "alignment": alignment(&a.alignment),
+        "families": families,
+        "warnings": a.warnings,
+    })
+}
+
+fn gradient(g: &GradientStats, n: f64, a: &Analysis, which: usize) -> Value {
+    let d = &a.divergence[which];
+    let mut out = json!({
+        "curl_rms": (g.curl2 / n).sqrt(),
+        "curl_max": g.curl2_max.sqrt(),
+        "divergence_over_curl": number(d.ratio),
+        "divergence_explained": number(d.explained),
+    });
+    if which == 0 {
+        out["strain2_mean"] = json!(g.strain2 / n);
+    }
+    out
+}
+
+fn family(a: &Analysis, f: &FamilyResult) -> Value {
+    let n = a.survey.cells as f64;
+    let k = a.families.iter().position(|g| g.family.name == f.family.name).unwrap_or(0);
+    let s = &a.survey.indicators[k];
+    let rms = (s.square_sum / n).sqrt();
+    let share = |t: &Tally| shares(a, t, &f.scales);
+    let mut background = share(&f.listed);
+    let dropped = share(&f.dropped.1);
+    for key in ["volume", "viscous", "ohmic"] {
+        let rest = background[key].as_f64().zip(dropped[key].as_f64()).map(|(p, q)| 1.0 - p - q);
+        background[key] = number(rest);
+    }
+    json!({
+        "family": f.family.name,
+        "definition": f.family.to_string(),
+        "indicator": f.family.indicator.name(),
+        "level": f.level,
+        "level_in_rms": number((rms > 0.0).then(|| f.level / rms)),
+        "volume_fraction": f.volume_fraction,
+        "indicator_mean": s.sum / n,
+        "indicator_rms": rms,
+        "indicator_min": s.min,
+        "indicator_max": s.max,
+        "objects": f.rows.len(),
+        "dropped_objects": f.dropped.0,
+        "dropped_cells": f.dropped.1.moments.count,
+        "oversized_objects": f.oversized,
+        "shares": { "objects": share(&f.listed), "dropped": dropped, "background": background },
+        "alignment": { "objects": alignment(&f.inside), "outside": alignment(&f.outside) },
+    })
+}
+
+/// Shares of the box total; objects, dropped ones and background add up to 1.
+fn shares(a: &Analysis, t: &Tally, scales: &Scales) -> Value {
+    let of = |part: f64, whole: f64| number((whole > 0.0).then(|| part / whole));
+    json!({
+        "volume": t.moments.count as f64 / a.survey.cells as f64,
+        "viscous": if a.fields.velocity { of(t.sum(Sum::Strain2, scales), a.survey.velocity.strain2) } else { Value::Null },
+        "ohmic": if a.fields.magnetic { of(t.sum(Sum::Current2, scales), a.survey.magnetic.curl2) } else { Value::Null },
+    })
+}
+
+fn alignment(a: &Alignment) -> Value {
+    let ratio = |p: f64, q: f64| number((q > 0.0).then(|| p / q));
+    let mut out = json!({
+        "lamb_sin2": ratio(a.lamb2, a.u2w2),
+        "lorentz_sin2": ratio(a.lorentz2, a.j2b2),
+        "sin2_uncorrelated": 2.0 / 3.0,
+    });
+    for (name, c) in COSINES.iter().zip(&a.cosines) {
+        if c.defined > 0 {
+            out[*name] = cosine(c);
+        }
+    }
+    out
+}
+
+fn cosine(c: &Cosine) -> Value {
+    json!({
+        "cells": c.defined,
+        "mean": number(c.mean()),
+        "abs_mean": number(c.abs_mean()),
+        "aligned": number(c.aligned_share()),
+        "histogram": c.bins,
+    })
+}
