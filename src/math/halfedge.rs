@@ -115,7 +115,9 @@ mod tests {
     fn open_and_overfull_edges_keep_their_counts() {
         let triangles = [[0, 1, 2], [1, 0, 3], [0, 1, 4]];
         let mut counts = Vec::new();
-        for_each_edge(5, &triangles, |a, b, sides| counts.push((a, b, sides.len())));
+        for_each_edge(5, &triangles, |a, b, sides| {
+            counts.push((a, b, sides.len()))
+        });
         assert_eq!(counts[0], (0, 1, 3));
         assert!(counts[1..].iter().all(|c| c.2 == 1));
         assert_eq!(counts.len(), 7);

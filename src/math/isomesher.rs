@@ -3,7 +3,7 @@
 use crate::base::real::Real;
 use crate::math::isocubes::next;
 use crate::math::isosurface::{EdgeRef, Isosurface, cross, dot};
-use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, Loop, TABLE, Table};
+use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, TABLE, Table};
 use crate::space::patch::PatchShape;
 
 /// Vertices keep this distance from the cell centres, in cells, so that no triangle shrinks to nothing.
@@ -29,8 +29,13 @@ const CORNERS: [[f64; 3]; 8] = [
 ];
 
 /// The vertices of a loop of five from each apex on.
-const FAN_OF_FIVE: [[usize; 5]; 5] =
-    [[0, 1, 2, 3, 4], [1, 2, 3, 4, 0], [2, 3, 4, 0, 1], [3, 4, 0, 1, 2], [4, 0, 1, 2, 3]];
+const FAN_OF_FIVE: [[usize; 5]; 5] = [
+    [0, 1, 2, 3, 4],
+    [1, 2, 3, 4, 0],
+    [2, 3, 4, 0, 1],
+    [3, 4, 0, 1, 2],
+    [4, 0, 1, 2, 3],
+];
 
 const NONE: u32 = u32::MAX;
 
@@ -63,7 +68,11 @@ impl<'a, T: Real> Mesher<'a, T> {
         level: f64,
         plane_starts: Vec<usize>,
     ) -> Mesher<'a, T> {
-        let largest = plane_starts.windows(2).map(|w| w[1] - w[0]).max().unwrap_or(0);
+        let largest = plane_starts
+            .windows(2)
+            .map(|w| w[1] - w[0])
+            .max()
+            .unwrap_or(0);
         let slots = if shape.period[2].is_some() { 3 } else { 2 };
         // Every interval has two crossings along x, rough surfaces have as many along y and z; two triangles a vertex.
         // A third more saves most surfaces from being copied to a larger place.
@@ -147,23 +156,31 @@ impl<'a, T: Real> Mesher<'a, T> {
                 spots[k] = CORNERS[corner];
                 spots[k][axis] = self.surface.edges[id as usize].t;
             }
-            self.cap(l, &ids[..n], &spots[..n], x);
+            self.cap(&ids[..n], &spots[..n], x);
         }
     }
 
     fn add_vertex(&mut self, x: i32, corner: usize, axis: usize, cells: [usize; 2], t: f64) {
-        let x = if corner & AXIS_BIT[0] == 0 { x } else { next(x, self.surface.period[0]) };
+        let x = if corner & AXIS_BIT[0] == 0 {
+            x
+        } else {
+            next(x, self.surface.period[0])
+        };
         let mut point = [x, self.y[corner & 1], self.z[corner >> 1 & 1]].map(f64::from);
         point[axis] += t;
         self.surface.points.push(point);
-        self.surface.edges.push(EdgeRef { a: cells[0] as u32, b: cells[1] as u32, t });
+        self.surface.edges.push(EdgeRef {
+            a: cells[0] as u32,
+            b: cells[1] as u32,
+            t,
+        });
     }
 
     /// Closes a loop by triangles. `ids` and `spots` are its vertices, the latter relative to the cube's lower corner.
     #[inline]
-    fn cap(&mut self, l: &Loop, ids: &[u32], spots: &[[f64; 3]], x: i32) {
+    fn cap(&mut self, ids: &[u32], spots: &[[f64; 3]], x: i32) {
         let triangles = &mut self.surface.triangles;
-        match (ids, apex(l, spots)) {
+        match (ids, apex(spots)) {
             (&[a, b, c], _) => triangles.push([a, b, c]),
             (&[a, b, c, d], Some(0)) => triangles.extend([[a, b, c], [a, c, d]]),
             (&[a, b, c, d], Some(_)) => triangles.extend([[b, c, d], [b, d, a]]),
@@ -184,7 +201,9 @@ impl<'a, T: Real> Mesher<'a, T> {
                     base[axis] + sum / spots.len() as f64
                 }));
                 self.surface.centre_vertices.extend_from_slice(ids);
-                self.surface.centre_starts.push(self.surface.centre_vertices.len() as u32);
+                self.surface
+                    .centre_starts
+                    .push(self.surface.centre_vertices.len() as u32);
             }
         }
     }
@@ -207,32 +226,31 @@ impl<'a, T: Real> Mesher<'a, T> {
 /// Value above the level, made positive inside and not positive outside, whatever another object's cell may hold.
 #[inline]
 fn height(mask: u8, corner: usize, above: f64) -> f64 {
-    if mask >> corner & 1 == 1 { above.max(f64::MIN_POSITIVE) } else { above.min(0.0) }
+    if mask >> corner & 1 == 1 {
+        above.max(f64::MIN_POSITIVE)
+    } else {
+        above.min(0.0)
+    }
 }
 
 /// The loop vertex from which a fan of chords closes the loop, or `None` when it takes a centre vertex.
 #[inline]
-fn apex(l: &Loop, p: &[[f64; 3]]) -> Option<usize> {
+fn apex(p: &[[f64; 3]]) -> Option<usize> {
     match p.len() {
         3 => Some(0),
-        4 => match l.allowed {
-            0b01 => Some(0),
-            0b10 => Some(1),
-            0b11 => {
-                let (first, second) = (square(p[0], p[2]), square(p[1], p[3]));
-                if (first - second).abs() > TIE * (first + second) {
-                    Some((second < first) as usize)
-                } else {
-                    let [a, b, c] = [1, 2, 3].map(|k| difference(p[k], p[0]));
-                    (dot(a, cross(b, c)).abs() < FLAT).then_some(0)
-                }
+        4 => {
+            let (first, second) = (square(p[0], p[2]), square(p[1], p[3]));
+            if (first - second).abs() > TIE * (first + second) {
+                Some((second < first) as usize)
+            } else {
+                let [a, b, c] = [1, 2, 3].map(|k| difference(p[k], p[0]));
+                (dot(a, cross(b, c)).abs() < FLAT).then_some(0)
             }
-            _ => None,
-        },
+        }
         5 => {
             let chord: [f64; 5] = std::array::from_fn(|i| square(p[i], p[(i + 2) % 5]).sqrt());
             let (mut best, mut shortest, mut second) = (0, f64::INFINITY, f64::INFINITY);
-            for i in (0..5).filter(|i| l.allowed >> i & 1 == 1) {
+            for i in 0..5 {
                 let sum = chord[i] + chord[(i + 3) % 5];
                 if sum < shortest {
                     (best, second, shortest) = (i, shortest, sum);
@@ -240,7 +258,6 @@ fn apex(l: &Loop, p: &[[f64; 3]]) -> Option<usize> {
                     second = second.min(sum);
                 }
             }
-            // False also when no fan is allowed: then both sums are still infinite and differ by NaN.
             (second - shortest > TIE * shortest).then_some(best)
         }
         _ => None,

@@ -47,7 +47,10 @@ pub(super) fn unwrap(surface: &Isosurface) -> Unwrapped {
         }
         if at == NONE {
             at = copies.len() as u32;
-            copies.push(Copy { image, next: newest[v as usize] });
+            copies.push(Copy {
+                image,
+                next: newest[v as usize],
+            });
             newest[v as usize] = at;
             let p = surface.points[v as usize];
             out.points.push(std::array::from_fn(|axis| {
