@@ -29,7 +29,8 @@ pub struct EdgeRef {
 /// vertices: each is the mean of the vertices of one loop around a cube, see [`Isosurface::centre`].
 ///
 /// Coordinates along an axis with a period lie within `0..=period`; triangles may join vertices on both sides of the
-/// seam, and a vector between two vertices of a triangle is always the shortest one modulo the period.
+/// seam, and a vector between two vertices of a triangle is always the shortest one modulo the period. Triangles reach
+/// over one cell at most, so this is unique for periods from 3 cells on.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Isosurface {
     /// Period in cells along x, y, z where coordinates wrap, as in the patch.
@@ -57,7 +58,8 @@ pub struct Isosurface {
 /// of the axes: a mirrored or axis-permuted field has the mirrored or permuted surface.
 ///
 /// # Panics
-/// When `values` and the stored cells differ in number, when an object cell is not stored, or when the margin is 0.
+/// When `values` and the stored cells differ in number, when there are 2^32 or more of them, or when an object cell is not
+/// stored.
 pub fn isosurface<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
     assert_eq!(
         values.len(),
@@ -65,6 +67,11 @@ pub fn isosurface<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isos
         "isosurface: expected one value a stored cell ({}), got {}",
         shape.cells,
         values.len()
+    );
+    assert!(
+        u32::try_from(shape.cells).is_ok(),
+        "isosurface: expected fewer than 2^32 stored cells, got {}",
+        shape.cells
     );
     isocubes::extract(shape, values, level)
 }

@@ -231,8 +231,8 @@ mod tests {
         inside(mask, e.corner) != inside(mask, e.corner | AXIS_BIT[e.axis as usize] as u8)
     }
 
-    /// Directed loop segments lying on a face, ends given as the pair of (y, z) or like corner bits that the
-    /// neighbour cube sees too: corner bits with the face's own axis cleared.
+    /// Directed loop segments lying on a face, as the neighbour cube names them too: the corner bit of the face's own
+    /// axis is cleared.
     fn segments(loops: &[Loop], face: usize) -> Vec<[CubeEdge; 2]> {
         let (axis, high) = (face / 2, face % 2 == 1);
         let on_face = |e: CubeEdge| {

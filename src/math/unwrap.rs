@@ -3,6 +3,8 @@
 use std::collections::VecDeque;
 
 use crate::math::isosurface::Isosurface;
+use crate::space::grid::Grid;
+use crate::space::mesh::Mesh;
 
 /// A surface laid out without triangles across a seam.
 #[derive(Debug, Clone, Default, PartialEq)]
@@ -13,6 +15,17 @@ pub struct Unwrapped {
     pub triangles: Vec<[u32; 3]>,
     /// For each vertex the surface vertex it comes from: values at `points[i]` are those at `source[i]`.
     pub source: Vec<u32>,
+}
+
+impl Unwrapped {
+    /// The surface in physical coordinates, for patch coordinates that are the grid's cell indices.
+    pub fn mesh(&self, grid: &Grid) -> Mesh {
+        let position = |p: &[f64; 3]| std::array::from_fn(|axis| grid.position(axis, p[axis]));
+        Mesh {
+            vertices: self.points.iter().map(position).collect(),
+            triangles: self.triangles.clone(),
+        }
+    }
 }
 
 /// A surface vertex at one image, in a list of all images of that vertex.

@@ -6,6 +6,7 @@ use crate::patches::{Field, intervals, objects};
 use ropewalk::base::real::Real;
 use ropewalk::math::isosurface::{Isosurface, isosurface};
 use ropewalk::math::surface::{SurfaceMeasures, measure};
+use ropewalk::space::grid::Grid;
 use ropewalk::space::patch::PatchShape;
 
 type Vector = [f64; 3];
@@ -273,6 +274,19 @@ fn vertices_carry_fields_and_normals() {
         for (v, p) in surface.interpolate(&coordinate).iter().zip(&surface.points) {
             assert!((v - p[axis]).abs() < 1e-12, "{v} {p:?}");
         }
+    }
+    // In physical coordinates every vertex lies near the sphere: linear interpolation of a distance errs by d²/8R.
+    let grid = Grid {
+        n: [22, 24, 20],
+        spacing,
+        origin: [-3.0, 5.0, 1.0],
+        periodic: [false; 3],
+    };
+    let mesh = surface.unwrapped().mesh(&grid);
+    assert_eq!(mesh.triangles, surface.triangles);
+    for v in &mesh.vertices[..surface.edges.len()] {
+        let distance = norm(minus(minus(*v, grid.origin), centre));
+        assert!((distance - r).abs() < 1.3 * 1.1 * 1.1 / (8.0 * r), "{v:?}");
     }
     // Outward, towards the low side; within an angle of order cell / R of the exact normal.
     for (normal, p) in surface.vertex_normals(spacing).iter().zip(&surface.points) {
