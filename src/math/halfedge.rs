@@ -1,29 +1,40 @@
 //! The edges of a triangle mesh with the triangles on them, grouped by counting, without hash maps.
 
 /// One side of a triangle, seen from an edge.
+///
+/// The higher vertex index of the edge in the upper half, then the triangle, its side and the direction: one integer,
+/// because sorting these is most of the work.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
-pub struct HalfEdge {
-    upper: u32,
-    code: u32,
-}
+pub struct HalfEdge(u64);
 
 impl HalfEdge {
+    #[inline]
+    fn new(triangle: usize, side: usize, from: u32, to: u32) -> HalfEdge {
+        let code = (6 * triangle + 2 * side) as u64 + (from > to) as u64;
+        HalfEdge((from.max(to) as u64) << 32 | code)
+    }
+
+    #[inline]
+    fn upper(self) -> u32 {
+        (self.0 >> 32) as u32
+    }
+
     /// Index of the triangle.
     #[inline]
     pub fn triangle(self) -> usize {
-        self.code as usize / 6
+        self.0 as u32 as usize / 6
     }
 
     /// Which side of the triangle: 0, 1, 2 for its vertices 0-1, 1-2, 2-0.
     #[inline]
     pub fn side(self) -> usize {
-        self.code as usize / 2 % 3
+        self.0 as u32 as usize / 2 % 3
     }
 
     /// Whether the triangle runs along the edge from the higher vertex index to the lower.
     #[inline]
     pub fn downward(self) -> bool {
-        self.code & 1 == 1
+        self.0 & 1 == 1
     }
 }
 
@@ -33,8 +44,17 @@ impl HalfEdge {
 ///
 /// # Panics
 /// When there are more than 2^32 / 6 triangles, or a triangle names a vertex at or beyond `vertices`.
-pub fn for_each_edge(vertices: usize, triangles: &[[u32; 3]], mut visit: impl FnMut(u32, u32, &[HalfEdge])) {
-    assert!(triangles.len() < u32::MAX as usize / 6, "half-edges: expected fewer than {} triangles, got {}", u32::MAX / 6, triangles.len());
+pub fn for_each_edge(
+    vertices: usize,
+    triangles: &[[u32; 3]],
+    mut visit: impl FnMut(u32, u32, &[HalfEdge]),
+) {
+    assert!(
+        triangles.len() < u32::MAX as usize / 6,
+        "half-edges: expected fewer than {} triangles, got {}",
+        u32::MAX / 6,
+        triangles.len()
+    );
     let sides = |t: &[u32; 3]| [(t[0], t[1]), (t[1], t[2]), (t[2], t[0])];
     let mut starts = vec![0u32; vertices + 1];
     for t in triangles {
@@ -47,12 +67,11 @@ pub fn for_each_edge(vertices: usize, triangles: &[[u32; 3]], mut visit: impl Fn
     for start in &mut starts {
         sum += std::mem::replace(start, sum);
     }
-    let mut halves = vec![HalfEdge { upper: 0, code: 0 }; 3 * triangles.len()];
+    let mut halves = vec![HalfEdge(0); 3 * triangles.len()];
     for (i, t) in triangles.iter().enumerate() {
         for (side, (a, b)) in sides(t).into_iter().enumerate() {
             let at = &mut starts[a.min(b) as usize];
-            let code = (6 * i + 2 * side) as u32 + (a > b) as u32;
-            halves[*at as usize] = HalfEdge { upper: a.max(b), code };
+            halves[*at as usize] = HalfEdge::new(i, side, a, b);
             *at += 1;
         }
     }
@@ -62,8 +81,8 @@ pub fn for_each_edge(vertices: usize, triangles: &[[u32; 3]], mut visit: impl Fn
         let list = &mut halves[begin..end];
         begin = end;
         list.sort_unstable();
-        for same in list.chunk_by(|a, b| a.upper == b.upper) {
-            visit(lower as u32, same[0].upper, same);
+        for same in list.chunk_by(|a, b| a.upper() == b.upper()) {
+            visit(lower as u32, same[0].upper(), same);
         }
     }
 }
@@ -96,7 +115,9 @@ mod tests {
     fn open_and_overfull_edges_keep_their_counts() {
         let triangles = [[0, 1, 2], [1, 0, 3], [0, 1, 4]];
         let mut counts = Vec::new();
-        for_each_edge(5, &triangles, |a, b, sides| counts.push((a, b, sides.len())));
+        for_each_edge(5, &triangles, |a, b, sides| {
+            counts.push((a, b, sides.len()))
+        });
         assert_eq!(counts[0], (0, 1, 3));
         assert!(counts[1..].iter().all(|c| c.2 == 1));
         assert_eq!(counts.len(), 7);

@@ -3,18 +3,39 @@
 use crate::base::real::Real;
 use crate::math::isocubes::next;
 use crate::math::isosurface::{EdgeRef, Isosurface, cross, dot};
-use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, Loop, TABLE, Table};
+use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, TABLE, Table};
 use crate::space::patch::PatchShape;
 
 /// Vertices keep this distance from the cell centres, in cells, so that no triangle shrinks to nothing.
 const CLEARANCE: f64 = 1e-4;
 
-/// Two chord lengths closer than this, relatively, are a tie: which is shorter would be left to round-off.
+/// Two chord lengths (or their squares) closer than this, relatively, are a tie: which is shorter would be left to round-off.
 const TIE: f64 = 1e-10;
 
 /// A quadrilateral whose corners span less than this volume (cubic cells, times 6) is flat: both diagonals give the
 /// same surface.
 const FLAT: f64 = 1e-13;
+
+/// Positions of the cube corners relative to the lowest one.
+const CORNERS: [[f64; 3]; 8] = [
+    [0.0, 0.0, 0.0],
+    [0.0, 1.0, 0.0],
+    [0.0, 0.0, 1.0],
+    [0.0, 1.0, 1.0],
+    [1.0, 0.0, 0.0],
+    [1.0, 1.0, 0.0],
+    [1.0, 0.0, 1.0],
+    [1.0, 1.0, 1.0],
+];
+
+/// The vertices of a loop of five from each apex on.
+const FAN_OF_FIVE: [[usize; 5]; 5] = [
+    [0, 1, 2, 3, 4],
+    [1, 2, 3, 4, 0],
+    [2, 3, 4, 0, 1],
+    [3, 4, 0, 1, 2],
+    [4, 0, 1, 2, 3],
+];
 
 const NONE: u32 = u32::MAX;
 
@@ -41,11 +62,21 @@ pub(super) struct Mesher<'a, T> {
 }
 
 impl<'a, T: Real> Mesher<'a, T> {
-    pub fn new(shape: &PatchShape, values: &'a [T], level: f64, plane_starts: Vec<usize>) -> Mesher<'a, T> {
-        let largest = plane_starts.windows(2).map(|w| w[1] - w[0]).max().unwrap_or(0);
+    pub fn new(
+        shape: &PatchShape,
+        values: &'a [T],
+        level: f64,
+        plane_starts: Vec<usize>,
+    ) -> Mesher<'a, T> {
+        let largest = plane_starts
+            .windows(2)
+            .map(|w| w[1] - w[0])
+            .max()
+            .unwrap_or(0);
         let slots = if shape.period[2].is_some() { 3 } else { 2 };
         // Every interval has two crossings along x, rough surfaces have as many along y and z; two triangles a vertex.
-        let expected = 6 * shape.object.len();
+        // A third more saves most surfaces from being copied to a larger place.
+        let expected = 8 * shape.object.len();
         Mesher {
             values,
             level,
@@ -104,9 +135,9 @@ impl<'a, T: Real> Mesher<'a, T> {
             let (ac, bd) = (height(a) * height(c), height(b) * height(d));
             if mask >> a & 1 == 1 { ac > bd } else { bd > ac }
         };
+        let mut ids = [NONE; LONGEST];
+        let mut spots = [[0.0; 3]; LONGEST];
         for l in table.loops(mask, joined) {
-            let mut ids = [NONE; LONGEST];
-            let mut spots = [[0.0; 3]; LONGEST];
             let n = l.len as usize;
             for k in 0..n {
                 let edge = EDGES[l.edges[k] as usize];
@@ -122,41 +153,57 @@ impl<'a, T: Real> Mesher<'a, T> {
                     self.add_vertex(x, corner, axis, [cells[corner], cells[upper]], t);
                 }
                 ids[k] = id;
-                spots[k] = [corner >> 2 & 1, corner & 1, corner >> 1 & 1].map(|c| c as f64);
+                spots[k] = CORNERS[corner];
                 spots[k][axis] = self.surface.edges[id as usize].t;
             }
-            self.cap(l, &ids[..n], &spots[..n], x);
+            self.cap(&ids[..n], &spots[..n], x);
         }
     }
 
     fn add_vertex(&mut self, x: i32, corner: usize, axis: usize, cells: [usize; 2], t: f64) {
-        let x = if corner & AXIS_BIT[0] == 0 { x } else { next(x, self.surface.period[0]) };
+        let x = if corner & AXIS_BIT[0] == 0 {
+            x
+        } else {
+            next(x, self.surface.period[0])
+        };
         let mut point = [x, self.y[corner & 1], self.z[corner >> 1 & 1]].map(f64::from);
         point[axis] += t;
         self.surface.points.push(point);
-        self.surface.edges.push(EdgeRef { a: cells[0] as u32, b: cells[1] as u32, t });
+        self.surface.edges.push(EdgeRef {
+            a: cells[0] as u32,
+            b: cells[1] as u32,
+            t,
+        });
     }
 
-    /// Closes a loop by triangles; `spots` are its vertices relative to the cube's lower corner.
-    fn cap(&mut self, l: &Loop, ids: &[u32], spots: &[[f64; 3]], x: i32) {
+    /// Closes a loop by triangles. `ids` and `spots` are its vertices, the latter relative to the cube's lower corner.
+    #[inline]
+    fn cap(&mut self, ids: &[u32], spots: &[[f64; 3]], x: i32) {
         let triangles = &mut self.surface.triangles;
-        match apex(l, spots) {
-            Some(first) => {
-                let n = ids.len();
-                let at = |k: usize| ids[(first + k) % n];
-                triangles.extend((2..n).map(|k| [at(0), at(k - 1), at(k)]));
+        match (ids, apex(spots)) {
+            (&[a, b, c], _) => triangles.push([a, b, c]),
+            (&[a, b, c, d], Some(0)) => triangles.extend([[a, b, c], [a, c, d]]),
+            (&[a, b, c, d], Some(_)) => triangles.extend([[b, c, d], [b, d, a]]),
+            (_, Some(first)) => {
+                let [a, b, c, d, e] = FAN_OF_FIVE[first].map(|k| ids[k]);
+                triangles.extend([[a, b, c], [a, c, d], [a, d, e]]);
             }
-            None => {
+            (_, None) => {
                 self.fans.push(triangles.len() as u32);
-                let following = ids.iter().cycle().skip(1);
-                triangles.extend(ids.iter().zip(following).map(|(&a, &b)| [a, b, NONE]));
+                let mut before = ids[ids.len() - 1];
+                for &id in ids {
+                    triangles.push([before, id, NONE]);
+                    before = id;
+                }
                 let base = [x, self.y[0], self.z[0]].map(f64::from);
                 self.centre_points.push(std::array::from_fn(|axis| {
                     let sum: f64 = spots.iter().map(|p| p[axis]).sum();
                     base[axis] + sum / spots.len() as f64
                 }));
                 self.surface.centre_vertices.extend_from_slice(ids);
-                self.surface.centre_starts.push(self.surface.centre_vertices.len() as u32);
+                self.surface
+                    .centre_starts
+                    .push(self.surface.centre_vertices.len() as u32);
             }
         }
     }
@@ -179,32 +226,31 @@ impl<'a, T: Real> Mesher<'a, T> {
 /// Value above the level, made positive inside and not positive outside, whatever another object's cell may hold.
 #[inline]
 fn height(mask: u8, corner: usize, above: f64) -> f64 {
-    if mask >> corner & 1 == 1 { above.max(f64::MIN_POSITIVE) } else { above.min(0.0) }
+    if mask >> corner & 1 == 1 {
+        above.max(f64::MIN_POSITIVE)
+    } else {
+        above.min(0.0)
+    }
 }
 
 /// The loop vertex from which a fan of chords closes the loop, or `None` when it takes a centre vertex.
 #[inline]
-fn apex(l: &Loop, p: &[[f64; 3]]) -> Option<usize> {
+fn apex(p: &[[f64; 3]]) -> Option<usize> {
     match p.len() {
         3 => Some(0),
-        4 => match l.allowed {
-            0b01 => Some(0),
-            0b10 => Some(1),
-            0b11 => {
-                let (first, second) = (distance(p[0], p[2]), distance(p[1], p[3]));
-                if (first - second).abs() > TIE * (first + second) {
-                    Some((second < first) as usize)
-                } else {
-                    let [a, b, c] = [1, 2, 3].map(|k| difference(p[k], p[0]));
-                    (dot(a, cross(b, c)).abs() < FLAT).then_some(0)
-                }
+        4 => {
+            let (first, second) = (square(p[0], p[2]), square(p[1], p[3]));
+            if (first - second).abs() > TIE * (first + second) {
+                Some((second < first) as usize)
+            } else {
+                let [a, b, c] = [1, 2, 3].map(|k| difference(p[k], p[0]));
+                (dot(a, cross(b, c)).abs() < FLAT).then_some(0)
             }
-            _ => None,
-        },
+        }
         5 => {
-            let chord: [f64; 5] = std::array::from_fn(|i| distance(p[i], p[(i + 2) % 5]));
+            let chord: [f64; 5] = std::array::from_fn(|i| square(p[i], p[(i + 2) % 5]).sqrt());
             let (mut best, mut shortest, mut second) = (0, f64::INFINITY, f64::INFINITY);
-            for i in (0..5).filter(|i| l.allowed >> i & 1 == 1) {
+            for i in 0..5 {
                 let sum = chord[i] + chord[(i + 3) % 5];
                 if sum < shortest {
                     (best, second, shortest) = (i, shortest, sum);
@@ -222,7 +268,8 @@ fn difference(a: [f64; 3], b: [f64; 3]) -> [f64; 3] {
     [a[0] - b[0], a[1] - b[1], a[2] - b[2]]
 }
 
-fn distance(a: [f64; 3], b: [f64; 3]) -> f64 {
+/// Square of the distance.
+fn square(a: [f64; 3], b: [f64; 3]) -> f64 {
     let d = difference(a, b);
-    dot(d, d).sqrt()
+    dot(d, d)
 }

@@ -29,7 +29,8 @@ pub struct EdgeRef {
 /// vertices: each is the mean of the vertices of one loop around a cube, see [`Isosurface::centre`].
 ///
 /// Coordinates along an axis with a period lie within `0..=period`; triangles may join vertices on both sides of the
-/// seam, and a vector between two vertices of a triangle is always the shortest one modulo the period.
+/// seam, and a vector between two vertices of a triangle is always the shortest one modulo the period. Triangles reach
+/// over one cell at most, so this is unique for periods from 3 cells on.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub struct Isosurface {
     /// Period in cells along x, y, z where coordinates wrap, as in the patch.
@@ -53,13 +54,25 @@ pub struct Isosurface {
 /// inside; cubes with a corner that is not stored (beyond an open face) are left out and the surface ends there.
 ///
 /// A loop of four vertices is closed by its shorter diagonal and one of five by its shortest fan, in cell units; longer
-/// loops, ties and loops whose chords would lie in a cube face get a centre vertex. Nothing depends on the direction
+/// loops, where a chord could lie in a cube face, and ties get a centre vertex. Nothing depends on the direction
 /// of the axes: a mirrored or axis-permuted field has the mirrored or permuted surface.
 ///
 /// # Panics
-/// When `values` and the stored cells differ in number, when an object cell is not stored, or when the margin is 0.
+/// When `values` and the stored cells differ in number, when there are 2^32 or more of them, or when an object cell is not
+/// stored.
 pub fn isosurface<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
-    assert_eq!(values.len(), shape.cells, "isosurface: expected one value a stored cell ({}), got {}", shape.cells, values.len());
+    assert_eq!(
+        values.len(),
+        shape.cells,
+        "isosurface: expected one value a stored cell ({}), got {}",
+        shape.cells,
+        values.len()
+    );
+    assert!(
+        u32::try_from(shape.cells).is_ok(),
+        "isosurface: expected fewer than 2^32 stored cells, got {}",
+        shape.cells
+    );
     isocubes::extract(shape, values, level)
 }
 
@@ -82,7 +95,11 @@ impl Isosurface {
     /// When `field` has fewer values than the patch has stored cells.
     pub fn interpolate<T: Real>(&self, field: &[T]) -> Vec<f64> {
         let mut out = Vec::with_capacity(self.points.len());
-        out.extend(self.edges.iter().map(|e| (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()));
+        out.extend(
+            self.edges.iter().map(|e| {
+                (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()
+            }),
+        );
         for i in 0..self.centres() {
             let around = self.centre(i);
             let sum: f64 = around.iter().map(|&v| out[v as usize]).sum();
@@ -108,7 +125,10 @@ impl Isosurface {
     #[inline]
     pub(super) fn area_vector(&self, triangle: [u32; 3], spacing: [f64; 3]) -> [f64; 3] {
         let [a, b, c] = triangle;
-        cross(scaled(self.vector(a, b), spacing), scaled(self.vector(a, c), spacing))
+        cross(
+            scaled(self.vector(a, b), spacing),
+            scaled(self.vector(a, c), spacing),
+        )
     }
 
     /// Unit outward vertex normals in physical space, the area-weighted mean over the triangles at each vertex.
@@ -164,5 +184,9 @@ pub(super) fn dot(a: [f64; 3], b: [f64; 3]) -> f64 {
 
 #[inline]
 pub(super) fn cross(a: [f64; 3], b: [f64; 3]) -> [f64; 3] {
-    [a[1] * b[2] - a[2] * b[1], a[2] * b[0] - a[0] * b[2], a[0] * b[1] - a[1] * b[0]]
+    [
+        a[1] * b[2] - a[2] * b[1],
+        a[2] * b[0] - a[0] * b[2],
+        a[0] * b[1] - a[1] * b[0],
+    ]
 }

@@ -5,6 +5,10 @@
 //! typed in: on every face, seen from outside the cube, a segment runs from the crossing where a counter-clockwise
 //! walk enters the inside to a crossing where it leaves; segments of the six faces chain into loops which wind
 //! counter-clockwise seen from the outside (low) side of the surface.
+//!
+//! Two vertices of a loop that lie on one cube face but are not neighbours on the loop could be joined by a chord of the
+//! neighbour cube too. Loops of four and five vertices have no such pair (a test holds this), so any of their chords may
+//! be used.
 
 use std::sync::LazyLock;
 
@@ -34,9 +38,6 @@ pub(super) const LONGEST: usize = 12;
 pub(super) struct Loop {
     /// Number of crossing edges, 3 to 12.
     pub len: u8,
-    /// Allowed triangulations without an extra vertex. Length 4: bit 0 the diagonal 0-2, bit 1 the diagonal 1-3.
-    /// Length 5: bit i the fan from vertex i. A chord is allowed when its ends share no cube face.
-    pub allowed: u8,
     /// Indices into [`EDGES`], in order around the loop.
     pub edges: [u8; LONGEST],
 }
@@ -74,9 +75,16 @@ impl Table {
     }
 
     fn new() -> Table {
-        let mut table = Table { ambiguous: [0; 256], first: [0; 256], cases: vec![0], loops: Vec::new() };
+        let mut table = Table {
+            ambiguous: [0; 256],
+            first: [0; 256],
+            cases: vec![0],
+            loops: Vec::new(),
+        };
         for mask in 0..=255u8 {
-            let ambiguous = (0..6).filter(|&f| face_is_ambiguous(mask, f)).fold(0u8, |m, f| m | 1 << f);
+            let ambiguous = (0..6)
+                .filter(|&f| face_is_ambiguous(mask, f))
+                .fold(0u8, |m, f| m | 1 << f);
             table.ambiguous[mask as usize] = ambiguous;
             table.first[mask as usize] = (table.cases.len() - 1) as u16;
             for decisions in 0..1u8 << ambiguous.count_ones() {
@@ -91,7 +99,8 @@ impl Table {
 /// Moves the low bits of `bits` to the set positions of `places`.
 fn spread(bits: u8, places: u8) -> u8 {
     let set = (0..8).filter(|p| places >> p & 1 == 1);
-    set.enumerate().fold(0, |out, (i, p)| out | (bits >> i & 1) << p)
+    set.enumerate()
+        .fold(0, |out, (i, p)| out | (bits >> i & 1) << p)
 }
 
 fn inside(mask: u8, corner: u8) -> bool {
@@ -106,7 +115,10 @@ fn face_is_ambiguous(mask: u8, face: usize) -> bool {
 /// The cube edge between two neighbouring corners.
 fn edge_between(a: u8, b: u8) -> usize {
     let (low, bit) = (a & b, (a ^ b) as usize);
-    EDGES.iter().position(|e| e.corner == low && AXIS_BIT[e.axis as usize] == bit).expect("corners of a face are neighbours")
+    EDGES
+        .iter()
+        .position(|e| e.corner == low && AXIS_BIT[e.axis as usize] == bit)
+        .expect("corners of a face are neighbours")
 }
 
 /// Appends the loops of one cube; bit f of `joined` holds the decision of ambiguous face f.
@@ -114,19 +126,31 @@ fn trace(mask: u8, joined: u8, loops: &mut Vec<Loop>) {
     let mut next = [None; 12];
     for face in 0..6 {
         let corners = FACES[face];
-        let entering = |i: usize| !inside(mask, corners[i % 4]) && inside(mask, corners[(i + 1) % 4]);
-        let leaving = |i: usize| inside(mask, corners[i % 4]) && !inside(mask, corners[(i + 1) % 4]);
+        let entering =
+            |i: usize| !inside(mask, corners[i % 4]) && inside(mask, corners[(i + 1) % 4]);
+        let leaving =
+            |i: usize| inside(mask, corners[i % 4]) && !inside(mask, corners[(i + 1) % 4]);
         for i in (0..4).filter(|&i| entering(i)) {
             // Walking on from an entry the first exit cuts off the inside corner just entered; the exit before the
             // entry cuts off the outside corner between them, which joins the two inside corners.
-            let mut steps = if face_is_ambiguous(mask, face) && joined >> face & 1 == 1 { [3, 2, 1] } else { [1, 2, 3] }.into_iter();
-            let exit = steps.find(|s| leaving(i + s)).expect("a face is left as often as entered");
+            let mut steps = if face_is_ambiguous(mask, face) && joined >> face & 1 == 1 {
+                [3, 2, 1]
+            } else {
+                [1, 2, 3]
+            }
+            .into_iter();
+            let exit = steps
+                .find(|s| leaving(i + s))
+                .expect("a face is left as often as entered");
             let edge = |i: usize| edge_between(corners[i % 4], corners[(i + 1) % 4]);
             next[edge(i)] = Some(edge(i + exit) as u8);
         }
     }
     for start in 0..12 {
-        let mut traced = Loop { len: 0, allowed: 0, edges: [0; LONGEST] };
+        let mut traced = Loop {
+            len: 0,
+            edges: [0; LONGEST],
+        };
         let mut at = start;
         while let Some(following) = next[at].take() {
             traced.edges[traced.len as usize] = at as u8;
@@ -134,26 +158,9 @@ fn trace(mask: u8, joined: u8, loops: &mut Vec<Loop>) {
             at = following as usize;
         }
         if traced.len > 0 {
-            traced.allowed = allowed_chords(&traced.edges[..traced.len as usize]);
             loops.push(traced);
         }
     }
-}
-
-fn allowed_chords(edges: &[u8]) -> u8 {
-    let n = edges.len();
-    let chord = |i: usize, j: usize| !share_face(edges[i % n], edges[j % n]);
-    match n {
-        4 => chord(0, 2) as u8 | (chord(1, 3) as u8) << 1,
-        5 => (0..5).fold(0, |m, i| m | ((chord(i, i + 2) && chord(i, i + 3)) as u8) << i),
-        _ => 0,
-    }
-}
-
-/// Whether two cube edges lie on a common face: they agree in the position along an axis neither of them runs along.
-fn share_face(a: u8, b: u8) -> bool {
-    let (a, b) = (EDGES[a as usize], EDGES[b as usize]);
-    (0..3u8).any(|axis| axis != a.axis && axis != b.axis && (a.corner ^ b.corner) as usize & AXIS_BIT[axis as usize] == 0)
 }
 
 const fn cube_edges() -> [CubeEdge; 12] {
@@ -164,7 +171,10 @@ const fn cube_edges() -> [CubeEdge; 12] {
         let mut corner = 0;
         while corner < 8 {
             if corner & AXIS_BIT[axis] == 0 {
-                edges[count] = CubeEdge { corner: corner as u8, axis: axis as u8 };
+                edges[count] = CubeEdge {
+                    corner: corner as u8,
+                    axis: axis as u8,
+                };
                 count += 1;
             }
             corner += 1;
@@ -179,7 +189,10 @@ const fn cube_faces() -> [[u8; 4]; 6] {
     let mut axis = 0;
     while axis < 3 {
         // (second, third) x axis is right-handed: this order is counter-clockwise about the positive axis.
-        let (u, v) = (AXIS_BIT[(axis + 1) % 3] as u8, AXIS_BIT[(axis + 2) % 3] as u8);
+        let (u, v) = (
+            AXIS_BIT[(axis + 1) % 3] as u8,
+            AXIS_BIT[(axis + 2) % 3] as u8,
+        );
         let high = AXIS_BIT[axis] as u8;
         faces[2 * axis] = [0, v, u | v, u];
         faces[2 * axis + 1] = [high, high | u, high | u | v, high | v];
@@ -203,22 +216,40 @@ mod tests {
         }
     }
 
+    /// Whether two cube edges lie on a common face: they agree in the position along an axis neither of them runs along.
+    fn share_face(a: u8, b: u8) -> bool {
+        let (a, b) = (EDGES[a as usize], EDGES[b as usize]);
+        (0..3u8).any(|axis| {
+            axis != a.axis
+                && axis != b.axis
+                && (a.corner ^ b.corner) as usize & AXIS_BIT[axis as usize] == 0
+        })
+    }
+
     fn crosses(mask: u8, edge: usize) -> bool {
         let e = EDGES[edge];
         inside(mask, e.corner) != inside(mask, e.corner | AXIS_BIT[e.axis as usize] as u8)
     }
 
-    /// Directed loop segments lying on a face, ends given as the pair of (y, z) or like corner bits that the
-    /// neighbour cube sees too: corner bits with the face's own axis cleared.
+    /// Directed loop segments lying on a face, as the neighbour cube names them too: the corner bit of the face's own
+    /// axis is cleared.
     fn segments(loops: &[Loop], face: usize) -> Vec<[CubeEdge; 2]> {
         let (axis, high) = (face / 2, face % 2 == 1);
-        let on_face = |e: CubeEdge| e.axis as usize != axis && (e.corner as usize & AXIS_BIT[axis] != 0) == high;
-        let flat = |e: CubeEdge| CubeEdge { corner: e.corner & !(AXIS_BIT[axis] as u8), ..e };
+        let on_face = |e: CubeEdge| {
+            e.axis as usize != axis && (e.corner as usize & AXIS_BIT[axis] != 0) == high
+        };
+        let flat = |e: CubeEdge| CubeEdge {
+            corner: e.corner & !(AXIS_BIT[axis] as u8),
+            ..e
+        };
         let mut found = Vec::new();
         for l in loops {
             let n = l.len as usize;
             for i in 0..n {
-                let (a, b) = (EDGES[l.edges[i] as usize], EDGES[l.edges[(i + 1) % n] as usize]);
+                let (a, b) = (
+                    EDGES[l.edges[i] as usize],
+                    EDGES[l.edges[(i + 1) % n] as usize],
+                );
                 if on_face(a) && on_face(b) {
                     found.push([flat(a), flat(b)]);
                 }
@@ -244,7 +275,11 @@ mod tests {
                 }
             }
             for edge in 0..12 {
-                assert_eq!(seen[edge], crosses(mask, edge) as i32, "mask {mask} edge {edge}");
+                assert_eq!(
+                    seen[edge],
+                    crosses(mask, edge) as i32,
+                    "mask {mask} edge {edge}"
+                );
             }
         });
         assert!(cases > 256);
@@ -259,7 +294,11 @@ mod tests {
             for face in 0..6 {
                 let axis = face / 2;
                 let flat = (0..8u8).filter(|c| *c as usize & AXIS_BIT[axis] == 0);
-                let side = if face % 2 == 1 { AXIS_BIT[axis] as u8 } else { 0 };
+                let side = if face % 2 == 1 {
+                    AXIS_BIT[axis] as u8
+                } else {
+                    0
+                };
                 let pattern: Vec<bool> = flat.map(|c| inside(mask, c | side)).collect();
                 let key = (axis, face % 2 == 1, pattern, joined >> face & 1 == 1);
                 let mine = segments(loops, face);
@@ -276,6 +315,20 @@ mod tests {
     }
 
     #[test]
+    fn chords_of_short_loops_lie_in_no_face() {
+        for_all(|mask, _, loops| {
+            for l in loops.iter().filter(|l| l.len <= 5) {
+                let n = l.len as usize;
+                for i in 0..n {
+                    for j in i + 2..n.min(i + n - 1) {
+                        assert!(!share_face(l.edges[i], l.edges[j]), "mask {mask}: {l:?}");
+                    }
+                }
+            }
+        });
+    }
+
+    #[test]
     fn joining_a_face_connects_its_inside_corners() {
         // Corners 0 and 3 are diagonal on the face of lower x: apart they are two triangles, joined one loop of six.
         let apart = TABLE.loops(0b1001, |_| false);
@@ -289,8 +342,13 @@ mod tests {
         // Corner 0 alone: the normal of the triangle on the x, y, z edges, in this order, points to (+, +, +).
         let loops = TABLE.loops(1, |_| false);
         assert_eq!(loops.len(), 1);
-        let axes: Vec<u8> = (0..3).map(|i| EDGES[loops[0].edges[i] as usize].axis).collect();
+        let axes: Vec<u8> = (0..3)
+            .map(|i| EDGES[loops[0].edges[i] as usize].axis)
+            .collect();
         let start = axes.iter().position(|&a| a == 0).unwrap();
-        assert_eq!([axes[start], axes[(start + 1) % 3], axes[(start + 2) % 3]], [0, 1, 2]);
+        assert_eq!(
+            [axes[start], axes[(start + 1) % 3], axes[(start + 2) % 3]],
+            [0, 1, 2]
+        );
     }
 }
