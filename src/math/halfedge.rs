@@ -44,17 +44,8 @@ impl HalfEdge {
 ///
 /// # Panics
 /// When there are more than 2^32 / 6 triangles, or a triangle names a vertex at or beyond `vertices`.
-pub fn for_each_edge(
-    vertices: usize,
-    triangles: &[[u32; 3]],
-    mut visit: impl FnMut(u32, u32, &[HalfEdge]),
-) {
-    assert!(
-        triangles.len() < u32::MAX as usize / 6,
-        "half-edges: expected fewer than {} triangles, got {}",
-        u32::MAX / 6,
-        triangles.len()
-    );
+pub fn for_each_edge(vertices: usize, triangles: &[[u32; 3]], mut visit: impl FnMut(u32, u32, &[HalfEdge])) {
+    assert!(triangles.len() < u32::MAX as usize / 6, "half-edges: expected fewer than {} triangles, got {}", u32::MAX / 6, triangles.len());
     let sides = |t: &[u32; 3]| [(t[0], t[1]), (t[1], t[2]), (t[2], t[0])];
     let mut starts = vec![0u32; vertices + 1];
     for t in triangles {
@@ -115,9 +106,7 @@ mod tests {
     fn open_and_overfull_edges_keep_their_counts() {
         let triangles = [[0, 1, 2], [1, 0, 3], [0, 1, 4]];
         let mut counts = Vec::new();
-        for_each_edge(5, &triangles, |a, b, sides| {
-            counts.push((a, b, sides.len()))
-        });
+        for_each_edge(5, &triangles, |a, b, sides| counts.push((a, b, sides.len())));
         assert_eq!(counts[0], (0, 1, 3));
         assert!(counts[1..].iter().all(|c| c.2 == 1));
         assert_eq!(counts.len(), 7);

@@ -9,19 +9,10 @@ use crate::space::patch::{Interval, PatchShape, Segment};
 pub(super) fn extract<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
     let object = Rows::new(shape.object.iter().map(|i| (i.z, i.y)));
     let stored = Rows::new(shape.stored.iter().map(|s| (s.z, s.y)));
-    let mut plane_starts: Vec<usize> = stored
-        .planes
-        .iter()
-        .map(|p| shape.stored[stored.rows[p.first].first].start)
-        .collect();
+    let mut plane_starts: Vec<usize> = stored.planes.iter().map(|p| shape.stored[stored.rows[p.first].first].start).collect();
     plane_starts.push(shape.cells);
     let mut mesher = Mesher::new(shape, values, level, plane_starts);
-    let mut walk = Walk {
-        shape,
-        inside: mark_inside(shape),
-        rows: Vec::new(),
-        spans: Vec::new(),
-    };
+    let mut walk = Walk { shape, inside: mark_inside(shape), rows: Vec::new(), spans: Vec::new() };
     let period = shape.period[2];
     for z in cubes_below(object.planes.iter().map(|p| p.at), period) {
         let above = next(z, period);
@@ -79,18 +70,10 @@ impl Rows {
         for (i, (z, y)) in keys.enumerate() {
             let new_plane = planes.last().is_none_or(|p| p.at != z);
             if new_plane {
-                planes.push(Line {
-                    at: z,
-                    first: rows.len(),
-                    end: rows.len(),
-                });
+                planes.push(Line { at: z, first: rows.len(), end: rows.len() });
             }
             if new_plane || rows.last().is_none_or(|r| r.at != y) {
-                rows.push(Line {
-                    at: y,
-                    first: i,
-                    end: i,
-                });
+                rows.push(Line { at: y, first: i, end: i });
                 planes.last_mut().expect("a plane was pushed").end = rows.len();
             }
             rows.last_mut().expect("a row was pushed").end = i + 1;
@@ -186,12 +169,7 @@ impl Walk<'_> {
             let [Some(a), Some(b), Some(c), Some(d)] = stored else {
                 continue;
             };
-            gather_spans(
-                &mut self.spans,
-                &self.shape.object,
-                object,
-                self.shape.period[0],
-            );
+            gather_spans(&mut self.spans, &self.shape.object, object, self.shape.period[0]);
             mesher.enter_row(y);
             self.row(mesher, [a, b, c, d]);
         }
@@ -220,18 +198,11 @@ impl Walk<'_> {
                 });
                 if low < high {
                     let cells = segments.map(|s| s.start + (low - s.x) as usize);
-                    self.cubes(
-                        mesher,
-                        low,
-                        (high - low) as usize,
-                        cells,
-                        cells.map(|c| c + 1),
-                    );
+                    self.cubes(mesher, low, (high - low) as usize, cells, cells.map(|c| c + 1));
                 }
             }
             if seam {
-                let near =
-                    rows.map(|r| stored[r.end - 1].start + stored[r.end - 1].len as usize - 1);
+                let near = rows.map(|r| stored[r.end - 1].start + stored[r.end - 1].len as usize - 1);
                 self.cubes(mesher, last, 1, near, rows.map(|r| stored[r.first].start));
             }
         }
@@ -239,14 +210,7 @@ impl Walk<'_> {
 
     /// Visits `count` cubes from `x` on; `near` and `far` are the stored indices of the first cube's corners at lower
     /// and upper x, in row order.
-    fn cubes<T: Real>(
-        &self,
-        mesher: &mut Mesher<T>,
-        x: i32,
-        count: usize,
-        near: [usize; 4],
-        far: [usize; 4],
-    ) {
+    fn cubes<T: Real>(&self, mesher: &mut Mesher<T>, x: i32, count: usize, near: [usize; 4], far: [usize; 4]) {
         let ahead = far.map(|first| &self.inside[first..first + count]);
         let mut left = (0..4).fold(0, |m, r| m | self.inside[near[r]] << r);
         for j in 0..count {
@@ -263,12 +227,7 @@ impl Walk<'_> {
 }
 
 /// Spans of cubes (first, last) along x that touch the object in one of four rows, ascending, disjoint, not adjacent.
-fn gather_spans(
-    spans: &mut Vec<(i32, i32)>,
-    object: &[Interval],
-    rows: [Option<Line>; 4],
-    period: Option<i32>,
-) {
+fn gather_spans(spans: &mut Vec<(i32, i32)>, object: &[Interval], rows: [Option<Line>; 4], period: Option<i32>) {
     spans.clear();
     for line in rows.into_iter().flatten() {
         for i in &object[line.first..line.end] {

@@ -29,13 +29,7 @@ const CORNERS: [[f64; 3]; 8] = [
 ];
 
 /// The vertices of a loop of five from each apex on.
-const FAN_OF_FIVE: [[usize; 5]; 5] = [
-    [0, 1, 2, 3, 4],
-    [1, 2, 3, 4, 0],
-    [2, 3, 4, 0, 1],
-    [3, 4, 0, 1, 2],
-    [4, 0, 1, 2, 3],
-];
+const FAN_OF_FIVE: [[usize; 5]; 5] = [[0, 1, 2, 3, 4], [1, 2, 3, 4, 0], [2, 3, 4, 0, 1], [3, 4, 0, 1, 2], [4, 0, 1, 2, 3]];
 
 const NONE: u32 = u32::MAX;
 
@@ -62,17 +56,8 @@ pub(super) struct Mesher<'a, T> {
 }
 
 impl<'a, T: Real> Mesher<'a, T> {
-    pub fn new(
-        shape: &PatchShape,
-        values: &'a [T],
-        level: f64,
-        plane_starts: Vec<usize>,
-    ) -> Mesher<'a, T> {
-        let largest = plane_starts
-            .windows(2)
-            .map(|w| w[1] - w[0])
-            .max()
-            .unwrap_or(0);
+    pub fn new(shape: &PatchShape, values: &'a [T], level: f64, plane_starts: Vec<usize>) -> Mesher<'a, T> {
+        let largest = plane_starts.windows(2).map(|w| w[1] - w[0]).max().unwrap_or(0);
         let slots = if shape.period[2].is_some() { 3 } else { 2 };
         // Every interval has two crossings along x, rough surfaces have as many along y and z; two triangles a vertex.
         // A third more saves most surfaces from being copied to a larger place.
@@ -161,19 +146,11 @@ impl<'a, T: Real> Mesher<'a, T> {
     }
 
     fn add_vertex(&mut self, x: i32, corner: usize, axis: usize, cells: [usize; 2], t: f64) {
-        let x = if corner & AXIS_BIT[0] == 0 {
-            x
-        } else {
-            next(x, self.surface.period[0])
-        };
+        let x = if corner & AXIS_BIT[0] == 0 { x } else { next(x, self.surface.period[0]) };
         let mut point = [x, self.y[corner & 1], self.z[corner >> 1 & 1]].map(f64::from);
         point[axis] += t;
         self.surface.points.push(point);
-        self.surface.edges.push(EdgeRef {
-            a: cells[0] as u32,
-            b: cells[1] as u32,
-            t,
-        });
+        self.surface.edges.push(EdgeRef { a: cells[0] as u32, b: cells[1] as u32, t });
     }
 
     /// Closes a loop by triangles. `ids` and `spots` are its vertices, the latter relative to the cube's lower corner.
@@ -201,9 +178,7 @@ impl<'a, T: Real> Mesher<'a, T> {
                     base[axis] + sum / spots.len() as f64
                 }));
                 self.surface.centre_vertices.extend_from_slice(ids);
-                self.surface
-                    .centre_starts
-                    .push(self.surface.centre_vertices.len() as u32);
+                self.surface.centre_starts.push(self.surface.centre_vertices.len() as u32);
             }
         }
     }
@@ -226,11 +201,7 @@ impl<'a, T: Real> Mesher<'a, T> {
 /// Value above the level, made positive inside and not positive outside, whatever another object's cell may hold.
 #[inline]
 fn height(mask: u8, corner: usize, above: f64) -> f64 {
-    if mask >> corner & 1 == 1 {
-        above.max(f64::MIN_POSITIVE)
-    } else {
-        above.min(0.0)
-    }
+    if mask >> corner & 1 == 1 { above.max(f64::MIN_POSITIVE) } else { above.min(0.0) }
 }
 
 /// The loop vertex from which a fan of chords closes the loop, or `None` when it takes a centre vertex.

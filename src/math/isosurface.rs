@@ -61,18 +61,8 @@ pub struct Isosurface {
 /// When `values` and the stored cells differ in number, when there are 2^32 or more of them, or when an object cell is not
 /// stored.
 pub fn isosurface<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
-    assert_eq!(
-        values.len(),
-        shape.cells,
-        "isosurface: expected one value a stored cell ({}), got {}",
-        shape.cells,
-        values.len()
-    );
-    assert!(
-        u32::try_from(shape.cells).is_ok(),
-        "isosurface: expected fewer than 2^32 stored cells, got {}",
-        shape.cells
-    );
+    assert_eq!(values.len(), shape.cells, "isosurface: expected one value a stored cell ({}), got {}", shape.cells, values.len());
+    assert!(u32::try_from(shape.cells).is_ok(), "isosurface: expected fewer than 2^32 stored cells, got {}", shape.cells);
     isocubes::extract(shape, values, level)
 }
 
@@ -95,11 +85,7 @@ impl Isosurface {
     /// When `field` has fewer values than the patch has stored cells.
     pub fn interpolate<T: Real>(&self, field: &[T]) -> Vec<f64> {
         let mut out = Vec::with_capacity(self.points.len());
-        out.extend(
-            self.edges.iter().map(|e| {
-                (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()
-            }),
-        );
+        out.extend(self.edges.iter().map(|e| (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()));
         for i in 0..self.centres() {
             let around = self.centre(i);
             let sum: f64 = around.iter().map(|&v| out[v as usize]).sum();
@@ -125,10 +111,7 @@ impl Isosurface {
     #[inline]
     pub(super) fn area_vector(&self, triangle: [u32; 3], spacing: [f64; 3]) -> [f64; 3] {
         let [a, b, c] = triangle;
-        cross(
-            scaled(self.vector(a, b), spacing),
-            scaled(self.vector(a, c), spacing),
-        )
+        cross(scaled(self.vector(a, b), spacing), scaled(self.vector(a, c), spacing))
     }
 
     /// Unit outward vertex normals in physical space, the area-weighted mean over the triangles at each vertex.
@@ -184,9 +167,5 @@ pub(super) fn dot(a: [f64; 3], b: [f64; 3]) -> f64 {
 
 #[inline]
 pub(super) fn cross(a: [f64; 3], b: [f64; 3]) -> [f64; 3] {
-    [
-        a[1] * b[2] - a[2] * b[1],
-        a[2] * b[0] - a[0] * b[2],
-        a[0] * b[1] - a[1] * b[0],
-    ]
+    [a[1] * b[2] - a[2] * b[1], a[2] * b[0] - a[0] * b[2], a[0] * b[1] - a[1] * b[0]]
 }

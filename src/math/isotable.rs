@@ -75,16 +75,9 @@ impl Table {
     }
 
     fn new() -> Table {
-        let mut table = Table {
-            ambiguous: [0; 256],
-            first: [0; 256],
-            cases: vec![0],
-            loops: Vec::new(),
-        };
+        let mut table = Table { ambiguous: [0; 256], first: [0; 256], cases: vec![0], loops: Vec::new() };
         for mask in 0..=255u8 {
-            let ambiguous = (0..6)
-                .filter(|&f| face_is_ambiguous(mask, f))
-                .fold(0u8, |m, f| m | 1 << f);
+            let ambiguous = (0..6).filter(|&f| face_is_ambiguous(mask, f)).fold(0u8, |m, f| m | 1 << f);
             table.ambiguous[mask as usize] = ambiguous;
             table.first[mask as usize] = (table.cases.len() - 1) as u16;
             for decisions in 0..1u8 << ambiguous.count_ones() {
@@ -99,8 +92,7 @@ impl Table {
 /// Moves the low bits of `bits` to the set positions of `places`.
 fn spread(bits: u8, places: u8) -> u8 {
     let set = (0..8).filter(|p| places >> p & 1 == 1);
-    set.enumerate()
-        .fold(0, |out, (i, p)| out | (bits >> i & 1) << p)
+    set.enumerate().fold(0, |out, (i, p)| out | (bits >> i & 1) << p)
 }
 
 fn inside(mask: u8, corner: u8) -> bool {
@@ -115,10 +107,7 @@ fn face_is_ambiguous(mask: u8, face: usize) -> bool {
 /// The cube edge between two neighbouring corners.
 fn edge_between(a: u8, b: u8) -> usize {
     let (low, bit) = (a & b, (a ^ b) as usize);
-    EDGES
-        .iter()
-        .position(|e| e.corner == low && AXIS_BIT[e.axis as usize] == bit)
-        .expect("corners of a face are neighbours")
+    EDGES.iter().position(|e| e.corner == low && AXIS_BIT[e.axis as usize] == bit).expect("corners of a face are neighbours")
 }
 
 /// Appends the loops of one cube; bit f of `joined` holds the decision of ambiguous face f.
@@ -126,31 +115,19 @@ fn trace(mask: u8, joined: u8, loops: &mut Vec<Loop>) {
     let mut next = [None; 12];
     for face in 0..6 {
         let corners = FACES[face];
-        let entering =
-            |i: usize| !inside(mask, corners[i % 4]) && inside(mask, corners[(i + 1) % 4]);
-        let leaving =
-            |i: usize| inside(mask, corners[i % 4]) && !inside(mask, corners[(i + 1) % 4]);
+        let entering = |i: usize| !inside(mask, corners[i % 4]) && inside(mask, corners[(i + 1) % 4]);
+        let leaving = |i: usize| inside(mask, corners[i % 4]) && !inside(mask, corners[(i + 1) % 4]);
         for i in (0..4).filter(|&i| entering(i)) {
             // Walking on from an entry the first exit cuts off the inside corner just entered; the exit before the
             // entry cuts off the outside corner between them, which joins the two inside corners.
-            let mut steps = if face_is_ambiguous(mask, face) && joined >> face & 1 == 1 {
-                [3, 2, 1]
-            } else {
-                [1, 2, 3]
-            }
-            .into_iter();
-            let exit = steps
-                .find(|s| leaving(i + s))
-                .expect("a face is left as often as entered");
+            let mut steps = if face_is_ambiguous(mask, face) && joined >> face & 1 == 1 { [3, 2, 1] } else { [1, 2, 3] }.into_iter();
+            let exit = steps.find(|s| leaving(i + s)).expect("a face is left as often as entered");
             let edge = |i: usize| edge_between(corners[i % 4], corners[(i + 1) % 4]);
             next[edge(i)] = Some(edge(i + exit) as u8);
         }
     }
     for start in 0..12 {
-        let mut traced = Loop {
-            len: 0,
-            edges: [0; LONGEST],
-        };
+        let mut traced = Loop { len: 0, edges: [0; LONGEST] };
         let mut at = start;
         while let Some(following) = next[at].take() {
             traced.edges[traced.len as usize] = at as u8;
@@ -171,10 +148,7 @@ const fn cube_edges() -> [CubeEdge; 12] {
         let mut corner = 0;
         while corner < 8 {
             if corner & AXIS_BIT[axis] == 0 {
-                edges[count] = CubeEdge {
-                    corner: corner as u8,
-                    axis: axis as u8,
-                };
+                edges[count] = CubeEdge { corner: corner as u8, axis: axis as u8 };
                 count += 1;
             }
             corner += 1;
@@ -189,10 +163,7 @@ const fn cube_faces() -> [[u8; 4]; 6] {
     let mut axis = 0;
     while axis < 3 {
         // (second, third) x axis is right-handed: this order is counter-clockwise about the positive axis.
-        let (u, v) = (
-            AXIS_BIT[(axis + 1) % 3] as u8,
-            AXIS_BIT[(axis + 2) % 3] as u8,
-        );
+        let (u, v) = (AXIS_BIT[(axis + 1) % 3] as u8, AXIS_BIT[(axis + 2) % 3] as u8);
         let high = AXIS_BIT[axis] as u8;
         faces[2 * axis] = [0, v, u | v, u];
         faces[2 * axis + 1] = [high, high | u, high | u | v, high | v];
@@ -204,6 +175,9 @@ const fn cube_faces() -> [[u8; 4]; 6] {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// What both sides of a face must agree on: axis, side, inside corners, decision.
+    type FaceKey = (usize, bool, Vec<bool>, bool);
 
     /// Calls `check(mask, decisions by face, loops)` for every case.
     fn for_all(mut check: impl FnMut(u8, u8, &[Loop])) {
@@ -219,11 +193,7 @@ mod tests {
     /// Whether two cube edges lie on a common face: they agree in the position along an axis neither of them runs along.
     fn share_face(a: u8, b: u8) -> bool {
         let (a, b) = (EDGES[a as usize], EDGES[b as usize]);
-        (0..3u8).any(|axis| {
-            axis != a.axis
-                && axis != b.axis
-                && (a.corner ^ b.corner) as usize & AXIS_BIT[axis as usize] == 0
-        })
+        (0..3u8).any(|axis| axis != a.axis && axis != b.axis && (a.corner ^ b.corner) as usize & AXIS_BIT[axis as usize] == 0)
     }
 
     fn crosses(mask: u8, edge: usize) -> bool {
@@ -235,21 +205,13 @@ mod tests {
     /// axis is cleared.
     fn segments(loops: &[Loop], face: usize) -> Vec<[CubeEdge; 2]> {
         let (axis, high) = (face / 2, face % 2 == 1);
-        let on_face = |e: CubeEdge| {
-            e.axis as usize != axis && (e.corner as usize & AXIS_BIT[axis] != 0) == high
-        };
-        let flat = |e: CubeEdge| CubeEdge {
-            corner: e.corner & !(AXIS_BIT[axis] as u8),
-            ..e
-        };
+        let on_face = |e: CubeEdge| e.axis as usize != axis && (e.corner as usize & AXIS_BIT[axis] != 0) == high;
+        let flat = |e: CubeEdge| CubeEdge { corner: e.corner & !(AXIS_BIT[axis] as u8), ..e };
         let mut found = Vec::new();
         for l in loops {
             let n = l.len as usize;
             for i in 0..n {
-                let (a, b) = (
-                    EDGES[l.edges[i] as usize],
-                    EDGES[l.edges[(i + 1) % n] as usize],
-                );
+                let (a, b) = (EDGES[l.edges[i] as usize], EDGES[l.edges[(i + 1) % n] as usize]);
                 if on_face(a) && on_face(b) {
                     found.push([flat(a), flat(b)]);
                 }
@@ -275,11 +237,7 @@ mod tests {
                 }
             }
             for edge in 0..12 {
-                assert_eq!(
-                    seen[edge],
-                    crosses(mask, edge) as i32,
-                    "mask {mask} edge {edge}"
-                );
+                assert_eq!(seen[edge], crosses(mask, edge) as i32, "mask {mask} edge {edge}");
             }
         });
         assert!(cases > 256);
@@ -289,16 +247,12 @@ mod tests {
     fn both_cubes_at_a_face_draw_the_same_segments_in_opposite_directions() {
         // Segments depend on the face's own four corners and decision alone, and the two sides run opposite ways.
         use std::collections::HashMap;
-        let mut drawn: HashMap<(usize, bool, Vec<bool>, bool), Vec<[CubeEdge; 2]>> = HashMap::new();
+        let mut drawn: HashMap<FaceKey, Vec<[CubeEdge; 2]>> = HashMap::new();
         for_all(|mask, joined, loops| {
             for face in 0..6 {
                 let axis = face / 2;
                 let flat = (0..8u8).filter(|c| *c as usize & AXIS_BIT[axis] == 0);
-                let side = if face % 2 == 1 {
-                    AXIS_BIT[axis] as u8
-                } else {
-                    0
-                };
+                let side = if face % 2 == 1 { AXIS_BIT[axis] as u8 } else { 0 };
                 let pattern: Vec<bool> = flat.map(|c| inside(mask, c | side)).collect();
                 let key = (axis, face % 2 == 1, pattern, joined >> face & 1 == 1);
                 let mine = segments(loops, face);
@@ -342,13 +296,8 @@ mod tests {
         // Corner 0 alone: the normal of the triangle on the x, y, z edges, in this order, points to (+, +, +).
         let loops = TABLE.loops(1, |_| false);
         assert_eq!(loops.len(), 1);
-        let axes: Vec<u8> = (0..3)
-            .map(|i| EDGES[loops[0].edges[i] as usize].axis)
-            .collect();
+        let axes: Vec<u8> = (0..3).map(|i| EDGES[loops[0].edges[i] as usize].axis).collect();
         let start = axes.iter().position(|&a| a == 0).unwrap();
-        assert_eq!(
-            [axes[start], axes[(start + 1) % 3], axes[(start + 2) % 3]],
-            [0, 1, 2]
-        );
+        assert_eq!([axes[start], axes[(start + 1) % 3], axes[(start + 2) % 3]], [0, 1, 2]);
     }
 }

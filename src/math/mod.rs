@@ -2,6 +2,7 @@
 
 pub mod diff;
 pub mod disjoint;
+pub mod fft;
 pub mod halfedge;
 mod isocubes;
 mod isomesher;

@@ -175,7 +175,7 @@ impl Cosine {
 #[inline(always)]
 fn slot<T: Real>(c: T) -> usize {
     let bin = (((c + T::of(1.0)) * T::of(10.0)).wide() as i32).clamp(0, COSINE_BINS as i32 - 1) as usize;
-    if c == c { bin } else { COSINE_BINS }
+    if c.wide().is_nan() { COSINE_BINS } else { bin }
 }
 
 /// Bits of the mantissa a [`Quantiles`] bin keeps: bins are 2^-12 of the value wide.

@@ -26,11 +26,7 @@ const NONE: u32 = u32::MAX;
 pub(super) fn unwrap(surface: &Isosurface) -> Unwrapped {
     let count = surface.points.len();
     if surface.period == [None; 3] {
-        return Unwrapped {
-            points: surface.points.clone(),
-            triangles: surface.triangles.clone(),
-            source: (0..count as u32).collect(),
-        };
+        return Unwrapped { points: surface.points.clone(), triangles: surface.triangles.clone(), source: (0..count as u32).collect() };
     }
     let across = surface.neighbours();
     let mut copies: Vec<Copy> = Vec::with_capacity(count);
@@ -47,15 +43,10 @@ pub(super) fn unwrap(surface: &Isosurface) -> Unwrapped {
         }
         if at == NONE {
             at = copies.len() as u32;
-            copies.push(Copy {
-                image,
-                next: newest[v as usize],
-            });
+            copies.push(Copy { image, next: newest[v as usize] });
             newest[v as usize] = at;
             let p = surface.points[v as usize];
-            out.points.push(std::array::from_fn(|axis| {
-                p[axis] + (image[axis] * surface.period[axis].unwrap_or(0)) as f64
-            }));
+            out.points.push(std::array::from_fn(|axis| p[axis] + (image[axis] * surface.period[axis].unwrap_or(0)) as f64));
             out.source.push(v);
         }
         at

@@ -62,13 +62,13 @@ impl Observe for Clock<'_> {
     }
 
     fn done(&self) {
-        if let Ok(mut s) = self.state.lock() {
-            if let Some((name, since)) = s.running.take() {
-                if let Some(t) = s.stages.iter_mut().find(|t| t.name == name) {
-                    t.seconds += since.elapsed().as_secs_f64();
-                }
-            }
+        let Ok(mut s) = self.state.lock() else { return };
+        if let Some((name, since)) = s.running.take()
+            && let Some(t) = s.stages.iter_mut().find(|t| t.name == name)
+        {
+            t.seconds += since.elapsed().as_secs_f64();
         }
+        drop(s);
         self.inner.done();
     }
 

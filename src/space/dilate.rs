@@ -47,12 +47,7 @@ struct Source<'a> {
     shift: i32,
 }
 
-pub(super) fn dilate(
-    object: Vec<Interval>,
-    margin: i32,
-    axes: [Axis; 3],
-    period: [Option<i32>; 3],
-) -> PatchShape {
+pub(super) fn dilate(object: Vec<Interval>, margin: i32, axes: [Axis; 3], period: [Option<i32>; 3]) -> PatchShape {
     let wide = along_x(&object, margin, axes[0]);
     let flat = along_y(&wide, margin, axes[1]);
     let full = along_z(&flat, margin, axes[2]);
@@ -62,23 +57,12 @@ pub(super) fn dilate(
         for row in &full.rows[plane.first..plane.end] {
             for &(start, end) in &full.spans[row.first..row.end] {
                 let len = (end - start) as u32;
-                stored.push(Segment {
-                    z: plane.z,
-                    y: row.y,
-                    x: start,
-                    len,
-                    start: cells,
-                });
+                stored.push(Segment { z: plane.z, y: row.y, x: start, len, start: cells });
                 cells += len as usize;
             }
         }
     }
-    PatchShape {
-        period,
-        object,
-        stored,
-        cells,
-    }
+    PatchShape { period, object, stored, cells }
 }
 
 fn along_x(object: &[Interval], margin: i32, axis: Axis) -> Cells {
@@ -123,24 +107,12 @@ fn along_y(cells: &Cells, margin: i32, axis: Axis) -> Cells {
             // The rows that stay within 0..n after the shift, and those that come back from the other side.
             let (below, above) = match axis {
                 Axis::Endless => (0, rows.len()),
-                Axis::Open(n) | Axis::Wrapped(n) => (
-                    rows.partition_point(|r| r.y + shift < 0),
-                    rows.partition_point(|r| r.y + shift < n),
-                ),
+                Axis::Open(n) | Axis::Wrapped(n) => (rows.partition_point(|r| r.y + shift < 0), rows.partition_point(|r| r.y + shift < n)),
             };
-            sources.push(Source {
-                rows: &rows[below..above],
-                shift,
-            });
+            sources.push(Source { rows: &rows[below..above], shift });
             if let Axis::Wrapped(n) = axis {
-                sources.push(Source {
-                    rows: &rows[..below],
-                    shift: shift + n,
-                });
-                sources.push(Source {
-                    rows: &rows[above..],
-                    shift: shift - n,
-                });
+                sources.push(Source { rows: &rows[..below], shift: shift + n });
+                sources.push(Source { rows: &rows[above..], shift: shift - n });
             }
         }
         let first_row = out.rows.len();
@@ -171,10 +143,7 @@ fn along_z(cells: &Cells, margin: i32, axis: Axis) -> Cells {
         sources.clear();
         sources.extend(group.iter().map(|&(_, i)| {
             let plane = cells.planes[i];
-            Source {
-                rows: &cells.rows[plane.first..plane.end],
-                shift: 0,
-            }
+            Source { rows: &cells.rows[plane.first..plane.end], shift: 0 }
         }));
         let first_row = out.rows.len();
         merger.merge(&mut sources, &cells.spans, &mut out);
@@ -196,21 +165,13 @@ impl Cells {
             }
         }
         self.spans.extend(open);
-        self.rows.push(Row {
-            y,
-            first,
-            end: self.spans.len(),
-        });
+        self.rows.push(Row { y, first, end: self.spans.len() });
     }
 
     /// Makes a plane of the rows from `first` on, unless there are none.
     fn close_plane(&mut self, z: i32, first: usize) {
         if first < self.rows.len() {
-            self.planes.push(Plane {
-                z,
-                first,
-                end: self.rows.len(),
-            });
+            self.planes.push(Plane { z, first, end: self.rows.len() });
         }
     }
 }
@@ -228,8 +189,7 @@ impl Merger {
         while let Some(y) = sources.iter().filter_map(front).min() {
             self.spans.clear();
             for s in sources.iter_mut().filter(|s| front(s) == Some(y)) {
-                self.spans
-                    .extend_from_slice(&spans[s.rows[0].first..s.rows[0].end]);
+                self.spans.extend_from_slice(&spans[s.rows[0].first..s.rows[0].end]);
                 s.rows = &s.rows[1..];
             }
             out.push_row(y, &mut self.spans);
@@ -274,9 +234,7 @@ mod tests {
         for z in 0..n[2] {
             for y in 0..n[1] {
                 for x in 0..n[0] {
-                    state = state
-                        .wrapping_mul(6364136223846793005)
-                        .wrapping_add(1442695040888963407);
+                    state = state.wrapping_mul(6364136223846793005).wrapping_add(1442695040888963407);
                     if (state >> 33) % 1000 >= share {
                         continue;
                     }
@@ -303,20 +261,8 @@ mod tests {
                 });
                 for margin in 0..=4 {
                     let periodic = axes.map(|a| !matches!(a, Axis::Open(_)));
-                    let period = axes.map(|a| {
-                        if let Axis::Wrapped(n) = a {
-                            Some(n)
-                        } else {
-                            None
-                        }
-                    });
-                    let shape = PatchShape::around(
-                        object.clone(),
-                        margin as usize,
-                        n.map(|n| n as usize),
-                        periodic,
-                        period,
-                    );
+                    let period = axes.map(|a| if let Axis::Wrapped(n) = a { Some(n) } else { None });
+                    let shape = PatchShape::around(object.clone(), margin as usize, n.map(|n| n as usize), periodic, period);
                     let mut cells = Vec::new();
                     for (k, s) in shape.stored.iter().enumerate() {
                         assert_eq!(s.start, cells.len());

@@ -61,23 +61,13 @@ impl PatchShape {
     pub fn around(object: Vec<Interval>, margin: usize, n: [usize; 3], periodic: [bool; 3], period: [Option<i32>; 3]) -> PatchShape {
         for w in object.windows(2) {
             let follows = (w[0].z, w[0].y, w[0].x + w[0].len as i32) <= (w[1].z, w[1].y, w[1].x);
-            assert!(
-                follows,
-                "patch: expected sorted, disjoint intervals, got {:?} before {:?}",
-                w[0], w[1]
-            );
+            assert!(follows, "patch: expected sorted, disjoint intervals, got {:?} before {:?}", w[0], w[1]);
         }
         let axes: [Axis; 3] = std::array::from_fn(|a| {
             let n = n[a] as i32;
             if let Some(p) = period[a] {
-                assert!(
-                    p == n && periodic[a],
-                    "patch: expected period {n} of a periodic axis, got {p}"
-                );
-                assert!(
-                    margin < n as usize,
-                    "patch: expected a margin below the period {n}, got {margin}"
-                );
+                assert!(p == n && periodic[a], "patch: expected period {n} of a periodic axis, got {p}");
+                assert!(margin < n as usize, "patch: expected a margin below the period {n}, got {margin}");
                 Axis::Wrapped(n)
             } else if periodic[a] {
                 Axis::Endless

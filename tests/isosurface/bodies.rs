@@ -30,21 +30,9 @@ fn tilted() -> [Vector; 3] {
     let length = q.iter().map(|c| c * c).sum::<f64>().sqrt();
     let [w, x, y, z] = q.map(|c| c / length);
     [
-        [
-            1.0 - 2.0 * (y * y + z * z),
-            2.0 * (x * y - z * w),
-            2.0 * (x * z + y * w),
-        ],
-        [
-            2.0 * (x * y + z * w),
-            1.0 - 2.0 * (x * x + z * z),
-            2.0 * (y * z - x * w),
-        ],
-        [
-            2.0 * (x * z - y * w),
-            2.0 * (y * z + x * w),
-            1.0 - 2.0 * (x * x + y * y),
-        ],
+        [1.0 - 2.0 * (y * y + z * z), 2.0 * (x * y - z * w), 2.0 * (x * z + y * w)],
+        [2.0 * (x * y + z * w), 1.0 - 2.0 * (x * x + z * z), 2.0 * (y * z - x * w)],
+        [2.0 * (x * z - y * w), 2.0 * (y * z + x * w), 1.0 - 2.0 * (x * x + y * y)],
     ]
 }
 
@@ -55,15 +43,9 @@ fn local(p: Vector, centre: Vector) -> Vector {
 }
 
 /// Surface of F = 0 sampled at `index * spacing`; F > 0 inside. The body must be connected and off the grid's ends.
-fn surface_of<T: Real>(
-    n: [usize; 3],
-    spacing: Vector,
-    f: impl Fn(Vector) -> f64,
-) -> (PatchShape, Vec<T>, Isosurface) {
+fn surface_of<T: Real>(n: [usize; 3], spacing: Vector, f: impl Fn(Vector) -> f64) -> (PatchShape, Vec<T>, Isosurface) {
     // Rounded to storage precision first: the object is what a detector sees.
-    let field = Field::of(n, |c| {
-        T::of(f(std::array::from_fn(|a| c[a] as f64 * spacing[a]))).wide()
-    });
+    let field = Field::of(n, |c| T::of(f(std::array::from_fn(|a| c[a] as f64 * spacing[a]))).wide());
     let shapes = objects(&field, 0.0, 6, [false; 3], 1);
     assert_eq!(shapes.len(), 1);
     let values = field.stored::<T>(&shapes[0]);
@@ -92,12 +74,7 @@ fn ball(r: f64) -> Vector {
     [4.0 / 3.0 * PI * r.powi(3), 4.0 * PI * r * r, 4.0 * PI * r]
 }
 
-const CENTRES: [Vector; 4] = [
-    [0.0, 0.0, 0.0],
-    [0.5, 0.5, 0.5],
-    [0.31, 0.77, 0.12],
-    [0.43, 0.05, 0.66],
-];
+const CENTRES: [Vector; 4] = [[0.0, 0.0, 0.0], [0.5, 0.5, 0.5], [0.31, 0.77, 0.12], [0.43, 0.05, 0.66]];
 
 fn check_spheres<T: Real>() {
     // Relative errors of V, S, C on spheres of R cells: 0.59, 0.31, 0.115 x (1/R)^2, allowed 1.3 x.
@@ -112,19 +89,13 @@ fn check_spheres<T: Real>() {
             assert_eq!(m.euler_surface, 2);
             let e = errors(&m, ball(r));
             for k in 0..3 {
-                assert!(
-                    e[k] <= 1.3 * coefficients[k] / (r * r),
-                    "R {r}, {offset:?}: {e:?}"
-                );
+                assert!(e[k] <= 1.3 * coefficients[k] / (r * r), "R {r}, {offset:?}: {e:?}");
                 mean[k] += e[k] / CENTRES.len() as f64;
             }
         }
         for k in 0..3 {
             // The same coefficients as published, not merely below them.
-            assert!(
-                (mean[k] * r * r / coefficients[k] - 1.0).abs() < 0.3,
-                "R {r}: {mean:?}"
-            );
+            assert!((mean[k] * r * r / coefficients[k] - 1.0).abs() < 0.3, "R {r}: {mean:?}");
         }
     }
 }
@@ -155,10 +126,7 @@ fn check_convergence<T: Real>(
     let expected = (cells[1] as f64 / cells[0] as f64).powi(2);
     for k in 0..3 {
         let ratio = e[0][k] / e[1][k];
-        assert!(
-            (0.6..1.7).contains(&(ratio / expected)),
-            "quantity {k}: {e:?}"
-        );
+        assert!((0.6..1.7).contains(&(ratio / expected)), "quantity {k}: {e:?}");
         assert!(e[1][k] < last, "quantity {k}: {e:?}");
     }
 }
@@ -201,11 +169,7 @@ fn tilted_ellipsoid_converges_with_unequal_spacing() {
 fn tilted_spherocylinder_converges() {
     // Source: methods.md §5: V = πr²l + 4πr³/3, S = 2πrl + 4πr², C = πl + 4πr.
     let (r, l) = (0.3, 1.4);
-    let exact = [
-        PI * r * r * l + 4.0 / 3.0 * PI * r * r * r,
-        2.0 * PI * r * l + 4.0 * PI * r * r,
-        PI * l + 4.0 * PI * r,
-    ];
+    let exact = [PI * r * r * l + 4.0 / 3.0 * PI * r * r * r, 2.0 * PI * r * l + 4.0 * PI * r * r, PI * l + 4.0 * PI * r];
     let f = |p: Vector| {
         let q = local(p, [1.213, 1.187, 1.202]);
         r - norm([q[0] - q[0].clamp(-l / 2.0, l / 2.0), q[1], q[2]])
@@ -233,18 +197,11 @@ fn tilted_rounded_box_converges() {
     let (sides, r) = ([1.0, 0.7, 0.4], 0.2);
     let [a, b, c] = sides;
     let (v, s, m) = (a * b * c, 2.0 * (a * b + b * c + c * a), PI * (a + b + c));
-    let exact = [
-        v + s * r + m * r * r + 4.0 / 3.0 * PI * r * r * r,
-        s + 2.0 * m * r + 4.0 * PI * r * r,
-        m + 4.0 * PI * r,
-    ];
+    let exact = [v + s * r + m * r * r + 4.0 / 3.0 * PI * r * r * r, s + 2.0 * m * r + 4.0 * PI * r * r, m + 4.0 * PI * r];
     let f = |p: Vector| {
         let q = local(p, [1.013, 0.987, 0.991]);
         let beyond: Vector = std::array::from_fn(|k| q[k].abs() - sides[k] / 2.0);
-        let deepest = beyond
-            .iter()
-            .fold(f64::NEG_INFINITY, |m, b| m.max(*b))
-            .min(0.0);
+        let deepest = beyond.iter().fold(f64::NEG_INFINITY, |m, b| m.max(*b)).min(0.0);
         r - norm(beyond.map(|b| b.max(0.0))) - deepest
     };
     check_convergence::<f64>([40, 80], 2.0, [1.0; 3], 2, exact, 5e-3, f);
@@ -258,11 +215,7 @@ fn vertices_carry_fields_and_normals() {
     // The indicator at the vertices is the level: linear interpolation is what placed them there.
     let at_level = surface.interpolate(&values);
     assert_eq!(at_level.len(), surface.points.len());
-    let clear = surface
-        .edges
-        .iter()
-        .take_while(|e| e.t > 1e-4 && e.t < 1.0 - 1e-4)
-        .count();
+    let clear = surface.edges.iter().take_while(|e| e.t > 1e-4 && e.t < 1.0 - 1e-4).count();
     assert!(clear > 100);
     assert!(at_level[..clear].iter().all(|v| v.abs() < 1e-12));
     // A linear field comes out as the position, at centre vertices too.
@@ -276,16 +229,12 @@ fn vertices_carry_fields_and_normals() {
         }
     }
     // In physical coordinates every vertex lies near the sphere: linear interpolation of a distance errs by d²/8R.
-    let grid = Grid {
-        n: [22, 24, 20],
-        spacing,
-        origin: [-3.0, 5.0, 1.0],
-        periodic: [false; 3],
-    };
-    let mesh = surface.unwrapped().mesh(&grid);
+    let grid = Grid { n: [22, 24, 20], spacing, origin: [-3.0, 5.0, 1.0], periodic: [false; 3] };
+    let mesh = surface.unwrapped();
     assert_eq!(mesh.triangles, surface.triangles);
-    for v in &mesh.vertices[..surface.edges.len()] {
-        let distance = norm(minus(minus(*v, grid.origin), centre));
+    for p in &mesh.points[..surface.edges.len()] {
+        let v: [f64; 3] = std::array::from_fn(|a| grid.position(a, p[a]));
+        let distance = norm(minus(minus(v, grid.origin), centre));
         assert!((distance - r).abs() < 1.3 * 1.1 * 1.1 / (8.0 * r), "{v:?}");
     }
     // Outward, towards the low side; within an angle of order cell / R of the exact normal.
@@ -311,12 +260,7 @@ fn surface_ends_at_open_faces() {
         assert!(m.open_edges as f64 > 2.0 * PI * r / 1.5);
         assert!((m.area / (2.0 * PI * r * r) - 1.0).abs() < 1.3 * 0.31 / (r * r));
         assert!(surface.points.iter().all(|p| p[axis] >= 0.0));
-        let rim = surface
-            .neighbours()
-            .iter()
-            .flatten()
-            .filter(|&&t| t == u32::MAX)
-            .count();
+        let rim = surface.neighbours().iter().flatten().filter(|&&t| t == u32::MAX).count();
         assert_eq!(rim, m.open_edges);
     }
 }
@@ -341,14 +285,8 @@ fn ball_across_the_faces_equals_the_shifted_ball() {
         let shapes = objects(&field, 0.0, 26, [true; 3], 2);
         assert_eq!(shapes.len(), 1);
         assert_eq!(shapes[0].period, [None; 3]);
-        let m = measure(
-            &isosurface(&shapes[0], &field.stored::<f64>(&shapes[0]), 0.0),
-            [1.0; 3],
-        );
-        assert_eq!(
-            (m.euler_surface, m.open_edges, m.nonmanifold_edges),
-            (2, 0, 0)
-        );
+        let m = measure(&isosurface(&shapes[0], &field.stored::<f64>(&shapes[0]), 0.0), [1.0; 3]);
+        assert_eq!((m.euler_surface, m.open_edges, m.nonmanifold_edges), (2, 0, 0));
         m
     };
     let whole = ball_at([0, 0, 0]);
@@ -401,8 +339,7 @@ fn column_through_the_box_closes_on_the_torus() {
             let (spacing, r) = ([0.5 / scale as f64; 3], 3.1);
             let field = Field::of(n, |c| {
                 let across = (0..3).filter(|&a| a != axis);
-                let d =
-                    across.map(|a| modulo(c[a] as f64 * spacing[a] - 0.13 - 0.2 * a as f64, 12.0));
+                let d = across.map(|a| modulo(c[a] as f64 * spacing[a] - 0.13 - 0.2 * a as f64, 12.0));
                 1.0 - d.fold(0.0, f64::hypot) / r
             });
             let shapes = objects(&field, 0.0, 26, [true; 3], 1);
@@ -410,19 +347,10 @@ fn column_through_the_box_closes_on_the_torus() {
             assert_eq!(shapes[0].period, n.map(|n| Some(n as i32)));
             let surface = isosurface(&shapes[0], &field.stored::<f64>(&shapes[0]), 0.0);
             let m = measure(&surface, spacing);
-            assert_eq!(
-                (m.open_edges, m.nonmanifold_edges, m.euler_surface),
-                (0, 0, 0)
-            );
+            assert_eq!((m.open_edges, m.nonmanifold_edges, m.euler_surface), (0, 0, 0));
             assert_eq!(m.volume, None);
-            assert!(
-                (m.area / (2.0 * PI * r * 5.0) - 1.0).abs() < tolerance,
-                "{m:?}"
-            );
-            assert!(
-                (m.mean_curvature_integral / (PI * 5.0) - 1.0).abs() < tolerance,
-                "{m:?}"
-            );
+            assert!((m.area / (2.0 * PI * r * 5.0) - 1.0).abs() < tolerance, "{m:?}");
+            assert!((m.mean_curvature_integral / (PI * 5.0) - 1.0).abs() < tolerance, "{m:?}");
             check_unwrapped(&surface, spacing);
         }
     }
@@ -434,14 +362,10 @@ fn wavy_sheet_through_two_axes_closes_on_the_torus() {
     let (length, amplitude, w) = (16.0, 1.7, 1.3);
     let k = 2.0 * PI / length;
     let steps = 4000;
-    let line: f64 = (0..steps)
-        .map(|i| {
-            (1.0 + (amplitude * k * (k * (i as f64 + 0.5) * length / steps as f64).cos()).powi(2))
-                .sqrt()
-        })
-        .sum::<f64>()
-        * length
-        / steps as f64;
+    let line: f64 =
+        (0..steps).map(|i| (1.0 + (amplitude * k * (k * (i as f64 + 0.5) * length / steps as f64).cos()).powi(2)).sqrt()).sum::<f64>()
+            * length
+            / steps as f64;
     // Along each pair of axes, crossing the seam of the third.
     for normal in 0..3 {
         let along = (normal + 1) % 3;
@@ -450,27 +374,17 @@ fn wavy_sheet_through_two_axes_closes_on_the_torus() {
             let spacing = [length / count as f64; 3];
             let field = Field::of([count; 3], |c| {
                 let x = c[along] as f64 * spacing[0];
-                w - modulo(
-                    c[normal] as f64 * spacing[0] - 0.21 - amplitude * (k * x).sin(),
-                    length,
-                )
-                .abs()
+                w - modulo(c[normal] as f64 * spacing[0] - 0.21 - amplitude * (k * x).sin(), length).abs()
             });
             let shapes = objects(&field, 0.0, 6, [true; 3], 1);
             assert_eq!(shapes.len(), 1);
             let surface = isosurface(&shapes[0], &field.stored::<f32>(&shapes[0]), 0.0);
             let m = measure(&surface, spacing);
-            assert_eq!(
-                (m.open_edges, m.nonmanifold_edges, m.euler_surface),
-                (0, 0, 0)
-            );
+            assert_eq!((m.open_edges, m.nonmanifold_edges, m.euler_surface), (0, 0, 0));
             errors.push((m.area / (2.0 * length * line) - 1.0).abs());
             check_unwrapped(&surface, spacing);
         }
-        assert!(
-            errors[1] < 1e-3 && errors[0] / errors[1] > 3.0,
-            "{errors:?}"
-        );
+        assert!(errors[1] < 1e-3 && errors[0] / errors[1] > 3.0, "{errors:?}");
     }
 }
 

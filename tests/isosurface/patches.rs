@@ -32,12 +32,7 @@ impl Field {
     /// Independent values in -1..1.
     pub fn noise(n: [usize; 3], seed: u64) -> Field {
         let mut random = Random(seed);
-        Field {
-            n,
-            values: (0..n.iter().product())
-                .map(|_| 2.0 * random.next() - 1.0)
-                .collect(),
-        }
+        Field { n, values: (0..n.iter().product()).map(|_| 2.0 * random.next() - 1.0).collect() }
     }
 
     /// Mean over each cell and its six neighbours modulo the box, `times` times over.
@@ -86,10 +81,7 @@ pub struct Random(pub u64);
 impl Random {
     /// Uniform in 0..1.
     pub fn next(&mut self) -> f64 {
-        self.0 = self
-            .0
-            .wrapping_mul(6364136223846793005)
-            .wrapping_add(1442695040888963407);
+        self.0 = self.0.wrapping_mul(6364136223846793005).wrapping_add(1442695040888963407);
         (self.0 >> 11) as f64 / (1u64 << 53) as f64
     }
 }
@@ -111,13 +103,7 @@ fn offsets(connectivity: usize) -> Vec<[i32; 3]> {
 }
 
 /// Connected cells above the level as patches with a margin, in order of their first cell.
-pub fn objects(
-    field: &Field,
-    level: f64,
-    connectivity: usize,
-    periodic: [bool; 3],
-    margin: usize,
-) -> Vec<PatchShape> {
+pub fn objects(field: &Field, level: f64, connectivity: usize, periodic: [bool; 3], margin: usize) -> Vec<PatchShape> {
     let n = field.n.map(|n| n as i32);
     let mut found = Vec::new();
     let mut owner: BTreeMap<[i32; 3], (usize, [i32; 3])> = BTreeMap::new();
@@ -157,13 +143,7 @@ pub fn objects(
                     cells.iter_mut().for_each(|c| *c = wrap(*c));
                     period = std::array::from_fn(|a| periodic[a].then_some(n[a]));
                 }
-                found.push(PatchShape::around(
-                    intervals(cells),
-                    margin,
-                    field.n,
-                    periodic,
-                    period,
-                ));
+                found.push(PatchShape::around(intervals(cells), margin, field.n, periodic, period));
             }
         }
     }

@@ -19,10 +19,7 @@ fn fields(n: [usize; 3]) -> Vec<(&'static str, Field)> {
         ("smoothed once", Field::noise(n, 2).smoothed(1)),
         ("smoothed", Field::noise(n, 3).smoothed(4)),
         ("few values", steps(Field::noise(n, 4), 12.0)),
-        (
-            "few smooth values",
-            steps(Field::noise(n, 5).smoothed(2), 16.0),
-        ),
+        ("few smooth values", steps(Field::noise(n, 5).smoothed(2), 16.0)),
     ]
 }
 
@@ -34,19 +31,13 @@ fn check_manifold(surface: &Isosurface) -> (usize, usize, usize) {
         for k in 0..3 {
             let (a, b, c) = (t[k], t[(k + 1) % 3], t[(k + 2) % 3]);
             assert!(a != b, "degenerate triangle {t:?}");
-            assert!(
-                directed.insert((a, b), c).is_none(),
-                "edge {a}-{b} twice the same way"
-            );
+            assert!(directed.insert((a, b), c).is_none(), "edge {a}-{b} twice the same way");
         }
     }
     let mut degree = vec![0; surface.points.len()];
     let mut start = vec![u32::MAX; surface.points.len()];
     for &(a, b) in directed.keys() {
-        assert!(
-            directed.contains_key(&(b, a)),
-            "edge {a}-{b} has one triangle"
-        );
+        assert!(directed.contains_key(&(b, a)), "edge {a}-{b} has one triangle");
         degree[a as usize] += 1;
         start[a as usize] = b;
     }
@@ -61,26 +52,16 @@ fn check_manifold(surface: &Isosurface) -> (usize, usize, usize) {
         }
         assert_eq!(ring, degree[v as usize], "vertex {v} has two rings");
     }
-    (
-        surface.points.len(),
-        directed.len() / 2,
-        surface.triangles.len(),
-    )
+    (surface.points.len(), directed.len() / 2, surface.triangles.len())
 }
 
 fn smallest_area(surface: &Isosurface) -> f64 {
     let area = |t: &[u32; 3]| {
         let (u, v) = (surface.vector(t[0], t[1]), surface.vector(t[0], t[2]));
-        let c: [f64; 3] = std::array::from_fn(|k| {
-            u[(k + 1) % 3] * v[(k + 2) % 3] - u[(k + 2) % 3] * v[(k + 1) % 3]
-        });
+        let c: [f64; 3] = std::array::from_fn(|k| u[(k + 1) % 3] * v[(k + 2) % 3] - u[(k + 2) % 3] * v[(k + 1) % 3]);
         0.5 * c.iter().map(|c| c * c).sum::<f64>().sqrt()
     };
-    surface
-        .triangles
-        .iter()
-        .map(area)
-        .fold(f64::INFINITY, f64::min)
+    surface.triangles.iter().map(area).fold(f64::INFINITY, f64::min)
 }
 
 fn check_all<T: Real>(n: [usize; 3], periodic: [bool; 3]) -> usize {
@@ -100,11 +81,7 @@ fn check_all<T: Real>(n: [usize; 3], periodic: [bool; 3]) -> usize {
                     let surface = isosurface(&shape, &inner.stored::<T>(&shape), level);
                     let (v, e, f) = check_manifold(&surface);
                     let m = measure(&surface, [1.0, 0.8, 1.3]);
-                    assert_eq!(
-                        (m.open_edges, m.nonmanifold_edges),
-                        (0, 0),
-                        "{name} {share}"
-                    );
+                    assert_eq!((m.open_edges, m.nonmanifold_edges), (0, 0), "{name} {share}");
                     assert_eq!(m.euler_surface, v as i64 - e as i64 + f as i64);
                     assert_eq!(m.euler_surface % 2, 0, "{name} {share}");
                     assert!(smallest_area(&surface) > 1e-9, "{name} {share}");
@@ -114,8 +91,7 @@ fn check_all<T: Real>(n: [usize; 3], periodic: [bool; 3]) -> usize {
                     let laid = surface.unwrapped();
                     for t in &laid.triangles {
                         let p = t.map(|v| laid.points[v as usize]);
-                        let far =
-                            |a: [f64; 3], b: [f64; 3]| (0..3).any(|k| (a[k] - b[k]).abs() > 1.0);
+                        let far = |a: [f64; 3], b: [f64; 3]| (0..3).any(|k| (a[k] - b[k]).abs() > 1.0);
                         assert!(!far(p[0], p[1]) && !far(p[1], p[2]) && !far(p[2], p[0]));
                     }
                 }
@@ -139,23 +115,9 @@ fn total(field: &Field, level: f64, connectivity: usize, spacing: [f64; 3]) -> (
     let mut sum = [0.0; 4];
     let shapes = objects(field, level, connectivity, [true; 3], 1);
     for shape in &shapes {
-        let m = measure(
-            &isosurface(shape, &field.stored::<f64>(shape), level),
-            spacing,
-        );
-        let SurfaceMeasures {
-            area,
-            volume,
-            mean_curvature_integral,
-            euler_surface,
-            ..
-        } = m;
-        let parts = [
-            area,
-            volume.unwrap_or(0.0),
-            mean_curvature_integral,
-            euler_surface as f64,
-        ];
+        let m = measure(&isosurface(shape, &field.stored::<f64>(shape), level), spacing);
+        let SurfaceMeasures { area, volume, mean_curvature_integral, euler_surface, .. } = m;
+        let parts = [area, volume.unwrap_or(0.0), mean_curvature_integral, euler_surface as f64];
         (0..4).for_each(|k| sum[k] += parts[k]);
     }
     (sum, shapes.len())
@@ -176,14 +138,7 @@ fn check_orientations(name: &str, field: &Field, level: f64, connectivity: usize
     let (n, spacing) = (field.n, [1.0, 0.85, 1.2]);
     let reference = total(field, level, connectivity, spacing);
     assert!(reference.1 > 0, "{name}");
-    for order in [
-        [0, 1, 2],
-        [0, 2, 1],
-        [1, 0, 2],
-        [1, 2, 0],
-        [2, 0, 1],
-        [2, 1, 0],
-    ] {
+    for order in [[0, 1, 2], [0, 2, 1], [1, 0, 2], [1, 2, 0], [2, 0, 1], [2, 1, 0]] {
         for mirrors in 0..8 {
             let turned = Field::of(order.map(|a| n[a]), |c| {
                 let mut source = [0; 3];
@@ -215,11 +170,7 @@ fn tied_diagonals_prefer_no_direction() {
     // A plate of 2 x 2 cells between surroundings that alternate like a chessboard: the quadrilaterals on its two sides
     // are saddles with equal diagonals.
     let plate = Field::of([7, 7, 7], |c| {
-        if c[2] == 3 && (3..5).contains(&c[0]) && (3..5).contains(&c[1]) {
-            1.0
-        } else {
-            [-1.0, -3.0][(c[0] + c[1]) % 2]
-        }
+        if c[2] == 3 && (3..5).contains(&c[0]) && (3..5).contains(&c[1]) { 1.0 } else { [-1.0, -3.0][(c[0] + c[1]) % 2] }
     });
     check_orientations("plate", &plate, 0.0, 26);
 }
@@ -236,9 +187,7 @@ fn cells_cut_out_of_larger_objects_have_closed_surfaces() {
     let (values, picks) = (Field::noise([9; 3], 11), Field::noise([9; 3], 12));
     let inner = |c: [i32; 3]| c.iter().all(|k| (1..8).contains(k));
     let all = (0..729).map(|i| [i % 9, i / 9 % 9, i / 81]);
-    let picked = all
-        .filter(|&c| inner(c) && picks.at(c.map(|k| k as usize)) > 0.0)
-        .collect();
+    let picked = all.filter(|&c| inner(c) && picks.at(c.map(|k| k as usize)) > 0.0).collect();
     let shape = PatchShape::around(intervals(picked), 1, [9; 3], [false; 3], [None; 3]);
     let surface = isosurface(&shape, &values.stored::<f64>(&shape), 0.0);
     check_manifold(&surface);
@@ -253,9 +202,7 @@ fn shifted_periodic_fields_measure_the_same() {
         let level = field.quantile(0.2);
         let reference = total(&field, level, 26, [1.0; 3]);
         for shift in [[6, 0, 0], [0, 5, 0], [0, 0, 7], [4, 8, 2]] {
-            let moved = Field::of(n, |c| {
-                field.at(std::array::from_fn(|a| (c[a] + shift[a]) % n[a]))
-            });
+            let moved = Field::of(n, |c| field.at(std::array::from_fn(|a| (c[a] + shift[a]) % n[a])));
             let sum = total(&moved, level, 26, [1.0; 3]);
             assert_same(sum, reference, &format!("{name} {shift:?}"));
         }
@@ -283,22 +230,12 @@ fn other_objects_count_as_outside() {
     let n = [9; 3];
     let field = Field::of(n, |c| {
         let inner = c.iter().all(|&k| (1..8).contains(&k));
-        if inner && c.iter().sum::<usize>() % 2 == 1 {
-            1.0
-        } else {
-            -1.0
-        }
+        if inner && c.iter().sum::<usize>() % 2 == 1 { 1.0 } else { -1.0 }
     });
     let shapes = objects(&field, 0.0, 6, [false; 3], 1);
-    assert_eq!(
-        shapes.len(),
-        field.values.iter().filter(|v| **v > 0.0).count()
-    );
+    assert_eq!(shapes.len(), field.values.iter().filter(|v| **v > 0.0).count());
     for shape in &shapes {
-        let m = measure(
-            &isosurface(shape, &field.stored::<f64>(shape), 0.0),
-            [1.0; 3],
-        );
+        let m = measure(&isosurface(shape, &field.stored::<f64>(shape), 0.0), [1.0; 3]);
         assert!((m.volume.unwrap() - 1.0 / 6.0).abs() < 1e-15);
         assert_eq!(m.euler_surface, 2);
     }

@@ -71,8 +71,8 @@ fn overview(outcome: &Outcome) -> String {
     let mut out = String::new();
     let _ = writeln!(
         out,
-        "{:<16} {:<12} {:>11} {:>8} {:>8} {:>11}  {}",
-        "snapshot", "family", "level", "objects", "volume", "dissipation", "classes"
+        "{:<16} {:<12} {:>11} {:>8} {:>8} {:>11}  classes",
+        "snapshot", "family", "level", "objects", "volume", "dissipation"
     );
     for a in &outcome.done {
         for f in &a.families {

@@ -61,18 +61,18 @@ impl Observe for Console {
     }
 
     fn advance(&self, units: u64) {
-        if let Ok(slot) = self.bar.lock() {
-            if let Some(bar) = &*slot {
-                bar.inc(units);
-            }
+        if let Ok(slot) = self.bar.lock()
+            && let Some(bar) = &*slot
+        {
+            bar.inc(units);
         }
     }
 
     fn done(&self) {
-        if let Ok(mut slot) = self.bar.lock() {
-            if let Some(bar) = slot.take() {
-                bar.finish_and_clear();
-            }
+        if let Ok(mut slot) = self.bar.lock()
+            && let Some(bar) = slot.take()
+        {
+            bar.finish_and_clear();
         }
     }
 
