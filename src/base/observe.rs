@@ -10,6 +10,9 @@ pub trait Observe: Sync {
     fn done(&self) {}
     /// Something the user should know; also kept in the results.
     fn warning(&self, _text: &str) {}
+
+    /// Something failed and the run goes on without it.
+    fn failure(&self, _text: &str) {}
 }
 
 /// Watches nothing.

@@ -53,6 +53,9 @@ impl Folder {
         }
         let building = beside(target, ".unfinished");
         if let Some(parent) = target.parent().filter(|p| !p.as_os_str().is_empty()) {
+            if parent.is_file() {
+                return Err(Error::output("cannot make the run folder").at(target).expected("a folder above it").found("a file"));
+            }
             fs::create_dir_all(parent).map_err(|e| failed("cannot make the run folder", parent, &e))?;
         }
         fs::create_dir(&building).map_err(|e| {

@@ -47,7 +47,12 @@ impl ChunkedArray {
 /// Opens the file, checks its datasets and readies them for reading.
 pub(super) fn open(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays> {
     super::superblock::check(path)?;
-    let refused = |e: ::hdf5::Error| Error::input("cannot read the HDF5 file").at(path).found(condense(&e));
+    let refused = |e: ::hdf5::Error| {
+        let found = condense(&e);
+        let locked = found.contains("unable to lock file");
+        let error = Error::input("cannot read the HDF5 file").at(path).found(found);
+        if locked { error.hint("a program is writing it, or its file system has no locks: see HDF5_USE_FILE_LOCKING") } else { error }
+    };
     let file = File::open(path).map_err(refused)?;
     let choices = choose(spec, |name| file.dataset(name).ok().map(|d| d.ndim()));
     if choices.is_empty() {

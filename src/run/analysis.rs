@@ -371,8 +371,10 @@ fn warnings(divergence: &[Divergence; 2], families: &[FamilyResult], fields: Fie
         }
         if f.oversized > 0 {
             out.push(format!(
-                "family {}: {} objects over --max-object-cells {} have additive columns only",
-                f.family.name, f.oversized, request.max_object_cells
+                "family {}: over --max-object-cells, so with additive columns only: {} of {} objects",
+                f.family.name,
+                f.oversized,
+                f.rows.len()
             ));
         }
         let wrapping = f
@@ -382,8 +384,9 @@ fn warnings(divergence: &[Divergence; 2], families: &[FamilyResult], fields: Fie
             .count();
         if wrapping > 0 {
             out.push(format!(
-                "family {}: {wrapping} objects close on themselves through the box; their lengths are missing",
-                f.family.name
+                "family {}: closed on themselves through the box, so without lengths: {wrapping} of {} objects",
+                f.family.name,
+                f.rows.len()
             ));
         }
     }

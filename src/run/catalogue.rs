@@ -50,7 +50,7 @@ pub struct Outcome {
 /// Runs the main job.
 ///
 /// Headers of all snapshots are checked before anything long. A snapshot that cannot be used is reported and the others go on;
-/// when none can be used, the first reason is the error and nothing is written.
+/// when none can be used, that is an error and nothing is written.
 ///
 /// # Errors
 /// `Usage` for a request that fits no snapshot, `Input` or `Data` when no snapshot is usable, `Output` for the run folder.
@@ -64,7 +64,7 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
         match read::open(path, &config.input).and_then(|o| check(o, &config.request)) {
             Ok(name) => usable.push((path.clone(), name)),
             Err(e) if e.kind() == Kind::Usage => return Err(e),
-            Err(e) => fail(&mut failed, path, e, observe),
+            Err(e) => fail(&mut failed, path, e, config, observe),
         }
     }
     for (i, (path, name)) in usable.iter().enumerate() {
@@ -77,7 +77,7 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
         }
     }
     if usable.is_empty() {
-        return Err(first(failed));
+        return Err(none_usable(failed));
     }
     let folder = Folder::create(&config.output, config.replace)?;
     let mut table = csv::header();
@@ -93,12 +93,12 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
                 snapshots.push(summary::snapshot(&analysis, &path.to_string_lossy(), &datasets));
                 done.push(analysis);
             }
-            Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => fail(&mut failed, path, e, observe),
+            Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => fail(&mut failed, path, e, config, observe),
             Err(e) => return Err(e),
         }
     }
     if done.is_empty() {
-        return Err(first(failed));
+        return Err(none_usable(failed));
     }
     let failures: Vec<Value> = failed.iter().map(|(p, e)| json!({ "path": p.to_string_lossy(), "error": e.to_string() })).collect();
     let what = json!({
@@ -121,15 +121,20 @@ fn check(opened: Opened, request: &Request) -> Result<String> {
     Ok(opened.name)
 }
 
-fn fail(failed: &mut Vec<(PathBuf, Error)>, path: &Path, e: Error, observe: &dyn Observe) {
-    observe.warning(&format!("snapshot skipped: {e}"));
+/// Keeps a failure. Among several snapshots it is told at once; that of the only one is the error of the run.
+fn fail(failed: &mut Vec<(PathBuf, Error)>, path: &Path, e: Error, config: &RunConfig, observe: &dyn Observe) {
+    if config.snapshots.len() > 1 {
+        observe.failure(&format!("snapshot skipped: {e}"));
+    }
     failed.push((path.to_path_buf(), e));
 }
 
-fn first(failed: Vec<(PathBuf, Error)>) -> Error {
-    match failed.into_iter().next() {
-        Some((_, e)) => e,
-        None => Error::usage("no snapshot given").hint("name one or more files"),
+/// The error of a run in which no snapshot could be used.
+fn none_usable(mut failed: Vec<(PathBuf, Error)>) -> Error {
+    match failed.len() {
+        0 => Error::usage("no snapshot given").hint("name one or more files"),
+        1 => failed.remove(0).1,
+        n => Error::input("cannot use any snapshot").expected("at least one that is usable").found(format!("{n} that are not")),
     }
 }
 

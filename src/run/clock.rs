@@ -75,4 +75,8 @@ impl Observe for Clock<'_> {
     fn warning(&self, text: &str) {
         self.inner.warning(text);
     }
+
+    fn failure(&self, text: &str) {
+        self.inner.failure(text);
+    }
 }

@@ -74,10 +74,10 @@ pub struct Catalogue {
     pub periodic: String,
 
     /// Kinematic viscosity
-    #[arg(long, value_name = "NU", help_heading = "Physics")]
+    #[arg(long, value_name = "NU", allow_negative_numbers = true, help_heading = "Physics")]
     pub viscosity: Option<f64>,
     /// Magnetic diffusivity
-    #[arg(long, value_name = "ETA", help_heading = "Physics")]
+    #[arg(long, value_name = "ETA", allow_negative_numbers = true, help_heading = "Physics")]
     pub resistivity: Option<f64>,
     /// Frame of the velocity: that of the box mean, or as stored
     #[arg(long, value_enum, default_value = "box", help_heading = "Physics")]

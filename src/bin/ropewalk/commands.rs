@@ -6,7 +6,7 @@ use std::process::ExitCode;
 
 use ropewalk::base::error::{Error, Result};
 use ropewalk::model::columns::{COLUMNS, Col, Row, Value};
-use ropewalk::model::request::Request;
+use ropewalk::model::request::{Family, Request};
 use ropewalk::read::InputSpec;
 use ropewalk::run::analysis::Execution;
 use ropewalk::run::catalogue::{Outcome, RunConfig, catalogue};
@@ -20,7 +20,9 @@ pub fn run(args: &Args) -> Result<ExitCode> {
     match &args.command {
         Command::Catalogue(a) => {
             let outcome = catalogue(&settle::catalogue(a)?, &Console::new(a.talk))?;
-            console::result(&overview(&outcome));
+            if !a.talk.quiet {
+                console::result(&overview(&outcome));
+            }
             Ok(if outcome.failed.is_empty() { ExitCode::SUCCESS } else { ExitCode::from(exit::PARTIAL) })
         }
         Command::Demo(a) => demo(a),
@@ -31,36 +33,91 @@ pub fn run(args: &Args) -> Result<ExitCode> {
     }
 }
 
-/// Files of the demo run, and the coefficients they were computed with.
-const DEMO_FILES: [&str; 4] = ["mhd_0001.h5", "mhd_0002.h5", "mhd_0003.h5", "hydro_0001.h5"];
+/// One run of the demo.
+struct DemoRun {
+    /// Its folder below that of the demo.
+    folder: &'static str,
+    files: &'static [&'static str],
+    families: &'static [&'static str],
+    /// Coefficients that the snapshots were computed with.
+    viscosity: f64,
+    resistivity: Option<f64>,
+}
+
+const DEMO: [DemoRun; 2] = [
+    DemoRun {
+        folder: "mhd",
+        files: &["mhd_0001.h5", "mhd_0002.h5", "mhd_0003.h5"],
+        families: &["vorticity: vorticity > 2.5 rms", "current: current > 2 rms"],
+        viscosity: 0.019,
+        resistivity: Some(0.019),
+    },
+    DemoRun {
+        folder: "hydro",
+        files: &["hydro_0001.h5"],
+        families: &["vorticity: vorticity > 2.5 rms"],
+        viscosity: 0.018,
+        resistivity: None,
+    },
+];
 
 fn demo(a: &Demo) -> Result<ExitCode> {
     let data = demo_data(a.data.as_deref())?;
-    let run = |files: &[&str], folder: PathBuf, viscosity: f64, resistivity: Option<f64>| {
+    let mut code = ExitCode::SUCCESS;
+    let mut text = String::new();
+    for run in &DEMO {
         let config = RunConfig {
-            snapshots: files.iter().map(|f| data.join(f)).collect(),
+            snapshots: run.files.iter().map(|f| data.join(f)).collect(),
             input: InputSpec { lengths: Some([std::f64::consts::TAU; 3]), ..InputSpec::default() },
-            request: Request { viscosity: Some(viscosity), resistivity, ..Request::default() },
+            request: Request {
+                families: run.families.iter().map(|f| Family::parse(f)).collect::<Result<_>>()?,
+                viscosity: Some(run.viscosity),
+                resistivity: run.resistivity,
+                ..Request::default()
+            },
             execution: Execution::default(),
             threads: 0,
-            output: folder,
+            output: a.folder.join(run.folder),
             replace: a.replace,
         };
-        catalogue(&config, &Console::new(a.talk))
-    };
-    let outcome = run(&DEMO_FILES, a.folder.clone(), 0.01, Some(0.01))?;
-    console::result(&overview(&outcome));
-    Ok(ExitCode::SUCCESS)
+        let outcome = catalogue(&config, &Console::new(a.talk))?;
+        if !outcome.failed.is_empty() {
+            code = ExitCode::from(exit::PARTIAL);
+        }
+        let _ = writeln!(text, "{}", overview(&outcome));
+    }
+    let folder = a.folder.join(DEMO[0].folder);
+    let _ = write!(text, "{}", what_to_look_at(&folder));
+    if !a.talk.quiet {
+        console::result(&text);
+    }
+    Ok(code)
+}
+
+/// Where a newcomer goes from the demo's run folder.
+fn what_to_look_at(folder: &Path) -> String {
+    let run = folder.display();
+    format!(
+        "What to look at\n\
+         \x20 {run}/catalogue.csv   one row an object: place, size, shape, dissipation, alignments\n\
+         \x20 {run}/columns.json    what every column means; also: ropewalk columns\n\
+         \x20 {run}/surfaces/       meshes of the objects, one file a snapshot and family, for any viewer of PLY files\n\
+         \x20 {run}/run.json        levels, statistics of the box, shares, warnings\n\
+         Sort the current family by ohmic_share: a few objects hold more than half of what all of them dissipate. Many are ribbons:\n\
+         classed filament for their length, with a planarity above that of a round tube. The grid is coarse (64^3) and the flags\n\
+         column says so: under_resolved, marginal.\n"
+    )
 }
 
 /// The demo data: where the user says, below the present folder, or in the source tree this program was built from.
 fn demo_data(named: Option<&Path>) -> Result<PathBuf> {
+    let first = DEMO[0].files[0];
     let built_from = Path::new(env!("CARGO_MANIFEST_DIR")).join("demo-data");
     let places: Vec<PathBuf> = named.map_or_else(|| vec![PathBuf::from("demo-data"), built_from], |p| vec![p.to_path_buf()]);
-    places.iter().find(|p| p.join(DEMO_FILES[0]).is_file()).cloned().ok_or_else(|| {
+    places.iter().find(|p| p.join(first).is_file()).cloned().ok_or_else(|| {
         Error::input("cannot find the demo data")
             .at(&places[0])
-            .expected(DEMO_FILES[0])
+            .expected(first)
             .found("no such file")
             .hint("run it in the source tree, or name the folder with --data DIR")
     })
@@ -76,12 +133,11 @@ fn overview(outcome: &Outcome) -> String {
     );
     for a in &outcome.done {
         for f in &a.families {
-            let sum = |c: Col| f.rows.iter().filter_map(|r| r.get(c).as_f64()).sum::<f64>();
+            let sum = |c: Col| f.rows.iter().filter_map(|r| r.get(c).as_f64()).fold(0.0, |a, b| a + b);
             let volume = sum(Col::Cells) / a.survey.cells as f64;
             let dissipation =
                 if a.fields.magnetic && f.family.indicator.needs().magnetic { sum(Col::OhmicShare) } else { sum(Col::ViscousShare) };
-            let _ = writeln!(
-                out,
+            let line = format!(
                 "{:<16} {:<12} {:>11.5} {:>8} {:>7.2}% {:>10.2}%  {}",
                 a.snapshot.name,
                 f.family.name,
@@ -91,6 +147,7 @@ fn overview(outcome: &Outcome) -> String {
                 100.0 * dissipation,
                 classes(&f.rows)
             );
+            let _ = writeln!(out, "{}", line.trim_end());
         }
     }
     let _ = writeln!(out, "{}", outcome.folder.display());

@@ -81,4 +81,8 @@ impl Observe for Console {
             eprintln!("warning: {text}");
         }
     }
+
+    fn failure(&self, text: &str) {
+        eprintln!("error: {text}");
+    }
 }

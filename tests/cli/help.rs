@@ -1,0 +1,58 @@
+//! Help, version and the data dictionary as printed.
+
+use std::path::Path;
+
+use crate::place::{OPTIONS, Place};
+
+/// Compares with a file beside this one; a difference prints the replacement.
+fn golden(file: &str, found: &str) {
+    let path = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/cli").join(file);
+    let wanted = std::fs::read_to_string(&path).unwrap_or_default();
+    assert!(wanted == found, "tests/cli/{file} should be, if the change is meant:\n{found}");
+}
+
+#[test]
+fn help_of_every_command() {
+    let place = Place::new();
+    for (line, file) in [
+        ("--help", "help.txt"),
+        ("demo --help", "help_demo.txt"),
+        ("catalogue --help", "help_catalogue.txt"),
+        ("columns --help", "help_columns.txt"),
+    ] {
+        let ran = place.succeed(line);
+        golden(file, &ran.out);
+        assert_eq!(ran.err, "", "{line}");
+    }
+}
+
+#[test]
+fn version() {
+    let ran = Place::new().succeed("--version");
+    assert_eq!(ran.out, concat!("ropewalk ", env!("CARGO_PKG_VERSION"), "\n"));
+    assert_eq!(ran.err, "");
+}
+
+/// One registry drives the CSV header, columns.json and the printed dictionary.
+#[test]
+fn dictionary_header_and_listing_agree() {
+    let place = Place::with_snapshot();
+    place.succeed(&format!("catalogue good.h5 {OPTIONS}"));
+    let header = place.read("ropewalk-run/catalogue.csv").lines().next().expect("a header").to_string();
+    let dictionary = place.json("ropewalk-run/columns.json");
+    let columns = dictionary["columns"].as_array().expect("a list of columns");
+    let names: Vec<&str> = columns.iter().map(|c| c["name"].as_str().expect("a name")).collect();
+    assert_eq!(header.split(',').collect::<Vec<_>>(), names);
+
+    let mut listing = String::new();
+    for c in columns {
+        let text = |key: &str| c[key].as_str().unwrap_or_else(|| panic!("{key} of {}", c["name"]));
+        listing += &format!("{} [{}]\n    {}\n", text("name"), text("unit"), text("definition"));
+        if !text("source").is_empty() {
+            listing += &format!("    source: {}\n", text("source"));
+        }
+    }
+    let ran = place.succeed("columns");
+    assert_eq!(ran.out, listing);
+    assert_eq!(ran.err, "");
+}
