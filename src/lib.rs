@@ -40,3 +40,8 @@ pub mod run;
 pub mod space;
 pub mod survey;
 pub mod synth;
+
+/// The README's example is compiled and run with the tests.
+#[cfg(doctest)]
+#[doc = include_str!("../README.md")]
+pub struct Readme;

@@ -8,6 +8,7 @@ import traceback
 import labels
 import layouts
 import meshes
+import readme
 
 import support
 import tables
@@ -15,7 +16,7 @@ import tables
 
 def main():
     passed, failed = 0, []
-    for module in (tables, layouts, labels, meshes):
+    for module in (tables, layouts, labels, meshes, readme):
         for name, check in sorted(vars(module).items()):
             if not name.startswith("check_"):
                 continue
