@@ -61,19 +61,22 @@ fn row_fold<T: Real>(row: &[T], f: impl Fn(f64) -> f64) -> f64 {
     ((lanes[0] + lanes[4]) + (lanes[2] + lanes[6])) + ((lanes[1] + lanes[5]) + (lanes[3] + lanes[7]))
 }
 
-/// Largest value of a row; `start` where the row is empty.
-pub fn row_max<T: Real>(row: &[T], start: T) -> T {
-    let mut lanes = [start; 8];
+/// Smallest and largest value of a row; `(start, start)` where the row is empty.
+pub fn row_range<T: Real>(row: &[T], start: T) -> (T, T) {
+    // Lanes, because a single running minimum is a chain of dependent steps.
+    let (mut low, mut high) = ([start; 8], [start; 8]);
     let mut chunks = row.chunks_exact(8);
     for c in &mut chunks {
         for k in 0..8 {
-            lanes[k] = lanes[k].greater(c[k]);
+            low[k] = low[k].lesser(c[k]);
+            high[k] = high[k].greater(c[k]);
         }
     }
     for (k, v) in chunks.remainder().iter().enumerate() {
-        lanes[k] = lanes[k].greater(*v);
+        low[k] = low[k].lesser(*v);
+        high[k] = high[k].greater(*v);
     }
-    lanes.into_iter().fold(start, T::greater)
+    (low.into_iter().fold(start, T::lesser), high.into_iter().fold(start, T::greater))
 }
 
 /// Scale of the exact cosine sums: a row of up to 2^14 cells fits 64 bits.
