@@ -4,6 +4,7 @@ use crate::base::real::Real;
 use crate::derive::gradient::Gradient;
 
 /// S:S with S = ½(A + Aᵀ), A_ij = ∂u_i/∂x_j.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
 pub fn strain2<T: Real>(g: &Gradient<T>, out: &mut Vec<T>) {
     let n = g.d[0][0].len();
     out.resize(n, T::ZERO);
@@ -29,6 +30,7 @@ pub fn divergence<T: Real>(g: &Gradient<T>, out: &mut Vec<T>) {
 }
 
 /// Right-handed curl and its square.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
 pub fn curl<T: Real>(g: &Gradient<T>, out: &mut [Vec<T>; 3], square: &mut Vec<T>) {
     let n = g.d[0][0].len();
     for o in out.iter_mut() {

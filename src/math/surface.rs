@@ -62,16 +62,21 @@ pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]
     }
 }
 
-/// `atan2(sine, cosine)` for a sine and cosine with a common factor. Most edges of a surface are nearly flat: there the
-/// series of the arctangent, cut where its next term is below 1e-17, replaces the library call.
+/// `atan2(sine, cosine)` for a sine and cosine with a common factor, to round-off. Edges of a smooth surface bend by less
+/// than 45 degrees: there the series of the arctangent at a quarter of the angle is cheaper than the library call.
 fn angle(sine: f64, cosine: f64) -> f64 {
-    let t = sine / cosine;
-    if cosine > 0.0 && t.abs() < 0.1 {
-        let q = t * t;
-        t * (1.0 - q * (1.0 / 3.0 - q * (1.0 / 5.0 - q * (1.0 / 7.0 - q * (1.0 / 9.0 - q * (1.0 / 11.0 - q * (1.0 / 13.0 - q / 15.0)))))))
-    } else {
-        sine.atan2(cosine)
+    if cosine <= sine.abs() {
+        return sine.atan2(cosine);
     }
+    // tan of half and of a quarter of the angle; the latter is below 0.2, so that the next term is below 1e-17.
+    let half = sine / (cosine + (sine * sine + cosine * cosine).sqrt());
+    let t = half / (1.0 + (1.0 + half * half).sqrt());
+    let q = t * t;
+    let mut series = 1.0 / 23.0;
+    for odd in [21.0, 19.0, 17.0, 15.0, 13.0, 11.0, 9.0, 7.0, 5.0, 3.0, 1.0] {
+        series = 1.0 / odd - q * series;
+    }
+    4.0 * t * series
 }
 
 /// Sum of p0·(p1 × p2) / 6 about the first vertex, which keeps round-off small far from the grid's origin.
@@ -89,9 +94,9 @@ mod tests {
 
     #[test]
     fn the_series_is_the_arctangent() {
-        for k in -1000..=1000 {
-            let t = f64::from(k) * 1.2e-4;
-            assert!((angle(2.0 * t, 2.0) - t.atan()).abs() <= 1e-16 + 1e-15 * t.abs(), "{t}");
+        for k in -1500..=1500 {
+            let t = f64::from(k) * 1e-3;
+            assert!((angle(2.0 * t, 2.0) - t.atan()).abs() <= 1e-15 * t.abs(), "{t}");
         }
         assert_eq!(angle(1.0, 0.0), std::f64::consts::FRAC_PI_2);
         assert_eq!(angle(0.0, 0.0), 0.0);
