@@ -86,26 +86,25 @@ fn demo(a: &Demo) -> Result<ExitCode> {
         }
         let _ = writeln!(text, "{}", overview(&outcome));
     }
-    let folder = a.folder.join(DEMO[0].folder);
-    let _ = write!(text, "{}", what_to_look_at(&folder));
+    text += &what_to_look_at(&a.folder);
     if !a.talk.quiet {
         console::result(&text);
     }
     Ok(code)
 }
 
-/// Where a newcomer goes from the demo's run folder.
+/// Where a newcomer goes from the demo's results.
 fn what_to_look_at(folder: &Path) -> String {
-    let run = folder.display();
     format!(
-        "What to look at\n\
-         \x20 {run}/catalogue.csv   one row an object: place, size, shape, dissipation, alignments\n\
-         \x20 {run}/columns.json    what every column means; also: ropewalk columns\n\
-         \x20 {run}/surfaces/       meshes of the objects, one file a snapshot and family, for any viewer of PLY files\n\
-         \x20 {run}/run.json        levels, statistics of the box, shares, warnings\n\
-         Sort the current family by ohmic_share: a few objects hold more than half of what all of them dissipate. Many are ribbons:\n\
-         classed filament for their length, with a planarity above that of a round tube. The grid is coarse (64^3) and the flags\n\
-         column says so: under_resolved, marginal.\n"
+        "What to look at in {0}:\n\
+         - {0}/mhd/catalogue.csv: one row an object; class, shares of the dissipation, cosines, lamb_sin2 and lorentz_sin2 (2/3 without alignment)\n\
+         - {0}/mhd/run.json: levels, statistics of the box, alignment inside and outside the objects, shares that add up to 1\n\
+         - {0}/mhd/surfaces/*.ply: surface meshes for any viewer; the vertex value object tells objects apart\n\
+         - {0}/hydro: the same for a flow without magnetic field\n\
+         - ropewalk columns: what every column means\n\
+         Sort the current family by ohmic_share: a few objects hold more than half of what all of them dissipate. Many are ribbons, classed\n\
+         filament for their length. The grid is coarse (64^3) and the flags column says so: under_resolved, marginal.\n",
+        folder.display()
     )
 }
 
