@@ -15,7 +15,7 @@ use crate::space::slab::{Batch, Block};
 /// small beside the snapshot.
 const BLOCK_BYTES: usize = 24 << 20;
 
-/// Planes a block holds: what was asked for, else a multiple of the file's natural depth near [`BLOCK_BYTES`].
+/// Planes a block holds: what was asked for, else a multiple of the file's natural depth near 24 MiB.
 pub fn block_planes<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>) -> usize {
     let n = source.grid().n[2];
     if let Some(k) = wanted {

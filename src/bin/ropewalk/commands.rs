@@ -103,7 +103,7 @@ fn what_to_look_at(folder: &Path) -> String {
          - {0}/hydro: the same for a flow without magnetic field\n\
          - ropewalk columns: what every column means\n\
          Sort the current family by ohmic_share: a few objects hold more than half of what all of them dissipate. Many are ribbons, classed\n\
-         filament for their length. The grid is coarse (64^3) and the flags column says so: under_resolved, marginal.\n",
+         filament for their length. The grid is coarse (64^3) and the flags column says so: under_resolved.\n",
         folder.display()
     )
 }
