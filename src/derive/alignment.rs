@@ -6,6 +6,7 @@ use crate::base::real::Real;
 ///
 /// The cross product is formed component by component: for parallel vectors it is zero to round-off squared, which
 /// |a|²|b|² − (a·b)² is not.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
 pub fn pair<T: Real>(a: &[Vec<T>; 3], b: &[Vec<T>; 3], cosine: &mut Vec<T>, squares: Option<(&mut Vec<T>, &mut Vec<T>)>) {
     let n = a[0].len();
     let [ax, ay, az] = [&a[0][..n], &a[1][..n], &a[2][..n]];

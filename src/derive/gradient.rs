@@ -74,8 +74,8 @@ impl<'a, T: Real> At<'a, '_, T> {
 }
 
 impl<T: Real> Gradient<T> {
-    /// All nine derivatives of the vector whose first component is `component`.
-    pub fn row(&mut self, s: &[AxisStencil<T>; 3], block: &Block<'_, T>, component: usize, z: usize, y: usize, ny: usize) {
+    /// The derivatives of the vector whose first component is `component`: all nine, or without `diagonal` the six of the curl.
+    pub fn row(&mut self, s: &[AxisStencil<T>; 3], block: &Block<'_, T>, component: usize, z: usize, y: usize, ny: usize, diagonal: bool) {
         for c in 0..3 {
             let nx = block.plane(component + c, z as isize).len() / ny;
             let at = At { block, component: component + c, z, y, nx, ny };
@@ -83,9 +83,15 @@ impl<T: Real> Gradient<T> {
                 self.d[c][a].resize(nx, T::ZERO);
             }
             let [dx, dy, dz] = &mut self.d[c];
-            s[0].along(at.here(), &mut self.padded, dx);
-            at.along_y(&s[1], &s[1].central, dy);
-            at.along_z(&s[2], &s[2].central, dz);
+            if c != 0 || diagonal {
+                s[0].along(at.here(), &mut self.padded, dx);
+            }
+            if c != 1 || diagonal {
+                at.along_y(&s[1], &s[1].central, dy);
+            }
+            if c != 2 || diagonal {
+                at.along_z(&s[2], &s[2].central, dz);
+            }
         }
     }
 

@@ -2,37 +2,36 @@
 
 use crate::base::real::Real;
 use crate::derive::gradient::Gradient;
-use crate::model::rows::Rows;
 
-/// ω = ∇×u, |ω|², S:S and ∇·u, with S = ½(A + Aᵀ), A_ij = ∂u_i/∂x_j.
-pub fn velocity<T: Real>(g: &Gradient<T>, rows: &mut Rows<T>) {
-    curl(g, &mut rows.w, &mut rows.w2);
-    let n = rows.w2.len();
-    rows.strain2.resize(n, T::ZERO);
-    rows.div_u.resize(n, T::ZERO);
+/// S:S with S = ½(A + Aᵀ), A_ij = ∂u_i/∂x_j.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
+pub fn strain2<T: Real>(g: &Gradient<T>, out: &mut Vec<T>) {
+    let n = g.d[0][0].len();
+    out.resize(n, T::ZERO);
     let d: [[&[T]; 3]; 3] = std::array::from_fn(|c| std::array::from_fn(|a| &g.d[c][a][..n]));
-    let (out, div) = (&mut rows.strain2[..n], &mut rows.div_u[..n]);
+    let out = &mut out[..n];
     let half = T::of(0.5);
     for i in 0..n {
         let (xx, yy, zz) = (d[0][0][i], d[1][1][i], d[2][2][i]);
         let (xy, xz, yz) = (d[0][1][i] + d[1][0][i], d[0][2][i] + d[2][0][i], d[1][2][i] + d[2][1][i]);
         out[i] = (xx * xx + yy * yy + zz * zz) + half * (xy * xy + xz * xz + yz * yz);
-        div[i] = xx + yy + zz;
     }
 }
 
-/// j = ∇×b, |j|² and ∇·b.
-pub fn magnetic<T: Real>(g: &Gradient<T>, rows: &mut Rows<T>) {
-    curl(g, &mut rows.j, &mut rows.j2);
-    let n = rows.j2.len();
-    rows.div_b.resize(n, T::ZERO);
+/// Sum of the diagonal.
+pub fn divergence<T: Real>(g: &Gradient<T>, out: &mut Vec<T>) {
+    let n = g.d[0][0].len();
+    out.resize(n, T::ZERO);
+    let [x, y, z] = [&g.d[0][0][..n], &g.d[1][1][..n], &g.d[2][2][..n]];
+    let out = &mut out[..n];
     for i in 0..n {
-        rows.div_b[i] = g.d[0][0][i] + g.d[1][1][i] + g.d[2][2][i];
+        out[i] = x[i] + y[i] + z[i];
     }
 }
 
 /// Right-handed curl and its square.
-fn curl<T: Real>(g: &Gradient<T>, out: &mut [Vec<T>; 3], square: &mut Vec<T>) {
+#[multiversion::multiversion(targets("x86_64+avx2"))]
+pub fn curl<T: Real>(g: &Gradient<T>, out: &mut [Vec<T>; 3], square: &mut Vec<T>) {
     let n = g.d[0][0].len();
     for o in out.iter_mut() {
         o.resize(n, T::ZERO);

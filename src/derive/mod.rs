@@ -80,9 +80,16 @@ impl<T: Real> Deriver<T> {
     pub fn row(&self, block: &Block<'_, T>, z: usize, y: usize, need: Need, scratch: &mut Scratch<T>) {
         let Scratch { gradient, rows } = scratch;
         let mut component = 0;
+        let strain = need.strain || self.indicators.iter().any(|i| i.needs_strain());
         if self.fields.velocity {
-            gradient.row(&self.stencils, block, component, z, y, self.ny);
-            invariants::velocity(gradient, rows);
+            gradient.row(&self.stencils, block, component, z, y, self.ny, strain || need.divergence);
+            invariants::curl(gradient, &mut rows.w, &mut rows.w2);
+            if strain {
+                invariants::strain2(gradient, &mut rows.strain2);
+            }
+            if need.divergence {
+                invariants::divergence(gradient, &mut rows.div_u);
+            }
             if need.truncation {
                 gradient.divergence_miss(&self.stencils, block, component, z, y, self.ny, &mut rows.div_u_miss);
             }
@@ -95,8 +102,11 @@ impl<T: Real> Deriver<T> {
             component += 3;
         }
         if self.fields.magnetic {
-            gradient.row(&self.stencils, block, component, z, y, self.ny);
-            invariants::magnetic(gradient, rows);
+            gradient.row(&self.stencils, block, component, z, y, self.ny, need.divergence);
+            invariants::curl(gradient, &mut rows.j, &mut rows.j2);
+            if need.divergence {
+                invariants::divergence(gradient, &mut rows.div_b);
+            }
             if need.truncation {
                 gradient.divergence_miss(&self.stencils, block, component, z, y, self.ny, &mut rows.div_b_miss);
             }

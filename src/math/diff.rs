@@ -1,4 +1,7 @@
 //! First derivatives by finite differences: order-8 central weights, one-sided weights of the same order, row kernels.
+//!
+//! Kernels choose the vector width at run time. Width alone changes no bit of a result: lanes are independent and nothing is
+//! contracted to fused operations.
 
 use crate::base::real::Real;
 
@@ -143,6 +146,7 @@ impl<T: Real> AxisStencil<T> {
 }
 
 /// `out = sum_k w[k] (plus[k] - minus[k])`, element by element; exactly antisymmetric under exchange of the sides.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
 pub fn difference<T: Real>(out: &mut [T], minus: [&[T]; HALF], plus: [&[T]; HALF], w: &[T; HALF]) {
     let n = out.len();
     let [m0, m1, m2, m3] = minus.map(|s| &s[..n]);

@@ -114,14 +114,19 @@ impl Isosurface {
         cross(scaled(self.vector(a, b), spacing), scaled(self.vector(a, c), spacing))
     }
 
-    /// Unit outward vertex normals in physical space, the area-weighted mean over the triangles at each vertex.
+    /// Twice the area of every triangle times its outward unit normal, in physical units for the given spacing.
+    pub fn area_vectors(&self, spacing: [f64; 3]) -> Vec<[f64; 3]> {
+        self.triangles.iter().map(|&t| self.area_vector(t, spacing)).collect()
+    }
+
+    /// Unit outward vertex normals in physical space, the area-weighted mean over the triangles at each vertex, from
+    /// [`Isosurface::area_vectors`].
     ///
     /// A vertex whose triangles cancel exactly has the zero vector.
-    pub fn vertex_normals(&self, spacing: [f64; 3]) -> Vec<[f64; 3]> {
+    pub fn vertex_normals(&self, area_vectors: &[[f64; 3]]) -> Vec<[f64; 3]> {
         let mut normals = vec![[0.0; 3]; self.points.len()];
-        for &triangle in &self.triangles {
-            let area = self.area_vector(triangle, spacing);
-            for v in triangle {
+        for (triangle, area) in self.triangles.iter().zip(area_vectors) {
+            for &v in triangle {
                 for axis in 0..3 {
                     normals[v as usize][axis] += area[axis];
                 }

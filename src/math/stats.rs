@@ -37,43 +37,59 @@ impl Scale {
 }
 
 /// Sum of a row in f64, in a fixed order that vectorises.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
 pub fn row_sum<T: Real>(row: &[T]) -> f64 {
-    row_fold(row, |v| v)
+    let mut lanes = [0.0f64; 8];
+    let (chunks, rest) = row.as_chunks::<8>();
+    for c in chunks {
+        for k in 0..8 {
+            lanes[k] += c[k].wide();
+        }
+    }
+    for (k, v) in rest.iter().enumerate() {
+        lanes[k] += v.wide();
+    }
+    folded(lanes)
 }
 
 /// Sum of squares of a row in f64, fixed order.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
 pub fn row_square_sum<T: Real>(row: &[T]) -> f64 {
-    row_fold(row, |v| v * v)
-}
-
-#[inline(always)]
-fn row_fold<T: Real>(row: &[T], f: impl Fn(f64) -> f64) -> f64 {
     let mut lanes = [0.0f64; 8];
-    let mut chunks = row.chunks_exact(8);
-    for c in &mut chunks {
+    let (chunks, rest) = row.as_chunks::<8>();
+    for c in chunks {
         for k in 0..8 {
-            lanes[k] += f(c[k].wide());
+            let v = c[k].wide();
+            lanes[k] += v * v;
         }
     }
-    for (k, v) in chunks.remainder().iter().enumerate() {
-        lanes[k] += f(v.wide());
+    for (k, v) in rest.iter().enumerate() {
+        lanes[k] += v.wide() * v.wide();
     }
+    folded(lanes)
+}
+
+fn folded(lanes: [f64; 8]) -> f64 {
     ((lanes[0] + lanes[4]) + (lanes[2] + lanes[6])) + ((lanes[1] + lanes[5]) + (lanes[3] + lanes[7]))
 }
 
-/// Largest value of a row; `start` where the row is empty.
-pub fn row_max<T: Real>(row: &[T], start: T) -> T {
-    let mut lanes = [start; 8];
-    let mut chunks = row.chunks_exact(8);
-    for c in &mut chunks {
-        for k in 0..8 {
-            lanes[k] = lanes[k].greater(c[k]);
+/// Smallest and largest value of a row; `(start, start)` where the row is empty.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
+pub fn row_range<T: Real>(row: &[T], start: T) -> (T, T) {
+    // Lanes, because a single running minimum is a chain of dependent steps.
+    let (mut low, mut high) = ([start; 16], [start; 16]);
+    let (chunks, rest) = row.as_chunks::<16>();
+    for c in chunks {
+        for k in 0..16 {
+            low[k] = c[k].lesser(low[k]);
+            high[k] = c[k].greater(high[k]);
         }
     }
-    for (k, v) in chunks.remainder().iter().enumerate() {
-        lanes[k] = lanes[k].greater(*v);
+    for (k, v) in rest.iter().enumerate() {
+        low[k] = v.lesser(low[k]);
+        high[k] = v.greater(high[k]);
     }
-    lanes.into_iter().fold(start, T::greater)
+    (low.into_iter().fold(start, T::lesser), high.into_iter().fold(start, T::greater))
 }
 
 /// Scale of the exact cosine sums: a row of up to 2^14 cells fits 64 bits.

@@ -26,7 +26,11 @@ pub struct SurfaceMeasures {
 /// The sum over edges for C is Steiner's formula for polyhedra; on a sphere of R cells the relative errors of V, S and C
 /// are about 0.59, 0.31 and 0.115 / R². Triangles without area have no normal and their edges count as flat.
 pub fn measure(surface: &Isosurface, spacing: [f64; 3]) -> SurfaceMeasures {
-    let normals: Vec<[f64; 3]> = surface.triangles.iter().map(|&t| surface.area_vector(t, spacing)).collect();
+    measure_with(surface, spacing, &surface.area_vectors(spacing))
+}
+
+/// As [`measure`], for a caller that has the [`Isosurface::area_vectors`] of the same spacing at hand.
+pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> SurfaceMeasures {
     let area = normals.iter().map(|&n| 0.5 * dot(n, n).sqrt()).sum();
 
     let (mut edges, mut open_edges, mut nonmanifold_edges) = (0i64, 0, 0);
@@ -41,7 +45,7 @@ pub fn measure(surface: &Isosurface, spacing: [f64; 3]) -> SurfaceMeasures {
                 let along = scaled(surface.vector(lower, upper), spacing);
                 let length = dot(along, along).sqrt();
                 // Both arguments carry the same factor: the areas and the edge length.
-                bending += length * dot(along, cross(n, m)).atan2(length * dot(n, m));
+                bending += length * angle(dot(along, cross(n, m)), length * dot(n, m));
             }
             _ => nonmanifold_edges += 1,
         }
@@ -50,12 +54,29 @@ pub fn measure(surface: &Isosurface, spacing: [f64; 3]) -> SurfaceMeasures {
     let closed = open_edges == 0 && surface.period == [None; 3];
     SurfaceMeasures {
         area,
-        volume: closed.then(|| enclosed(surface, spacing, &normals)),
+        volume: closed.then(|| enclosed(surface, spacing, normals)),
         mean_curvature_integral: 0.5 * bending,
         euler_surface: surface.points.len() as i64 - edges + surface.triangles.len() as i64,
         open_edges,
         nonmanifold_edges,
     }
+}
+
+/// `atan2(sine, cosine)` for a sine and cosine with a common factor, to round-off. Edges of a smooth surface bend by less
+/// than 45 degrees: there the series of the arctangent at a quarter of the angle is cheaper than the library call.
+fn angle(sine: f64, cosine: f64) -> f64 {
+    if cosine <= sine.abs() {
+        return sine.atan2(cosine);
+    }
+    // tan of half and of a quarter of the angle; the latter is below 0.2, so that the next term is below 1e-17.
+    let half = sine / (cosine + (sine * sine + cosine * cosine).sqrt());
+    let t = half / (1.0 + (1.0 + half * half).sqrt());
+    let q = t * t;
+    let mut series = 1.0 / 23.0;
+    for odd in [21.0, 19.0, 17.0, 15.0, 13.0, 11.0, 9.0, 7.0, 5.0, 3.0, 1.0] {
+        series = 1.0 / odd - q * series;
+    }
+    4.0 * t * series
 }
 
 /// Sum of p0·(p1 × p2) / 6 about the first vertex, which keeps round-off small far from the grid's origin.
@@ -65,4 +86,19 @@ fn enclosed(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> f6
         dot(scaled(surface.vector(0, t[0]), spacing), n)
     });
     six.sum::<f64>() / 6.0
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn the_series_is_the_arctangent() {
+        for k in -1500..=1500 {
+            let t = f64::from(k) * 1e-3;
+            assert!((angle(2.0 * t, 2.0) - t.atan()).abs() <= 1e-15 * t.abs(), "{t}");
+        }
+        assert_eq!(angle(1.0, 0.0), std::f64::consts::FRAC_PI_2);
+        assert_eq!(angle(0.0, 0.0), 0.0);
+    }
 }

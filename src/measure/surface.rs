@@ -2,7 +2,7 @@
 
 use crate::base::real::Real;
 use crate::math::isosurface::{Isosurface, isosurface};
-use crate::math::surface::{SurfaceMeasures, measure};
+use crate::math::surface::{SurfaceMeasures, measure_with};
 use crate::measure::patches::Patch;
 use crate::model::request::Side;
 use crate::model::surface::SurfaceMesh;
@@ -23,13 +23,14 @@ pub fn shape<T: Real>(grid: &Grid, patch: &Patch<T>, level: f64, side: Side, id:
     // Patches carry the indicator with the inside up.
     let up = if side == Side::Above { 1.0 } else { -1.0 };
     let surface = isosurface(&patch.shape, patch.field(0), up * level);
-    let measures = measure(&surface, grid.spacing);
-    let mesh = with_mesh.then(|| mesh(grid, patch, &surface, up, id));
+    let area_vectors = surface.area_vectors(grid.spacing);
+    let measures = measure_with(&surface, grid.spacing, &area_vectors);
+    let mesh = with_mesh.then(|| mesh(grid, patch, &surface, &area_vectors, up, id));
     Shaped { object: patch.object, measures, mesh }
 }
 
-fn mesh<T: Real>(grid: &Grid, patch: &Patch<T>, surface: &Isosurface, up: f64, id: u64) -> SurfaceMesh {
-    let normals = surface.vertex_normals(grid.spacing);
+fn mesh<T: Real>(grid: &Grid, patch: &Patch<T>, surface: &Isosurface, area_vectors: &[[f64; 3]], up: f64, id: u64) -> SurfaceMesh {
+    let normals = surface.vertex_normals(area_vectors);
     let mut values: Vec<Vec<f32>> = vec![surface.interpolate(patch.field(0)).iter().map(|&v| (up * v) as f32).collect()];
     let vector = |first: usize| -> [Vec<f64>; 3] { std::array::from_fn(|c| surface.interpolate(patch.field(first + c))) };
     let fields = patch.fields;

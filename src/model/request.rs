@@ -84,6 +84,11 @@ impl Indicator {
         }
     }
 
+    /// Whether it is made of S:S.
+    pub fn needs_strain(self) -> bool {
+        matches!(self, Indicator::Q | Indicator::Strain | Indicator::DissipationViscous)
+    }
+
     /// Whether it depends on the frame in which velocity is measured.
     pub fn depends_on_frame(self) -> bool {
         use Indicator as I;

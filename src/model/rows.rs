@@ -3,6 +3,10 @@
 /// What has to be derived for a pass.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
 pub struct Need {
+    /// S:S of the velocity gradient; an indicator made of it is derived in any case.
+    pub strain: bool,
+    /// The divergences.
+    pub divergence: bool,
     /// The difference between order 6 and 8 in the divergence, a measure of the truncation error.
     pub truncation: bool,
     /// Cosines and squared cross products.

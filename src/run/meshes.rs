@@ -17,6 +17,8 @@ pub struct MeshFiles<'a> {
     families: Vec<Family>,
     values: Vec<&'static str>,
     each: bool,
+    /// Every file begun, helper files included.
+    begun: Vec<String>,
     together: Vec<Option<PlyWriter<BufWriter<File>, File>>>,
 }
 
@@ -29,7 +31,15 @@ impl<'a> MeshFiles<'a> {
         folder.subfolder("surfaces")?;
         let together = families.iter().map(|_| None).collect();
         let values = SurfaceMesh::value_names(fields);
-        Ok(MeshFiles { folder, snapshot: snapshot.to_string(), families, values, each: surfaces == Surfaces::Each, together })
+        Ok(MeshFiles {
+            folder,
+            snapshot: snapshot.to_string(),
+            families,
+            values,
+            each: surfaces == Surfaces::Each,
+            begun: Vec::new(),
+            together,
+        })
     }
 
     fn name(&self, family: usize, id: Option<u64>) -> String {
@@ -37,9 +47,10 @@ impl<'a> MeshFiles<'a> {
         format!("surfaces/{}_{}{end}.ply", self.snapshot, self.families[family].name)
     }
 
-    fn open(&self, name: &str, family: usize) -> Result<PlyWriter<BufWriter<File>, File>> {
+    fn open(&mut self, name: &str, family: usize) -> Result<PlyWriter<BufWriter<File>, File>> {
         let out = BufWriter::with_capacity(1 << 16, self.folder.file(name)?);
         let faces = self.folder.file(&format!("{name}{FACES}"))?;
+        self.begun.extend([name.to_string(), format!("{name}{FACES}")]);
         let comments = vec![
             format!("ropewalk {}", env!("CARGO_PKG_VERSION")),
             format!("snapshot {}", self.snapshot),
@@ -73,13 +84,9 @@ impl<'a> MeshFiles<'a> {
 
     /// Removes what was begun, after a failure.
     pub fn abandon(self) {
-        for (family, begun) in self.together.iter().enumerate() {
-            if begun.is_some() {
-                let name = self.name(family, None);
-                // The failure that led here is what gets reported.
-                let _ = self.folder.remove(&name);
-                let _ = self.folder.remove(&format!("{name}{FACES}"));
-            }
+        for name in &self.begun {
+            // The failure that led here is what gets reported; helper files of finished meshes are gone already.
+            let _ = self.folder.remove(name);
         }
     }
 }

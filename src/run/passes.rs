@@ -86,7 +86,13 @@ impl<T: Real> Pass<'_, T> {
                         let mut part = moments::empty(families);
                         for y in rows_y.clone() {
                             let sampled = y % moments::SAMPLE_ROWS == 0;
-                            deriver.row(block, z, y, Need { truncation: sampled, alignment: false }, &mut scratch);
+                            deriver.row(
+                                block,
+                                z,
+                                y,
+                                Need { strain: true, divergence: true, truncation: sampled, alignment: false },
+                                &mut scratch,
+                            );
                             moments::add_row(&mut part, &scratch.rows, sampled);
                             for (q, row) in counts.iter_mut().zip(&scratch.rows.indicators) {
                                 if let Some(q) = q {
@@ -148,7 +154,7 @@ impl<T: Real> Pass<'_, T> {
                         .map(|z| {
                             let mut part = Alignment::default();
                             for y in rows_y.clone() {
-                                deriver.row(block, z, y, Need { truncation: false, alignment: true }, &mut scratch);
+                                deriver.row(block, z, y, Need { strain: true, alignment: true, ..Need::default() }, &mut scratch);
                                 box_alignment::add_row(&mut part, &scratch.rows);
                                 for sweep in &mut sweeps {
                                     sweep.add_row(&grid, &scratch.rows, y, z);

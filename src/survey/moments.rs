@@ -1,7 +1,7 @@
 //! Sums of gradient quantities and indicators over the box, added up row by row, tile by tile, plane by plane in a fixed order.
 
 use crate::base::real::Real;
-use crate::math::stats::{row_max, row_square_sum, row_sum};
+use crate::math::stats::{row_range, row_square_sum, row_sum};
 use crate::model::request::Family;
 use crate::model::rows::Rows;
 use crate::model::statistics::{GradientStats, IndicatorStats, Survey};
@@ -24,8 +24,9 @@ pub fn add_row<T: Real>(survey: &mut Survey, rows: &Rows<T>, sampled: bool) {
         cells = row.len();
         s.sum += row_sum(row);
         s.square_sum += row_square_sum(row);
-        s.max = s.max.max(row_max(row, row[0]).wide());
-        s.min = s.min.min(row.iter().fold(row[0], |a, &b| a.lesser(b)).wide());
+        let (low, high) = row_range(row, row[0]);
+        s.min = s.min.min(low.wide());
+        s.max = s.max.max(high.wide());
     }
     survey.cells += cells as u64;
 }
@@ -35,10 +36,10 @@ fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, 
         return;
     }
     g.curl2 += row_sum(curl2);
-    g.curl2_max = g.curl2_max.max(row_max(curl2, T::ZERO).wide());
+    g.curl2_max = g.curl2_max.max(row_range(curl2, T::ZERO).1.wide());
     if let Some(s) = strain2 {
         g.strain2 += row_sum(s);
-        g.strain2_max = g.strain2_max.max(row_max(s, T::ZERO).wide());
+        g.strain2_max = g.strain2_max.max(row_range(s, T::ZERO).1.wide());
     }
     let div2 = row_square_sum(div);
     g.div2 += div2;

@@ -1,7 +1,7 @@
 //! Raw planes: hash, NaN and infinite cells, sums and extremes of every component.
 
 use crate::base::real::Real;
-use crate::math::stats::{row_max, row_square_sum, row_sum};
+use crate::math::stats::{row_range, row_square_sum, row_sum};
 use crate::model::statistics::{ComponentStats, Scan};
 use crate::space::grid::Grid;
 
@@ -36,16 +36,16 @@ pub fn plane<T: Real>(grid: &Grid, z: usize, components: &[&[T]]) -> PlaneScan {
             s.square_sum += row_square_sum(row);
             // A NaN or infinite value makes the row's sum so; a finite sum can only hide an overflow of f64.
             if !sum.is_finite() {
-                for (x, v) in row.iter().enumerate().filter(|(_, v)| !v.is_finite()) {
-                    let _ = v;
+                for x in (0..row.len()).filter(|&x| !row[x].is_finite()) {
                     out.not_finite += 1;
                     if out.first.len() < LOCATED {
                         out.first.push((c, [x, y, z]));
                     }
                 }
             }
-            s.max = s.max.max(row_max(row, row[0]).wide());
-            s.min = s.min.min(row.iter().fold(row[0], |a, &b| a.lesser(b)).wide());
+            let (low, high) = row_range(row, row[0]);
+            s.min = s.min.min(low.wide());
+            s.max = s.max.max(high.wide());
         }
         out.components.push(s);
     }

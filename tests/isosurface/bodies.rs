@@ -238,7 +238,7 @@ fn vertices_carry_fields_and_normals() {
         assert!((distance - r).abs() < 1.3 * 1.1 * 1.1 / (8.0 * r), "{v:?}");
     }
     // Outward, towards the low side; within an angle of order cell / R of the exact normal.
-    for (normal, p) in surface.vertex_normals(spacing).iter().zip(&surface.points) {
+    for (normal, p) in surface.vertex_normals(&surface.area_vectors(spacing)).iter().zip(&surface.points) {
         let exact = minus(std::array::from_fn(|a| p[a] * spacing[a]), centre).map(|c| c / r);
         assert!((norm(*normal) - 1.0).abs() < 1e-12);
         assert!(dot(*normal, exact) > 0.99, "{normal:?} {exact:?}");

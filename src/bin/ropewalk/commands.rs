@@ -6,7 +6,7 @@ use std::process::ExitCode;
 
 use ropewalk::base::error::{Error, Result};
 use ropewalk::model::columns::{COLUMNS, Col, Row, Value};
-use ropewalk::model::request::Request;
+use ropewalk::model::request::{Family, Request};
 use ropewalk::read::InputSpec;
 use ropewalk::run::analysis::Execution;
 use ropewalk::run::catalogue::{Outcome, RunConfig, catalogue};
@@ -31,25 +31,41 @@ pub fn run(args: &Args) -> Result<ExitCode> {
     }
 }
 
-/// Files of the demo run, and the coefficients they were computed with.
-const DEMO_FILES: [&str; 4] = ["mhd_0001.h5", "mhd_0002.h5", "mhd_0003.h5", "hydro_0001.h5"];
+/// The two parts of the demo: name, files, viscosity, resistivity.
+const DEMO: [(&str, &[&str], f64, Option<f64>); 2] =
+    [("mhd", &["mhd_0001.h5", "mhd_0002.h5", "mhd_0003.h5"], 0.019, Some(0.019)), ("hydro", &["hydro_0001.h5"], 0.018, None)];
 
 fn demo(a: &Demo) -> Result<ExitCode> {
     let data = demo_data(a.data.as_deref())?;
-    let run = |files: &[&str], folder: PathBuf, viscosity: f64, resistivity: Option<f64>| {
+    let families = |magnetic: bool| {
+        let mut specs = vec!["vorticity: vorticity > 2.5 rms"];
+        if magnetic {
+            specs.push("current: current > 2.5 rms");
+        }
+        specs.into_iter().map(Family::parse).collect::<Result<Vec<_>>>()
+    };
+    for (name, files, viscosity, resistivity) in DEMO {
         let config = RunConfig {
             snapshots: files.iter().map(|f| data.join(f)).collect(),
             input: InputSpec { lengths: Some([std::f64::consts::TAU; 3]), ..InputSpec::default() },
-            request: Request { viscosity: Some(viscosity), resistivity, ..Request::default() },
+            request: Request { families: families(resistivity.is_some())?, viscosity: Some(viscosity), resistivity, ..Request::default() },
             execution: Execution::default(),
             threads: 0,
-            output: folder,
+            output: a.folder.join(name),
             replace: a.replace,
         };
-        catalogue(&config, &Console::new(a.talk))
-    };
-    let outcome = run(&DEMO_FILES, a.folder.clone(), 0.01, Some(0.01))?;
-    console::result(&overview(&outcome));
+        let outcome = catalogue(&config, &Console::new(a.talk))?;
+        console::result(&overview(&outcome));
+    }
+    console::result(&format!(
+        "\nWhat to look at in {0}:\n\
+         - {0}/mhd/catalogue.csv: one row an object; class, dissipation shares, cosines, lamb_sin2 and lorentz_sin2 (2/3 without alignment)\n\
+         - {0}/mhd/run.json: levels, statistics of the box, alignment inside and outside the objects, shares that add up to 1\n\
+         - {0}/mhd/surfaces/*.ply: surface meshes for any viewer; the vertex value object tells objects apart\n\
+         - {0}/hydro: the same for a flow without magnetic field\n\
+         - ropewalk columns: what every column means\n",
+        a.folder.display()
+    ));
     Ok(ExitCode::SUCCESS)
 }
 
@@ -57,10 +73,10 @@ fn demo(a: &Demo) -> Result<ExitCode> {
 fn demo_data(named: Option<&Path>) -> Result<PathBuf> {
     let built_from = Path::new(env!("CARGO_MANIFEST_DIR")).join("demo-data");
     let places: Vec<PathBuf> = named.map_or_else(|| vec![PathBuf::from("demo-data"), built_from], |p| vec![p.to_path_buf()]);
-    places.iter().find(|p| p.join(DEMO_FILES[0]).is_file()).cloned().ok_or_else(|| {
+    places.iter().find(|p| p.join(DEMO[0].1[0]).is_file()).cloned().ok_or_else(|| {
         Error::input("cannot find the demo data")
             .at(&places[0])
-            .expected(DEMO_FILES[0])
+            .expected(DEMO[0].1[0])
             .found("no such file")
             .hint("run it in the source tree, or name the folder with --data DIR")
     })
