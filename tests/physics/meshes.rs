@@ -43,22 +43,24 @@ fn check(o: &Outcome, k: usize, row: &Row, m: &SurfaceMesh) {
     let wraps = !text(row, Col::Wraps).is_empty();
     let cut = !text(row, Col::OpenFaces).is_empty();
     let level = o.family(k).level;
-    let single = 4e-7 * level;
+    let range = &o.analysis.survey.indicators[k];
+    let slack = 1e-4 * (range.max - range.min);
     assert_eq!([m.normals.len(), m.values[0].len()], [m.positions.len(); 2]);
     assert_eq!(m.values.len(), SurfaceMesh::value_names(BOTH).len());
     assert!(m.normals.iter().all(|n| (norm(n.map(f64::from)) - 1.0).abs() < 1e-6), "unit normals");
-    // Interpolated back, the indicator is the level; at centre vertices it is a mean of such values.
-    assert!(m.values[0].iter().all(|&v| (f64::from(v) - level).abs() < single), "indicator at the vertices");
+    // Interpolated back, the indicator is the level: to 1e-4 of the step across the edge, where a vertex keeps clear of a sample.
+    assert!(m.values[0].iter().all(|&v| (f64::from(v) - level).abs() < slack), "indicator at the vertices");
     for cosines in &m.values[2..] {
         assert!(cosines.iter().all(|c| c.abs() <= 1.0 + 1e-6), "cosines");
     }
     // Longest edge inside one cube of cells, and no triangle faces away from the normals of all its corners.
     let diagonal = norm(grid.spacing);
-    let (mut area, mut volume, mut against) = (0.0, 0.0, 0.0);
+    let (mut area, mut volume, mut against, mut sides) = (0.0, 0.0, 0.0, 0.0);
     let origin = m.positions[0].map(f64::from);
     for &t in &m.triangles {
         let [p, q, r] = corners(m, t);
         for side in [minus(q, p), minus(r, q), minus(p, r)] {
+            sides += norm(side);
             assert!(norm(side) < diagonal * (1.0 + 1e-5), "edge of {} in cells of diagonal {diagonal}", norm(side));
         }
         let n = cross(minus(q, p), minus(r, p));
@@ -83,9 +85,11 @@ fn check(o: &Outcome, k: usize, row: &Row, m: &SurfaceMesh) {
     }
     assert_eq!(rim, 0, "closed");
     let (s, t) = (number(row, Col::SurfaceArea), number(row, Col::ShapefinderThickness));
-    assert!((area / s - 1.0).abs() < 1e-5, "area {area} {s}");
+    // Single-precision positions below 16 are off by up to 4.8e-7 along each axis.
+    let off = 3f64.sqrt() * 4.8e-7;
+    assert!((area - s).abs() < off * sides, "area {area} {s}");
     // T = 3V/S holds the enclosed volume; outward normals make it positive.
-    assert!((volume / (t * s / 3.0) - 1.0).abs() < 1e-4, "volume {volume} {}", t * s / 3.0);
+    assert!((volume - t * s / 3.0).abs() < off * area && volume > 0.0, "volume {volume} {}", t * s / 3.0);
     // Closed surfaces: V − E + F with 2E = 3F is twice the body's Euler number.
     let euler = m.positions.len() as i64 - m.triangles.len() as i64 / 2;
     assert_eq!(row.get(Col::Euler), &Value::Integer(euler / 2));

@@ -10,6 +10,7 @@ use ropewalk::base::par::Pool;
 use ropewalk::export::csv;
 use ropewalk::export::ply::PlyWriter;
 use ropewalk::model::columns::Col;
+use ropewalk::model::object::Sum;
 use ropewalk::model::request::{Family, Request};
 use ropewalk::model::source::AnySource;
 use ropewalk::model::surface::SurfaceMesh;
@@ -18,15 +19,28 @@ use ropewalk::run::analysis::Execution;
 use ropewalk::space::grid::Grid;
 use ropewalk::synth::random::solenoidal;
 
+const SUMMED: [Sum; 7] =
+    [Sum::Indicator, Sum::Strain2, Sum::Current2, Sum::Lamb2, Sum::Speed2Vorticity2, Sum::Lorentz2, Sum::Current2Field2];
 const THREADS: [usize; 4] = [1, 2, 3, 8];
 const BLOCKS: [Option<usize>; 7] = [None, Some(1), Some(2), Some(3), Some(5), Some(7), Some(16)];
 
 /// Everything a run yields, as bytes. Numbers are written so that different ones differ.
 fn bytes(o: &Outcome) -> Vec<u8> {
     let a = &o.analysis;
-    let mut all = format!("{:?} {:?} {:?} {:?} {:?} {:?}\n", a.scan, a.frame, a.survey, a.divergence, a.kolmogorov_length, a.alignment);
+    let s = &a.survey;
+    let mut all = format!("{:?} {:?} {} {:?} {:?}\n", a.scan, a.frame, s.cells, s.velocity, s.magnetic);
+    writeln!(all, "{:?} {:?} {:?}", a.divergence, a.kolmogorov_length, a.alignment).unwrap();
+    for i in &s.indicators {
+        // Their counts for levels by volume are compared by the levels read from them.
+        writeln!(all, "{:?} {:?} {:?} {:?}", i.sum, i.square_sum, i.min, i.max).unwrap();
+    }
     for f in &a.families {
-        writeln!(all, "{:?} {:?} {:?} {:?} {:?} {:?}", f.level, f.volume_fraction, f.listed, f.dropped, f.inside, f.outside).unwrap();
+        writeln!(all, "{:?} {:?} {:?} {:?} {:?}", f.level, f.volume_fraction, f.dropped.0, f.inside, f.outside).unwrap();
+        for tally in [&f.listed, &f.dropped.1] {
+            // Its coordinates and peak have no meaning.
+            let sums = SUMMED.map(|s| tally.sum(s, &f.scales));
+            writeln!(all, "{} {sums:?} {} {:?}", tally.moments.count, tally.open_faces, tally.cosines).unwrap();
+        }
         f.rows.iter().for_each(|r| csv::push_row(&mut all, r));
     }
     let mut all = all.into_bytes();
@@ -60,10 +74,6 @@ fn same(source: impl Fn() -> AnySource + Sync, request: &Request, combinations: 
     for (threads, blocks) in combinations {
         let got = one(threads, blocks);
         let at = got.iter().zip(&reference).position(|(a, b)| a != b);
-        if let Some(at) = at {
-            let lo = at.saturating_sub(300);
-            eprintln!("A {}\n\nB {}", String::from_utf8_lossy(&got[lo..at + 60]), String::from_utf8_lossy(&reference[lo..at + 60]));
-        }
         assert!(at.is_none() && got.len() == reference.len(), "{threads} threads, blocks {blocks:?}: differs at byte {at:?}");
     }
 }
