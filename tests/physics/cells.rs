@@ -115,11 +115,11 @@ fn nine_samples_are_enough() {
     assert!(e.to_string().contains("axis y") && e.to_string().contains("found 8"), "{e}");
 }
 
-/// Objects of one, two and three cells (checks.md §10 asks for them): extents are the sides of their cells, the surface is closed.
+/// Objects of one, two and three cells (flat and single cells break hull-based measures): extents are the sides of their cells, the surface is closed.
 #[test]
 fn objects_of_a_few_cells() {
     let spacing = [0.1, 0.2, 0.3];
-    // Cells, and the extents along x, y, z of a brick where they make one (methods.md §5: √12 m with each cell a solid box).
+    // Cells, and the extents along x, y, z of a brick where they make one (second moment l²/12 of a uniform rod, each cell a solid box).
     // Cells that share no more than a corner are one object (26 neighbours) of two closed surfaces: Euler number 2.
     type Case = (&'static [[usize; 3]], Option<[f64; 3]>, i64);
     let cases: [Case; 7] = [

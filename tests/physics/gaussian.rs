@@ -36,8 +36,8 @@ fn expect(values: &[f64], want: f64, precision: f64, what: &str) {
     assert!(e < precision * want.abs(), "{what}: too noisy to tell: {e} of {want}");
 }
 
-/// checks.md §1 (χ² with 3 and 5 degrees of freedom, tails): volume with |ω| > τω′ and the enstrophy it holds; §3: the same for j.
-/// §4: cosines of independent isotropic vectors are uniform: ⟨|cos|⟩ = 1/2, P(|cos| > 0.9) = 0.1, and |u×ω|² is 2/3.
+/// Tails of the χ² distribution, in any statistics reference: |ω| > τω′ fills P(χ²₃ > 3τ²) of the volume and holds P(χ²₅ > 3τ²) of the
+/// enstrophy, and the same for j. Cosines of independent isotropic vectors are uniform: ⟨|cos|⟩ = 1/2, P(|cos| > 0.9) = 0.1, and |u×ω|² is 2/3.
 #[test]
 fn thresholds_and_cosines_of_gaussian_noise() {
     let table = [(1.0, 0.3916, 0.7000), (1.5, 0.0803, 0.2399), (2.0, 0.00738, 0.0348)];
@@ -87,7 +87,8 @@ fn thresholds_and_cosines_of_gaussian_noise() {
     }
 }
 
-/// methods.md §8: jointly Gaussian isotropic u and ω of relative helicity ρ have ⟨|u×ω|²⟩ = ⅔(1 − ρ²)⟨u²⟩⟨ω²⟩.
+/// Jointly Gaussian isotropic u and ω of relative helicity ρ have ⟨|u×ω|²⟩ = ⅔(1 − ρ²)⟨u²⟩⟨ω²⟩: Wick's theorem on ⟨u²ω² − (u·ω)²⟩
+/// with ⟨u_i ω_j⟩ = ρ δ_ij (⟨u²⟩⟨ω²⟩)^½/3.
 #[test]
 fn helicity_depletes_the_lamb_vector() {
     for (helicity, precision) in [(0.5, 0.006), (0.9, 0.03)] {

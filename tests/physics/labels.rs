@@ -79,7 +79,7 @@ fn components(grid: &Grid, mask: &[bool], connectivity: Connectivity) -> Vec<Vec
     out
 }
 
-/// Axes along which a component closes on itself: some cell is reached in two different images of the box (methods.md §4).
+/// Axes along which a component closes on itself: some cell is reached in two different images of the box.
 fn spans(grid: &Grid, mask: &[bool], connectivity: Connectivity, start: usize) -> [bool; 3] {
     let mut image: HashMap<usize, [i64; 3]> = HashMap::from([(start, [0; 3])]);
     let mut queue = VecDeque::from([start]);

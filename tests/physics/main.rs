@@ -1,5 +1,6 @@
 //! Whole analyses of fields whose answer is known: exact flows, bodies, random fields, and the same answer however it is computed.
 
+mod bodies;
 mod cells;
 mod common;
 mod ellipsoids;

@@ -22,10 +22,10 @@ fn spread(s: &IndicatorStats, value: f64) -> f64 {
     (s.min - value).abs().max((s.max - value).abs())
 }
 
-/// Round-off of a first derivative: the one-sided weights at the face itself (multiples of 1/h) have magnitudes that sum to 64.
+/// Round-off of a first derivative: the one-sided weights at the face itself (multiples of 1/h) have magnitudes that sum to 78.
 fn round_off<T: Precision>() -> f64 {
     let speed = RATE * 1.3;
-    64.0 * T::EPSILON * speed / 0.05
+    78.0 * T::EPSILON * speed / 0.05
 }
 
 fn rotation<T: Precision>() {
@@ -35,7 +35,7 @@ fn rotation<T: Precision>() {
         let families = ["w: vorticity > 1.7", "q: q > 1", "s: strain > 0.5"];
         let o = run(sampled::<T>(open_box(), crate::common::VELOCITY, flow), &request(&families));
         let s = &o.analysis.survey.indicators;
-        // methods.md §3, solid rotation: |ω| = 2Ω, Q = Ω², S = 0, in every cell up to the open faces.
+        // Solid rotation: |ω| = 2Ω, Q = Ω², S = 0, in every cell up to the open faces.
         assert!(spread(&s[0], 2.0 * RATE) < e, "{} {}", s[0].min, s[0].max);
         assert!(spread(&s[1], RATE * RATE) < 2.0 * RATE * e, "{} {}", s[1].min, s[1].max);
         assert!(s[2].max < e, "{}", s[2].max);
@@ -64,7 +64,7 @@ fn plane_shear<T: Precision>() {
         let families = ["w: vorticity > 1", "q: q > 1", "s: strain > 1"];
         let o = run(sampled::<T>(open_box(), crate::common::VELOCITY, flow), &request(&families));
         let s = &o.analysis.survey.indicators;
-        // methods.md §3, plane shear: |ω| = γ, S:S = γ²/2, Q = 0: a |ω| threshold accepts it, Q does not.
+        // Plane shear: |ω| = γ, S:S = γ²/2, Q = 0: a |ω| threshold accepts it, Q does not.
         assert!(spread(&s[0], RATE) < e);
         assert!(spread(&s[1], 0.0) < RATE * e);
         assert!(spread(&s[2], RATE / 2f64.sqrt()) < e);
