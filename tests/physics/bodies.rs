@@ -57,7 +57,7 @@ fn bodies() -> [Body; 3] {
     ]
 }
 
-/// |b| = 1/(1 + d/r): above 1/2 inside the body, nearly linear at its surface.
+/// |b| = 2 − d/r, at least 0: above 1 inside the body, linear in the distance across its surface.
 fn analysed<T: Precision>(body: &Body, h: f64, periodic: bool) -> Outcome {
     let spacing = [h, 0.9 * h, 1.1 * h];
     let n = std::array::from_fn(|a| (body.size[a] / spacing[a]).round() as usize);
@@ -71,9 +71,9 @@ fn analysed<T: Precision>(body: &Body, h: f64, periodic: bool) -> Outcome {
             let d = p[a] - centre[a];
             centre[a] + d - if periodic { grid.length(a) * (d / grid.length(a)).round() } else { 0.0 }
         });
-        1.0 / (1.0 + (body.distance)(place.local(image)) / body.radius)
+        (2.0 - (body.distance)(place.local(image)) / body.radius).max(0.0)
     };
-    run(sampled::<T>(grid, MAGNETIC, |p| [0.0, value(p), 0.0]), &request(&["body: field > 0.5"]))
+    run(sampled::<T>(grid, MAGNETIC, |p| [0.0, value(p), 0.0]), &request(&["body: field > 1"]))
 }
 
 /// V (from T = 3V/S), S, C.
