@@ -133,5 +133,15 @@ fn volume_levels_hit_the_fraction() {
                 if family == k { sorted.iter().filter(|&&v| v > level).count() } else { sorted.iter().filter(|&&v| v < level).count() };
             assert_eq!(got.volume_fraction, beyond as f64 / n as f64, "{}", got.family);
         }
+    } // Levels of either sign.
+    let u = velocity(78, 0.0);
+    let mut sorted: Vec<f64> = (0..n).map(|i| u[0][i] * b[0][i] + u[1][i] * b[1][i] + u[2][i] * b[2][i]).collect();
+    sorted.sort_unstable_by(f64::total_cmp);
+    let both: Vec<Vec<f64>> = u.into_iter().chain(b).collect();
+    let families = ["x: cross_helicity < 0.05 volume", "y: cross_helicity > 0.8 volume"];
+    let o = run(stored::<f64>(grid(), BOTH, &both), &request(&families));
+    for (k, rank) in [0.05, 0.2].into_iter().enumerate() {
+        let exact = sorted[(rank * n as f64) as usize];
+        assert!(exact < 0.0 && (o.family(k).level / exact - 1.0).abs() < 2.5e-4, "{} {exact}", o.family(k).level);
     }
 }
