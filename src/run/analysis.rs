@@ -15,7 +15,7 @@ use crate::model::source::{AnySource, Fields, MemorySource, PlaneSource};
 use crate::model::statistics::{Alignment, Scan, Survey};
 use crate::model::surface::SurfaceSink;
 use crate::run::passes::{Pass, ShapePlan};
-use crate::run::stream::block_planes;
+use crate::run::stream::{Buffers, block_planes};
 use crate::space::grid::Grid;
 use crate::survey::levels::{self, Divergence};
 
@@ -108,7 +108,7 @@ pub fn analyse(
     request: &Request,
     execution: &Execution,
     observe: &dyn Observe,
-    sink: &mut dyn SurfaceSink,
+    sink: &mut (dyn SurfaceSink + Send),
 ) -> Result<Analysis> {
     match source {
         AnySource::F32(s) => typed(s, snapshot, request, execution, observe, sink),
@@ -122,7 +122,7 @@ fn typed<T: Real>(
     request: &Request,
     execution: &Execution,
     observe: &dyn Observe,
-    sink: &mut dyn SurfaceSink,
+    sink: &mut (dyn SurfaceSink + Send),
 ) -> Result<Analysis> {
     let grid = *source.grid();
     let fields = source.fields();
@@ -141,7 +141,7 @@ fn typed<T: Real>(
     if source.is_costly() && bytes <= execution.keep_bytes {
         source = Box::new(kept(&mut *source, observe)?);
     }
-    let mut pass = Pass { source: &mut *source, thickness, observe };
+    let mut pass = Pass { source: &mut *source, thickness, buffers: Buffers::default(), observe };
     let deriver = |frame| Deriver::<T>::new(&grid, fields, &families, frame, request.viscosity, request.resistivity);
 
     let moving = request.frame == Frame::Box && families.iter().any(|f| f.indicator.depends_on_frame());

@@ -17,9 +17,10 @@ use crate::model::request::{Family, Level};
 use crate::model::rows::Need;
 use crate::model::source::{Fields, PlaneSource};
 use crate::model::statistics::{Alignment, Scan, Survey};
-use crate::model::surface::SurfaceSink;
-use crate::run::stream::blocks;
+use crate::model::surface::{SurfaceMesh, SurfaceSink};
+use crate::run::stream::{Buffers, blocks};
 use crate::space::grid::Grid;
+use crate::space::slab::Block;
 use crate::survey::scan::{self, ScanSum};
 use crate::survey::{box_alignment, moments};
 
@@ -29,6 +30,8 @@ pub struct Pass<'a, T> {
     pub source: &'a mut dyn PlaneSource<T>,
     /// Planes a block.
     pub thickness: usize,
+    /// Buffers shared by the passes.
+    pub buffers: Buffers<T>,
     /// Who watches.
     pub observe: &'a dyn Observe,
 }
@@ -63,7 +66,7 @@ impl<T: Real> Pass<'_, T> {
         let mut sound = true;
         let halo = deriver.map_or(0, Deriver::halo);
         let reach = |z: Range<usize>| deriver.map_or((z.start as isize, z.end as isize), |d| d.reach(z));
-        blocks(self.source, self.thickness, halo, reach, self.observe, |block| {
+        blocks(self.source, self.thickness, halo, reach, &self.buffers, self.observe, |block| {
             if with_scan {
                 let planes = par::map_range(block.z.len(), |k| {
                     let z = block.z.start + k;
@@ -142,6 +145,7 @@ impl<T: Real> Pass<'_, T> {
             self.thickness,
             deriver.halo(),
             |z| deriver.reach(z),
+            &self.buffers,
             self.observe,
             |block| {
                 let parts = par::map(&tiles, |_, rows_y| {
@@ -196,7 +200,7 @@ impl<T: Real> Pass<'_, T> {
         criteria: &[Criterion],
         found: &mut [Detected],
         plan: &ShapePlan,
-        sink: &mut dyn SurfaceSink,
+        sink: &mut (dyn SurfaceSink + Send),
     ) -> Result<Vec<Vec<Option<Shaped>>>> {
         let grid = *self.source.grid();
         let fields = if plan.mesh_cells.is_some() { self.source.fields() } else { Fields { velocity: false, magnetic: false } };
@@ -207,51 +211,77 @@ impl<T: Real> Pass<'_, T> {
             .zip(found.iter())
             .map(|(c, f)| Patches::new(grid, c.family, c.side, fields, &f.objects, plan.max_cells))
             .collect();
+        let mut pending = Vec::new();
         let mut out: Vec<Vec<Option<Shaped>>> = found.iter().map(|f| f.objects.iter().map(|_| None).collect()).collect();
         blocks(
             self.source,
             self.thickness,
             deriver.halo(),
             |z| deriver.reach(z),
+            &self.buffers,
             self.observe,
             |block| {
-                for (p, f) in patches.iter_mut().zip(found.iter_mut()) {
-                    p.begin_block(block.z.clone(), &tiles, &mut f.objects);
-                }
-                par::map_range(tiles.len(), |t| {
-                    let mut scratch = Scratch::default();
-                    let mut wanted: Vec<(usize, usize)> = patches.iter().flat_map(|p| p.wanted_rows(t)).collect();
-                    wanted.sort_unstable();
-                    wanted.dedup();
-                    for (z, y) in wanted {
-                        deriver.row(block, z, y, Need::default(), &mut scratch);
-                        for p in &patches {
-                            p.deliver(t, z, y, &scratch.rows);
-                        }
-                    }
-                });
-                for (k, (p, f)) in patches.iter_mut().zip(found.iter()).enumerate() {
-                    let done = p.end_block(block.z.end);
-                    let Criterion { side, level, .. } = criteria[k];
-                    let shaped = par::map_owned(done, |_, patch| {
-                        let object = &f.objects[patch.object];
-                        let with_mesh = plan.mesh_cells.is_some_and(|least| object.tally.moments.count >= least);
-                        shape(&grid, &patch, level, side, object.id, with_mesh)
-                    });
-                    let mut meshes = Vec::new();
-                    for mut s in shaped {
-                        meshes.extend(s.mesh.take());
-                        let place = s.object;
-                        out[k][place] = Some(s);
-                    }
-                    sink.put(k, meshes)?;
-                }
-                Ok(())
+                // The meshes of the block before are written while this one is worked on.
+                let waiting = std::mem::take(&mut pending);
+                let (written, meshes) = par::join(
+                    || waiting.into_iter().try_for_each(|(k, meshes)| sink.put(k, meshes)),
+                    || shape_block(&grid, deriver, criteria, &tiles, block, &mut patches, found, plan, &mut out),
+                );
+                pending = meshes;
+                written
             },
         )?;
+        pending.into_iter().try_for_each(|(k, meshes)| sink.put(k, meshes))?;
         self.observe.done();
         Ok(out)
     }
+}
+
+/// Delivers one block to the patches and measures those that are complete; returns their meshes, family by family.
+fn shape_block<T: Real>(
+    grid: &Grid,
+    deriver: &Deriver<T>,
+    criteria: &[Criterion],
+    tiles: &[Range<usize>],
+    block: &Block<'_, T>,
+    patches: &mut [Patches<T>],
+    found: &mut [Detected],
+    plan: &ShapePlan,
+    out: &mut [Vec<Option<Shaped>>],
+) -> Vec<(usize, Vec<SurfaceMesh>)> {
+    for (p, f) in patches.iter_mut().zip(found.iter_mut()) {
+        p.begin_block(block.z.clone(), tiles, &mut f.objects);
+    }
+    let open: &[Patches<T>] = patches;
+    par::map_range(tiles.len(), |t| {
+        let mut scratch = Scratch::default();
+        let mut wanted: Vec<(usize, usize)> = open.iter().flat_map(|p| p.wanted_rows(t)).collect();
+        wanted.sort_unstable();
+        wanted.dedup();
+        for (z, y) in wanted {
+            deriver.row(block, z, y, Need::default(), &mut scratch);
+            for p in open {
+                p.deliver(t, z, y, &scratch.rows);
+            }
+        }
+    });
+    let mut finished = Vec::new();
+    for (k, (p, f)) in patches.iter_mut().zip(found.iter()).enumerate() {
+        let Criterion { side, level, .. } = criteria[k];
+        let shaped = par::map_owned(p.end_block(block.z.end), |_, patch| {
+            let object = &f.objects[patch.object];
+            let with_mesh = plan.mesh_cells.is_some_and(|least| object.tally.moments.count >= least);
+            shape(grid, &patch, level, side, object.id, with_mesh)
+        });
+        let mut meshes = Vec::new();
+        for mut s in shaped {
+            meshes.extend(s.mesh.take());
+            let place = s.object;
+            out[k][place] = Some(s);
+        }
+        finished.push((k, meshes));
+    }
+    finished
 }
 
 /// Which objects get a surface and a mesh.

@@ -13,7 +13,7 @@ use crate::space::slab::{Batch, Block};
 
 /// Bytes of all components that a block should hold when nobody sets its thickness: enough to amortise the halo,
 /// small beside the snapshot.
-const BLOCK_BYTES: usize = 24 << 20;
+const BLOCK_BYTES: usize = 12 << 20;
 
 /// Planes a block holds: what was asked for, else a multiple of the file's natural depth near [`BLOCK_BYTES`].
 pub fn block_planes<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>) -> usize {
@@ -25,6 +25,33 @@ pub fn block_planes<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>)
     let fits = (BLOCK_BYTES / plane.max(1)).clamp(4, 64);
     let natural = source.natural_planes().max(1);
     (fits.max(natural) / natural * natural).clamp(1, n)
+}
+
+/// Batches of component buffers that go round, within a pass and from one pass to the next: a fresh buffer costs as much
+/// in page faults as reading into it.
+pub struct Buffers<T>(Mutex<Vec<Vec<Vec<T>>>>);
+
+impl<T> Default for Buffers<T> {
+    fn default() -> Self {
+        Buffers(Mutex::new(Vec::new()))
+    }
+}
+
+impl<T: Real> Buffers<T> {
+    fn take(&self, components: usize, cells: usize) -> Vec<Vec<T>> {
+        let used = self.0.lock().ok().and_then(|mut free| free.pop());
+        let mut buffers = used.unwrap_or_else(|| vec![Vec::new(); components]);
+        for b in &mut buffers {
+            b.resize(cells, T::ZERO);
+        }
+        buffers
+    }
+
+    fn give(&self, batch: Arc<Batch<T>>) {
+        if let (Ok(batch), Ok(mut free)) = (Arc::try_unwrap(batch), self.0.lock()) {
+            free.push(batch.components);
+        }
+    }
 }
 
 /// What to read, in order: unwrapped first plane, and the planes as stored.
@@ -55,6 +82,7 @@ pub fn blocks<T: Real>(
     thickness: usize,
     halo: usize,
     reach: impl Fn(Range<usize>) -> (isize, isize),
+    buffers: &Buffers<T>,
     observe: &dyn Observe,
     mut each: impl FnMut(&Block<'_, T>) -> Result<()>,
 ) -> Result<()> {
@@ -63,15 +91,9 @@ pub fn blocks<T: Real>(
     let components = source.fields().components();
     let n = grid.n[2];
     let mut todo = plan(&grid, thickness, halo).into_iter();
-    // Buffers go round: a fresh one costs as much in page faults as the reading itself.
-    let free: Mutex<Vec<Vec<Vec<T>>>> = Mutex::new(Vec::new());
     let next = || -> Option<Result<Batch<T>>> {
         let (first, z) = todo.next()?;
-        let cells = z.len() * plane_cells;
-        let mut buffers = free.lock().ok().and_then(|mut f| f.pop()).unwrap_or_else(|| vec![Vec::new(); components]);
-        for b in &mut buffers {
-            b.resize(cells, T::ZERO);
-        }
+        let mut buffers = buffers.take(components, z.len() * plane_cells);
         let mut slices: Vec<&mut [T]> = buffers.iter_mut().map(Vec::as_mut_slice).collect();
         let read = source.read(z.start, z.end, &mut slices);
         Some(read.map(|()| Batch { first, planes: z.len(), components: buffers }))
@@ -92,7 +114,7 @@ pub fn blocks<T: Real>(
                 break;
             }
             while window.first().is_some_and(|b| b.first + b.planes as isize <= low) {
-                recycle(window.remove(0), &free);
+                buffers.give(window.remove(0));
             }
             z0 = z.end;
             outcome = each(&Block::new(z.clone(), &window, plane_cells));
@@ -100,13 +122,8 @@ pub fn blocks<T: Real>(
         }
         outcome.is_ok()
     });
+    window.into_iter().for_each(|batch| buffers.give(batch));
     outcome
-}
-
-fn recycle<T>(batch: Arc<Batch<T>>, free: &Mutex<Vec<Vec<Vec<T>>>>) {
-    if let (Ok(batch), Ok(mut free)) = (Arc::try_unwrap(batch), free.lock()) {
-        free.push(batch.components);
-    }
 }
 
 #[cfg(test)]
@@ -134,7 +151,7 @@ mod tests {
                 let reach =
                     |z: Range<usize>| z.map(|k| stencil.reach(k)).fold((isize::MAX, isize::MIN), |a, b| (a.0.min(b.0), a.1.max(b.1)));
                 let mut seen = Vec::new();
-                blocks(&mut s, thickness, HALF, reach, &Silent, |block| {
+                blocks(&mut s, thickness, HALF, reach, &Buffers::default(), &Silent, |block| {
                     for z in block.z.clone() {
                         let (low, high) = stencil.reach(z);
                         for k in low..high {

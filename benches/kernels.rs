@@ -1,0 +1,115 @@
+//! Kernels one by one: row derivatives and alignment, labelling, isosurface and its geometry, on a random solenoidal field.
+
+use divan::Bencher;
+use ropewalk::base::observe::Silent;
+use ropewalk::math::diff::{AxisStencil, difference};
+use ropewalk::math::isosurface::isosurface;
+use ropewalk::math::stats::{Cosine, row_sum};
+use ropewalk::math::surface::measure;
+use ropewalk::model::request::{Family, Request, Surfaces};
+use ropewalk::model::source::{AnySource, Fields, MemorySource};
+use ropewalk::model::surface::NoSurfaces;
+use ropewalk::run::analysis::{Execution, Snapshot, analyse};
+use ropewalk::space::grid::Grid;
+use ropewalk::space::patch::{Interval, PatchShape};
+use ropewalk::synth::random::solenoidal;
+
+fn main() {
+    divan::main();
+}
+
+const N: usize = 256;
+
+fn row() -> Vec<f32> {
+    (0..N).map(|i| (i as f32 * 0.37).sin()).collect()
+}
+
+#[divan::bench]
+fn derivative_across_rows(bencher: Bencher) {
+    let r = row();
+    let s = AxisStencil::<f32>::new(N, 0.1, true);
+    let mut out = vec![0.0; N];
+    bencher
+        .counter(divan::counter::ItemsCount::new(N))
+        .bench_local(|| difference(&mut out, [&r, &r, &r, &r], [&r, &r, &r, &r], &s.central));
+}
+
+#[divan::bench]
+fn derivative_along_row(bencher: Bencher) {
+    let r = row();
+    let s = AxisStencil::<f32>::new(N, 0.1, true);
+    let (mut out, mut padded) = (vec![0.0; N], Vec::new());
+    bencher.counter(divan::counter::ItemsCount::new(N)).bench_local(|| s.along(&r, &mut padded, &mut out));
+}
+
+#[divan::bench]
+fn sum_of_a_row(bencher: Bencher) {
+    let r = row();
+    bencher.counter(divan::counter::ItemsCount::new(N)).bench_local(|| row_sum(divan::black_box(&r)));
+}
+
+#[divan::bench]
+fn cosines_of_a_row(bencher: Bencher) {
+    let r = row();
+    let mut c = Cosine::default();
+    bencher.counter(divan::counter::ItemsCount::new(N)).bench_local(|| c.add(divan::black_box(&r)));
+}
+
+/// A ball of radius 40 cells.
+fn ball() -> (PatchShape, Vec<f32>) {
+    const R: i32 = 40;
+    let mut object = Vec::new();
+    for z in -R..=R {
+        for y in -R..=R {
+            let rest = R * R - z * z - y * y;
+            if rest > 0 {
+                let mut half = f64::from(rest).sqrt() as i32;
+                while half * half >= rest {
+                    half -= 1;
+                }
+                object.push(Interval { z, y, x: -half, len: (2 * half + 1) as u32 });
+            }
+        }
+    }
+    let shape = PatchShape::around(object, 1, [128; 3], [true; 3], [None; 3]);
+    let values =
+        shape.stored.iter().flat_map(|s| (s.x..s.x + s.len as i32).map(|x| (R * R - x * x - s.y * s.y - s.z * s.z) as f32)).collect();
+    (shape, values)
+}
+
+#[divan::bench]
+fn isosurface_of_a_ball(bencher: Bencher) {
+    let (shape, values) = ball();
+    bencher.bench_local(|| isosurface(&shape, &values, 0.0));
+}
+
+#[divan::bench]
+fn geometry_of_a_ball(bencher: Bencher) {
+    let (shape, values) = ball();
+    let surface = isosurface(&shape, &values, 0.0);
+    bencher.bench_local(|| measure(&surface, [1.0; 3]));
+}
+
+/// The whole analysis of a 96^3 random field in memory, without files.
+#[divan::bench(sample_count = 10)]
+fn analysis_of_a_random_field(bencher: Bencher) {
+    let n = [96; 3];
+    let lengths = [std::f64::consts::TAU; 3];
+    let u = solenoidal(n, lengths, 1, |k| (-(k / 12.0).powi(2)).exp(), 0.0);
+    let single: Vec<Vec<f32>> = u.iter().map(|c| c.iter().map(|&v| v as f32).collect()).collect();
+    let request = Request {
+        families: vec![Family::parse("vorticity: vorticity > 1.6 rms").unwrap()],
+        surfaces: Surfaces::None,
+        ..Request::default()
+    };
+    bencher
+        .counter(divan::counter::ItemsCount::new(96usize.pow(3)))
+        .with_inputs(|| {
+            let fields = Fields { velocity: true, magnetic: false };
+            AnySource::F32(Box::new(MemorySource::new(Grid::periodic(n, lengths), fields, single.clone())))
+        })
+        .bench_local_values(|source| {
+            let snapshot = Snapshot { name: "bench".into(), time: None, components: Vec::new() };
+            analyse(source, snapshot, &request, &Execution::default(), &Silent, &mut NoSurfaces).unwrap()
+        });
+}
