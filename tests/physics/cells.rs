@@ -42,7 +42,7 @@ fn bad_cells_are_located_and_refused() {
 /// |b| of 1e20 fits f32, its square does not (largest f32: 3.4e38); |u|²|ω|² overflows before |ω|² does. The same values pass in f64.
 #[test]
 fn squares_that_overflow_are_refused() {
-    let wave = |size: f64| move |p: [f64; 3]| [0.0, size * (6.283_185_307_179_586 * p[0]).sin(), size];
+    let wave = |size: f64| move |p: [f64; 3]| [0.0, size * (std::f64::consts::TAU * p[0]).sin(), size];
     for (fields, family, size) in [(MAGNETIC, "f: field > 1 rms", 1e20), (VELOCITY, "w: vorticity > 1 rms", 1e10)] {
         let e = try_run(sampled::<f32>(cube(12), fields, wave(size)), &request(&[family]), &Execution::default()).err().expect("refused");
         assert_eq!(e.kind(), Kind::Data);
