@@ -256,7 +256,7 @@ pub struct Request {
     pub connectivity: Connectivity,
     /// Smaller objects are counted but not listed. Default 27 cells.
     pub min_cells: u64,
-    /// Larger objects get additive columns only. Default 2^26 cells.
+    /// Larger objects get additive columns only. Default 2^22 cells: the surface of an object takes some 200 bytes of memory a cell.
     pub max_object_cells: u64,
     /// Kinematic viscosity ν, where known.
     pub viscosity: Option<f64>,
@@ -276,7 +276,7 @@ impl Default for Request {
             families: Vec::new(),
             connectivity: Connectivity::TwentySix,
             min_cells: 27,
-            max_object_cells: 1 << 26,
+            max_object_cells: 1 << 22,
             viscosity: None,
             resistivity: None,
             frame: Frame::Box,

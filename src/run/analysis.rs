@@ -100,7 +100,8 @@ pub struct Analysis {
 /// Analyses a snapshot of either precision. Call inside a [`crate::base::par::Pool`] to choose the number of threads.
 ///
 /// # Errors
-/// `Usage` when the request does not fit the fields, `Input` and `Data` when the planes cannot be used, `Output` from the sink.
+/// `Usage` when the request does not fit the fields, `Input` and `Data` when the planes cannot be used (too few samples; NaN or
+/// infinite values; values whose squares overflow the storage precision), `Output` from the sink.
 pub fn analyse(
     source: AnySource,
     snapshot: Snapshot,
@@ -158,6 +159,7 @@ fn typed<T: Real>(
         (scan, survey, frame)
     };
 
+    reject_overflow::<T>(&survey_sums(&survey), &snapshot)?;
     let deriver = deriver(frame);
     let common = common_bounds(&scan, &survey, fields, frame);
     let criteria: Vec<Criterion> = families
@@ -177,6 +179,7 @@ fn typed<T: Real>(
         })
         .collect();
     let (mut found, alignment) = pass.detect(&deriver, &criteria, request.min_cells)?;
+    reject_overflow::<T>(&[alignment.lamb2, alignment.u2w2, alignment.lorentz2, alignment.j2b2], &snapshot)?;
     let plan = ShapePlan {
         max_cells: request.max_object_cells,
         mesh_cells: (request.surfaces != Surfaces::None).then_some(request.surface_min_cells),
@@ -253,6 +256,23 @@ fn reject_bad_cells(scan: &Scan, snapshot: &Snapshot) -> Result<()> {
         .expected("finite values")
         .found(format!("{} NaN or infinite, first {}", scan.not_finite, places.join(", ")))
         .hint("indices count from 0; was the file written completely?"))
+}
+
+fn survey_sums(survey: &Survey) -> Vec<f64> {
+    let fields = [&survey.velocity, &survey.magnetic].into_iter().flat_map(|g| [g.curl2, g.strain2, g.div2]);
+    fields.chain(survey.indicators.iter().flat_map(|s| [s.sum, s.square_sum])).collect()
+}
+
+/// Squares and products can leave the range of the storage precision where the field itself does not.
+fn reject_overflow<T: Real>(sums: &[f64], snapshot: &Snapshot) -> Result<()> {
+    if sums.iter().all(|s| s.is_finite()) {
+        return Ok(());
+    }
+    Err(Error::data("cannot use the snapshot")
+        .item(&snapshot.name)
+        .expected(format!("values whose squares and products fit {}", T::NAME))
+        .found("an overflow")
+        .hint("choose units in which lengths, velocities and fields are of order 1, or store it in f64"))
 }
 
 fn mean_velocity(scan: &Scan, grid: &Grid, fields: Fields) -> [f64; 3] {

@@ -78,7 +78,7 @@ const CENTRES: [Vector; 4] = [[0.0, 0.0, 0.0], [0.5, 0.5, 0.5], [0.31, 0.77, 0.1
 
 fn check_spheres<T: Real>() {
     // Relative errors of V, S, C on spheres of R cells: 0.59, 0.31, 0.115 x (1/R)^2, allowed 1.3 x.
-    // Source: checks.md §2, "isosurface mesh, sphere of radius R cells".
+    // Source: coefficients fitted to triangulated spheres apart from this program.
     let coefficients = [0.59, 0.31, 0.115];
     for r in [4.0, 6.0, 8.0, 12.0, 16.0] {
         let n = [2 * r as usize + 7; 3];
@@ -133,7 +133,7 @@ fn check_convergence<T: Real>(
 
 /// V, S, C of an ellipsoid by quadrature over the sphere of directions.
 fn ellipsoid_exact(axes: Vector) -> Vector {
-    // Source: methods.md §5: S = ∮ sqrt((bc sinθcosφ)^2 + (ac sinθsinφ)^2 + (ab cosθ)^2) dΩ, C = ∮ h dΩ with the support
+    // Source: integral geometry, S = ∮ sqrt((bc sinθcosφ)^2 + (ac sinθsinφ)^2 + (ab cosθ)^2) dΩ, C = ∮ h dΩ with the support
     // function h. Midpoint rule in cosθ and φ.
     let [a, b, c] = axes;
     let (rows, columns) = (2000, 400);
@@ -167,7 +167,7 @@ fn tilted_ellipsoid_converges_with_unequal_spacing() {
 
 #[test]
 fn tilted_spherocylinder_converges() {
-    // Source: methods.md §5: V = πr²l + 4πr³/3, S = 2πrl + 4πr², C = πl + 4πr.
+    // Source: Steiner formula of a segment, V = πr²l + 4πr³/3, S = 2πrl + 4πr², C = πl + 4πr.
     let (r, l) = (0.3, 1.4);
     let exact = [PI * r * r * l + 4.0 / 3.0 * PI * r * r * r, 2.0 * PI * r * l + 4.0 * PI * r * r, PI * l + 4.0 * PI * r];
     let f = |p: Vector| {
@@ -180,7 +180,7 @@ fn tilted_spherocylinder_converges() {
 
 #[test]
 fn tilted_torus_converges_with_euler_zero() {
-    // Source: checks.md §2, torus 3,1: V 59.2176, S 118.4353, C 59.2176; Euler 0.
+    // Source: Pappus, V = 2π²Rr², S = 4π²Rr; C = 2π²R; Euler 0. Here R = 3, r = 1.
     let exact = [59.2176, 118.4353, 59.2176];
     let f = |p: Vector| {
         let q = local(p, [4.53, 4.47, 4.61]);
@@ -192,7 +192,7 @@ fn tilted_torus_converges_with_euler_zero() {
 
 #[test]
 fn tilted_rounded_box_converges() {
-    // Box a, b, c dilated by r: the Steiner formula on the box values of methods.md §5,
+    // Box a, b, c dilated by r: the Steiner formula on the box values
     // V = abc, S = 2(ab + bc + ca), C = π(a + b + c).
     let (sides, r) = ([1.0, 0.7, 0.4], 0.2);
     let [a, b, c] = sides;

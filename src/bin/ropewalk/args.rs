@@ -96,7 +96,7 @@ pub struct Catalogue {
     #[arg(long, value_enum, default_value = "26", help_heading = "Objects")]
     pub connectivity: ConnectivityArg,
     /// Larger objects get additive columns only
-    #[arg(long, value_name = "CELLS", default_value_t = 1 << 26, help_heading = "Objects")]
+    #[arg(long, value_name = "CELLS", default_value_t = 1 << 22, help_heading = "Objects")]
     pub max_object_cells: u64,
     /// Surface meshes: one file a snapshot and family, one an object, or none
     #[arg(long, value_enum, default_value = "together", help_heading = "Objects")]

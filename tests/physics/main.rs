@@ -1,0 +1,14 @@
+//! Whole analyses of fields whose answer is known: exact flows, bodies, random fields, and the same answer however it is computed.
+
+mod bodies;
+mod cells;
+mod common;
+mod ellipsoids;
+mod gaussian;
+mod labels;
+mod meshes;
+mod periodic_flows;
+mod same_answer;
+mod sheets;
+mod uniform_flows;
+mod vortices;

@@ -1,0 +1,149 @@
+//! The same bytes for any number of threads and any thickness of blocks: rows, statistics, meshes and mesh files.
+
+use std::f64::consts::TAU;
+use std::fmt::Write;
+use std::io::Cursor;
+use std::path::PathBuf;
+
+use crate::common::{BOTH, Outcome, Precision, stored, text, try_run};
+use ropewalk::base::par::Pool;
+use ropewalk::export::csv;
+use ropewalk::export::ply::PlyWriter;
+use ropewalk::model::columns::Col;
+use ropewalk::model::object::Sum;
+use ropewalk::model::request::{Family, Request};
+use ropewalk::model::source::AnySource;
+use ropewalk::model::surface::SurfaceMesh;
+use ropewalk::read::{InputSpec, open};
+use ropewalk::run::analysis::Execution;
+use ropewalk::space::grid::Grid;
+use ropewalk::synth::random::solenoidal;
+
+const SUMMED: [Sum; 7] =
+    [Sum::Indicator, Sum::Strain2, Sum::Current2, Sum::Lamb2, Sum::Speed2Vorticity2, Sum::Lorentz2, Sum::Current2Field2];
+const THREADS: [usize; 4] = [1, 2, 3, 8];
+const BLOCKS: [Option<usize>; 7] = [None, Some(1), Some(2), Some(3), Some(5), Some(7), Some(16)];
+
+/// Everything a run yields, as bytes. Numbers are written so that different ones differ.
+fn bytes(o: &Outcome) -> Vec<u8> {
+    let a = &o.analysis;
+    let s = &a.survey;
+    let mut all = format!("{:?} {:?} {} {:?} {:?}\n", a.scan, a.frame, s.cells, s.velocity, s.magnetic);
+    writeln!(all, "{:?} {:?} {:?}", a.divergence, a.kolmogorov_length, a.alignment).unwrap();
+    for i in &s.indicators {
+        // Their counts for levels by volume are compared by the levels read from them.
+        writeln!(all, "{:?} {:?} {:?} {:?}", i.sum, i.square_sum, i.min, i.max).unwrap();
+    }
+    for f in &a.families {
+        writeln!(all, "{:?} {:?} {:?} {:?} {:?}", f.level, f.volume_fraction, f.dropped.0, f.inside, f.outside).unwrap();
+        for tally in [&f.listed, &f.dropped.1] {
+            // Its coordinates and peak have no meaning.
+            let sums = SUMMED.map(|s| tally.sum(s, &f.scales));
+            writeln!(all, "{} {sums:?} {} {:?}", tally.moments.count, tally.open_faces, tally.cosines).unwrap();
+        }
+        f.rows.iter().for_each(|r| csv::push_row(&mut all, r));
+    }
+    let mut all = all.into_bytes();
+    for meshes in &o.meshes {
+        for m in meshes {
+            all.extend(m.id.to_le_bytes());
+            let floats = m.positions.iter().chain(&m.normals).flatten().chain(m.values.iter().flatten());
+            all.extend(floats.flat_map(|v| v.to_bits().to_le_bytes()));
+            all.extend(m.triangles.iter().flatten().flat_map(|v| v.to_le_bytes()));
+        }
+        let values = SurfaceMesh::value_names(a.fields);
+        let mut file = PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), values, Vec::new()).unwrap();
+        // One call a mesh and one call for all must not differ either.
+        let (first, rest) = meshes.split_at(meshes.len() / 2);
+        first.iter().for_each(|m| file.add(std::slice::from_ref(m)).unwrap());
+        file.add(rest).unwrap();
+        all.extend(file.finish().unwrap().into_inner());
+    }
+    all
+}
+
+/// Runs every combination and compares with one thread and blocks of one plane.
+fn same(source: impl Fn() -> AnySource + Sync, request: &Request, combinations: impl Iterator<Item = (usize, Option<usize>)>) {
+    let one = |threads: usize, block_planes: Option<usize>| {
+        let execution = Execution { block_planes, ..Execution::default() };
+        let pool = Pool::new(threads).unwrap();
+        pool.run(|| bytes(&try_run(source(), request, &execution).unwrap()))
+    };
+    let reference = one(1, Some(1));
+    assert!(reference.len() > 100_000, "a run with objects and meshes");
+    for (threads, blocks) in combinations {
+        let got = one(threads, blocks);
+        let at = got.iter().zip(&reference).position(|(a, b)| a != b);
+        assert!(at.is_none() && got.len() == reference.len(), "{threads} threads, blocks {blocks:?}: differs at byte {at:?}");
+    }
+}
+
+fn everything() -> impl Iterator<Item = (usize, Option<usize>)> {
+    THREADS.into_iter().flat_map(|t| BLOCKS.into_iter().map(move |b| (t, b)))
+}
+
+/// Every number of threads and every thickness at least twice, in different pairs.
+fn a_selection() -> impl Iterator<Item = (usize, Option<usize>)> {
+    (0..14).map(|k| (THREADS[k % 4], BLOCKS[k % 7]))
+}
+
+/// Families above and below, by every kind of level; the third one wraps.
+fn requested() -> Request {
+    let families = [
+        "vorticity: vorticity > 1.7 rms",
+        "shear: q < -1.3 rms",
+        "field: field > 0.9 mean",
+        "calm: speed < 0.02 volume",
+        "current: current > 0.05 volume",
+        "cross: cross_helicity > 0.8",
+    ];
+    Request {
+        families: families.iter().map(|f| Family::parse(f).unwrap()).collect(),
+        min_cells: 4,
+        viscosity: Some(0.01),
+        resistivity: Some(0.02),
+        ..Request::default()
+    }
+}
+
+fn random<T: Precision>() -> AnySource {
+    let n = [32, 28, 36];
+    let grid = Grid::periodic(n, [TAU, 5.5, 7.1]).with_periodic([true, false, true]);
+    let field = |seed| solenoidal(n, [TAU, 5.5, 7.1], seed, |k| k * (-k / 3.0).exp(), 0.2);
+    let components: Vec<Vec<f64>> = field(5).into_iter().chain(field(6)).collect();
+    stored::<T>(grid, BOTH, &components)
+}
+
+#[test]
+fn random_fields_in_single_precision() {
+    same(random::<f32>, &requested(), everything());
+}
+
+#[test]
+fn random_fields_in_double_precision() {
+    same(random::<f64>, &requested(), a_selection());
+}
+
+/// The comparison above must have something to tell apart: wrapping objects, cut objects, dropped objects, meshes everywhere.
+#[test]
+fn the_random_run_has_every_kind_of_object() {
+    let o = try_run(random::<f32>(), &requested(), &Execution::default()).unwrap();
+    let rows = || o.analysis.families.iter().flat_map(|f| &f.rows);
+    assert!(rows().any(|r| text(r, Col::Wraps).contains('x')), "an object that wraps");
+    assert!(rows().any(|r| !text(r, Col::OpenFaces).is_empty()), "an object at an open face");
+    assert!(o.analysis.families.iter().any(|f| f.dropped.0 > 0), "dropped objects");
+    assert!(o.analysis.families.iter().zip(&o.meshes).all(|(f, m)| !f.rows.is_empty() && f.rows.len() == m.len()));
+}
+
+/// Shipped turbulence, read from its files in chunks (which are not kept in memory, so that blocks really are read piece by piece).
+#[test]
+fn shipped_turbulence() {
+    let folder = PathBuf::from(env!("CARGO_MANIFEST_DIR")).join("demo-data");
+    for name in ["mhd_0001.h5", "hydro_0001.h5"] {
+        let spec = InputSpec { lengths: Some([TAU; 3]), ..InputSpec::default() };
+        let source = || open(&folder.join(name), &spec).unwrap().source;
+        let families = ["w: vorticity > 2 rms", "calm: q < -1.5 rms"].map(|f| Family::parse(f).unwrap()).to_vec();
+        let request = Request { families, viscosity: Some(0.019), resistivity: Some(0.019), ..Request::default() };
+        same(source, &request, [(1, None), (2, Some(5)), (3, Some(16)), (8, Some(7))].into_iter());
+    }
+}
