@@ -1,5 +1,6 @@
 //! Joins the components of all tiles of a snapshot, across periodic faces too, into numbered, unwrapped objects.
 
+use crate::base::par;
 use crate::detect::tile::{Criterion, TileSweep};
 use crate::math::disjoint::OffsetSets;
 use crate::model::object::{Detected, Dropped, Object, Tally};
@@ -184,10 +185,12 @@ impl Labeller {
             object.intervals.push(Interval { z: place(2, run.z), y: place(1, run.y), x: place(0, run.x0), len: run.x1 - run.x0 });
         }
         drop(runs);
-        for object in &mut objects {
-            let closed = object.spans.iter().any(|&s| s);
-            tidy(&mut object.intervals, closed);
-        }
+        par::for_chunks(&mut objects, 16, |_, some| {
+            for object in some {
+                let closed = object.spans.iter().any(|&s| s);
+                tidy(&mut object.intervals, closed);
+            }
+        });
         Detected { objects, dropped }
     }
 }

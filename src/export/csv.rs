@@ -2,12 +2,26 @@
 
 use std::fmt::Write;
 
+use crate::base::par;
 use crate::model::columns::{COLUMNS, Row, Value};
 
 /// The header line.
 pub fn header() -> String {
     let names: Vec<&str> = COLUMNS.iter().map(|c| c.name).collect();
     names.join(",") + "\n"
+}
+
+/// The lines of many rows, formatted in parallel.
+pub fn lines(rows: &[Row]) -> String {
+    /// Rows a work item formats.
+    const ROWS: usize = 128;
+    let parts: Vec<&[Row]> = rows.chunks(ROWS).collect();
+    let texts = par::map(&parts, |_, part| {
+        let mut out = String::new();
+        part.iter().for_each(|row| push_row(&mut out, row));
+        out
+    });
+    texts.concat()
 }
 
 /// Appends one line.

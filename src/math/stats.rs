@@ -73,23 +73,50 @@ fn folded(lanes: [f64; 8]) -> f64 {
     ((lanes[0] + lanes[4]) + (lanes[2] + lanes[6])) + ((lanes[1] + lanes[5]) + (lanes[3] + lanes[7]))
 }
 
-/// Smallest and largest value of a row; `(start, start)` where the row is empty.
+/// Sum, sum of squares and extremes of a row.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct RowStats {
+    /// Sum, in f64.
+    pub sum: f64,
+    /// Sum of squares, in f64.
+    pub square_sum: f64,
+    /// Smallest value.
+    pub min: f64,
+    /// Largest value.
+    pub max: f64,
+}
+
+/// All of [`RowStats`] in one sweep, in a fixed order. Values that are not finite make the sum not finite.
+///
+/// # Panics
+/// When the row is empty.
 #[multiversion::multiversion(targets("x86_64+avx2"))]
-pub fn row_range<T: Real>(row: &[T], start: T) -> (T, T) {
-    // Lanes, because a single running minimum is a chain of dependent steps.
-    let (mut low, mut high) = ([start; 16], [start; 16]);
-    let (chunks, rest) = row.as_chunks::<16>();
+pub fn row_stats<T: Real>(row: &[T]) -> RowStats {
+    // Lanes, because a single running sum or minimum is a chain of dependent steps.
+    let (mut sum, mut square) = ([0.0f64; 8], [0.0f64; 8]);
+    let (mut low, mut high) = ([row[0]; 8], [row[0]; 8]);
+    let (chunks, rest) = row.as_chunks::<8>();
     for c in chunks {
-        for k in 0..16 {
+        for k in 0..8 {
+            let v = c[k].wide();
+            sum[k] += v;
+            square[k] += v * v;
             low[k] = c[k].lesser(low[k]);
             high[k] = c[k].greater(high[k]);
         }
     }
     for (k, v) in rest.iter().enumerate() {
+        sum[k] += v.wide();
+        square[k] += v.wide() * v.wide();
         low[k] = v.lesser(low[k]);
         high[k] = v.greater(high[k]);
     }
-    (low.into_iter().fold(start, T::lesser), high.into_iter().fold(start, T::greater))
+    RowStats {
+        sum: folded(sum),
+        square_sum: folded(square),
+        min: low.into_iter().fold(row[0], T::lesser).wide(),
+        max: high.into_iter().fold(row[0], T::greater).wide(),
+    }
 }
 
 /// Scale of the exact cosine sums: a row of up to 2^14 cells fits 64 bits.
@@ -111,12 +138,20 @@ pub struct Cosine {
 impl Cosine {
     /// Adds the cosines of consecutive cells; NaN marks a cell where the cosine is undefined.
     pub fn add<T: Real>(&mut self, row: &[T]) {
-        // Slot 20 takes undefined cells; two tables keep successive increments independent.
-        let mut slots = [[0u32; COSINE_BINS + 1]; 2];
+        // Slot 20 takes undefined cells; four tables keep successive increments independent.
+        let mut slots = [[0u32; COSINE_BINS + 1]; 4];
         for part in row.chunks(1 << 14) {
             let (mut sum, mut abs_sum, mut aligned) = (0i64, 0i64, 0u32);
-            for (i, &c) in part.iter().enumerate() {
-                slots[i & 1][slot(c)] += 1;
+            let (quads, rest) = part.as_chunks::<4>();
+            for quad in quads {
+                for k in 0..4 {
+                    slots[k][slot(quad[k])] += 1;
+                }
+            }
+            for &c in rest {
+                slots[0][slot(c)] += 1;
+            }
+            for &c in part {
                 let fixed = (c.wide() * COSINE_SCALE) as i64;
                 sum += fixed;
                 abs_sum += fixed.abs();
@@ -127,7 +162,7 @@ impl Cosine {
             self.aligned += u64::from(aligned);
         }
         for b in 0..COSINE_BINS {
-            let n = u64::from(slots[0][b]) + u64::from(slots[1][b]);
+            let n: u64 = slots.iter().map(|s| u64::from(s[b])).sum();
             self.bins[b] += n;
             self.defined += n;
         }

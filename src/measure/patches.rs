@@ -108,15 +108,29 @@ impl<T: Real> Patches<T> {
             Open { object, last_plane, shape, values }
         });
         self.open.extend(opened);
-        self.deliveries.clear();
-        self.deliveries.resize(tiles.len(), Vec::new());
+        self.deliveries = self.deliveries_in(&z, tiles);
+    }
+
+    /// Everything the open patches want from the planes `z`, tile by tile, in the order of rows.
+    fn deliveries_in(&self, z: &Range<usize>, tiles: &[Range<usize>]) -> Vec<Vec<Delivery>> {
+        /// Patches a work item goes through.
+        const PATCHES: usize = 64;
         let tile_of: Vec<usize> = tiles.iter().enumerate().flat_map(|(t, r)| r.clone().map(move |_| t)).collect();
-        for (k, patch) in self.open.iter().enumerate() {
-            for segment in segments_in(&patch.shape.stored, &z, grid.n[2] as i32) {
-                self.deliveries_of(segment, k as u32, &tile_of, &grid).into_iter().flatten().for_each(|(t, d)| self.deliveries[t].push(d));
+        let parts = par::map_range(self.open.len().div_ceil(PATCHES), |part| {
+            let mut lists = vec![Vec::new(); tiles.len()];
+            for k in part * PATCHES..((part + 1) * PATCHES).min(self.open.len()) {
+                for segment in segments_in(&self.open[k].shape.stored, z, self.grid.n[2] as i32) {
+                    let pieces = self.deliveries_of(segment, k as u32, &tile_of, &self.grid);
+                    pieces.into_iter().flatten().for_each(|(t, d)| lists[t].push(d));
+                }
             }
-        }
-        par::for_chunks(&mut self.deliveries, 1, |_, list| list[0].sort_unstable_by_key(|d| (d.z, d.y, d.patch, d.start)));
+            lists
+        });
+        par::map_range(tiles.len(), |t| {
+            let mut list: Vec<Delivery> = parts.iter().flat_map(|lists| lists[t].iter().copied()).collect();
+            list.sort_unstable_by_key(|d| (d.z, d.y, d.patch, d.start));
+            list
+        })
     }
 
     /// A segment as it lies in the box: one piece, or two where it crosses the x-face.

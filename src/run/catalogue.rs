@@ -87,8 +87,8 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
         let one = pool.run(|| one(path, config, &folder, &clock));
         match one {
             Ok((analysis, datasets)) => {
-                for row in analysis.families.iter().flat_map(|f| &f.rows) {
-                    csv::push_row(&mut table, row);
+                for family in &analysis.families {
+                    table.push_str(&pool.run(|| csv::lines(&family.rows)));
                 }
                 snapshots.push(summary::snapshot(&analysis, &path.to_string_lossy(), &datasets));
                 done.push(analysis);

@@ -1,7 +1,7 @@
 //! Sums of gradient quantities and indicators over the box, added up row by row, tile by tile, plane by plane in a fixed order.
 
 use crate::base::real::Real;
-use crate::math::stats::{row_range, row_square_sum, row_sum};
+use crate::math::stats::{row_square_sum, row_stats};
 use crate::model::request::Family;
 use crate::model::rows::Rows;
 use crate::model::statistics::{GradientStats, IndicatorStats, Survey};
@@ -22,11 +22,11 @@ pub fn add_row<T: Real>(survey: &mut Survey, rows: &Rows<T>, sampled: bool) {
     let mut cells = rows.w2.len().max(rows.j2.len());
     for (s, row) in survey.indicators.iter_mut().zip(&rows.indicators) {
         cells = row.len();
-        s.sum += row_sum(row);
-        s.square_sum += row_square_sum(row);
-        let (low, high) = row_range(row, row[0]);
-        s.min = s.min.min(low.wide());
-        s.max = s.max.max(high.wide());
+        let r = row_stats(row);
+        s.sum += r.sum;
+        s.square_sum += r.square_sum;
+        s.min = s.min.min(r.min);
+        s.max = s.max.max(r.max);
     }
     survey.cells += cells as u64;
 }
@@ -35,11 +35,13 @@ fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, 
     if curl2.is_empty() {
         return;
     }
-    g.curl2 += row_sum(curl2);
-    g.curl2_max = g.curl2_max.max(row_range(curl2, T::ZERO).1.wide());
+    let r = row_stats(curl2);
+    g.curl2 += r.sum;
+    g.curl2_max = g.curl2_max.max(r.max);
     if let Some(s) = strain2 {
-        g.strain2 += row_sum(s);
-        g.strain2_max = g.strain2_max.max(row_range(s, T::ZERO).1.wide());
+        let r = row_stats(s);
+        g.strain2 += r.sum;
+        g.strain2_max = g.strain2_max.max(r.max);
     }
     let div2 = row_square_sum(div);
     g.div2 += div2;

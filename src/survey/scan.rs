@@ -1,7 +1,7 @@
 //! Raw planes: hash, NaN and infinite cells, sums and extremes of every component.
 
 use crate::base::real::Real;
-use crate::math::stats::{row_range, row_square_sum, row_sum};
+use crate::math::stats::row_stats;
 use crate::model::statistics::{ComponentStats, Scan};
 use crate::space::grid::Grid;
 
@@ -31,11 +31,11 @@ pub fn plane<T: Real>(grid: &Grid, z: usize, components: &[&[T]]) -> PlaneScan {
         hasher.update(bytemuck::cast_slice(values));
         let mut s = ComponentStats { sum: 0.0, square_sum: 0.0, min: f64::INFINITY, max: f64::NEG_INFINITY };
         for (y, row) in values.chunks_exact(grid.n[0]).enumerate() {
-            let sum = row_sum(row);
-            s.sum += sum;
-            s.square_sum += row_square_sum(row);
+            let r = row_stats(row);
+            s.sum += r.sum;
+            s.square_sum += r.square_sum;
             // A NaN or infinite value makes the row's sum so; a finite sum can only hide an overflow of f64.
-            if !sum.is_finite() {
+            if !r.sum.is_finite() {
                 for x in (0..row.len()).filter(|&x| !row[x].is_finite()) {
                     out.not_finite += 1;
                     if out.first.len() < LOCATED {
@@ -43,9 +43,8 @@ pub fn plane<T: Real>(grid: &Grid, z: usize, components: &[&[T]]) -> PlaneScan {
                     }
                 }
             }
-            let (low, high) = row_range(row, row[0]);
-            s.min = s.min.min(low.wide());
-            s.max = s.max.max(high.wide());
+            s.min = s.min.min(r.min);
+            s.max = s.max.max(r.max);
         }
         out.components.push(s);
     }
