@@ -78,6 +78,75 @@ pub fn for_each_edge(vertices: usize, triangles: &[[u32; 3]], mut visit: impl Fn
     }
 }
 
+/// What [`for_each_pair`] could not pair.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+pub struct Unpaired {
+    /// Sides without a partner.
+    pub open: usize,
+    /// Pairs that run along their edge the same way.
+    pub same_way: usize,
+}
+
+/// Calls `visit(lower, upper, up, down)` for every pair of triangle sides on one edge, in the order in which pairs are
+/// completed: `up` is the triangle that runs from the lower to the upper vertex index, `down` the other.
+///
+/// Faster than [`for_each_edge`], for surfaces of at most two triangles an edge; further sides pair among themselves.
+///
+/// # Panics
+/// When a triangle names a vertex at or beyond `vertices`.
+pub fn for_each_pair(vertices: usize, triangles: &[[u32; 3]], mut visit: impl FnMut(u32, u32, usize, usize)) -> Unpaired {
+    /// A side that waits for its partner, in a list of its lower vertex.
+    struct Waiting {
+        upper: u32,
+        triangle: u32,
+        down: bool,
+        next: u32,
+    }
+    const NONE: u32 = u32::MAX;
+    let mut heads = vec![NONE; vertices];
+    let mut pool: Vec<Waiting> = Vec::new();
+    let mut free = NONE;
+    let mut waiting = 0;
+    let mut same_way = 0;
+    for (i, t) in triangles.iter().enumerate() {
+        for (a, b) in [(t[0], t[1]), (t[1], t[2]), (t[2], t[0])] {
+            let (lower, upper, down) = (a.min(b), a.max(b), a > b);
+            let (mut before, mut at) = (NONE, heads[lower as usize]);
+            while at != NONE && pool[at as usize].upper != upper {
+                before = at;
+                at = pool[at as usize].next;
+            }
+            if at == NONE {
+                let entry = Waiting { upper, triangle: i as u32, down, next: heads[lower as usize] };
+                waiting += 1;
+                if free == NONE {
+                    heads[lower as usize] = pool.len() as u32;
+                    pool.push(entry);
+                } else {
+                    heads[lower as usize] = free;
+                    free = std::mem::replace(&mut pool[free as usize], entry).next;
+                }
+                continue;
+            }
+            let Waiting { triangle, down: other, next, .. } = pool[at as usize];
+            if before == NONE {
+                heads[lower as usize] = next;
+            } else {
+                pool[before as usize].next = next;
+            }
+            pool[at as usize].next = free;
+            free = at;
+            waiting -= 1;
+            match (other, down) {
+                (false, true) => visit(lower, upper, triangle as usize, i),
+                (true, false) => visit(lower, upper, i, triangle as usize),
+                _ => same_way += 1,
+            }
+        }
+    }
+    Unpaired { open: waiting, same_way }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -100,6 +169,22 @@ mod tests {
             found.push((a, b));
         });
         assert_eq!(found, [(0, 1), (0, 2), (0, 3), (1, 2), (1, 3), (2, 3)]);
+    }
+
+    #[test]
+    fn pairs_are_the_edges_with_two_opposite_sides() {
+        let triangles = [[0, 2, 1], [0, 1, 3], [1, 2, 3], [2, 0, 3]];
+        let mut found = Vec::new();
+        let rest = for_each_pair(4, &triangles, |a, b, up, down| {
+            let runs = |t: usize, p: u32, q: u32| (0..3).any(|k| triangles[t][k] == p && triangles[t][(k + 1) % 3] == q);
+            assert!(runs(up, a, b) && runs(down, b, a));
+            found.push((a, b));
+        });
+        found.sort_unstable();
+        assert_eq!(found, [(0, 1), (0, 2), (0, 3), (1, 2), (1, 3), (2, 3)]);
+        assert_eq!(rest, Unpaired::default());
+        assert_eq!(for_each_pair(4, &triangles[1..], |_, _, _, _| {}), Unpaired { open: 3, same_way: 0 });
+        assert_eq!(for_each_pair(4, &[[0, 1, 2], [0, 1, 3]], |_, _, _, _| {}), Unpaired { open: 4, same_way: 1 });
     }
 
     #[test]

@@ -92,31 +92,28 @@ pub struct RowStats {
 /// When the row is empty.
 #[multiversion::multiversion(targets("x86_64+avx2"))]
 pub fn row_stats<T: Real>(row: &[T]) -> RowStats {
-    // Lanes, because a single running sum or minimum is a chain of dependent steps.
-    let (mut sum, mut square) = ([0.0f64; 8], [0.0f64; 8]);
-    let (mut low, mut high) = ([row[0]; 8], [row[0]; 8]);
-    let (chunks, rest) = row.as_chunks::<8>();
+    RowStats {
+        sum: row_sum(row),
+        square_sum: row_square_sum(row),
+        min: extreme(row, |v, kept| v < kept),
+        max: extreme(row, |v, kept| v > kept),
+    }
+}
+
+/// The value no other one `beats`. Lanes, because a single running extreme is a chain of dependent steps.
+#[inline(always)]
+fn extreme<T: Real>(row: &[T], beats: impl Fn(T, T) -> bool) -> f64 {
+    let mut lanes = [row[0]; 16];
+    let (chunks, rest) = row.as_chunks::<16>();
     for c in chunks {
-        for k in 0..8 {
-            let v = c[k].wide();
-            sum[k] += v;
-            square[k] += v * v;
-            low[k] = c[k].lesser(low[k]);
-            high[k] = c[k].greater(high[k]);
+        for k in 0..16 {
+            if beats(c[k], lanes[k]) {
+                lanes[k] = c[k];
+            }
         }
     }
-    for (k, v) in rest.iter().enumerate() {
-        sum[k] += v.wide();
-        square[k] += v.wide() * v.wide();
-        low[k] = v.lesser(low[k]);
-        high[k] = v.greater(high[k]);
-    }
-    RowStats {
-        sum: folded(sum),
-        square_sum: folded(square),
-        min: low.into_iter().fold(row[0], T::lesser).wide(),
-        max: high.into_iter().fold(row[0], T::greater).wide(),
-    }
+    let kept = rest.iter().chain(&lanes).fold(row[0], |kept, &v| if beats(v, kept) { v } else { kept });
+    kept.wide()
 }
 
 /// Scale of the exact cosine sums: a row of up to 2^14 cells fits 64 bits.
@@ -139,30 +136,26 @@ impl Cosine {
     /// Adds the cosines of consecutive cells; NaN marks a cell where the cosine is undefined.
     pub fn add<T: Real>(&mut self, row: &[T]) {
         // Slot 20 takes undefined cells; four tables keep successive increments independent.
-        let mut slots = [[0u32; COSINE_BINS + 1]; 4];
-        for part in row.chunks(1 << 14) {
-            let (mut sum, mut abs_sum, mut aligned) = (0i64, 0i64, 0u32);
-            let (quads, rest) = part.as_chunks::<4>();
-            for quad in quads {
-                for k in 0..4 {
-                    slots[k][slot(quad[k])] += 1;
-                }
-            }
-            for &c in rest {
-                slots[0][slot(c)] += 1;
-            }
-            for &c in part {
-                let fixed = (c.wide() * COSINE_SCALE) as i64;
-                sum += fixed;
-                abs_sum += fixed.abs();
-                aligned += u32::from(c.abs().wide() > 0.9);
-            }
+        let mut counts = [[0u32; SLOTS]; 4];
+        let mut slots = [0u64; CHUNK];
+        for part in row.chunks(CHUNK) {
+            let slots = &mut slots[..part.len()];
+            let (sum, abs_sum, aligned) = digest(part, slots);
             self.sum += i128::from(sum);
             self.abs_sum += i128::from(abs_sum);
             self.aligned += u64::from(aligned);
+            let (quads, rest) = slots.as_chunks::<4>();
+            for quad in quads {
+                for k in 0..4 {
+                    counts[k][quad[k] as usize % SLOTS] += 1;
+                }
+            }
+            for s in rest {
+                counts[0][*s as usize % SLOTS] += 1;
+            }
         }
         for b in 0..COSINE_BINS {
-            let n: u64 = slots.iter().map(|s| u64::from(s[b])).sum();
+            let n: u64 = counts.iter().map(|s| u64::from(s[b])).sum();
             self.bins[b] += n;
             self.defined += n;
         }
@@ -171,13 +164,13 @@ impl Cosine {
     /// As [`Cosine::add`] for a handful of cells, without its tables.
     pub fn add_few<T: Real>(&mut self, row: &[T]) {
         for &c in row {
-            let slot = slot(c);
+            let slot = slot(c) as usize;
             if slot < COSINE_BINS {
                 self.bins[slot] += 1;
                 self.defined += 1;
-                let fixed = (c.wide() * COSINE_SCALE) as i64;
-                self.sum += i128::from(fixed);
-                self.abs_sum += i128::from(fixed.abs());
+                let sum = fixed(c.wide());
+                self.sum += i128::from(sum);
+                self.abs_sum += i128::from(sum.abs());
                 self.aligned += u64::from(c.abs().wide() > 0.9);
             }
         }
@@ -222,11 +215,48 @@ impl Cosine {
     }
 }
 
-/// Bin of a cosine, one past the last bin where it is undefined. Round-off beyond +-1 stays in the outer bins.
+/// Cells a cosine sum goes through at a time: their 64-bit partial sums cannot overflow.
+const CHUNK: usize = 256;
+/// Room for 20 bins and the undefined cells, a power of two.
+const SLOTS: usize = 32;
+/// Added to a number of magnitude below 2^51, it leaves the nearest integer in the low bits of the sum.
+const INTEGER: f64 = 6_755_399_441_055_744.0;
+
+/// A cosine as an integer of scale [`COSINE_SCALE`], 0 where undefined. Arithmetic that vectorises, unlike a cast.
 #[inline(always)]
-fn slot<T: Real>(c: T) -> usize {
-    let bin = (((c + T::of(1.0)) * T::of(10.0)).wide() as i32).clamp(0, COSINE_BINS as i32 - 1) as usize;
-    if c.wide().is_nan() { COSINE_BINS } else { bin }
+fn fixed(c: f64) -> i64 {
+    let c = if c.is_nan() { 0.0 } else { c };
+    (c * COSINE_SCALE + INTEGER).to_bits() as i64 - INTEGER.to_bits() as i64
+}
+
+/// Bin of a cosine, 20 where it is undefined. Round-off beyond +-1 stays in the outer bins; the inner edges are exact to 1e-8.
+#[inline(always)]
+fn slot<T: Real>(c: T) -> u64 {
+    let w = ((c + T::of(1.0)) * T::of(10.0)).wide();
+    let w = if w > 19.5 { 19.5 } else { w };
+    let w = if w < 0.0 { 0.0 } else { w };
+    let w = if w.is_nan() { 20.5 } else { w };
+    // Rounds to the nearest integer after half is taken off: the floor.
+    (w - 0.499_999_9 + INTEGER).to_bits() & (SLOTS as u64 - 1)
+}
+
+/// Sum, sum of magnitudes and aligned cells of at most [`CHUNK`] cosines, and the slot of each.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
+fn digest<T: Real>(part: &[T], slots: &mut [u64]) -> (i64, i64, u32) {
+    for (s, &c) in slots.iter_mut().zip(part) {
+        *s = slot(c);
+    }
+    let (mut sum, mut abs_sum, mut aligned) = (0i64, 0i64, 0u32);
+    for &c in part {
+        sum += fixed(c.wide());
+    }
+    for &c in part {
+        abs_sum += fixed(c.abs().wide());
+    }
+    for &c in part {
+        aligned += u32::from(c.abs().wide() > 0.9);
+    }
+    (sum, abs_sum, aligned)
 }
 
 /// Bits of the mantissa a [`Quantiles`] bin keeps: bins are 2^-12 of the value wide.

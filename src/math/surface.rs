@@ -17,7 +17,7 @@ pub struct SurfaceMeasures {
     pub euler_surface: i64,
     /// Edges with one triangle: the rim at an open face.
     pub open_edges: usize,
-    /// Edges with more than two triangles, or with two that run along it the same way. Always 0 for an isosurface.
+    /// Edges whose two triangles run along it the same way. Always 0 for an isosurface.
     pub nonmanifold_edges: usize,
 }
 
@@ -33,23 +33,17 @@ pub fn measure(surface: &Isosurface, spacing: [f64; 3]) -> SurfaceMeasures {
 pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> SurfaceMeasures {
     let area = normals.iter().map(|&n| 0.5 * dot(n, n).sqrt()).sum();
 
-    let (mut edges, mut open_edges, mut nonmanifold_edges) = (0i64, 0, 0);
-    let mut bending = 0.0;
-    halfedge::for_each_edge(surface.points.len(), &surface.triangles, |lower, upper, sides| {
-        edges += 1;
-        match *sides {
-            [_] => open_edges += 1,
-            [a, b] if a.downward() != b.downward() => {
-                let (up, down) = if a.downward() { (b, a) } else { (a, b) };
-                let (n, m) = (normals[up.triangle()], normals[down.triangle()]);
-                let along = scaled(surface.vector(lower, upper), spacing);
-                let length = dot(along, along).sqrt();
-                // Both arguments carry the same factor: the areas and the edge length.
-                bending += length * angle(dot(along, cross(n, m)), length * dot(n, m));
-            }
-            _ => nonmanifold_edges += 1,
-        }
+    let (mut pairs, mut bending) = (0, 0.0);
+    let rest = halfedge::for_each_pair(surface.points.len(), &surface.triangles, |lower, upper, up, down| {
+        pairs += 1;
+        let (n, m) = (normals[up], normals[down]);
+        let along = scaled(surface.vector(lower, upper), spacing);
+        let length = dot(along, along).sqrt();
+        // Both arguments carry the same factor: the areas and the edge length.
+        bending += length * angle(dot(along, cross(n, m)), length * dot(n, m));
     });
+    let edges = (pairs + rest.open + rest.same_way) as i64;
+    let (open_edges, nonmanifold_edges) = (rest.open, rest.same_way);
 
     let closed = open_edges == 0 && surface.period == [None; 3];
     SurfaceMeasures {
