@@ -56,6 +56,10 @@ pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]
     }
 }
 
+/// Coefficients of the arctangent series, signs left out.
+const TERMS: [f64; 12] =
+    [1.0, 1.0 / 3.0, 1.0 / 5.0, 1.0 / 7.0, 1.0 / 9.0, 1.0 / 11.0, 1.0 / 13.0, 1.0 / 15.0, 1.0 / 17.0, 1.0 / 19.0, 1.0 / 21.0, 1.0 / 23.0];
+
 /// `atan2(sine, cosine)` for a sine and cosine with a common factor, to round-off. Edges of a smooth surface bend by less
 /// than 45 degrees: there the series of the arctangent at a quarter of the angle is cheaper than the library call.
 fn angle(sine: f64, cosine: f64) -> f64 {
@@ -66,10 +70,7 @@ fn angle(sine: f64, cosine: f64) -> f64 {
     let half = sine / (cosine + (sine * sine + cosine * cosine).sqrt());
     let t = half / (1.0 + (1.0 + half * half).sqrt());
     let q = t * t;
-    let mut series = 1.0 / 23.0;
-    for odd in [21.0, 19.0, 17.0, 15.0, 13.0, 11.0, 9.0, 7.0, 5.0, 3.0, 1.0] {
-        series = 1.0 / odd - q * series;
-    }
+    let series = TERMS.iter().rev().fold(0.0, |rest, term| term - q * rest);
     4.0 * t * series
 }
 

@@ -15,7 +15,7 @@ use crate::model::source::{AnySource, Fields, MemorySource, PlaneSource};
 use crate::model::statistics::{Alignment, Scan, Survey};
 use crate::model::surface::SurfaceSink;
 use crate::run::passes::{Pass, ShapePlan};
-use crate::run::stream::{Buffers, block_planes};
+use crate::run::stream::{Buffers, block_ranges};
 use crate::space::grid::Grid;
 use crate::survey::levels::{self, Divergence};
 
@@ -137,11 +137,11 @@ fn typed<T: Real>(
         }
     }
     let bytes = grid.cells() * fields.components() as u64 * size_of::<T>() as u64;
-    let thickness = block_planes(&*source, execution.block_planes);
+    let ranges = block_ranges(&*source, execution.block_planes);
     if source.is_costly() && bytes <= execution.keep_bytes {
         source = Box::new(kept(&mut *source, observe)?);
     }
-    let mut pass = Pass { source: &mut *source, thickness, buffers: Buffers::default(), observe };
+    let mut pass = Pass { source: &mut *source, ranges, buffers: Buffers::default(), observe };
     let deriver = |frame| Deriver::<T>::new(&grid, fields, &families, frame, request.viscosity, request.resistivity);
 
     let moving = request.frame == Frame::Box && families.iter().any(|f| f.indicator.depends_on_frame());

@@ -28,8 +28,8 @@ use crate::survey::{box_alignment, moments};
 pub struct Pass<'a, T> {
     /// The planes.
     pub source: &'a mut dyn PlaneSource<T>,
-    /// Planes a block.
-    pub thickness: usize,
+    /// The blocks that planes are worked on in.
+    pub ranges: Vec<Range<usize>>,
     /// Buffers shared by the passes.
     pub buffers: Buffers<T>,
     /// Who watches.
@@ -66,7 +66,7 @@ impl<T: Real> Pass<'_, T> {
         let mut sound = true;
         let halo = deriver.map_or(0, Deriver::halo);
         let reach = |z: Range<usize>| deriver.map_or((z.start as isize, z.end as isize), |d| d.reach(z));
-        blocks(self.source, self.thickness, halo, reach, &self.buffers, self.observe, |block| {
+        blocks(self.source, &self.ranges, halo, reach, &self.buffers, self.observe, |block| {
             if with_scan {
                 let planes = par::map_range(block.z.len(), |k| {
                     let z = block.z.start + k;
@@ -142,7 +142,7 @@ impl<T: Real> Pass<'_, T> {
         let mut whole = Alignment::default();
         blocks(
             self.source,
-            self.thickness,
+            &self.ranges,
             deriver.halo(),
             |z| deriver.reach(z),
             &self.buffers,
@@ -215,7 +215,7 @@ impl<T: Real> Pass<'_, T> {
         let mut out: Vec<Vec<Option<Shaped>>> = found.iter().map(|f| f.objects.iter().map(|_| None).collect()).collect();
         blocks(
             self.source,
-            self.thickness,
+            &self.ranges,
             deriver.halo(),
             |z| deriver.reach(z),
             &self.buffers,

@@ -15,16 +15,28 @@ use crate::space::slab::{Batch, Block};
 /// small beside the snapshot.
 const BLOCK_BYTES: usize = 12 << 20;
 
-/// Planes a block holds: what was asked for, else a multiple of the file's natural depth near 24 MiB.
-pub fn block_planes<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>) -> usize {
+/// The blocks of a pass: of the thickness asked for, else of a multiple of the file's natural depth near
+/// `BLOCK_BYTES`. The first blocks are thinner where the file does not mind, so that work begins before much is read.
+pub fn block_ranges<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>) -> Vec<Range<usize>> {
     let n = source.grid().n[2];
     if let Some(k) = wanted {
-        return k.clamp(1, n);
+        return cut(n, k.clamp(1, n), false);
     }
     let plane = source.grid().plane_cells() * source.fields().components() * size_of::<T>();
     let fits = (BLOCK_BYTES / plane.max(1)).clamp(4, 64);
     let natural = source.natural_planes().max(1);
-    (fits.max(natural) / natural * natural).clamp(1, n)
+    cut(n, (fits.max(natural) / natural * natural).clamp(1, n), natural == 1)
+}
+
+fn cut(n: usize, thickness: usize, thin_start: bool) -> Vec<Range<usize>> {
+    let mut next = if thin_start { (thickness / 4).max(1) } else { thickness };
+    let mut out: Vec<Range<usize>> = Vec::new();
+    while out.last().map_or(0, |r| r.end) < n {
+        let z = out.last().map_or(0, |r| r.end);
+        out.push(z..(z + next).min(n));
+        next = (2 * next).min(thickness);
+    }
+    out
 }
 
 /// Batches of component buffers that go round, within a pass and from one pass to the next: a fresh buffer costs as much
@@ -42,6 +54,10 @@ impl<T: Real> Buffers<T> {
         let used = self.0.lock().ok().and_then(|mut free| free.pop());
         let mut buffers = used.unwrap_or_else(|| vec![Vec::new(); components]);
         for b in &mut buffers {
+            // A new vector of zeros is not touched before it is read into; growing an old one is.
+            if b.capacity() < cells {
+                *b = vec![T::ZERO; cells];
+            }
             b.resize(cells, T::ZERO);
         }
         buffers
@@ -55,15 +71,13 @@ impl<T: Real> Buffers<T> {
 }
 
 /// What to read, in order: unwrapped first plane, and the planes as stored.
-fn plan(grid: &Grid, thickness: usize, halo: usize) -> Vec<(isize, Range<usize>)> {
+fn plan(grid: &Grid, ranges: &[Range<usize>], halo: usize) -> Vec<(isize, Range<usize>)> {
     let n = grid.n[2];
     let mut out = Vec::new();
     if grid.periodic[2] {
         out.push((-(halo as isize), n - halo..n));
     }
-    for z in (0..n).step_by(thickness) {
-        out.push((z as isize, z..(z + thickness).min(n)));
-    }
+    out.extend(ranges.iter().map(|z| (z.start as isize, z.clone())));
     if grid.periodic[2] {
         out.push((n as isize, 0..halo));
     }
@@ -72,14 +86,14 @@ fn plan(grid: &Grid, thickness: usize, halo: usize) -> Vec<(isize, Range<usize>)
 
 /// Streams the snapshot through `each`, block by block in ascending z.
 ///
-/// `reach` gives the first and one-past-last (unwrapped) plane that a range of planes needs; `halo` is what it may ask for
+/// `ranges` cuts the planes into consecutive blocks. `reach` gives the first and one-past-last (unwrapped) plane that a range of planes needs; `halo` is what it may ask for
 /// beyond a periodic face.
 ///
 /// # Errors
 /// Those of the source and of `each`; the pass ends at the first.
 pub fn blocks<T: Real>(
     source: &mut dyn PlaneSource<T>,
-    thickness: usize,
+    ranges: &[Range<usize>],
     halo: usize,
     reach: impl Fn(Range<usize>) -> (isize, isize),
     buffers: &Buffers<T>,
@@ -89,8 +103,7 @@ pub fn blocks<T: Real>(
     let grid = *source.grid();
     let plane_cells = grid.plane_cells();
     let components = source.fields().components();
-    let n = grid.n[2];
-    let mut todo = plan(&grid, thickness, halo).into_iter();
+    let mut todo = plan(&grid, ranges, halo).into_iter();
     let next = || -> Option<Result<Batch<T>>> {
         let (first, z) = todo.next()?;
         let mut buffers = buffers.take(components, z.len() * plane_cells);
@@ -99,15 +112,16 @@ pub fn blocks<T: Real>(
         Some(read.map(|()| Batch { first, planes: z.len(), components: buffers }))
     };
     let mut window: Vec<Arc<Batch<T>>> = Vec::new();
-    let mut z0 = 0;
+    let mut waiting = ranges.iter();
     let mut outcome = Ok(());
     par::read_ahead(1, next, |batch| {
         match batch {
             Ok(b) => window.push(Arc::new(b)),
             Err(e) => outcome = Err(e),
         }
-        while outcome.is_ok() && z0 < n {
-            let z = z0..(z0 + thickness).min(n);
+        while outcome.is_ok()
+            && let Some(z) = waiting.clone().next()
+        {
             let (low, high) = reach(z.clone());
             let loaded = window.last().map_or(isize::MIN, |b| b.first + b.planes as isize);
             if loaded < high {
@@ -116,7 +130,7 @@ pub fn blocks<T: Real>(
             while window.first().is_some_and(|b| b.first + b.planes as isize <= low) {
                 buffers.give(window.remove(0));
             }
-            z0 = z.end;
+            waiting.next();
             outcome = each(&Block::new(z.clone(), &window, plane_cells));
             observe.advance(z.len() as u64);
         }
@@ -151,7 +165,7 @@ mod tests {
                 let reach =
                     |z: Range<usize>| z.map(|k| stencil.reach(k)).fold((isize::MAX, isize::MIN), |a, b| (a.0.min(b.0), a.1.max(b.1)));
                 let mut seen = Vec::new();
-                blocks(&mut s, thickness, HALF, reach, &Buffers::default(), &Silent, |block| {
+                blocks(&mut s, &cut(n, thickness.min(n), thickness > 4), HALF, reach, &Buffers::default(), &Silent, |block| {
                     for z in block.z.clone() {
                         let (low, high) = stencil.reach(z);
                         for k in low..high {
