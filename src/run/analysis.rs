@@ -372,6 +372,12 @@ fn summed(
     }
 }
 
+/// Six significant digits, plain where that is short.
+fn six_digits(v: f64) -> String {
+    let rounded: f64 = format!("{v:.5e}").parse().unwrap_or(v);
+    if rounded == 0.0 || (1e-4..1e7).contains(&rounded.abs()) { format!("{rounded}") } else { format!("{rounded:e}") }
+}
+
 fn warnings(divergence: &[Divergence; 2], families: &[FamilyResult], fields: Fields, request: &Request) -> Vec<String> {
     let mut out = Vec::new();
     for (d, name) in divergence.iter().zip(["velocity", "magnetic field"]) {
@@ -385,8 +391,10 @@ fn warnings(divergence: &[Divergence; 2], families: &[FamilyResult], fields: Fie
     for f in families {
         if f.rows.is_empty() {
             out.push(format!(
-                "family {}: no object of at least {} cells beyond the level {:.6e}",
-                f.family.name, request.min_cells, f.level
+                "family {}: no object of at least {} cells beyond the level {}",
+                f.family.name,
+                request.min_cells,
+                six_digits(f.level)
             ));
         }
         if f.oversized > 0 {

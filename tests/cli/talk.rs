@@ -28,7 +28,7 @@ fn quiet_says_nothing() {
 fn warnings_go_to_standard_error_and_into_the_results() {
     let place = Place::with_snapshot();
     let ran = place.succeed("catalogue good.h5 --lengths 2pi --family 'none: vorticity > 900'");
-    let text = "family none: no object of at least 27 cells beyond the level 9.000000e2";
+    let text = "family none: no object of at least 27 cells beyond the level 900";
     assert_eq!(ran.err, format!("warning: {text}\n"));
     assert_eq!(place.json("ropewalk-run/run.json")["snapshots"][0]["warnings"], serde_json::json!([text]));
     assert_eq!(place.read("ropewalk-run/catalogue.csv").lines().count(), 1, "the header alone");
