@@ -39,7 +39,7 @@ fn derivative_along_row(bencher: Bencher) {
     let r = row();
     let s = AxisStencil::<f32>::new(N, 0.1, true);
     let (mut out, mut padded) = (vec![0.0; N], Vec::new());
-    bencher.counter(divan::counter::ItemsCount::new(N)).bench_local(|| s.along(&r, &mut padded, &mut out));
+    bencher.counter(divan::counter::ItemsCount::new(N)).bench_local(|| s.along(&r, 0..N, &mut padded, &mut out));
 }
 
 #[divan::bench]

@@ -1,5 +1,7 @@
 //! The nine derivatives of a vector field along one row.
 
+use std::ops::Range;
+
 use crate::base::real::Real;
 use crate::math::diff::{AxisStencil, HALF, Support, WIDTH, difference, weighted};
 use crate::space::slab::Block;
@@ -23,17 +25,21 @@ struct At<'a, 'b, T> {
     component: usize,
     z: usize,
     y: usize,
+    /// The positions wanted along the row.
+    x: &'b Range<usize>,
     nx: usize,
     ny: usize,
 }
 
 impl<'a, T: Real> At<'a, '_, T> {
+    /// The whole row.
     fn here(&self) -> &'a [T] {
-        self.row_of(self.z as isize, self.y)
+        &self.block.plane(self.component, self.z as isize)[self.y * self.nx..(self.y + 1) * self.nx]
     }
 
+    /// The wanted positions of another row.
     fn row_of(&self, z: isize, y: usize) -> &'a [T] {
-        &self.block.plane(self.component, z)[y * self.nx..(y + 1) * self.nx]
+        &self.block.plane(self.component, z)[y * self.nx + self.x.start..y * self.nx + self.x.end]
     }
 
     fn row_y(&self, offset: isize) -> &'a [T] {
@@ -75,16 +81,26 @@ impl<'a, T: Real> At<'a, '_, T> {
 
 impl<T: Real> Gradient<T> {
     /// The derivatives of the vector whose first component is `component`: all nine, or without `diagonal` the six of the curl.
-    pub fn row(&mut self, s: &[AxisStencil<T>; 3], block: &Block<'_, T>, component: usize, z: usize, y: usize, ny: usize, diagonal: bool) {
+    pub fn row(
+        &mut self,
+        s: &[AxisStencil<T>; 3],
+        block: &Block<'_, T>,
+        component: usize,
+        z: usize,
+        y: usize,
+        x: &Range<usize>,
+        ny: usize,
+        diagonal: bool,
+    ) {
         for c in 0..3 {
             let nx = block.plane(component + c, z as isize).len() / ny;
-            let at = At { block, component: component + c, z, y, nx, ny };
+            let at = At { block, component: component + c, z, y, x, nx, ny };
             for a in 0..3 {
-                self.d[c][a].resize(nx, T::ZERO);
+                self.d[c][a].resize(x.len(), T::ZERO);
             }
             let [dx, dy, dz] = &mut self.d[c];
             if c != 0 || diagonal {
-                s[0].along(at.here(), &mut self.padded, dx);
+                s[0].along(at.here(), at.x.clone(), &mut self.padded, dx);
             }
             if c != 1 || diagonal {
                 at.along_y(&s[1], &s[1].central, dy);
@@ -103,17 +119,18 @@ impl<T: Real> Gradient<T> {
         component: usize,
         z: usize,
         y: usize,
+        x: &Range<usize>,
         ny: usize,
         out: &mut Vec<T>,
     ) {
-        let nx = self.d[0][0].len();
         out.clear();
-        out.resize(nx, T::ZERO);
-        self.other.resize(nx, T::ZERO);
+        out.resize(x.len(), T::ZERO);
+        self.other.resize(x.len(), T::ZERO);
         for c in 0..3 {
-            let at = At { block, component: component + c, z, y, nx, ny };
+            let nx = block.plane(component + c, z as isize).len() / ny;
+            let at = At { block, component: component + c, z, y, x, nx, ny };
             match c {
-                0 => s[0].along_with(&s[0].central6, at.here(), &mut self.padded, &mut self.other),
+                0 => s[0].along_with(&s[0].central6, at.here(), at.x.clone(), &mut self.padded, &mut self.other),
                 1 => at.along_y(&s[1], &s[1].central6, &mut self.other),
                 _ => at.along_z(&s[2], &s[2].central6, &mut self.other),
             }

@@ -5,6 +5,8 @@ mod gradient;
 mod indicator;
 mod invariants;
 
+use std::ops::Range;
+
 use crate::base::real::Real;
 use crate::math::diff::{AxisStencil, HALF};
 use crate::model::request::{Family, Indicator};
@@ -67,7 +69,7 @@ impl<T: Real> Deriver<T> {
     }
 
     /// First and one-past-last plane (unwrapped) that the planes `z` read.
-    pub fn reach(&self, z: std::ops::Range<usize>) -> (isize, isize) {
+    pub fn reach(&self, z: Range<usize>) -> (isize, isize) {
         z.map(|k| self.stencils[2].reach(k)).fold((isize::MAX, isize::MIN), |a, b| (a.0.min(b.0), a.1.max(b.1)))
     }
 
@@ -76,13 +78,13 @@ impl<T: Real> Deriver<T> {
         HALF
     }
 
-    /// Derives row `y` of plane `z` of the block into `scratch.rows`.
-    pub fn row(&self, block: &Block<'_, T>, z: usize, y: usize, need: Need, scratch: &mut Scratch<T>) {
+    /// Derives the cells `x` of row `y` of plane `z` of the block into `scratch.rows`.
+    pub fn row(&self, block: &Block<'_, T>, z: usize, y: usize, x: Range<usize>, need: Need, scratch: &mut Scratch<T>) {
         let Scratch { gradient, rows } = scratch;
         let mut component = 0;
         let strain = need.strain || self.indicators.iter().any(|i| i.needs_strain());
         if self.fields.velocity {
-            gradient.row(&self.stencils, block, component, z, y, self.ny, strain || need.divergence);
+            gradient.row(&self.stencils, block, component, z, y, &x, self.ny, strain || need.divergence);
             invariants::curl(gradient, &mut rows.w, &mut rows.w2);
             if strain {
                 invariants::strain2(gradient, &mut rows.strain2);
@@ -91,10 +93,10 @@ impl<T: Real> Deriver<T> {
                 invariants::divergence(gradient, &mut rows.div_u);
             }
             if need.truncation {
-                gradient.divergence_miss(&self.stencils, block, component, z, y, self.ny, &mut rows.div_u_miss);
+                gradient.divergence_miss(&self.stencils, block, component, z, y, &x, self.ny, &mut rows.div_u_miss);
             }
             for c in 0..3 {
-                let row = &block.plane(component + c, z as isize)[y * self.nx..(y + 1) * self.nx];
+                let row = &block.plane(component + c, z as isize)[y * self.nx + x.start..y * self.nx + x.end];
                 let f = self.frame[c];
                 rows.u[c].clear();
                 rows.u[c].extend(row.iter().map(|&v| v - f));
@@ -102,16 +104,16 @@ impl<T: Real> Deriver<T> {
             component += 3;
         }
         if self.fields.magnetic {
-            gradient.row(&self.stencils, block, component, z, y, self.ny, need.divergence);
+            gradient.row(&self.stencils, block, component, z, y, &x, self.ny, need.divergence);
             invariants::curl(gradient, &mut rows.j, &mut rows.j2);
             if need.divergence {
                 invariants::divergence(gradient, &mut rows.div_b);
             }
             if need.truncation {
-                gradient.divergence_miss(&self.stencils, block, component, z, y, self.ny, &mut rows.div_b_miss);
+                gradient.divergence_miss(&self.stencils, block, component, z, y, &x, self.ny, &mut rows.div_b_miss);
             }
             for c in 0..3 {
-                let row = &block.plane(component + c, z as isize)[y * self.nx..(y + 1) * self.nx];
+                let row = &block.plane(component + c, z as isize)[y * self.nx + x.start..y * self.nx + x.end];
                 rows.b[c].clear();
                 rows.b[c].extend_from_slice(row);
             }

@@ -3,6 +3,8 @@
 //! Kernels choose the vector width at run time. Width alone changes no bit of a result: lanes are independent and nothing is
 //! contracted to fused operations.
 
+use std::ops::Range;
+
 use crate::base::real::Real;
 
 /// Half width of the central stencil: order 8 needs four samples on each side.
@@ -110,15 +112,24 @@ impl<T: Real> AxisStencil<T> {
         }
     }
 
-    /// Derivative along a row of `n` values. `padded` is scratch that is resized as needed.
-    pub fn along(&self, row: &[T], padded: &mut Vec<T>, out: &mut [T]) {
-        self.along_with(&self.central, row, padded, out);
+    /// Derivative along a row of `n` values at the positions `x`; `padded` is scratch that is resized as needed.
+    ///
+    /// # Panics
+    /// When `out` is not as long as `x`, or `x` leaves `0..n`.
+    pub fn along(&self, row: &[T], x: Range<usize>, padded: &mut Vec<T>, out: &mut [T]) {
+        self.along_with(&self.central, row, x, padded, out);
     }
 
     /// As [`AxisStencil::along`] with other central weights; positions near an open face keep order 8.
-    pub fn along_with(&self, central: &[T; HALF], row: &[T], padded: &mut Vec<T>, out: &mut [T]) {
+    pub fn along_with(&self, central: &[T; HALF], row: &[T], x: Range<usize>, padded: &mut Vec<T>, out: &mut [T]) {
         let n = self.n;
         debug_assert_eq!(row.len(), n);
+        assert_eq!(out.len(), x.len(), "positions");
+        if x.start >= HALF && x.end + HALF <= n {
+            let at = |k: usize| &row[x.start + k - HALF..x.end + k - HALF];
+            difference(out, [at(3), at(2), at(1), at(0)], [at(5), at(6), at(7), at(8)], central);
+            return;
+        }
         padded.clear();
         if self.periodic {
             padded.extend_from_slice(&row[n - HALF..]);
@@ -129,16 +140,16 @@ impl<T: Real> AxisStencil<T> {
             padded.extend_from_slice(row);
             padded.resize(n + 2 * HALF, T::ZERO);
         }
-        let at = |k: usize| &padded[k..k + n];
+        let at = |k: usize| &padded[x.start + k..x.end + k];
         difference(out, [at(3), at(2), at(1), at(0)], [at(5), at(6), at(7), at(8)], central);
         if !self.periodic {
-            for i in (0..HALF).chain(n - HALF..n) {
+            for i in (0..HALF).chain(n - HALF..n).filter(|i| x.contains(i)) {
                 if let Support::Window { first, weights } = self.support(i) {
                     let mut s = T::ZERO;
                     for (k, w) in weights.iter().enumerate() {
                         s += *w * row[first + k];
                     }
-                    out[i] = s;
+                    out[i - x.start] = s;
                 }
             }
         }
@@ -204,13 +215,28 @@ mod tests {
         let f: Vec<f64> = (0..n).map(|i| (i as f64 * h).sin().exp()).collect();
         let s = AxisStencil::<f64>::new(n, h, periodic);
         let mut out = vec![0.0; n];
-        s.along(&f, &mut Vec::new(), &mut out);
+        s.along(&f, 0..n, &mut Vec::new(), &mut out);
         (0..n)
             .map(|i| {
                 let x = i as f64 * h;
                 (out[i] - x.cos() * x.sin().exp()).abs()
             })
             .fold(0.0, f64::max)
+    }
+
+    #[test]
+    fn part_of_a_row_is_the_same_bits_as_the_whole() {
+        let f: Vec<f32> = (0..40).map(|i| (i as f32 * 0.7).sin()).collect();
+        for periodic in [true, false] {
+            let s = AxisStencil::<f32>::new(40, 0.3, periodic);
+            let mut whole = vec![0.0; 40];
+            s.along(&f, 0..40, &mut Vec::new(), &mut whole);
+            for (a, b) in [(0, 1), (0, 7), (3, 20), (4, 36), (5, 6), (30, 37), (36, 40), (39, 40)] {
+                let mut part = vec![0.0; b - a];
+                s.along(&f, a..b, &mut Vec::new(), &mut part);
+                assert_eq!(part, whole[a..b], "{a}..{b}");
+            }
+        }
     }
 
     /// Order of convergence on an exact function (calculus), periodic and with one-sided ends.

@@ -53,6 +53,19 @@ struct Delivery {
     start: usize,
 }
 
+/// Cells of one row that a patch wants.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
+pub struct Wanted {
+    /// Plane.
+    pub z: usize,
+    /// Row.
+    pub y: usize,
+    /// First cell.
+    pub x: usize,
+    /// Number of cells.
+    pub len: usize,
+}
+
 /// The patches of one family while planes stream by in ascending z.
 pub struct Patches<T> {
     grid: Grid,
@@ -128,7 +141,7 @@ impl<T: Real> Patches<T> {
         });
         par::map_range(tiles.len(), |t| {
             let mut list: Vec<Delivery> = parts.iter().flat_map(|lists| lists[t].iter().copied()).collect();
-            list.sort_unstable_by_key(|d| (d.z, d.y, d.patch, d.start));
+            list.sort_unstable_by_key(|d| (d.z, d.y, d.x, d.patch, d.start));
             list
         })
     }
@@ -145,28 +158,25 @@ impl<T: Real> Patches<T> {
         [Some(piece(x, head, s.start)), tail]
     }
 
-    /// The rows (z, y) of a tile that some patch wants, ascending.
-    pub fn wanted_rows(&self, tile: usize) -> impl Iterator<Item = (usize, usize)> + '_ {
-        let list = &self.deliveries[tile];
-        list.iter()
-            .enumerate()
-            .filter(|(i, d)| *i == 0 || (list[i - 1].z, list[i - 1].y) != (d.z, d.y))
-            .map(|(_, d)| (d.z as usize, d.y as usize))
+    /// What the patches want of a tile.
+    pub fn wanted(&self, tile: usize) -> impl Iterator<Item = Wanted> + '_ {
+        self.deliveries[tile].iter().map(|d| Wanted { z: d.z as usize, y: d.y as usize, x: d.x as usize, len: d.len as usize })
     }
 
-    /// Hands the derived row (z, y) to every patch that wants part of it.
-    pub fn deliver(&self, tile: usize, z: usize, y: usize, rows: &Rows<T>) {
+    /// Hands the derived cells `x` of row (z, y) to every patch that wants some of them; what is wanted lies inside or
+    /// outside `x`, never across its ends.
+    pub fn deliver(&self, tile: usize, z: usize, y: usize, x: &Range<usize>, rows: &Rows<T>) {
         let list = &self.deliveries[tile];
-        let from = list.partition_point(|d| (d.z as usize, d.y as usize) < (z, y));
-        for d in list[from..].iter().take_while(|d| (d.z as usize, d.y as usize) == (z, y)) {
+        let from = list.partition_point(|d| (d.z as usize, d.y as usize, d.x as usize) < (z, y, x.start));
+        for d in list[from..].iter().take_while(|d| (d.z as usize, d.y as usize) == (z, y) && (d.x as usize) < x.end) {
             let open = &self.open[d.patch as usize];
             let mut values = open.values.lock().unwrap_or_else(PoisonError::into_inner);
             let cells = open.shape.cells;
-            let (x, len) = (d.x as usize, d.len as usize);
+            let (at, len) = (d.x as usize - x.start, d.len as usize);
             let mut field = 0;
             let mut put = |row: &[T]| {
                 let to = field * cells + d.start;
-                values[to..to + len].copy_from_slice(&row[x..x + len]);
+                values[to..to + len].copy_from_slice(&row[at..at + len]);
                 field += 1;
             };
             put(&rows.indicators[self.family]);

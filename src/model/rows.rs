@@ -1,4 +1,4 @@
-//! Derived quantities of one row of cells: filled by the derive stage, read by every stage behind it.
+//! Derived quantities of a row of cells, or of part of one: filled by the derive stage, read by every stage behind it.
 
 /// What has to be derived for a pass.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
@@ -13,7 +13,7 @@ pub struct Need {
     pub alignment: bool,
 }
 
-/// Derived quantities of the cells of one row, each `nx` long. Vectors have one array a component (x, y, z).
+/// Derived quantities of consecutive cells of one row, all arrays of one length. Vectors have one array a component (x, y, z).
 ///
 /// Arrays of a field that is not there stay empty.
 #[derive(Debug, Clone, Default)]

@@ -10,7 +10,7 @@ use crate::base::real::Real;
 use crate::derive::{Deriver, Scratch};
 use crate::detect::{Criterion, Labeller, TileSweep};
 use crate::math::stats::Quantiles;
-use crate::measure::patches::Patches;
+use crate::measure::patches::{Patches, Wanted};
 use crate::measure::surface::{Shaped, shape};
 use crate::model::object::Detected;
 use crate::model::request::{Family, Level};
@@ -93,6 +93,7 @@ impl<T: Real> Pass<'_, T> {
                                 block,
                                 z,
                                 y,
+                                0..grid.n[0],
                                 Need { strain: true, divergence: true, truncation: sampled, alignment: false },
                                 &mut scratch,
                             );
@@ -158,7 +159,14 @@ impl<T: Real> Pass<'_, T> {
                         .map(|z| {
                             let mut part = Alignment::default();
                             for y in rows_y.clone() {
-                                deriver.row(block, z, y, Need { strain: true, alignment: true, ..Need::default() }, &mut scratch);
+                                deriver.row(
+                                    block,
+                                    z,
+                                    y,
+                                    0..grid.n[0],
+                                    Need { strain: true, alignment: true, ..Need::default() },
+                                    &mut scratch,
+                                );
                                 box_alignment::add_row(&mut part, &scratch.rows);
                                 for sweep in &mut sweeps {
                                     sweep.add_row(&grid, &scratch.rows, y, z);
@@ -255,13 +263,15 @@ fn shape_block<T: Real>(
     let open: &[Patches<T>] = patches;
     par::map_range(tiles.len(), |t| {
         let mut scratch = Scratch::default();
-        let mut wanted: Vec<(usize, usize)> = open.iter().flat_map(|p| p.wanted_rows(t)).collect();
+        let mut wanted: Vec<Wanted> = open.iter().flat_map(|p| p.wanted(t)).collect();
         wanted.sort_unstable();
-        wanted.dedup();
-        for (z, y) in wanted {
-            deriver.row(block, z, y, Need::default(), &mut scratch);
-            for p in open {
-                p.deliver(t, z, y, &scratch.rows);
+        for row in wanted.chunk_by(|a, b| (a.z, a.y) == (b.z, b.y)) {
+            let (z, y) = (row[0].z, row[0].y);
+            for x in joined(row) {
+                deriver.row(block, z, y, x.clone(), Need::default(), &mut scratch);
+                for p in open {
+                    p.deliver(t, z, y, &x, &scratch.rows);
+                }
             }
         }
     });
@@ -282,6 +292,20 @@ fn shape_block<T: Real>(
         finished.push((k, meshes));
     }
     finished
+}
+
+/// The stretches of a row that cover what is wanted of it, nearby ones joined: deriving a few cells more is cheaper than
+/// beginning anew.
+fn joined(row: &[Wanted]) -> Vec<Range<usize>> {
+    const GAP: usize = 64;
+    let mut out: Vec<Range<usize>> = Vec::new();
+    for w in row {
+        match out.last_mut() {
+            Some(last) if w.x <= last.end + GAP => last.end = last.end.max(w.x + w.len),
+            _ => out.push(w.x..w.x + w.len),
+        }
+    }
+    out
 }
 
 /// Which objects get a surface and a mesh.
