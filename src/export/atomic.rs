@@ -58,6 +58,7 @@ impl Folder {
             }
             fs::create_dir_all(parent).map_err(|e| failed("cannot make the run folder", parent, &e))?;
         }
+        clear_if_orphaned(&building);
         fs::create_dir(&building).map_err(|e| {
             let error = failed("cannot make the run folder", &building, &e);
             if e.kind() == std::io::ErrorKind::AlreadyExists {
@@ -66,7 +67,9 @@ impl Folder {
                 error
             }
         })?;
-        Ok(Folder { target: target.to_path_buf(), building, replace, finished: false })
+        let folder = Folder { target: target.to_path_buf(), building, replace, finished: false };
+        folder.write(OWNER, owner(std::process::id()).as_bytes())?;
+        Ok(folder)
     }
 
     /// Where a file of the folder lies while it is being built.
@@ -83,19 +86,13 @@ impl Folder {
         fs::create_dir_all(&path).map_err(|e| failed("cannot make a folder", &path, &e))
     }
 
-    /// Creates a file for reading and writing.
+    /// Creates a file for reading and writing; two files of one name are an error.
     ///
     /// # Errors
     /// `Output`.
     pub fn file(&self, name: &str) -> Result<File> {
         let path = self.path(name);
-        File::options()
-            .read(true)
-            .write(true)
-            .create(true)
-            .truncate(true)
-            .open(&path)
-            .map_err(|e| failed("cannot create a file", &path, &e))
+        File::options().read(true).write(true).create_new(true).open(&path).map_err(|e| failed("cannot create a file", &path, &e))
     }
 
     /// Writes a whole file.
@@ -121,6 +118,7 @@ impl Folder {
     /// # Errors
     /// `Output`.
     pub fn finish(mut self) -> Result<PathBuf> {
+        self.remove(OWNER)?;
         let old = beside(&self.target, ".replaced");
         let had_old = self.replace && self.target.exists();
         if had_old {
@@ -138,6 +136,26 @@ impl Folder {
             fs::remove_dir_all(&old).map_err(|e| failed("cannot remove the earlier run", &old, &e))?;
         }
         Ok(self.target.clone())
+    }
+}
+
+/// Says who is building a folder.
+const OWNER: &str = "owner";
+
+fn owner(process: u32) -> String {
+    let host = fs::read_to_string("/proc/sys/kernel/hostname").unwrap_or_default();
+    format!("{process} {}\n", host.trim())
+}
+
+/// Removes what a run on this machine left behind when it was killed. Anything doubtful is left for the user to judge.
+fn clear_if_orphaned(building: &Path) {
+    let Ok(text) = fs::read_to_string(building.join(OWNER)) else { return };
+    let Some(process) = text.split_whitespace().next().and_then(|p| p.parse::<u32>().ok()) else { return };
+    let processes = Path::new("/proc");
+    let gone = processes.join("self").exists() && !processes.join(process.to_string()).exists();
+    if gone && text == owner(process) {
+        // If it cannot be removed, making the folder fails next and says so.
+        let _ = fs::remove_dir_all(building);
     }
 }
 
@@ -180,6 +198,20 @@ mod tests {
         f.finish().unwrap();
         assert_eq!(fs::read(target.join("run.json")).unwrap(), b"2");
         assert_eq!(fs::read_dir(place.path()).unwrap().count(), 1);
+    }
+
+    #[test]
+    fn what_a_killed_run_left_is_cleared() {
+        let place = tempfile::tempdir().unwrap();
+        let target = place.path().join("run");
+        let left = place.path().join("run.unfinished");
+        fs::create_dir(&left).unwrap();
+        assert!(Folder::create(&target, false).is_err(), "nobody knows whose this is");
+        // Process numbers stay below 2^22 on Linux.
+        fs::write(left.join(OWNER), owner(u32::MAX)).unwrap();
+        let f = Folder::create(&target, false).unwrap();
+        f.write("run.json", b"{}").unwrap();
+        assert_eq!(fs::read_dir(f.finish().unwrap()).unwrap().count(), 1);
     }
 
     #[test]

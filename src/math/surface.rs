@@ -17,8 +17,27 @@ pub struct SurfaceMeasures {
     pub euler_surface: i64,
     /// Edges with one triangle: the rim at an open face.
     pub open_edges: usize,
+    /// Pieces of the surface that enclose something; other pieces are walls of cavities. 0 where `volume` is missing.
+    pub bodies: usize,
+    /// Handles of all pieces together: the sum of 1 - (V - E + F)/2. 0 where `volume` is missing.
+    pub handles: i64,
+    /// The piece that encloses most; missing where `volume` is.
+    pub largest: Option<Piece>,
     /// Edges whose two triangles run along it the same way. Always 0 for an isosurface.
     pub nonmanifold_edges: usize,
+}
+
+/// One connected piece of a closed surface.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct Piece {
+    /// Sum of triangle areas.
+    pub area: f64,
+    /// Enclosed volume; negative for the wall of a cavity.
+    pub volume: f64,
+    /// As [`SurfaceMeasures::mean_curvature_integral`].
+    pub mean_curvature_integral: f64,
+    /// V - E + F.
+    pub euler_surface: i64,
 }
 
 /// Measures a surface for cells of the given size along x, y, z.
@@ -31,29 +50,76 @@ pub fn measure(surface: &Isosurface, spacing: [f64; 3]) -> SurfaceMeasures {
 
 /// As [`measure`], for a caller that has the [`Isosurface::area_vectors`] of the same spacing at hand.
 pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> SurfaceMeasures {
-    let area = normals.iter().map(|&n| 0.5 * dot(n, n).sqrt()).sum();
-
-    let (mut pairs, mut bending) = (0, 0.0);
+    let (piece_of, count) = pieces(surface);
+    let of = |vertex: u32| piece_of[vertex as usize] as usize;
+    let mut parts = vec![Piece::default(); count];
+    for (t, &n) in surface.triangles.iter().zip(normals) {
+        let part = &mut parts[of(t[0])];
+        part.area += 0.5 * dot(n, n).sqrt();
+        // p0·(p1 × p2) = p0·((p1 - p0) × (p2 - p0)), about the first vertex: keeps round-off small far from the origin.
+        part.volume += dot(scaled(surface.vector(0, t[0]), spacing), n) / 6.0;
+        part.euler_surface += 1;
+    }
+    for p in &piece_of {
+        parts[*p as usize].euler_surface += 1;
+    }
     let rest = halfedge::for_each_pair(surface.points.len(), &surface.triangles, |lower, upper, up, down| {
-        pairs += 1;
         let (n, m) = (normals[up], normals[down]);
         let along = scaled(surface.vector(lower, upper), spacing);
         let length = dot(along, along).sqrt();
+        let part = &mut parts[of(lower)];
         // Both arguments carry the same factor: the areas and the edge length.
-        bending += length * angle(dot(along, cross(n, m)), length * dot(n, m));
+        part.mean_curvature_integral += 0.5 * length * angle(dot(along, cross(n, m)), length * dot(n, m));
+        part.euler_surface -= 1;
     });
-    let edges = (pairs + rest.open + rest.same_way) as i64;
     let (open_edges, nonmanifold_edges) = (rest.open, rest.same_way);
-
     let closed = open_edges == 0 && surface.period == [None; 3];
+    let total = |f: fn(&Piece) -> f64| parts.iter().map(f).sum::<f64>();
+    let bodies: Vec<&Piece> = parts.iter().filter(|p| closed && p.volume > 0.0).collect();
+    let larger = |a: &&Piece, b: &&Piece| a.volume.total_cmp(&b.volume);
     SurfaceMeasures {
-        area,
-        volume: closed.then(|| enclosed(surface, spacing, normals)),
-        mean_curvature_integral: 0.5 * bending,
-        euler_surface: surface.points.len() as i64 - edges + surface.triangles.len() as i64,
+        area: total(|p| p.area),
+        volume: closed.then(|| total(|p| p.volume)),
+        mean_curvature_integral: total(|p| p.mean_curvature_integral),
+        euler_surface: parts.iter().map(|p| p.euler_surface).sum::<i64>() - (open_edges + nonmanifold_edges) as i64,
+        bodies: bodies.len(),
+        handles: if closed { parts.iter().map(|p| 1 - p.euler_surface / 2).sum() } else { 0 },
+        largest: bodies.into_iter().max_by(larger).copied(),
         open_edges,
         nonmanifold_edges,
     }
+}
+
+/// The connected piece of every vertex, numbered by their first vertex, and how many there are.
+fn pieces(surface: &Isosurface) -> (Vec<u32>, usize) {
+    let mut parent: Vec<u32> = (0..surface.points.len() as u32).collect();
+    fn root(parent: &mut [u32], mut v: u32) -> u32 {
+        while parent[v as usize] != v {
+            parent[v as usize] = parent[parent[v as usize] as usize];
+            v = parent[v as usize];
+        }
+        v
+    }
+    for &[a, b, c] in &surface.triangles {
+        let mut top = root(&mut parent, a);
+        for v in [b, c] {
+            let other = root(&mut parent, v);
+            parent[top.max(other) as usize] = top.min(other);
+            top = top.min(other);
+        }
+    }
+    // The root is the smallest vertex of its piece, so it has its number before any other asks for it.
+    let mut count = 0;
+    for v in 0..parent.len() {
+        let up = parent[v] as usize;
+        if up == v {
+            parent[v] = count;
+            count += 1;
+        } else {
+            parent[v] = parent[up];
+        }
+    }
+    (parent, count as usize)
 }
 
 /// Coefficients of the arctangent series, signs left out.
@@ -72,15 +138,6 @@ fn angle(sine: f64, cosine: f64) -> f64 {
     let q = t * t;
     let series = TERMS.iter().rev().fold(0.0, |rest, term| term - q * rest);
     4.0 * t * series
-}
-
-/// Sum of p0·(p1 × p2) / 6 about the first vertex, which keeps round-off small far from the grid's origin.
-fn enclosed(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> f64 {
-    let six = surface.triangles.iter().zip(normals).map(|(t, &n)| {
-        // p0·(p1 × p2) = p0·((p1 - p0) × (p2 - p0))
-        dot(scaled(surface.vector(0, t[0]), spacing), n)
-    });
-    six.sum::<f64>() / 6.0
 }
 
 #[cfg(test)]

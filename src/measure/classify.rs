@@ -4,8 +4,8 @@
 const ROUND: f64 = 0.1;
 /// Ratio of largest to smallest extent below which an object without a closed surface counts as a blob.
 const ROUND_EXTENTS: f64 = 2.0;
-/// Euler number of the body from which on an object counts as a tangle: three handles more than parts and cavities.
-const TANGLED: f64 = -2.0;
+/// Handles from which on an object counts as a tangle.
+const TANGLED: i64 = 3;
 
 /// What the rule looks at.
 #[derive(Debug, Clone, Copy, Default)]
@@ -14,8 +14,8 @@ pub struct Evidence {
     pub extents: [f64; 3],
     /// Axes along which it closes on itself.
     pub spans: [bool; 3],
-    /// Euler number of the body, where measured.
-    pub euler: Option<f64>,
+    /// Handles of the surface, where measured.
+    pub handles: Option<i64>,
     /// Mean curvature integral, where measured.
     pub curvature: Option<f64>,
     /// Planarity and filamentarity, where measured.
@@ -33,7 +33,7 @@ pub fn class(e: &Evidence) -> &'static str {
         2 => return "sheet",
         _ => return "tangle",
     }
-    if e.euler.is_some_and(|x| x <= TANGLED) || e.curvature.is_some_and(|c| c <= 0.0) {
+    if e.handles.is_some_and(|h| h >= TANGLED) || e.curvature.is_some_and(|c| c <= 0.0) {
         return "tangle";
     }
     if let (Some(p), Some(f)) = (e.planarity, e.filamentarity) {
@@ -63,7 +63,7 @@ mod tests {
         class(&Evidence {
             planarity: Some(planarity),
             filamentarity: Some(filamentarity),
-            euler: Some(1.0),
+            handles: Some(0),
             curvature: Some(1.0),
             ..Evidence::default()
         })
@@ -92,7 +92,7 @@ mod tests {
         assert_eq!(shape(0.8, -0.6), "sheet");
         assert_eq!(shape(-0.2, 0.5), "filament");
         assert_eq!(shape(-0.2, -0.1), "blob");
-        let holes = Evidence { euler: Some(-4.0), planarity: Some(0.1), filamentarity: Some(0.9), ..Evidence::default() };
+        let holes = Evidence { handles: Some(5), planarity: Some(0.1), filamentarity: Some(0.9), ..Evidence::default() };
         assert_eq!(class(&holes), "tangle");
         assert_eq!(class(&Evidence { curvature: Some(-1.0), ..Evidence::default() }), "tangle");
     }

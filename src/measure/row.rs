@@ -43,6 +43,9 @@ const UNDER_RESOLVED: f64 = 3.0;
 /// Below this many, `marginal`.
 const MARGINAL: f64 = 5.0;
 
+/// A surface in several pieces is measured by its largest one when that holds at least this share of the volume.
+const MAIN_SHARE: f64 = 0.9;
+
 /// Builds the row. `surface` is missing for objects over the size limit.
 pub fn row(context: &Context, object: &Object, surface: Option<&SurfaceMeasures>) -> Row {
     let mut r = Row::default();
@@ -181,40 +184,60 @@ fn shape(c: &Context, object: &Object, surface: Option<&SurfaceMeasures>, extent
         Some(s) if s.open_edges > 0 || object.tally.open_faces != 0 => {}
         Some(s) => {
             let volume = s.volume.unwrap_or(object.tally.moments.count as f64 * c.grid.cell_volume());
-            let curvature = s.mean_curvature_integral;
             let thickness = 3.0 * volume / s.area;
-            let width = (curvature > 0.0).then(|| s.area / curvature);
-            let length = (!closed && curvature > 0.0).then(|| curvature / (4.0 * std::f64::consts::PI));
-            let step = |a: f64, b: Option<f64>| b.map(|b| (b - a) / (b + a));
-            let planarity = step(thickness, width);
-            let filamentarity = width.and_then(|w| step(w, length));
             r.number(Col::SurfaceArea, Some(s.area));
-            r.number(Col::MeanCurvatureIntegral, Some(curvature));
+            r.number(Col::MeanCurvatureIntegral, Some(s.mean_curvature_integral));
             // An even number for a closed surface, so half of it is whole.
             r.set(Col::Euler, Value::Integer(s.euler_surface / 2));
-            let lengths = [
-                (Col::ShapefinderThickness, Col::ShapefinderThicknessEta, Some(thickness)),
-                (Col::ShapefinderWidth, Col::ShapefinderWidthEta, width),
-                (Col::ShapefinderLength, Col::ShapefinderLengthEta, length),
-            ];
-            for (col, in_eta, value) in lengths {
-                r.number(col, value);
-                r.number(in_eta, value.zip(c.kolmogorov_length).map(|(v, l)| v / l));
-            }
-            r.number(Col::Planarity, planarity);
-            r.number(Col::Filamentarity, filamentarity);
+            r.number(Col::ShapefinderThickness, Some(thickness));
+            r.number(Col::ShapefinderThicknessEta, c.kolmogorov_length.map(|l| thickness / l));
             let cells = thickness / c.grid.spacing.iter().fold(0.0f64, |a, &b| a.max(b));
             if cells < UNDER_RESOLVED {
                 flags.push("under_resolved");
             } else if cells < MARGINAL {
                 flags.push("marginal");
             }
-            if curvature <= 0.0 {
-                flags.push("curvature_not_positive");
+            let whole = Body { volume, area: s.area, curvature: s.mean_curvature_integral };
+            let body = match s.largest {
+                Some(p) if s.bodies > 1 => {
+                    flags.push("fragmented");
+                    let main = p.volume >= MAIN_SHARE * volume;
+                    main.then_some(Body { volume: p.volume, area: p.area, curvature: p.mean_curvature_integral })
+                }
+                _ => Some(whole),
+            };
+            if let Some(body) = body {
+                evidence = Evidence { handles: Some(s.handles), ..shapefinders(c, &body, closed, evidence, r, flags) };
             }
-            evidence =
-                Evidence { euler: Some(s.euler_surface as f64 / 2.0), curvature: Some(curvature), planarity, filamentarity, ..evidence };
         }
     }
     r.set(Col::Class, Value::Text(class(&evidence).to_string()));
+}
+
+/// What shapefinders are made of.
+struct Body {
+    volume: f64,
+    area: f64,
+    curvature: f64,
+}
+
+/// Sets width, length, planarity and filamentarity; returns the evidence with them.
+fn shapefinders(c: &Context, body: &Body, closed: bool, evidence: Evidence, r: &mut Row, flags: &mut Vec<&str>) -> Evidence {
+    let thickness = 3.0 * body.volume / body.area;
+    let width = (body.curvature > 0.0).then(|| body.area / body.curvature);
+    let length = (!closed && body.curvature > 0.0).then(|| body.curvature / (4.0 * std::f64::consts::PI));
+    let step = |a: f64, b: Option<f64>| b.map(|b| (b - a) / (b + a));
+    let planarity = step(thickness, width);
+    let filamentarity = width.and_then(|w| step(w, length));
+    let lengths = [(Col::ShapefinderWidth, Col::ShapefinderWidthEta, width), (Col::ShapefinderLength, Col::ShapefinderLengthEta, length)];
+    for (col, in_eta, value) in lengths {
+        r.number(col, value);
+        r.number(in_eta, value.zip(c.kolmogorov_length).map(|(v, l)| v / l));
+    }
+    r.number(Col::Planarity, planarity);
+    r.number(Col::Filamentarity, filamentarity);
+    if body.curvature <= 0.0 {
+        flags.push("curvature_not_positive");
+    }
+    Evidence { curvature: Some(body.curvature), planarity, filamentarity, ..evidence }
 }

@@ -103,7 +103,7 @@ columns! {
     Time "time" Time Run "Time of the snapshot; missing where the file does not say." "";
     Family "family" Text Run "What was thresholded: name of the family." "";
     Id "id" Count Run "Number of the object within snapshot and family, in the order of its smallest cell index (z, then y, then x)." "";
-    Class "class" Text Surface "Shape: filament, sheet, blob or tangle. Tangle: Euler number of the body -2 or less, or mean curvature integral not positive. Else blob: planarity and filamentarity both below 0.1. Else sheet where planarity exceeds filamentarity, filament otherwise. Objects without a closed surface are classed by their extents: ratio below 2 blob, else sheet or filament by the larger step; closed on itself along one axis filament or sheet by the two other extents, along two axes sheet, along three tangle." "rule of this program on the shapefinders of Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
+    Class "class" Text Surface "Shape: filament, sheet, blob or tangle. Tangle: three handles or more, or mean curvature integral not positive. Else blob: planarity and filamentarity both below 0.1. Else sheet where planarity exceeds filamentarity, filament otherwise. An object whose surface is open, or in several pieces of which none holds 90 % of the volume, is classed by its extents: ratio below 2 blob, else sheet or filament by the larger step; closed on itself along one axis filament or sheet by the two other extents, along two axes sheet, along three tangle." "rule of this program on the shapefinders of Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
     Level "level" Indicator Run "Absolute level of the family in this snapshot." "";
     Cells "cells" Count Tallies "Cells beyond the level." "";
     Volume "volume" Volume Tallies "Cells times cell volume." "";
@@ -136,15 +136,15 @@ columns! {
     OhmicShare "ohmic_share" One Tallies "Share of the box integral of |j|^2 held by the object; needs no eta." "as dissipation_ohmic";
     SurfaceArea "surface_area" Area Surface "Area of the isosurface of the indicator at the level." "triangulated isosurface of the indicator, not of the mask";
     MeanCurvatureIntegral "mean_curvature_integral" Length Surface "Half the surface integral of the two principal curvatures, positive for convex bodies (sphere: 4 pi R)." "sum over edges of length times signed angle, halved (Steiner formula of polyhedra)";
-    Euler "euler" Count Surface "Euler number of the body: half that of its surface (ball 1, torus 0)." "vertices - edges + faces of the closed surface, halved";
+    Euler "euler" Count Surface "Euler number of the body: half that of its surface (ball 1, torus 0); the sum over pieces and cavities." "vertices - edges + faces of the closed surface, halved";
     ShapefinderThickness "shapefinder_thickness" Length Surface "T = 3 V / S, V the volume enclosed by the isosurface (for an object that closes on itself: its cells' volume). A ball of radius R gives R, a long rod of radius r 1.5 r, a wide plate of thickness c 1.5 c." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
-    ShapefinderWidth "shapefinder_width" Length Surface "W = S / C, C the mean curvature integral; missing where C is not positive." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
-    ShapefinderLength "shapefinder_length" Length Surface "L = C / (4 pi); a long rod of length l gives about l / 4. Missing for an object that closes on itself." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
+    ShapefinderWidth "shapefinder_width" Length Surface "W = S / C, C the mean curvature integral; missing where C is not positive. Of the largest piece of a fragmented object, missing where that holds less than 90 % of the volume." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
+    ShapefinderLength "shapefinder_length" Length Surface "L = C / (4 pi); a long rod of length l gives about l / 4. Missing for an object that closes on itself. Of the largest piece, as shapefinder_width." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
     ShapefinderThicknessEta "shapefinder_thickness_eta" KolmogorovLength Surface "shapefinder_thickness in Kolmogorov lengths." "Kolmogorov 1941";
     ShapefinderWidthEta "shapefinder_width_eta" KolmogorovLength Surface "shapefinder_width in Kolmogorov lengths." "Kolmogorov 1941";
     ShapefinderLengthEta "shapefinder_length_eta" KolmogorovLength Surface "shapefinder_length in Kolmogorov lengths." "Kolmogorov 1941";
-    Planarity "planarity" One Surface "(W - T) / (W + T); may be negative for bodies that are not convex." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
-    Filamentarity "filamentarity" One Surface "(L - W) / (L + W); may be negative for bodies that are not convex." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
+    Planarity "planarity" One Surface "(W - T) / (W + T); may be negative for bodies that are not convex. Of the largest piece, as shapefinder_width." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
+    Filamentarity "filamentarity" One Surface "(L - W) / (L + W); may be negative for bodies that are not convex. Of the largest piece, as shapefinder_width." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
     CosUVorticity "cos_u_vorticity" One Tallies "Volume mean of the cosine of velocity (in the chosen frame) and vorticity, over cells where both are non-zero." "relative helicity density";
     AbsCosUVorticity "abs_cos_u_vorticity" One Tallies "As cos_u_vorticity, of its magnitude (1/2 for independent isotropic directions)." "as cos_u_vorticity";
     AlignedUVorticity "aligned_u_vorticity" One Tallies "Share of the cells with |cos(u, vorticity)| > 0.9 (0.1 for independent isotropic directions)." "as cos_u_vorticity";
@@ -161,7 +161,7 @@ columns! {
     LorentzSin2 "lorentz_sin2" One Tallies "Mean |j x b|^2 over mean |j|^2 |b|^2 (2/3 for independent isotropic directions, 0 where force-free)." "squared sine between current density and field, weighted by their squares";
     Wraps "wraps" Text Tallies "Axes along which the object closes on itself through the periodic box." "";
     OpenFaces "open_faces" Text Tallies "Open faces of the box that the object touches." "";
-    Flags "flags" Text Run "Why values are missing or to be read with care: wraps, open, additive_only, under_resolved (shapefinder_thickness below 3 cells), marginal (3 to 5 cells), curvature_not_positive, undefined_direction, no_velocity, no_magnetic, no_viscosity, no_resistivity, no_time." "";
+    Flags "flags" Text Run "Why values are missing or to be read with care: wraps, open, additive_only, under_resolved (shapefinder_thickness below 3 cells), marginal (3 to 5 cells), fragmented (cells that touch at edges or corners only, so that the isosurface is in several pieces: too thin for the grid), curvature_not_positive, undefined_direction, no_velocity, no_magnetic, no_viscosity, no_resistivity, no_time." "";
 }
 
 /// A value of a column.

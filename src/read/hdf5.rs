@@ -54,7 +54,7 @@ pub(super) fn open(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays
         if locked { error.hint("a program is writing it, or its file system has no locks: see HDF5_USE_FILE_LOCKING") } else { error }
     };
     let file = File::open(path).map_err(refused)?;
-    let choices = choose(spec, |name| file.dataset(name).ok().map(|d| d.ndim()));
+    let choices = choose(spec, |name| file.dataset(name).ok().map(|d| d.ndim())).map_err(|e| e.at(path))?;
     if choices.is_empty() {
         return Err(Error::input("cannot find a velocity or magnetic field")
             .at(path)

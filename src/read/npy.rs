@@ -66,7 +66,7 @@ pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: Order) -> Resu
         // A damaged file counts as present, so that its damage is reported and not its absence.
         path.is_file().then(|| read_header(&path, String::new()).map_or(4, |f| f.header.shape.len()))
     };
-    let choices = choose(spec, rank);
+    let choices = choose(spec, rank).map_err(|e| e.at(folder))?;
     if choices.is_empty() {
         return Err(Error::input("cannot find a velocity or magnetic field")
             .at(folder)

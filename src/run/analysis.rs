@@ -210,7 +210,7 @@ fn typed<T: Real>(
     }
     let warnings = warnings(&divergence, &results, fields, request);
     for w in &warnings {
-        observe.warning(w);
+        observe.warning(&format!("{}: {w}", snapshot.name));
     }
     Ok(Analysis {
         snapshot,

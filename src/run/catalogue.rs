@@ -58,24 +58,20 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     let started = Instant::now();
     let pool = Pool::new(config.threads)?;
     let clock = Clock::new(observe);
-    let mut failed = Vec::new();
+    let mut failed: Vec<(PathBuf, Error)> = Vec::new();
     let mut usable = Vec::new();
     for path in &config.snapshots {
-        match read::open(path, &config.input).and_then(|o| check(o, &config.request)) {
+        match read::open(path, &config.input).and_then(|o| check(o, path, &config.request)) {
             Ok(name) => usable.push((path.clone(), name)),
-            Err(e) if e.kind() == Kind::Usage => return Err(e),
-            Err(e) => fail(&mut failed, path, e, config, observe),
+            Err(e) => failed.push((path.clone(), e)),
         }
     }
-    for (i, (path, name)) in usable.iter().enumerate() {
-        if let Some((other, _)) = usable[..i].iter().find(|(_, n)| n == name) {
-            return Err(Error::usage("cannot tell two snapshots apart")
-                .at(path)
-                .expected("a name of its own")
-                .found(format!("the name \"{name}\", also that of {}", other.display()))
-                .hint("run them into two folders, or rename one"));
-        }
+    if usable.is_empty() && failed.iter().all(|(_, e)| e.kind() == Kind::Usage) {
+        // The request fits no snapshot: that is one fault, not one a snapshot.
+        return Err(failed.into_iter().next().map_or_else(|| Error::usage("no snapshot given").hint("name one or more files"), |(_, e)| e));
     }
+    failed.iter().for_each(|(_, e)| tell(e, config, observe));
+    tell_apart(&mut usable)?;
     if usable.is_empty() {
         return Err(none_usable(failed));
     }
@@ -83,8 +79,8 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     let mut table = csv::header();
     let mut done = Vec::new();
     let mut snapshots: Vec<Value> = Vec::new();
-    for (path, _) in &usable {
-        let one = pool.run(|| one(path, config, &folder, &clock));
+    for (path, name) in &usable {
+        let one = pool.run(|| one(path, name, config, &folder, &clock));
         match one {
             Ok((analysis, datasets)) => {
                 for family in &analysis.families {
@@ -93,7 +89,10 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
                 snapshots.push(summary::snapshot(&analysis, &path.to_string_lossy(), &datasets));
                 done.push(analysis);
             }
-            Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => fail(&mut failed, path, e, config, observe),
+            Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => {
+                tell(&e, config, observe);
+                failed.push((path.clone(), e));
+            }
             Err(e) => return Err(e),
         }
     }
@@ -116,17 +115,47 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     Ok(Outcome { folder: folder.finish()?, done, failed })
 }
 
-fn check(opened: Opened, request: &Request) -> Result<String> {
-    request.families_for(opened.source.fields())?;
+fn check(opened: Opened, path: &Path, request: &Request) -> Result<String> {
+    request.families_for(opened.source.fields()).map_err(|e| e.at(path))?;
     Ok(opened.name)
 }
 
-/// Keeps a failure. Among several snapshots it is told at once; that of the only one is the error of the run.
-fn fail(failed: &mut Vec<(PathBuf, Error)>, path: &Path, e: Error, config: &RunConfig, observe: &dyn Observe) {
+/// Tells a failure at once where other snapshots follow; that of the only snapshot is the error of the run.
+fn tell(e: &Error, config: &RunConfig, observe: &dyn Observe) {
     if config.snapshots.len() > 1 {
         observe.failure(&format!("snapshot skipped: {e}"));
     }
-    failed.push((path.to_path_buf(), e));
+}
+
+/// Gives every snapshot a name of its own: where file names are equal, the names of the folders around them go before.
+fn tell_apart(snapshots: &mut [(PathBuf, String)]) -> Result<()> {
+    let own: Vec<String> = snapshots.iter().map(|(_, name)| name.clone()).collect();
+    let names = |depth: usize| -> Vec<String> {
+        let named = |(path, _): &(PathBuf, String), own: &String| {
+            let folders: Vec<String> =
+                path.parent().into_iter().flat_map(Path::components).map(|c| c.as_os_str().to_string_lossy().into_owned()).collect();
+            let near = &folders[folders.len().saturating_sub(depth)..];
+            near.iter().filter(|f| !f.contains('/')).chain([own]).cloned().collect::<Vec<_>>().join("_")
+        };
+        snapshots.iter().zip(&own).map(|(s, own)| named(s, own)).collect()
+    };
+    let twice = |names: &[String]| (0..names.len()).find_map(|i| names[..i].iter().position(|n| *n == names[i]).map(|k| (k, i)));
+    let deepest = snapshots.iter().map(|(p, _)| p.components().count()).max().unwrap_or(0);
+    for depth in 0..=deepest {
+        let tried = names(depth);
+        if twice(&tried).is_none() {
+            for (s, name) in snapshots.iter_mut().zip(tried) {
+                s.1 = name;
+            }
+            return Ok(());
+        }
+    }
+    let (first, second) = twice(&own).unwrap_or((0, 0));
+    Err(Error::usage("cannot tell two snapshots apart")
+        .at(&snapshots[second].0)
+        .expected("a name of its own")
+        .found(format!("the name \"{}\", also that of {}", own[second], snapshots[first].0.display()))
+        .hint("name every snapshot once"))
 }
 
 /// The error of a run in which no snapshot could be used.
@@ -138,17 +167,17 @@ fn none_usable(mut failed: Vec<(PathBuf, Error)>) -> Error {
     }
 }
 
-fn one(path: &Path, config: &RunConfig, folder: &Folder, observe: &dyn Observe) -> Result<(Analysis, Vec<String>)> {
+fn one(path: &Path, name: &str, config: &RunConfig, folder: &Folder, observe: &dyn Observe) -> Result<(Analysis, Vec<String>)> {
     let opened = read::open(path, &config.input)?;
     let fields = opened.source.fields();
     let snapshot =
-        Snapshot { name: opened.name.clone(), time: opened.time, components: component_names(&opened.datasets, fields.components()) };
+        Snapshot { name: name.to_string(), time: opened.time, components: component_names(&opened.datasets, fields.components()) };
     let (request, execution) = (&config.request, &config.execution);
     let analysis = if request.surfaces == Surfaces::None {
         analyse(opened.source, snapshot, request, execution, observe, &mut NoSurfaces)?
     } else {
         let families = request.families_for(fields)?;
-        let mut files = MeshFiles::new(folder, &opened.name, families, fields, request.surfaces)?;
+        let mut files = MeshFiles::new(folder, name, families, fields, request.surfaces)?;
         match analyse(opened.source, snapshot, request, execution, observe, &mut files) {
             Ok(analysis) => {
                 files.finish()?;

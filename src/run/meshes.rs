@@ -28,7 +28,12 @@ const FACES: &str = ".faces";
 impl<'a> MeshFiles<'a> {
     /// Prepares the files of a snapshot; `surfaces` must not be [`Surfaces::None`].
     pub fn new(folder: &'a Folder, snapshot: &str, families: Vec<Family>, fields: Fields, surfaces: Surfaces) -> Result<Self> {
-        folder.subfolder("surfaces")?;
+        folder.subfolder(&format!("surfaces/{snapshot}"))?;
+        if surfaces == Surfaces::Each {
+            for family in &families {
+                folder.subfolder(&format!("surfaces/{snapshot}/{}", family.name))?;
+            }
+        }
         let together = families.iter().map(|_| None).collect();
         let values = SurfaceMesh::value_names(fields);
         Ok(MeshFiles {
@@ -43,8 +48,11 @@ impl<'a> MeshFiles<'a> {
     }
 
     fn name(&self, family: usize, id: Option<u64>) -> String {
-        let end = id.map_or(String::new(), |i| format!("_{i:06}"));
-        format!("surfaces/{}_{}{end}.ply", self.snapshot, self.families[family].name)
+        let family = &self.families[family].name;
+        match id {
+            Some(id) => format!("surfaces/{}/{family}/{id:06}.ply", self.snapshot),
+            None => format!("surfaces/{}/{family}.ply", self.snapshot),
+        }
     }
 
     fn open(&mut self, name: &str, family: usize) -> Result<PlyWriter<BufWriter<File>, File>> {
@@ -53,7 +61,8 @@ impl<'a> MeshFiles<'a> {
         self.begun.extend([name.to_string(), format!("{name}{FACES}")]);
         let comments = vec![
             format!("ropewalk {}", env!("CARGO_PKG_VERSION")),
-            format!("snapshot {}", self.snapshot),
+            // A line break would end the comment and spoil the header.
+            format!("snapshot {}", self.snapshot.replace(char::is_control, " ")),
             format!("family {}", self.families[family]),
         ];
         PlyWriter::new(out, faces, self.values.clone(), comments).map_err(|e| self.failed(name, &e))

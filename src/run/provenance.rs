@@ -10,8 +10,17 @@ pub fn program() -> Value {
     json!({
         "name": env!("CARGO_PKG_NAME"),
         "version": env!("CARGO_PKG_VERSION"),
-        "instruction_set": std::env::consts::ARCH,
+        "instruction_set": instruction_set(),
     })
+}
+
+/// The architecture, and the vector width that row kernels choose on it.
+fn instruction_set() -> &'static str {
+    #[cfg(target_arch = "x86_64")]
+    if std::arch::is_x86_feature_detected!("avx2") {
+        return "x86_64+avx2";
+    }
+    std::env::consts::ARCH
 }
 
 /// `timing.json`: threads, seconds, rates, peak memory, host.

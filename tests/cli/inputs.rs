@@ -41,11 +41,15 @@ fn wrong_shape() {
 fn missing_dataset() {
     let place = Place::new();
     place.hdf5("two.h5", &flow()[..2]);
+    let most = "cannot find all components: two.h5: expected u,v,w, found only u,v; \
+        hint: --velocity or --magnetic alone reads one field and leaves the other";
+    fails(&place, &format!("catalogue two.h5 {OPTIONS}"), 3, most);
+    place.hdf5("one.h5", &flow()[..1]);
     let guessed = format!(
-        "cannot find a velocity or magnetic field: two.h5: expected u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by,bz | magnetic | b \
-         in the root group, found /u 16x16x16, /v 16x16x16; {DATASETS_HINT}"
+        "cannot find a velocity or magnetic field: one.h5: expected u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by,bz | magnetic | b \
+         in the root group, found /u 16x16x16; {DATASETS_HINT}"
     );
-    fails(&place, &format!("catalogue two.h5 {OPTIONS}"), 3, &guessed);
+    fails(&place, &format!("catalogue one.h5 {OPTIONS}"), 3, &guessed);
     let named = format!("cannot find the dataset: two.h5: /w: found only /u 16x16x16, /v 16x16x16; {DATASETS_HINT}");
     fails(&place, &format!("catalogue two.h5 {OPTIONS} --velocity u,v,w"), 3, &named);
 }
@@ -143,11 +147,11 @@ fn bad_families() {
         fails(&place, &line, 2, &format!("cannot read family: {rest}"));
     }
     let line = "catalogue good.h5 --lengths 2pi --family 'sheets: current > 3 rms'";
-    let message = "cannot detect family: \"sheets: current > 3 rms\": expected a magnetic field, found none; \
+    let message = "cannot detect family: good.h5: \"sheets: current > 3 rms\": expected a magnetic field, found none; \
         hint: name its datasets with --magnetic BX,BY,BZ";
     fails(&place, line, 2, message);
     let line = "catalogue good.h5 --lengths 2pi --family 'd: dissipation_viscous > 3 mean'";
-    let message = "cannot detect family: \"d: dissipation_viscous > 3 mean\": expected the viscosity, found none; \
+    let message = "cannot detect family: good.h5: \"d: dissipation_viscous > 3 mean\": expected the viscosity, found none; \
         hint: give --viscosity, or threshold strain instead";
     fails(&place, line, 2, message);
     let line = "catalogue good.h5 --lengths 2pi --family 'a: q > 1 rms' --family 'a: speed > 1'";
@@ -197,7 +201,38 @@ fn two_snapshots_of_one_name() {
     let place = Place::with_snapshot();
     std::fs::create_dir(place.path("later")).expect("a new folder");
     place.hdf5("later/good.h5", &flow());
-    let message = "cannot tell two snapshots apart: later/good.h5: expected a name of its own, found the name \"good\", also that of good.h5; \
-        hint: run them into two folders, or rename one";
-    fails(&place, &format!("catalogue good.h5 later/good.h5 {OPTIONS}"), 2, message);
+    let message = "cannot tell two snapshots apart: good.h5: expected a name of its own, found the name \"good\", also that of good.h5; \
+        hint: name every snapshot once";
+    fails(&place, &format!("catalogue good.h5 good.h5 {OPTIONS}"), 2, message);
+    place.succeed(&format!("catalogue good.h5 later/good.h5 {OPTIONS} -o both"));
+    let table = place.read("both/catalogue.csv");
+    for name in ["good,", "later_good,"] {
+        assert!(table.lines().any(|l| l.starts_with(name)), "{name}");
+        assert!(place.path(&format!("both/surfaces/{}/v.ply", name.trim_end_matches(','))).is_file(), "{name}");
+    }
+}
+
+#[test]
+fn a_family_that_fits_one_snapshot_only() {
+    let place = Place::with_snapshot();
+    let all = flow();
+    place.hdf5("field.h5", &[("bx", all[0].1.clone()), ("by", all[1].1.clone()), ("bz", all[2].1.clone())]);
+    let ran = place.run("catalogue good.h5 field.h5 --lengths 2pi --family 'j: current > 2.2 rms' --min-cells 4 -o out");
+    assert_eq!(ran.code, 1, "{}", ran.err);
+    let reason = "cannot detect family: good.h5: \"j: current > 2.2 rms\": expected a magnetic field, found none; \
+        hint: name its datasets with --magnetic BX,BY,BZ";
+    assert_eq!(ran.err, format!("error: snapshot skipped: {reason}\n"));
+}
+
+#[test]
+fn options_that_make_no_sense_together() {
+    let place = Place::with_snapshot();
+    let wrong = [
+        ("--velocity u,v,w --magnetic u,v,w", "cannot read two fields: --velocity, --magnetic: expected different datasets, found u,v,w"),
+        ("--periodic ''", "cannot read an option: --periodic: expected a subset of xyz, or none, found nothing"),
+        ("--threads 5000", "cannot use a number of threads: --threads: expected at most 1024, found 5000; hint: 0 takes one per core"),
+    ];
+    for (options, message) in wrong {
+        fails(&place, &format!("catalogue good.h5 --lengths 2pi {options}"), 2, message);
+    }
 }

@@ -29,7 +29,7 @@ fn warnings_go_to_standard_error_and_into_the_results() {
     let place = Place::with_snapshot();
     let ran = place.succeed("catalogue good.h5 --lengths 2pi --family 'none: vorticity > 900'");
     let text = "family none: no object of at least 27 cells beyond the level 900";
-    assert_eq!(ran.err, format!("warning: {text}\n"));
+    assert_eq!(ran.err, format!("warning: good: {text}\n"));
     assert_eq!(place.json("ropewalk-run/run.json")["snapshots"][0]["warnings"], serde_json::json!([text]));
     assert_eq!(place.read("ropewalk-run/catalogue.csv").lines().count(), 1, "the header alone");
 }
@@ -40,7 +40,7 @@ fn a_wrong_axis_order_is_warned_about() {
     let ran = place.succeed(&format!("catalogue good.h5 {OPTIONS} --order xyz"));
     let lines: Vec<&str> = ran.err.lines().filter(|l| l.contains("not divergence-free")).collect();
     assert_eq!(lines.len(), 1, "{}", ran.err);
-    assert!(lines[0].starts_with("warning: the velocity is not divergence-free: rms(div)/rms(curl) = "), "{}", lines[0]);
+    assert!(lines[0].starts_with("warning: good: the velocity is not divergence-free: rms(div)/rms(curl) = "), "{}", lines[0]);
 }
 
 #[test]

@@ -117,3 +117,28 @@ fn rods_plates_and_rings_have_their_class_and_euler_number() {
         }
     }
 }
+
+/// A plate of 26 x 22 cells whose profile sech²(s/a) is only 0.8 cells wide (FWHM = 1.76275 a, the Harris profile): cells that touch
+/// at edges and corners, an isosurface in pieces. What it is must not depend on that: a sheet, flagged.
+#[test]
+fn a_plate_thinner_than_the_grid_is_still_a_sheet() {
+    let grid = Grid { n: [48; 3], spacing: [1.0; 3], origin: [0.0; 3], periodic: [false; 3] };
+    let directions = [[0.3, 0.2, 1.0], [1.0, 0.4, 0.7], [-0.5, 1.0, 0.3], [1.0, 1.0, 1.0], [0.1, -0.9, 0.6], [0.9, 0.1, -0.2]];
+    let a = 0.8 / 1.76275;
+    for direction in directions {
+        let place = Placement::along(direction, [23.7, 24.2, 23.4]);
+        let value = |p: Vector| {
+            let q = place.local(p);
+            let edge = (q[0] / 13.0).powi(8) + (q[1] / 11.0).powi(8);
+            (-edge).exp() / (q[2] / a).cosh().powi(2)
+        };
+        let o = run(sampled::<f64>(grid, MAGNETIC, |p| [0.0, value(p), 0.0]), &request(&["plate: field > 0.25"]));
+        let largest = o.rows(0).iter().max_by_key(|r| number(r, Col::Cells) as u64).unwrap();
+        assert!(number(largest, Col::Cells) > 300.0, "{direction:?}");
+        assert_eq!(text(largest, Col::Class), "sheet", "{direction:?}: {}", text(largest, Col::Flags));
+        assert!(text(largest, Col::Flags).contains("under_resolved"), "{direction:?}: {}", text(largest, Col::Flags));
+        if number(largest, Col::Euler) > 2.0 {
+            assert!(text(largest, Col::Flags).contains("fragmented"), "{direction:?}");
+        }
+    }
+}

@@ -21,13 +21,13 @@ pub fn run(args: &Args) -> Result<ExitCode> {
         Command::Catalogue(a) => {
             let outcome = catalogue(&settle::catalogue(a)?, &Console::new(a.talk))?;
             if !a.talk.quiet {
-                console::result(&overview(&outcome));
+                console::result(&overview(&outcome))?;
             }
             Ok(if outcome.failed.is_empty() { ExitCode::SUCCESS } else { ExitCode::from(exit::PARTIAL) })
         }
         Command::Demo(a) => demo(a),
         Command::Columns => {
-            console::result(&columns());
+            console::result(&columns())?;
             Ok(ExitCode::SUCCESS)
         }
     }
@@ -88,7 +88,7 @@ fn demo(a: &Demo) -> Result<ExitCode> {
     }
     text += &what_to_look_at(&a.folder);
     if !a.talk.quiet {
-        console::result(&text);
+        console::result(&text)?;
     }
     Ok(code)
 }

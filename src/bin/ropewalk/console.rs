@@ -6,7 +6,7 @@ use std::process::ExitCode;
 use std::sync::Mutex;
 
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
-use ropewalk::base::error::Error;
+use ropewalk::base::error::{Error, Result};
 use ropewalk::base::observe::Observe;
 
 use crate::args::Talk;
@@ -23,10 +23,13 @@ pub fn error(e: &Error) {
     eprintln!("error: {e}");
 }
 
-/// Prints results. A reader that stops listening is no error.
-pub fn result(text: &str) {
+/// Prints results. A reader that stops listening is no error, a full disk is.
+pub fn result(text: &str) -> Result<()> {
     let mut out = std::io::stdout().lock();
-    let _ = out.write_all(text.as_bytes()).and_then(|()| out.flush());
+    match out.write_all(text.as_bytes()).and_then(|()| out.flush()) {
+        Err(e) if e.kind() != std::io::ErrorKind::BrokenPipe => Err(Error::output("cannot write to standard output").found(e.to_string())),
+        _ => Ok(()),
+    }
 }
 
 /// Shows progress on a terminal and warnings everywhere.

@@ -10,6 +10,9 @@ use ropewalk::run::catalogue::RunConfig;
 
 use crate::args::{Catalogue, ConnectivityArg, FrameArg, SurfacesArg};
 
+/// More than any machine has cores for.
+const MOST_THREADS: usize = 1024;
+
 /// Settles a `catalogue` command.
 pub fn catalogue(a: &Catalogue) -> Result<RunConfig> {
     let families = a.families.iter().map(|f| Family::parse(f)).collect::<Result<Vec<_>>>()?;
@@ -21,6 +24,21 @@ pub fn catalogue(a: &Catalogue) -> Result<RunConfig> {
     };
     if a.min_cells == 0 {
         return Err(Error::usage("cannot use a size").item("--min-cells").expected("at least 1").found("0"));
+    }
+    if a.threads > MOST_THREADS {
+        return Err(Error::usage("cannot use a number of threads")
+            .item("--threads")
+            .expected(format!("at most {MOST_THREADS}"))
+            .found(a.threads.to_string())
+            .hint("0 takes one per core"));
+    }
+    if let (Some(u), Some(b)) = (&a.velocity, &a.magnetic)
+        && u == b
+    {
+        return Err(Error::usage("cannot read two fields")
+            .item("--velocity, --magnetic")
+            .expected("different datasets")
+            .found(u.join(",")));
     }
     if a.block_planes == Some(0) {
         return Err(Error::usage("cannot use a thickness").item("--block-planes").expected("at least 1").found("0"));
@@ -125,6 +143,9 @@ fn periodic(text: &str) -> Result<[bool; 3]> {
     let mut out = [false; 3];
     if text == "none" {
         return Ok(out);
+    }
+    if text.is_empty() {
+        return Err(Error::usage("cannot read an option").item("--periodic").expected("a subset of xyz, or none").found("nothing"));
     }
     for c in text.chars() {
         match "xyz".find(c) {
