@@ -17,7 +17,8 @@ fn success_is_0_and_leaves_the_run_folder() {
             "out/run/columns.json",
             "out/run/run.json",
             "out/run/surfaces/",
-            "out/run/surfaces/good_v.ply",
+            "out/run/surfaces/good/",
+            "out/run/surfaces/good/v.ply",
             "out/run/timing.json",
         ]
     );

@@ -7,7 +7,7 @@ use serde_json::Value;
 use crate::place::{OPTIONS, Place, field, flow};
 
 const RESULTS: [&str; 6] =
-    ["catalogue.csv", "columns.json", "run.json", "surfaces/both_v.ply", "surfaces/both_h.ply", "surfaces/both_j.ply"];
+    ["catalogue.csv", "columns.json", "run.json", "surfaces/both/v.ply", "surfaces/both/h.ply", "surfaces/both/j.ply"];
 
 #[test]
 fn results_do_not_depend_on_threads_or_blocks() {

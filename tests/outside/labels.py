@@ -22,12 +22,13 @@ def derivative(f, axis, h):
 class Flow:
     """Derived fields of a periodic snapshot in double precision."""
 
-    def __init__(self, path, lengths):
+    def __init__(self, path, lengths, frame="box"):
         with h5py.File(path) as f:
             read = lambda names: np.array([f[n][...].astype(float) for n in names])
             self.u = read("uvw")
             self.b = read(("bx", "by", "bz")) if "bx" in f else None
-        self.u -= self.u.mean((1, 2, 3), keepdims=True)
+        if frame == "box":
+            self.u -= self.u.mean((1, 2, 3), keepdims=True)
         self.n = np.array(self.u.shape[:0:-1])
         self.h = np.array(lengths) / self.n
         gradient = np.array([[derivative(c, a, self.h[a]) for a in range(3)] for c in self.u])
@@ -48,9 +49,16 @@ class Flow:
             return np.sqrt(self.strain2)
         if name == "helicity":
             return (self.u * self.w).sum(0)
+        if name == "speed":
+            return norm(self.u)
         if name == "lorentz":
             return norm(np.cross(self.j, self.b, axis=0))
         raise ValueError(name)
+
+    def vectors(self, cells):
+        """Velocity, vorticity, field and current density, by letter, in cells given by their flat indices."""
+        whole = {"u": self.u, "w": self.w} | ({} if self.b is None else {"b": self.b, "j": self.j})
+        return {letter: field.reshape(3, -1)[:, cells] for letter, field in whole.items()}
 
 
 def curl(g):
@@ -59,6 +67,31 @@ def curl(g):
 
 def norm(v):
     return np.sqrt((v**2).sum(0))
+
+
+def cosine(p, q):
+    return (p * q).sum(0) / norm(p) / norm(q)
+
+
+def squared_sine(vectors, p, q):
+    """Of the angle between two vectors, weighted by their squares."""
+    p, q = vectors[p], vectors[q]
+    return (np.cross(p, q, axis=0) ** 2).sum() / ((p**2).sum(0) * (q**2).sum(0)).sum()
+
+
+def compare_cosine(mean, magnitude, aligned, counts, wanted, tolerance, tag):
+    """What the program tells of a cosine against its values in the cells."""
+    support.close(mean, wanted.mean(), tolerance, f"{tag}: mean", tolerance)
+    support.close(magnitude, np.abs(wanted).mean(), tolerance, f"{tag}: mean magnitude", tolerance)
+    # A cosine within rounding of a bin's edge may count on either side.
+    edges = np.linspace(-1, 1, 21)
+    unsure = sum((np.abs(wanted - edge) < tolerance).sum() for edge in edges[1:-1])
+    assert counts.sum() == len(wanted), f"{tag}: {counts.sum()} cells in the histogram, wanted {len(wanted)}"
+    moved = np.abs(counts - np.histogram(wanted, edges)[0]).sum()
+    assert moved <= 2 * unsure, f"{tag}: {moved} cells elsewhere in the histogram"
+    unsure = (np.abs(np.abs(wanted) - 0.9) < tolerance).sum()
+    off = abs(aligned * len(wanted) - (np.abs(wanted) > 0.9).sum())
+    assert off <= unsure + 1e-6, f"{tag}: {off} cells more or less aligned"
 
 
 def level_in_a_gap(values, wanted, rounding):
@@ -126,32 +159,19 @@ def compare_row(row, flow, values, cells, axes, tolerance, tag):
     same("indicator_mean", inside.mean(), tolerance * scale)
     peak = np.array(np.unravel_index(extreme, values.shape))[::-1] * flow.h
     support.close([number(f"peak_{a}") for a in "xyz"], peak, 1e-12, f"{tag} peak position", 1e-12)
-    take = lambda f: f.reshape(3, -1)[:, cells]
     same("viscous_share", flow.strain2.ravel()[cells].sum() / flow.strain2.sum())
-    u, w = take(flow.u), take(flow.w)
-    same("lamb_sin2", (np.cross(u, w, axis=0) ** 2).sum() / ((u**2).sum(0) * (w**2).sum(0)).sum(), tolerance)
-    vectors = {"u": u, "w": w}
+    vectors = flow.vectors(cells)
+    same("lamb_sin2", squared_sine(vectors, "u", "w"), tolerance)
     if flow.b is not None:
-        b, j = take(flow.b), take(flow.j)
-        vectors |= {"b": b, "j": j}
-        same("ohmic_share", (j**2).sum() / (flow.j**2).sum())
-        same("lorentz_sin2", (np.cross(j, b, axis=0) ** 2).sum() / ((j**2).sum(0) * (b**2).sum(0)).sum(), tolerance)
+        same("ohmic_share", (vectors["j"] ** 2).sum() / (flow.j**2).sum())
+        same("lorentz_sin2", squared_sine(vectors, "j", "b"), tolerance)
     for name, p, q in COSINES:
         if p not in vectors or q not in vectors:
             assert row[f"cos_{name}"] == "", f"{tag}: cos_{name} should be missing"
             continue
-        cosine = (vectors[p] * vectors[q]).sum(0) / norm(vectors[p]) / norm(vectors[q])
-        same(f"cos_{name}", cosine.mean(), tolerance)
-        same(f"abs_cos_{name}", np.abs(cosine).mean(), tolerance)
-        # A cosine within rounding of a bin's edge may count on either side.
-        edges = np.linspace(-1, 1, 21)
-        unsure = (np.abs(cosine[:, None] - edges[1:-1]) < tolerance).sum()
         counts = np.array(row[f"histogram_{name}"].split(), int)
-        moved = np.abs(counts - np.histogram(cosine, edges)[0]).sum()
-        assert moved <= 2 * unsure, f"{tag} histogram_{name}: {moved} cells elsewhere"
-        unsure = (np.abs(np.abs(cosine) - 0.9) < tolerance).sum()
-        aligned = number(f"aligned_{name}") * len(cells)
-        assert abs(aligned - (np.abs(cosine) > 0.9).sum()) <= unsure + 1e-6, f"{tag} aligned_{name}"
+        told = [number(f"{kind}_{name}") for kind in ("cos", "abs_cos", "aligned")]
+        compare_cosine(*told, counts, cosine(vectors[p], vectors[q]), tolerance, f"{tag} {name}")
     assert row["wraps"] == axes, f"{tag}: wraps {row['wraps']!r}, wanted {axes!r}"
     compare_moments(row, flow, np.stack([x, y, z]), axes, tag)
 
@@ -183,9 +203,9 @@ def compare_moments(row, flow, index, axes, tag):
             assert abs(abs(axis @ vectors[k]) - 1) < 1e-8, f"{tag} axis_{k + 1}"
 
 
-def compare(path, lengths, wanted, connectivity, min_cells, tolerance):
+def compare(path, lengths, wanted, connectivity, min_cells, tolerance, frame="box"):
     """wanted: (indicator, sign, fraction of the box). Returns how many objects were compared, and how many wrapped."""
-    flow = Flow(path, lengths)
+    flow = Flow(path, lengths, frame)
     specs, plan = [], []
     for number, (indicator, sign, fraction) in enumerate(wanted):
         values = flow.indicator(indicator)
@@ -194,7 +214,7 @@ def compare(path, lengths, wanted, connectivity, min_cells, tolerance):
         specs.append(f"f{number}: {indicator} {sign} {level!r}")
         plan.append((f"f{number}", values, sign, level))
     options = ["--lengths", ",".join(repr(float(v)) for v in lengths), "--connectivity", connectivity, "--min-cells", min_cells]
-    folder = support.run(path, *options, "--surfaces", "none", *support.families(specs))
+    folder = support.run(path, *options, "--frame", frame, "--surfaces", "none", *support.families(specs))
     table = support.rows(folder)
     told = support.results(folder)["snapshots"][0]["families"]
     compared = closed = 0

@@ -5,6 +5,7 @@ import sys
 import time
 import traceback
 
+import frame
 import labels
 import layouts
 import meshes
@@ -12,11 +13,12 @@ import readme
 
 import support
 import tables
+import totals
 
 
 def main():
     passed, failed = 0, []
-    for module in (tables, layouts, labels, meshes, readme):
+    for module in (tables, layouts, labels, totals, frame, meshes, readme):
         for name, check in sorted(vars(module).items()):
             if not name.startswith("check_"):
                 continue

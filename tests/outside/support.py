@@ -42,6 +42,15 @@ def results(folder):
     return json.loads((folder / "run.json").read_text())
 
 
+def surface(folder, snapshot, family, id=None):
+    """The mesh file of a family, or of one object of it where every object has a file of its own."""
+    place = Path(folder) / "surfaces" / snapshot
+    if id is None:
+        return place / f"{family}.ply"
+    [path] = [p for p in (place / family).glob("*.ply") if int(p.stem) == id]
+    return path
+
+
 def close(found, wanted, relative, what, absolute=0.0):
     """Fails loudly when two numbers or arrays differ by more than allowed."""
     found, wanted = np.asarray(found, float), np.asarray(wanted, float)
