@@ -155,7 +155,7 @@ fn bad_families() {
         hint: give --viscosity, or threshold strain instead";
     fails(&place, line, 2, message);
     let line = "catalogue good.h5 --lengths 2pi --family 'a: q > 1 rms' --family 'a: speed > 1'";
-    let message = "cannot use family: \"a: speed > 1\": expected a name of its own, found \"a\" twice; \
+    let message = "cannot use family: good.h5: \"a: speed > 1\": expected a name of its own, found \"a\" twice; \
         hint: give every family another name before the colon";
     fails(&place, line, 2, message);
 }
