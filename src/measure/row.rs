@@ -43,7 +43,8 @@ const UNDER_RESOLVED: f64 = 3.0;
 /// Below this many, `marginal`.
 const MARGINAL: f64 = 5.0;
 
-/// A surface in several pieces is measured by its largest one when that holds at least this share of the volume.
+/// A surface in several pieces is measured by its largest one when the object is at least [`UNDER_RESOLVED`] cells thick and
+/// that piece holds at least this share of the volume.
 const MAIN_SHARE: f64 = 0.9;
 
 /// Builds the row. `surface` is missing for objects over the size limit.
@@ -201,7 +202,8 @@ fn shape(c: &Context, object: &Object, surface: Option<&SurfaceMeasures>, extent
             let body = match s.largest {
                 Some(p) if s.bodies > 1 => {
                     flags.push("fragmented");
-                    let main = p.volume >= MAIN_SHARE * volume;
+                    // Crumbs at the corner of a resolved object do no harm; a surface that frays for want of cells has no shape.
+                    let main = cells >= UNDER_RESOLVED && p.volume >= MAIN_SHARE * volume;
                     main.then_some(Body { volume: p.volume, area: p.area, curvature: p.mean_curvature_integral })
                 }
                 _ => Some(whole),

@@ -217,6 +217,11 @@ fn datasets_that_are_not_there() {
         &InputSpec { velocity: names(&["flow"]), ..spec("zyx") },
         "cannot use the dataset: DIR/s.h5: /flow: expected a dataset, found a group; hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)",
     );
+    hdf5(&path, &[("u", GOOD), ("v", GOOD), ("w", GOOD), ("bx", GOOD), ("bz", GOOD)]);
+    check(
+        &spec("zyx"),
+        "cannot find all components: DIR/s.h5: expected bx,by,bz, found only bx,bz; hint: --velocity or --magnetic alone reads one field and leaves the other",
+    );
     let many: Vec<String> = (10..30).map(|i| format!("d{i}")).collect();
     let many: Vec<(&str, &[usize])> = many.iter().map(|n| (n.as_str(), &[1][..])).collect();
     hdf5(&path, &many);
@@ -442,7 +447,7 @@ fn names_that_do_not_fit_npy_files() {
     assert_eq!(
         fault(dir.path(), &run, &spec("zyx")),
         input(
-            "cannot find a velocity or magnetic field: DIR/run: expected npy files named u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by,bz | magnetic | b, found u.npy 9x10x12, v.npy (not usable); hint: --velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)"
+            "cannot find all components: DIR/run: expected u,v,w, found only u,v; hint: --velocity or --magnetic alone reads one field and leaves the other"
         )
     );
     let named = InputSpec { velocity: names(&["u", "w", "v"]), ..spec("zyx") };

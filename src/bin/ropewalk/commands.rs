@@ -99,11 +99,11 @@ fn what_to_look_at(folder: &Path) -> String {
         "What to look at in {0}:\n\
          - {0}/mhd/catalogue.csv: one row an object; class, shares of the dissipation, cosines, lamb_sin2 and lorentz_sin2 (2/3 without alignment)\n\
          - {0}/mhd/run.json: levels, statistics of the box, alignment inside and outside the objects, shares that add up to 1\n\
-         - {0}/mhd/surfaces/*.ply: surface meshes for any viewer; the vertex value object tells objects apart\n\
+         - {0}/mhd/surfaces/*/*.ply: surface meshes for any viewer; the vertex value object tells objects apart\n\
          - {0}/hydro: the same for a flow without magnetic field\n\
          - ropewalk columns: what every column means\n\
-         Sort the current family by ohmic_share: a few objects hold more than half of what all of them dissipate. Many are ribbons, classed\n\
-         filament for their length. The grid is coarse (64^3) and the flags column says so: under_resolved.\n",
+         Sort the current family by ohmic_share: a few objects hold more than half of what all of them dissipate. The grid is coarse\n\
+         (64^3) and the flags column says so: under_resolved, fragmented.\n",
         folder.display()
     )
 }
