@@ -1,6 +1,6 @@
 //! Area, volume, integrated mean curvature and Euler characteristic of a triangulated isosurface.
 
-use crate::math::halfedge;
+use crate::math::halfedge::{self, Unpaired};
 use crate::math::isosurface::{Isosurface, cross, dot, scaled};
 
 /// Geometry of one surface in physical units (those of the spacing).
@@ -51,27 +51,13 @@ pub fn measure(surface: &Isosurface, spacing: [f64; 3]) -> SurfaceMeasures {
 /// As [`measure`], for a caller that has the [`Isosurface::area_vectors`] of the same spacing at hand.
 pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> SurfaceMeasures {
     let (piece_of, count) = pieces(surface);
-    let of = |vertex: u32| piece_of[vertex as usize] as usize;
-    let mut parts = vec![Piece::default(); count];
-    for (t, &n) in surface.triangles.iter().zip(normals) {
-        let part = &mut parts[of(t[0])];
-        part.area += 0.5 * dot(n, n).sqrt();
-        // p0·(p1 × p2) = p0·((p1 - p0) × (p2 - p0)), about the first vertex: keeps round-off small far from the origin.
-        part.volume += dot(scaled(surface.vector(0, t[0]), spacing), n) / 6.0;
-        part.euler_surface += 1;
-    }
-    for p in &piece_of {
-        parts[*p as usize].euler_surface += 1;
-    }
-    let rest = halfedge::for_each_pair(surface.points.len(), &surface.triangles, |lower, upper, up, down| {
-        let (n, m) = (normals[up], normals[down]);
-        let along = scaled(surface.vector(lower, upper), spacing);
-        let length = dot(along, along).sqrt();
-        let part = &mut parts[of(lower)];
-        // Both arguments carry the same factor: the areas and the edge length.
-        part.mean_curvature_integral += 0.5 * length * angle(dot(along, cross(n, m)), length * dot(n, m));
-        part.euler_surface -= 1;
-    });
+    let (parts, rest) = if count == 1 {
+        // The usual case, summed in registers.
+        let (whole, rest) = one_piece(surface, spacing, normals);
+        (vec![whole], rest)
+    } else {
+        several_pieces(surface, spacing, normals, &piece_of, count)
+    };
     let (open_edges, nonmanifold_edges) = (rest.open, rest.same_way);
     let closed = open_edges == 0 && surface.period == [None; 3];
     let total = |f: fn(&Piece) -> f64| parts.iter().map(f).sum::<f64>();
@@ -90,6 +76,58 @@ pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]
     }
 }
 
+fn one_piece(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> (Piece, Unpaired) {
+    let (mut area, mut volume, mut bending, mut pairs) = (0.0, 0.0, 0.0, 0);
+    for (t, &n) in surface.triangles.iter().zip(normals) {
+        let (a, v) = shares(surface, spacing, *t, n);
+        area += a;
+        volume += v;
+    }
+    let rest = halfedge::for_each_pair(surface.points.len(), &surface.triangles, |lower, upper, up, down| {
+        bending += bend(surface, spacing, lower, upper, normals[up], normals[down]);
+        pairs += 1;
+    });
+    let euler_surface = surface.points.len() as i64 - pairs + surface.triangles.len() as i64;
+    (Piece { area, volume, mean_curvature_integral: bending, euler_surface }, rest)
+}
+
+fn several_pieces(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]], piece_of: &[u32], count: usize) -> (Vec<Piece>, Unpaired) {
+    let mut parts = vec![Piece::default(); count];
+    for (t, &n) in surface.triangles.iter().zip(normals) {
+        let (area, volume) = shares(surface, spacing, *t, n);
+        let part = &mut parts[piece_of[t[0] as usize] as usize];
+        part.area += area;
+        part.volume += volume;
+        part.euler_surface += 1;
+    }
+    for p in piece_of {
+        parts[*p as usize].euler_surface += 1;
+    }
+    let rest = halfedge::for_each_pair(surface.points.len(), &surface.triangles, |lower, upper, up, down| {
+        let part = &mut parts[piece_of[lower as usize] as usize];
+        part.mean_curvature_integral += bend(surface, spacing, lower, upper, normals[up], normals[down]);
+        part.euler_surface -= 1;
+    });
+    (parts, rest)
+}
+
+/// Area of a triangle and its share p0·(p1 × p2) / 6 of the volume, about the first vertex of the surface: that keeps
+/// round-off small far from the grid's origin.
+#[inline(always)]
+fn shares(surface: &Isosurface, spacing: [f64; 3], triangle: [u32; 3], normal: [f64; 3]) -> (f64, f64) {
+    // p0·(p1 × p2) = p0·((p1 - p0) × (p2 - p0))
+    (0.5 * dot(normal, normal).sqrt(), dot(scaled(surface.vector(0, triangle[0]), spacing), normal) / 6.0)
+}
+
+/// Half the length of an edge times the signed angle between its triangles.
+#[inline(always)]
+fn bend(surface: &Isosurface, spacing: [f64; 3], lower: u32, upper: u32, n: [f64; 3], m: [f64; 3]) -> f64 {
+    let along = scaled(surface.vector(lower, upper), spacing);
+    let length = dot(along, along).sqrt();
+    // Both arguments carry the same factor: the areas and the edge length.
+    0.5 * length * angle(dot(along, cross(n, m)), length * dot(n, m))
+}
+
 /// The connected piece of every vertex, numbered by their first vertex, and how many there are.
 fn pieces(surface: &Isosurface) -> (Vec<u32>, usize) {
     let mut parent: Vec<u32> = (0..surface.points.len() as u32).collect();
@@ -101,6 +139,11 @@ fn pieces(surface: &Isosurface) -> (Vec<u32>, usize) {
         v
     }
     for &[a, b, c] in &surface.triangles {
+        // Nearly always all three hang under one vertex already.
+        let up = parent[a as usize];
+        if parent[b as usize] == up && parent[c as usize] == up {
+            continue;
+        }
         let mut top = root(&mut parent, a);
         for v in [b, c] {
             let other = root(&mut parent, v);
@@ -122,10 +165,6 @@ fn pieces(surface: &Isosurface) -> (Vec<u32>, usize) {
     (parent, count as usize)
 }
 
-/// Coefficients of the arctangent series, signs left out.
-const TERMS: [f64; 12] =
-    [1.0, 1.0 / 3.0, 1.0 / 5.0, 1.0 / 7.0, 1.0 / 9.0, 1.0 / 11.0, 1.0 / 13.0, 1.0 / 15.0, 1.0 / 17.0, 1.0 / 19.0, 1.0 / 21.0, 1.0 / 23.0];
-
 /// `atan2(sine, cosine)` for a sine and cosine with a common factor, to round-off. Edges of a smooth surface bend by less
 /// than 45 degrees: there the series of the arctangent at a quarter of the angle is cheaper than the library call.
 fn angle(sine: f64, cosine: f64) -> f64 {
@@ -135,8 +174,11 @@ fn angle(sine: f64, cosine: f64) -> f64 {
     // tan of half and of a quarter of the angle; the latter is below 0.2, so that the next term is below 1e-17.
     let half = sine / (cosine + (sine * sine + cosine * cosine).sqrt());
     let t = half / (1.0 + (1.0 + half * half).sqrt());
+    // 1 - q/3 + q²/5 - ..., summed in a tree: step by step, each term would wait for the one before.
     let q = t * t;
-    let series = TERMS.iter().rev().fold(0.0, |rest, term| term - q * rest);
+    let pair = |k: f64| 1.0 / k - q * (1.0 / (k + 2.0));
+    let (q2, q4) = (q * q, q * q * q * q);
+    let series = (pair(1.0) + q2 * pair(5.0)) + q4 * ((pair(9.0) + q2 * pair(13.0)) + q4 * (pair(17.0) + q2 * pair(21.0)));
     4.0 * t * series
 }
 
