@@ -36,15 +36,14 @@ impl Labeller {
         }
     }
 
-    /// Adds a finished tile.
+    /// Adds a tile that was closed.
     pub fn add(&mut self, mut tile: TileSweep) {
-        let starts = tile.close();
         let ((y0, y1), z0) = tile.place();
         let base = self.runs.len();
         let first_component = self.tallies.len() as u32;
         self.tile_floor[y0] = true;
         self.block_floor[z0] = true;
-        for (k, pair) in starts.windows(2).enumerate() {
+        for (k, pair) in tile.starts().windows(2).enumerate() {
             let (y, z) = (y0 + k % (y1 - y0), z0 + k / (y1 - y0));
             self.rows[z * self.grid.n[1] + y] = (base + pair[0], base + pair[1]);
         }

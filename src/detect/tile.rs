@@ -110,8 +110,9 @@ impl TileSweep {
         self.starts.push(self.runs.len());
     }
 
-    /// Merges the tallies of joined components and renumbers them densely. Returns the start of each row's runs.
-    pub(super) fn close(&mut self) -> Vec<usize> {
+    /// Ends the tile: merges the tallies of joined components and renumbers them densely.
+    #[must_use]
+    pub fn close(mut self) -> TileSweep {
         let mut dense = vec![NONE; self.parent.len()];
         let mut tallies: Vec<Tally> = Vec::new();
         for c in 0..self.parent.len() as u32 {
@@ -130,7 +131,12 @@ impl TileSweep {
             run.component = dense[run.component as usize];
         }
         self.tallies = tallies;
-        std::mem::take(&mut self.starts)
+        self
+    }
+
+    /// Start of each row's runs, and one past the last.
+    pub(super) fn starts(&self) -> &[usize] {
+        &self.starts
     }
 
     /// Rows and first plane of the tile.

@@ -128,7 +128,10 @@ impl Tally {
             *a += b;
         }
         for (a, b) in self.cosines.iter_mut().zip(&other.cosines) {
-            a.merge(b);
+            // Fields that are not there leave theirs empty.
+            if b.defined > 0 {
+                a.merge(b);
+            }
         }
     }
 

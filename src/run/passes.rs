@@ -175,7 +175,8 @@ impl<T: Real> Pass<'_, T> {
                             part
                         })
                         .collect();
-                    (sweeps, alignment)
+                    let closed: Vec<TileSweep> = sweeps.into_iter().map(TileSweep::close).collect();
+                    (closed, alignment)
                 });
                 for k in 0..block.z.len() {
                     let mut plane = Alignment::default();
