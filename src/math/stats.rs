@@ -100,6 +100,15 @@ pub fn row_stats<T: Real>(row: &[T]) -> RowStats {
     }
 }
 
+/// Largest value of a row.
+///
+/// # Panics
+/// When the row is empty.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
+pub fn row_max<T: Real>(row: &[T]) -> f64 {
+    extreme(row, |v, kept| v > kept)
+}
+
 /// The value no other one `beats`. Lanes, because a single running extreme is a chain of dependent steps.
 #[inline(always)]
 fn extreme<T: Real>(row: &[T], beats: impl Fn(T, T) -> bool) -> f64 {

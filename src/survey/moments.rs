@@ -1,7 +1,7 @@
 //! Sums of gradient quantities and indicators over the box, added up row by row, tile by tile, plane by plane in a fixed order.
 
 use crate::base::real::Real;
-use crate::math::stats::{row_square_sum, row_stats};
+use crate::math::stats::{row_max, row_square_sum, row_stats, row_sum};
 use crate::model::request::Family;
 use crate::model::rows::Rows;
 use crate::model::statistics::{GradientStats, IndicatorStats, Survey};
@@ -35,13 +35,11 @@ fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, 
     if curl2.is_empty() {
         return;
     }
-    let r = row_stats(curl2);
-    g.curl2 += r.sum;
-    g.curl2_max = g.curl2_max.max(r.max);
+    g.curl2 += row_sum(curl2);
+    g.curl2_max = g.curl2_max.max(row_max(curl2));
     if let Some(s) = strain2 {
-        let r = row_stats(s);
-        g.strain2 += r.sum;
-        g.strain2_max = g.strain2_max.max(r.max);
+        g.strain2 += row_sum(s);
+        g.strain2_max = g.strain2_max.max(row_max(s));
     }
     let div2 = row_square_sum(div);
     g.div2 += div2;
