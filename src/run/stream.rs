@@ -13,7 +13,7 @@ use crate::space::slab::{Batch, Block};
 
 /// Bytes of all components that a block should hold when nobody sets its thickness: enough to amortise the halo,
 /// small beside the snapshot.
-const BLOCK_BYTES: usize = 12 << 20;
+const BLOCK_BYTES: usize = 6 << 20;
 
 /// The blocks of a pass: of the thickness asked for, else of a multiple of the file's natural depth near
 /// `BLOCK_BYTES`. The first blocks are thinner where the file does not mind, so that work begins before much is read.
