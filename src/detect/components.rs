@@ -1,7 +1,7 @@
 //! Joins the components of all tiles of a snapshot, across periodic faces too, into numbered, unwrapped objects.
 
 use crate::base::par;
-use crate::detect::tile::{Criterion, TileSweep};
+use crate::detect::tile::{ClosedTile, Criterion};
 use crate::math::disjoint::OffsetSets;
 use crate::model::object::{Detected, Dropped, Object, Tally};
 use crate::space::grid::Grid;
@@ -36,14 +36,14 @@ impl Labeller {
         }
     }
 
-    /// Adds a tile that was closed.
-    pub fn add(&mut self, mut tile: TileSweep) {
-        let ((y0, y1), z0) = tile.place();
+    /// Adds a tile.
+    pub fn add(&mut self, mut tile: ClosedTile) {
+        let ((y0, y1), z0) = (tile.rows_y, tile.first_z);
         let base = self.runs.len();
         let first_component = self.tallies.len() as u32;
         self.tile_floor[y0] = true;
         self.block_floor[z0] = true;
-        for (k, pair) in tile.starts().windows(2).enumerate() {
+        for (k, pair) in tile.starts.windows(2).enumerate() {
             let (y, z) = (y0 + k % (y1 - y0), z0 + k / (y1 - y0));
             self.rows[z * self.grid.n[1] + y] = (base + pair[0], base + pair[1]);
         }

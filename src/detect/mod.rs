@@ -4,4 +4,4 @@ mod components;
 mod tile;
 
 pub use components::Labeller;
-pub use tile::{Criterion, TileSweep};
+pub use tile::{ClosedTile, Criterion, TileSweep};

@@ -30,11 +30,21 @@ pub struct TileSweep {
     /// Start of each row's runs in `runs`.
     starts: Vec<usize>,
     /// Runs in the order z, y, x.
-    pub(super) runs: Vec<Run>,
-    pub(super) tallies: Vec<Tally>,
+    runs: Vec<Run>,
+    tallies: Vec<Tally>,
     parent: Vec<u32>,
     /// Scratch: component of a run seen before, index of the run in the present row that touches it.
     contacts: Vec<(u32, usize)>,
+}
+
+/// A tile whose components are joined and numbered.
+pub struct ClosedTile {
+    pub(super) rows_y: (usize, usize),
+    pub(super) first_z: usize,
+    /// Start of each row's runs, and one past the last.
+    pub(super) starts: Vec<usize>,
+    pub(super) runs: Vec<Run>,
+    pub(super) tallies: Vec<Tally>,
 }
 
 impl TileSweep {
@@ -112,7 +122,7 @@ impl TileSweep {
 
     /// Ends the tile: merges the tallies of joined components and renumbers them densely.
     #[must_use]
-    pub fn close(mut self) -> TileSweep {
+    pub fn close(mut self) -> ClosedTile {
         let mut dense = vec![NONE; self.parent.len()];
         let mut tallies: Vec<Tally> = Vec::new();
         for c in 0..self.parent.len() as u32 {
@@ -130,18 +140,7 @@ impl TileSweep {
         for run in &mut self.runs {
             run.component = dense[run.component as usize];
         }
-        self.tallies = tallies;
-        self
-    }
-
-    /// Start of each row's runs, and one past the last.
-    pub(super) fn starts(&self) -> &[usize] {
-        &self.starts
-    }
-
-    /// Rows and first plane of the tile.
-    pub(super) fn place(&self) -> ((usize, usize), usize) {
-        (self.rows_y, self.first_z)
+        ClosedTile { rows_y: self.rows_y, first_z: self.first_z, starts: self.starts, runs: self.runs, tallies }
     }
 }
 

@@ -8,7 +8,7 @@ use crate::base::observe::Observe;
 use crate::base::par;
 use crate::base::real::Real;
 use crate::derive::{Deriver, Scratch};
-use crate::detect::{Criterion, Labeller, TileSweep};
+use crate::detect::{ClosedTile, Criterion, Labeller, TileSweep};
 use crate::math::stats::Quantiles;
 use crate::measure::patches::{Patches, Wanted};
 use crate::measure::surface::{Shaped, shape};
@@ -175,7 +175,7 @@ impl<T: Real> Pass<'_, T> {
                             part
                         })
                         .collect();
-                    let closed: Vec<TileSweep> = sweeps.into_iter().map(TileSweep::close).collect();
+                    let closed: Vec<ClosedTile> = sweeps.into_iter().map(TileSweep::close).collect();
                     (closed, alignment)
                 });
                 for k in 0..block.z.len() {

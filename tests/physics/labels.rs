@@ -121,7 +121,7 @@ fn detect(grid: &Grid, mask: &[bool], connectivity: Connectivity, height: usize,
                     sweep.add_row(grid, &Rows::<f32> { indicators: vec![row], ..Rows::default() }, y, z);
                 }
             }
-            tiles.push(sweep);
+            tiles.push(sweep.close());
         }
     }
     for tile in tiles.into_iter().rev() {
