@@ -105,7 +105,7 @@ fn analysis_of_a_random_field(bencher: Bencher) {
     bencher
         .counter(divan::counter::ItemsCount::new(96usize.pow(3)))
         .with_inputs(|| {
-            let fields = Fields { velocity: true, magnetic: false };
+            let fields = Fields::VELOCITY;
             AnySource::F32(Box::new(MemorySource::new(Grid::periodic(n, lengths), fields, single.clone())))
         })
         .bench_local_values(|source| {

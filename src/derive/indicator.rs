@@ -30,6 +30,7 @@ pub fn row<T: Real>(indicator: Indicator, rows: &Rows<T>, viscosity: T, resistiv
         Indicator::Lorentz => cross_magnitude(&rows.j, &rows.b, out),
         Indicator::Speed => magnitude(&rows.u, out),
         Indicator::Field => magnitude(&rows.b, out),
+        _ => unimplemented!("{}", indicator.name()),
     }
 }
 

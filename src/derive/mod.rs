@@ -9,7 +9,7 @@ use std::ops::Range;
 
 use crate::base::real::Real;
 use crate::math::diff::{AxisStencil, HALF};
-use crate::model::request::{Family, Indicator};
+use crate::model::request::{Indicator, Scheme};
 use crate::model::rows::{Need, Rows};
 use crate::model::source::Fields;
 use crate::space::grid::Grid;
@@ -17,7 +17,31 @@ use crate::space::slab::Block;
 
 use gradient::Gradient;
 
-/// Fills [`Rows`] for a snapshot of given grid and fields. Order-8 differences.
+/// What is derived and how.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Plan {
+    /// Those of the families.
+    pub indicators: Vec<Indicator>,
+    /// Further ones, derived where [`Need::extras`] asks.
+    pub extras: Vec<Indicator>,
+    /// How derivatives are taken.
+    pub scheme: Scheme,
+    /// Velocity to subtract.
+    pub frame: [f64; 3],
+    /// Mean magnetic field, where the alignments are wanted without it as well.
+    pub mean_field: Option<[f64; 3]>,
+    /// Kinematic viscosity; counts as 1 where unknown (no indicator that needs it passes the request's checks).
+    pub viscosity: Option<f64>,
+    /// Magnetic diffusivity, as the viscosity.
+    pub resistivity: Option<f64>,
+}
+
+/// What must be derived for a whole block of planes before its rows.
+pub struct Prepared<T> {
+    marker: std::marker::PhantomData<T>,
+}
+
+/// Fills [`Rows`] for a snapshot of given grid and fields.
 pub struct Deriver<T> {
     fields: Fields,
     indicators: Vec<Indicator>,
@@ -44,21 +68,13 @@ impl<T: Real> Default for Scratch<T> {
 }
 
 impl<T: Real> Deriver<T> {
-    /// `frame` is the velocity to subtract; coefficients that are unknown count as 1 (no indicator that needs them passes the request's checks).
-    ///
     /// # Panics
     /// When an axis has fewer than 9 samples.
-    pub fn new(
-        grid: &Grid,
-        fields: Fields,
-        families: &[Family],
-        frame: [f64; 3],
-        viscosity: Option<f64>,
-        resistivity: Option<f64>,
-    ) -> Self {
+    pub fn new(grid: &Grid, fields: Fields, plan: Plan) -> Self {
+        let Plan { frame, viscosity, resistivity, .. } = plan;
         Deriver {
             fields,
-            indicators: families.iter().map(|f| f.indicator).collect(),
+            indicators: plan.indicators,
             stencils: std::array::from_fn(|a| AxisStencil::new(grid.n[a], grid.spacing[a], grid.periodic[a])),
             frame: frame.map(T::of),
             viscosity: T::of(viscosity.unwrap_or(1.0)),
@@ -78,8 +94,22 @@ impl<T: Real> Deriver<T> {
         HALF
     }
 
+    /// Derives what a whole block needs before its rows.
+    pub fn prepare(&self, _block: &Block<'_, T>) -> Prepared<T> {
+        Prepared { marker: std::marker::PhantomData }
+    }
+
     /// Derives the cells `x` of row `y` of plane `z` of the block into `scratch.rows`.
-    pub fn row(&self, block: &Block<'_, T>, z: usize, y: usize, x: Range<usize>, need: Need, scratch: &mut Scratch<T>) {
+    pub fn row(
+        &self,
+        block: &Block<'_, T>,
+        _ready: &Prepared<T>,
+        z: usize,
+        y: usize,
+        x: Range<usize>,
+        need: Need,
+        scratch: &mut Scratch<T>,
+    ) {
         let Scratch { gradient, rows } = scratch;
         let mut component = 0;
         let strain = need.strain || self.indicators.iter().any(|i| i.needs_strain());

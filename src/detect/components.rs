@@ -26,7 +26,7 @@ impl Labeller {
     /// An empty labeller.
     pub fn new(grid: Grid, criterion: Criterion) -> Labeller {
         Labeller {
-            grid,
+            grid: grid.clone(),
             criterion,
             runs: Vec::new(),
             tallies: Vec::new(),

@@ -112,7 +112,7 @@ impl<T: Real> Patches<T> {
             let spans = objects[object].spans;
             opening.push((object, last, std::mem::take(&mut objects[object].intervals), spans.iter().any(|&s| s)));
         }
-        let grid = self.grid;
+        let grid = self.grid.clone();
         let carried = self.carried();
         let opened = par::map_owned(opening, |_, (object, last_plane, intervals, closed)| {
             let period = std::array::from_fn(|a| (closed && grid.periodic[a]).then_some(grid.n[a] as i32));

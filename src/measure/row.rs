@@ -68,7 +68,7 @@ fn identity(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
     r.set(Col::Id, Value::Integer(object.id as i64));
     r.number(Col::Level, Some(c.level));
     r.set(Col::Cells, Value::Integer(t.moments.count as i64));
-    r.number(Col::Volume, Some(t.moments.count as f64 * c.grid.cell_volume()));
+    r.number(Col::Volume, Some(t.moments.count as f64 * c.grid.largest_cell()));
     let axes: Vec<&str> = (0..3).filter(|&a| object.spans[a]).map(|a| ["x", "y", "z"][a]).collect();
     let faces: Vec<&str> = (0..6).filter(|&f| t.open_faces >> f & 1 == 1).map(|f| ["x-", "x+", "y-", "y+", "z-", "z+"][f]).collect();
     if !axes.is_empty() {
@@ -133,7 +133,7 @@ fn moments(c: &Context, object: &Object, r: &mut Row) -> [f64; 3] {
 fn sums(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
     let t = &object.tally;
     let n = t.moments.count as f64;
-    let volume = c.grid.cell_volume();
+    let volume = c.grid.largest_cell();
     let sum = |s: Sum| t.sum(s, &c.scales);
     r.number(Col::IndicatorMean, Some(sum(Sum::Indicator) / n));
     let ratio = |a: f64, b: f64| (b > 0.0).then(|| a / b);
@@ -184,7 +184,7 @@ fn shape(c: &Context, object: &Object, surface: Option<&SurfaceMeasures>, extent
         // A surface cut off by an open face bounds no body: nothing of it is the object's own.
         Some(s) if s.open_edges > 0 || object.tally.open_faces != 0 => {}
         Some(s) => {
-            let volume = s.volume.unwrap_or(object.tally.moments.count as f64 * c.grid.cell_volume());
+            let volume = s.volume.unwrap_or(object.tally.moments.count as f64 * c.grid.largest_cell());
             let thickness = 3.0 * volume / s.area;
             r.number(Col::SurfaceArea, Some(s.area));
             r.number(Col::MeanCurvatureIntegral, Some(s.mean_curvature_integral));

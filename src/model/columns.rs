@@ -196,7 +196,7 @@ impl Value {
     }
 }
 
-/// One row of the catalogue.
+/// One row of the catalogue: every column of the registry, then three for each companion (mean, smallest, largest).
 #[derive(Debug, Clone, PartialEq)]
 pub struct Row(Vec<Value>);
 
@@ -212,6 +212,11 @@ impl Row {
         self.0[column as usize] = value;
     }
 
+    /// Adds the mean, the smallest and the largest value of the next companion.
+    pub fn push_companion(&mut self, values: [Option<f64>; 3]) {
+        self.0.extend(values.map(Value::number));
+    }
+
     /// Sets a column to a number, missing where there is none.
     pub fn number(&mut self, column: Col, value: Option<f64>) {
         self.set(column, Value::number(value));
@@ -222,7 +227,12 @@ impl Row {
         &self.0[column as usize]
     }
 
-    /// All columns in catalogue order.
+    /// A row read back: values in the order of its schema.
+    pub fn from_values(values: Vec<Value>) -> Row {
+        Row(values)
+    }
+
+    /// All columns in the order of [`crate::model::schema::Schema::columns`].
     pub fn values(&self) -> &[Value] {
         &self.0
     }

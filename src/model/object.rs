@@ -8,7 +8,7 @@ use crate::model::rows::Rows;
 use crate::space::patch::Interval;
 
 /// The pairs of vectors whose cosine is followed, as they appear in column names.
-pub const COSINES: [&str; 3] = ["u_vorticity", "current_b", "u_b"];
+pub const COSINES: [&str; 5] = ["u_vorticity", "current_b", "u_b", "current_b_fluct", "u_b_fluct"];
 
 /// Quantities summed over the cells of an object.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -27,10 +27,14 @@ pub enum Sum {
     Lorentz2,
     /// |j|²|b|².
     Current2Field2,
+    /// |j×(b − ⟨b⟩)|².
+    Lorentz2Fluct,
+    /// |j|²|b − ⟨b⟩|².
+    Current2Field2Fluct,
 }
 
 /// Number of [`Sum`]s.
-pub const SUMS: usize = 7;
+pub const SUMS: usize = 9;
 
 /// Scales of the exact sums, from the extremes of the survey.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -54,7 +58,7 @@ pub struct Tally {
     pub open_faces: Faces,
     sums: [i128; SUMS],
     /// Cosines in the order of [`COSINES`].
-    pub cosines: [Cosine; 3],
+    pub cosines: [Cosine; 5],
 }
 
 impl Tally {
@@ -90,8 +94,17 @@ impl Tally {
         for (i, v) in indicator.iter().enumerate() {
             self.offer_peak(v.wide(), row_start + (x0 + i) as u64, side);
         }
-        let columns: [&[T]; SUMS] =
-            [&rows.indicators[family], &rows.strain2, &rows.j2, &rows.lamb2, &rows.u2w2, &rows.lorentz2, &rows.j2b2];
+        let columns: [&[T]; SUMS] = [
+            &rows.indicators[family],
+            &rows.strain2,
+            &rows.j2,
+            &rows.lamb2,
+            &rows.u2w2,
+            &rows.lorentz2,
+            &rows.j2b2,
+            &rows.lorentz2_fluct,
+            &rows.j2b2_fluct,
+        ];
         for (k, column) in columns.into_iter().enumerate() {
             if !column.is_empty() {
                 self.sums[k] += column[x0..x1].iter().map(|v| scales.0[k].fix(v.wide())).sum::<i128>();

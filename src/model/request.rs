@@ -1,231 +1,12 @@
-//! What a user asks for: families of objects, levels, conventions that change results.
+//! What a user asks for: everything that changes results, and what is to be written.
 
 use std::fmt;
 
 use crate::base::error::{Error, Result};
+pub use crate::model::family::{Extent, Family, Level, Side};
+pub use crate::model::indicator::{INDICATORS, Indicator};
 use crate::model::source::Fields;
 pub use crate::space::runs::Connectivity;
-
-/// A scalar field that can be thresholded.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Indicator {
-    /// |ω|, ω = ∇×u.
-    Vorticity,
-    /// |ω|².
-    Enstrophy,
-    /// |j|, j = ∇×b.
-    Current,
-    /// Q = ¼|ω|² − ½ S:S.
-    Q,
-    /// |S| = √(S:S).
-    Strain,
-    /// 2ν S:S.
-    DissipationViscous,
-    /// η |j|².
-    DissipationOhmic,
-    /// u·ω.
-    Helicity,
-    /// cos(u, ω).
-    RelativeHelicity,
-    /// u·b.
-    CrossHelicity,
-    /// j·b.
-    CurrentHelicity,
-    /// |u×ω|.
-    Lamb,
-    /// |j×b|.
-    Lorentz,
-    /// |u|.
-    Speed,
-    /// |b|.
-    Field,
-}
-
-/// Every indicator with its name in the family grammar.
-pub const INDICATORS: [(&str, Indicator); 15] = [
-    ("vorticity", Indicator::Vorticity),
-    ("enstrophy", Indicator::Enstrophy),
-    ("current", Indicator::Current),
-    ("q", Indicator::Q),
-    ("strain", Indicator::Strain),
-    ("dissipation_viscous", Indicator::DissipationViscous),
-    ("dissipation_ohmic", Indicator::DissipationOhmic),
-    ("helicity", Indicator::Helicity),
-    ("relative_helicity", Indicator::RelativeHelicity),
-    ("cross_helicity", Indicator::CrossHelicity),
-    ("current_helicity", Indicator::CurrentHelicity),
-    ("lamb", Indicator::Lamb),
-    ("lorentz", Indicator::Lorentz),
-    ("speed", Indicator::Speed),
-    ("field", Indicator::Field),
-];
-
-impl Indicator {
-    /// Name in the family grammar.
-    pub fn name(self) -> &'static str {
-        INDICATORS.iter().find(|(_, i)| *i == self).map_or("", |(n, _)| n)
-    }
-
-    /// Which fields it is made of.
-    pub fn needs(self) -> Fields {
-        use Indicator as I;
-        match self {
-            I::Vorticity
-            | I::Enstrophy
-            | I::Q
-            | I::Strain
-            | I::DissipationViscous
-            | I::Helicity
-            | I::RelativeHelicity
-            | I::Lamb
-            | I::Speed => Fields { velocity: true, magnetic: false },
-            I::Current | I::DissipationOhmic | I::CurrentHelicity | I::Lorentz | I::Field => Fields { velocity: false, magnetic: true },
-            I::CrossHelicity => Fields { velocity: true, magnetic: true },
-        }
-    }
-
-    /// Whether it is made of S:S.
-    pub fn needs_strain(self) -> bool {
-        matches!(self, Indicator::Q | Indicator::Strain | Indicator::DissipationViscous)
-    }
-
-    /// Whether it depends on the frame in which velocity is measured.
-    pub fn depends_on_frame(self) -> bool {
-        use Indicator as I;
-        matches!(self, I::Helicity | I::RelativeHelicity | I::CrossHelicity | I::Lamb | I::Speed)
-    }
-}
-
-/// Where a level comes from.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub enum Level {
-    /// In the indicator's own unit.
-    Absolute(f64),
-    /// Times the root of the box mean of the squared indicator.
-    Rms(f64),
-    /// Times the box mean of the indicator.
-    Mean(f64),
-    /// The level beyond which this fraction of the box lies.
-    Volume(f64),
-}
-
-impl fmt::Display for Level {
-    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        match self {
-            Level::Absolute(v) => write!(f, "{v}"),
-            Level::Rms(v) => write!(f, "{v} rms"),
-            Level::Mean(v) => write!(f, "{v} mean"),
-            Level::Volume(v) => write!(f, "{v} volume"),
-        }
-    }
-}
-
-/// Which side of the level belongs to the objects.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Side {
-    /// Cells above the level.
-    Above,
-    /// Cells below the level.
-    Below,
-}
-
-/// A family of objects: an indicator and a level.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Family {
-    /// Name, the `family` column.
-    pub name: String,
-    /// What is thresholded.
-    pub indicator: Indicator,
-    /// Which side of the level is inside.
-    pub side: Side,
-    /// The level.
-    pub level: Level,
-}
-
-impl fmt::Display for Family {
-    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        let sign = if self.side == Side::Above { ">" } else { "<" };
-        write!(f, "{}: {} {sign} {}", self.name, self.indicator.name(), self.level)
-    }
-}
-
-impl Family {
-    /// The families of a request that names none: intense vorticity, and intense current where there is a magnetic field.
-    pub fn defaults(fields: Fields) -> Vec<Family> {
-        let of = |indicator: Indicator| Family { name: indicator.name().to_string(), indicator, side: Side::Above, level: Level::Rms(3.0) };
-        let mut out = Vec::new();
-        if fields.velocity {
-            out.push(of(Indicator::Vorticity));
-        }
-        if fields.magnetic {
-            out.push(of(Indicator::Current));
-        }
-        out
-    }
-
-    /// Reads `NAME: INDICATOR > LEVEL` (or `<`), where LEVEL is a number alone or a number and `rms`, `mean` or `volume`.
-    ///
-    /// # Errors
-    /// `Usage`, naming the part that is wrong.
-    pub fn parse(text: &str) -> Result<Family> {
-        const FORM: &str = "\"NAME: INDICATOR > LEVEL\"";
-        let wrong = |found: &str| {
-            Error::usage("cannot read family")
-                .item(format!("\"{text}\""))
-                .expected(FORM)
-                .found(found)
-                .hint("for example \"vorticity: vorticity > 3 rms\"")
-        };
-        let (name, rest) = text.split_once(':').ok_or_else(|| wrong("no colon"))?;
-        let name = name.trim();
-        let usable = |c: char| c.is_ascii_alphanumeric() || c == '_' || c == '-';
-        if name.is_empty() || !name.chars().all(usable) {
-            return Err(wrong(&format!("the name \"{name}\"")).hint("letters, digits, _ and - make a family name"));
-        }
-        let above = rest.find('>');
-        let below = rest.find('<');
-        let (at, side) = match (above, below) {
-            (Some(i), None) => (i, Side::Above),
-            (None, Some(i)) => (i, Side::Below),
-            (None, None) => return Err(wrong("neither > nor <")),
-            (Some(_), Some(_)) => return Err(wrong("both > and <")),
-        };
-        let indicator_name = rest[..at].trim();
-        let Some((_, indicator)) = INDICATORS.iter().find(|(n, _)| *n == indicator_name) else {
-            let known: Vec<&str> = INDICATORS.iter().map(|(n, _)| *n).collect();
-            return Err(Error::usage("cannot read family")
-                .item(format!("\"{text}\""))
-                .expected("an indicator of this version")
-                .found(format!("\"{indicator_name}\""))
-                .hint(format!("one of {}", known.join(", "))));
-        };
-        let words: Vec<&str> = rest[at + 1..].split_whitespace().collect();
-        let level = match words.as_slice() {
-            [] => return Err(wrong("no level")),
-            [number] | [number, _] => {
-                let value: f64 = number.parse().map_err(|_| wrong(&format!("the level \"{number}\"")))?;
-                if !value.is_finite() {
-                    return Err(wrong(&format!("the level \"{number}\"")).hint("a level is a finite number"));
-                }
-                match words.get(1) {
-                    None => Level::Absolute(value),
-                    Some(&"rms") => Level::Rms(value),
-                    Some(&"mean") => Level::Mean(value),
-                    Some(&"volume") if value > 0.0 && value < 1.0 => Level::Volume(value),
-                    Some(&"volume") => {
-                        return Err(wrong(&format!("the volume fraction {number}")).hint("a volume fraction lies between 0 and 1"));
-                    }
-                    Some(word) => return Err(wrong(&format!("the word \"{word}\"")).hint("this version knows rms, mean and volume")),
-                }
-            }
-            _ => {
-                return Err(wrong(&format!("the level \"{}\"", words.join(" ")))
-                    .hint("this version knows one level: a number, or a number with rms, mean or volume"));
-            }
-        };
-        Ok(Family { name: name.to_string(), indicator: *indicator, side, level })
-    }
-}
 
 /// In which frame velocity is measured.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -234,6 +15,100 @@ pub enum Frame {
     Box,
     /// As stored.
     Stored,
+}
+
+/// How first derivatives are taken.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Scheme {
+    /// Central differences of order 2.
+    Fd2,
+    /// Central differences of order 4.
+    Fd4,
+    /// Central differences of order 6.
+    Fd6,
+    /// Central differences of order 8.
+    Fd8,
+    /// The nine-point stencil whose modified wavenumber is optimised.
+    Opt,
+    /// Exact on periodic axes (one-dimensional transforms), `Fd8` on open ones.
+    Spectral,
+}
+
+/// Every scheme with its name.
+pub const SCHEMES: [(&str, Scheme); 6] = [
+    ("fd2", Scheme::Fd2),
+    ("fd4", Scheme::Fd4),
+    ("fd6", Scheme::Fd6),
+    ("fd8", Scheme::Fd8),
+    ("opt", Scheme::Opt),
+    ("spectral", Scheme::Spectral),
+];
+
+impl Scheme {
+    /// Its name.
+    pub fn name(self) -> &'static str {
+        SCHEMES.iter().find(|(_, s)| *s == self).map_or("", |(n, _)| n)
+    }
+
+    /// The scheme of that name; `auto` is `fd8`.
+    pub fn named(name: &str) -> Option<Scheme> {
+        if name == "auto" { Some(Scheme::Fd8) } else { SCHEMES.iter().find(|(n, _)| *n == name).map(|(_, s)| *s) }
+    }
+}
+
+/// Shape of a low-pass filter.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum FilterShape {
+    /// All wavenumbers beyond π/width removed.
+    Sharp,
+    /// exp(−k² width² / 24).
+    Gaussian,
+}
+
+/// A low-pass filter of all fields, before anything is derived.
+///
+/// # References
+/// S. B. Pope, Turbulent Flows (Cambridge 2000), table 13.2.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Filter {
+    /// Shape.
+    pub shape: FilterShape,
+    /// Width, in the user's length unit.
+    pub width: f64,
+}
+
+impl Filter {
+    /// Reads `sharp WIDTH` or `gaussian WIDTH`.
+    ///
+    /// # Errors
+    /// `Usage`, naming what is wrong.
+    pub fn parse(text: &str) -> Result<Filter> {
+        let wrong = || {
+            Error::usage("cannot read filter")
+                .item(format!("\"{text}\""))
+                .expected("\"sharp WIDTH\" or \"gaussian WIDTH\", the width a length above 0")
+                .found(if text.trim().is_empty() { "nothing".to_string() } else { format!("\"{text}\"") })
+                .hint("for example \"gaussian 0.2\"")
+        };
+        let (shape, width) = text.trim().split_once(char::is_whitespace).ok_or_else(wrong)?;
+        let shape = match shape {
+            "sharp" => FilterShape::Sharp,
+            "gaussian" => FilterShape::Gaussian,
+            _ => return Err(wrong()),
+        };
+        let width: f64 = width.trim().parse().map_err(|_| wrong())?;
+        if width.is_finite() && width > 0.0 { Ok(Filter { shape, width }) } else { Err(wrong()) }
+    }
+}
+
+impl fmt::Display for Filter {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        let shape = match self.shape {
+            FilterShape::Sharp => "sharp",
+            FilterShape::Gaussian => "gaussian",
+        };
+        write!(f, "{shape} {}", self.width)
+    }
 }
 
 /// Which surface meshes are written.
@@ -247,12 +122,44 @@ pub enum Surfaces {
     Each,
 }
 
+/// Of which objects all fields around are written.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub enum CutOuts {
+    /// Of none.
+    None,
+    /// Of the n objects of each family with most cells, smaller ids first among equals.
+    Largest(usize),
+    /// Of the objects with these ids in every family (or the named one): `ID` or `FAMILY:ID`.
+    Named(Vec<(Option<String>, u64)>),
+}
+
+/// What is written besides `catalogue.csv`, `run.json` and `columns.json`; changes no number.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Outputs {
+    /// `catalogue.parquet`. Default yes.
+    pub parquet: bool,
+    /// `catalogue.jsonl`. Default no.
+    pub json_lines: bool,
+    /// `labels/SNAPSHOT/FAMILY.h5`. Default no.
+    pub labels: bool,
+    /// `cutouts/SNAPSHOT/FAMILY/ID.h5`. Default none.
+    pub cut_outs: CutOuts,
+    /// Cells of margin around the object of a cut-out. Default 8.
+    pub cut_out_margin: usize,
+}
+
+impl Default for Outputs {
+    fn default() -> Self {
+        Outputs { parquet: true, json_lines: false, labels: false, cut_outs: CutOuts::None, cut_out_margin: 8 }
+    }
+}
+
 /// Everything that changes results.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Request {
     /// Families; empty means [`Family::defaults`].
     pub families: Vec<Family>,
-    /// Neighbourhood of a cell. Default 26.
+    /// Neighbourhood of a cell. Default 26; on a plane the same without z.
     pub connectivity: Connectivity,
     /// Smaller objects are counted but not listed. Default 27 cells.
     pub min_cells: u64,
@@ -262,8 +169,20 @@ pub struct Request {
     pub viscosity: Option<f64>,
     /// Magnetic diffusivity η, where known.
     pub resistivity: Option<f64>,
+    /// Mean total dissipation a unit mass, where the run states it (hyperviscosity, implicit dissipation).
+    pub dissipation: Option<f64>,
+    /// Kolmogorov length, where the run states it.
+    pub kolmogorov_length: Option<f64>,
     /// Frame of the velocity. Default the box mean.
     pub frame: Frame,
+    /// Derivatives. Default `Fd8`.
+    pub scheme: Scheme,
+    /// Low-pass filter of all fields. Default none.
+    pub filter: Option<Filter>,
+    /// Indicators whose mean and extremes over each object become columns. Default none.
+    pub companions: Vec<Indicator>,
+    /// Indicators put on mesh vertices besides the standard values. Default none.
+    pub mesh_values: Vec<Indicator>,
     /// Meshes. Default together.
     pub surfaces: Surfaces,
     /// Objects of fewer cells get no mesh. Default 0: every listed object.
@@ -279,7 +198,13 @@ impl Default for Request {
             max_object_cells: 1 << 22,
             viscosity: None,
             resistivity: None,
+            dissipation: None,
+            kolmogorov_length: None,
             frame: Frame::Box,
+            scheme: Scheme::Fd8,
+            filter: None,
+            companions: Vec::new(),
+            mesh_values: Vec::new(),
             surfaces: Surfaces::Together,
             surface_min_cells: 0,
         }
@@ -290,26 +215,11 @@ impl Request {
     /// The families for a snapshot that carries these fields.
     ///
     /// # Errors
-    /// `Usage` when a family needs a field or a coefficient that is not there, or two families share a name.
+    /// `Usage` when a family, companion or mesh value needs a field or a coefficient that is not there, or two families share a name.
     pub fn families_for(&self, fields: Fields) -> Result<Vec<Family>> {
         let families = if self.families.is_empty() { Family::defaults(fields) } else { self.families.clone() };
         for (i, family) in families.iter().enumerate() {
-            let lacks = |what: &str, hint: &str| {
-                Err(Error::usage("cannot detect family").item(format!("\"{family}\"")).expected(what).found("none").hint(hint))
-            };
-            let needs = family.indicator.needs();
-            if needs.velocity && !fields.velocity {
-                return lacks("a velocity field", "name its datasets with --velocity U,V,W");
-            }
-            if needs.magnetic && !fields.magnetic {
-                return lacks("a magnetic field", "name its datasets with --magnetic BX,BY,BZ");
-            }
-            if family.indicator == Indicator::DissipationViscous && self.viscosity.is_none() {
-                return lacks("the viscosity", "give --viscosity, or threshold strain instead");
-            }
-            if family.indicator == Indicator::DissipationOhmic && self.resistivity.is_none() {
-                return lacks("the resistivity", "give --resistivity, or threshold current instead");
-            }
+            self.check_indicator(family.indicator, fields, "cannot detect family", &format!("\"{family}\""))?;
             if families[..i].iter().any(|f| f.name == family.name) {
                 return Err(Error::usage("cannot use family")
                     .item(format!("\"{family}\""))
@@ -318,7 +228,46 @@ impl Request {
                     .hint("give every family another name before the colon"));
             }
         }
+        for (what, list) in [("cannot add companion columns", &self.companions), ("cannot add mesh values", &self.mesh_values)] {
+            for i in list {
+                self.check_indicator(*i, fields, what, i.name())?;
+            }
+        }
+        if families.is_empty() {
+            return Err(Error::usage("cannot choose families")
+                .expected("a velocity or a magnetic field, which have default families")
+                .found("neither")
+                .hint("name one: --family \"NAME: INDICATOR > LEVEL\""));
+        }
         Ok(families)
+    }
+
+    fn check_indicator(&self, indicator: Indicator, fields: Fields, what: &str, item: &str) -> Result<()> {
+        let lacks = |expected: &str, hint: &str| Err(Error::usage(what).item(item).expected(expected).found("none").hint(hint));
+        let needs = indicator.needs();
+        if needs.velocity && !fields.velocity {
+            return lacks("a velocity field", "name its datasets with --velocity U,V,W");
+        }
+        if needs.magnetic && !fields.magnetic {
+            return lacks("a magnetic field", "name its datasets with --magnetic BX,BY,BZ");
+        }
+        if needs.buoyancy && !fields.buoyancy {
+            return lacks("a buoyancy field", "name its dataset with --buoyancy B");
+        }
+        if indicator == Indicator::DissipationViscous && self.viscosity.is_none() {
+            return lacks("the viscosity", "give --viscosity, or use strain instead");
+        }
+        if indicator == Indicator::DissipationOhmic && self.resistivity.is_none() {
+            return lacks("the resistivity", "give --resistivity, or use current instead");
+        }
+        Ok(())
+    }
+
+    /// Companions and mesh values together, each once, companions first: what is derived besides the families' indicators.
+    pub fn extras(&self) -> Vec<Indicator> {
+        let mut out = self.companions.clone();
+        out.extend(self.mesh_values.iter().filter(|i| !self.companions.contains(i)));
+        out
     }
 }
 
@@ -327,42 +276,34 @@ mod tests {
     use super::*;
 
     #[test]
-    fn grammar_round_trips() {
-        for text in ["vorticity: vorticity > 3 rms", "cores: q < -2.5", "worms: vorticity > 0.01 volume", "b: field > 2 mean"] {
-            assert_eq!(Family::parse(text).unwrap().to_string(), text);
-        }
-    }
-
-    #[test]
-    fn every_fault_is_named() {
-        let cases = [
-            ("vorticity > 3 rms", "found no colon"),
-            (": vorticity > 3", "found the name \"\""),
-            ("a/b: vorticity > 3", "found the name \"a/b\""),
-            ("a: vorticity 3", "found neither > nor <"),
-            ("a: vorticity > < 3", "found both > and <"),
-            ("a: vortex > 3", "expected an indicator of this version, found \"vortex\""),
-            ("a: vorticity >", "found no level"),
-            ("a: vorticity > x rms", "found the level \"x\""),
-            ("a: vorticity > nan", "found the level \"nan\""),
-            ("a: vorticity > 3 sigma", "found the word \"sigma\""),
-            ("a: vorticity > 2 volume", "found the volume fraction 2"),
-            ("a: vorticity > 3 rms down to 2 rms", "found the level \"3 rms down to 2 rms\""),
-        ];
-        for (text, part) in cases {
-            let message = Family::parse(text).unwrap_err().to_string();
-            assert!(message.contains(part), "{text}: {message}");
-        }
-    }
-
-    #[test]
     fn families_are_checked_against_the_fields() {
-        let velocity = Fields { velocity: true, magnetic: false };
+        let velocity = Fields::VELOCITY;
         let mut r = Request { families: vec![Family::parse("c: current > 3 rms").unwrap()], ..Request::default() };
         assert!(r.families_for(velocity).unwrap_err().to_string().contains("expected a magnetic field, found none"));
         let twice = Family::parse("a: vorticity > 3 rms").unwrap();
         r.families = vec![twice.clone(), twice];
         assert!(r.families_for(velocity).unwrap_err().to_string().contains("\"a\" twice"));
         assert_eq!(Request::default().families_for(velocity).unwrap()[0].to_string(), "vorticity: vorticity > 3 rms");
+        let with = Request { companions: vec![Indicator::Buoyancy], ..Request::default() };
+        assert!(with.families_for(velocity).unwrap_err().to_string().contains("cannot add companion columns: buoyancy"));
+    }
+
+    #[test]
+    fn filters_round_trip_and_faults_are_named() {
+        for text in ["sharp 0.25", "gaussian 2"] {
+            assert_eq!(Filter::parse(text).unwrap().to_string(), text);
+        }
+        for text in ["", "sharp", "box 2", "sharp -1", "gaussian x"] {
+            let message = Filter::parse(text).unwrap_err().to_string();
+            assert!(message.contains("cannot read filter"), "{message}");
+        }
+    }
+
+    #[test]
+    fn schemes_have_names() {
+        assert_eq!(Scheme::named("auto"), Some(Scheme::Fd8));
+        for (name, scheme) in SCHEMES {
+            assert_eq!((Scheme::named(name), scheme.name()), (Some(scheme), name));
+        }
     }
 }

@@ -11,6 +11,8 @@ pub struct Need {
     pub truncation: bool,
     /// Cosines and squared cross products.
     pub alignment: bool,
+    /// The indicators beside those of the families.
+    pub extras: bool,
 }
 
 /// Derived quantities of consecutive cells of one row, all arrays of one length. Vectors have one array a component (x, y, z).
@@ -54,13 +56,25 @@ pub struct Rows<T> {
     pub lorentz2: Vec<T>,
     /// |j|²|b|².
     pub j2b2: Vec<T>,
+    /// cos(j, b − ⟨b⟩), NaN where undefined; empty where the mean field is not removed.
+    pub cos_jb_fluct: Vec<T>,
+    /// cos(u, b − ⟨b⟩).
+    pub cos_ub_fluct: Vec<T>,
+    /// |j×(b − ⟨b⟩)|².
+    pub lorentz2_fluct: Vec<T>,
+    /// |j|²|b − ⟨b⟩|².
+    pub j2b2_fluct: Vec<T>,
+    /// Buoyancy.
+    pub buoyancy: Vec<T>,
     /// Indicators, one array a family.
     pub indicators: Vec<Vec<T>>,
+    /// Further indicators (companions, mesh values), one array each; filled where [`Need::extras`] asks.
+    pub extras: Vec<Vec<T>>,
 }
 
 impl<T> Rows<T> {
     /// The cosines in the order of [`crate::model::object::COSINES`].
-    pub fn cosines(&self) -> [&[T]; 3] {
-        [&self.cos_uw, &self.cos_jb, &self.cos_ub]
+    pub fn cosines(&self) -> [&[T]; 5] {
+        [&self.cos_uw, &self.cos_jb, &self.cos_ub, &self.cos_jb_fluct, &self.cos_ub_fluct]
     }
 }

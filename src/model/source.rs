@@ -4,19 +4,41 @@ use crate::base::error::Result;
 use crate::base::real::Real;
 use crate::space::grid::Grid;
 
-/// Which fields a snapshot carries. Components are always ordered u, v, w, then bx, by, bz.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+/// Which fields a snapshot carries. Components are always ordered u, v, w, then bx, by, bz, then buoyancy.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
 pub struct Fields {
     /// Velocity present.
     pub velocity: bool,
     /// Magnetic field present.
     pub magnetic: bool,
+    /// Buoyancy present.
+    pub buoyancy: bool,
+    /// The flow is compressible (a density was given): criteria made for solenoidal flow take the gradient without its trace.
+    pub compressible: bool,
 }
 
 impl Fields {
-    /// Number of scalar components: 3 or 6.
+    /// A velocity alone.
+    pub const VELOCITY: Fields = Fields { velocity: true, magnetic: false, buoyancy: false, compressible: false };
+    /// A magnetic field alone.
+    pub const MAGNETIC: Fields = Fields { velocity: false, magnetic: true, buoyancy: false, compressible: false };
+    /// Velocity and magnetic field.
+    pub const BOTH: Fields = Fields { velocity: true, magnetic: true, buoyancy: false, compressible: false };
+
+    /// Number of scalar components.
     pub fn components(self) -> usize {
-        3 * (usize::from(self.velocity) + usize::from(self.magnetic))
+        3 * (usize::from(self.velocity) + usize::from(self.magnetic)) + usize::from(self.buoyancy)
+    }
+
+    /// Names of the components in their order.
+    pub fn names(self) -> Vec<&'static str> {
+        let sets = [(self.velocity, &["u", "v", "w"][..]), (self.magnetic, &["bx", "by", "bz"]), (self.buoyancy, &["buoyancy"])];
+        sets.into_iter().filter(|(there, _)| *there).flat_map(|(_, names)| names.iter().copied()).collect()
+    }
+
+    /// Index of the first magnetic component.
+    pub fn first_magnetic(self) -> usize {
+        if self.velocity { 3 } else { 0 }
     }
 }
 

@@ -95,7 +95,7 @@ pub struct Survey {
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct Alignment {
     /// Cosines in the order of [`crate::model::object::COSINES`].
-    pub cosines: [Cosine; 3],
+    pub cosines: [Cosine; 5],
     /// Sum of |u×ω|².
     pub lamb2: f64,
     /// Sum of |u|²|ω|².

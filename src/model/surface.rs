@@ -17,7 +17,7 @@ pub struct SurfaceMesh {
 
 impl SurfaceMesh {
     /// Names of the vertex values of a snapshot with these fields.
-    pub fn value_names(fields: crate::model::source::Fields) -> Vec<&'static str> {
+    pub fn value_names(fields: crate::model::source::Fields, extras: &[crate::model::indicator::Indicator]) -> Vec<&'static str> {
         let mut names = vec!["indicator"];
         if fields.velocity {
             names.extend(["speed", "cos_u_vorticity"]);
@@ -28,6 +28,8 @@ impl SurfaceMesh {
         if fields.velocity && fields.magnetic {
             names.push("cos_u_b");
         }
+        // What is there already is not written twice.
+        names.extend(extras.iter().map(|i| i.name()).filter(|n| *n != "speed"));
         names
     }
 }

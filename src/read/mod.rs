@@ -20,6 +20,7 @@ use std::ffi::OsStr;
 use std::path::Path;
 
 use crate::base::error::{Error, Result};
+use crate::model::snapshot::SnapshotRef;
 use crate::model::source::AnySource;
 
 mod arrange;
@@ -34,7 +35,7 @@ mod source;
 mod spec;
 mod superblock;
 
-pub use spec::InputSpec;
+pub use spec::{InputSpec, RawLayout, Staggering, Stretch, TimeSource};
 
 /// A snapshot whose headers were found good.
 pub struct Opened {
@@ -59,7 +60,8 @@ pub struct Opened {
 /// `Usage` when the description itself cannot be honoured (axis order, names, box); `Input` when a
 /// file or dataset is missing, damaged, of another type than f32 or f64, of a wrong rank or shape, or
 /// has fewer than 9 samples along an axis.
-pub fn open(snapshot: &Path, spec: &InputSpec) -> Result<Opened> {
+pub fn open(snapshot: &SnapshotRef, spec: &InputSpec) -> Result<Opened> {
+    let snapshot = &snapshot.path;
     let order = spec.check()?;
     let kind = std::fs::metadata(snapshot).map_err(|e| {
         if e.kind() == std::io::ErrorKind::NotFound {

@@ -65,7 +65,7 @@ impl Arrays {
 
 /// The fields that were chosen.
 pub(super) fn fields_of(chosen: impl Iterator<Item = Field>) -> Fields {
-    let mut fields = Fields { velocity: false, magnetic: false };
+    let mut fields = Fields::default();
     for field in chosen {
         match field {
             Field::Velocity => fields.velocity = true,

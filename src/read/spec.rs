@@ -4,6 +4,55 @@ use crate::base::error::{Error, Result};
 use crate::read::order::Order;
 use crate::space::grid::Grid;
 
+/// Layout of headerless binary files.
+#[derive(Debug, Clone, PartialEq)]
+pub struct RawLayout {
+    /// Whether values are f64 rather than f32.
+    pub double: bool,
+    /// Whether the most significant byte comes first.
+    pub big_endian: bool,
+    /// Samples along every axis, slowest first, as [`InputSpec::order`] names them; without the component axis, which is
+    /// there when all components of all fields stand in one file.
+    pub shape: Vec<usize>,
+    /// Bytes before the first value (or before the first record marker).
+    pub offset: u64,
+    /// Fortran sequential records: bytes of the length marker before and after every record, 4 or 8; none where there are no
+    /// records. A record holds one component, or all of them.
+    pub record_markers: Option<u8>,
+}
+
+/// Where on their cells the magnetic components are stored.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+pub enum Staggering {
+    /// At the samples, as all other fields.
+    #[default]
+    Centres,
+    /// bx half a cell below the sample in x, by in y, bz in z.
+    LowerFaces,
+    /// Half a cell above.
+    UpperFaces,
+}
+
+/// A part of an axis.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum Stretch {
+    /// Samples `first..end`; on a periodic axis they may lie below 0 or beyond the last sample.
+    Indices(i64, i64),
+    /// Samples whose positions lie in `from..=to`; on a periodic axis they may leave the box.
+    Positions(f64, f64),
+}
+
+/// Where the time of a snapshot stands; the first that is given and found wins, then the attributes `time` and `t`.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct TimeSource {
+    /// Name of an attribute of the root group, the step's group or the first dataset.
+    pub attribute: Option<String>,
+    /// Path of a dataset that holds one number.
+    pub dataset: Option<String>,
+    /// A file name with `{time}` where the number stands and `*` for anything else, e.g. `out_t{time}.h5`.
+    pub name: Option<String>,
+}
+
 /// How to read a snapshot. Triples are in the order x, y, z.
 #[derive(Debug, Clone, PartialEq)]
 pub struct InputSpec {
@@ -36,6 +85,20 @@ pub struct InputSpec {
     pub origin: [f64; 3],
     /// Which axes wrap. Default all.
     pub periodic: [bool; 3],
+    /// Name of the buoyancy. Default none: it is read only where named.
+    pub buoyancy: Option<String>,
+    /// Name of the density: the magnetic field is divided by its square root, and the flow counts as compressible. Default none.
+    pub density: Option<String>,
+    /// Where the magnetic components are stored. Default at the samples.
+    pub staggering: Staggering,
+    /// Names of one-dimensional datasets with the coordinates of the samples, per axis; such an axis is open. Default none.
+    pub coordinates: [Option<String>; 3],
+    /// Layout of files without a header. Default none.
+    pub raw: Option<RawLayout>,
+    /// The part of the box to use; open faces where cut. Default all of it.
+    pub region: [Option<Stretch>; 3],
+    /// Where the time stands.
+    pub time: TimeSource,
 }
 
 impl Default for InputSpec {
@@ -48,6 +111,13 @@ impl Default for InputSpec {
             spacing: None,
             origin: [0.0; 3],
             periodic: [true; 3],
+            buoyancy: None,
+            density: None,
+            staggering: Staggering::Centres,
+            coordinates: [None, None, None],
+            raw: None,
+            region: [None; 3],
+            time: TimeSource::default(),
         }
     }
 }
@@ -90,7 +160,7 @@ impl InputSpec {
             (None, Some(s)) => s,
             (None, None) => unreachable!("refused by check"),
         };
-        Grid { n, spacing, origin: self.origin, periodic: self.periodic }
+        Grid { n, spacing, origin: self.origin, periodic: self.periodic, stretched: [None, None, None] }
     }
 }
 

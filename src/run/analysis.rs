@@ -3,7 +3,7 @@
 use crate::base::error::{Error, Result};
 use crate::base::observe::Observe;
 use crate::base::real::Real;
-use crate::derive::Deriver;
+use crate::derive::{Deriver, Plan};
 use crate::detect::Criterion;
 use crate::math::diff::WIDTH;
 use crate::math::stats::Scale;
@@ -124,7 +124,7 @@ fn typed<T: Real>(
     observe: &dyn Observe,
     sink: &mut (dyn SurfaceSink + Send),
 ) -> Result<Analysis> {
-    let grid = *source.grid();
+    let grid = source.grid().clone();
     let fields = source.fields();
     let families = request.families_for(fields)?;
     for (a, axis) in ["x", "y", "z"].iter().enumerate() {
@@ -142,7 +142,16 @@ fn typed<T: Real>(
         source = Box::new(kept(&mut *source, observe)?);
     }
     let mut pass = Pass { source: &mut *source, ranges, buffers: Buffers::default(), observe };
-    let deriver = |frame| Deriver::<T>::new(&grid, fields, &families, frame, request.viscosity, request.resistivity);
+    let plan = Plan {
+        indicators: families.iter().map(|f| f.indicator).collect(),
+        extras: request.extras(),
+        scheme: request.scheme,
+        frame: [0.0; 3],
+        mean_field: None,
+        viscosity: request.viscosity,
+        resistivity: request.resistivity,
+    };
+    let deriver = |frame| Deriver::<T>::new(&grid, fields, Plan { frame, ..plan.clone() });
 
     let moving = request.frame == Frame::Box && families.iter().any(|f| f.indicator.depends_on_frame());
     let (scan, survey, frame) = if moving {
@@ -172,7 +181,7 @@ fn typed<T: Real>(
             Criterion {
                 family: k,
                 side: f.side,
-                level: levels::absolute::<T>(f, stats, survey.cells),
+                level: levels::absolute::<T>(f.level, f.side, stats, survey.cells),
                 connectivity: request.connectivity,
                 scales: Scales(bounds.map(Scale::for_bound)),
             }
@@ -195,7 +204,7 @@ fn typed<T: Real>(
             time: snapshot.time,
             family: family.name.clone(),
             level: criterion.level,
-            grid,
+            grid: grid.clone(),
             fields,
             viscosity: request.viscosity,
             resistivity: request.resistivity,
@@ -229,7 +238,7 @@ fn typed<T: Real>(
 }
 
 fn kept<T: Real>(source: &mut dyn PlaneSource<T>, observe: &dyn Observe) -> Result<MemorySource<T>> {
-    let grid = *source.grid();
+    let grid = source.grid().clone();
     let fields = source.fields();
     let plane = grid.plane_cells();
     let mut components = vec![vec![T::ZERO; plane * grid.n[2]]; fields.components()];
@@ -300,7 +309,7 @@ fn common_bounds(scan: &Scan, survey: &Survey, fields: Fields, frame: [f64; 3]) 
         b[Sum::Speed2Vorticity2 as usize] = product;
     }
     if fields.magnetic {
-        let product = square(if fields.velocity { 3 } else { 0 }, [0.0; 3]) * survey.magnetic.curl2_max;
+        let product = square(fields.first_magnetic(), [0.0; 3]) * survey.magnetic.curl2_max;
         b[Sum::Current2 as usize] = survey.magnetic.curl2_max;
         b[Sum::Lorentz2 as usize] = product;
         b[Sum::Current2Field2 as usize] = product;
@@ -310,16 +319,12 @@ fn common_bounds(scan: &Scan, survey: &Survey, fields: Fields, frame: [f64; 3]) 
 
 fn divergences<T: Real>(scan: &Scan, survey: &Survey, grid: &Grid, fields: Fields) -> [Divergence; 2] {
     let cells = grid.cells();
-    let spacing = grid.spacing.iter().fold(f64::INFINITY, |a, &b| a.min(b));
+    let spacing = grid.smallest_spacing();
     let rms = |first: usize| (scan.components[first..first + 3].iter().map(|c| c.square_sum).sum::<f64>() / cells as f64).sqrt();
     let none = Divergence { ratio: None, explained: None };
     [
         if fields.velocity { levels::divergence::<T>(&survey.velocity, cells, rms(0), spacing) } else { none },
-        if fields.magnetic {
-            levels::divergence::<T>(&survey.magnetic, cells, rms(if fields.velocity { 3 } else { 0 }), spacing)
-        } else {
-            none
-        },
+        if fields.magnetic { levels::divergence::<T>(&survey.magnetic, cells, rms(fields.first_magnetic()), spacing) } else { none },
     ]
 }
 

@@ -10,7 +10,8 @@ use crate::base::observe::Observe;
 use crate::base::par::Pool;
 use crate::export::atomic::Folder;
 use crate::export::{csv, json as dictionary};
-use crate::model::request::{Request, Surfaces};
+use crate::model::request::{Outputs, Request, Surfaces};
+use crate::model::snapshot::SnapshotRef;
 use crate::model::surface::NoSurfaces;
 use crate::read::{self, InputSpec, Opened};
 use crate::run::analysis::{Analysis, Execution, Snapshot, analyse};
@@ -22,12 +23,14 @@ use crate::run::{provenance, summary};
 #[derive(Debug, Clone, PartialEq)]
 pub struct RunConfig {
     /// Snapshots in the order of the catalogue.
-    pub snapshots: Vec<PathBuf>,
+    pub snapshots: Vec<SnapshotRef>,
     /// How to read them.
     pub input: InputSpec,
     /// What changes results.
     pub request: Request,
-    /// What does not.
+    /// What is written.
+    pub outputs: Outputs,
+    /// What changes nothing.
     pub execution: Execution,
     /// Worker threads; 0 takes one per core.
     pub threads: usize,
@@ -44,7 +47,7 @@ pub struct Outcome {
     /// Snapshots that were analysed.
     pub done: Vec<Analysis>,
     /// Snapshots that failed, with the reason.
-    pub failed: Vec<(PathBuf, Error)>,
+    pub failed: Vec<(SnapshotRef, Error)>,
 }
 
 /// Runs the main job.
@@ -58,10 +61,10 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     let started = Instant::now();
     let pool = Pool::new(config.threads)?;
     let clock = Clock::new(observe);
-    let mut failed: Vec<(PathBuf, Error)> = Vec::new();
+    let mut failed: Vec<(SnapshotRef, Error)> = Vec::new();
     let mut usable = Vec::new();
     for path in &config.snapshots {
-        match read::open(path, &config.input).and_then(|o| check(o, path, &config.request)) {
+        match read::open(path, &config.input).and_then(|o| check(o, &path.path, &config.request)) {
             Ok(name) => usable.push((path.clone(), name)),
             Err(e) => failed.push((path.clone(), e)),
         }
@@ -86,7 +89,7 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
                 for family in &analysis.families {
                     table.push_str(&pool.run(|| csv::lines(&family.rows)));
                 }
-                snapshots.push(summary::snapshot(&analysis, &path.to_string_lossy(), &datasets));
+                snapshots.push(summary::snapshot(&analysis, &path.to_string(), &datasets));
                 done.push(analysis);
             }
             Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => {
@@ -99,7 +102,7 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     if done.is_empty() {
         return Err(none_usable(failed));
     }
-    let failures: Vec<Value> = failed.iter().map(|(p, e)| json!({ "path": p.to_string_lossy(), "error": e.to_string() })).collect();
+    let failures: Vec<Value> = failed.iter().map(|(p, e)| json!({ "path": p.to_string(), "error": e.to_string() })).collect();
     let what = json!({
         "program": provenance::program(),
         "request": summary::request(&config.request, &config.input),
@@ -128,19 +131,19 @@ fn tell(e: &Error, config: &RunConfig, observe: &dyn Observe) {
 }
 
 /// Gives every snapshot a name of its own: where file names are equal, the names of the folders around them go before.
-fn tell_apart(snapshots: &mut [(PathBuf, String)]) -> Result<()> {
+fn tell_apart(snapshots: &mut [(SnapshotRef, String)]) -> Result<()> {
     let own: Vec<String> = snapshots.iter().map(|(_, name)| name.clone()).collect();
     let names = |depth: usize| -> Vec<String> {
-        let named = |(path, _): &(PathBuf, String), own: &String| {
+        let named = |(s, _): &(SnapshotRef, String), own: &String| {
             let folders: Vec<String> =
-                path.parent().into_iter().flat_map(Path::components).map(|c| c.as_os_str().to_string_lossy().into_owned()).collect();
+                s.path.parent().into_iter().flat_map(Path::components).map(|c| c.as_os_str().to_string_lossy().into_owned()).collect();
             let near = &folders[folders.len().saturating_sub(depth)..];
             near.iter().filter(|f| !f.contains('/')).chain([own]).cloned().collect::<Vec<_>>().join("_")
         };
         snapshots.iter().zip(&own).map(|(s, own)| named(s, own)).collect()
     };
     let twice = |names: &[String]| (0..names.len()).find_map(|i| names[..i].iter().position(|n| *n == names[i]).map(|k| (k, i)));
-    let deepest = snapshots.iter().map(|(p, _)| p.components().count()).max().unwrap_or(0);
+    let deepest = snapshots.iter().map(|(s, _)| s.path.components().count()).max().unwrap_or(0);
     for depth in 0..=deepest {
         let tried = names(depth);
         if twice(&tried).is_none() {
@@ -152,14 +155,14 @@ fn tell_apart(snapshots: &mut [(PathBuf, String)]) -> Result<()> {
     }
     let (first, second) = twice(&own).unwrap_or((0, 0));
     Err(Error::usage("cannot tell two snapshots apart")
-        .at(&snapshots[second].0)
+        .at(&snapshots[second].0.path)
         .expected("a name of its own")
-        .found(format!("the name \"{}\", also that of {}", own[second], snapshots[first].0.display()))
+        .found(format!("the name \"{}\", also that of {}", own[second], snapshots[first].0))
         .hint("name every snapshot once"))
 }
 
 /// The error of a run in which no snapshot could be used.
-fn none_usable(mut failed: Vec<(PathBuf, Error)>) -> Error {
+fn none_usable(mut failed: Vec<(SnapshotRef, Error)>) -> Error {
     match failed.len() {
         0 => Error::usage("no snapshot given").hint("name one or more files"),
         1 => failed.remove(0).1,
@@ -167,7 +170,7 @@ fn none_usable(mut failed: Vec<(PathBuf, Error)>) -> Error {
     }
 }
 
-fn one(path: &Path, name: &str, config: &RunConfig, folder: &Folder, observe: &dyn Observe) -> Result<(Analysis, Vec<String>)> {
+fn one(path: &SnapshotRef, name: &str, config: &RunConfig, folder: &Folder, observe: &dyn Observe) -> Result<(Analysis, Vec<String>)> {
     let opened = read::open(path, &config.input)?;
     let fields = opened.source.fields();
     let snapshot =
@@ -177,7 +180,7 @@ fn one(path: &Path, name: &str, config: &RunConfig, folder: &Folder, observe: &d
         analyse(opened.source, snapshot, request, execution, observe, &mut NoSurfaces)?
     } else {
         let families = request.families_for(fields)?;
-        let mut files = MeshFiles::new(folder, name, families, fields, request.surfaces)?;
+        let mut files = MeshFiles::new(folder, name, families, fields, &request.mesh_values, request.surfaces)?;
         match analyse(opened.source, snapshot, request, execution, observe, &mut files) {
             Ok(analysis) => {
                 files.finish()?;

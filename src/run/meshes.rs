@@ -6,7 +6,7 @@ use std::io::BufWriter;
 use crate::base::error::{Error, Result};
 use crate::export::atomic::Folder;
 use crate::export::ply::PlyWriter;
-use crate::model::request::{Family, Surfaces};
+use crate::model::request::{Family, Indicator, Surfaces};
 use crate::model::source::Fields;
 use crate::model::surface::{SurfaceMesh, SurfaceSink};
 
@@ -27,7 +27,14 @@ const FACES: &str = ".faces";
 
 impl<'a> MeshFiles<'a> {
     /// Prepares the files of a snapshot; `surfaces` must not be [`Surfaces::None`].
-    pub fn new(folder: &'a Folder, snapshot: &str, families: Vec<Family>, fields: Fields, surfaces: Surfaces) -> Result<Self> {
+    pub fn new(
+        folder: &'a Folder,
+        snapshot: &str,
+        families: Vec<Family>,
+        fields: Fields,
+        extras: &[Indicator],
+        surfaces: Surfaces,
+    ) -> Result<Self> {
         folder.subfolder(&format!("surfaces/{snapshot}"))?;
         if surfaces == Surfaces::Each {
             for family in &families {
@@ -35,7 +42,7 @@ impl<'a> MeshFiles<'a> {
             }
         }
         let together = families.iter().map(|_| None).collect();
-        let values = SurfaceMesh::value_names(fields);
+        let values = SurfaceMesh::value_names(fields, extras);
         Ok(MeshFiles {
             folder,
             snapshot: snapshot.to_string(),

@@ -55,13 +55,13 @@ impl<T: Real> Pass<'_, T> {
     /// # Errors
     /// Those of the source. Bad cells are reported in the result; nothing is derived from the block that holds one on.
     pub fn survey(&mut self, deriver: Option<&Deriver<T>>, with_scan: bool, families: &[Family]) -> Result<(Scan, Survey)> {
-        let grid = *self.source.grid();
+        let grid = self.source.grid().clone();
         let components = self.source.fields().components();
         let tiles = self.tiles();
         self.observe.stage(if deriver.is_some() { "survey" } else { "read" }, grid.n[2] as u64);
         let mut scans = ScanSum::new::<T>(&grid, components);
         let mut survey = moments::empty(families);
-        let wanted: Vec<bool> = families.iter().map(|f| matches!(f.level, Level::Volume(_))).collect();
+        let wanted: Vec<bool> = families.iter().map(|f| f.levels().iter().any(|l| matches!(l, Level::Volume(_)))).collect();
         let quantiles: Mutex<Vec<Vec<Option<Quantiles>>>> = Mutex::new(Vec::new());
         let mut sound = true;
         let halo = deriver.map_or(0, Deriver::halo);
@@ -79,6 +79,7 @@ impl<T: Real> Pass<'_, T> {
                 }
             }
             let Some(deriver) = deriver.filter(|_| sound) else { return Ok(()) };
+            let ready = deriver.prepare(block);
             let parts = par::map(&tiles, |_, rows_y| {
                 let mut counts = take(&quantiles).unwrap_or_else(|| wanted.iter().map(|w| w.then(Quantiles::default)).collect());
                 let mut scratch = Scratch::default();
@@ -91,10 +92,11 @@ impl<T: Real> Pass<'_, T> {
                             let sampled = y % moments::SAMPLE_ROWS == 0;
                             deriver.row(
                                 block,
+                                &ready,
                                 z,
                                 y,
                                 0..grid.n[0],
-                                Need { strain: true, divergence: true, truncation: sampled, alignment: false },
+                                Need { strain: true, divergence: true, truncation: sampled, ..Need::default() },
                                 &mut scratch,
                             );
                             moments::add_row(&mut part, &scratch.rows, sampled);
@@ -136,10 +138,10 @@ impl<T: Real> Pass<'_, T> {
     /// # Errors
     /// Those of the source.
     pub fn detect(&mut self, deriver: &Deriver<T>, criteria: &[Criterion], min_cells: u64) -> Result<(Vec<Detected>, Alignment)> {
-        let grid = *self.source.grid();
+        let grid = self.source.grid().clone();
         let tiles = self.tiles();
         self.observe.stage("detection", grid.n[2] as u64);
-        let mut labellers: Vec<Labeller> = criteria.iter().map(|c| Labeller::new(grid, *c)).collect();
+        let mut labellers: Vec<Labeller> = criteria.iter().map(|c| Labeller::new(grid.clone(), *c)).collect();
         let mut whole = Alignment::default();
         blocks(
             self.source,
@@ -149,6 +151,7 @@ impl<T: Real> Pass<'_, T> {
             &self.buffers,
             self.observe,
             |block| {
+                let ready = deriver.prepare(block);
                 let parts = par::map(&tiles, |_, rows_y| {
                     let mut scratch = Scratch::default();
                     let mut sweeps: Vec<TileSweep> =
@@ -161,10 +164,11 @@ impl<T: Real> Pass<'_, T> {
                             for y in rows_y.clone() {
                                 deriver.row(
                                     block,
+                                    &ready,
                                     z,
                                     y,
                                     0..grid.n[0],
-                                    Need { strain: true, alignment: true, ..Need::default() },
+                                    Need { strain: true, alignment: true, extras: true, ..Need::default() },
                                     &mut scratch,
                                 );
                                 box_alignment::add_row(&mut part, &scratch.rows);
@@ -211,14 +215,14 @@ impl<T: Real> Pass<'_, T> {
         plan: &ShapePlan,
         sink: &mut (dyn SurfaceSink + Send),
     ) -> Result<Vec<Vec<Option<Shaped>>>> {
-        let grid = *self.source.grid();
-        let fields = if plan.mesh_cells.is_some() { self.source.fields() } else { Fields { velocity: false, magnetic: false } };
+        let grid = self.source.grid().clone();
+        let fields = if plan.mesh_cells.is_some() { self.source.fields() } else { Fields::default() };
         let tiles = self.tiles();
         self.observe.stage("shapes", grid.n[2] as u64);
         let mut patches: Vec<Patches<T>> = criteria
             .iter()
             .zip(found.iter())
-            .map(|(c, f)| Patches::new(grid, c.family, c.side, fields, &f.objects, plan.max_cells))
+            .map(|(c, f)| Patches::new(grid.clone(), c.family, c.side, fields, &f.objects, plan.max_cells))
             .collect();
         let mut pending = Vec::new();
         let mut out: Vec<Vec<Option<Shaped>>> = found.iter().map(|f| f.objects.iter().map(|_| None).collect()).collect();
@@ -262,6 +266,7 @@ fn shape_block<T: Real>(
         p.begin_block(block.z.clone(), tiles, &mut f.objects);
     }
     let open: &[Patches<T>] = patches;
+    let ready = deriver.prepare(block);
     par::map_range(tiles.len(), |t| {
         let mut scratch = Scratch::default();
         let mut wanted: Vec<Wanted> = open.iter().flat_map(|p| p.wanted(t)).collect();
@@ -269,7 +274,7 @@ fn shape_block<T: Real>(
         for row in wanted.chunk_by(|a, b| (a.z, a.y) == (b.z, b.y)) {
             let (z, y) = (row[0].z, row[0].y);
             for x in joined(row) {
-                deriver.row(block, z, y, x.clone(), Need::default(), &mut scratch);
+                deriver.row(block, &ready, z, y, x.clone(), Need { extras: true, ..Need::default() }, &mut scratch);
                 for p in open {
                     p.deliver(t, z, y, &x, &scratch.rows);
                 }

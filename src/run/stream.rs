@@ -100,7 +100,7 @@ pub fn blocks<T: Real>(
     observe: &dyn Observe,
     mut each: impl FnMut(&Block<'_, T>) -> Result<()>,
 ) -> Result<()> {
-    let grid = *source.grid();
+    let grid = source.grid().clone();
     let plane_cells = grid.plane_cells();
     let components = source.fields().components();
     let mut todo = plan(&grid, ranges, halo).into_iter();
@@ -151,7 +151,7 @@ mod tests {
         let grid = Grid::periodic(n, [1.0; 3]).with_periodic([true, true, periodic]);
         let cells = grid.cells() as usize;
         let p = grid.plane_cells();
-        let fields = Fields { velocity: true, magnetic: false };
+        let fields = Fields::VELOCITY;
         MemorySource::new(grid, fields, (0..3).map(|c| (0..cells).map(|i| (i / p * 10 + c) as f64).collect()).collect())
     }
 

@@ -1,25 +1,40 @@
-//! The box and its samples: counts, spacing, origin and which axes are periodic.
+//! The box and its samples: counts, spacing or coordinates, origin and which axes are periodic.
 
-/// A rectilinear grid with one spacing per axis. All triples are in the order x, y, z.
+use std::sync::Arc;
+
+/// A rectilinear grid. All triples are in the order x, y, z.
 ///
-/// Sample (i, j, k) sits at `origin + (i, j, k) * spacing`. The box length along an axis is
-/// `n * spacing`, at open faces too.
-#[derive(Debug, Clone, Copy, PartialEq)]
+/// On an axis of equal spacing sample i sits at `origin + i * spacing` and the box is `n * spacing` long, at open faces too.
+/// On a stretched axis samples sit at their coordinates. A grid with one sample along z is flat: a plane snapshot.
+#[derive(Debug, Clone, PartialEq)]
 pub struct Grid {
     /// Samples along x, y, z.
     pub n: [usize; 3],
-    /// Distance between samples, in the user's length unit.
+    /// Distance between samples, in the user's length unit; of a stretched axis the mean cell width.
     pub spacing: [f64; 3],
     /// Position of the first sample.
     pub origin: [f64; 3],
-    /// Whether the axis wraps.
+    /// Whether the axis wraps; a stretched axis never does.
     pub periodic: [bool; 3],
+    /// Coordinates of the axes whose spacing is not equal.
+    pub stretched: [Option<Arc<Stretched>>; 3],
+}
+
+/// Coordinates of an axis with unequal spacing.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Stretched {
+    /// Positions of the samples, strictly ascending.
+    pub positions: Vec<f64>,
+    /// Widths of their cells: half the distance between the neighbours; at the ends the distance to the only neighbour, so that
+    /// equal spacing gives every sample a whole cell.
+    pub widths: Vec<f64>,
 }
 
 impl Grid {
     /// A periodic grid of `n` samples over a box of the given lengths, first sample at 0.
     pub fn periodic(n: [usize; 3], lengths: [f64; 3]) -> Grid {
-        Grid { n, spacing: std::array::from_fn(|a| lengths[a] / n[a] as f64), origin: [0.0; 3], periodic: [true; 3] }
+        let spacing = std::array::from_fn(|a| lengths[a] / n[a] as f64);
+        Grid { n, spacing, origin: [0.0; 3], periodic: [true; 3], stretched: [None, None, None] }
     }
 
     /// The same grid with the given axes periodic.
@@ -36,6 +51,28 @@ impl Grid {
         self
     }
 
+    /// The same grid with the samples of one axis, which becomes open, at the given positions.
+    ///
+    /// # Panics
+    /// When their number is not that of the samples, is below 2, or they do not ascend strictly.
+    #[must_use]
+    pub fn with_positions(mut self, axis: usize, positions: Vec<f64>) -> Grid {
+        let n = positions.len();
+        assert!(n == self.n[axis] && n >= 2, "expected {} positions, got {n}", self.n[axis]);
+        assert!(positions.windows(2).all(|p| p[0] < p[1]), "expected strictly ascending positions");
+        let width = |i: usize| match i {
+            0 => positions[1] - positions[0],
+            i if i + 1 == n => positions[i] - positions[i - 1],
+            i => 0.5 * (positions[i + 1] - positions[i - 1]),
+        };
+        let widths: Vec<f64> = (0..n).map(width).collect();
+        self.spacing[axis] = widths.iter().sum::<f64>() / n as f64;
+        self.origin[axis] = positions[0];
+        self.periodic[axis] = false;
+        self.stretched[axis] = Some(Arc::new(Stretched { positions, widths }));
+        self
+    }
+
     /// Number of cells.
     pub fn cells(&self) -> u64 {
         self.n.iter().map(|&n| n as u64).product()
@@ -46,19 +83,65 @@ impl Grid {
         self.n[0] * self.n[1]
     }
 
-    /// Volume of one cell.
-    pub fn cell_volume(&self) -> f64 {
-        self.spacing.iter().product()
+    /// Whether it is one plane: derivatives are taken within it, objects are areas.
+    pub fn is_flat(&self) -> bool {
+        self.n[2] == 1
     }
 
-    /// Box length along an axis (0 = x).
+    /// Whether some axis has unequal spacing.
+    pub fn is_stretched(&self) -> bool {
+        self.stretched.iter().any(Option::is_some)
+    }
+
+    /// Width of the cells at index `i` of an axis; 1 across a flat grid, so that its volumes are areas.
+    pub fn width(&self, axis: usize, i: usize) -> f64 {
+        match &self.stretched[axis] {
+            Some(s) => s.widths[i],
+            None if axis == 2 && self.is_flat() => 1.0,
+            None => self.spacing[axis],
+        }
+    }
+
+    /// Largest cell width along an axis.
+    pub fn largest_width(&self, axis: usize) -> f64 {
+        match &self.stretched[axis] {
+            Some(s) => s.widths.iter().fold(0.0, |a, &b| a.max(b)),
+            None => self.width(axis, 0),
+        }
+    }
+
+    /// Smallest distance between neighbouring samples of any axis that has several.
+    pub fn smallest_spacing(&self) -> f64 {
+        (0..3)
+            .filter(|&a| self.n[a] > 1)
+            .map(|a| match &self.stretched[a] {
+                Some(s) => s.positions.windows(2).fold(f64::INFINITY, |least, p| least.min(p[1] - p[0])),
+                None => self.spacing[a],
+            })
+            .fold(f64::INFINITY, f64::min)
+    }
+
+    /// Volume of the largest cell (of every cell, where spacing is equal); an area on a flat grid.
+    pub fn largest_cell(&self) -> f64 {
+        (0..3).map(|a| self.largest_width(a)).product()
+    }
+
+    /// Box length along an axis.
     pub fn length(&self, axis: usize) -> f64 {
         self.n[axis] as f64 * self.spacing[axis]
     }
 
-    /// Position along an axis of a fractional, possibly unwrapped, index.
+    /// Position of a (fractional, possibly unwrapped) index along an axis; linear between samples, and beyond the ends of a
+    /// stretched axis.
     pub fn position(&self, axis: usize, index: f64) -> f64 {
-        self.origin[axis] + index * self.spacing[axis]
+        match &self.stretched[axis] {
+            None => self.origin[axis] + index * self.spacing[axis],
+            Some(s) => {
+                let i = (index.floor().max(0.0) as usize).min(s.positions.len() - 2);
+                let (a, b) = (s.positions[i], s.positions[i + 1]);
+                a + (index - i as f64) * (b - a)
+            }
+        }
     }
 
     /// Global cell index, x fastest.
@@ -71,5 +154,29 @@ impl Grid {
         let nx = self.n[0] as u64;
         let ny = self.n[1] as u64;
         [(index % nx) as usize, (index / nx % ny) as usize, (index / nx / ny) as usize]
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn equally_spaced_coordinates_are_the_uniform_grid() {
+        let uniform = Grid::periodic([5, 4, 3], [10.0, 4.0, 3.0]).with_periodic([false; 3]).with_origin([1.0, 0.0, 0.0]);
+        let g = uniform.clone().with_positions(0, (0..5).map(|i| 1.0 + 2.0 * f64::from(i)).collect());
+        assert_eq!(g.spacing, uniform.spacing);
+        for i in [-0.5, 0.0, 1.25, 3.9, 4.0, 4.5] {
+            assert!((g.position(0, i) - uniform.position(0, i)).abs() < 1e-14);
+        }
+        assert!((0..5).all(|i| g.width(0, i) == 2.0));
+        assert_eq!(g.largest_cell(), 2.0);
+    }
+
+    #[test]
+    fn a_plane_has_areas() {
+        let g = Grid::periodic([4, 4, 1], [8.0, 4.0, 7.0]);
+        assert!(g.is_flat());
+        assert_eq!(g.largest_cell(), 2.0);
     }
 }

@@ -1,21 +1,23 @@
 //! From the level a user asked for to a number, and whether a divergence is more than truncation explains.
 
 use crate::base::real::Real;
-use crate::model::request::{Family, Level, Side};
+use crate::model::request::{Level, Side};
 use crate::model::statistics::{GradientStats, IndicatorStats};
 
 /// The absolute level of a family, rounded to the storage precision so that later comparisons are exact.
 ///
 /// `rms` is the root of the box mean of the squared indicator (for vectors: of the squared magnitude); `volume` is read from
 /// counts whose bins are a relative 2^-12 wide.
-pub fn absolute<T: Real>(family: &Family, stats: &IndicatorStats, cells: u64) -> f64 {
+pub fn absolute<T: Real>(level: Level, side: Side, stats: &IndicatorStats, cells: u64) -> f64 {
     let n = cells as f64;
-    let level = match family.level {
+    let level = match level {
         Level::Absolute(v) => v,
         Level::Rms(v) => v * (stats.square_sum / n).sqrt(),
+        Level::RunRms(v) => v * (stats.square_sum / n).sqrt(),
+        Level::Peak(v) => v,
         Level::Mean(v) => v * stats.sum / n,
         Level::Volume(fraction) => stats.quantiles.as_ref().map_or(f64::NAN, |q| {
-            q.level_above(match family.side {
+            q.level_above(match side {
                 Side::Above => fraction,
                 Side::Below => 1.0 - fraction,
             })

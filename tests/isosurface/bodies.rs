@@ -229,7 +229,7 @@ fn vertices_carry_fields_and_normals() {
         }
     }
     // In physical coordinates every vertex lies near the sphere: linear interpolation of a distance errs by d²/8R.
-    let grid = Grid { n: [22, 24, 20], spacing, origin: [-3.0, 5.0, 1.0], periodic: [false; 3] };
+    let grid = Grid { n: [22, 24, 20], spacing, origin: [-3.0, 5.0, 1.0], periodic: [false; 3], stretched: [None, None, None] };
     let mesh = surface.unwrapped();
     assert_eq!(mesh.triangles, surface.triangles);
     for p in &mesh.points[..surface.edges.len()] {

@@ -61,7 +61,7 @@ fn bodies() -> [Body; 3] {
 fn analysed<T: Precision>(body: &Body, h: f64, periodic: bool) -> Outcome {
     let spacing = [h, 0.9 * h, 1.1 * h];
     let n = std::array::from_fn(|a| (body.size[a] / spacing[a]).round() as usize);
-    let grid = Grid { n, spacing, origin: [0.0; 3], periodic: [periodic; 3] };
+    let grid = Grid { n, spacing, origin: [0.0; 3], periodic: [periodic; 3], stretched: [None, None, None] };
     // In the middle, or around the corner of the periodic box.
     let centre = [0.317, 0.171, -0.233].map(|c| c * 0.2);
     let centre = if periodic { centre } else { std::array::from_fn(|a| centre[a] + 0.5 * grid.length(a)) };
@@ -73,7 +73,7 @@ fn analysed<T: Precision>(body: &Body, h: f64, periodic: bool) -> Outcome {
         });
         (2.0 - (body.distance)(place.local(image)) / body.radius).max(0.0)
     };
-    run(sampled::<T>(grid, MAGNETIC, |p| [0.0, value(p), 0.0]), &request(&["body: field > 1"]))
+    run(sampled::<T>(grid.clone(), MAGNETIC, |p| [0.0, value(p), 0.0]), &request(&["body: field > 1"]))
 }
 
 /// V (from T = 3V/S), S, C.
@@ -122,7 +122,7 @@ fn rods_plates_and_rings_have_their_class_and_euler_number() {
 /// at edges and corners, an isosurface in pieces. What it is must not depend on that: a sheet, flagged.
 #[test]
 fn a_plate_thinner_than_the_grid_is_still_a_sheet() {
-    let grid = Grid { n: [48; 3], spacing: [1.0; 3], origin: [0.0; 3], periodic: [false; 3] };
+    let grid = Grid { n: [48; 3], spacing: [1.0; 3], origin: [0.0; 3], periodic: [false; 3], stretched: [None, None, None] };
     let directions = [[0.3, 0.2, 1.0], [1.0, 0.4, 0.7], [-0.5, 1.0, 0.3], [1.0, 1.0, 1.0], [0.1, -0.9, 0.6], [0.9, 0.1, -0.2]];
     let a = 0.8 / 1.76275;
     for direction in directions {
@@ -132,7 +132,7 @@ fn a_plate_thinner_than_the_grid_is_still_a_sheet() {
             let edge = (q[0] / 13.0).powi(8) + (q[1] / 11.0).powi(8);
             (-edge).exp() / (q[2] / a).cosh().powi(2)
         };
-        let o = run(sampled::<f64>(grid, MAGNETIC, |p| [0.0, value(p), 0.0]), &request(&["plate: field > 0.25"]));
+        let o = run(sampled::<f64>(grid.clone(), MAGNETIC, |p| [0.0, value(p), 0.0]), &request(&["plate: field > 0.25"]));
         let largest = o.rows(0).iter().max_by_key(|r| number(r, Col::Cells) as u64).unwrap();
         assert!(number(largest, Col::Cells) > 300.0, "{direction:?}");
         assert_eq!(text(largest, Col::Class), "sheet", "{direction:?}: {}", text(largest, Col::Flags));

@@ -28,7 +28,7 @@ fn bad_cells_are_located_and_refused() {
         let request = Request { frame: ropewalk::model::request::Frame::Box, ..request(&[family]) };
         for block_planes in [None, Some(2)] {
             let execution = Execution { block_planes, ..Execution::default() };
-            let source = stored::<f32>(grid, VELOCITY, &u);
+            let source = stored::<f32>(grid.clone(), VELOCITY, &u);
             let e = analyse(source, snapshot.clone(), &request, &execution, &Silent, &mut NoSurfaces).err().expect("refused");
             assert_eq!(e.kind(), Kind::Data);
             let message = e.to_string();
@@ -114,7 +114,7 @@ fn nine_samples_are_enough() {
     for periodic in [true, false] {
         let grid = Grid::periodic([9, 11, 9], [1.0; 3]).with_periodic([periodic; 3]);
         // u = (y², 0, 0): |ω| = 2y exactly for polynomials up to degree 8, where no stencil wraps.
-        let o = run(sampled::<f64>(grid, VELOCITY, |p| [p[1] * p[1], 0.0, 0.0]), &request(&["w: vorticity > 0.5"]));
+        let o = run(sampled::<f64>(grid.clone(), VELOCITY, |p| [p[1] * p[1], 0.0, 0.0]), &request(&["w: vorticity > 0.5"]));
         assert!(!o.rows(0).is_empty());
         if !periodic {
             let top = 2.0 * 10.0 / 11.0;
@@ -124,7 +124,9 @@ fn nine_samples_are_enough() {
         check_rows(&o);
     }
     let grid = Grid::periodic([9, 8, 9], [1.0; 3]);
-    let e = try_run(sampled::<f32>(grid, VELOCITY, |_| [0.0; 3]), &request(&["w: vorticity > 1"]), &Execution::default()).err().unwrap();
+    let e = try_run(sampled::<f32>(grid.clone(), VELOCITY, |_| [0.0; 3]), &request(&["w: vorticity > 1"]), &Execution::default())
+        .err()
+        .unwrap();
     assert_eq!(e.kind(), Kind::Input);
     assert!(e.to_string().contains("axis y") && e.to_string().contains("found 8"), "{e}");
 }
@@ -148,10 +150,10 @@ fn objects_of_a_few_cells() {
     ];
     for (cells, brick, euler) in cases {
         for b in [1.0, 1e-8, 1e8] {
-            let grid = Grid { n: [10; 3], spacing, origin: [0.0; 3], periodic: [true; 3] };
+            let grid = Grid { n: [10; 3], spacing, origin: [0.0; 3], periodic: [true; 3], stretched: [None, None, None] };
             let mut field = vec![vec![0.0; 1000]; 3];
             cells.iter().for_each(|c| field[0][grid.index(c[0], c[1], c[2]) as usize] = b);
-            let o = run(stored::<f32>(grid, MAGNETIC, &field), &request(&[&format!("f: field > {}", 0.4 * b)]));
+            let o = run(stored::<f32>(grid.clone(), MAGNETIC, &field), &request(&[&format!("f: field > {}", 0.4 * b)]));
             let row = o.only(0);
             assert_eq!(number(row, Col::Cells), cells.len() as f64);
             assert!((number(row, Col::Volume) - cells.len() as f64 * 0.006).abs() < 1e-15);

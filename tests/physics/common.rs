@@ -14,9 +14,9 @@ use ropewalk::space::grid::Grid;
 
 pub type Vector = [f64; 3];
 
-pub const VELOCITY: Fields = Fields { velocity: true, magnetic: false };
-pub const MAGNETIC: Fields = Fields { velocity: false, magnetic: true };
-pub const BOTH: Fields = Fields { velocity: true, magnetic: true };
+pub const VELOCITY: Fields = Fields::VELOCITY;
+pub const MAGNETIC: Fields = Fields::MAGNETIC;
+pub const BOTH: Fields = Fields::BOTH;
 
 /// A storage precision as a source.
 pub trait Precision: Real {
@@ -37,7 +37,7 @@ impl Precision for f64 {
 
 /// Whole components as a source, rounded to the precision.
 pub fn stored<T: Precision>(grid: Grid, fields: Fields, components: &[Vec<f64>]) -> AnySource {
-    T::source(MemorySource::new(grid, fields, components.iter().map(|c| c.iter().map(|&v| T::of(v)).collect()).collect()))
+    T::source(MemorySource::new(grid.clone(), fields, components.iter().map(|c| c.iter().map(|&v| T::of(v)).collect()).collect()))
 }
 
 /// Position of every cell, x fastest.
@@ -56,7 +56,7 @@ pub fn sampled<T: Precision>(grid: Grid, fields: Fields, f: impl Fn(Vector) -> V
             c.push(v);
         }
     }
-    stored::<T>(grid, fields, &components)
+    stored::<T>(grid.clone(), fields, &components)
 }
 
 /// Velocity and magnetic field as a source.
@@ -67,7 +67,7 @@ pub fn sampled_both<T: Precision>(grid: Grid, u: impl Fn(Vector) -> Vector, b: i
             c.push(v);
         }
     }
-    stored::<T>(grid, BOTH, &components)
+    stored::<T>(grid.clone(), BOTH, &components)
 }
 
 /// A request in the stored frame that keeps objects of any size.

@@ -27,7 +27,7 @@ fn grid(h: f64) -> Grid {
     let spacing = [h, 1.1 * h, 0.9 * h];
     let n = [9.6, 10.4, 9.9].map(|l: f64| (l / h).round() as usize);
     let n = [n[0], (n[1] as f64 / 1.1).round() as usize, (n[2] as f64 / 0.9).round() as usize];
-    Grid { n, spacing, origin: [-1.3, 0.4, 2.2], periodic: [true; 3] }
+    Grid { n, spacing, origin: [-1.3, 0.4, 2.2], periodic: [true; 3], stretched: [None, None, None] }
 }
 
 /// Speed 1/(1 + q²) along x, q the distance from the centre in units of the semi-axes: above 1/2 inside the ellipsoid.
@@ -42,7 +42,7 @@ fn ellipsoid<T: Precision>(g: Grid, body: &Body, place: Placement) -> Outcome {
         let q2: f64 = (0..3).map(|a| (local[a] / body.axes[a]).powi(2)).sum();
         [1.0 / (1.0 + q2), 0.0, 0.0]
     };
-    run(sampled::<T>(g, VELOCITY, flow), &request(&["e: speed > 0.5"]))
+    run(sampled::<T>(g.clone(), VELOCITY, flow), &request(&["e: speed > 0.5"]))
 }
 
 fn tilted(centre: Vector) -> Placement {
@@ -81,7 +81,7 @@ fn tilted_ellipsoids_across_faces_and_corners() {
     for body in &BODIES {
         for centre in [inside, [corner[0], inside[1], inside[2]], [inside[0], corner[1], corner[2]], corner] {
             let place = tilted(centre);
-            let o = ellipsoid::<f32>(g, body, place);
+            let o = ellipsoid::<f32>(g.clone(), body, place);
             let row = o.only(0);
             // Some 4.5 cells to the smallest semi-axis.
             let [area, curvature, t, w, l, volume] = shapes(row);
@@ -139,11 +139,11 @@ fn moving_an_object_leaves_its_row_alone() {
     let g = grid(0.3);
     let body = &BODIES[4];
     let centre = [3.317, 5.471, 6.933];
-    let first = ellipsoid::<f64>(g, body, tilted(centre));
+    let first = ellipsoid::<f64>(g.clone(), body, tilted(centre));
     let reference = first.only(0);
     for cells in [[1, 0, 0], [5, -3, 2], [14, 3, -7], [-11, 15, 17], [g.n[0] as i32, 0, 0], [0, 16, 18], [-16, -2, 40]] {
         let moved: Vector = std::array::from_fn(|a| centre[a] + f64::from(cells[a]) * g.spacing[a]);
-        let o = ellipsoid::<f64>(g, body, tilted(moved));
+        let o = ellipsoid::<f64>(g.clone(), body, tilted(moved));
         let row = o.only(0);
         for c in (0..COLUMNS.len()).filter(|&c| stays(c)) {
             match (&reference.values()[c], &row.values()[c]) {
@@ -162,7 +162,7 @@ fn moving_an_object_leaves_its_row_alone() {
     // Between samples the discretisation changes, by less than its own error.
     for shift in [[0.5, 0.5, 0.5], [0.21, -0.4, 0.33], [7.3, -9.6, 11.8]] {
         let moved: Vector = std::array::from_fn(|a| centre[a] + shift[a] * g.spacing[a]);
-        let o = ellipsoid::<f64>(g, body, tilted(moved));
+        let o = ellipsoid::<f64>(g.clone(), body, tilted(moved));
         let (a, b) = (shapes(reference), shapes(o.only(0)));
         for k in 0..5 {
             near(b[k], a[k], 5e-3, (k, shift));

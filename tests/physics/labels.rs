@@ -108,7 +108,7 @@ fn spans(grid: &Grid, mask: &[bool], connectivity: Connectivity, start: usize) -
 fn detect(grid: &Grid, mask: &[bool], connectivity: Connectivity, height: usize, thickness: usize, min_cells: u64) -> Detected {
     let scales = Scales([Scale::for_bound(1.0); SUMS]);
     let criterion = Criterion { family: 0, side: Side::Above, level: 0.5, connectivity, scales };
-    let mut labeller = Labeller::new(*grid, criterion);
+    let mut labeller = Labeller::new(grid.clone(), criterion);
     let [nx, ny, nz] = grid.n;
     let mut tiles = Vec::new();
     for z0 in (0..nz).step_by(thickness) {
@@ -244,7 +244,7 @@ fn whole_analyses_find_the_same_objects() {
                 let request = Request { connectivity, min_cells: 3, ..request(&["m: field > 0.5", "holes: field < 0.5"]) };
                 let execution = Execution { block_planes: Some(1 + seed as usize * 2), ..Execution::default() };
                 let components_of = [zero.clone(), zero.clone(), zero.clone(), b.clone(), zero.clone(), zero.clone()];
-                let o = try_run(stored::<f32>(grid, BOTH, &components_of), &request, &execution).unwrap();
+                let o = try_run(stored::<f32>(grid.clone(), BOTH, &components_of), &request, &execution).unwrap();
                 for (k, side) in [mask.clone(), mask.iter().map(|m| !m).collect()].iter().enumerate() {
                     let all = components(&grid, side, connectivity);
                     let kept: Vec<_> = all.iter().filter(|c| c.len() >= 3).collect();

@@ -16,7 +16,7 @@ fn random(periodic: [bool; 3]) -> Outcome {
     let grid = Grid::periodic(n, lengths).with_periodic(periodic).with_origin([-1.0, 2.0, 0.5]);
     let field = |seed| solenoidal(n, lengths, seed, |k| k * (-k / 2.5).exp(), 0.0);
     let components: Vec<Vec<f64>> = field(31).into_iter().chain(field(32)).collect();
-    run(stored::<f32>(grid, BOTH, &components), &request(&FAMILIES))
+    run(stored::<f32>(grid.clone(), BOTH, &components), &request(&FAMILIES))
 }
 
 fn corners(m: &SurfaceMesh, t: [u32; 3]) -> [Vector; 3] {
@@ -46,7 +46,7 @@ fn check(o: &Outcome, k: usize, row: &Row, m: &SurfaceMesh) {
     let range = &o.analysis.survey.indicators[k];
     let slack = 1e-4 * (range.max - range.min);
     assert_eq!([m.normals.len(), m.values[0].len()], [m.positions.len(); 2]);
-    assert_eq!(m.values.len(), SurfaceMesh::value_names(BOTH).len());
+    assert_eq!(m.values.len(), SurfaceMesh::value_names(BOTH, &[]).len());
     assert!(m.normals.iter().all(|n| (norm(n.map(f64::from)) - 1.0).abs() < 1e-6), "unit normals");
     // Interpolated back, the indicator is the level: to 1e-4 of the step across the edge, where a vertex keeps clear of a sample.
     assert!(m.values[0].iter().all(|&v| (f64::from(v) - level).abs() < slack), "indicator at the vertices");

@@ -14,7 +14,7 @@ fn cube(n: usize, offset: f64) -> Grid {
 }
 
 fn taylor_green_on<T: Precision>(grid: Grid, families: &[&str]) -> Outcome {
-    run(sampled::<T>(grid, VELOCITY, taylor_green), &request(families))
+    run(sampled::<T>(grid.clone(), VELOCITY, taylor_green), &request(families))
 }
 
 fn rms_vorticity(o: &Outcome) -> f64 {
@@ -66,7 +66,7 @@ fn taylor_green_shares_of_volume_and_enstrophy() {
     // Off the flow's planes of symmetry, which would make most samples repeat each other.
     let n = [90, 96, 100];
     let grid = Grid::periodic(n, [TAU; 3]).with_origin([0.13, 0.31, 0.43].map(|f| f * TAU / 96.0));
-    let o = taylor_green_on::<f32>(grid, &["a: enstrophy > 1 mean", "b: enstrophy > 2.25 mean", "c: enstrophy > 4 mean"]);
+    let o = taylor_green_on::<f32>(grid.clone(), &["a: enstrophy > 1 mean", "b: enstrophy > 2.25 mean", "c: enstrophy > 4 mean"]);
     for (k, (volume, share)) in [(0.3462, 0.6723), (0.1013, 0.3323), (0.0203, 0.0913)].into_iter().enumerate() {
         let f = o.family(k);
         assert!((f.volume_fraction - volume).abs() < 1e-3, "{k}: {}", f.volume_fraction);
@@ -98,7 +98,7 @@ fn taylor_green_components_with_and_without_wrapping() {
 fn taylor_green_components_on_the_reference_grid() {
     let grid = cube(256, 0.5);
     for (periodic, want) in [(true, 8), (false, 12)] {
-        let source = FormulaSource::new(grid.with_periodic([periodic; 3]), VELOCITY, |p| {
+        let source = FormulaSource::new(grid.clone().with_periodic([periodic; 3]), VELOCITY, |p| {
             let [u, v, w] = taylor_green(p);
             [u, v, w, 0.0, 0.0, 0.0]
         });
@@ -206,7 +206,7 @@ fn beltrami_flow_is_aligned_to_round_off() {
 fn misalignment_of_beltrami_flow_converges_with_order_sixteen() {
     let sin2 = |k: usize| {
         let grid = Grid::periodic([2 * k, 3 * k, 4 * k], [TAU; 3]);
-        let o = run(sampled::<f64>(grid, VELOCITY, |p| abc([1.0, 0.7, 1.3], p)), &request(&["w: vorticity > 1.2 rms"]));
+        let o = run(sampled::<f64>(grid.clone(), VELOCITY, |p| abc([1.0, 0.7, 1.3], p)), &request(&["w: vorticity > 1.2 rms"]));
         o.analysis.alignment.lamb2 / o.analysis.alignment.u2w2
     };
     let e = [6, 8, 10].map(sin2);

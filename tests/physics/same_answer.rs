@@ -51,7 +51,7 @@ fn bytes(o: &Outcome) -> Vec<u8> {
             all.extend(floats.flat_map(|v| v.to_bits().to_le_bytes()));
             all.extend(m.triangles.iter().flatten().flat_map(|v| v.to_le_bytes()));
         }
-        let values = SurfaceMesh::value_names(a.fields);
+        let values = SurfaceMesh::value_names(a.fields, &[]);
         let mut file = PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), values, Vec::new()).unwrap();
         // One call a mesh and one call for all must not differ either.
         let (first, rest) = meshes.split_at(meshes.len() / 2);
@@ -111,7 +111,7 @@ fn random<T: Precision>() -> AnySource {
     let grid = Grid::periodic(n, [TAU, 5.5, 7.1]).with_periodic([true, false, true]);
     let field = |seed| solenoidal(n, [TAU, 5.5, 7.1], seed, |k| k * (-k / 3.0).exp(), 0.2);
     let components: Vec<Vec<f64>> = field(5).into_iter().chain(field(6)).collect();
-    stored::<T>(grid, BOTH, &components)
+    stored::<T>(grid.clone(), BOTH, &components)
 }
 
 #[test]
@@ -141,7 +141,7 @@ fn shipped_turbulence() {
     let folder = PathBuf::from(env!("CARGO_MANIFEST_DIR")).join("demo-data");
     for name in ["mhd_0001.h5", "hydro_0001.h5"] {
         let spec = InputSpec { lengths: Some([TAU; 3]), ..InputSpec::default() };
-        let source = || open(&folder.join(name), &spec).unwrap().source;
+        let source = || open(&folder.join(name).into(), &spec).unwrap().source;
         let families = ["w: vorticity > 2 rms", "calm: q < -1.5 rms"].map(|f| Family::parse(f).unwrap()).to_vec();
         let request = Request { families, viscosity: Some(0.019), resistivity: Some(0.019), ..Request::default() };
         same(source, &request, [(1, None), (2, Some(5)), (3, Some(16)), (8, Some(7))].into_iter());

@@ -150,12 +150,18 @@ fn alfvenic_flow_is_aligned() {
 /// A sheet tilted off every axis of an open, non-cubic box of unequal spacing leaves through four faces as a prism: its volume is
 /// width over the normal's y component times the box's section.
 fn tilted<T: Precision>(place_offset: Vector) {
-    let g = Grid { n: [40, 48, 36], spacing: [0.24, 0.21, 0.27], origin: [-4.8, -5.0, -4.86], periodic: [false; 3] };
+    let g = Grid {
+        n: [40, 48, 36],
+        spacing: [0.24, 0.21, 0.27],
+        origin: [-4.8, -5.0, -4.86],
+        periodic: [false; 3],
+        stretched: [None, None, None],
+    };
     // The sheet's own y is its normal.
     let [x, y, normal] = Placement::along([0.3, 1.0, 0.2], place_offset).axes;
     let place = Placement { axes: [y, normal, x], centre: place_offset };
     let b = |p: Vector| place.place(p, |q| harris(FIELD, 1.0, q));
-    let o = run(sampled::<T>(g, MAGNETIC, b), &request(&[&level()]));
+    let o = run(sampled::<T>(g.clone(), MAGNETIC, b), &request(&[&level()]));
     let row = o.only(0);
     assert_eq!(text(row, Col::Class), "sheet");
     assert_eq!(text(row, Col::OpenFaces), "x- x+ z- z+");

@@ -10,7 +10,7 @@ const RATE: f64 = 1.7;
 
 /// Non-cubic, of unequal spacing, open everywhere; first sample off the origin.
 fn open_box() -> Grid {
-    Grid { n: [9, 14, 21], spacing: [0.11, 0.07, 0.05], origin: [-0.43, 0.21, -0.37], periodic: [false; 3] }
+    Grid { n: [9, 14, 21], spacing: [0.11, 0.07, 0.05], origin: [-0.43, 0.21, -0.37], periodic: [false; 3], stretched: [None, None, None] }
 }
 
 fn placements() -> [Placement; 3] {

@@ -28,7 +28,7 @@ fn open_box(h: f64) -> Grid {
     let spacing = [h, 0.9 * h, 1.05 * h];
     let n = [4.0, 3.6, 3.8].map(|l: f64| l / h).map(f64::round).map(|v| v as usize);
     let origin = std::array::from_fn(|a| -0.5 * n[a] as f64 * spacing[a]);
-    Grid { n, spacing, origin, periodic: [false; 3] }
+    Grid { n, spacing, origin, periodic: [false; 3], stretched: [None, None, None] }
 }
 
 /// The sample nearest to the middle of the box, moved by a fraction of a cell.
@@ -43,7 +43,7 @@ fn half_radius() -> f64 {
 fn vortex<T: Precision>(g: Grid, place: Placement, strain: f64) -> Outcome {
     let flow = |p: Vector| place.place(p, |q| burgers(PEAK, RADIUS, strain, q));
     let families = [format!("tube: vorticity > {}", 0.5 * PEAK), "cores: q > 1".to_string()];
-    run(sampled::<T>(g, VELOCITY, flow), &request(&families.each_ref().map(String::as_str)))
+    run(sampled::<T>(g.clone(), VELOCITY, flow), &request(&families.each_ref().map(String::as_str)))
 }
 
 /// Closed forms of the Burgers vortex (Burgers 1948, Adv. Appl. Mech. 1, 171; Lamb–Oseen for α = 0): |ω| = ω₀ and Q = ω₀²/4 − ¾α²
@@ -51,7 +51,7 @@ fn vortex<T: Precision>(g: Grid, place: Placement, strain: f64) -> Outcome {
 fn check_column<T: Precision>(direction: Vector, faces: &str, strain: f64, tolerance: f64) {
     let g = open_box(0.085);
     let place = Placement::along(direction, near_middle(&g, [0.0; 3]));
-    let o = vortex::<T>(g, place, strain);
+    let o = vortex::<T>(g.clone(), place, strain);
     let row = o.only(0);
     near(number(row, Col::Peak), PEAK, tolerance, "peak vorticity");
     near(number(o.only(1), Col::Peak), 0.25 * PEAK * PEAK - 0.75 * strain * strain, 2.0 * tolerance, "peak Q");
@@ -72,7 +72,7 @@ fn check_column<T: Precision>(direction: Vector, faces: &str, strain: f64, toler
     // Cut slantwise by the faces, the moments of a prism turn a little off its direction.
     assert!(sine2 < 0.01, "axis {axis:?}, direction {d:?}");
     // Off the samples the peak cell is a fraction of a cell from the axis: ω₀ exp(−s²/r_c²), s² at most a quarter of Σh².
-    let o = vortex::<T>(g, Placement::along(direction, near_middle(&g, [0.37, 0.21, 0.45])), strain);
+    let o = vortex::<T>(g.clone(), Placement::along(direction, near_middle(&g, [0.37, 0.21, 0.45])), strain);
     let s2 = 0.25 * g.spacing.iter().map(|h| h * h).sum::<f64>();
     let least = PEAK * (-s2 / (RADIUS * RADIUS)).exp();
     let peak = number(o.only(0), Col::Peak);
@@ -96,9 +96,9 @@ fn peak_vorticity_converges_with_order_eight() {
     for direction in [[0.0, 0.0, 1.0], [0.3, -0.4, 0.8]] {
         let error = |n: usize| {
             let h = 3.0 / n as f64;
-            let g = Grid { n: [n; 3], spacing: [h; 3], origin: [-1.5; 3], periodic: [false; 3] };
+            let g = Grid { n: [n; 3], spacing: [h; 3], origin: [-1.5; 3], periodic: [false; 3], stretched: [None, None, None] };
             let place = Placement::along(direction, near_middle(&g, [0.0; 3]));
-            let o = vortex::<f64>(g, place, 0.0);
+            let o = vortex::<f64>(g.clone(), place, 0.0);
             (number(o.only(0), Col::Peak) / PEAK - 1.0).abs()
         };
         let e = [24, 32, 44].map(error);
@@ -120,9 +120,10 @@ fn radius_of_the_half_maximum_converges() {
                 // Places from two incommensurate rotations (Weyl's equidistribution).
                 let shift = [f64::from(k) * 0.618_034 % 1.0, f64::from(k) * 0.414_214 % 1.0, 0.0];
                 let n = (2.0 / h).round() as usize;
-                let g = Grid { n: [n, n, 9], spacing: [h; 3], origin: [-1.0, -1.0, 0.0], periodic: [false; 3] };
+                let g =
+                    Grid { n: [n, n, 9], spacing: [h; 3], origin: [-1.0, -1.0, 0.0], periodic: [false; 3], stretched: [None, None, None] };
                 let place = Placement::at(std::array::from_fn(|a| if a < 2 { shift[a] * h } else { 0.0 }));
-                let o = vortex::<f64>(g, place, 0.0);
+                let o = vortex::<f64>(g.clone(), place, 0.0);
                 (number(o.only(0), Col::Volume) / g.length(2) / PI).sqrt()
             })
             .collect();
@@ -140,10 +141,10 @@ fn radius_of_the_half_maximum_converges() {
 /// (closed forms of a cylinder without caps; shapefinders of Sahni, Sathyaprakash & Shandarin 1998, ApJ 495, L5).
 fn periodic_column<T: Precision>(n: usize, axis: usize) -> f64 {
     let h = 2.4 / n as f64;
-    let mut g = Grid { n: [n; 3], spacing: [h; 3], origin: [-1.2; 3], periodic: [false; 3] };
+    let mut g = Grid { n: [n; 3], spacing: [h; 3], origin: [-1.2; 3], periodic: [false; 3], stretched: [None, None, None] };
     (g.n[axis], g.periodic[axis]) = (12, true);
     let direction = std::array::from_fn(|a| f64::from(u8::from(a == axis)));
-    let o = vortex::<T>(g, Placement::along(direction, [0.31 * h, 0.17 * h, -0.23 * h]), 0.0);
+    let o = vortex::<T>(g.clone(), Placement::along(direction, [0.31 * h, 0.17 * h, -0.23 * h]), 0.0);
     let row = o.only(0);
     let (length, r) = (12.0 * h, half_radius());
     assert_eq!(text(row, Col::Wraps), ["x", "y", "z"][axis]);
@@ -188,7 +189,7 @@ fn column_that_closes_on_itself() {
 fn strain_leaves_the_vorticity_alone() {
     let g = open_box(0.1);
     let place = Placement::along([0.2, 0.3, 1.0], near_middle(&g, [0.2, 0.4, 0.1]));
-    let (a, b) = (vortex::<f64>(g, place, 0.0), vortex::<f64>(g, place, STRAIN));
+    let (a, b) = (vortex::<f64>(g.clone(), place, 0.0), vortex::<f64>(g.clone(), place, STRAIN));
     assert_eq!(a.only(0).get(Col::Cells), b.only(0).get(Col::Cells));
     near(number(a.only(0), Col::IndicatorMean), number(b.only(0), Col::IndicatorMean), 1e-11, "mean vorticity");
     // Both fields are solenoidal by construction; what the differences miss is what the warning allows for.
@@ -196,6 +197,7 @@ fn strain_leaves_the_vorticity_alone() {
         let d = o.analysis.divergence[0];
         assert!(d.ratio.unwrap() < 1e-3 && !d.is_suspicious(), "{d:?}");
     }
-    let still = run(sampled::<f64>(g, VELOCITY, |p| place.place(p, |q| lamb_oseen(PEAK, RADIUS, q))), &request(&["w: vorticity > 1.5"]));
+    let still =
+        run(sampled::<f64>(g.clone(), VELOCITY, |p| place.place(p, |q| lamb_oseen(PEAK, RADIUS, q))), &request(&["w: vorticity > 1.5"]));
     assert_eq!(still.only(0).get(Col::Cells), a.only(0).get(Col::Cells));
 }

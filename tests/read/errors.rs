@@ -12,7 +12,7 @@ use crate::npy::npy;
 
 /// Kind and message of the error, with the folder of the test written as `DIR`.
 fn fault(dir: &Path, path: &Path, spec: &InputSpec) -> (Kind, String) {
-    let e = open(path, spec).err().unwrap_or_else(|| panic!("{} was accepted", path.display()));
+    let e = open(&path.to_path_buf().into(), spec).err().unwrap_or_else(|| panic!("{} was accepted", path.display()));
     let text = e.to_string();
     assert_eq!(text.lines().count(), 1, "{text}");
     (e.kind(), text.replace(&dir.display().to_string(), "DIR"))
@@ -184,7 +184,7 @@ fn damaged_hdf5_files() {
         *b = 0xff;
     }
     std::fs::write(&path, &bytes).unwrap();
-    let AnySource::F32(mut source) = open(&path, &spec("zyx")).unwrap().source else { unreachable!() };
+    let AnySource::F32(mut source) = open(&path.clone().into(), &spec("zyx")).unwrap().source else { unreachable!() };
     let mut store = vec![vec![0.0; 120]; 3];
     let mut out: Vec<&mut [f32]> = store.iter_mut().map(|v| &mut v[..]).collect();
     let e = source.read(0, 1, &mut out).unwrap_err();
@@ -479,7 +479,7 @@ fn files_that_change_while_they_are_read() {
     let path = dir.path().join("s.npy");
     let good = npy(1, "'<f4'", false, &[3, 9, 10, 12], &[0; 12960]);
     std::fs::write(&path, &good).unwrap();
-    let AnySource::F32(mut source) = open(&path, &spec("zyx")).unwrap().source else { unreachable!() };
+    let AnySource::F32(mut source) = open(&path.clone().into(), &spec("zyx")).unwrap().source else { unreachable!() };
     std::fs::write(&path, &good[..1000]).unwrap();
     let mut store = vec![vec![0.0; 120]; 3];
     let mut out: Vec<&mut [f32]> = store.iter_mut().map(|v| &mut v[..]).collect();

@@ -88,7 +88,7 @@ pub fn names(list: &[&str]) -> Option<Vec<String>> {
 
 /// Opens a snapshot that is expected to be good.
 pub fn opened(path: &Path, spec: &InputSpec) -> Opened {
-    open(path, spec).unwrap_or_else(|e| panic!("{e}"))
+    open(&path.to_path_buf().into(), spec).unwrap_or_else(|e| panic!("{e}"))
 }
 
 /// Reads planes of a source whose components carry the codes `first..`, and compares every bit.

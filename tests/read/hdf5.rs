@@ -111,9 +111,9 @@ fn compressed_of_every_form() {
 #[test]
 fn usual_names_are_guessed() {
     let dir = tempfile::tempdir().unwrap();
-    let both = Fields { velocity: true, magnetic: true };
-    let velocity = Fields { velocity: true, magnetic: false };
-    let magnetic = Fields { velocity: false, magnetic: true };
+    let both = Fields::BOTH;
+    let velocity = Fields::VELOCITY;
+    let magnetic = Fields::MAGNETIC;
     let sets: [(&[&str], Fields); 8] = [
         (&["u", "v", "w"], velocity),
         (&["ux", "uy", "uz", "bx", "by", "bz"], both),
@@ -152,7 +152,7 @@ fn scalar_named_b_is_no_magnetic_field() {
     }
     file.close().unwrap();
     let got = opened(&path, &spec("zyx"));
-    assert_eq!(got.source.fields(), Fields { velocity: true, magnetic: false });
+    assert_eq!(got.source.fields(), Fields::VELOCITY);
 }
 
 #[test]
@@ -165,7 +165,7 @@ fn only_what_is_named_is_read() {
     file.close().unwrap();
     let named = InputSpec { magnetic: names(&["b"]), ..spec("zyx") };
     let got = opened(&path, &named);
-    assert_eq!(got.source.fields(), Fields { velocity: false, magnetic: true });
+    assert_eq!(got.source.fields(), Fields::MAGNETIC);
     check_all::<f32>(got.source, 3, "magnetic alone");
     let named = InputSpec { velocity: names(&["velocity"]), ..spec("zyxc") };
     check_all::<f32>(opened(&path, &named).source, 0, "velocity alone");
@@ -256,7 +256,7 @@ fn user_block_shifts_nothing() {
     check_all::<f32>(opened(&path, &spec("zyx")).source, 0, "user block");
     let bytes = std::fs::read(&path).unwrap();
     std::fs::write(&path, &bytes[..bytes.len() - 1]).unwrap();
-    let e = ropewalk::read::open(&path, &spec("zyx")).err().expect("one byte is missing");
+    let e = ropewalk::read::open(&path.clone().into(), &spec("zyx")).err().expect("one byte is missing");
     assert!(e.to_string().contains("the file is truncated"), "{e}");
 }
 
@@ -271,11 +271,11 @@ fn grid_follows_lengths_spacing_origin_and_periodicity() {
     own.lengths = Some([24.0, 5.0, 4.5]);
     own.origin = [1.0, -2.0, 3.0];
     own.periodic = [true, false, true];
-    let grid = *opened(&path, &own).source.grid();
+    let grid = opened(&path, &own).source.grid().clone();
     assert_eq!((grid.n, grid.spacing, grid.origin), (N, [2.0, 0.5, 0.5], [1.0, -2.0, 3.0]));
     assert_eq!(grid.periodic, [true, false, true]);
     (own.lengths, own.spacing) = (None, Some([2.0, 0.5, 0.25]));
-    let grid = *opened(&path, &own).source.grid();
+    let grid = opened(&path, &own).source.grid().clone();
     assert_eq!((grid.length(0), grid.length(1), grid.length(2)), (24.0, 5.0, 2.25));
 }
 

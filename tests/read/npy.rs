@@ -80,8 +80,8 @@ fn names_decide_what_a_file_is() {
     let dir = tempfile::tempdir().unwrap();
     let path = dir.path().join("m.npy");
     write::<f32>(&path, 1, "zyxc", 0, false, false);
-    let velocity = Fields { velocity: true, magnetic: false };
-    let magnetic = Fields { velocity: false, magnetic: true };
+    let velocity = Fields::VELOCITY;
+    let magnetic = Fields::MAGNETIC;
     let mut own = spec("zyx");
     assert_eq!(opened(&path, &own).source.fields(), velocity);
     own.velocity = names(&["m"]);
@@ -102,7 +102,7 @@ fn folders_hold_both_fields_and_mixed_forms() {
     check_all::<f32>(opened(dir.path(), &named).source, 0, "both");
     // Guessed: the other names mean nothing.
     let got = opened(dir.path(), &spec("zyx"));
-    assert_eq!(got.source.fields(), Fields { velocity: true, magnetic: false });
+    assert_eq!(got.source.fields(), Fields::VELOCITY);
 }
 
 #[test]

@@ -6,7 +6,8 @@ use std::process::ExitCode;
 
 use ropewalk::base::error::{Error, Result};
 use ropewalk::model::columns::{COLUMNS, Col, Row, Value};
-use ropewalk::model::request::{Family, Request};
+use ropewalk::model::request::{Family, Outputs, Request};
+use ropewalk::model::snapshot::SnapshotRef;
 use ropewalk::read::InputSpec;
 use ropewalk::run::analysis::Execution;
 use ropewalk::run::catalogue::{Outcome, RunConfig, catalogue};
@@ -67,7 +68,7 @@ fn demo(a: &Demo) -> Result<ExitCode> {
     let mut text = String::new();
     for run in &DEMO {
         let config = RunConfig {
-            snapshots: run.files.iter().map(|f| data.join(f)).collect(),
+            snapshots: run.files.iter().map(|f| SnapshotRef::from(data.join(f))).collect(),
             input: InputSpec { lengths: Some([std::f64::consts::TAU; 3]), ..InputSpec::default() },
             request: Request {
                 families: run.families.iter().map(|f| Family::parse(f)).collect::<Result<_>>()?,
@@ -75,6 +76,7 @@ fn demo(a: &Demo) -> Result<ExitCode> {
                 resistivity: run.resistivity,
                 ..Request::default()
             },
+            outputs: Outputs::default(),
             execution: Execution::default(),
             threads: 0,
             output: a.folder.join(run.folder),

@@ -3,7 +3,8 @@
 use std::path::PathBuf;
 
 use ropewalk::base::error::{Error, Result};
-use ropewalk::model::request::{Connectivity, Family, Frame, Request, Surfaces};
+use ropewalk::model::request::{Connectivity, Family, Frame, Outputs, Request, Surfaces};
+use ropewalk::model::snapshot::SnapshotRef;
 use ropewalk::read::InputSpec;
 use ropewalk::run::analysis::Execution;
 use ropewalk::run::catalogue::RunConfig;
@@ -44,7 +45,7 @@ pub fn catalogue(a: &Catalogue) -> Result<RunConfig> {
         return Err(Error::usage("cannot use a thickness").item("--block-planes").expected("at least 1").found("0"));
     }
     Ok(RunConfig {
-        snapshots: snapshots(&a.snapshots)?,
+        snapshots: snapshots(&a.snapshots)?.into_iter().map(SnapshotRef::from).collect(),
         input: InputSpec {
             velocity: a.velocity.clone(),
             magnetic: a.magnetic.clone(),
@@ -53,6 +54,7 @@ pub fn catalogue(a: &Catalogue) -> Result<RunConfig> {
             spacing: a.spacing.as_deref().map(|t| triple("--spacing", t)).transpose()?,
             origin: triple("--origin", &a.origin)?,
             periodic: periodic(&a.periodic)?,
+            ..InputSpec::default()
         },
         request: Request {
             families,
@@ -75,7 +77,9 @@ pub fn catalogue(a: &Catalogue) -> Result<RunConfig> {
                 SurfacesArg::None => Surfaces::None,
             },
             surface_min_cells: a.surface_min_cells,
+            ..Request::default()
         },
+        outputs: Outputs::default(),
         execution: Execution { block_planes: a.block_planes, ..Execution::default() },
         threads: a.threads,
         output: a.output.clone(),
