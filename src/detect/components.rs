@@ -1,9 +1,11 @@
 //! Joins the components of all tiles of a snapshot, across periodic faces too, into numbered, unwrapped objects.
 
 use crate::base::par;
+use crate::detect::rows::tidy;
 use crate::detect::tile::{ClosedTile, Criterion};
 use crate::math::disjoint::OffsetSets;
 use crate::model::object::{Detected, Dropped, Object, Tally};
+use crate::model::request::Side;
 use crate::space::grid::Grid;
 use crate::space::patch::Interval;
 use crate::space::runs::{Run, touching};
@@ -129,11 +131,17 @@ impl Labeller {
                 slot[c] = merged.len() as u32;
                 merged.push(tally);
             } else {
-                let shift = std::array::from_fn(|a| i64::from(offset[a]) * size[a]);
-                merged[slot[root as usize] as usize].merge(&tally, shift, criterion.side);
+                merged[slot[root as usize] as usize].merge(&tally, offset, grid.n, criterion.side);
             }
         }
-        let roots: Vec<u32> = (0..n as u32).filter(|&c| slot[c as usize] != u32::MAX).collect();
+        // What never goes beyond the inner level is no object at all.
+        let rises = |t: &Tally| match (criterion.inner, criterion.side) {
+            (None, _) => true,
+            (Some(inner), Side::Above) => t.peak > inner,
+            (Some(inner), Side::Below) => t.peak < inner,
+        };
+        let roots: Vec<u32> =
+            (0..n as u32).filter(|&c| slot[c as usize] != u32::MAX && rises(&merged[slot[c as usize] as usize])).collect();
         let mut kept: Vec<u32> = roots.iter().copied().filter(|&r| merged[slot[r as usize] as usize].moments.count >= min_cells).collect();
         kept.sort_by_key(|&r| merged[slot[r as usize] as usize].first_cell);
         let mut dropped = Dropped { objects: (roots.len() - kept.len()) as u64, tally: Tally::empty() };
@@ -143,7 +151,7 @@ impl Labeller {
         }
         for &r in &roots {
             if object_of[r as usize] == u32::MAX {
-                dropped.tally.merge(&merged[slot[r as usize] as usize], [0; 3], criterion.side);
+                dropped.tally.merge(&merged[slot[r as usize] as usize], [0; 3], grid.n, criterion.side);
             }
         }
         let mut objects: Vec<Object> = kept
@@ -152,23 +160,15 @@ impl Labeller {
             .map(|(k, &r)| Object {
                 id: k as u64 + 1,
                 tally: std::mem::replace(&mut merged[slot[r as usize] as usize], Tally::empty()),
+                level: None,
+                wall: 0.0,
                 spans: sets.spans(r),
                 intervals: Vec::new(),
             })
             .collect();
         drop(merged);
         // Where each object's frame has to move so that its centroid lies inside the box.
-        let homes: Vec<[i64; 3]> = objects
-            .iter_mut()
-            .map(|o| {
-                let centre = o.tally.moments.centre();
-                let home: [i64; 3] =
-                    std::array::from_fn(|a| if grid.periodic[a] { -(centre[a] / size[a] as f64).floor() as i64 } else { 0 });
-                let shift = std::array::from_fn(|a| home[a] * size[a]);
-                o.tally.moments = o.tally.moments.shifted(shift);
-                home
-            })
-            .collect();
+        let homes: Vec<[i32; 3]> = objects.iter_mut().map(|o| o.tally.bring_home(&grid)).collect();
         for run in &runs {
             let (root, offset) = frame[run.component as usize];
             let k = object_of[root as usize];
@@ -178,7 +178,7 @@ impl Labeller {
             let object = &mut objects[k as usize];
             let closed = object.spans.iter().any(|&s| s);
             let place = |a: usize, v: u32| {
-                let boxes = if closed { 0 } else { i64::from(offset[a]) + homes[k as usize][a] };
+                let boxes = if closed { 0 } else { i64::from(offset[a] + homes[k as usize][a]) };
                 (i64::from(v) + boxes * size[a]) as i32
             };
             object.intervals.push(Interval { z: place(2, run.z), y: place(1, run.y), x: place(0, run.x0), len: run.x1 - run.x0 });
@@ -187,26 +187,11 @@ impl Labeller {
         par::for_chunks(&mut objects, 16, |_, some| {
             for object in some {
                 let closed = object.spans.iter().any(|&s| s);
-                tidy(&mut object.intervals, closed);
+                if closed { object.intervals.sort_unstable() } else { tidy(&mut object.intervals) }
             }
         });
         Detected { objects, dropped }
     }
-}
-
-/// Sorts intervals and joins those that became adjacent by unwrapping.
-fn tidy(intervals: &mut Vec<Interval>, closed: bool) {
-    intervals.sort_unstable();
-    if closed {
-        return;
-    }
-    intervals.dedup_by(|next, last| {
-        let joins = next.z == last.z && next.y == last.y && last.x + last.len as i32 == next.x;
-        if joins {
-            last.len += next.len;
-        }
-        joins
-    });
 }
 
 /// Neighbour index along an axis and the box shift of the neighbour as seen from here; `None` beyond an open face.

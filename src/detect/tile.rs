@@ -8,7 +8,7 @@ use crate::space::grid::Grid;
 use crate::space::runs::{Connectivity, Run, touching};
 
 /// What makes a cell belong to a family.
-#[derive(Debug, Clone, Copy)]
+#[derive(Debug, Clone)]
 pub struct Criterion {
     /// Index of the family in the rows.
     pub family: usize,
@@ -16,6 +16,8 @@ pub struct Criterion {
     pub side: Side,
     /// The absolute level.
     pub level: f64,
+    /// The level that an object must go beyond somewhere.
+    pub inner: Option<f64>,
     /// Neighbourhood.
     pub connectivity: Connectivity,
     /// Scales of the exact sums.
@@ -69,7 +71,7 @@ impl TileSweep {
     pub fn add_row<T: Real>(&mut self, grid: &Grid, rows: &Rows<T>, y: usize, z: usize) {
         let height = self.rows_y.1 - self.rows_y.0;
         assert_eq!(self.starts.len() - 1, (z - self.first_z) * height + y - self.rows_y.0, "order of rows");
-        let Criterion { family, side, level, connectivity, scales } = self.criterion;
+        let Criterion { family, side, level, connectivity, ref scales, .. } = self.criterion;
         let values = &rows.indicators[family];
         let level = T::of(level);
         let begin = self.runs.len();
@@ -101,8 +103,6 @@ impl TileSweep {
                     }
                 }
             }
-            let row_start = grid.index(0, y, z);
-            let faces = open_faces_of_row(grid, y, z);
             for run in &mut self.runs[begin..end] {
                 if run.component == NONE {
                     run.component = self.parent.len() as u32;
@@ -110,11 +110,8 @@ impl TileSweep {
                     self.tallies.push(Tally::empty());
                 }
                 let tally = &mut self.tallies[run.component as usize];
-                tally.add_run(rows, family, side, &scales, (run.x0 as usize, run.x1 as usize), y, z, row_start);
-                tally.open_faces |= faces;
-                if !grid.periodic[0] {
-                    tally.open_faces |= u8::from(run.x0 == 0) | u8::from(run.x1 as usize == grid.n[0]) << 1;
-                }
+                tally.add_run(grid, rows, family, side, scales, (run.x0 as usize, run.x1 as usize), y, z);
+                tally.open_faces |= grid.open_faces((run.x0 as usize, run.x1 as usize), y, z);
             }
         }
         self.starts.push(self.runs.len());
@@ -134,7 +131,7 @@ impl TileSweep {
                 tallies.push(tally);
             } else {
                 dense[c as usize] = dense[r as usize];
-                tallies[dense[r as usize] as usize].merge(&tally, [0; 3], self.criterion.side);
+                tallies[dense[r as usize] as usize].merge(&tally, [0; 3], [0; 3], self.criterion.side);
             }
         }
         for run in &mut self.runs {
@@ -174,17 +171,6 @@ fn push_runs<T: Real>(values: &[T], inside: impl Fn(T) -> bool, y: usize, z: usi
     if let Some(s) = start {
         runs.push(Run { x0: s as u32, x1: n as u32, y: y as u32, z: z as u32, component: NONE });
     }
-}
-
-fn open_faces_of_row(grid: &Grid, y: usize, z: usize) -> u8 {
-    let mut faces = 0;
-    if !grid.periodic[1] {
-        faces |= u8::from(y == 0) << 2 | u8::from(y + 1 == grid.n[1]) << 3;
-    }
-    if !grid.periodic[2] {
-        faces |= u8::from(z == 0) << 4 | u8::from(z + 1 == grid.n[2]) << 5;
-    }
-    faces
 }
 
 fn root(parent: &mut [u32], mut c: u32) -> u32 {

@@ -8,6 +8,15 @@ use ply_rs::writer::Writer;
 use crate::base::par;
 use crate::model::surface::SurfaceMesh;
 
+/// What joins the vertices of a file.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Joins {
+    /// Triangles of surfaces.
+    Triangles,
+    /// Edges of contours.
+    Edges,
+}
+
 /// Writes meshes one after the other into one file whose counts are known only at the end.
 ///
 /// Vertices go straight to the output behind a header of fixed length; faces wait in `faces` and are appended by
@@ -15,6 +24,7 @@ use crate::model::surface::SurfaceMesh;
 pub struct PlyWriter<W, S> {
     out: W,
     faces: S,
+    joins: Joins,
     values: Vec<&'static str>,
     comments: Vec<String>,
     header_bytes: usize,
@@ -30,11 +40,11 @@ impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
     ///
     /// # Errors
     /// Those of the output.
-    pub fn new(mut out: W, faces: S, values: Vec<&'static str>, comments: Vec<String>) -> io::Result<Self> {
-        let header = header(&values, &comments, 0, 0, 0)?;
+    pub fn new(mut out: W, faces: S, joins: Joins, values: Vec<&'static str>, comments: Vec<String>) -> io::Result<Self> {
+        let header = header(joins, &values, &comments, 0, 0, 0)?;
         let header_bytes = header.len() + 2 * COUNT_DIGITS;
         out.write_all(&vec![b' '; header_bytes])?;
-        Ok(PlyWriter { out, faces, values, comments, header_bytes, vertex_count: 0, face_count: 0 })
+        Ok(PlyWriter { out, faces, joins, values, comments, header_bytes, vertex_count: 0, face_count: 0 })
     }
 
     /// Appends meshes in order.
@@ -46,7 +56,7 @@ impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
         for m in meshes {
             bases.push(self.vertex_count);
             self.vertex_count += m.positions.len() as u64;
-            self.face_count += m.triangles.len() as u64;
+            self.face_count += (m.triangles.len() + m.edges.len()) as u64;
         }
         if self.vertex_count > u64::from(u32::MAX) {
             return Err(io::Error::new(io::ErrorKind::InvalidData, "more than 2^32 vertices in one file; write one file an object"));
@@ -67,8 +77,8 @@ impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
         self.faces.flush()?;
         self.faces.seek(SeekFrom::Start(0))?;
         io::copy(&mut self.faces, &mut self.out)?;
-        let bare = header(&self.values, &self.comments, self.vertex_count, self.face_count, 0)?;
-        let full = header(&self.values, &self.comments, self.vertex_count, self.face_count, self.header_bytes - bare.len())?;
+        let bare = header(self.joins, &self.values, &self.comments, self.vertex_count, self.face_count, 0)?;
+        let full = header(self.joins, &self.values, &self.comments, self.vertex_count, self.face_count, self.header_bytes - bare.len())?;
         self.out.seek(SeekFrom::Start(0))?;
         self.out.write_all(&full)?;
         self.out.flush()?;
@@ -77,7 +87,7 @@ impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
 }
 
 /// The header, its last comment stretched by `padding` characters.
-fn header(values: &[&'static str], comments: &[String], vertices: u64, faces: u64, padding: usize) -> io::Result<Vec<u8>> {
+fn header(joins: Joins, values: &[&'static str], comments: &[String], vertices: u64, faces: u64, padding: usize) -> io::Result<Vec<u8>> {
     let mut h = Header::new();
     h.encoding = Encoding::BinaryLittleEndian;
     for c in comments {
@@ -92,9 +102,21 @@ fn header(values: &[&'static str], comments: &[String], vertices: u64, faces: u6
     }
     vertex.properties.add(PropertyDef::new("object".to_string(), PropertyType::Scalar(ScalarType::UInt)));
     vertex.count = vertices as usize;
-    let mut face = ElementDef::new("face".to_string());
-    let list = PropertyType::List(ScalarType::UChar, ScalarType::UInt);
-    face.properties.add(PropertyDef::new("vertex_indices".to_string(), list));
+    let mut face = match joins {
+        Joins::Triangles => {
+            let mut face = ElementDef::new("face".to_string());
+            let list = PropertyType::List(ScalarType::UChar, ScalarType::UInt);
+            face.properties.add(PropertyDef::new("vertex_indices".to_string(), list));
+            face
+        }
+        Joins::Edges => {
+            let mut edge = ElementDef::new("edge".to_string());
+            for end in ["vertex1", "vertex2"] {
+                edge.properties.add(PropertyDef::new(end.to_string(), PropertyType::Scalar(ScalarType::UInt)));
+            }
+            edge
+        }
+    };
     face.count = faces as usize;
     h.elements.add(vertex);
     h.elements.add(face);
@@ -119,6 +141,7 @@ fn pack_vertices(m: &SurfaceMesh) -> Vec<u8> {
     out
 }
 
+/// Triangles, or edges: a mesh has one of them.
 fn pack_faces(m: &SurfaceMesh, base: u32) -> Vec<u8> {
     let mut out = Vec::with_capacity(m.triangles.len() * 13);
     for t in &m.triangles {
@@ -127,6 +150,9 @@ fn pack_faces(m: &SurfaceMesh, base: u32) -> Vec<u8> {
             record[1 + 4 * k..5 + 4 * k].copy_from_slice(&(v + base).to_le_bytes());
         }
         out.extend_from_slice(&record);
+    }
+    for v in m.edges.iter().flatten() {
+        out.extend_from_slice(&(v + base).to_le_bytes());
     }
     out
 }
@@ -145,8 +171,11 @@ mod tests {
             normals: vec![[0.0, 0.0, 1.0]; 3],
             values: vec![vec![2.5, 3.5, 4.5]],
             triangles: vec![[0, 1, 2]],
+            edges: Vec::new(),
         };
-        let mut w = PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), vec!["indicator"], vec!["a test".into()]).unwrap();
+        let mut w =
+            PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), Joins::Triangles, vec!["indicator"], vec!["a test".into()])
+                .unwrap();
         w.add(&[mesh(7, 0.25)]).unwrap();
         w.add(&[mesh(9, 0.75)]).unwrap();
         let bytes = w.finish().unwrap().into_inner();

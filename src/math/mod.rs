@@ -1,5 +1,6 @@
 //! Height 2: numerical methods on slices, cells and coordinates; knows no flow.
 
+pub mod contour;
 pub mod diff;
 pub mod disjoint;
 pub mod fft;

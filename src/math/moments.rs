@@ -90,6 +90,83 @@ impl CellMoments {
     }
 }
 
+/// Sums over cells of unequal volume: of the weight w, of w x_a and of w x_a x_b, with positions in box lengths.
+///
+/// Fixed-point integers of scale 2^60, so that sums are the same for any order of cells; weights and positions inside the box lie
+/// between 0 and 1.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+pub struct WeightedMoments {
+    /// Sum of weights.
+    weight: i128,
+    first: [i128; 3],
+    second: [i128; 6],
+}
+
+/// Scale of [`WeightedMoments`].
+const ONE: f64 = (1u64 << 60) as f64;
+
+impl WeightedMoments {
+    /// Adds a cell: its weight, its position, and its own second moment (width²/12), in box lengths.
+    pub fn add_cell(&mut self, weight: f64, x: [f64; 3], own: [f64; 3]) {
+        let fixed = |v: f64| i128::from((v * ONE) as i64);
+        self.weight += fixed(weight);
+        for a in 0..3 {
+            self.first[a] += fixed(weight * x[a]);
+        }
+        for (s, (a, b)) in self.second.iter_mut().zip(PAIRS) {
+            let square = x[a] * x[b] + if a == b { own[a] } else { 0.0 };
+            *s += fixed(weight * square);
+        }
+    }
+
+    /// The same cells moved by whole boxes.
+    #[must_use]
+    pub fn shifted(&self, boxes: [i32; 3]) -> WeightedMoments {
+        let d = boxes.map(i128::from);
+        let mut out = *self;
+        for (k, (a, b)) in PAIRS.into_iter().enumerate() {
+            out.second[k] += d[a] * self.first[b] + d[b] * self.first[a] + self.weight * d[a] * d[b];
+        }
+        for a in 0..3 {
+            out.first[a] += self.weight * d[a];
+        }
+        out
+    }
+
+    /// Adds other cells.
+    pub fn merge(&mut self, other: &WeightedMoments) {
+        self.weight += other.weight;
+        for (a, b) in self.first.iter_mut().zip(other.first) {
+            *a += b;
+        }
+        for (a, b) in self.second.iter_mut().zip(other.second) {
+            *a += b;
+        }
+    }
+
+    /// Sum of weights.
+    pub fn weight(&self) -> f64 {
+        self.weight as f64 / ONE
+    }
+
+    /// Mean position in box lengths.
+    pub fn centre(&self) -> [f64; 3] {
+        self.first.map(|s| s as f64 / self.weight as f64)
+    }
+
+    /// Covariance of positions in physical units for the given box lengths, the cells' own moments included.
+    pub fn covariance(&self, lengths: [f64; 3]) -> [[f64; 3]; 3] {
+        let centre = self.centre();
+        let mut c = [[0.0; 3]; 3];
+        for (k, (a, b)) in PAIRS.into_iter().enumerate() {
+            let v = (self.second[k] as f64 / self.weight as f64 - centre[a] * centre[b]) * lengths[a] * lengths[b];
+            c[a][b] = v;
+            c[b][a] = v;
+        }
+        c
+    }
+}
+
 /// Eigenvalues (largest first) and unit eigenvectors of a symmetric matrix, by Jacobi rotations.
 ///
 /// The sign of an axis is fixed: its component of largest magnitude is positive.
@@ -140,6 +217,26 @@ pub fn principal_axes(matrix: [[f64; 3]; 3]) -> ([f64; 3], [[f64; 3]; 3]) {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// Equal weights must give what the integer sums give.
+    #[test]
+    fn weighted_moments_of_equal_cells_are_the_plain_ones() {
+        let (mut plain, mut weighted) = (CellMoments::default(), WeightedMoments::default());
+        for (x, y, z) in [(1, 2, 3), (2, 2, 3), (2, 3, 3), (3, 3, 4), (3, 4, 5)] {
+            plain.add_run(x, 1, y, z);
+            let at = [x, y, z].map(|i| i as f64 / 16.0);
+            weighted.add_cell(0.25, at, [1.0 / 12.0 / 256.0; 3]);
+        }
+        let moved = weighted.shifted([1, 0, -2]);
+        let (a, b) = (plain.shifted([16, 0, -32]).covariance([0.5; 3]), moved.covariance([8.0; 3]));
+        for i in 0..3 {
+            assert!((plain.shifted([16, 0, -32]).centre()[i] / 16.0 - moved.centre()[i]).abs() < 1e-14);
+            for j in 0..3 {
+                assert!((a[i][j] - b[i][j]).abs() < 1e-12, "{i}{j}: {} {}", a[i][j], b[i][j]);
+            }
+        }
+        assert!((moved.weight() - 1.25).abs() < 1e-15);
+    }
 
     #[test]
     fn a_brick_has_its_own_extents_wherever_it_lies() {

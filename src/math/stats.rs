@@ -73,6 +73,16 @@ fn folded(lanes: [f64; 8]) -> f64 {
     ((lanes[0] + lanes[4]) + (lanes[2] + lanes[6])) + ((lanes[1] + lanes[5]) + (lanes[3] + lanes[7]))
 }
 
+/// Sum over a row of value times weight, in f64 and in order.
+pub fn weighted_sum<T: Real>(row: &[T], weights: &[f64]) -> f64 {
+    row.iter().zip(weights).map(|(v, w)| v.wide() * w).sum()
+}
+
+/// Sum over a row of squared value times weight.
+pub fn weighted_square_sum<T: Real>(row: &[T], weights: &[f64]) -> f64 {
+    row.iter().zip(weights).map(|(v, w)| v.wide() * v.wide() * w).sum()
+}
+
 /// Sum, sum of squares and extremes of a row.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct RowStats {
@@ -135,6 +145,9 @@ pub struct Cosine {
     pub defined: u64,
     sum: i128,
     abs_sum: i128,
+    /// Sums of the weights of all and of the aligned cells, where cells have weights; else 0.
+    weight: i128,
+    aligned_weight: i128,
     /// Cells with |cos| > 0.9.
     pub aligned: u64,
     /// Cells a bin: 20 equal bins over [-1, 1].
@@ -185,8 +198,29 @@ impl Cosine {
         }
     }
 
+    /// As [`Cosine::add_few`] for cells of unequal volume: means are over volume, bins count cells. Weights lie between 0 and 1.
+    pub fn add_weighted<T: Real>(&mut self, row: &[T], weights: &[f64]) {
+        for (&c, &w) in row.iter().zip(weights) {
+            let slot = slot(c) as usize;
+            if slot < COSINE_BINS {
+                self.bins[slot] += 1;
+                self.defined += 1;
+                let (sum, weight) = (i128::from(fixed(c.wide() * w)), i128::from(fixed(w)));
+                self.sum += sum;
+                self.abs_sum += sum.abs();
+                self.weight += weight;
+                if c.abs().wide() > 0.9 {
+                    self.aligned += 1;
+                    self.aligned_weight += weight;
+                }
+            }
+        }
+    }
+
     /// Adds the statistics of other cells.
     pub fn merge(&mut self, other: &Cosine) {
+        self.weight += other.weight;
+        self.aligned_weight += other.aligned_weight;
         self.defined += other.defined;
         self.sum += other.sum;
         self.abs_sum += other.abs_sum;
@@ -203,6 +237,8 @@ impl Cosine {
             defined: self.defined - part.defined,
             sum: self.sum - part.sum,
             abs_sum: self.abs_sum - part.abs_sum,
+            weight: self.weight - part.weight,
+            aligned_weight: self.aligned_weight - part.aligned_weight,
             aligned: self.aligned - part.aligned,
             bins: std::array::from_fn(|b| self.bins[b] - part.bins[b]),
         }
@@ -210,17 +246,23 @@ impl Cosine {
 
     /// Mean cosine; `None` without a defined cell.
     pub fn mean(&self) -> Option<f64> {
-        (self.defined > 0).then(|| self.sum as f64 / COSINE_SCALE / self.defined as f64)
+        (self.defined > 0).then(|| self.sum as f64 / COSINE_SCALE / self.total())
     }
 
     /// Mean magnitude of the cosine.
     pub fn abs_mean(&self) -> Option<f64> {
-        (self.defined > 0).then(|| self.abs_sum as f64 / COSINE_SCALE / self.defined as f64)
+        (self.defined > 0).then(|| self.abs_sum as f64 / COSINE_SCALE / self.total())
     }
 
-    /// Share of the defined cells with |cos| > 0.9.
+    /// Share of the defined cells (of their volume, where it differs) with |cos| > 0.9.
     pub fn aligned_share(&self) -> Option<f64> {
-        (self.defined > 0).then(|| self.aligned as f64 / self.defined as f64)
+        let aligned = if self.weight > 0 { self.aligned_weight as f64 / COSINE_SCALE } else { self.aligned as f64 };
+        (self.defined > 0).then(|| aligned / self.total())
+    }
+
+    /// Number, or weight, of the cells.
+    fn total(&self) -> f64 {
+        if self.weight > 0 { self.weight as f64 / COSINE_SCALE } else { self.defined as f64 }
     }
 }
 
@@ -306,6 +348,13 @@ impl Quantiles {
     pub fn add<T: Real>(&mut self, row: &[T]) {
         for v in row {
             self.bins[Self::bin(v.wide())] += 1;
+        }
+    }
+
+    /// Counts the values of a row of cells of unequal volume; weights lie between 0 and 1 and are kept to 2^-24.
+    pub fn add_weighted<T: Real>(&mut self, row: &[T], weights: &[f64]) {
+        for (v, w) in row.iter().zip(weights) {
+            self.bins[Self::bin(v.wide())] += (w * f64::from(1 << 24)).round() as u64;
         }
     }
 

@@ -5,7 +5,7 @@ const ROUND: f64 = 0.1;
 /// Ratio of largest to smallest extent below which an object without a closed surface counts as a blob.
 const ROUND_EXTENTS: f64 = 2.0;
 /// Handles from which on an object counts as a tangle.
-const TANGLED: i64 = 3;
+pub const TANGLED: i64 = 3;
 
 /// What the rule looks at.
 #[derive(Debug, Clone, Copy, Default)]

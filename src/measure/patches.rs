@@ -28,7 +28,15 @@ pub struct Patch<T> {
 }
 
 impl<T> Patch<T> {
-    /// A field over the stored cells: 0 the indicator with the inside up; then, where carried, u, ω (three components each), b, j.
+    /// Number of fields.
+    pub fn carried(&self) -> usize {
+        self.values.len() / self.shape.cells.max(1)
+    }
+}
+
+impl<T> Patch<T> {
+    /// A field over the stored cells: 0 the indicator with the inside up; then, where carried, u, ω (three components each), b, j,
+    /// and the further indicators.
     pub fn field(&self, k: usize) -> &[T] {
         &self.values[k * self.shape.cells..(k + 1) * self.shape.cells]
     }
@@ -73,6 +81,8 @@ pub struct Patches<T> {
     side: Side,
     /// Fields carried for the vertices; none when no mesh is written.
     fields: Fields,
+    /// Further indicators carried behind them: their places among those derived.
+    extras: Vec<usize>,
     /// Objects still to open: first plane, last plane, index; ascending from the back.
     waiting: Vec<(usize, usize, usize)>,
     open: Vec<Open<T>>,
@@ -81,7 +91,7 @@ pub struct Patches<T> {
 
 impl<T: Real> Patches<T> {
     /// Patches for the objects of a family that are no larger than `max_cells`.
-    pub fn new(grid: Grid, family: usize, side: Side, fields: Fields, objects: &[Object], max_cells: u64) -> Self {
+    pub fn new(grid: Grid, family: usize, side: Side, fields: Fields, extras: Vec<usize>, objects: &[Object], max_cells: u64) -> Self {
         let mut waiting: Vec<(usize, usize, usize)> = objects
             .iter()
             .enumerate()
@@ -92,11 +102,11 @@ impl<T: Real> Patches<T> {
             })
             .collect();
         waiting.sort_unstable_by(|a, b| b.cmp(a));
-        Patches { grid, family, side, fields, waiting, open: Vec::new(), deliveries: Vec::new() }
+        Patches { grid, family, side, fields, extras, waiting, open: Vec::new(), deliveries: Vec::new() }
     }
 
     fn carried(&self) -> usize {
-        1 + 6 * (usize::from(self.fields.velocity) + usize::from(self.fields.magnetic))
+        1 + 6 * (usize::from(self.fields.velocity) + usize::from(self.fields.magnetic)) + self.extras.len()
     }
 
     /// Opens what begins in the planes `z` and finds out which rows are wanted; `tiles` are the row ranges of the workers.
@@ -186,6 +196,7 @@ impl<T: Real> Patches<T> {
             if self.fields.magnetic {
                 rows.b.iter().chain(&rows.j).for_each(|r| put(r));
             }
+            self.extras.iter().for_each(|&k| put(&rows.extras[k]));
             if self.side == Side::Below {
                 for v in &mut values[d.start..d.start + len] {
                     *v = -*v;

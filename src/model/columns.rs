@@ -103,10 +103,11 @@ columns! {
     Time "time" Time Run "Time of the snapshot; missing where the file does not say." "";
     Family "family" Text Run "What was thresholded: name of the family." "";
     Id "id" Count Run "Number of the object within snapshot and family, in the order of its smallest cell index (z, then y, then x)." "";
-    Class "class" Text Surface "Shape: filament, sheet, blob or tangle. Tangle: three handles or more, or mean curvature integral not positive. Else blob: planarity and filamentarity both below 0.1. Else sheet where planarity exceeds filamentarity, filament otherwise. An object without planarity (open, fragmented) is classed by its extents: ratio below 2 blob, else sheet or filament by the larger step; closed on itself along one axis filament or sheet by the two other extents, along two axes sheet, along three tangle." "rule of this program on the shapefinders of Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
-    Level "level" Indicator Run "Absolute level of the family in this snapshot." "";
+    Class "class" Text Surface "Shape: filament, sheet, blob or tangle. Tangle: three handles or more, or mean curvature integral not positive. Else blob: planarity and filamentarity both below 0.1. Else sheet where planarity exceeds filamentarity, filament otherwise. An object without planarity (open, fragmented) is classed by its extents: ratio below 2 blob, else sheet or filament by the larger step; closed on itself along one axis filament or sheet by the two other extents, along two axes sheet, along three tangle. On a plane, as closed on itself across the plane; three holes or more make a tangle." "rule of this program on the shapefinders of Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
+    Level "level" Indicator Run "Absolute level of the object's edge: that of the family in this snapshot; for an object grown from its peak, the fraction times its peak." "";
     Cells "cells" Count Tallies "Cells beyond the level." "";
-    Volume "volume" Volume Tallies "Cells times cell volume." "";
+    Volume "volume" Volume Tallies "Volume of the cells; missing on a plane snapshot." "";
+    Area "area" Area Tallies "Cells times cell area, of an object of a plane snapshot (where volume is missing)." "";
     CentroidX "centroid_x" Length Tallies "Mean position of the cells, unwrapped, moved into the box; missing along an axis on which the object closes on itself." "";
     CentroidY "centroid_y" Length Tallies "As centroid_x, along y." "";
     CentroidZ "centroid_z" Length Tallies "As centroid_x, along z." "";
@@ -130,13 +131,14 @@ columns! {
     PeakY "peak_y" Length Tallies "As peak_x, along y." "";
     PeakZ "peak_z" Length Tallies "As peak_x, along z." "";
     IndicatorMean "indicator_mean" Indicator Tallies "Volume mean of the indicator over the object." "";
-    DissipationViscous "dissipation_viscous" Power Tallies "Integral of 2 nu S:S over the object; missing without nu." "S = (A + A^T)/2, A_ij = du_i/dx_j";
+    DissipationViscous "dissipation_viscous" Power Tallies "Integral of 2 nu S:S over the object (over its area on a plane). Without nu but with a given dissipation epsilon and no magnetic field, nu is the effective viscosity epsilon / (2 <S:S>); else missing." "S = (A + A^T)/2, A_ij = du_i/dx_j";
     DissipationOhmic "dissipation_ohmic" Power Tallies "Integral of eta |j|^2 over the object; missing without eta." "j = curl b, b in velocity units";
     ViscousShare "viscous_share" One Tallies "Share of the box integral of S:S held by the object; needs no nu." "as dissipation_viscous";
     OhmicShare "ohmic_share" One Tallies "Share of the box integral of |j|^2 held by the object; needs no eta." "as dissipation_ohmic";
+    Perimeter "perimeter" Length Surface "Length of the contour of the indicator at the level, holes included; plane snapshots only." "marching squares";
     SurfaceArea "surface_area" Area Surface "Area of the isosurface of the indicator at the level." "triangulated isosurface of the indicator, not of the mask";
     MeanCurvatureIntegral "mean_curvature_integral" Length Surface "Half the surface integral of the two principal curvatures, positive for convex bodies (sphere: 4 pi R)." "sum over edges of length times signed angle, halved (Steiner formula of polyhedra)";
-    Euler "euler" Count Surface "Euler number of the body: half that of its surface (ball 1, torus 0); the sum over pieces and cavities." "vertices - edges + faces of the closed surface, halved";
+    Euler "euler" Count Surface "Euler number of the body: half that of its surface (ball 1, torus 0); the sum over pieces and cavities. On a plane the pieces minus the holes." "vertices - edges + faces of the closed surface, halved";
     ShapefinderThickness "shapefinder_thickness" Length Surface "T = 3 V / S, V the volume enclosed by the isosurface (for an object that closes on itself: its cells' volume). A ball of radius R gives R, a long rod of radius r 1.5 r, a wide plate of thickness c 1.5 c." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
     ShapefinderWidth "shapefinder_width" Length Surface "W = S / C, C the mean curvature integral; missing where C is not positive. Of a fragmented object that is not under_resolved, of the largest piece, if that holds 90 % of the volume; of other fragmented objects missing." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
     ShapefinderLength "shapefinder_length" Length Surface "L = C / (4 pi); a long rod of length l gives about l / 4. Missing for an object that closes on itself. Of the largest piece, as shapefinder_width." "Sahni, Sathyaprakash & Shandarin 1998 ApJ 495, L5";
@@ -159,9 +161,14 @@ columns! {
     HistogramUB "histogram_u_b" Count Tallies "As histogram_u_vorticity, for velocity and magnetic field." "as cos_u_b";
     LambSin2 "lamb_sin2" One Tallies "Mean |u x vorticity|^2 over mean |u|^2 |vorticity|^2 (2/3 for independent isotropic directions, 0 where they are parallel)." "squared sine between velocity and vorticity, weighted by their squares";
     LorentzSin2 "lorentz_sin2" One Tallies "Mean |j x b|^2 over mean |j|^2 |b|^2 (2/3 for independent isotropic directions, 0 where force-free)." "squared sine between current density and field, weighted by their squares";
+    CosCurrentBFluct "cos_current_b_fluct" One Tallies "As cos_current_b, with the box mean taken off the magnetic field; missing where that mean is below 1 % of the fluctuations." "as cos_current_b";
+    AbsCosCurrentBFluct "abs_cos_current_b_fluct" One Tallies "As cos_current_b_fluct, of its magnitude." "as cos_current_b";
+    CosUBFluct "cos_u_b_fluct" One Tallies "As cos_u_b, with the box mean taken off the magnetic field; missing as cos_current_b_fluct." "as cos_u_b";
+    AbsCosUBFluct "abs_cos_u_b_fluct" One Tallies "As cos_u_b_fluct, of its magnitude." "as cos_u_b";
+    LorentzSin2Fluct "lorentz_sin2_fluct" One Tallies "As lorentz_sin2, with the box mean taken off the magnetic field; missing as cos_current_b_fluct." "as lorentz_sin2";
     Wraps "wraps" Text Tallies "Axes along which the object closes on itself through the periodic box." "";
     OpenFaces "open_faces" Text Tallies "Open faces of the box that the object touches." "";
-    Flags "flags" Text Run "Why values are missing or to be read with care: wraps, open, additive_only, under_resolved (shapefinder_thickness below 3 cells), marginal (3 to 5 cells), fragmented (cells that touch at edges or corners only, so that the isosurface is in several pieces: too thin for the grid), curvature_not_positive, undefined_direction, no_velocity, no_magnetic, no_viscosity, no_resistivity, no_time." "";
+    Flags "flags" Text Run "Why values are missing or to be read with care: wraps, open, additive_only, under_resolved (shapefinder_thickness below 3 cells), marginal (3 to 5 cells), fragmented (cells that touch at edges or corners only, so that the isosurface is in several pieces: too thin for the grid), curvature_not_positive, undefined_direction, wall (where an object grown from its peak meets another, more than 5 % of its boundary: its surface is not its own), plane (a plane snapshot: no volume, no surface), no_guide (the mean magnetic field is below 1 % of the fluctuations), no_velocity, no_magnetic, no_viscosity, no_resistivity, no_time." "";
 }
 
 /// A value of a column.

@@ -183,6 +183,8 @@ pub struct Request {
     pub companions: Vec<Indicator>,
     /// Indicators put on mesh vertices besides the standard values. Default none.
     pub mesh_values: Vec<Indicator>,
+    /// Root of the run's mean square of the indicators whose levels are multiples of it, by family; settled by the run itself.
+    pub run_rms: Vec<(String, f64)>,
     /// Meshes. Default together.
     pub surfaces: Surfaces,
     /// Objects of fewer cells get no mesh. Default 0: every listed object.
@@ -205,6 +207,7 @@ impl Default for Request {
             filter: None,
             companions: Vec::new(),
             mesh_values: Vec::new(),
+            run_rms: Vec::new(),
             surfaces: Surfaces::Together,
             surface_min_cells: 0,
         }

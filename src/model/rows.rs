@@ -66,6 +66,8 @@ pub struct Rows<T> {
     pub j2b2_fluct: Vec<T>,
     /// Buoyancy.
     pub buoyancy: Vec<T>,
+    /// Volumes of the cells over that of the largest cell; empty where all are equal.
+    pub weights: Vec<f64>,
     /// Indicators, one array a family.
     pub indicators: Vec<Vec<T>>,
     /// Further indicators (companions, mesh values), one array each; filled where [`Need::extras`] asks.

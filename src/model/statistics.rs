@@ -5,9 +5,9 @@ use crate::math::stats::{Cosine, Quantiles};
 /// One component as stored.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
 pub struct ComponentStats {
-    /// Sum over cells.
+    /// Sum over cells, weighted by volume over that of the largest cell.
     pub sum: f64,
-    /// Sum of squares.
+    /// Sum of squares, weighted likewise.
     pub square_sum: f64,
     /// Smallest value.
     pub min: f64,
@@ -83,12 +83,16 @@ pub struct IndicatorStats {
 pub struct Survey {
     /// Cells.
     pub cells: u64,
+    /// Their volume over that of the largest cell; the number of cells where all are equal. All sums here are weighted so.
+    pub weight: f64,
     /// Velocity gradient.
     pub velocity: GradientStats,
     /// Magnetic gradient.
     pub magnetic: GradientStats,
     /// Indicators, one a family.
     pub indicators: Vec<IndicatorStats>,
+    /// Companions.
+    pub extras: Vec<IndicatorStats>,
 }
 
 /// Alignment of vectors over a set of cells.
@@ -104,6 +108,10 @@ pub struct Alignment {
     pub lorentz2: f64,
     /// Sum of |j|²|b|².
     pub j2b2: f64,
+    /// Sum of |j×(b − ⟨b⟩)|².
+    pub lorentz2_fluct: f64,
+    /// Sum of |j|²|b − ⟨b⟩|².
+    pub j2b2_fluct: f64,
 }
 
 impl Alignment {
@@ -116,6 +124,8 @@ impl Alignment {
         self.u2w2 += o.u2w2;
         self.lorentz2 += o.lorentz2;
         self.j2b2 += o.j2b2;
+        self.lorentz2_fluct += o.lorentz2_fluct;
+        self.j2b2_fluct += o.j2b2_fluct;
     }
 
     /// The cells that are not among `part`, a subset of them.
@@ -127,6 +137,8 @@ impl Alignment {
             u2w2: self.u2w2 - part.u2w2,
             lorentz2: self.lorentz2 - part.lorentz2,
             j2b2: self.j2b2 - part.j2b2,
+            lorentz2_fluct: self.lorentz2_fluct - part.lorentz2_fluct,
+            j2b2_fluct: self.j2b2_fluct - part.j2b2_fluct,
         }
     }
 }

@@ -13,6 +13,8 @@ pub struct SurfaceMesh {
     pub values: Vec<Vec<f32>>,
     /// Vertex indices, counter-clockwise seen from outside.
     pub triangles: Vec<[u32; 3]>,
+    /// Vertex indices of the edges of a contour, the inside on their left; empty for a surface.
+    pub edges: Vec<[u32; 2]>,
 }
 
 impl SurfaceMesh {

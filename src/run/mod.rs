@@ -3,8 +3,13 @@
 pub mod analysis;
 pub mod catalogue;
 pub mod clock;
+mod criteria;
 mod meshes;
 pub mod passes;
 mod provenance;
+mod ready;
+mod split;
 pub mod stream;
 mod summary;
+mod warnings;
+mod whole;

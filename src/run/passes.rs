@@ -11,7 +11,7 @@ use crate::derive::{Deriver, Scratch};
 use crate::detect::{ClosedTile, Criterion, Labeller, TileSweep};
 use crate::math::stats::Quantiles;
 use crate::measure::patches::{Patches, Wanted};
-use crate::measure::surface::{Shaped, shape};
+use crate::measure::surface::{Shaped, Trace, shape};
 use crate::model::object::Detected;
 use crate::model::request::{Family, Level};
 use crate::model::rows::Need;
@@ -31,7 +31,7 @@ pub struct Pass<'a, T> {
     /// The blocks that planes are worked on in.
     pub ranges: Vec<Range<usize>>,
     /// Buffers shared by the passes.
-    pub buffers: Buffers<T>,
+    pub buffers: &'a Buffers<T>,
     /// Who watches.
     pub observe: &'a dyn Observe,
 }
@@ -46,7 +46,8 @@ fn tiles(grid: &Grid, components: usize, value_bytes: usize) -> Vec<Range<usize>
 }
 
 impl<T: Real> Pass<'_, T> {
-    fn tiles(&self) -> Vec<Range<usize>> {
+    /// Rows a work item.
+    pub(super) fn tiles(&self) -> Vec<Range<usize>> {
         tiles(self.source.grid(), self.source.fields().components(), size_of::<T>())
     }
 
@@ -54,19 +55,25 @@ impl<T: Real> Pass<'_, T> {
     ///
     /// # Errors
     /// Those of the source. Bad cells are reported in the result; nothing is derived from the block that holds one on.
-    pub fn survey(&mut self, deriver: Option<&Deriver<T>>, with_scan: bool, families: &[Family]) -> Result<(Scan, Survey)> {
+    pub fn survey(
+        &mut self,
+        deriver: Option<&Deriver<T>>,
+        with_scan: bool,
+        families: &[Family],
+        companions: usize,
+    ) -> Result<(Scan, Survey)> {
         let grid = self.source.grid().clone();
         let components = self.source.fields().components();
         let tiles = self.tiles();
         self.observe.stage(if deriver.is_some() { "survey" } else { "read" }, grid.n[2] as u64);
         let mut scans = ScanSum::new::<T>(&grid, components);
-        let mut survey = moments::empty(families);
+        let mut survey = moments::empty(families, companions);
         let wanted: Vec<bool> = families.iter().map(|f| f.levels().iter().any(|l| matches!(l, Level::Volume(_)))).collect();
         let quantiles: Mutex<Vec<Vec<Option<Quantiles>>>> = Mutex::new(Vec::new());
         let mut sound = true;
         let halo = deriver.map_or(0, Deriver::halo);
         let reach = |z: Range<usize>| deriver.map_or((z.start as isize, z.end as isize), |d| d.reach(z));
-        blocks(self.source, &self.ranges, halo, reach, &self.buffers, self.observe, |block| {
+        blocks(self.source, &self.ranges, halo, reach, self.buffers, self.observe, |block| {
             if with_scan {
                 let planes = par::map_range(block.z.len(), |k| {
                     let z = block.z.start + k;
@@ -87,7 +94,7 @@ impl<T: Real> Pass<'_, T> {
                     .z
                     .clone()
                     .map(|z| {
-                        let mut part = moments::empty(families);
+                        let mut part = moments::empty(families, companions);
                         for y in rows_y.clone() {
                             let sampled = y % moments::SAMPLE_ROWS == 0;
                             deriver.row(
@@ -96,13 +103,16 @@ impl<T: Real> Pass<'_, T> {
                                 z,
                                 y,
                                 0..grid.n[0],
-                                Need { strain: true, divergence: true, truncation: sampled, ..Need::default() },
+                                Need { strain: true, divergence: true, truncation: sampled, extras: companions > 0, ..Need::default() },
                                 &mut scratch,
                             );
+                            grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
                             moments::add_row(&mut part, &scratch.rows, sampled);
                             for (q, row) in counts.iter_mut().zip(&scratch.rows.indicators) {
-                                if let Some(q) = q {
-                                    q.add(row);
+                                match (q, scratch.rows.weights.as_slice()) {
+                                    (None, _) => {}
+                                    (Some(q), []) => q.add(row),
+                                    (Some(q), weights) => q.add_weighted(row, weights),
                                 }
                             }
                         }
@@ -113,7 +123,7 @@ impl<T: Real> Pass<'_, T> {
                 per_plane
             });
             for k in 0..block.z.len() {
-                let mut plane = moments::empty(families);
+                let mut plane = moments::empty(families, companions);
                 for tile in &parts {
                     moments::merge(&mut plane, &tile[k]);
                 }
@@ -137,25 +147,26 @@ impl<T: Real> Pass<'_, T> {
     ///
     /// # Errors
     /// Those of the source.
-    pub fn detect(&mut self, deriver: &Deriver<T>, criteria: &[Criterion], min_cells: u64) -> Result<(Vec<Detected>, Alignment)> {
+    pub fn detect(&mut self, deriver: &Deriver<T>, criteria: &[Criterion], min_cells: &[u64]) -> Result<(Vec<Detected>, Alignment)> {
         let grid = self.source.grid().clone();
         let tiles = self.tiles();
         self.observe.stage("detection", grid.n[2] as u64);
-        let mut labellers: Vec<Labeller> = criteria.iter().map(|c| Labeller::new(grid.clone(), *c)).collect();
+        let mut labellers: Vec<Labeller> = criteria.iter().map(|c| Labeller::new(grid.clone(), c.clone())).collect();
+        let companions = criteria.first().is_some_and(|c| !c.scales.extras.is_empty());
         let mut whole = Alignment::default();
         blocks(
             self.source,
             &self.ranges,
             deriver.halo(),
             |z| deriver.reach(z),
-            &self.buffers,
+            self.buffers,
             self.observe,
             |block| {
                 let ready = deriver.prepare(block);
                 let parts = par::map(&tiles, |_, rows_y| {
                     let mut scratch = Scratch::default();
                     let mut sweeps: Vec<TileSweep> =
-                        criteria.iter().map(|c| TileSweep::new(*c, (rows_y.start, rows_y.end), block.z.start)).collect();
+                        criteria.iter().map(|c| TileSweep::new(c.clone(), (rows_y.start, rows_y.end), block.z.start)).collect();
                     let alignment: Vec<Alignment> = block
                         .z
                         .clone()
@@ -168,9 +179,10 @@ impl<T: Real> Pass<'_, T> {
                                     z,
                                     y,
                                     0..grid.n[0],
-                                    Need { strain: true, alignment: true, extras: true, ..Need::default() },
+                                    Need { strain: true, alignment: true, extras: companions, ..Need::default() },
                                     &mut scratch,
                                 );
+                                grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
                                 box_alignment::add_row(&mut part, &scratch.rows);
                                 for sweep in &mut sweeps {
                                     sweep.add_row(&grid, &scratch.rows, y, z);
@@ -197,7 +209,7 @@ impl<T: Real> Pass<'_, T> {
                 Ok(())
             },
         )?;
-        let found = par::map_owned(labellers, |_, l| l.finish(min_cells));
+        let found = par::map_owned(labellers, |k, l| l.finish(min_cells[k]));
         self.observe.done();
         Ok((found, whole))
     }
@@ -217,12 +229,13 @@ impl<T: Real> Pass<'_, T> {
     ) -> Result<Vec<Vec<Option<Shaped>>>> {
         let grid = self.source.grid().clone();
         let fields = if plan.mesh_cells.is_some() { self.source.fields() } else { Fields::default() };
+        let extras = if plan.mesh_cells.is_some() { plan.mesh_extras.clone() } else { Vec::new() };
         let tiles = self.tiles();
         self.observe.stage("shapes", grid.n[2] as u64);
         let mut patches: Vec<Patches<T>> = criteria
             .iter()
             .zip(found.iter())
-            .map(|(c, f)| Patches::new(grid.clone(), c.family, c.side, fields, &f.objects, plan.max_cells))
+            .map(|(c, f)| Patches::new(grid.clone(), c.family, c.side, fields, extras.clone(), &f.objects, plan.max_cells))
             .collect();
         let mut pending = Vec::new();
         let mut out: Vec<Vec<Option<Shaped>>> = found.iter().map(|f| f.objects.iter().map(|_| None).collect()).collect();
@@ -231,7 +244,7 @@ impl<T: Real> Pass<'_, T> {
             &self.ranges,
             deriver.halo(),
             |z| deriver.reach(z),
-            &self.buffers,
+            self.buffers,
             self.observe,
             |block| {
                 // The meshes of the block before are written while this one is worked on.
@@ -274,7 +287,7 @@ fn shape_block<T: Real>(
         for row in wanted.chunk_by(|a, b| (a.z, a.y) == (b.z, b.y)) {
             let (z, y) = (row[0].z, row[0].y);
             for x in joined(row) {
-                deriver.row(block, &ready, z, y, x.clone(), Need { extras: true, ..Need::default() }, &mut scratch);
+                deriver.row(block, &ready, z, y, x.clone(), Need { extras: !plan.mesh_extras.is_empty(), ..Need::default() }, &mut scratch);
                 for p in open {
                     p.deliver(t, z, y, &x, &scratch.rows);
                 }
@@ -283,11 +296,12 @@ fn shape_block<T: Real>(
     });
     let mut finished = Vec::new();
     for (k, (p, f)) in patches.iter_mut().zip(found.iter()).enumerate() {
-        let Criterion { side, level, .. } = criteria[k];
         let shaped = par::map_owned(p.end_block(block.z.end), |_, patch| {
             let object = &f.objects[patch.object];
             let with_mesh = plan.mesh_cells.is_some_and(|least| object.tally.moments.count >= least);
-            shape(grid, &patch, level, side, object.id, with_mesh)
+            let Criterion { side, level, connectivity, .. } = criteria[k];
+            let trace = Trace { level: object.level.unwrap_or(level), side, connectivity, id: object.id, with_mesh };
+            shape(grid, &patch, trace)
         });
         let mut meshes = Vec::new();
         for mut s in shaped {
@@ -302,7 +316,7 @@ fn shape_block<T: Real>(
 
 /// The stretches of a row that cover what is wanted of it, nearby ones joined: deriving a few cells more is cheaper than
 /// beginning anew.
-fn joined(row: &[Wanted]) -> Vec<Range<usize>> {
+pub(super) fn joined(row: &[Wanted]) -> Vec<Range<usize>> {
     const GAP: usize = 64;
     let mut out: Vec<Range<usize>> = Vec::new();
     for w in row {
@@ -315,12 +329,14 @@ fn joined(row: &[Wanted]) -> Vec<Range<usize>> {
 }
 
 /// Which objects get a surface and a mesh.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, PartialEq, Eq)]
 pub struct ShapePlan {
     /// Larger objects get neither.
     pub max_cells: u64,
     /// Objects of at least so many cells get a mesh; none where no mesh is wanted.
     pub mesh_cells: Option<u64>,
+    /// Which of the further indicators go to mesh vertices.
+    pub mesh_extras: Vec<usize>,
 }
 
 fn take<V>(pool: &Mutex<Vec<V>>) -> Option<V> {

@@ -1,5 +1,6 @@
 //! The box and its samples: counts, spacing or coordinates, origin and which axes are periodic.
 
+use std::ops::Range;
 use std::sync::Arc;
 
 /// A rectilinear grid. All triples are in the order x, y, z.
@@ -25,6 +26,8 @@ pub struct Grid {
 pub struct Stretched {
     /// Positions of the samples, strictly ascending.
     pub positions: Vec<f64>,
+    /// Largest of the widths.
+    pub largest: f64,
     /// Widths of their cells: half the distance between the neighbours; at the ends the distance to the only neighbour, so that
     /// equal spacing gives every sample a whole cell.
     pub widths: Vec<f64>,
@@ -66,10 +69,11 @@ impl Grid {
             i => 0.5 * (positions[i + 1] - positions[i - 1]),
         };
         let widths: Vec<f64> = (0..n).map(width).collect();
+        let largest = widths.iter().fold(0.0f64, |a, &b| a.max(b));
         self.spacing[axis] = widths.iter().sum::<f64>() / n as f64;
         self.origin[axis] = positions[0];
         self.periodic[axis] = false;
-        self.stretched[axis] = Some(Arc::new(Stretched { positions, widths }));
+        self.stretched[axis] = Some(Arc::new(Stretched { positions, largest, widths }));
         self
     }
 
@@ -105,7 +109,7 @@ impl Grid {
     /// Largest cell width along an axis.
     pub fn largest_width(&self, axis: usize) -> f64 {
         match &self.stretched[axis] {
-            Some(s) => s.widths.iter().fold(0.0, |a, &b| a.max(b)),
+            Some(s) => s.largest,
             None => self.width(axis, 0),
         }
     }
@@ -124,6 +128,24 @@ impl Grid {
     /// Volume of the largest cell (of every cell, where spacing is equal); an area on a flat grid.
     pub fn largest_cell(&self) -> f64 {
         (0..3).map(|a| self.largest_width(a)).product()
+    }
+
+    /// Volumes of the cells `x` of row (y, z) over that of the largest cell; empty where all cells are equal.
+    pub fn relative_weights(&self, x: Range<usize>, y: usize, z: usize, out: &mut Vec<f64>) {
+        out.clear();
+        if self.is_stretched() {
+            let share = |a: usize, i: usize| self.width(a, i) / self.largest_width(a);
+            let row = share(1, y) * share(2, z);
+            out.extend(x.map(|i| row * share(0, i)));
+        }
+    }
+
+    /// Position of a cell along an axis in box lengths from the first sample.
+    pub fn fraction(&self, axis: usize, i: usize) -> f64 {
+        match &self.stretched[axis] {
+            Some(s) => (s.positions[i] - s.positions[0]) / self.length(axis),
+            None => i as f64 / self.n[axis] as f64,
+        }
     }
 
     /// Box length along an axis.
@@ -147,6 +169,18 @@ impl Grid {
     /// Global cell index, x fastest.
     pub fn index(&self, x: usize, y: usize, z: usize) -> u64 {
         (z as u64 * self.n[1] as u64 + y as u64) * self.n[0] as u64 + x as u64
+    }
+
+    /// Open faces that the cells `x.0..x.1` of row (y, z) touch, one bit each in the order x-, x+, y-, y+, z-, z+. The two sides of a
+    /// flat grid are no faces.
+    pub fn open_faces(&self, x: (usize, usize), y: usize, z: usize) -> u8 {
+        let along = |a: usize, first: usize, end: usize| {
+            if self.periodic[a] || (a == 2 && self.is_flat()) {
+                return 0;
+            }
+            (u8::from(first == 0) | u8::from(end == self.n[a]) << 1) << (2 * a)
+        };
+        along(0, x.0, x.1) | along(1, y, y + 1) | along(2, z, z + 1)
     }
 
     /// Inverse of [`Grid::index`].

@@ -7,14 +7,14 @@ use crate::model::statistics::{GradientStats, IndicatorStats};
 /// The absolute level of a family, rounded to the storage precision so that later comparisons are exact.
 ///
 /// `rms` is the root of the box mean of the squared indicator (for vectors: of the squared magnitude); `volume` is read from
-/// counts whose bins are a relative 2^-12 wide.
-pub fn absolute<T: Real>(level: Level, side: Side, stats: &IndicatorStats, cells: u64) -> f64 {
-    let n = cells as f64;
+/// counts whose bins are a relative 2^-12 wide. `n` is the weight of the box, `run_rms` the rms over all snapshots where it is asked for.
+pub fn absolute<T: Real>(level: Level, side: Side, stats: &IndicatorStats, n: f64, run_rms: Option<f64>) -> f64 {
     let level = match level {
         Level::Absolute(v) => v,
         Level::Rms(v) => v * (stats.square_sum / n).sqrt(),
-        Level::RunRms(v) => v * (stats.square_sum / n).sqrt(),
-        Level::Peak(v) => v,
+        Level::RunRms(v) => v * run_rms.unwrap_or(f64::NAN),
+        // A fraction, not a level: each object has its own.
+        Level::Peak(_) => f64::NAN,
         Level::Mean(v) => v * stats.sum / n,
         Level::Volume(fraction) => stats.quantiles.as_ref().map_or(f64::NAN, |q| {
             q.level_above(match side {
@@ -51,12 +51,12 @@ const TRUNCATION_FACTOR: f64 = 3.0;
 const ROUND_OFF_FACTOR: f64 = 8.0;
 
 /// Judges a field's divergence. `rms` is the field's own rms, `spacing` the smallest one.
-pub fn divergence<T: Real>(g: &GradientStats, cells: u64, rms: f64, spacing: f64) -> Divergence {
-    let curl = (g.curl2 / cells as f64).sqrt();
+pub fn divergence<T: Real>(g: &GradientStats, weight: f64, rms: f64, spacing: f64) -> Divergence {
+    let curl = (g.curl2 / weight).sqrt();
     if curl == 0.0 || g.sampled == 0 {
         return Divergence { ratio: None, explained: None };
     }
-    let div = (g.div2 / cells as f64).sqrt();
+    let div = (g.div2 / weight).sqrt();
     let miss = (g.div_miss2 / g.sampled as f64).sqrt();
     let floor = ROUND_OFF_FACTOR * T::EPSILON * rms / spacing;
     Divergence { ratio: Some(div / curl), explained: Some((TRUNCATION_FACTOR * miss + floor) / curl) }

@@ -1,7 +1,7 @@
 //! Sums of gradient quantities and indicators over the box, added up row by row, tile by tile, plane by plane in a fixed order.
 
 use crate::base::real::Real;
-use crate::math::stats::{row_max, row_square_sum, row_stats, row_sum};
+use crate::math::stats::{row_max, row_square_sum, row_stats, row_sum, weighted_square_sum, weighted_sum};
 use crate::model::request::Family;
 use crate::model::rows::Rows;
 use crate::model::statistics::{GradientStats, IndicatorStats, Survey};
@@ -9,39 +9,43 @@ use crate::model::statistics::{GradientStats, IndicatorStats, Survey};
 /// Every how many rows the truncation error is sampled.
 pub const SAMPLE_ROWS: usize = 4;
 
-/// An empty sum for a list of families.
-pub fn empty(families: &[Family]) -> Survey {
+/// An empty sum for a list of families and a number of companions.
+pub fn empty(families: &[Family], companions: usize) -> Survey {
     let indicator = IndicatorStats { sum: 0.0, square_sum: 0.0, min: f64::INFINITY, max: f64::NEG_INFINITY, quantiles: None };
-    Survey { indicators: vec![indicator; families.len()], ..Survey::default() }
+    Survey { indicators: vec![indicator.clone(); families.len()], extras: vec![indicator; companions], ..Survey::default() }
 }
 
 /// Adds one derived row. `sampled` rows carry the truncation measure.
 pub fn add_row<T: Real>(survey: &mut Survey, rows: &Rows<T>, sampled: bool) {
-    gradient(&mut survey.velocity, &rows.w2, Some(&rows.strain2), &rows.div_u, &rows.div_u_miss, sampled);
-    gradient(&mut survey.magnetic, &rows.j2, None, &rows.div_b, &rows.div_b_miss, sampled);
+    let w = &rows.weights;
+    gradient(&mut survey.velocity, &rows.w2, Some(&rows.strain2), &rows.div_u, &rows.div_u_miss, w, sampled);
+    gradient(&mut survey.magnetic, &rows.j2, None, &rows.div_b, &rows.div_b_miss, w, sampled);
     let mut cells = rows.w2.len().max(rows.j2.len());
-    for (s, row) in survey.indicators.iter_mut().zip(&rows.indicators) {
+    let extras = survey.extras.iter_mut().zip(&rows.extras);
+    for (s, row) in survey.indicators.iter_mut().zip(&rows.indicators).chain(extras) {
         cells = row.len();
         let r = row_stats(row);
-        s.sum += r.sum;
-        s.square_sum += r.square_sum;
+        s.sum += if w.is_empty() { r.sum } else { weighted_sum(row, w) };
+        s.square_sum += if w.is_empty() { r.square_sum } else { weighted_square_sum(row, w) };
         s.min = s.min.min(r.min);
         s.max = s.max.max(r.max);
     }
     survey.cells += cells as u64;
+    survey.weight += if w.is_empty() { cells as f64 } else { w.iter().sum() };
 }
 
-fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, div: &[T], miss: &[T], sampled: bool) {
+fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, div: &[T], miss: &[T], weights: &[f64], sampled: bool) {
     if curl2.is_empty() {
         return;
     }
-    g.curl2 += row_sum(curl2);
+    let sum = |row: &[T]| if weights.is_empty() { row_sum(row) } else { weighted_sum(row, weights) };
+    g.curl2 += sum(curl2);
     g.curl2_max = g.curl2_max.max(row_max(curl2));
     if let Some(s) = strain2 {
-        g.strain2 += row_sum(s);
+        g.strain2 += sum(s);
         g.strain2_max = g.strain2_max.max(row_max(s));
     }
-    let div2 = row_square_sum(div);
+    let div2 = if weights.is_empty() { row_square_sum(div) } else { weighted_square_sum(div, weights) };
     g.div2 += div2;
     if sampled {
         g.div2_sampled += div2;
@@ -53,9 +57,11 @@ fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, 
 /// Adds the sums over other cells.
 pub fn merge(into: &mut Survey, other: &Survey) {
     into.cells += other.cells;
+    into.weight += other.weight;
     into.velocity.merge(&other.velocity);
     into.magnetic.merge(&other.magnetic);
-    for (a, b) in into.indicators.iter_mut().zip(&other.indicators) {
+    let extras = into.extras.iter_mut().zip(&other.extras);
+    for (a, b) in into.indicators.iter_mut().zip(&other.indicators).chain(extras) {
         a.sum += b.sum;
         a.square_sum += b.square_sum;
         a.min = a.min.min(b.min);

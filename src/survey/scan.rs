@@ -1,7 +1,7 @@
 //! Raw planes: hash, NaN and infinite cells, sums and extremes of every component.
 
 use crate::base::real::Real;
-use crate::math::stats::row_stats;
+use crate::math::stats::{row_stats, weighted_square_sum, weighted_sum};
 use crate::model::statistics::{ComponentStats, Scan};
 use crate::space::grid::Grid;
 
@@ -25,6 +25,7 @@ impl PlaneScan {
 
 /// Scans plane `z`, one slice a component, x fastest.
 pub fn plane<T: Real>(grid: &Grid, z: usize, components: &[&[T]]) -> PlaneScan {
+    let mut weights = Vec::new();
     let mut hasher = blake3::Hasher::new();
     let mut out = PlaneScan { hash: hasher.finalize(), components: Vec::new(), not_finite: 0, first: Vec::new() };
     for (c, values) in components.iter().enumerate() {
@@ -32,8 +33,9 @@ pub fn plane<T: Real>(grid: &Grid, z: usize, components: &[&[T]]) -> PlaneScan {
         let mut s = ComponentStats { sum: 0.0, square_sum: 0.0, min: f64::INFINITY, max: f64::NEG_INFINITY };
         for (y, row) in values.chunks_exact(grid.n[0]).enumerate() {
             let r = row_stats(row);
-            s.sum += r.sum;
-            s.square_sum += r.square_sum;
+            grid.relative_weights(0..row.len(), y, z, &mut weights);
+            s.sum += if weights.is_empty() { r.sum } else { weighted_sum(row, &weights) };
+            s.square_sum += if weights.is_empty() { r.square_sum } else { weighted_square_sum(row, &weights) };
             // A NaN or infinite value makes the row's sum so; a finite sum can only hide an overflow of f64.
             if !r.sum.is_finite() {
                 for x in (0..row.len()).filter(|&x| !row[x].is_finite()) {

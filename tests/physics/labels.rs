@@ -106,8 +106,8 @@ fn spans(grid: &Grid, mask: &[bool], connectivity: Connectivity, start: usize) -
 
 /// Feeds a mask through tiles of `height` rows and blocks of `thickness` planes, tiles in reverse order.
 fn detect(grid: &Grid, mask: &[bool], connectivity: Connectivity, height: usize, thickness: usize, min_cells: u64) -> Detected {
-    let scales = Scales([Scale::for_bound(1.0); SUMS]);
-    let criterion = Criterion { family: 0, side: Side::Above, level: 0.5, connectivity, scales };
+    let scales = Scales { sums: [Scale::for_bound(1.0); SUMS], extras: Vec::new() };
+    let criterion = Criterion { family: 0, side: Side::Above, level: 0.5, inner: None, connectivity, scales };
     let mut labeller = Labeller::new(grid.clone(), criterion);
     let [nx, ny, nz] = grid.n;
     let mut tiles = Vec::new();
