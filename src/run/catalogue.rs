@@ -180,7 +180,8 @@ fn one(path: &SnapshotRef, name: &str, config: &RunConfig, folder: &Folder, obse
         analyse(opened.source, snapshot, request, execution, observe, &mut NoSurfaces)?
     } else {
         let families = request.families_for(fields)?;
-        let mut files = MeshFiles::new(folder, name, families, fields, &request.mesh_values, request.surfaces)?;
+        let mut files =
+            MeshFiles::new(folder, name, families, fields, &request.mesh_values, request.surfaces, opened.source.grid().is_flat())?;
         match analyse(opened.source, snapshot, request, execution, observe, &mut files) {
             Ok(analysis) => {
                 files.finish()?;

@@ -5,7 +5,7 @@ use std::io::BufWriter;
 
 use crate::base::error::{Error, Result};
 use crate::export::atomic::Folder;
-use crate::export::ply::PlyWriter;
+use crate::export::ply::{Joins, PlyWriter};
 use crate::model::request::{Family, Indicator, Surfaces};
 use crate::model::source::Fields;
 use crate::model::surface::{SurfaceMesh, SurfaceSink};
@@ -17,6 +17,7 @@ pub struct MeshFiles<'a> {
     families: Vec<Family>,
     values: Vec<&'static str>,
     each: bool,
+    joins: Joins,
     /// Every file begun, helper files included.
     begun: Vec<String>,
     together: Vec<Option<PlyWriter<BufWriter<File>, File>>>,
@@ -34,6 +35,7 @@ impl<'a> MeshFiles<'a> {
         fields: Fields,
         extras: &[Indicator],
         surfaces: Surfaces,
+        flat: bool,
     ) -> Result<Self> {
         folder.subfolder(&format!("surfaces/{snapshot}"))?;
         if surfaces == Surfaces::Each {
@@ -49,6 +51,7 @@ impl<'a> MeshFiles<'a> {
             families,
             values,
             each: surfaces == Surfaces::Each,
+            joins: if flat { Joins::Edges } else { Joins::Triangles },
             begun: Vec::new(),
             together,
         })
@@ -72,7 +75,7 @@ impl<'a> MeshFiles<'a> {
             format!("snapshot {}", self.snapshot.replace(char::is_control, " ")),
             format!("family {}", self.families[family]),
         ];
-        PlyWriter::new(out, faces, self.values.clone(), comments).map_err(|e| self.failed(name, &e))
+        PlyWriter::new(out, faces, self.joins, self.values.clone(), comments).map_err(|e| self.failed(name, &e))
     }
 
     fn failed(&self, name: &str, e: &std::io::Error) -> Error {

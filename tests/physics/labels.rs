@@ -108,13 +108,13 @@ fn spans(grid: &Grid, mask: &[bool], connectivity: Connectivity, start: usize) -
 fn detect(grid: &Grid, mask: &[bool], connectivity: Connectivity, height: usize, thickness: usize, min_cells: u64) -> Detected {
     let scales = Scales { sums: [Scale::for_bound(1.0); SUMS], extras: Vec::new() };
     let criterion = Criterion { family: 0, side: Side::Above, level: 0.5, inner: None, connectivity, scales };
-    let mut labeller = Labeller::new(grid.clone(), criterion);
+    let mut labeller = Labeller::new(grid.clone(), criterion.clone());
     let [nx, ny, nz] = grid.n;
     let mut tiles = Vec::new();
     for z0 in (0..nz).step_by(thickness) {
         for y0 in (0..ny).step_by(height) {
             let y1 = (y0 + height).min(ny);
-            let mut sweep = TileSweep::new(criterion, (y0, y1), z0);
+            let mut sweep = TileSweep::new(criterion.clone(), (y0, y1), z0);
             for z in z0..(z0 + thickness).min(nz) {
                 for y in y0..y1 {
                     let row = (0..nx).map(|x| f32::from(u8::from(mask[grid.index(x, y, z) as usize]))).collect();
