@@ -30,7 +30,7 @@ pub struct Grown {
     pub intervals: Vec<Interval>,
     /// Axes along which it closes on itself.
     pub spans: [bool; 3],
-    /// Share of its boundary faces behind which a touching object goes on beyond this one's level.
+    /// Share of its boundary faces behind which the field goes on beyond this object's level, on another slope.
     pub wall: f64,
 }
 
@@ -183,10 +183,12 @@ mod tests {
     fn a_high_saddle_joins_and_a_low_one_splits() {
         // Saddle 6 beyond half of 10: one object.
         assert_eq!(spans(&[1.0, 10.0, 6.0, 8.0, 4.5, 1.0], 0.5, 3.0), vec![(10.0, 1, 3, 0.0)]);
-        // Saddle 4: the higher object ends above it; the lower one, down to 3, takes only its own slope.
-        assert_eq!(spans(&[1.0, 10.0, 7.0, 4.5, 4.0, 6.0, 3.5, 2.0], 0.5, 3.0), vec![(10.0, 1, 2, 0.0), (6.0, 5, 2, 0.0)]);
-        // Touching: the cell of 5.5 is still the high one's, and the low one would go on beyond it.
-        assert_eq!(spans(&[1.0, 10.0, 5.5, 4.9, 6.0, 3.5, 2.0], 0.5, 3.0), vec![(10.0, 1, 2, 0.0), (6.0, 4, 2, 0.5)]);
+        // Saddle 4: the higher object ends above it; the lower one, down to 3, takes only its own slope and ends at a wall there.
+        assert_eq!(spans(&[1.0, 10.0, 7.0, 4.5, 4.0, 6.0, 3.5, 2.0], 0.5, 3.0), vec![(10.0, 1, 2, 0.0), (6.0, 4, 3, 0.5)]);
+        // Touching cells; only the lower one would go on beyond the wall.
+        assert_eq!(spans(&[1.0, 10.0, 5.5, 4.9, 6.0, 3.5, 2.0], 0.5, 3.0), vec![(10.0, 1, 2, 0.0), (6.0, 3, 3, 0.5)]);
+        // A saddle below both levels: no wall.
+        assert_eq!(spans(&[1.0, 10.0, 7.0, 2.5, 6.0, 3.5, 2.0], 0.5, 3.0), vec![(10.0, 1, 2, 0.0), (6.0, 4, 2, 0.0)]);
     }
 
     #[test]

@@ -113,6 +113,9 @@ pub(super) fn surveyed<T: Real>(
 
 /// Volume of the box over that of its largest cell.
 fn weight(grid: &Grid) -> f64 {
+    if !grid.is_stretched() {
+        return grid.cells() as f64;
+    }
     (0..3).map(|a| (0..grid.n[a]).map(|i| grid.width(a, i)).sum::<f64>() / grid.largest_width(a)).product()
 }
 

@@ -19,7 +19,7 @@ pub fn mean_velocity(scan: &Scan, weight: f64, fields: Fields) -> [f64; 3] {
     std::array::from_fn(|c| scan.components[c].sum / weight)
 }
 
-/// The mean magnetic field and |⟨b⟩|/b′, b′ the root of ⟨|b − ⟨b⟩|²⟩; missing without a field that varies.
+/// The mean magnetic field and |⟨b⟩|/b′, b′ the root of ⟨|b − ⟨b⟩|²⟩; missing without a field that is anywhere different from 0.
 pub fn guide_field(scan: &Scan, weight: f64, fields: Fields) -> Option<([f64; 3], f64)> {
     if !fields.magnetic {
         return None;
@@ -28,7 +28,8 @@ pub fn guide_field(scan: &Scan, weight: f64, fields: Fields) -> Option<([f64; 3]
     let mean: [f64; 3] = std::array::from_fn(|c| b[c].sum / weight);
     let mean2: f64 = mean.iter().map(|m| m * m).sum();
     let variance = b.iter().map(|c| c.square_sum).sum::<f64>() / weight - mean2;
-    (variance > 0.0).then(|| (mean, (mean2 / variance).sqrt()))
+    // Without any fluctuation the ratio is infinite.
+    (mean2 > 0.0 || variance > 0.0).then(|| (mean, (mean2 / variance.max(0.0)).sqrt()))
 }
 
 /// Bounds of the summed quantities that do not depend on the family.

@@ -6,6 +6,7 @@ mod common;
 mod ellipsoids;
 mod gaussian;
 mod labels;
+mod levels;
 mod meshes;
 mod periodic_flows;
 mod same_answer;

@@ -8,7 +8,7 @@ use std::path::PathBuf;
 use crate::common::{BOTH, Outcome, Precision, stored, text, try_run};
 use ropewalk::base::par::Pool;
 use ropewalk::export::csv;
-use ropewalk::export::ply::PlyWriter;
+use ropewalk::export::ply::{Joins, PlyWriter};
 use ropewalk::model::columns::Col;
 use ropewalk::model::object::Sum;
 use ropewalk::model::request::{Family, Request};
@@ -52,7 +52,7 @@ fn bytes(o: &Outcome) -> Vec<u8> {
             all.extend(m.triangles.iter().flatten().flat_map(|v| v.to_le_bytes()));
         }
         let values = SurfaceMesh::value_names(a.fields, &[]);
-        let mut file = PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), values, Vec::new()).unwrap();
+        let mut file = PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), Joins::Triangles, values, Vec::new()).unwrap();
         // One call a mesh and one call for all must not differ either.
         let (first, rest) = meshes.split_at(meshes.len() / 2);
         first.iter().for_each(|m| file.add(std::slice::from_ref(m)).unwrap());
