@@ -183,11 +183,11 @@ fn typed<T: Real>(
         max_cells: request.max_object_cells,
         mesh_cells: (request.surfaces != Surfaces::None).then_some(request.surface_min_cells),
         // Speed is among the standard values already.
-        mesh_extras: extras
+        mesh_extras: request
+            .mesh_values
             .iter()
-            .enumerate()
-            .filter(|(_, i)| request.mesh_values.contains(i) && **i != Indicator::Speed)
-            .map(|(k, _)| k)
+            .filter(|i| **i != Indicator::Speed)
+            .filter_map(|i| extras.iter().position(|e| e == i))
             .collect(),
     };
     let shapes = pass.shapes(&deriver, &criteria, &mut found, &plan, sink)?;

@@ -8,6 +8,7 @@ mod meshes;
 pub mod passes;
 mod provenance;
 mod ready;
+pub mod run_rms;
 mod split;
 pub mod stream;
 mod summary;
