@@ -1,11 +1,12 @@
 //! One snapshot from planes to rows: settles levels and orders the passes.
 
+use std::sync::Arc;
+
 use crate::base::error::{Error, Result};
 use crate::base::observe::Observe;
 use crate::base::real::Real;
-use crate::derive::{Deriver, Plan};
+use crate::derive::{Deriver, Plan, fewest_samples, z_lines};
 use crate::detect::Criterion;
-use crate::math::diff::WIDTH;
 use crate::math::stats::Scale;
 use crate::measure::row::{Context, row};
 use crate::model::columns::Row;
@@ -128,12 +129,13 @@ fn typed<T: Real>(
     let fields = source.fields();
     let families = request.families_for(fields)?;
     for (a, axis) in ["x", "y", "z"].iter().enumerate() {
-        if grid.n[a] < WIDTH {
+        let fewest = fewest_samples(request.scheme, &grid, a);
+        if grid.n[a] < fewest {
             return Err(Error::input("cannot derive along an axis")
                 .item(format!("{} axis {axis}", snapshot.name))
-                .expected(format!("at least {WIDTH} samples"))
+                .expected(format!("at least {fewest} samples"))
                 .found(grid.n[a].to_string())
-                .hint("differences of order 8 read 9 samples"));
+                .hint(format!("--derivative {} reads {fewest} samples", request.scheme.name())));
         }
     }
     let bytes = grid.cells() * fields.components() as u64 * size_of::<T>() as u64;
@@ -141,7 +143,6 @@ fn typed<T: Real>(
     if source.is_costly() && bytes <= execution.keep_bytes {
         source = Box::new(kept(&mut *source, observe)?);
     }
-    let mut pass = Pass { source: &mut *source, ranges, buffers: Buffers::default(), observe };
     let plan = Plan {
         indicators: families.iter().map(|f| f.indicator).collect(),
         extras: request.extras(),
@@ -151,8 +152,10 @@ fn typed<T: Real>(
         viscosity: request.viscosity,
         resistivity: request.resistivity,
     };
-    let deriver = |frame| Deriver::<T>::new(&grid, fields, Plan { frame, ..plan.clone() });
-
+    let wanted_lines = Deriver::<T>::new(&grid, fields, plan.clone()).wanted_z_lines();
+    let lines = wanted_lines.map(|wanted| z_lines(&mut *source, &wanted, observe)).transpose()?.map(Arc::new);
+    let deriver = |frame| Deriver::<T>::new(&grid, fields, Plan { frame, ..plan.clone() }).with_z_lines(lines.clone());
+    let mut pass = Pass { source: &mut *source, ranges, buffers: Buffers::default(), observe };
     let moving = request.frame == Frame::Box && families.iter().any(|f| f.indicator.depends_on_frame());
     let (scan, survey, frame) = if moving {
         // The mean must be known before an indicator that depends on it is surveyed.

@@ -24,6 +24,11 @@ use crate::space::slab::Block;
 use crate::survey::scan::{self, ScanSum};
 use crate::survey::{box_alignment, moments};
 
+/// What every row of the survey needs; sampled ones the truncation as well.
+const SURVEY: Need = Need { strain: true, divergence: true, truncation: false, alignment: false, extras: false, vectors: false };
+/// What every row of the detection needs.
+const DETECTION: Need = Need { strain: true, divergence: false, truncation: false, alignment: true, extras: true, vectors: false };
+
 /// Everything a pass needs besides its own request.
 pub struct Pass<'a, T> {
     /// The planes.
@@ -79,7 +84,7 @@ impl<T: Real> Pass<'_, T> {
                 }
             }
             let Some(deriver) = deriver.filter(|_| sound) else { return Ok(()) };
-            let ready = deriver.prepare(block);
+            let ready = deriver.prepare(block, SURVEY);
             let parts = par::map(&tiles, |_, rows_y| {
                 let mut counts = take(&quantiles).unwrap_or_else(|| wanted.iter().map(|w| w.then(Quantiles::default)).collect());
                 let mut scratch = Scratch::default();
@@ -90,15 +95,7 @@ impl<T: Real> Pass<'_, T> {
                         let mut part = moments::empty(families);
                         for y in rows_y.clone() {
                             let sampled = y % moments::SAMPLE_ROWS == 0;
-                            deriver.row(
-                                block,
-                                &ready,
-                                z,
-                                y,
-                                0..grid.n[0],
-                                Need { strain: true, divergence: true, truncation: sampled, ..Need::default() },
-                                &mut scratch,
-                            );
+                            deriver.row(block, &ready, z, y, 0..grid.n[0], Need { truncation: sampled, ..SURVEY }, &mut scratch);
                             moments::add_row(&mut part, &scratch.rows, sampled);
                             for (q, row) in counts.iter_mut().zip(&scratch.rows.indicators) {
                                 if let Some(q) = q {
@@ -151,7 +148,7 @@ impl<T: Real> Pass<'_, T> {
             &self.buffers,
             self.observe,
             |block| {
-                let ready = deriver.prepare(block);
+                let ready = deriver.prepare(block, DETECTION);
                 let parts = par::map(&tiles, |_, rows_y| {
                     let mut scratch = Scratch::default();
                     let mut sweeps: Vec<TileSweep> =
@@ -162,15 +159,7 @@ impl<T: Real> Pass<'_, T> {
                         .map(|z| {
                             let mut part = Alignment::default();
                             for y in rows_y.clone() {
-                                deriver.row(
-                                    block,
-                                    &ready,
-                                    z,
-                                    y,
-                                    0..grid.n[0],
-                                    Need { strain: true, alignment: true, extras: true, ..Need::default() },
-                                    &mut scratch,
-                                );
+                                deriver.row(block, &ready, z, y, 0..grid.n[0], DETECTION, &mut scratch);
                                 box_alignment::add_row(&mut part, &scratch.rows);
                                 for sweep in &mut sweeps {
                                     sweep.add_row(&grid, &scratch.rows, y, z);
@@ -266,7 +255,8 @@ fn shape_block<T: Real>(
         p.begin_block(block.z.clone(), tiles, &mut f.objects);
     }
     let open: &[Patches<T>] = patches;
-    let ready = deriver.prepare(block);
+    let need = Need { extras: true, vectors: plan.mesh_cells.is_some(), ..Need::default() };
+    let ready = deriver.prepare(block, need);
     par::map_range(tiles.len(), |t| {
         let mut scratch = Scratch::default();
         let mut wanted: Vec<Wanted> = open.iter().flat_map(|p| p.wanted(t)).collect();
@@ -274,7 +264,7 @@ fn shape_block<T: Real>(
         for row in wanted.chunk_by(|a, b| (a.z, a.y) == (b.z, b.y)) {
             let (z, y) = (row[0].z, row[0].y);
             for x in joined(row) {
-                deriver.row(block, &ready, z, y, x.clone(), Need { extras: true, ..Need::default() }, &mut scratch);
+                deriver.row(block, &ready, z, y, x.clone(), need, &mut scratch);
                 for p in open {
                     p.deliver(t, z, y, &x, &scratch.rows);
                 }
