@@ -2,7 +2,7 @@
 
 use divan::Bencher;
 use ropewalk::base::observe::Silent;
-use ropewalk::math::diff::{AxisStencil, difference};
+use ropewalk::math::diff::{AxisStencil, Pick, RowScratch, Scheme, Support, difference};
 use ropewalk::math::isosurface::isosurface;
 use ropewalk::math::stats::{Cosine, row_sum};
 use ropewalk::math::surface::measure;
@@ -24,22 +24,25 @@ fn row() -> Vec<f32> {
     (0..N).map(|i| (i as f32 * 0.37).sin()).collect()
 }
 
-#[divan::bench]
-fn derivative_across_rows(bencher: Bencher) {
+const CENTRAL: [Scheme; 4] = [Scheme::Fd2, Scheme::Fd4, Scheme::Fd6, Scheme::Fd8];
+
+#[divan::bench(args = CENTRAL)]
+fn derivative_across_rows(bencher: Bencher, scheme: Scheme) {
     let r = row();
-    let s = AxisStencil::<f32>::new(N, 0.1, true);
+    let s = AxisStencil::<f32>::new(scheme, N, 0.1, true);
+    let Support::Central { weights, terms } = s.support(0, Pick::Scheme) else { panic!("a periodic axis is central") };
     let mut out = vec![0.0; N];
     bencher
         .counter(divan::counter::ItemsCount::new(N))
-        .bench_local(|| difference(&mut out, [&r, &r, &r, &r], [&r, &r, &r, &r], &s.central));
+        .bench_local(|| difference(&mut out, [&r, &r, &r, &r], [&r, &r, &r, &r], weights, terms));
 }
 
-#[divan::bench]
-fn derivative_along_row(bencher: Bencher) {
+#[divan::bench(args = [Scheme::Fd8, Scheme::Spectral])]
+fn derivative_along_row(bencher: Bencher, scheme: Scheme) {
     let r = row();
-    let s = AxisStencil::<f32>::new(N, 0.1, true);
-    let (mut out, mut padded) = (vec![0.0; N], Vec::new());
-    bencher.counter(divan::counter::ItemsCount::new(N)).bench_local(|| s.along(&r, 0..N, &mut padded, &mut out));
+    let s = AxisStencil::<f32>::new(scheme, N, 0.1, true);
+    let (mut out, mut scratch) = (vec![0.0; N], RowScratch::default());
+    bencher.counter(divan::counter::ItemsCount::new(N)).bench_local(|| s.along(Pick::Scheme, &r, 0..N, &mut scratch, &mut out));
 }
 
 #[divan::bench]

@@ -36,6 +36,28 @@ pub fn pair<T: Real>(a: &[Vec<T>; 3], b: &[Vec<T>; 3], cosine: &mut Vec<T>, squa
     }
 }
 
+/// |a×b| / |a||b|, 0 where a vector is zero.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
+pub fn sine<T: Real>(a: &[Vec<T>; 3], b: &[Vec<T>; 3], out: &mut Vec<T>) {
+    let n = a[0].len();
+    let [ax, ay, az] = [&a[0][..n], &a[1][..n], &a[2][..n]];
+    let [bx, by, bz] = [&b[0][..n], &b[1][..n], &b[2][..n]];
+    let one = T::of(1.0);
+    out.resize(n, T::ZERO);
+    let out = &mut out[..n];
+    for i in 0..n {
+        let cx = ay[i] * bz[i] - az[i] * by[i];
+        let cy = az[i] * bx[i] - ax[i] * bz[i];
+        let cz = ax[i] * by[i] - ay[i] * bx[i];
+        let aa = ax[i] * ax[i] + ay[i] * ay[i] + az[i] * az[i];
+        let bb = bx[i] * bx[i] + by[i] * by[i] + bz[i] * bz[i];
+        let lengths = aa.sqrt() * bb.sqrt();
+        let cross = (cx * cx + cy * cy + cz * cz).sqrt();
+        // Rounding may leave it above 1.
+        out[i] = if lengths > T::ZERO { (cross / lengths).lesser(one) } else { T::ZERO };
+    }
+}
+
 /// a·b along one row.
 pub fn dot<T: Real>(a: &[Vec<T>; 3], b: &[Vec<T>; 3], out: &mut Vec<T>) {
     out.clear();
@@ -57,5 +79,8 @@ mod tests {
         assert!(c[2].is_nan());
         assert_eq!((x[0], p[0]), (9.0, 9.0));
         assert_eq!(x[1], 0.0);
+        let mut s = Vec::new();
+        sine(&a, &b, &mut s);
+        assert_eq!(s, [1.0, 0.0, 0.0]);
     }
 }

@@ -1,142 +1,127 @@
-//! The nine derivatives of a vector field along one row.
+//! Derivatives of the components of a block along one row.
 
 use std::ops::Range;
 
 use crate::base::real::Real;
-use crate::math::diff::{AxisStencil, HALF, Support, WIDTH, difference, weighted};
+use crate::derive::lines::{Prepared, ZLines};
+use crate::math::diff::{AxisStencil, HALF, Pick, RowScratch, Support, WIDTH, difference, weighted};
 use crate::space::slab::Block;
 
-/// Derivatives of one row: `d[i][a]` is the derivative of component i along axis a.
+/// Derivatives of one row of a vector: `d[i][a]` is the derivative of component i along axis a.
 pub struct Gradient<T> {
     pub d: [[Vec<T>; 3]; 3],
-    padded: Vec<T>,
+}
+
+impl<T> Default for Gradient<T> {
+    fn default() -> Self {
+        Gradient { d: Default::default() }
+    }
+}
+
+/// Buffers of one worker.
+pub struct Buffers<T> {
+    row: RowScratch<T>,
     other: Vec<T>,
 }
 
-impl<T: Real> Default for Gradient<T> {
+impl<T: Real> Default for Buffers<T> {
     fn default() -> Self {
-        Gradient { d: Default::default(), padded: Vec::new(), other: Vec::new() }
+        Buffers { row: RowScratch::default(), other: Vec::new() }
     }
 }
 
-/// The row (y, z) of a component, with its neighbours reachable by offset.
-struct At<'a, 'b, T> {
-    block: &'b Block<'a, T>,
-    component: usize,
-    z: usize,
-    y: usize,
-    /// The positions wanted along the row.
-    x: &'b Range<usize>,
-    nx: usize,
-    ny: usize,
+/// The positions `x` of row (y, z), and all that their derivatives are made from.
+pub struct Place<'a, T> {
+    pub stencils: &'a [AxisStencil<T>; 3],
+    pub block: &'a Block<'a, T>,
+    pub ready: &'a Prepared<T>,
+    pub z_lines: Option<&'a ZLines<T>>,
+    pub z: usize,
+    pub y: usize,
+    pub x: &'a Range<usize>,
+    pub nx: usize,
+    pub ny: usize,
 }
 
-impl<'a, T: Real> At<'a, '_, T> {
-    /// The whole row.
-    fn here(&self) -> &'a [T] {
-        &self.block.plane(self.component, self.z as isize)[self.y * self.nx..(self.y + 1) * self.nx]
+impl<'a, T: Real> Place<'a, T> {
+    /// The wanted positions of row `y` of a plane.
+    fn part(&self, plane: &'a [T], y: usize) -> &'a [T] {
+        &plane[y * self.nx + self.x.start..y * self.nx + self.x.end]
     }
 
-    /// The wanted positions of another row.
-    fn row_of(&self, z: isize, y: usize) -> &'a [T] {
-        &self.block.plane(self.component, z)[y * self.nx + self.x.start..y * self.nx + self.x.end]
+    /// The values of a component.
+    pub fn values(&self, component: usize) -> &'a [T] {
+        self.part(self.block.plane(component, self.z as isize), self.y)
     }
 
-    fn row_y(&self, offset: isize) -> &'a [T] {
-        let y = (self.y as isize + offset).rem_euclid(self.ny as isize) as usize;
-        self.row_of(self.z as isize, y)
-    }
-
-    fn along_y(&self, stencil: &AxisStencil<T>, central: &[T; HALF], out: &mut [T]) {
-        match stencil.support(self.y) {
-            Support::Central => difference(
-                out,
-                std::array::from_fn(|k| self.row_y(-(k as isize) - 1)),
-                std::array::from_fn(|k| self.row_y(k as isize + 1)),
-                central,
-            ),
-            Support::Window { first, weights } => {
-                let rows: [&[T]; WIDTH] = std::array::from_fn(|k| self.row_of(self.z as isize, first + k));
-                weighted(out, rows, weights);
+    /// The derivative of a component along an axis.
+    pub fn along(&self, component: usize, axis: usize, pick: Pick, buffers: &mut Buffers<T>, out: &mut Vec<T>) {
+        out.resize(self.x.len(), T::ZERO);
+        let stencil = &self.stencils[axis];
+        let plane = |z: isize| self.block.plane(component, z);
+        match axis {
+            0 => {
+                let whole = &plane(self.z as isize)[self.y * self.nx..(self.y + 1) * self.nx];
+                stencil.along(pick, whole, self.x.clone(), &mut buffers.row, out);
             }
+            1 => {
+                let here = plane(self.z as isize);
+                let wrapped = |y: isize| self.part(here, y.rem_euclid(self.ny as isize) as usize);
+                match stencil.support(self.y, pick) {
+                    Support::Line => out.copy_from_slice(self.part(self.ready.along_y(component, self.z), self.y)),
+                    support => across(support, self.y, wrapped, out),
+                }
+            }
+            _ => match (stencil.support(self.z, pick), self.z_lines) {
+                (Support::Line, Some(lines)) => out.copy_from_slice(self.part(lines.plane(component, self.z), self.y)),
+                (Support::Line, None) => panic!("transforms along z need the lines of the whole box"),
+                (support, _) => across(support, self.z, |z| self.part(plane(z), self.y), out),
+            },
         }
     }
 
-    fn along_z(&self, stencil: &AxisStencil<T>, central: &[T; HALF], out: &mut [T]) {
-        let z = self.z as isize;
-        match stencil.support(self.z) {
-            Support::Central => difference(
-                out,
-                std::array::from_fn(|k| self.row_of(z - 1 - k as isize, self.y)),
-                std::array::from_fn(|k| self.row_of(z + 1 + k as isize, self.y)),
-                central,
-            ),
-            Support::Window { first, weights } => {
-                let rows: [&[T]; WIDTH] = std::array::from_fn(|k| self.row_of((first + k) as isize, self.y));
-                weighted(out, rows, weights);
-            }
-        }
-    }
-}
-
-impl<T: Real> Gradient<T> {
-    /// The derivatives of the vector whose first component is `component`: all nine, or without `diagonal` the six of the curl.
-    pub fn row(
-        &mut self,
-        s: &[AxisStencil<T>; 3],
-        block: &Block<'_, T>,
-        component: usize,
-        z: usize,
-        y: usize,
-        x: &Range<usize>,
-        ny: usize,
-        diagonal: bool,
-    ) {
+    /// The derivatives of the vector whose first component is `first`: all nine, or without `diagonal` the six of the curl.
+    pub fn gradient(&self, first: usize, diagonal: bool, buffers: &mut Buffers<T>, out: &mut Gradient<T>) {
         for c in 0..3 {
-            let nx = block.plane(component + c, z as isize).len() / ny;
-            let at = At { block, component: component + c, z, y, x, nx, ny };
-            for a in 0..3 {
-                self.d[c][a].resize(x.len(), T::ZERO);
+            for a in (0..3).filter(|&a| a != c || diagonal) {
+                self.along(first + c, a, Pick::Scheme, buffers, &mut out.d[c][a]);
             }
-            let [dx, dy, dz] = &mut self.d[c];
-            if c != 0 || diagonal {
-                s[0].along(at.here(), at.x.clone(), &mut self.padded, dx);
-            }
-            if c != 1 || diagonal {
-                at.along_y(&s[1], &s[1].central, dy);
-            }
-            if c != 2 || diagonal {
-                at.along_z(&s[2], &s[2].central, dz);
-            }
+            // The curl takes its length from here.
+            out.d[c][c].resize(self.x.len(), T::ZERO);
         }
     }
 
-    /// Divergence of order 8 minus that of order 6, zero where one-sided stencils are used. Call after [`Gradient::row`] for the same row.
-    pub fn divergence_miss(
-        &mut self,
-        s: &[AxisStencil<T>; 3],
-        block: &Block<'_, T>,
-        component: usize,
-        z: usize,
-        y: usize,
-        x: &Range<usize>,
-        ny: usize,
-        out: &mut Vec<T>,
-    ) {
+    /// Divergence by the scheme minus that by its comparison, from the gradient of the same row; zero where one-sided stencils are
+    /// used.
+    pub fn divergence_miss(&self, first: usize, gradient: &Gradient<T>, buffers: &mut Buffers<T>, out: &mut Vec<T>) {
         out.clear();
-        out.resize(x.len(), T::ZERO);
-        self.other.resize(x.len(), T::ZERO);
+        out.resize(self.x.len(), T::ZERO);
         for c in 0..3 {
-            let nx = block.plane(component + c, z as isize).len() / ny;
-            let at = At { block, component: component + c, z, y, x, nx, ny };
-            match c {
-                0 => s[0].along_with(&s[0].central6, at.here(), at.x.clone(), &mut self.padded, &mut self.other),
-                1 => at.along_y(&s[1], &s[1].central6, &mut self.other),
-                _ => at.along_z(&s[2], &s[2].central6, &mut self.other),
-            }
-            for (o, (a, b)) in out.iter_mut().zip(self.d[c][c].iter().zip(&self.other)) {
+            let mut other = std::mem::take(&mut buffers.other);
+            self.along(first + c, c, Pick::Comparison, buffers, &mut other);
+            for (o, (a, b)) in out.iter_mut().zip(gradient.d[c][c].iter().zip(&other)) {
                 *o += *a - *b;
             }
+            buffers.other = other;
         }
+    }
+}
+
+/// A derivative across rows: `row` gives the row at an index, beyond the ends of a periodic axis too.
+fn across<'a, T: Real>(support: Support<'_, T>, at: usize, row: impl Fn(isize) -> &'a [T], out: &mut [T]) {
+    match support {
+        Support::Central { weights, terms } => {
+            // Terms that do not count repeat the last one, so that no row outside is touched.
+            let offset = |k: usize| (k + 1).min(terms) as isize;
+            let minus: [&[T]; HALF] = std::array::from_fn(|k| row(at as isize - offset(k)));
+            let plus: [&[T]; HALF] = std::array::from_fn(|k| row(at as isize + offset(k)));
+            difference(out, minus, plus, weights, terms);
+        }
+        Support::Window { first, span, weights } => {
+            let rows: [&[T]; WIDTH] = std::array::from_fn(|k| row((first + k.min(span - 1)) as isize));
+            weighted(out, rows, weights, span);
+        }
+        Support::Nothing => out.fill(T::ZERO),
+        Support::Line => unreachable!("lines are derived before"),
     }
 }

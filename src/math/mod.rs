@@ -3,13 +3,16 @@
 pub mod contour;
 pub mod diff;
 pub mod disjoint;
+pub mod eigen;
 pub mod fft;
+pub mod fornberg;
 pub mod halfedge;
 mod isocubes;
 mod isomesher;
 pub mod isosurface;
 mod isotable;
 pub mod moments;
+pub mod scheme;
 pub mod stats;
 pub mod surface;
 mod unwrap;

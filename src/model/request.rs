@@ -3,6 +3,7 @@
 use std::fmt;
 
 use crate::base::error::{Error, Result};
+pub use crate::math::scheme::{SCHEMES, Scheme};
 pub use crate::model::family::{Extent, Family, Level, Side};
 pub use crate::model::indicator::{INDICATORS, Indicator};
 use crate::model::source::Fields;
@@ -15,45 +16,6 @@ pub enum Frame {
     Box,
     /// As stored.
     Stored,
-}
-
-/// How first derivatives are taken.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Scheme {
-    /// Central differences of order 2.
-    Fd2,
-    /// Central differences of order 4.
-    Fd4,
-    /// Central differences of order 6.
-    Fd6,
-    /// Central differences of order 8.
-    Fd8,
-    /// The nine-point stencil whose modified wavenumber is optimised.
-    Opt,
-    /// Exact on periodic axes (one-dimensional transforms), `Fd8` on open ones.
-    Spectral,
-}
-
-/// Every scheme with its name.
-pub const SCHEMES: [(&str, Scheme); 6] = [
-    ("fd2", Scheme::Fd2),
-    ("fd4", Scheme::Fd4),
-    ("fd6", Scheme::Fd6),
-    ("fd8", Scheme::Fd8),
-    ("opt", Scheme::Opt),
-    ("spectral", Scheme::Spectral),
-];
-
-impl Scheme {
-    /// Its name.
-    pub fn name(self) -> &'static str {
-        SCHEMES.iter().find(|(_, s)| *s == self).map_or("", |(n, _)| n)
-    }
-
-    /// The scheme of that name; `auto` is `fd8`.
-    pub fn named(name: &str) -> Option<Scheme> {
-        if name == "auto" { Some(Scheme::Fd8) } else { SCHEMES.iter().find(|(n, _)| *n == name).map(|(_, s)| *s) }
-    }
 }
 
 /// Shape of a low-pass filter.
@@ -299,14 +261,6 @@ mod tests {
         for text in ["", "sharp", "box 2", "sharp -1", "gaussian x"] {
             let message = Filter::parse(text).unwrap_err().to_string();
             assert!(message.contains("cannot read filter"), "{message}");
-        }
-    }
-
-    #[test]
-    fn schemes_have_names() {
-        assert_eq!(Scheme::named("auto"), Some(Scheme::Fd8));
-        for (name, scheme) in SCHEMES {
-            assert_eq!((Scheme::named(name), scheme.name()), (Some(scheme), name));
         }
     }
 }

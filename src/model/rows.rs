@@ -7,17 +7,19 @@ pub struct Need {
     pub strain: bool,
     /// The divergences.
     pub divergence: bool,
-    /// The difference between order 6 and 8 in the divergence, a measure of the truncation error.
+    /// The difference that the scheme's comparison makes in the divergence, a measure of the truncation error.
     pub truncation: bool,
     /// Cosines and squared cross products.
     pub alignment: bool,
     /// The indicators beside those of the families.
     pub extras: bool,
+    /// u, ω, b, j and the squares of the curls, where nothing else needs them.
+    pub vectors: bool,
 }
 
 /// Derived quantities of consecutive cells of one row, all arrays of one length. Vectors have one array a component (x, y, z).
 ///
-/// Arrays of a field that is not there stay empty.
+/// Arrays of a field that is not there, and of what neither [`Need`] nor an indicator asks for, are empty.
 #[derive(Debug, Clone, Default)]
 pub struct Rows<T> {
     /// Velocity in the chosen frame.
@@ -30,7 +32,7 @@ pub struct Rows<T> {
     pub strain2: Vec<T>,
     /// ∇·u.
     pub div_u: Vec<T>,
-    /// Order 8 minus order 6 of ∇·u.
+    /// ∇·u by the scheme minus that by its comparison (order 6 for order 8).
     pub div_u_miss: Vec<T>,
     /// Magnetic field.
     pub b: [Vec<T>; 3],
@@ -40,7 +42,7 @@ pub struct Rows<T> {
     pub j2: Vec<T>,
     /// ∇·b.
     pub div_b: Vec<T>,
-    /// Order 8 minus order 6 of ∇·b.
+    /// ∇·b by the scheme minus that by its comparison.
     pub div_b_miss: Vec<T>,
     /// cos(u, ω), NaN where undefined.
     pub cos_uw: Vec<T>,

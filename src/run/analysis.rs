@@ -216,7 +216,8 @@ fn typed<T: Real>(
         let oversized = shapes.iter().filter(|s| s.is_none()).count() as u64;
         results.push(summed(family, criterion, detected, rows, oversized, &survey, &alignment));
     }
-    let warnings = warnings(&divergence, &results, fields, request);
+    let mut warnings = warnings(&divergence, &results, fields, request);
+    warnings.splice(0..0, deriver.fallbacks().iter().cloned());
     for w in &warnings {
         observe.warning(&format!("{}: {w}", snapshot.name));
     }

@@ -24,6 +24,11 @@ use crate::space::slab::Block;
 use crate::survey::scan::{self, ScanSum};
 use crate::survey::{box_alignment, moments};
 
+/// What every row of the survey needs; sampled ones the truncation as well.
+const SURVEY: Need = Need { strain: true, divergence: true, truncation: false, alignment: false, extras: false, vectors: false };
+/// What every row of the detection needs.
+const DETECTION: Need = Need { strain: true, divergence: false, truncation: false, alignment: true, extras: false, vectors: false };
+
 /// Everything a pass needs besides its own request.
 pub struct Pass<'a, T> {
     /// The planes.
@@ -86,7 +91,7 @@ impl<T: Real> Pass<'_, T> {
                 }
             }
             let Some(deriver) = deriver.filter(|_| sound) else { return Ok(()) };
-            let ready = deriver.prepare(block);
+            let ready = deriver.prepare(block, Need { truncation: true, extras: companions > 0, ..SURVEY });
             let parts = par::map(&tiles, |_, rows_y| {
                 let mut counts = take(&quantiles).unwrap_or_else(|| wanted.iter().map(|w| w.then(Quantiles::default)).collect());
                 let mut scratch = Scratch::default();
@@ -97,15 +102,8 @@ impl<T: Real> Pass<'_, T> {
                         let mut part = moments::empty(families, companions);
                         for y in rows_y.clone() {
                             let sampled = y % moments::SAMPLE_ROWS == 0;
-                            deriver.row(
-                                block,
-                                &ready,
-                                z,
-                                y,
-                                0..grid.n[0],
-                                Need { strain: true, divergence: true, truncation: sampled, extras: companions > 0, ..Need::default() },
-                                &mut scratch,
-                            );
+                            let need = Need { truncation: sampled, extras: companions > 0, ..SURVEY };
+                            deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);
                             grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
                             moments::add_row(&mut part, &scratch.rows, sampled);
                             for (q, row) in counts.iter_mut().zip(&scratch.rows.indicators) {
@@ -152,7 +150,7 @@ impl<T: Real> Pass<'_, T> {
         let tiles = self.tiles();
         self.observe.stage("detection", grid.n[2] as u64);
         let mut labellers: Vec<Labeller> = criteria.iter().map(|c| Labeller::new(grid.clone(), c.clone())).collect();
-        let companions = criteria.first().is_some_and(|c| !c.scales.extras.is_empty());
+        let need = Need { extras: criteria.first().is_some_and(|c| !c.scales.extras.is_empty()), ..DETECTION };
         let mut whole = Alignment::default();
         blocks(
             self.source,
@@ -162,7 +160,7 @@ impl<T: Real> Pass<'_, T> {
             self.buffers,
             self.observe,
             |block| {
-                let ready = deriver.prepare(block);
+                let ready = deriver.prepare(block, need);
                 let parts = par::map(&tiles, |_, rows_y| {
                     let mut scratch = Scratch::default();
                     let mut sweeps: Vec<TileSweep> =
@@ -173,15 +171,7 @@ impl<T: Real> Pass<'_, T> {
                         .map(|z| {
                             let mut part = Alignment::default();
                             for y in rows_y.clone() {
-                                deriver.row(
-                                    block,
-                                    &ready,
-                                    z,
-                                    y,
-                                    0..grid.n[0],
-                                    Need { strain: true, alignment: true, extras: companions, ..Need::default() },
-                                    &mut scratch,
-                                );
+                                deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);
                                 grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
                                 box_alignment::add_row(&mut part, &scratch.rows);
                                 for sweep in &mut sweeps {
@@ -279,7 +269,9 @@ fn shape_block<T: Real>(
         p.begin_block(block.z.clone(), tiles, &mut f.objects);
     }
     let open: &[Patches<T>] = patches;
-    let ready = deriver.prepare(block);
+    let meshes = plan.mesh_cells.is_some();
+    let need = Need { extras: meshes && !plan.mesh_extras.is_empty(), vectors: meshes, ..Need::default() };
+    let ready = deriver.prepare(block, need);
     par::map_range(tiles.len(), |t| {
         let mut scratch = Scratch::default();
         let mut wanted: Vec<Wanted> = open.iter().flat_map(|p| p.wanted(t)).collect();
@@ -287,7 +279,7 @@ fn shape_block<T: Real>(
         for row in wanted.chunk_by(|a, b| (a.z, a.y) == (b.z, b.y)) {
             let (z, y) = (row[0].z, row[0].y);
             for x in joined(row) {
-                deriver.row(block, &ready, z, y, x.clone(), Need { extras: !plan.mesh_extras.is_empty(), ..Need::default() }, &mut scratch);
+                deriver.row(block, &ready, z, y, x.clone(), need, &mut scratch);
                 for p in open {
                     p.deliver(t, z, y, &x, &scratch.rows);
                 }

@@ -1,12 +1,12 @@
 //! A checked source and its survey: what has to be known before levels are settled.
 
 use std::ops::Range;
+use std::sync::Arc;
 
 use crate::base::error::{Error, Result};
 use crate::base::observe::Observe;
 use crate::base::real::Real;
-use crate::derive::{Deriver, Plan};
-use crate::math::diff::WIDTH;
+use crate::derive::{Deriver, Plan, ZLines, fewest_samples, filter, z_lines};
 use crate::model::request::{Family, Frame, Request};
 use crate::model::source::{Fields, MemorySource, PlaneSource};
 use crate::model::statistics::{Scan, Survey};
@@ -28,6 +28,10 @@ pub(super) struct Ready<T> {
     ranges: Vec<Range<usize>>,
     buffers: Buffers<T>,
     plan: Plan,
+    /// Derivatives along z of the whole box, where the scheme takes them line by line.
+    z_lines: Option<Arc<ZLines<T>>>,
+    /// Digest of what is stored, where something else is surveyed.
+    stored_digest: Option<String>,
 }
 
 impl<T: Real> Ready<T> {
@@ -42,13 +46,14 @@ impl<T: Real> Ready<T> {
         let grid = source.grid().clone();
         let fields = source.fields();
         let families = request.families_for(fields)?;
-        for a in (0..3).filter(|&a| !(a == 2 && grid.is_flat())) {
-            if grid.n[a] < WIDTH {
+        for (a, axis) in ["x", "y", "z"].iter().enumerate() {
+            let fewest = fewest_samples(request.scheme, &grid, a);
+            if grid.n[a] < fewest {
                 return Err(Error::input("cannot derive along an axis")
-                    .item(format!("{} axis {}", snapshot.name, ["x", "y", "z"][a]))
-                    .expected(format!("at least {WIDTH} samples"))
+                    .item(format!("{} axis {axis}", snapshot.name))
+                    .expected(format!("at least {fewest} samples"))
                     .found(grid.n[a].to_string())
-                    .hint("differences of order 8 read 9 samples"));
+                    .hint(format!("--derivative {} reads {fewest} samples", request.scheme.name())));
             }
         }
         let bytes = grid.cells() * fields.components() as u64 * size_of::<T>() as u64;
@@ -65,12 +70,25 @@ impl<T: Real> Ready<T> {
             viscosity: request.viscosity,
             resistivity: request.resistivity,
         };
-        Ok(Ready { source, grid, fields, families, ranges, buffers: Buffers::default(), plan })
+        let mut ready =
+            Ready { source, grid, fields, families, ranges, buffers: Buffers::default(), plan, z_lines: None, stored_digest: None };
+        if let Some(filter) = &request.filter {
+            filter::check(&ready.grid)?;
+            // Bad cells and the digest are those of what is stored.
+            let (scan, _) = ready.pass(observe).survey(None, true, &[], 0)?;
+            reject_bad_cells(&scan, snapshot)?;
+            ready.stored_digest = Some(scan.digest);
+            ready.source = Box::new(filter::filtered(&mut *ready.source, filter, observe)?);
+        }
+        if let Some(wanted) = ready.deriver([0.0; 3], None).wanted_z_lines() {
+            ready.z_lines = Some(Arc::new(z_lines(&mut *ready.source, &wanted, observe)?));
+        }
+        Ok(ready)
     }
 
     /// What derives rows from its planes.
     pub fn deriver(&self, frame: [f64; 3], mean_field: Option<[f64; 3]>) -> Deriver<T> {
-        Deriver::new(&self.grid, self.fields, Plan { frame, mean_field, ..self.plan.clone() })
+        Deriver::new(&self.grid, self.fields, Plan { frame, mean_field, ..self.plan.clone() }).with_z_lines(self.z_lines.clone())
     }
 
     /// A pass over the planes.
@@ -93,7 +111,7 @@ pub(super) fn surveyed<T: Real>(
     let moving =
         request.frame == Frame::Box && families.iter().map(|f| &f.indicator).chain(&request.companions).any(|i| i.depends_on_frame());
     let still = ready.deriver([0.0; 3], None);
-    let (scan, survey, frame) = if moving {
+    let (mut scan, survey, frame) = if moving {
         // The mean must be known before an indicator that depends on it is surveyed.
         let (scan, _) = ready.pass(observe).survey(None, true, &families, companions)?;
         reject_bad_cells(&scan, snapshot)?;
@@ -108,6 +126,9 @@ pub(super) fn surveyed<T: Real>(
         (scan, survey, frame)
     };
     reject_overflow::<T>(&survey_sums(&survey), snapshot)?;
+    if let Some(digest) = &ready.stored_digest {
+        scan.digest.clone_from(digest);
+    }
     Ok((scan, survey, frame))
 }
 

@@ -144,7 +144,7 @@ pub fn blocks<T: Real>(
 mod tests {
     use super::*;
     use crate::base::observe::Silent;
-    use crate::math::diff::{AxisStencil, HALF};
+    use crate::math::diff::{AxisStencil, HALF, Scheme};
     use crate::model::source::{Fields, MemorySource};
 
     fn source(n: [usize; 3], periodic: bool) -> MemorySource<f64> {
@@ -161,7 +161,7 @@ mod tests {
             for thickness in [1, 2, 3, 5, 7, 11, 64] {
                 let n = 11;
                 let mut s = source([9, 9, n], periodic);
-                let stencil = AxisStencil::<f64>::new(n, 1.0, periodic);
+                let stencil = AxisStencil::<f64>::new(Scheme::Fd8, n, 1.0, periodic);
                 let reach =
                     |z: Range<usize>| z.map(|k| stencil.reach(k)).fold((isize::MAX, isize::MIN), |a, b| (a.0.min(b.0), a.1.max(b.1)));
                 let mut seen = Vec::new();

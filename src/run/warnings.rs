@@ -16,6 +16,9 @@ fn six_digits(v: f64) -> String {
 pub fn warnings(divergence: &[Divergence; 2], families: &[FamilyResult], fields: Fields, request: &Request) -> Vec<String> {
     let mut out = Vec::new();
     for (d, name) in divergence.iter().zip(["velocity", "magnetic field"]) {
+        if fields.compressible && name == "velocity" {
+            continue;
+        }
         if let (true, Some(r), Some(e)) = (d.is_suspicious(), d.ratio, d.explained) {
             out.push(format!(
                 "the {name} is not divergence-free: rms(div)/rms(curl) = {r:.2e}, truncation and round-off of the differences explain {e:.2e}; \

@@ -1,0 +1,3 @@
+//! Derivatives and derived quantities against exact flows, defining sums and closed forms.
+
+mod lines;
