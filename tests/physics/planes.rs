@@ -90,7 +90,7 @@ fn a_disc_has_its_area_and_contour() {
                 d - 2.0 * (d / 2.0).round()
             });
             let r = d[0].hypot(d[1]);
-            near(r, radius, 1.0 / (n * n) as f64, "vertex");
+            near(r, radius, 2.0 / (n * n) as f64, "vertex");
             assert!((d[0] * f64::from(normal[0]) + d[1] * f64::from(normal[1])) / r > 0.99, "normals point outwards");
         }
         assert!(mesh.positions.iter().all(|p| p[2] == 0.0));
@@ -110,7 +110,7 @@ fn holes_stripes_cuts_and_corners() {
     assert_eq!((number(ring.only(0), Col::Euler), text(ring.only(0), Col::Wraps)), (0.0, ""));
     let stripe = of(&g, TwentySix, &|p| (2.0 - (p[1] - 2.0).abs() / 0.5).max(0.0));
     let row = stripe.only(0);
-    assert_eq!((text(row, Col::Wraps), text(row, Col::Class)), ("x", "filament"));
+    assert_eq!((text(row, Col::Wraps), text(row, Col::Class)), ("x", "sheet"));
     near(number(row, Col::Perimeter), 12.0, 1e-6, "two straight lines");
     missing(row, &[Col::Extent1, Col::CentroidX]);
     let open = g.clone().with_periodic([false, false, false]);
