@@ -1,40 +1,43 @@
-//! HDF5 files: finding the datasets, reading their headers and blocks of values, time.
+//! HDF5 files: finding the datasets, reading their headers and blocks of values.
 
 use std::fs;
-use std::path::Path;
+use std::path::{Path, PathBuf};
 
 use ::hdf5::dataset::Layout;
 use ::hdf5::types::{FloatSize, TypeDescriptor};
-use ::hdf5::{Dataset, Datatype, File, Group, H5Type, Hyperslab, Location, LocationType, SliceOrIndex};
+use ::hdf5::{Dataset, Datatype, File, H5Type, Hyperslab, SliceOrIndex};
 use ndarray::IxDyn;
 
 use crate::base::error::{Error, Result};
 use crate::read::arrange::arrange;
-use crate::read::header::{Header, Precision, shape_text, wrong_type};
-use crate::read::names::{GUESSES, HINT, choose};
+use crate::read::coordinates::{self, Coordinates};
+use crate::read::header::{Header, Precision, wrong_type};
+use crate::read::names::{GUESSES, HINT, PLACE, choose, has_place, has_vector};
 use crate::read::order::{Axes, Order};
 use crate::read::raw::RawArray;
-use crate::read::source::{Array, Arrays, Store, fields_of};
+use crate::read::shelf::{Shelf, condense, find, number, open_file};
+use crate::read::source::{Array, Arrays, Store};
 use crate::read::spec::InputSpec;
+use crate::read::time::FoundTime;
 
 /// Bytes all chunk caches of a snapshot may take together.
 const CACHE_LIMIT: usize = 512 << 20;
 /// The library's own default, below which nothing is gained.
 const CACHE_LEAST: usize = 1 << 20;
-/// Most datasets named in a message, and how deep groups are searched for them.
-const LISTED: usize = 12;
-const DEEPEST: usize = 8;
 
 /// A dataset read through the library: chunked, filtered, or not in native byte order.
 pub(super) struct ChunkedArray {
     header: Header,
     dataset: Dataset,
+    /// An axis that the dataset does not have.
+    put_in: Option<usize>,
 }
 
 impl ChunkedArray {
     /// Reads `count` values from `start` along every axis into `out`, slowest axis first.
     pub fn read_block<T: H5Type + Copy>(&self, start: &[usize], count: &[usize], out: &mut [T]) -> Result<()> {
-        let slices: Vec<SliceOrIndex> = start.iter().zip(count).map(|(&s, &c)| (s..s + c).into()).collect();
+        let axes = (0..start.len()).filter(|&a| Some(a) != self.put_in);
+        let slices: Vec<SliceOrIndex> = axes.map(|a| (start[a]..start[a] + count[a]).into()).collect();
         let values = self
             .dataset
             .read_slice::<T, _, IxDyn>(Hyperslab::from(slices))
@@ -44,60 +47,72 @@ impl ChunkedArray {
     }
 }
 
-/// Opens the file, checks its datasets and readies them for reading.
-pub(super) fn open(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays> {
-    super::superblock::check(path)?;
-    let refused = |e: ::hdf5::Error| {
-        let found = condense(&e);
-        let locked = found.contains("unable to lock file");
-        let error = Error::input("cannot read the HDF5 file").at(path).found(found);
-        if locked { error.hint("a program is writing it, or its file system has no locks: see HDF5_USE_FILE_LOCKING") } else { error }
-    };
-    let file = File::open(path).map_err(refused)?;
-    let choices = choose(spec, |name| file.dataset(name).ok().map(|d| d.ndim())).map_err(|e| e.at(path))?;
-    if choices.is_empty() {
-        return Err(Error::input("cannot find a velocity or magnetic field")
-            .at(path)
-            .expected(format!("{GUESSES} in the root group"))
-            .found(listing(&file))
-            .hint(HINT));
+/// Opens the file or files, checks their datasets and readies them for reading.
+pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &Order) -> Result<Arrays> {
+    let shelf = Shelf::new(path, group)?;
+    let choices = choose(spec, |name| shelf.shape(name)).map_err(|e| e.at(path))?;
+    if !has_vector(&choices) {
+        let error = Error::input("cannot find a velocity or magnetic field").at(path).hint(HINT);
+        return Err(if has_place(path) {
+            error.expected(format!("files with {GUESSES} in place of {PLACE}")).found("none of them")
+        } else {
+            let place = group.map_or("the root group".into(), |g| format!("/{}", g.trim_matches('/')));
+            error.expected(format!("{GUESSES} in {place}")).found(shelf.listing()?)
+        });
     }
-    let names: Vec<String> = choices.iter().flat_map(|(_, names)| names).map(|n| rooted(n)).collect();
+    let mut places: Vec<(PathBuf, String)> = Vec::new();
     let mut datasets = Vec::new();
     let mut headers = Vec::new();
-    for name in &names {
-        let dataset = find(&file, path, name)?;
-        headers.push(header(path, name, &dataset)?);
-        datasets.push(dataset);
+    for (field, names) in &choices {
+        let single = names.len() > 1 || !field.is_vector();
+        for name in names {
+            let (file, item) = shelf.place(name, if single { 2..=3 } else { 3..=4 })?;
+            let dataset = find(&shelf.file(&file)?, &file, &item)?;
+            headers.push(header(&file, &item, &dataset)?);
+            datasets.push(dataset);
+            places.push((file, item));
+        }
     }
-    let arrangement = arrange(&choices, &headers, &order)?;
-    let time = time_of(&file).or_else(|| time_of(&datasets[0]));
-    let plans: Vec<Plan> = datasets.iter().zip(&arrangement.axes).map(|(d, axes)| Plan::new(path, d, axes)).collect();
+    let arrangement = arrange(&choices, &headers, order)?;
+    let time = times(&shelf, spec, &places[0], &datasets[0]);
+    let coordinates = coordinates_of(&shelf, spec)?;
+    let plans: Vec<Plan> = places.iter().zip(&datasets).zip(&arrangement.axes).map(|((p, d), axes)| Plan::new(&p.0, d, axes)).collect();
 
     // The chunk cache is settled when a file is opened first: let go of everything, then open again.
     let cached: Vec<&Plan> = plans.iter().filter(|p| p.layer_chunks > 0).collect();
-    let file = if cached.is_empty() {
-        file
-    } else {
+    let cache = (!cached.is_empty()).then(|| {
         let share = CACHE_LIMIT / cached.len();
         let bytes = cached.iter().map(|p| p.layer_bytes).max().unwrap_or(0).clamp(CACHE_LEAST, share);
         // A prime well above the number of chunks held keeps them from evicting each other.
         let slots = if cached.iter().all(|p| p.layer_chunks < 1242) { 12_421 } else { 1_000_003 };
-        drop((datasets, file));
-        File::with_options().with_fapl(|p| p.chunk_cache(slots, bytes, 1.0)).open(path).map_err(refused)?
-    };
+        (slots, bytes)
+    });
+    drop((datasets, shelf));
+    let mut files: Vec<(PathBuf, File)> = Vec::new();
     let mut arrays = Vec::new();
-    for (((header, axes), plan), name) in headers.into_iter().zip(arrangement.axes).zip(plans).zip(&names) {
+    for (((header, axes), plan), (path, item)) in headers.into_iter().zip(arrangement.axes).zip(plans).zip(places) {
+        let header = Header { shape: axes.full(&header.shape), ..header };
         let store = match plan.offset {
             Some(offset) => {
-                let plain = fs::File::open(path).map_err(|e| header.fault("cannot open the file").found(e.to_string()))?;
+                let plain = fs::File::open(&path).map_err(|e| header.fault("cannot open the file").found(e.to_string()))?;
                 Store::Raw(RawArray::new(header.clone(), plain, offset, cfg!(target_endian = "big")))
             }
-            None => Store::Library(ChunkedArray { header: header.clone(), dataset: find(&file, path, name)? }),
+            None => {
+                let file = match files.iter().find(|(p, _)| *p == path) {
+                    Some((_, file)) => file.clone(),
+                    None => {
+                        let file = open_file(&path, cache)?;
+                        files.push((path.clone(), file.clone()));
+                        file
+                    }
+                };
+                Store::Library(ChunkedArray { header: header.clone(), dataset: find(&file, &path, &item)?, put_in: axes.put_in })
+            }
         };
         arrays.push(Array { header, axes, store, depth: plan.depth, filtered: plan.filtered });
     }
-    Ok(Arrays { arrays, fields: fields_of(choices.iter().map(|c| c.0)), samples: arrangement.samples, time })
+    let arrays = Arrays::new(arrays, arrangement.slots, arrangement.samples);
+    Ok(Arrays { time, coordinates, ..arrays })
 }
 
 /// How a dataset is best read.
@@ -114,7 +129,7 @@ struct Plan {
 
 impl Plan {
     fn new(path: &Path, dataset: &Dataset, axes: &Axes) -> Plan {
-        let shape = dataset.shape();
+        let shape = axes.full(&dataset.shape());
         let dtype = dataset.dtype().ok();
         let native = dtype.as_ref().is_some_and(|t| t.is::<f32>() || t.is::<f64>());
         // A link may lead into another file, whose bytes are not those of `path`.
@@ -123,6 +138,7 @@ impl Plan {
         let offset = dataset.offset().filter(|_| native && here && contiguous);
         let mut plan = Plan { offset, depth: 1, filtered: !dataset.filters().is_empty(), layer_chunks: 0, layer_bytes: 0 };
         if let Some(chunk) = dataset.chunk() {
+            let chunk = axes.full(&chunk);
             let z = axes.space[2];
             let others = (0..shape.len()).filter(|&a| a != z);
             plan.depth = chunk[z].clamp(1, shape[z]);
@@ -132,27 +148,6 @@ impl Plan {
         }
         plan
     }
-}
-
-fn rooted(name: &str) -> String {
-    format!("/{}", name.trim_matches('/'))
-}
-
-fn find(file: &File, path: &Path, name: &str) -> Result<Dataset> {
-    let fault = |what: &str| Error::input(what).at(path).item(name);
-    match file.loc_type_by_name(name) {
-        Ok(LocationType::Dataset) => {}
-        Ok(LocationType::Group) => {
-            return Err(fault("cannot use the dataset").expected("a dataset").found("a group").hint(HINT));
-        }
-        Ok(_) => {
-            return Err(fault("cannot use the dataset").expected("a dataset").found("another object").hint(HINT));
-        }
-        Err(_) => {
-            return Err(fault("cannot find the dataset").found(format!("only {}", listing(file))).hint(HINT));
-        }
-    }
-    file.dataset(name).map_err(|e| fault("cannot open the dataset").found(condense(&e)))
 }
 
 fn header(path: &Path, name: &str, dataset: &Dataset) -> Result<Header> {
@@ -182,56 +177,50 @@ fn precision(dtype: &Datatype) -> std::result::Result<Precision, String> {
     }
 }
 
-/// The attribute `time` or `t`, if it is one finite number.
-fn time_of(place: &Location) -> Option<f64> {
-    ["time", "t"].into_iter().find_map(|name| {
-        let attribute = place.attr(name).ok()?;
-        match attribute.read_raw::<f64>().ok()?.as_slice() {
-            [time] if time.is_finite() => Some(*time),
-            _ => None,
-        }
-    })
-}
-
-/// The datasets of a file with shapes and types, for messages.
-fn listing(file: &File) -> String {
-    let mut found = Vec::new();
-    list(file, "", 0, &mut found);
-    if found.is_empty() {
-        return "no dataset".into();
-    }
-    if found.len() > LISTED {
-        found.truncate(LISTED);
-        found.push("and more".into());
-    }
-    found.join(", ")
-}
-
-fn list(group: &Group, prefix: &str, depth: usize, found: &mut Vec<String>) {
-    for name in group.member_names().unwrap_or_default() {
-        // Links can form rings: both the depth and the number are limited.
-        if found.len() > LISTED {
-            return;
-        }
-        let full = format!("{prefix}/{name}");
-        match group.loc_type_by_name(&name) {
-            Ok(LocationType::Dataset) => {
-                if let Ok(dataset) = group.dataset(&name) {
-                    found.push(format!("{full} {}", shape_text(&dataset.shape())));
-                }
-            }
-            Ok(LocationType::Group) if depth < DEEPEST => {
-                if let Ok(inner) = group.group(&name) {
-                    list(&inner, &full, depth + 1, found);
-                }
-            }
-            _ => {}
-        }
+/// The times that the places named and the usual ones hold. Attributes are those of the step's group, the root group or the first
+/// dataset.
+fn times(shelf: &Shelf, spec: &InputSpec, first: &(PathBuf, String), dataset: &Dataset) -> FoundTime {
+    let Ok(file) = shelf.file(&first.0) else { return FoundTime::default() };
+    let group = shelf.group().and_then(|g| file.group(g).ok());
+    let attribute = |name: &str| {
+        let step = group.as_ref().and_then(|g| number(g, name));
+        step.or_else(|| number(&file, name)).or_else(|| number(dataset, name))
+    };
+    // Of the usual names each place is asked for both before the next place is.
+    let usual = |place: &::hdf5::Location| ["time", "t"].into_iter().find_map(|name| number(place, name));
+    let held = |name: &String| {
+        let values = file.dataset(&shelf.rooted(name)).ok()?.read_raw::<f64>().ok()?;
+        if let [time] = values[..] { Some(time).filter(|t| t.is_finite()) } else { None }
+    };
+    FoundTime {
+        attribute: spec.time.attribute.as_ref().and_then(|name| attribute(name)),
+        dataset: spec.time.dataset.as_ref().and_then(held),
+        usual: group.as_ref().and_then(|g| usual(g)).or_else(|| usual(&file)).or_else(|| usual(dataset)),
     }
 }
 
-/// The innermost, most telling line of the library's stack of messages.
-fn condense(error: &::hdf5::Error) -> String {
-    let text = error.stack().and_then(|s| s.last().map(|f| f.desc().to_owned())).unwrap_or_else(|| error.to_string());
-    text.lines().map(str::trim).collect::<Vec<_>>().join(" ")
+/// The coordinates named: datasets of the file, else files beside it.
+fn coordinates_of(shelf: &Shelf, spec: &InputSpec) -> Result<[Option<Coordinates>; 3]> {
+    let mut out = [None, None, None];
+    for (slot, name) in out.iter_mut().zip(&spec.coordinates) {
+        let Some(name) = name else { continue };
+        let path = shelf.some_path()?;
+        let file = shelf.file(&path)?;
+        let item = shelf.rooted(name);
+        let folder = path.parent().unwrap_or(Path::new(""));
+        if file.dataset(&item).is_err() && folder.join(name).is_file() {
+            *slot = Some(coordinates::beside(folder, name)?);
+            continue;
+        }
+        let dataset = find(&file, &path, &item)?;
+        let fault = || Error::input("cannot use the coordinates").at(&path).item(&item);
+        if dataset.ndim() != 1 {
+            let shape = crate::read::header::shape_text(&dataset.shape());
+            return Err(fault().expected("a dataset with one axis").found(shape));
+        }
+        let values = dataset.read_raw::<f64>().map_err(|e| fault().expected("numbers").found(condense(&e)))?;
+        let single = dataset.dtype().is_ok_and(|t| t.size() <= 4);
+        *slot = Some(Coordinates { values, single, path, item: Some(item) });
+    }
+    Ok(out)
 }

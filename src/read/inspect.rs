@@ -1,9 +1,14 @@
 //! What a file holds, and a guess at how it is to be read.
 
+use std::f64::consts::TAU;
+use std::fs;
+use std::io::{ErrorKind, Read};
 use std::path::{Path, PathBuf};
 
 use crate::base::error::{Error, Result};
+use crate::read::contents::{self, Inside};
 use crate::read::spec::InputSpec;
+use crate::read::{guess, guess_raw, superblock};
 
 /// One array or dataset.
 #[derive(Debug, Clone, PartialEq)]
@@ -43,10 +48,83 @@ pub struct Contents {
     pub time: Option<f64>,
 }
 
-/// Looks into a file without reading values beyond headers, attributes and coordinates.
+/// Looks into a file without reading values beyond headers, attributes and single numbers.
+///
+/// A folder is read as `.npy` files; a file that is neither HDF5 nor `.npy` as one without a header, of which only cubic shapes are
+/// guessed.
 ///
 /// # Errors
 /// `Input` when it cannot be read.
 pub fn inspect(path: &Path) -> Result<Contents> {
-    Err(Error::internal("not there yet").at(path))
+    let there = fs::metadata(path).map_err(|e| {
+        let error = Error::input("cannot look into the file").at(path);
+        if e.kind() == ErrorKind::NotFound { error.found("nothing").hint("check the path") } else { error.found(e.to_string()) }
+    })?;
+    if there.is_dir() {
+        let inside = contents::npy(path)?;
+        let bytes = fs::read_dir(path).into_iter().flatten().flatten().filter_map(|e| e.metadata().ok()).map(|m| m.len()).sum();
+        return Ok(told(path, "folder of npy files", bytes, inside, None));
+    }
+    if !there.is_file() {
+        return Err(Error::input("cannot look into the file").at(path).expected("a file or a folder").found("a device or pipe"));
+    }
+    let bytes = there.len();
+    if path.extension().is_some_and(|e| e == "npy") {
+        let name = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
+        return Ok(told(path, "npy", bytes, contents::npy(path)?, Some(&name)));
+    }
+    match superblock::check(path) {
+        Ok(()) => Ok(told(path, "HDF5", bytes, contents::hdf5(path)?, None)),
+        Err(e) if bytes == 0 || begins_as_hdf5(path) => Err(e),
+        Err(_) => headerless(path, bytes),
+    }
+}
+
+fn begins_as_hdf5(path: &Path) -> bool {
+    let mut head = Vec::new();
+    let read = fs::File::open(path).and_then(|f| f.take(4).read_to_end(&mut head));
+    read.is_ok() && head == b"\x89HDF"
+}
+
+fn told(path: &Path, kind: &str, bytes: u64, inside: Inside, single: Option<&str>) -> Contents {
+    let guess = guess::guess(&inside, single);
+    Contents {
+        path: path.into(),
+        kind: kind.into(),
+        bytes,
+        attributes: inside.attributes.into_iter().map(|a| (a.name, a.text)).collect(),
+        items: inside.items,
+        steps: guess.steps,
+        guess: guess.spec,
+        reasons: guess.reasons,
+        time: guess.time,
+    }
+}
+
+/// A file without a header, or of another kind: only its size tells anything.
+fn headerless(path: &Path, bytes: u64) -> Result<Contents> {
+    let fits = guess_raw::fits(path, bytes)?;
+    let mut reasons: Vec<String> = fits.iter().map(|f| format!("its size fits {}", f.text())).collect();
+    let mut guess = InputSpec { lengths: Some([TAU; 3]), ..InputSpec::default() };
+    if let Some(first) = fits.into_iter().next() {
+        if first.components == 1 {
+            reasons.push("with one component a file, {field} stands for the component's name in the path".into());
+        }
+        guess.raw = Some(first.layout);
+        reasons.push("nothing tells the size of the box: 2 pi is assumed".into());
+    } else {
+        reasons.push("no cubic shape of float32 or float64 values has its size".into());
+    }
+    let kind = "no known header".into();
+    Ok(Contents {
+        path: path.into(),
+        kind,
+        bytes,
+        items: Vec::new(),
+        attributes: Vec::new(),
+        steps: Vec::new(),
+        guess,
+        reasons,
+        time: None,
+    })
 }

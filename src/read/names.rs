@@ -1,15 +1,24 @@
 //! Which arrays make up the fields: those named by the user, else the first complete set of usual names.
 
+use std::path::{Path, PathBuf};
+
 use crate::base::error::{Error, Result};
 use crate::read::spec::InputSpec;
 
-/// A vector field of a snapshot.
+/// What stands for a component's name in a path.
+pub(super) const PLACE: &str = "{field}";
+
+/// A field of a snapshot.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(super) enum Field {
     /// u, v, w.
     Velocity,
     /// bx, by, bz.
     Magnetic,
+    /// A scalar.
+    Buoyancy,
+    /// A scalar that is not delivered.
+    Density,
 }
 
 impl Field {
@@ -18,15 +27,34 @@ impl Field {
         match self {
             Field::Velocity => "--velocity",
             Field::Magnetic => "--magnetic",
+            Field::Buoyancy => "--buoyancy",
+            Field::Density => "--density",
         }
+    }
+
+    /// Its word in sentences.
+    pub fn word(self) -> &'static str {
+        match self {
+            Field::Velocity => "velocity",
+            Field::Magnetic => "magnetic field",
+            Field::Buoyancy => "buoyancy",
+            Field::Density => "density",
+        }
+    }
+
+    /// Whether it has components.
+    pub fn is_vector(self) -> bool {
+        matches!(self, Field::Velocity | Field::Magnetic)
     }
 }
 
-/// One field and the names of its arrays: three, or one with a component axis.
+/// One field and the names of its arrays: of a vector three (two on planes), or one with a component axis; of a scalar one.
 pub(super) type Choice = (Field, Vec<String>);
 
-const VELOCITY: [&[&str]; 4] = [&["u", "v", "w"], &["ux", "uy", "uz"], &["vx", "vy", "vz"], &["velocity"]];
-const MAGNETIC: [&[&str]; 3] = [&["bx", "by", "bz"], &["magnetic"], &["b"]];
+/// Usual names of the velocity, those tried first before the others.
+pub(super) const VELOCITY: [&[&str]; 4] = [&["u", "v", "w"], &["ux", "uy", "uz"], &["vx", "vy", "vz"], &["velocity"]];
+/// Usual names of the magnetic field.
+pub(super) const MAGNETIC: [&[&str]; 3] = [&["bx", "by", "bz"], &["magnetic"], &["b"]];
 
 /// The guesses as text for messages.
 pub(super) const GUESSES: &str = "u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by,bz | magnetic | b";
@@ -34,38 +62,83 @@ pub(super) const GUESSES: &str = "u,v,w | ux,uy,uz | vx,vy,vz | velocity | bx,by
 /// What to try when names do not fit.
 pub(super) const HINT: &str = "--velocity U,V,W or --magnetic BX,BY,BZ names them (or one name of an array with a component axis)";
 
-/// The fields to read, velocity first. `rank` tells the rank of an array of that name, if there is one.
+/// A path with the name of a component in its place.
+pub(super) fn with_name(path: &Path, name: &str) -> PathBuf {
+    PathBuf::from(path.to_string_lossy().replace(PLACE, name))
+}
+
+/// Whether a path has a place for the component's name.
+pub(super) fn has_place(path: &Path) -> bool {
+    path.to_string_lossy().contains(PLACE)
+}
+
+/// The fields to read, velocity first. `shape` tells the shape of an array of that name, if there is one.
 ///
-/// Empty when nothing is named and no usual name is there.
+/// Without velocity and magnetic field when neither is named and no usual name is there.
 ///
 /// # Errors
 /// `Input`, without the file, when most of a set is there but not all of it: reading on without that field would surprise.
-pub(super) fn choose(spec: &InputSpec, rank: impl Fn(&str) -> Option<usize>) -> Result<Vec<Choice>> {
-    let mut chosen = Vec::new();
+pub(super) fn choose(spec: &InputSpec, shape: impl Fn(&str) -> Option<Vec<usize>>) -> Result<Vec<Choice>> {
+    let mut chosen = named(spec);
     if spec.velocity.is_some() || spec.magnetic.is_some() {
-        for (field, names) in [(Field::Velocity, &spec.velocity), (Field::Magnetic, &spec.magnetic)] {
-            if let Some(names) = names {
-                chosen.push((field, names.clone()));
-            }
-        }
         return Ok(chosen);
     }
+    let mut guessed = Vec::new();
     for (field, sets) in [(Field::Velocity, &VELOCITY[..]), (Field::Magnetic, &MAGNETIC[..])] {
-        // A lone `b` of rank 3 is a scalar (buoyancy), not a vector field.
-        let complete = |set: &&&[&str]| set.iter().all(|name| rank(name).is_some_and(|r| set.len() == 3 || r == 4));
-        if let Some(set) = sets.iter().find(complete) {
-            chosen.push((field, set.iter().map(|n| n.to_string()).collect()));
-            continue;
-        }
-        for set in sets.iter().filter(|set| set.len() == 3) {
-            let there: Vec<&str> = set.iter().copied().filter(|name| rank(name).is_some()).collect();
-            if there.len() == 2 {
-                return Err(Error::input("cannot find all components")
-                    .expected(set.join(","))
-                    .found(format!("only {}", there.join(",")))
-                    .hint("--velocity or --magnetic alone reads one field and leaves the other"));
-            }
+        if let Some(names) = guess(sets, &shape)? {
+            guessed.push((field, names));
         }
     }
-    Ok(chosen)
+    guessed.append(&mut chosen);
+    Ok(guessed)
+}
+
+/// The fields that the user names.
+pub(super) fn named(spec: &InputSpec) -> Vec<Choice> {
+    let one = |name: &Option<String>| name.clone().map(|n| vec![n]);
+    let fields = [
+        (Field::Velocity, spec.velocity.clone()),
+        (Field::Magnetic, spec.magnetic.clone()),
+        (Field::Buoyancy, one(&spec.buoyancy)),
+        (Field::Density, one(&spec.density)),
+    ];
+    fields.into_iter().filter_map(|(field, names)| names.map(|n| (field, n))).collect()
+}
+
+/// Whether there is a field to analyse.
+pub(super) fn has_vector(choices: &[Choice]) -> bool {
+    choices.iter().any(|(field, _)| field.is_vector())
+}
+
+/// The first complete set.
+pub(super) fn guess(sets: &[&[&str]], shape: &impl Fn(&str) -> Option<Vec<usize>>) -> Result<Option<Vec<String>>> {
+    let owned = |set: &[&str]| Some(set.iter().map(|n| n.to_string()).collect());
+    if let Some(set) = sets.iter().find(|set| set.iter().all(|name| shape(name).is_some_and(|s| set.len() > 1 || has_components(&s)))) {
+        return Ok(owned(set));
+    }
+    for set in sets.iter().filter(|set| set.len() == 3) {
+        let there: Vec<&str> = set.iter().copied().filter(|name| shape(name).is_some()).collect();
+        if there.len() == 2 {
+            // Two components make up a field in a plane.
+            if there == set[..2] && there.iter().all(|name| shape(name).is_some_and(|s| is_plane(&s))) {
+                return Ok(owned(&there));
+            }
+            return Err(Error::input("cannot find all components")
+                .expected(set.join(","))
+                .found(format!("only {}", there.join(",")))
+                .hint("--velocity or --magnetic alone reads one field and leaves the other"));
+        }
+    }
+    Ok(None)
+}
+
+/// Whether a single array can be a vector field: a lone `b` of rank 3 is a scalar (buoyancy), unless it is a plane with a
+/// component axis.
+fn has_components(shape: &[usize]) -> bool {
+    let few = |n: &usize| (2..=3).contains(n);
+    shape.len() == 4 || (shape.len() == 3 && (few(&shape[0]) || few(&shape[2])))
+}
+
+fn is_plane(shape: &[usize]) -> bool {
+    shape.len() == 2 || (shape.len() == 3 && shape.contains(&1))
 }

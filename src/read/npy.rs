@@ -9,10 +9,10 @@ use std::path::{Path, PathBuf};
 use crate::base::error::{Error, Result};
 use crate::read::arrange::arrange;
 use crate::read::header::{Header, Precision, shape_text, wrong_type};
-use crate::read::names::{Choice, Field, GUESSES, HINT, choose};
+use crate::read::names::{Choice, Field, GUESSES, HINT, PLACE, choose, has_vector, named, with_name};
 use crate::read::order::Order;
 use crate::read::raw::RawArray;
-use crate::read::source::{Array, Arrays, Store, fields_of};
+use crate::read::source::{Array, Arrays, Store};
 use crate::read::spec::InputSpec;
 
 const WHAT: &str = "cannot read the npy file";
@@ -30,20 +30,19 @@ struct NpyFile {
 }
 
 /// One file: the velocity, unless only the magnetic field is named.
-pub(super) fn open_file(path: &Path, spec: &InputSpec, order: Order) -> Result<Arrays> {
+pub(super) fn open_file(path: &Path, spec: &InputSpec, order: &Order) -> Result<Arrays> {
     let own = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
-    let (field, named) = match (&spec.velocity, &spec.magnetic) {
-        (Some(_), Some(_)) => {
-            return Err(Error::usage("cannot read two fields from one npy file")
-                .at(path)
-                .item("--velocity, --magnetic")
-                .expected("at most one of them")
-                .found("both")
-                .hint("put the files into a folder and give the folder"));
-        }
-        (None, Some(names)) => (Field::Magnetic, Some(names)),
-        (given, None) => (Field::Velocity, given.as_ref()),
-    };
+    let all = named(spec);
+    if all.len() > 1 || all.first().is_some_and(|(field, _)| !field.is_vector()) {
+        let flags: Vec<&str> = all.iter().map(|(field, _)| field.flag()).collect();
+        return Err(Error::usage("cannot read several fields from one npy file")
+            .at(path)
+            .item(flags.join(", "))
+            .expected("--velocity or --magnetic alone")
+            .found(if all.len() == 1 { "a scalar".to_string() } else { format!("{} fields", all.len()) })
+            .hint("put the files into a folder and give the folder"));
+    }
+    let (field, named) = all.into_iter().next().map_or((Field::Velocity, None), |(field, names)| (field, Some(names)));
     if let Some(names) = named
         && !(names.len() == 1 && with_extension(&names[0]) == own)
     {
@@ -55,19 +54,14 @@ pub(super) fn open_file(path: &Path, spec: &InputSpec, order: Order) -> Result<A
             .hint("for one file a component give their folder"));
     }
     let file = read_header(path, own.clone())?;
-    assemble(&[(field, vec![own])], vec![file], &order)
+    assemble(&[(field, vec![own])], vec![file], order)
 }
 
 /// A folder: names are those of the files in it.
-pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: Order) -> Result<Arrays> {
+pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: &Order) -> Result<Arrays> {
     let file_of = |name: &str| folder.join(with_extension(name));
-    let rank = |name: &str| {
-        let path = file_of(name);
-        // A damaged file counts as present, so that its damage is reported and not its absence.
-        path.is_file().then(|| read_header(&path, String::new()).map_or(4, |f| f.header.shape.len()))
-    };
-    let choices = choose(spec, rank).map_err(|e| e.at(folder))?;
-    if choices.is_empty() {
+    let choices = choose(spec, |name| shape_in(&file_of(name))).map_err(|e| e.at(folder))?;
+    if !has_vector(&choices) {
         return Err(Error::input("cannot find a velocity or magnetic field")
             .at(folder)
             .expected(format!("npy files named {GUESSES}"))
@@ -82,24 +76,66 @@ pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: Order) -> Resu
         }
         files.push(read_header(&path, label(folder, name))?);
     }
-    assemble(&choices, files, &order)
+    assemble(&choices, files, order)
+}
+
+/// Files whose names are those of a path with the component's name in its place.
+pub(super) fn open_many(path: &Path, spec: &InputSpec, order: &Order) -> Result<Arrays> {
+    let choices = choose(spec, |name| shape_in(&with_name(path, name))).map_err(|e| e.at(path))?;
+    if !has_vector(&choices) {
+        return Err(Error::input("cannot find a velocity or magnetic field")
+            .at(path)
+            .expected(format!("npy files with {GUESSES} in place of {PLACE}"))
+            .found("none of them")
+            .hint(HINT));
+    }
+    let mut files = Vec::new();
+    for name in choices.iter().flat_map(|(_, names)| names) {
+        let path = with_name(path, name);
+        if !path.is_file() {
+            return Err(Error::input("cannot find the file").at(&path).found("nothing").hint(HINT));
+        }
+        let own = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
+        files.push(read_header(&path, own)?);
+    }
+    assemble(&choices, files, order)
+}
+
+/// The shape of a file, if there is one. A damaged one counts as present, so that its damage is reported and not its absence.
+fn shape_in(path: &Path) -> Option<Vec<usize>> {
+    path.is_file().then(|| read_header(path, String::new()).map_or(vec![0; 4], |f| f.header.shape))
+}
+
+/// Shape, slowest axis first, and type of the values of a file.
+pub(super) fn describe(path: &Path) -> Result<(Vec<usize>, String)> {
+    let file = read_header(path, String::new())?;
+    let order = if file.big_endian { "big" } else { "little" };
+    Ok((file.header.shape, format!("float{} {order}-endian", 8 * file.header.precision.bytes())))
+}
+
+/// The values of a file with one axis, and whether they are in single precision.
+pub(super) fn line(path: &Path) -> Result<(Vec<f64>, bool)> {
+    let file = read_header(path, String::new())?;
+    let shape = file.header.shape.clone();
+    if shape.len() != 1 {
+        let found = file.header.shape_text();
+        return Err(Error::input("cannot use the coordinates").at(path).expected("an array with one axis").found(found));
+    }
+    let single = file.header.precision == Precision::F32;
+    let mut values = vec![0.0; shape[0]];
+    RawArray::new(file.header, file.file, file.offset, file.big_endian).read_block(&[0], &shape, &mut values)?;
+    Ok((values, single))
 }
 
 fn assemble(choices: &[Choice], files: Vec<NpyFile>, order: &Order) -> Result<Arrays> {
     let headers: Vec<Header> = files.iter().map(|f| f.header.clone()).collect();
     let arrangement = arrange(choices, &headers, order)?;
-    let arrays = files
-        .into_iter()
-        .zip(arrangement.axes)
-        .map(|(f, axes)| Array {
-            header: f.header.clone(),
-            axes,
-            store: Store::Raw(RawArray::new(f.header, f.file, f.offset, f.big_endian)),
-            depth: 1,
-            filtered: false,
-        })
-        .collect();
-    Ok(Arrays { arrays, fields: fields_of(choices.iter().map(|c| c.0)), samples: arrangement.samples, time: None })
+    let arrays = files.into_iter().zip(arrangement.axes).map(|(f, axes)| {
+        let header = Header { shape: axes.full(&f.header.shape), ..f.header };
+        let store = Store::Raw(RawArray::new(header.clone(), f.file, f.offset, f.big_endian));
+        Array { header, axes, store, depth: 1, filtered: false }
+    });
+    Ok(Arrays::new(arrays.collect(), arrangement.slots, arrangement.samples))
 }
 
 fn with_extension(name: &str) -> String {

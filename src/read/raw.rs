@@ -19,8 +19,19 @@ pub(super) struct RawArray {
     header: Header,
     file: File,
     offset: u64,
+    /// Where the bytes stand when they are in several pieces; byte numbers are then those of the pieces joined.
+    pieces: Vec<Piece>,
     swap: bool,
     buffer: Vec<u8>,
+}
+
+/// A piece of an array: the joined bytes from `joined` on stand in the file from `byte` on.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) struct Piece {
+    /// Number of the first byte when all pieces are joined.
+    pub joined: u64,
+    /// Its place in the file.
+    pub byte: u64,
 }
 
 /// A run of values that stand together in the file: first byte, and first place and number in the block.
@@ -34,7 +45,14 @@ struct Run {
 impl RawArray {
     /// The array whose first value is at byte `offset` of `file`.
     pub fn new(header: Header, file: File, offset: u64, big_endian: bool) -> RawArray {
-        RawArray { header, file, offset, swap: big_endian != cfg!(target_endian = "big"), buffer: Vec::new() }
+        RawArray { header, file, offset, pieces: Vec::new(), swap: big_endian != cfg!(target_endian = "big"), buffer: Vec::new() }
+    }
+
+    /// The same in pieces, of which the first begins with byte 0; the array begins at byte `offset` of the pieces joined.
+    #[must_use]
+    pub fn in_pieces(mut self, pieces: Vec<Piece>) -> RawArray {
+        self.pieces = pieces;
+        self
     }
 
     /// Reads `count` values from `start` along every axis into `out`, slowest axis first.
@@ -77,7 +95,7 @@ impl RawArray {
         let width = self.header.precision.bytes();
         if batch.len() == 1 && size_of::<T>() == width {
             let out = &mut out[first.place..first.place + first.values];
-            fill(&mut self.file, &self.header, first.byte, bytemuck::cast_slice_mut(out))?;
+            fill(&mut self.file, &self.header, &self.pieces, first.byte, bytemuck::cast_slice_mut(out))?;
             if self.swap {
                 swap_in_place(out);
             }
@@ -85,7 +103,7 @@ impl RawArray {
         }
         let length = (last.byte - first.byte) as usize + last.values * width;
         self.buffer.resize(length, 0);
-        fill(&mut self.file, &self.header, first.byte, &mut self.buffer)?;
+        fill(&mut self.file, &self.header, &self.pieces, first.byte, &mut self.buffer)?;
         for run in batch {
             let from = &self.buffer[(run.byte - first.byte) as usize..][..run.values * width];
             let to = &mut out[run.place..run.place + run.values];
@@ -106,16 +124,33 @@ impl RawArray {
     }
 }
 
-fn fill(file: &mut File, header: &Header, byte: u64, to: &mut [u8]) -> Result<()> {
-    file.seek(SeekFrom::Start(byte)).and_then(|_| file.read_exact(to)).map_err(|e| {
-        header
-            .fault("cannot read values")
-            .found(match e.kind() {
-                ErrorKind::UnexpectedEof => "the end of the file".into(),
-                _ => e.to_string(),
-            })
-            .hint("the file changed or its disk failed")
-    })
+fn fill(file: &mut File, header: &Header, pieces: &[Piece], byte: u64, to: &mut [u8]) -> Result<()> {
+    let mut read = |byte: u64, to: &mut [u8]| {
+        file.seek(SeekFrom::Start(byte)).and_then(|_| file.read_exact(to)).map_err(|e| {
+            header
+                .fault("cannot read values")
+                .found(match e.kind() {
+                    ErrorKind::UnexpectedEof => "the end of the file".into(),
+                    _ => e.to_string(),
+                })
+                .hint("the file changed or its disk failed")
+        })
+    };
+    if pieces.is_empty() {
+        return read(byte, to);
+    }
+    let (mut byte, mut rest) = (byte, to);
+    let mut next = pieces.partition_point(|p| p.joined <= byte);
+    while !rest.is_empty() {
+        let piece = pieces[next - 1];
+        let left = pieces.get(next).map_or(u64::MAX, |p| p.joined - byte);
+        let (now, later) = rest.split_at_mut(left.min(rest.len() as u64) as usize);
+        read(piece.byte + (byte - piece.joined), now)?;
+        byte += now.len() as u64;
+        rest = later;
+        next += 1;
+    }
+    Ok(())
 }
 
 fn swap_in_place<T: Real>(values: &mut [T]) {
@@ -196,5 +231,27 @@ mod tests {
                 check::<f64>(&mut array, start, count);
             }
         }
+    }
+
+    #[test]
+    fn values_across_pieces_arrive() {
+        // 12 values of 4 bytes in pieces of 10 bytes, so that values are cut, with 3 other bytes between them.
+        let values: Vec<u8> = (0..12u16).flat_map(|i| f32::from(i).to_le_bytes()).collect();
+        let (mut bytes, mut pieces) = (Vec::new(), Vec::new());
+        for (i, part) in values.chunks(10).enumerate() {
+            bytes.extend(b"...");
+            pieces.push(Piece { joined: 10 * i as u64, byte: bytes.len() as u64 });
+            bytes.extend(part);
+        }
+        let mut file = tempfile::tempfile().unwrap();
+        file.write_all(&bytes).unwrap();
+        let header = Header { path: "array".into(), item: None, label: String::new(), shape: vec![2, 2, 2], precision: Precision::F32 };
+        let mut array = RawArray::new(header, file, 16, false).in_pieces(pieces);
+        let mut out = [0.0f32; 8];
+        array.read_block(&[0; 3], &[2; 3], &mut out).unwrap();
+        assert_eq!(out, [4.0, 5.0, 6.0, 7.0, 8.0, 9.0, 10.0, 11.0]);
+        let mut out = [0.0f64; 2];
+        array.read_block(&[0, 0, 1], &[1, 2, 1], &mut out).unwrap();
+        assert_eq!(out, [5.0, 7.0]);
     }
 }

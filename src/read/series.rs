@@ -1,10 +1,16 @@
 //! From what was typed (paths, patterns, lists, groups of steps) to the snapshots of a run, in order.
 
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 use crate::base::error::{Error, Result};
 use crate::model::snapshot::SnapshotRef;
+use crate::read::names::{MAGNETIC, PLACE, VELOCITY, has_place, with_name};
+use crate::read::shelf::{groups, groups_text, open_file};
 use crate::read::spec::InputSpec;
+use crate::read::{natural, superblock};
+
+/// Longest list read.
+const LIST_LIMIT: u64 = 64 << 20;
 
 /// Where the snapshots of a run are named.
 #[derive(Debug, Clone, PartialEq, Default)]
@@ -12,7 +18,8 @@ pub struct Series {
     /// Files, folders or patterns (`*`, `?`, `[..]`); `{field}` stands for a component's name; `FILE:/GROUP` for one step of an
     /// HDF5 file.
     pub paths: Vec<String>,
-    /// Text files with one path a line; `#` begins a comment, a number behind the path is its time.
+    /// Text files with one path a line; `#` begins a comment, a number behind the path is its time. Paths are looked for from the
+    /// folder of the list, then from the working folder.
     pub lists: Vec<PathBuf>,
     /// Pattern of the groups that are steps of every file, e.g. `step_*`.
     pub steps: Option<String>,
@@ -20,11 +27,250 @@ pub struct Series {
     pub times: Vec<f64>,
 }
 
-/// The snapshots, in the order named, those of a pattern sorted with numbers in their names compared as numbers.
+/// The snapshots: paths in the order named, then lists, those of a pattern sorted with numbers in their names compared as numbers.
+///
+/// What exists is taken as it is named, even when it looks like a pattern; what does not exist and is no pattern is left to
+/// [`open`](crate::read::open) to report. Nothing named gives nothing.
 ///
 /// # Errors
 /// `Usage` for a malformed pattern or a number of times that is not that of the snapshots, `Input` when a pattern matches nothing
 /// or a list cannot be read.
-pub fn expand(_series: &Series, _spec: &InputSpec) -> Result<Vec<SnapshotRef>> {
-    Err(Error::internal("not there yet"))
+pub fn expand(series: &Series, spec: &InputSpec) -> Result<Vec<SnapshotRef>> {
+    let steps = series.steps.as_deref();
+    let mut out = Vec::new();
+    for path in &series.paths {
+        out.extend(one(path, steps, spec)?);
+    }
+    for list in &series.lists {
+        out.extend(listed(list, steps, spec)?);
+    }
+    if let Some(bad) = series.times.iter().find(|t| !t.is_finite()) {
+        return Err(Error::usage("cannot use the times").expected("finite numbers").found(bad.to_string()));
+    }
+    if !series.times.is_empty() {
+        if series.times.len() != out.len() {
+            return Err(Error::usage("cannot use the times")
+                .expected(format!("{} numbers, one a snapshot", out.len()))
+                .found(series.times.len().to_string())
+                .hint("times follow the snapshots, those of a pattern in the order of the numbers in their names"));
+        }
+        for (snapshot, time) in out.iter_mut().zip(&series.times) {
+            snapshot.time = Some(*time);
+        }
+    }
+    Ok(out)
+}
+
+/// The snapshots of one path or pattern.
+fn one(named: &str, steps: Option<&str>, spec: &InputSpec) -> Result<Vec<SnapshotRef>> {
+    let (path, group) = split_group(named);
+    let mut out = Vec::new();
+    for path in files(path, spec)? {
+        match (group, steps) {
+            (Some(group), _) if is_pattern(group) => out.extend(step_groups(&path, group, spec)?),
+            (Some(group), _) => out.push(SnapshotRef { path, group: Some(group.trim_matches('/').into()), time: None }),
+            (None, Some(steps)) => out.extend(step_groups(&path, steps, spec)?),
+            (None, None) => out.push(path.into()),
+        }
+    }
+    Ok(out)
+}
+
+/// `FILE:/GROUP` in its parts, unless there is a file of that name.
+fn split_group(named: &str) -> (&str, Option<&str>) {
+    match named.split_once(":/") {
+        // One letter before the colon is a drive.
+        Some((file, group)) if file.len() > 1 && !group.trim_matches('/').is_empty() && !Path::new(named).exists() => (file, Some(group)),
+        _ => (named, None),
+    }
+}
+
+fn is_pattern(text: &str) -> bool {
+    text.contains(['*', '?', '['])
+}
+
+/// Files as named; a name with * ? or [ that is no file is a pattern.
+fn files(named: &str, spec: &InputSpec) -> Result<Vec<PathBuf>> {
+    let path = PathBuf::from(named);
+    if path.exists() || !is_pattern(named) {
+        return Ok(vec![path]);
+    }
+    if !has_place(&path) {
+        return matches(named, named);
+    }
+    // The files of the first component stand for those of all.
+    for name in first_names(spec) {
+        let pattern = named.replace(PLACE, &glob::Pattern::escape(&name));
+        let Ok(found) = matches(&pattern, named) else { continue };
+        let again: Vec<PathBuf> = found.iter().filter_map(|f| with_place(named, &f.to_string_lossy(), &name)).map(PathBuf::from).collect();
+        if !again.is_empty() {
+            return Ok(again);
+        }
+    }
+    matches(&named.replace(PLACE, "*"), named).and(Err(no_match(named).hint("--velocity U,V,W names the components")))
+}
+
+/// The matches of a pattern in natural order.
+fn matches(pattern: &str, named: &str) -> Result<Vec<PathBuf>> {
+    let bad = |e: String| Error::usage("cannot read a pattern").item(format!("\"{named}\"")).found(e);
+    let found = glob::glob(pattern).map_err(|e| bad(e.to_string()))?;
+    let mut found = found.collect::<std::result::Result<Vec<_>, _>>().map_err(|e| bad(e.to_string()))?;
+    if found.is_empty() {
+        return Err(no_match(named).hint("quote the pattern and check the folder"));
+    }
+    found.sort_by(|a, b| natural::compare(&a.to_string_lossy(), &b.to_string_lossy()));
+    Ok(found)
+}
+
+fn no_match(named: &str) -> Error {
+    Error::input("cannot find snapshots").item(format!("\"{named}\"")).expected("a pattern that matches a file").found("no match")
+}
+
+/// Names that the first component may have.
+fn first_names(spec: &InputSpec) -> Vec<String> {
+    let named = [&spec.velocity, &spec.magnetic].into_iter().flatten().filter_map(|names| names.first().cloned());
+    let named: Vec<String> = named.collect();
+    if named.is_empty() { VELOCITY.iter().chain(&MAGNETIC).map(|set| set[0].to_string()).collect() } else { named }
+}
+
+/// A match of a pattern with the place of the component's name put back. None when the text does not fit the pattern.
+fn with_place(pattern: &str, text: &str, name: &str) -> Option<String> {
+    if let Some(rest) = pattern.strip_prefix(PLACE) {
+        return Some(format!("{PLACE}{}", with_place(rest, text.strip_prefix(name)?, name)?));
+    }
+    let Some(p) = pattern.chars().next() else { return text.is_empty().then(String::new) };
+    let rest = &pattern[p.len_utf8()..];
+    let fixed = |rest: &str| {
+        let t = text.chars().next()?;
+        Some(format!("{t}{}", with_place(rest, &text[t.len_utf8()..], name)?))
+    };
+    match p {
+        '*' => with_place(rest, text, name).or_else(|| {
+            // Two stars cross folders; one does not.
+            if text.starts_with('/') && !rest.starts_with('*') && !pattern.starts_with("**") { None } else { fixed(pattern) }
+        }),
+        '?' => fixed(rest),
+        '[' => {
+            let end = pattern.get(2..)?.find(']')? + 2;
+            let class = glob::Pattern::new(&pattern[..=end]).ok()?;
+            text.chars().next().filter(|t| class.matches(&t.to_string()))?;
+            fixed(&pattern[end + 1..])
+        }
+        p => text.starts_with(p).then(|| fixed(rest)).flatten(),
+    }
+}
+
+/// The groups of a file that are steps.
+fn step_groups(path: &Path, pattern: &str, spec: &InputSpec) -> Result<Vec<SnapshotRef>> {
+    let file = if has_place(path) {
+        let names = first_names(spec);
+        let found = names.iter().map(|name| with_name(path, name)).find(|p| p.is_file());
+        found.unwrap_or_else(|| with_name(path, &names[0]))
+    } else {
+        path.into()
+    };
+    if !file.is_file() {
+        return Err(Error::input("cannot look for steps").at(&file).expected("an HDF5 file").found(if file.is_dir() {
+            "a folder"
+        } else {
+            "nothing"
+        }));
+    }
+    superblock::check(&file)?;
+    let file = open_file(&file, None)?;
+    let mut found = vec![String::new()];
+    for part in pattern.trim_matches('/').split('/') {
+        let bad = |e: String| Error::usage("cannot read a pattern").item(format!("\"{pattern}\"")).found(e);
+        let part = glob::Pattern::new(part).map_err(|e| bad(e.to_string()))?;
+        let mut deeper = Vec::new();
+        for above in &found {
+            let group = if above.is_empty() { Some((*file).clone()) } else { file.group(above).ok() };
+            let names = group.map(|g| groups(&g)).unwrap_or_default();
+            deeper.extend(names.into_iter().filter(|n| part.matches(n)).map(|n| format!("{above}/{n}")));
+        }
+        found = deeper;
+    }
+    if found.is_empty() {
+        return Err(Error::input("cannot find steps")
+            .at(path)
+            .item(format!("\"{pattern}\""))
+            .expected("a pattern that matches a group")
+            .found(format!("only {}", groups_text(&file)))
+            .hint("the pattern begins at the root group"));
+    }
+    found.sort_by(|a, b| natural::compare(a, b));
+    let of = |group: String| SnapshotRef { path: path.into(), group: Some(group.trim_matches('/').into()), time: None };
+    Ok(found.into_iter().map(of).collect())
+}
+
+/// The snapshots of a list.
+fn listed(list: &Path, steps: Option<&str>, spec: &InputSpec) -> Result<Vec<SnapshotRef>> {
+    let fault = |found: String| Error::input("cannot read the list").at(list).found(found);
+    let length = std::fs::metadata(list).map_err(|e| fault(e.to_string()))?.len();
+    if length > LIST_LIMIT {
+        return Err(fault(format!("{length} bytes")).expected("a text file with one path a line"));
+    }
+    let bytes = std::fs::read(list).map_err(|e| fault(e.to_string()))?;
+    let text = String::from_utf8(bytes).map_err(|_| fault("other bytes".into()).expected("a text file with one path a line"))?;
+    let mut out = Vec::new();
+    for (i, line) in text.lines().enumerate() {
+        // A comment begins a line or follows a blank, so that names may have a #.
+        let comment = line.char_indices().find(|&(at, c)| c == '#' && (at == 0 || line[..at].ends_with(char::is_whitespace)));
+        let said = comment.map_or(line, |(at, _)| &line[..at]).trim();
+        if said.is_empty() {
+            continue;
+        }
+        let split = said.rsplit_once(char::is_whitespace);
+        let timed = split.and_then(|(path, number)| Some((path.trim_end(), number.parse::<f64>().ok().filter(|t| t.is_finite())?)));
+        let (path, time) = timed.map_or((said, None), |(path, time)| (path, Some(time)));
+        let near = list.parent().unwrap_or(Path::new("")).join(path);
+        let there = |p: &str| Path::new(split_group(p).0).exists();
+        let near = near.to_string_lossy();
+        let mut found = if there(path) && !there(&near) { one(path, steps, spec)? } else { one(&near, steps, spec)? };
+        if let Some(time) = time {
+            if let [only] = &mut found[..] {
+                only.time = Some(time);
+            } else {
+                return Err(Error::input("cannot use the list")
+                    .at(list)
+                    .item(format!("line {}", i + 1))
+                    .expected("one snapshot before a time")
+                    .found(format!("{} snapshots", found.len())));
+            }
+        }
+        out.extend(found);
+    }
+    if out.is_empty() {
+        return Err(fault("none".into()).expected("one path a line"));
+    }
+    Ok(out)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn places_are_put_back() {
+        let cases = [
+            ("run/{field}_*.raw", "run/u_0010.raw", "u", Some("run/{field}_0010.raw")),
+            ("*/{field}.h5", "u/u.h5", "u", Some("u/{field}.h5")),
+            ("*_{field}*", "a_u_b_u", "u", Some("a_{field}_b_u")),
+            ("{field}/t[0-9]?.h5", "bx/t42.h5", "bx", Some("{field}/t42.h5")),
+            ("{field}*", "v1", "u", None),
+            ("*{field}", "a/u", "u", None),
+            ("**/{field}", "a/b/u", "u", Some("a/b/{field}")),
+        ];
+        for (pattern, text, name, again) in cases {
+            assert_eq!(with_place(pattern, text, name).as_deref(), again, "{pattern} {text}");
+        }
+    }
+
+    #[test]
+    fn groups_are_told_from_drives() {
+        assert_eq!(split_group("run.h5:/step/1"), ("run.h5", Some("step/1")));
+        assert_eq!(split_group("C:/run.h5"), ("C:/run.h5", None));
+        assert_eq!(split_group("run.h5:/"), ("run.h5:/", None));
+        assert_eq!(split_group("run.h5"), ("run.h5", None));
+    }
 }

@@ -1,17 +1,18 @@
-//! The plane source over the arrays of a snapshot, whatever they are stored in.
+//! The layer over the arrays of a snapshot, whatever they are stored in.
 
 use ::hdf5::H5Type;
 
 use crate::base::error::Result;
 use crate::base::real::Real;
-use crate::model::source::{AnySource, Fields, PlaneSource};
+use crate::read::arrange::Slots;
+use crate::read::coordinates::Coordinates;
 use crate::read::hdf5::ChunkedArray;
 use crate::read::header::{Header, Precision};
-use crate::read::names::Field;
-use crate::read::order::{Axes, End};
+use crate::read::layers::Layer;
+use crate::read::order::{Axes, End, Window};
 use crate::read::raw::RawArray;
 use crate::read::reorder::reorder;
-use crate::space::grid::Grid;
+use crate::read::time::FoundTime;
 
 /// How the values of an array are reached.
 pub(super) enum Store {
@@ -30,7 +31,7 @@ impl Store {
     }
 }
 
-/// One array of a snapshot: a component, or three along an axis.
+/// One array of a snapshot: a component, or several along an axis.
 pub(super) struct Array {
     /// What its file says.
     pub header: Header,
@@ -46,110 +47,109 @@ pub(super) struct Array {
 
 /// Everything a snapshot consists of, checked.
 pub(super) struct Arrays {
-    /// In the order u, v, w, bx, by, bz.
+    /// In the order of the fields.
     pub arrays: Vec<Array>,
-    /// The fields they make up.
-    pub fields: Fields,
+    /// Where their components go.
+    pub slots: Slots,
     /// Samples along x, y, z.
     pub samples: [usize; 3],
-    /// Time of the snapshot, if stated.
-    pub time: Option<f64>,
+    /// Time, where it is found inside the files.
+    pub time: FoundTime,
+    /// Coordinates, where they are named.
+    pub coordinates: [Option<Coordinates>; 3],
+    /// How the arrays are named to the user.
+    pub datasets: Vec<String>,
+    /// How every component delivered is named to the user.
+    pub components: Vec<String>,
 }
 
 impl Arrays {
-    /// How the arrays are named to the user.
-    pub fn labels(&self) -> Vec<String> {
-        self.arrays.iter().map(|a| a.header.label.clone()).collect()
-    }
-}
-
-/// The fields that were chosen.
-pub(super) fn fields_of(chosen: impl Iterator<Item = Field>) -> Fields {
-    let mut fields = Fields::default();
-    for field in chosen {
-        match field {
-            Field::Velocity => fields.velocity = true,
-            Field::Magnetic => fields.magnetic = true,
+    /// Arrays whose names are those of their headers.
+    pub fn new(arrays: Vec<Array>, slots: Slots, samples: [usize; 3]) -> Arrays {
+        let datasets = arrays.iter().map(|a| a.header.label.clone()).collect();
+        let mut components = vec![String::new(); slots.components()];
+        for (array, places) in arrays.iter().zip(&slots.places) {
+            for (c, place) in places.iter().enumerate() {
+                if let Some(p) = *place {
+                    let label = &array.header.label;
+                    components[p] = if places.len() == 1 { label.clone() } else { format!("{label}[{c}]") };
+                }
+            }
         }
+        for &zero in &slots.zeros {
+            components[zero] = "no dataset".into();
+        }
+        components.truncate(slots.fields.components());
+        Arrays { arrays, slots, samples, time: FoundTime::default(), coordinates: [None, None, None], datasets, components }
     }
-    fields
+
+    /// Whether values that are read are wider than f32.
+    pub fn is_double(&self) -> bool {
+        let read = |places: &Vec<Option<usize>>| places.iter().any(Option::is_some);
+        self.arrays.iter().zip(&self.slots.places).any(|(a, p)| a.header.precision == Precision::F64 && read(p))
+    }
 }
 
-/// The source: f64 when any array is, else f32.
-pub(super) fn assemble(arrays: Arrays, grid: Grid) -> AnySource {
-    if arrays.arrays.iter().any(|a| a.header.precision == Precision::F64) {
-        AnySource::F64(Box::new(FileSource::<f64>::new(arrays, grid)))
-    } else {
-        AnySource::F32(Box::new(FileSource::<f32>::new(arrays, grid)))
-    }
-}
-
-struct FileSource<T> {
-    grid: Grid,
-    fields: Fields,
-    arrays: Vec<Array>,
+/// The arrays as a layer: values of every component as they are stored.
+pub(super) struct FileLayer<T> {
+    samples: [usize; 3],
+    arrays: Vec<(Array, Vec<Option<usize>>)>,
+    zeros: Vec<usize>,
     buffer: Vec<T>,
 }
 
-impl<T> FileSource<T> {
-    fn new(arrays: Arrays, grid: Grid) -> Self {
-        FileSource { grid, fields: arrays.fields, arrays: arrays.arrays, buffer: Vec::new() }
+impl<T> FileLayer<T> {
+    /// Arrays of which no component is needed are let go.
+    pub fn new(arrays: Vec<Array>, slots: &Slots, samples: [usize; 3]) -> Self {
+        let read = arrays.into_iter().zip(slots.places.iter().cloned());
+        let read = read.filter(|(_, places)| places.iter().any(Option::is_some)).collect();
+        FileLayer { samples, arrays: read, zeros: slots.zeros.clone(), buffer: Vec::new() }
     }
 }
 
-impl<T: Real + H5Type> PlaneSource<T> for FileSource<T> {
-    fn grid(&self) -> &Grid {
-        &self.grid
+impl<T: Real + H5Type> Layer<T> for FileLayer<T> {
+    fn samples(&self) -> [usize; 3] {
+        self.samples
     }
 
-    fn fields(&self) -> Fields {
-        self.fields
-    }
-
-    fn read(&mut self, z0: usize, z1: usize, out: &mut [&mut [T]]) -> Result<()> {
-        let [nx, ny, nz] = self.grid.n;
-        assert!(z0 <= z1 && z1 <= nz, "planes: expected a range inside 0..{nz}, got {z0}..{z1}");
-        assert_eq!(out.len(), self.fields.components(), "slices (left) and components (right)");
-        let planes = [nx, ny, z1 - z0];
-        let values = nx * ny * (z1 - z0);
-        for o in out.iter() {
-            assert_eq!(o.len(), values, "length of a slice (left) and values of the planes (right)");
-        }
-        if z0 == z1 {
-            return Ok(());
-        }
-        let mut next = 0;
-        for array in &mut self.arrays {
-            let out = &mut out[next..next + array.axes.components()];
-            next += out.len();
+    fn read(&mut self, at: &Window, out: &mut [Option<&mut [T]>]) -> Result<()> {
+        let size = at.size();
+        for (array, places) in &mut self.arrays {
+            let mut wanted: Vec<(usize, usize)> = places.iter().enumerate().filter_map(|(c, p)| p.map(|p| (c, p))).collect();
+            wanted.retain(|&(_, p)| out[p].is_some());
             // With the components last, one block holds them all; else each has its own.
             let together = array.axes.component == Some(End::Last);
-            for c in 0..if together { 1 } else { out.len() } {
-                let (start, count) = array.axes.block(self.grid.n, z0, z1, c);
-                if array.axes.is_zyx() && !together {
-                    array.store.read_block(&start, &count, out[c])?;
+            let straight = array.axes.is_zyx(self.samples) && !together;
+            let mut loaded = false;
+            for (c, p) in wanted {
+                let Some(to) = &mut out[p] else { continue };
+                let (start, count) = array.axes.block(at, c);
+                if straight {
+                    array.store.read_block(&start, &count, to)?;
                     continue;
                 }
-                self.buffer.resize(count.iter().product(), T::ZERO);
-                array.store.read_block(&start, &count, &mut self.buffer)?;
-                let stride = array.axes.space.map(|a| count[a + 1..].iter().product::<usize>());
-                if together {
-                    for (i, o) in out.iter_mut().enumerate() {
-                        reorder(&self.buffer[i..], stride, planes, o);
-                    }
-                } else {
-                    reorder(&self.buffer, stride, planes, out[c]);
+                if !(together && loaded) {
+                    self.buffer.resize(count.iter().product(), T::ZERO);
+                    array.store.read_block(&start, &count, &mut self.buffer)?;
+                    loaded = true;
                 }
+                let stride = array.axes.space.map(|a| count[a + 1..].iter().product::<usize>());
+                reorder(&self.buffer[if together { c } else { 0 }..], stride, size, to);
+            }
+        }
+        for &zero in &self.zeros {
+            if let Some(to) = &mut out[zero] {
+                to.fill(T::ZERO);
             }
         }
         Ok(())
     }
 
     fn natural_planes(&self) -> usize {
-        self.arrays.iter().map(|a| a.depth).max().unwrap_or(1)
+        self.arrays.iter().map(|(a, _)| a.depth).max().unwrap_or(1)
     }
 
     fn is_costly(&self) -> bool {
-        self.arrays.iter().any(|a| a.filtered || !a.axes.is_zyx())
+        self.arrays.iter().any(|(a, _)| a.filtered || !a.axes.is_zyx(self.samples))
     }
 }

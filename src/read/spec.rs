@@ -2,7 +2,7 @@
 
 use crate::base::error::{Error, Result};
 use crate::read::order::Order;
-use crate::space::grid::Grid;
+use crate::read::time;
 
 /// Layout of headerless binary files.
 #[derive(Debug, Clone, PartialEq)]
@@ -128,40 +128,81 @@ impl InputSpec {
         let order = Order::parse(&self.order)?;
         check_names("--velocity", "u,v,w", self.velocity.as_deref())?;
         check_names("--magnetic", "bx,by,bz", self.magnetic.as_deref())?;
-        let given = match (&self.lengths, &self.spacing) {
-            (Some(l), None) => Ok(("--lengths", l)),
-            (None, Some(s)) => Ok(("--spacing", s)),
-            (None, None) => Err(("neither", "--lengths 6.283185,6.283185,6.283185 for a 2 pi box")),
-            (Some(_), Some(_)) => Err(("both", "drop one of them")),
-        };
-        let (flag, values) = given.map_err(|(found, hint)| {
-            Error::usage("cannot settle the size of the box")
-                .item("--lengths, --spacing")
-                .expected("exactly one of them")
-                .found(found)
-                .hint(hint)
-        })?;
-        if !values.iter().all(|v| v.is_finite() && *v > 0.0) {
-            return Err(Error::usage("cannot settle the size of the box")
-                .item(flag)
-                .expected("3 finite numbers above 0")
-                .found(listed(values)));
+        for (flag, name) in [("--buoyancy", &self.buoyancy), ("--density", &self.density)] {
+            if name.as_ref().is_some_and(String::is_empty) {
+                return Err(Error::usage("cannot use the dataset names").item(flag).expected("a name that is not empty").found("nothing"));
+            }
+        }
+        // A plane needs no size along z: whether it is one is known only when its arrays are.
+        let needed = [0, 1].map(|a| self.coordinates[a].is_none());
+        let needed = [needed[0], needed[1], false];
+        match (&self.lengths, &self.spacing) {
+            (Some(l), None) => check_size("--lengths", l, needed)?,
+            (None, Some(s)) => check_size("--spacing", s, needed)?,
+            (None, None) if needed.contains(&true) => return Err(no_size()),
+            (None, None) => {}
+            (Some(_), Some(_)) => return Err(size_fault("both", "drop one of them")),
         }
         if !self.origin.iter().all(|v| v.is_finite()) {
             return Err(Error::usage("cannot place the box").item("--origin").expected("3 finite numbers").found(listed(&self.origin)));
         }
+        if let Some(pattern) = &self.time.name {
+            time::check(pattern)?;
+        }
+        if let Some(raw) = &self.raw {
+            raw.check(&order)?;
+        }
         Ok(order)
     }
+}
 
-    /// The grid of checked settings.
-    pub(super) fn grid(&self, n: [usize; 3]) -> Grid {
-        let spacing = match (self.lengths, self.spacing) {
-            (Some(l), _) => std::array::from_fn(|a| l[a] / n[a] as f64),
-            (None, Some(s)) => s,
-            (None, None) => unreachable!("refused by check"),
-        };
-        Grid { n, spacing, origin: self.origin, periodic: self.periodic, stretched: [None, None, None] }
+impl RawLayout {
+    /// Bytes of a value.
+    pub(super) fn width(&self) -> u64 {
+        if self.double { 8 } else { 4 }
     }
+
+    /// Bytes of a component.
+    pub(super) fn bytes(&self) -> u64 {
+        self.shape.iter().product::<usize>() as u64 * self.width()
+    }
+
+    fn check(&self, order: &Order) -> Result<()> {
+        let fault = || Error::usage("cannot use the layout of a file without a header");
+        let shape = self.shape.iter().map(usize::to_string).collect::<Vec<_>>().join(",");
+        if order.letters_of(self.shape.len()).is_none() {
+            return Err(fault()
+                .item("shape")
+                .expected(format!("{} numbers of samples, as --order {} names the axes", order.letters().len(), order.letters()))
+                .found(if shape.is_empty() { "none".into() } else { shape })
+                .hint("a plane has two"));
+        }
+        let bytes = self.shape.iter().try_fold(self.width(), |all, &n| all.checked_mul(n as u64));
+        if bytes.is_none_or(|b| b == 0 || b > i64::MAX as u64 / 64) {
+            return Err(fault().item("shape").expected("possible numbers of samples").found(shape));
+        }
+        match self.record_markers {
+            None | Some(4 | 8) => Ok(()),
+            Some(other) => Err(fault().item("record markers").expected("4 or 8 bytes").found(other.to_string())),
+        }
+    }
+}
+
+fn size_fault(found: &str, hint: &str) -> Error {
+    Error::usage("cannot settle the size of the box").item("--lengths, --spacing").expected("exactly one of them").found(found).hint(hint)
+}
+
+/// The error when the size of an axis is not given.
+pub(super) fn no_size() -> Error {
+    size_fault("neither", "--lengths 6.283185,6.283185,6.283185 for a 2 pi box")
+}
+
+/// Checks the entries of a triple that are needed.
+pub(super) fn check_size(flag: &str, size: &[f64; 3], needed: [bool; 3]) -> Result<()> {
+    if size.iter().zip(needed).all(|(v, needed)| !needed || (v.is_finite() && *v > 0.0)) {
+        return Ok(());
+    }
+    Err(Error::usage("cannot settle the size of the box").item(flag).expected("3 finite numbers above 0").found(listed(size)))
 }
 
 fn check_names(flag: &str, example: &str, names: Option<&[String]>) -> Result<()> {
@@ -173,14 +214,14 @@ fn check_names(flag: &str, example: &str, names: Option<&[String]>) -> Result<()
             .found(format!("{} ({})", names.len(), names.join(",")))
             .hint(format!("{flag} {example}"))
     };
-    if names.len() != 3 && names.len() != 1 {
-        return Err(fault("3 names (one dataset a component) or 1 name (a component axis)"));
+    if !(1..=3).contains(&names.len()) {
+        return Err(fault("3 names (one dataset a component; 2 on a plane) or 1 name (a component axis)"));
     }
     if names.iter().any(|n| n.is_empty()) {
         return Err(fault("names that are not empty"));
     }
-    if names.len() == 3 && (names[0] == names[1] || names[0] == names[2] || names[1] == names[2]) {
-        return Err(fault("3 different names"));
+    if (1..names.len()).any(|i| names[..i].contains(&names[i])) {
+        return Err(fault(&format!("{} different names", names.len())));
     }
     Ok(())
 }

@@ -178,7 +178,7 @@ fn bad_options() {
         ("--lengths 1 --periodic xx", "cannot read an option: --periodic: expected a subset of xyz, or none, found \"xx\""),
         (
             "--lengths 1 --order zyy",
-            "cannot use the axis order: --order: expected a permutation of xyz with an optional c first or last, found \"zyy\"; \
+            "cannot use the axis order: --order: expected a permutation of xyz (of xy for planes) with an optional c first or last, found \"zyy\"; \
              hint: --order zyx for arrays with z slowest and x fastest",
         ),
         ("--lengths 1 --viscosity -1", "cannot use a coefficient: --viscosity: expected a number above 0, found -1"),

@@ -62,11 +62,23 @@ fn descriptions_that_make_no_sense() {
     };
     check(
         &|s| s.order = "zyy".into(),
-        "cannot use the axis order: --order: expected a permutation of xyz with an optional c first or last, found \"zyy\"; hint: --order zyx for arrays with z slowest and x fastest",
+        "cannot use the axis order: --order: expected a permutation of xyz (of xy for planes) with an optional c first or last, found \"zyy\"; hint: --order zyx for arrays with z slowest and x fastest",
     );
     check(
-        &|s| s.velocity = names(&["u", "v"]),
-        "cannot use the dataset names: --velocity: expected 3 names (one dataset a component) or 1 name (a component axis), found 2 (u,v); hint: --velocity u,v,w",
+        &|s| s.velocity = names(&["u", "v", "w", "p"]),
+        "cannot use the dataset names: --velocity: expected 3 names (one dataset a component; 2 on a plane) or 1 name (a component axis), found 4 (u,v,w,p); hint: --velocity u,v,w",
+    );
+    check(
+        &|s| s.velocity = names(&["u", "u"]),
+        "cannot use the dataset names: --velocity: expected 2 different names, found 2 (u,u); hint: --velocity u,v,w",
+    );
+    check(
+        &|s| s.density = Some(String::new()),
+        "cannot use the dataset names: --density: expected a name that is not empty, found nothing",
+    );
+    check(
+        &|s| s.time.name = Some("snap_*.h5".into()),
+        "cannot read a pattern of times: \"snap_*.h5\": expected {time} once, where the number stands, found it 0 times; hint: for example out_t{time}.h5",
     );
     check(
         &|s| s.magnetic = names(&["bx", "by", "by"]),
@@ -242,7 +254,7 @@ fn datasets_of_a_wrong_kind() {
     check(
         "zyx",
         &[("u", GOOD), ("v", GOOD), ("w", &[9, 10, 12, 3])],
-        "cannot use the dataset: DIR/s.h5: /w: expected rank 3, as one of three components, found 9x10x12x3 (rank 4); hint: a dataset with a component axis is named alone: --velocity NAME",
+        "cannot use the dataset: DIR/s.h5: /w: expected rank 3 (2 on a plane), as one of three components, found 9x10x12x3 (rank 4); hint: a dataset with a component axis is named alone: --velocity NAME",
     );
     check(
         "zyx",
@@ -271,15 +283,15 @@ fn datasets_of_a_wrong_kind() {
     );
     check(
         "zyx",
-        &[("u", &[9, 10, 8]), ("v", &[9, 10, 8]), ("w", &[9, 10, 8])],
-        "cannot use the dataset: DIR/s.h5: /u: expected at least 9 samples along every axis (order-8 differences need 9), found 9x10x8; hint: --order gives the axes slowest first, with c for a component axis",
+        &[("u", &[9, 10, 1]), ("v", &[9, 10, 1]), ("w", &[9, 10, 1])],
+        "cannot use the dataset: DIR/s.h5: /u: expected at least 2 samples along x and y, found 9x10x1 (1 x 10 x 9 samples along x, y, z); hint: --order gives the axes slowest first; the axis of length 1 of a plane is z",
     );
     let named = InputSpec { magnetic: names(&["u"]), ..spec("zyx") };
     hdf5(&path, &[("u", GOOD)]);
     assert_eq!(
         fault(dir.path(), &path, &named),
         input(
-            "cannot use the dataset: DIR/s.h5: /u: expected rank 4, three space axes and a component axis, found 9x10x12 (rank 3); hint: --magnetic takes three names where every component has its own dataset"
+            "cannot use the dataset: DIR/s.h5: /u: expected rank 4 (3 on a plane), space axes and a component axis, found 9x10x12 (rank 3); hint: --magnetic takes three names where every component has its own dataset"
         )
     );
     hdf5(&path, &[("velocity", &[3, 9, 10, 3])]);
@@ -405,11 +417,11 @@ fn damaged_npy_files() {
     check(&long, "cannot read the npy file: DIR/s.npy: expected a header of at most 1048576 bytes, found 4278190196");
     check(
         &npy(1, "'<f4'", false, &[9, 10, 12], &[0; 4320]),
-        "cannot use the dataset: DIR/s.npy: expected rank 4, three space axes and a component axis, found 9x10x12 (rank 3); hint: --velocity takes three names where every component has its own dataset",
+        "cannot use the dataset: DIR/s.npy: expected rank 4 (3 on a plane), space axes and a component axis, found 9x10x12 (rank 3); hint: --velocity takes three names where every component has its own dataset",
     );
     check(
-        &npy(1, "'<f4'", true, &[3, 8, 10, 12], &[0; 11520]),
-        "cannot use the dataset: DIR/s.npy: expected at least 9 samples along every axis (order-8 differences need 9), found 12x10x8x3; hint: --order gives the axes slowest first, with c for a component axis",
+        &npy(1, "'<f4'", true, &[3, 1, 10, 12], &[0; 1440]),
+        "cannot use the dataset: DIR/s.npy: expected at least 2 samples along x and y, found 12x10x1x3 (1 x 10 x 12 samples along x, y, z); hint: --order gives the axes slowest first; the axis of length 1 of a plane is z",
     );
 }
 
@@ -422,7 +434,7 @@ fn names_that_do_not_fit_npy_files() {
     assert_eq!(
         fault(dir.path(), &path, &both),
         usage(
-            "cannot read two fields from one npy file: DIR/s.npy: --velocity, --magnetic: expected at most one of them, found both; hint: put the files into a folder and give the folder"
+            "cannot read several fields from one npy file: DIR/s.npy: --velocity, --magnetic: expected --velocity or --magnetic alone, found 2 fields; hint: put the files into a folder and give the folder"
         )
     );
     let other = InputSpec { velocity: names(&["u", "v", "w"]), ..spec("zyx") };

@@ -1,0 +1,216 @@
+//! What HDF5 files, `.npy` files and folders hold: arrays, attributes, groups, as text and numbers for inspection.
+
+use std::path::Path;
+
+use ::hdf5::types::{FixedAscii, FixedUnicode, FloatSize, TypeDescriptor, VarLenAscii, VarLenUnicode};
+use ::hdf5::{Attribute, Dataset, Datatype, Group, Location};
+
+use crate::base::error::{Error, Result};
+use crate::read::inspect::Item;
+use crate::read::shelf::{datasets, groups, open_file};
+use crate::read::{natural, npy};
+
+/// Most datasets and groups looked at, and longest values of an attribute shown.
+const MOST: usize = 4096;
+const SHOWN: usize = 8;
+const LONGEST_TEXT: usize = 200;
+
+/// An attribute: its text, and its values where they are numbers.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) struct Named {
+    /// Name.
+    pub name: String,
+    /// Text of the value.
+    pub text: String,
+    /// Values.
+    pub numbers: Vec<f64>,
+}
+
+/// What stands in a file.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub(super) struct Inside {
+    /// Arrays.
+    pub items: Vec<Item>,
+    /// Attributes of the root group.
+    pub attributes: Vec<Named>,
+    /// Groups and their attributes, with paths.
+    pub groups: Vec<(String, Vec<Named>)>,
+    /// Attributes of datasets, with the path of the dataset.
+    pub of_items: Vec<(String, Vec<Named>)>,
+    /// Paths of datasets with one axis that may be coordinates, and their numbers of values.
+    pub lines: Vec<(String, usize)>,
+    /// Values of datasets that hold one number.
+    pub scalars: Vec<(String, f64)>,
+}
+
+/// What an HDF5 file holds.
+pub(super) fn hdf5(path: &Path) -> Result<Inside> {
+    let file = open_file(path, None)?;
+    let mut found = Vec::new();
+    datasets(&file, "", 0, MOST, &mut found);
+    let mut inside = Inside { attributes: attributes(&file), ..Inside::default() };
+    for (name, dataset) in found {
+        let own = attributes(&dataset);
+        if dataset.ndim() == 1 && axis_of(&name).is_some() {
+            inside.lines.push((name.clone(), dataset.size()));
+        }
+        if dataset.size() == 1
+            && let Ok(values) = dataset.read_raw::<f64>()
+        {
+            inside.scalars.push((name.clone(), values[0]));
+        }
+        inside.items.push(Item {
+            name: name.clone(),
+            shape: dataset.shape(),
+            values: dataset.dtype().map_or("unknown".into(), |t| type_text(&t)),
+            storage: storage(&dataset),
+            attributes: own.iter().map(|a| (a.name.clone(), a.text.clone())).collect(),
+        });
+        inside.of_items.push((name, own));
+    }
+    walk(&file, "", 0, &mut inside.groups);
+    Ok(inside)
+}
+
+/// The axis whose coordinates a name says.
+pub(super) fn axis_of(name: &str) -> Option<usize> {
+    let last = name.rsplit('/').next().unwrap_or(name).to_lowercase();
+    let last = last.strip_suffix(".npy").unwrap_or(&last);
+    (0..3).find(|&a| {
+        let axis = ["x", "y", "z"][a];
+        let forms = ["", "c", "_c", "_centre", "_center", "_coord", "_coordinates", "coord"];
+        forms.iter().any(|f| last == format!("{axis}{f}"))
+    })
+}
+
+fn walk(group: &Group, prefix: &str, depth: usize, found: &mut Vec<(String, Vec<Named>)>) {
+    let mut names = groups(group);
+    names.sort_by(|a, b| natural::compare(a, b));
+    for name in names {
+        if found.len() >= MOST || depth > 8 {
+            return;
+        }
+        let Ok(inner) = group.group(&name) else { continue };
+        let full = format!("{prefix}/{name}");
+        found.push((full.clone(), attributes(&inner)));
+        walk(&inner, &full, depth + 1, found);
+    }
+}
+
+fn attributes(place: &Location) -> Vec<Named> {
+    let mut names = place.attr_names().unwrap_or_default();
+    names.sort_by(|a, b| natural::compare(a, b));
+    names.into_iter().filter_map(|name| place.attr(&name).ok().map(|a| named(name, &a))).collect()
+}
+
+fn named(name: String, attribute: &Attribute) -> Named {
+    let shape = attribute.shape();
+    let size: usize = shape.iter().product();
+    if size <= 1024
+        && let Ok(numbers) = attribute.read_raw::<f64>()
+        && !numbers.is_empty()
+    {
+        let mut shown: Vec<String> = numbers.iter().take(SHOWN).map(f64::to_string).collect();
+        if numbers.len() > SHOWN {
+            shown.push(format!("and {} more", numbers.len() - SHOWN));
+        }
+        return Named { name, text: shown.join(", "), numbers };
+    }
+    let mut text = text_of(attribute).unwrap_or_else(|| "another type".into()).split_whitespace().collect::<Vec<_>>().join(" ");
+    if let Some((at, _)) = text.char_indices().nth(LONGEST_TEXT) {
+        text.truncate(at);
+    }
+    Named { name, text, numbers: Vec::new() }
+}
+
+/// The text of a string attribute.
+fn text_of(attribute: &Attribute) -> Option<String> {
+    fn joined<S: ToString>(all: Vec<S>) -> String {
+        all.iter().take(SHOWN).map(ToString::to_string).collect::<Vec<_>>().join(", ")
+    }
+    match attribute.dtype().ok()?.to_descriptor().ok()? {
+        TypeDescriptor::VarLenUnicode => attribute.read_raw::<VarLenUnicode>().ok().map(joined),
+        TypeDescriptor::VarLenAscii => attribute.read_raw::<VarLenAscii>().ok().map(joined),
+        TypeDescriptor::FixedAscii(n) if n <= 256 => attribute.read_raw::<FixedAscii<256>>().ok().map(joined),
+        TypeDescriptor::FixedUnicode(n) if n <= 256 => attribute.read_raw::<FixedUnicode<256>>().ok().map(joined),
+        _ => None,
+    }
+}
+
+fn type_text(dtype: &Datatype) -> String {
+    let order = match dtype.byte_order() {
+        ::hdf5::datatype::ByteOrder::BigEndian => " big-endian",
+        ::hdf5::datatype::ByteOrder::LittleEndian => " little-endian",
+        _ => "",
+    };
+    match dtype.to_descriptor() {
+        Ok(TypeDescriptor::Float(FloatSize::U4)) => format!("float32{order}"),
+        Ok(TypeDescriptor::Float(FloatSize::U8)) => format!("float64{order}"),
+        Ok(other) => other.to_string().lines().collect::<Vec<_>>().join(" "),
+        Err(_) => format!("another type of {} bytes", dtype.size()),
+    }
+}
+
+fn storage(dataset: &Dataset) -> String {
+    let Some(chunk) = dataset.chunk() else {
+        return if dataset.layout() == ::hdf5::dataset::Layout::Contiguous { "contiguous".into() } else { "compact or virtual".into() };
+    };
+    let edges: Vec<String> = chunk.iter().map(usize::to_string).collect();
+    let mut out = format!("chunks {}", edges.join("x"));
+    for filter in dataset.filters() {
+        let name = match filter.id() {
+            1 => "gzip".into(),
+            2 => "shuffle".into(),
+            3 => "checksum".into(),
+            4 => "szip".into(),
+            5 => "nbit".into(),
+            6 => "scale-offset".into(),
+            other => format!("filter {other}"),
+        };
+        out = format!("{out}, {name}");
+    }
+    out
+}
+
+/// What a `.npy` file or a folder of them holds.
+pub(super) fn npy(path: &Path) -> Result<Inside> {
+    let mut inside = Inside::default();
+    let folder = path.is_dir();
+    let mut files = vec![path.to_path_buf()];
+    if folder {
+        let io = |e: std::io::Error| Error::input("cannot look into the folder").at(path).found(e.to_string());
+        files = std::fs::read_dir(path)
+            .map_err(io)?
+            .flatten()
+            .map(|e| e.path())
+            .filter(|p| p.extension().is_some_and(|e| e == "npy"))
+            .collect();
+        files.sort_by(|a, b| natural::compare(&a.to_string_lossy(), &b.to_string_lossy()));
+        files.truncate(MOST);
+        if files.is_empty() {
+            return Err(Error::input("cannot look into the folder").at(path).expected("npy files").found("none"));
+        }
+    }
+    for file in files {
+        let name = file.file_name().unwrap_or_default().to_string_lossy().into_owned();
+        match npy::describe(&file) {
+            Ok((shape, values)) => {
+                if shape.len() == 1 && axis_of(&name).is_some() {
+                    inside.lines.push((name.clone(), shape[0]));
+                }
+                inside.items.push(Item { name, shape, values, storage: "contiguous".into(), attributes: Vec::new() });
+            }
+            Err(e) if !folder => return Err(e),
+            Err(_) => {
+                inside.items.push(Item {
+                    name,
+                    shape: Vec::new(),
+                    values: "not usable".into(),
+                    storage: String::new(),
+                    attributes: Vec::new(),
+                });
+            }
+        }
+    }
+    Ok(inside)
+}
