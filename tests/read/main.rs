@@ -2,5 +2,10 @@
 
 mod errors;
 mod files;
+mod flows;
 mod hdf5;
 mod npy;
+mod planes;
+mod raw;
+mod region;
+mod staggered;
