@@ -1,5 +1,6 @@
 //! Reading snapshots: every storage and axis order comes back value for value, every fault has its exact message.
 
+mod coordinates;
 mod errors;
 mod files;
 mod flows;
@@ -8,4 +9,6 @@ mod npy;
 mod planes;
 mod raw;
 mod region;
+mod series;
 mod staggered;
+mod steps;
