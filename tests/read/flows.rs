@@ -30,9 +30,7 @@ pub fn values(path: &Path, spec: &InputSpec) -> Vec<Vec<f64>> {
 pub fn values_of(snapshot: &SnapshotRef, spec: &InputSpec) -> Vec<Vec<f64>> {
     let read = |step: usize| -> Vec<Vec<f64>> {
         match open(snapshot, spec).unwrap_or_else(|e| panic!("{e}")).source {
-            AnySource::F32(mut s) => {
-                read_typed(s.as_mut(), step).into_iter().map(|c| c.into_iter().map(f64::from).collect()).collect()
-            }
+            AnySource::F32(mut s) => read_typed(s.as_mut(), step).into_iter().map(|c| c.into_iter().map(f64::from).collect()).collect(),
             AnySource::F64(mut s) => read_typed(s.as_mut(), step),
         }
     };

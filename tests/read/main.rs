@@ -5,6 +5,7 @@ mod errors;
 mod files;
 mod flows;
 mod hdf5;
+mod inspect;
 mod npy;
 mod planes;
 mod raw;

@@ -65,7 +65,8 @@ fn every_type_offset_and_record_in_one_file() {
                     check(&path, &raw(l.clone()), components);
                     // Components together at every sample.
                     let cells = all.len() / components;
-                    let mixed: Vec<f64> = (0..cells).flat_map(|i| (0..components).map(move |c| (c, i))).map(|(c, i)| all[c * cells + i]).collect();
+                    let mixed: Vec<f64> =
+                        (0..cells).flat_map(|i| (0..components).map(move |c| (c, i))).map(|(c, i)| all[c * cells + i]).collect();
                     let path = write(dir.path(), "flow.dat", &[head.clone(), record(bytes(&mixed, &l), &l)].concat());
                     check(&path, &InputSpec { order: "zyxc".into(), ..raw(l.clone()) }, components);
                 }

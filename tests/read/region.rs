@@ -107,12 +107,7 @@ fn regions_that_cannot_be_cut() {
     check(2, true, Stretch::Indices(-1, 9), "z samples -1..9: expected at most one period, 9 samples, found 10 samples");
     check(0, true, Stretch::Positions(0.0, 12.0), "x positions 0 to 12: expected at most one period, 12 samples, found 13 samples");
     check(0, true, Stretch::Positions(2.2, 2.8), "x positions 2.2 to 2.8: expected at least 2 samples, found 0; hint: widen the region");
-    check(
-        0,
-        true,
-        Stretch::Positions(3.0, 2.0),
-        "x positions 3 to 2: expected two finite positions in ascending order, found 3 and 2",
-    );
+    check(0, true, Stretch::Positions(3.0, 2.0), "x positions 3 to 2: expected two finite positions in ascending order, found 3 and 2");
     check(
         1,
         false,

@@ -78,7 +78,10 @@ fn errors_are_of_order_eight() {
             // Halving the spacing divides an error of order 8 by 256; beyond open faces it is not in its limit yet.
             let order = (coarse / fine).log2();
             let wanted = if periodic { 7.8..8.2 } else { 7.2..9.8 };
-            assert!(wanted.contains(&order), "{staggering:?} periodic {periodic} stretched {stretched}: order {order}, {coarse:e} {fine:e}");
+            assert!(
+                wanted.contains(&order),
+                "{staggering:?} periodic {periodic} stretched {stretched}: order {order}, {coarse:e} {fine:e}"
+            );
             assert!(fine < if periodic { 2e-8 } else { 2e-5 }, "{staggering:?} {periodic} {stretched}: {fine:e}");
         }
     }
