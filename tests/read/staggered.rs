@@ -180,3 +180,61 @@ fn chunks_and_interleaved_components_give_the_same() {
     file.close().unwrap();
     assert_eq!(values(&other, &own), want);
 }
+
+/// Magnetic components with one more face along their own axis, `f` of component and face index.
+fn faced(path: &Path, n: [usize; 3], velocity: bool, f: impl Fn(usize, [usize; 3]) -> f64) {
+    let file = ::hdf5::File::create(path).unwrap();
+    if velocity {
+        for name in ["u", "v", "w"] {
+            put::<f64>(&file, name, &[n[2], n[1], n[0]], &filled(n, |_, _, _| 1.0));
+        }
+    }
+    for (c, name) in ["bx", "by", "bz"].into_iter().enumerate() {
+        let mut own = n;
+        own[c] += 1;
+        put::<f64>(&file, name, &[own[2], own[1], own[0]], &filled(own, |x, y, z| f(c, [x, y, z])));
+    }
+    file.close().unwrap();
+}
+
+#[test]
+fn arrays_with_a_face_behind_the_last_sample() {
+    let dir = tempfile::tempdir().unwrap();
+    let path = dir.path().join("s.h5");
+    let n = [12, 10, 9];
+    // Across a periodic axis the last face is the first again.
+    let wrapped = |c: usize, i: [usize; 3]| field(c, std::array::from_fn(|a| (i[a] % n[a]) as f64 / n[a] as f64));
+    let own = InputSpec { staggering: Staggering::LowerFaces, ..spec("zyx") };
+    faced(&path, n, true, wrapped);
+    let got = values(&path, &own);
+    let plain = dir.path().join("p.h5");
+    let all = |c: usize| filled(n, |x, y, z| wrapped(c, [x, y, z]));
+    hdf5(&plain, &[9, 10, 12], &[("bx", all(0)), ("by", all(1)), ("bz", all(2))]);
+    assert_eq!(got[3..], values(&plain, &own));
+    faced(&path, n, false, wrapped);
+    assert_eq!(values(&path, &own), got[3..]);
+    // At an open face it is used: sample n - 1 lies between faces, and a polynomial of degree 7 is exact.
+    let p = |x: f64| 1.0 + x * (2.0 + x * (-1.0 + x * (0.5 + x * (1.5 + x * (-2.0 + x * (0.7 - 1.1 * x))))));
+    let open = InputSpec { periodic: [false; 3], ..own.clone() };
+    for velocity in [false, true] {
+        faced(&path, n, velocity, |c, i| p((i[c] as f64 - 0.5) / 8.0));
+        let got = values(&path, &open);
+        for (c, b) in got[got.len() - 3..].iter().enumerate() {
+            let exact = filled(n, |x, y, z| p([x, y, z][c] as f64 / 8.0));
+            let worst = b.iter().zip(&exact).fold(0.0f64, |w, (a, b)| w.max((a - b).abs()));
+            assert!(worst < 1e-12, "component {c}: {worst:e}");
+        }
+        // It matters: another value there changes the last samples.
+        faced(&path, n, velocity, |c, i| if i[c] == n[c] { 100.0 } else { p((i[c] as f64 - 0.5) / 8.0) });
+        let other = values(&path, &open);
+        assert_ne!(other[got.len() - 1].last(), got[got.len() - 1].last());
+    }
+    let text = fault(dir.path(), &path.clone().into(), &InputSpec { staggering: Staggering::Centres, ..own.clone() }).1;
+    assert_eq!(
+        text,
+        "cannot use the dataset: DIR/s.h5: /bx: expected 12 x 10 x 9 samples along x, y, z as in s.h5:/u, found 13 x 10 x 9 samples along \
+         x, y, z; hint: a magnetic component with one more face than samples is one on lower faces: say so"
+    );
+    let text = fault(dir.path(), &path.into(), &InputSpec { staggering: Staggering::UpperFaces, ..own }).1;
+    assert!(text.ends_with("is one on lower faces: say so"), "{text}");
+}
