@@ -5,6 +5,7 @@ use crate::model::source::Fields;
 use crate::read::header::Header;
 use crate::read::names::{Choice, Field};
 use crate::read::order::{Axes, End, Order};
+use crate::read::spec::Staggering;
 
 const WHAT: &str = "cannot use the dataset";
 const ORDER_HINT: &str = "--order gives the axes slowest first, with c for a component axis";
@@ -17,6 +18,8 @@ pub(super) struct Arrangement {
     pub samples: [usize; 3],
     /// Where the components go.
     pub slots: Slots,
+    /// Per axis, whether its magnetic component has one more sample along it: the face behind the last sample.
+    pub last_face: [bool; 3],
 }
 
 /// Where the components of the arrays go among those of the snapshot: velocity, magnetic field, buoyancy, and last the density
@@ -81,31 +84,50 @@ impl Slots {
     }
 }
 
-/// Checks ranks, component axes and shapes. `headers` follow the names of `choices`.
+/// Checks ranks, component axes and shapes. `headers` follow the names of `choices`. On lower faces a magnetic component may have one
+/// more sample along its own axis.
 ///
 /// # Panics
 /// When the numbers of names and headers differ or are zero.
-pub(super) fn arrange(choices: &[Choice], headers: &[Header], order: &Order) -> Result<Arrangement> {
-    let sets: Vec<(Field, usize)> = choices.iter().flat_map(|(f, names)| names.iter().map(|_| (*f, names.len()))).collect();
+pub(super) fn arrange(choices: &[Choice], headers: &[Header], order: &Order, staggering: Staggering) -> Result<Arrangement> {
+    // Field, number of names and place among them, for each header.
+    let places = |(f, names): &Choice| (0..names.len()).map(|c| (*f, names.len(), c)).collect::<Vec<_>>();
+    let sets: Vec<(Field, usize, usize)> = choices.iter().flat_map(places).collect();
     assert_eq!(sets.len(), headers.len(), "one header a name");
     let mut axes = Vec::with_capacity(headers.len());
-    for (header, &(field, names)) in headers.iter().zip(&sets) {
+    for (header, &(field, names, _)) in headers.iter().zip(&sets) {
         axes.push(axes_of(header, field, names, order)?);
     }
     let samples_of = |i: usize| {
         let shape = axes[i].full(&headers[i].shape);
         axes[i].space.map(|a| shape[a])
     };
-    let samples = samples_of(0);
+    // The axis along which an array may have one face more.
+    let faced = |i: usize| (sets[i].0 == Field::Magnetic && sets[i].1 > 1).then_some(sets[i].2);
+    let first = (0..headers.len()).find(|&i| faced(i).is_none());
+    let samples = match first {
+        Some(first) => samples_of(first),
+        // Components of a magnetic field alone: along every axis the other two have no face more.
+        None => (1..headers.len()).fold(samples_of(0), |n, i| std::array::from_fn(|a| n[a].min(samples_of(i)[a]))),
+    };
+    let first = first.or_else(|| (0..headers.len()).find(|&i| samples_of(i) == samples)).unwrap_or(0);
+    let mut last_face = [false; 3];
     for (i, header) in headers.iter().enumerate() {
         let own = samples_of(i);
-        if own != samples {
+        let mut less = own;
+        if let Some(a) = faced(i).filter(|&a| own[a] == samples[a] + 1) {
+            less[a] -= 1;
+            last_face[a] = less == samples && staggering == Staggering::LowerFaces;
+        }
+        if own != samples && !(less == samples && staggering == Staggering::LowerFaces) {
             let text = |n: [usize; 3]| format!("{} x {} x {} samples along x, y, z", n[0], n[1], n[2]);
-            return Err(header
-                .fault(WHAT)
-                .expected(format!("{} as in {}", text(samples), headers[0].label))
-                .found(text(own))
-                .hint("all components of a snapshot share one grid"));
+            let hint = if less == samples {
+                "a magnetic component with one more face than samples is one on lower faces: say so"
+            } else {
+                "all components of a snapshot share one grid"
+            };
+            let from = if samples_of(first) == samples { format!(" as in {}", headers[first].label) } else { String::new() };
+            return Err(header.fault(WHAT).expected(format!("{}{from}", text(samples))).found(text(own)).hint(hint));
         }
         check_samples(header, own)?;
         if sets[i].1 == 2 && own[2] != 1 {
@@ -118,7 +140,7 @@ pub(super) fn arrange(choices: &[Choice], headers: &[Header], order: &Order) -> 
     }
     let mut next = axes.iter().map(|a| a.components);
     let parts: Vec<(Field, Vec<usize>)> = choices.iter().map(|(f, names)| (*f, next.by_ref().take(names.len()).collect())).collect();
-    Ok(Arrangement { samples, slots: Slots::new(&parts), axes })
+    Ok(Arrangement { samples, slots: Slots::new(&parts), axes, last_face })
 }
 
 /// Refuses what is no box and no plane; the scheme of derivatives may want more samples later.

@@ -33,7 +33,7 @@ pub(super) fn grid(spec: &InputSpec, n: [usize; 3], coordinates: &[Option<Coordi
                 grid.origin[a] = first;
                 if n[a] > 1 {
                     grid.spacing[a] = spacing;
-                    notes.push(format!("{axis} axis: the coordinates {} are equally spaced, {spacing} apart", c.place()));
+                    notes.push(format!("{axis} axis: the coordinates {} are equally spaced, {} apart", c.place(), short(spacing)));
                 }
             }
             Spaced::Unequal(positions) => {
@@ -44,4 +44,9 @@ pub(super) fn grid(spec: &InputSpec, n: [usize; 3], coordinates: &[Option<Coordi
         }
     }
     Ok((grid, notes))
+}
+
+/// A number with nine digits, enough to recognise it.
+fn short(value: f64) -> f64 {
+    format!("{value:.8e}").parse().unwrap_or(value)
 }

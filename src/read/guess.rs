@@ -99,12 +99,11 @@ fn names(inside: &Inside, single: Option<&str>, g: &mut Guess) -> Option<(String
         let find = |sets: &[Vec<String>]| -> Option<(Vec<String>, Vec<usize>)> { sets.iter().find_map(|set| complete(set, &here)) };
         let (u, b) = (find(&velocity), find(&magnetic));
         let Some(shape) = u.as_ref().or(b.as_ref()).map(|found| found.1.clone()) else { continue };
-        // Names in the root or in a step are relative.
-        let relative = place.is_empty() || g.steps.first().is_some_and(|s| place == format!("/{s}"));
-        let full = |name: String| if relative { name } else { format!("{place}/{name}") };
+        let full = |name: String| said(&format!("{place}/{name}"), &place, &g.steps);
+        let full = |found: Option<(Vec<String>, Vec<usize>)>| found.map(|(set, _)| set.into_iter().map(full).collect::<Vec<_>>());
+        let (u, b) = (full(u), full(b));
         for (field, found, slot) in [("velocity", u, 0), ("magnetic field", b, 1)] {
-            let Some((set, _)) = found else { continue };
-            let set: Vec<String> = set.into_iter().map(full).collect();
+            let Some(set) = found else { continue };
             g.reasons.push(format!("{} named as a {field}", set.join(",")));
             if slot == 0 { g.spec.velocity = Some(set) } else { g.spec.magnetic = Some(set) }
         }
@@ -116,6 +115,15 @@ fn names(inside: &Inside, single: Option<&str>, g: &mut Guess) -> Option<(String
 /// The rest of a path below a place.
 fn rest<'a>(path: &'a str, place: &str) -> Option<&'a str> {
     path.strip_prefix(place).map(|r| r.trim_start_matches('/'))
+}
+
+/// How a path is named: relative to the root or to the step where the fields are in one of them, else in full.
+fn said(path: &str, place: &str, steps: &[String]) -> String {
+    let relative = place.is_empty() || steps.first().is_some_and(|s| place == format!("/{s}"));
+    match rest(path, place) {
+        Some(name) if relative && !name.contains('/') => name.into(),
+        _ => path.into(),
+    }
 }
 
 /// The names of a set as they are spelled, when all are there with one shape that suits.
@@ -177,13 +185,12 @@ fn order(shape: &[usize], lines: &[(usize, String, usize)], g: &mut Guess) -> [u
 fn scalars(inside: &Inside, place: &str, shape: &[usize], g: &mut Guess) {
     let single = g.spec.velocity.as_ref().or(g.spec.magnetic.as_ref()).is_some_and(|n| n.len() == 1);
     let rank = shape.len() - usize::from(single);
-    let relative = g.spec.velocity.as_ref().or(g.spec.magnetic.as_ref()).is_some_and(|n| !n[0].starts_with('/'));
     for (words, density) in [(&DENSITY[..], true), (&BUOYANCY[..], false)] {
         let found = inside.items.iter().find_map(|i| {
             let name = rest(&i.name, place)?;
             let plain = name.strip_suffix(".npy").unwrap_or(name).to_lowercase();
             let sized = i.shape.len() == rank && (single || i.shape == shape);
-            (sized && words.contains(&plain.as_str())).then(|| if relative { name.to_string() } else { i.name.clone() })
+            (sized && words.contains(&plain.as_str())).then(|| said(&i.name, place, &g.steps))
         });
         let Some(name) = found else { continue };
         g.reasons.push(format!("{name} named as a {}", if density { "density" } else { "buoyancy" }));
@@ -196,10 +203,7 @@ fn coordinates(lines: &[(usize, String, usize)], samples: [usize; 3], place: &st
         if samples[*axis] != *n || *n < 2 {
             continue;
         }
-        let name = match rest(path, place) {
-            Some(name) if !name.contains('/') && g.steps.first().is_none_or(|s| place == format!("/{s}")) => name.to_string(),
-            _ => path.clone(),
-        };
+        let name = said(path, place, &g.steps);
         g.reasons.push(format!("{name} has as many numbers as samples along {}", ["x", "y", "z"][*axis]));
         g.spec.coordinates[*axis] = Some(name);
     }
@@ -257,7 +261,7 @@ fn time(inside: &Inside, attributes: &[&Named], place: &str, g: &mut Guess) {
     }
     let near = |name: &str| rest(name, place).is_some_and(|r| TIMES.contains(&r.to_lowercase().as_str()));
     if let Some((path, value)) = inside.scalars.iter().find(|(path, _)| near(path)) {
-        let name = rest(path, place).unwrap_or(path).to_string();
+        let name = said(path, place, &g.steps);
         g.time = Some(*value);
         g.reasons.push(format!("time from the dataset {name}"));
         g.spec.time.dataset = Some(name);

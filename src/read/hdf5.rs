@@ -73,7 +73,7 @@ pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &O
             places.push((file, item));
         }
     }
-    let arrangement = arrange(&choices, &headers, order)?;
+    let arrangement = arrange(&choices, &headers, order, spec.staggering)?;
     let time = times(&shelf, spec, &places[0], &datasets[0]);
     let coordinates = coordinates_of(&shelf, spec)?;
     let plans: Vec<Plan> = places.iter().zip(&datasets).zip(&arrangement.axes).map(|((p, d), axes)| Plan::new(&p.0, d, axes)).collect();
@@ -112,7 +112,7 @@ pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &O
         arrays.push(Array { header, axes, store, depth: plan.depth, filtered: plan.filtered });
     }
     let arrays = Arrays::new(arrays, arrangement.slots, arrangement.samples);
-    Ok(Arrays { time, coordinates, ..arrays })
+    Ok(Arrays { time, coordinates, last_face: arrangement.last_face, ..arrays })
 }
 
 /// How a dataset is best read.

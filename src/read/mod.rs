@@ -192,13 +192,13 @@ impl Kind {
 
 /// The layers over the arrays, the outermost a source.
 fn assemble<T: Real + ::hdf5::H5Type>(arrays: Arrays, grid: Grid, spec: &InputSpec) -> Result<Box<dyn PlaneSource<T>>> {
-    let Arrays { arrays, slots, samples, .. } = arrays;
+    let Arrays { arrays, slots, samples, last_face, .. } = arrays;
     let fields = slots.fields;
     let region = region::settle(&spec.region, &grid)?;
     let density = slots.density.then(|| arrays.last().map(|a| a.header.clone())).flatten();
     let mut layer: Box<dyn Layer<T>> = Box::new(FileLayer::new(arrays, &slots, samples));
     if fields.magnetic && spec.staggering != Staggering::Centres {
-        layer = Box::new(Centred::new(layer, fields.first_magnetic(), &grid, spec.staggering));
+        layer = Box::new(Centred::new(layer, fields.first_magnetic(), &grid, spec.staggering, last_face));
     }
     if let Some(header) = density {
         layer = Box::new(Alfvenic::new(layer, fields.first_magnetic(), fields.components(), header));

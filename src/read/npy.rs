@@ -54,7 +54,7 @@ pub(super) fn open_file(path: &Path, spec: &InputSpec, order: &Order) -> Result<
             .hint("for one file a component give their folder"));
     }
     let file = read_header(path, own.clone())?;
-    assemble(&[(field, vec![own])], vec![file], order)
+    assemble(&[(field, vec![own])], vec![file], spec, order)
 }
 
 /// A folder: names are those of the files in it.
@@ -76,7 +76,7 @@ pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: &Order) -> Res
         }
         files.push(read_header(&path, label(folder, name))?);
     }
-    assemble(&choices, files, order)
+    assemble(&choices, files, spec, order)
 }
 
 /// Files whose names are those of a path with the component's name in its place.
@@ -98,7 +98,7 @@ pub(super) fn open_many(path: &Path, spec: &InputSpec, order: &Order) -> Result<
         let own = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
         files.push(read_header(&path, own)?);
     }
-    assemble(&choices, files, order)
+    assemble(&choices, files, spec, order)
 }
 
 /// The shape of a file, if there is one. A damaged one counts as present, so that its damage is reported and not its absence.
@@ -127,15 +127,16 @@ pub(super) fn line(path: &Path) -> Result<(Vec<f64>, bool)> {
     Ok((values, single))
 }
 
-fn assemble(choices: &[Choice], files: Vec<NpyFile>, order: &Order) -> Result<Arrays> {
+fn assemble(choices: &[Choice], files: Vec<NpyFile>, spec: &InputSpec, order: &Order) -> Result<Arrays> {
     let headers: Vec<Header> = files.iter().map(|f| f.header.clone()).collect();
-    let arrangement = arrange(choices, &headers, order)?;
+    let arrangement = arrange(choices, &headers, order, spec.staggering)?;
     let arrays = files.into_iter().zip(arrangement.axes).map(|(f, axes)| {
         let header = Header { shape: axes.full(&f.header.shape), ..f.header };
         let store = Store::Raw(RawArray::new(header.clone(), f.file, f.offset, f.big_endian));
         Array { header, axes, store, depth: 1, filtered: false }
     });
-    Ok(Arrays::new(arrays.collect(), arrangement.slots, arrangement.samples))
+    let arrays = Arrays::new(arrays.collect(), arrangement.slots, arrangement.samples);
+    Ok(Arrays { last_face: arrangement.last_face, ..arrays })
 }
 
 fn with_extension(name: &str) -> String {

@@ -53,6 +53,8 @@ pub(super) struct Arrays {
     pub slots: Slots,
     /// Samples along x, y, z.
     pub samples: [usize; 3],
+    /// Per axis, whether its magnetic component has a face behind the last sample.
+    pub last_face: [bool; 3],
     /// Time, where it is found inside the files.
     pub time: FoundTime,
     /// Coordinates, where they are named.
@@ -80,7 +82,16 @@ impl Arrays {
             components[zero] = "no dataset".into();
         }
         components.truncate(slots.fields.components());
-        Arrays { arrays, slots, samples, time: FoundTime::default(), coordinates: [None, None, None], datasets, components }
+        Arrays {
+            arrays,
+            slots,
+            samples,
+            last_face: [false; 3],
+            time: FoundTime::default(),
+            coordinates: [None, None, None],
+            datasets,
+            components,
+        }
     }
 
     /// Whether values that are read are wider than f32.

@@ -27,7 +27,8 @@ pub enum Staggering {
     /// At the samples, as all other fields.
     #[default]
     Centres,
-    /// bx half a cell below the sample in x, by in y, bz in z.
+    /// bx half a cell below the sample in x, by in y, bz in z. In HDF5 and `.npy` files each may have one more sample along its own
+    /// axis, the face behind the last sample.
     LowerFaces,
     /// Half a cell above.
     UpperFaces,

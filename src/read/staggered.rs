@@ -32,10 +32,10 @@ struct Taps {
     weights: [f64; WIDTH],
 }
 
-/// The taps of all samples of an axis.
-fn taps(grid: &Grid, axis: usize, upper: bool) -> Vec<Taps> {
+/// The taps of all samples of an axis, from its number of faces.
+fn taps(grid: &Grid, axis: usize, upper: bool, faces: usize) -> Vec<Taps> {
     let n = grid.n[axis];
-    let width = WIDTH.min(n);
+    let width = WIDTH.min(faces);
     // Face i lies before sample i, or behind it.
     let lowest = if upper { -(WIDTH as isize) / 2 } else { 1 - (WIDTH as isize) / 2 };
     let face = |i: usize| {
@@ -48,7 +48,7 @@ fn taps(grid: &Grid, axis: usize, upper: bool) -> Vec<Taps> {
         if grid.periodic[axis] {
             return Taps { first: ideal, weights: MIDDLE };
         }
-        let first = ideal.clamp(0, (n - width) as isize);
+        let first = ideal.clamp(0, (faces - width) as isize);
         if uniform && first == ideal && width == WIDTH {
             return Taps { first, weights: MIDDLE };
         }
@@ -68,6 +68,8 @@ pub(super) struct Centred<T> {
     inner: Box<dyn Layer<T>>,
     /// The first magnetic component.
     first: usize,
+    /// Faces along each axis: as many as samples, or one more at an open face.
+    faces: [usize; 3],
     /// Per axis; none where nothing is to be done.
     taps: Arc<[Option<Vec<Taps>>; 3]>,
     planes: Planes<T>,
@@ -82,12 +84,14 @@ struct Planes<T> {
 }
 
 impl<T: Real> Centred<T> {
-    /// The components of `inner`, of which `first` and the next two are magnetic.
-    pub fn new(inner: Box<dyn Layer<T>>, first: usize, grid: &Grid, staggering: Staggering) -> Self {
+    /// The components of `inner`, of which `first` and the next two are magnetic; windows of `inner` may reach the last face.
+    pub fn new(inner: Box<dyn Layer<T>>, first: usize, grid: &Grid, staggering: Staggering, last_face: [bool; 3]) -> Self {
         let upper = staggering == Staggering::UpperFaces;
-        let taps = Arc::new([0, 1, 2].map(|a| (grid.n[a] > 1).then(|| taps(grid, a, upper))));
+        // Across a periodic axis the last face is the first again.
+        let faces = [0, 1, 2].map(|a| grid.n[a] + usize::from(last_face[a] && !grid.periodic[a]));
+        let taps = Arc::new([0, 1, 2].map(|a| (grid.n[a] > 1).then(|| taps(grid, a, upper, faces[a]))));
         let planes = Planes { window: [0..0, 0..0], held: Vec::new() };
-        Centred { inner, first, taps, planes, scratch: Vec::new(), padded: Vec::new() }
+        Centred { inner, first, faces, taps, planes, scratch: Vec::new(), padded: Vec::new() }
     }
 
     /// Reads one component.
@@ -107,7 +111,7 @@ impl<T: Real> Centred<T> {
     fn along_x(&mut self, at: &Window, out: &mut [T], among: usize) -> Result<()> {
         let all = Arc::clone(&self.taps);
         let Some(taps) = &all[0] else { return self.component(self.first, at, out, among) };
-        let n = taps.len();
+        let n = self.faces[0];
         let wide = at.with(0, 0..n);
         let [nx, ny, _] = at.size();
         let (mut z, batch) = (at.range[2].start, self.batch(&wide));
@@ -143,7 +147,7 @@ impl<T: Real> Centred<T> {
     fn along_y(&mut self, at: &Window, out: &mut [T], among: usize) -> Result<()> {
         let all = Arc::clone(&self.taps);
         let Some(taps) = &all[1] else { return self.component(self.first + 1, at, out, among) };
-        let n = taps.len();
+        let n = self.faces[1];
         let wide = at.with(1, 0..n);
         let [nx, ny, _] = at.size();
         let (mut z, batch) = (at.range[2].start, self.batch(&wide));
@@ -168,7 +172,7 @@ impl<T: Real> Centred<T> {
     fn along_z(&mut self, at: &Window, out: &mut [T], among: usize) -> Result<()> {
         let all = Arc::clone(&self.taps);
         let Some(taps) = &all[2] else { return self.component(self.first + 2, at, out, among) };
-        let n = taps.len();
+        let n = self.faces[2];
         let mut planes = std::mem::replace(&mut self.planes, Planes { window: [0..0, 0..0], held: Vec::new() });
         let window = [at.range[0].clone(), at.range[1].clone()];
         if planes.window != window {
