@@ -13,12 +13,13 @@ use crate::model::columns::Row;
 use crate::model::object::{Detected, Object, SUMS, Scales, Sum, Tally};
 use crate::model::request::{Family, Frame, Request, Side, Surfaces};
 use crate::model::source::{AnySource, Fields, MemorySource, PlaneSource};
-use crate::model::statistics::{Alignment, Scan, Survey};
+use crate::model::statistics::{Alignment, GradientLoss, Scan, Survey};
 use crate::model::surface::SurfaceSink;
 use crate::run::passes::{Pass, ShapePlan};
 use crate::run::stream::{Buffers, block_ranges};
 use crate::space::grid::Grid;
 use crate::survey::levels::{self, Divergence};
+use crate::survey::spectra;
 
 /// How a run is carried out; nothing here changes a result.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -88,6 +89,8 @@ pub struct Analysis {
     pub survey: Survey,
     /// Divergence of the velocity and of the magnetic field.
     pub divergence: [Divergence; 2],
+    /// What the derivative scheme leaves out, by the snapshot's own spectra.
+    pub gradient_loss: GradientLoss,
     /// Kolmogorov length of the total dissipation, where the coefficients are known.
     pub kolmogorov_length: Option<f64>,
     /// Alignment over the box.
@@ -199,6 +202,7 @@ fn typed<T: Real>(
     let shapes = pass.shapes(&deriver, &criteria, &mut found, &plan, sink)?;
 
     let divergence = divergences::<T>(&scan, &survey, &grid, fields);
+    let gradient_loss = spectra::loss(&scan.lines, &grid, fields, request.scheme);
     let kolmogorov_length = kolmogorov(&survey, fields, request);
     let mut results = Vec::new();
     for (((family, criterion), detected), shapes) in families.iter().zip(&criteria).zip(found).zip(shapes) {
@@ -233,6 +237,7 @@ fn typed<T: Real>(
         frame,
         survey,
         divergence,
+        gradient_loss,
         kolmogorov_length,
         alignment,
         families: results,

@@ -22,6 +22,7 @@ use crate::run::stream::{Buffers, blocks};
 use crate::space::grid::Grid;
 use crate::space::slab::Block;
 use crate::survey::scan::{self, ScanSum};
+use crate::survey::spectra::SpectraSum;
 use crate::survey::{box_alignment, moments};
 
 /// What every row of the survey needs; sampled ones the truncation as well.
@@ -65,6 +66,7 @@ impl<T: Real> Pass<'_, T> {
         let tiles = self.tiles();
         self.observe.stage(if deriver.is_some() { "survey" } else { "read" }, grid.n[2] as u64);
         let mut scans = ScanSum::new::<T>(&grid, components);
+        let mut spectra = SpectraSum::<T>::new(&grid, components);
         let mut survey = moments::empty(families);
         let wanted: Vec<bool> = families.iter().map(|f| f.levels().iter().any(|l| matches!(l, Level::Volume(_)))).collect();
         let quantiles: Mutex<Vec<Vec<Option<Quantiles>>>> = Mutex::new(Vec::new());
@@ -81,6 +83,9 @@ impl<T: Real> Pass<'_, T> {
                 for p in &planes {
                     sound &= p.is_finite();
                     scans.add(p);
+                }
+                if sound {
+                    spectra.add(block);
                 }
             }
             let Some(deriver) = deriver.filter(|_| sound) else { return Ok(()) };
@@ -127,7 +132,7 @@ impl<T: Real> Pass<'_, T> {
             }
         }
         self.observe.done();
-        Ok((scans.finish(), survey))
+        Ok((Scan { lines: spectra.finish(), ..scans.finish() }, survey))
     }
 
     /// Finds the objects of every family, and the alignment over the whole box.
