@@ -26,6 +26,28 @@ pub struct Scan {
     pub first_not_finite: Vec<(usize, [usize; 3])>,
     /// Hash over the decoded planes, hexadecimal.
     pub digest: String,
+    /// Spectra of sampled lines.
+    pub lines: LineSpectra,
+}
+
+/// Mean power of sampled lines along each axis.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct LineSpectra {
+    /// Per component, in source order, and axis: the mean over the lines of |f̂_m|² + |f̂_-m|² for m from 0 to n/2; missing on axes that
+    /// are not periodic.
+    pub power: Vec<[Option<Vec<f64>>; 3]>,
+}
+
+/// What part of the variance of the derivatives the scheme leaves out: 1 − ⟨k*²E⟩/⟨k²E⟩ with its modified wavenumber k*, by the
+/// snapshot's own spectra of lines.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct GradientLoss {
+    /// Per component, in source order, and axis; missing where the axis is not periodic or nothing changes along it.
+    pub components: Vec<[Option<f64>; 3]>,
+    /// All derivatives of the velocity along axes that tell, together.
+    pub velocity: Option<f64>,
+    /// The same of the magnetic field.
+    pub magnetic: Option<f64>,
 }
 
 /// Sums of one vector field's gradient over all cells.

@@ -9,7 +9,7 @@ use crate::model::columns::Row;
 use crate::model::object::{Detected, Object, Scales, Sum, Tally};
 use crate::model::request::{Extent, Family, Indicator, Request, Side, Surfaces};
 use crate::model::source::{AnySource, Fields, PlaneSource};
-use crate::model::statistics::{Alignment, Scan, Survey};
+use crate::model::statistics::{Alignment, GradientLoss, Scan, Survey};
 use crate::model::surface::SurfaceSink;
 use crate::run::criteria::criteria;
 use crate::run::passes::ShapePlan;
@@ -18,6 +18,7 @@ use crate::run::warnings::warnings;
 use crate::run::whole;
 use crate::space::grid::Grid;
 use crate::survey::levels::Divergence;
+use crate::survey::spectra;
 
 /// How a run is carried out; nothing here changes a result.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -89,6 +90,8 @@ pub struct Analysis {
     pub survey: Survey,
     /// Divergence of the velocity and of the magnetic field.
     pub divergence: [Divergence; 2],
+    /// What the derivative scheme leaves out, by the snapshot's own spectra.
+    pub gradient_loss: GradientLoss,
     /// Kolmogorov length of the total dissipation, where the coefficients are known.
     pub kolmogorov_length: Option<f64>,
     /// Mean magnetic field and its ratio to the fluctuations, |⟨b⟩|/b′.
@@ -193,6 +196,7 @@ fn typed<T: Real>(
     let shapes = pass.shapes(&deriver, &criteria, &mut found, &plan, sink)?;
 
     let divergence = whole::divergences::<T>(&scan, &survey, &grid, fields);
+    let gradient_loss = spectra::loss(&scan.lines, &grid, fields, request.scheme);
     let kolmogorov_length = whole::kolmogorov(&survey, fields, request);
     let mut results = Vec::new();
     for (((family, criterion), detected), shapes) in families.iter().zip(&criteria).zip(found).zip(shapes) {
@@ -230,6 +234,7 @@ fn typed<T: Real>(
         frame,
         survey,
         divergence,
+        gradient_loss,
         kolmogorov_length,
         guide_field: guide,
         alignment,

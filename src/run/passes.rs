@@ -22,6 +22,7 @@ use crate::run::stream::{Buffers, blocks};
 use crate::space::grid::Grid;
 use crate::space::slab::Block;
 use crate::survey::scan::{self, ScanSum};
+use crate::survey::spectra::SpectraSum;
 use crate::survey::{box_alignment, moments};
 
 /// What every row of the survey needs; sampled ones the truncation as well.
@@ -72,6 +73,7 @@ impl<T: Real> Pass<'_, T> {
         let tiles = self.tiles();
         self.observe.stage(if deriver.is_some() { "survey" } else { "read" }, grid.n[2] as u64);
         let mut scans = ScanSum::new::<T>(&grid, components);
+        let mut spectra = SpectraSum::<T>::new(&grid, components);
         let mut survey = moments::empty(families, companions);
         let wanted: Vec<bool> = families.iter().map(|f| f.levels().iter().any(|l| matches!(l, Level::Volume(_)))).collect();
         let quantiles: Mutex<Vec<Vec<Option<Quantiles>>>> = Mutex::new(Vec::new());
@@ -88,6 +90,9 @@ impl<T: Real> Pass<'_, T> {
                 for p in &planes {
                     sound &= p.is_finite();
                     scans.add(p);
+                }
+                if sound {
+                    spectra.add(block);
                 }
             }
             let Some(deriver) = deriver.filter(|_| sound) else { return Ok(()) };
@@ -138,7 +143,7 @@ impl<T: Real> Pass<'_, T> {
             }
         }
         self.observe.done();
-        Ok((scans.finish(), survey))
+        Ok((Scan { lines: spectra.finish(), ..scans.finish() }, survey))
     }
 
     /// Finds the objects of every family, and the alignment over the whole box.

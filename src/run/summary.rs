@@ -22,7 +22,7 @@ pub fn request(request: &Request, input: &InputSpec) -> Value {
         "viscosity": number(request.viscosity),
         "resistivity": number(request.resistivity),
         "frame": match request.frame { Frame::Box => "box", Frame::Stored => "stored" },
-        "derivative": "fd8",
+        "derivative": request.scheme.name(),
         "surfaces": match request.surfaces { Surfaces::None => "none", Surfaces::Together => "together", Surfaces::Each => "each" },
         "surface_min_cells": request.surface_min_cells,
         "velocity": input.velocity,

@@ -82,7 +82,7 @@ pub struct Catalogue {
     /// Frame of the velocity: that of the box mean, or as stored
     #[arg(long, value_enum, default_value = "box", help_heading = "Physics")]
     pub frame: FrameArg,
-    /// Derivative scheme; auto is fd8, central differences of order 8, one-sided at open faces
+    /// Derivatives: central differences of order 2 to 8, a nine-point stencil optimised in wavenumber, or spectral (exact) on periodic axes; auto is fd8
     #[arg(long, value_enum, default_value = "auto", help_heading = "Physics")]
     pub derivative: DerivativeArg,
 
@@ -135,7 +135,12 @@ pub enum FrameArg {
 #[derive(Debug, Clone, Copy, ValueEnum)]
 pub enum DerivativeArg {
     Auto,
+    Fd2,
+    Fd4,
+    Fd6,
     Fd8,
+    Opt,
+    Spectral,
 }
 
 #[derive(Debug, Clone, Copy, ValueEnum)]

@@ -3,13 +3,13 @@
 use std::path::PathBuf;
 
 use ropewalk::base::error::{Error, Result};
-use ropewalk::model::request::{Connectivity, Family, Frame, Outputs, Request, Surfaces};
+use ropewalk::model::request::{Connectivity, Family, Frame, Outputs, Request, Scheme, Surfaces};
 use ropewalk::model::snapshot::SnapshotRef;
 use ropewalk::read::InputSpec;
 use ropewalk::run::analysis::Execution;
 use ropewalk::run::catalogue::RunConfig;
 
-use crate::args::{Catalogue, ConnectivityArg, FrameArg, SurfacesArg};
+use crate::args::{Catalogue, ConnectivityArg, DerivativeArg, FrameArg, SurfacesArg};
 
 /// More than any machine has cores for.
 const MOST_THREADS: usize = 1024;
@@ -70,6 +70,14 @@ pub fn catalogue(a: &Catalogue) -> Result<RunConfig> {
             frame: match a.frame {
                 FrameArg::Box => Frame::Box,
                 FrameArg::Stored => Frame::Stored,
+            },
+            scheme: match a.derivative {
+                DerivativeArg::Fd2 => Scheme::Fd2,
+                DerivativeArg::Fd4 => Scheme::Fd4,
+                DerivativeArg::Fd6 => Scheme::Fd6,
+                DerivativeArg::Auto | DerivativeArg::Fd8 => Scheme::Fd8,
+                DerivativeArg::Opt => Scheme::Opt,
+                DerivativeArg::Spectral => Scheme::Spectral,
             },
             surfaces: match a.surfaces {
                 SurfacesArg::Together => Surfaces::Together,
