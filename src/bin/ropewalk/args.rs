@@ -20,6 +20,8 @@ pub enum Command {
     Demo(Demo),
     /// Snapshots in, a catalogue of their objects and surface meshes out
     Catalogue(Box<Catalogue>),
+    /// Join the run folders of separate jobs, such as a job array over snapshots, into one
+    Gather(Gather),
     /// Print the data dictionary: name, unit, definition, source of every column
     Columns,
 }
@@ -111,6 +113,21 @@ pub struct Catalogue {
     /// Planes worked on at a time; chosen from the snapshot when not given
     #[arg(long, value_name = "N", help_heading = "Execution (never changes a result)")]
     pub block_planes: Option<usize>,
+    #[command(flatten)]
+    pub talk: Talk,
+}
+
+#[derive(Debug, ClapArgs)]
+pub struct Gather {
+    /// Run folders to join; of an unfinished one (NAME.unfinished) the snapshots that are complete
+    #[arg(value_name = "DIR", required = true)]
+    pub runs: Vec<PathBuf>,
+    /// Run folder to write
+    #[arg(short, long, value_name = "DIR", default_value = "ropewalk-run")]
+    pub output: PathBuf,
+    /// Put this run in the place of an earlier one of that name, once it is complete
+    #[arg(long)]
+    pub replace: bool,
     #[command(flatten)]
     pub talk: Talk,
 }
