@@ -107,6 +107,19 @@ pub struct Catalogue {
     #[arg(long, value_name = "CELLS", default_value_t = 0, help_heading = "Objects")]
     pub surface_min_cells: u64,
 
+    /// Tables to write; catalogue.csv is always there
+    #[arg(long, value_name = "LIST", value_enum, value_delimiter = ',', help_heading = "Output")]
+    pub tables: Option<Vec<TableArg>>,
+    /// Label volumes: which object every cell belongs to, as HDF5
+    #[arg(long, help_heading = "Output")]
+    pub labels: bool,
+    /// Cut-outs of all fields around objects, as HDF5: largest:N of every family, or ID and FAMILY:ID (repeatable)
+    #[arg(long, value_name = "SPEC", value_delimiter = ',', help_heading = "Output")]
+    pub cut_outs: Vec<String>,
+    /// Cells around the object of a cut-out
+    #[arg(long, value_name = "CELLS", default_value_t = 8, help_heading = "Output")]
+    pub cut_out_margin: usize,
+
     /// Worker threads; 0 takes one per core
     #[arg(long, value_name = "N", default_value_t = 0, help_heading = "Execution (never changes a result)")]
     pub threads: usize,
@@ -163,6 +176,13 @@ pub enum ConnectivityArg {
     Eighteen,
     #[value(name = "26")]
     TwentySix,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+pub enum TableArg {
+    Csv,
+    Parquet,
+    Jsonl,
 }
 
 #[derive(Debug, Clone, Copy, ValueEnum)]
