@@ -7,8 +7,8 @@ use ropewalk::math::isosurface::isosurface;
 use ropewalk::math::stats::{Cosine, row_sum};
 use ropewalk::math::surface::measure;
 use ropewalk::model::request::{Family, Request, Surfaces};
+use ropewalk::model::sink::NoFiles;
 use ropewalk::model::source::{AnySource, Fields, MemorySource};
-use ropewalk::model::surface::NoSurfaces;
 use ropewalk::run::analysis::{Execution, Snapshot, analyse};
 use ropewalk::space::grid::Grid;
 use ropewalk::space::patch::{Interval, PatchShape};
@@ -113,6 +113,6 @@ fn analysis_of_a_random_field(bencher: Bencher) {
         })
         .bench_local_values(|source| {
             let snapshot = Snapshot { name: "bench".into(), time: None, components: Vec::new() };
-            analyse(source, snapshot, &request, &Execution::default(), &Silent, &mut NoSurfaces).unwrap()
+            analyse(source, snapshot, &request, &Execution::default(), &Silent, &mut NoFiles).unwrap()
         });
 }

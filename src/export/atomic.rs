@@ -18,6 +18,11 @@ fn failed(what: &str, path: &Path, e: &std::io::Error) -> Error {
     Error::output(what).at(path).found(e.to_string())
 }
 
+/// Where a folder lies while it is being built.
+pub fn unfinished(target: &Path) -> PathBuf {
+    beside(target, ".unfinished")
+}
+
 /// The path with something appended to its last name.
 fn beside(path: &Path, suffix: &str) -> PathBuf {
     let mut name = path.file_name().unwrap_or_default().to_os_string();
@@ -51,7 +56,7 @@ impl Folder {
                 .found("other files")
                 .hint("name another folder with -o"));
         }
-        let building = beside(target, ".unfinished");
+        let building = unfinished(target);
         if let Some(parent) = target.parent().filter(|p| !p.as_os_str().is_empty()) {
             if parent.is_file() {
                 return Err(Error::output("cannot make the run folder").at(target).expected("a folder above it").found("a file"));
@@ -104,6 +109,45 @@ impl Folder {
         file.write_all(bytes).and_then(|()| file.sync_all()).map_err(|e| failed("cannot write a file", &self.path(name), &e))
     }
 
+    /// Writes a whole file that is complete or absent, should the run be killed before the folder has its name.
+    ///
+    /// # Errors
+    /// `Output`.
+    pub fn write_whole(&self, name: &str, bytes: &[u8]) -> Result<()> {
+        let beside = format!("{name}{WRITING}");
+        self.write(&beside, bytes)?;
+        let path = self.path(name);
+        fs::rename(self.path(&beside), &path).map_err(|e| failed("cannot name a file", &path, &e))
+    }
+
+    /// Takes over a file or folder from elsewhere under the name it has here: by another link to the same bytes where the file
+    /// system can, else by a copy. What is not there is left out.
+    ///
+    /// # Errors
+    /// `Output`.
+    pub fn adopt(&self, from: &Path, name: &str) -> Result<()> {
+        let to = self.path(name);
+        if from.is_dir() {
+            self.subfolder(name)?;
+            let entries = fs::read_dir(from).and_then(Iterator::collect::<std::io::Result<Vec<_>>>);
+            for entry in entries.map_err(|e| failed("cannot take over a folder", from, &e))? {
+                self.adopt(&entry.path(), &format!("{name}/{}", entry.file_name().to_string_lossy()))?;
+            }
+        } else if from.is_file() && fs::hard_link(from, &to).is_err() {
+            fs::copy(from, &to).map_err(|e| failed("cannot take over a file", from, &e))?;
+        }
+        Ok(())
+    }
+
+    /// Removes a folder inside with everything in it, if it is there.
+    ///
+    /// # Errors
+    /// `Output`.
+    pub fn remove_folder(&self, name: &str) -> Result<()> {
+        let path = self.path(name);
+        if path.is_dir() { fs::remove_dir_all(&path).map_err(|e| failed("cannot remove a folder", &path, &e)) } else { Ok(()) }
+    }
+
     /// Removes a helper file.
     ///
     /// # Errors
@@ -138,6 +182,9 @@ impl Folder {
         Ok(self.target.clone())
     }
 }
+
+/// Behind the name of a file of which only a part may be there.
+const WRITING: &str = ".writing";
 
 /// Says who is building a folder.
 const OWNER: &str = "owner";

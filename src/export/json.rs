@@ -2,19 +2,20 @@
 
 use serde_json::{Value, json};
 
-use crate::model::columns::COLUMNS;
+use crate::model::schema::Schema;
 
 /// The dictionary of catalogue columns.
-pub fn dictionary() -> Value {
-    let columns: Vec<Value> = COLUMNS
-        .iter()
+pub fn dictionary(schema: &Schema) -> Value {
+    let columns: Vec<Value> = schema
+        .columns()
+        .into_iter()
         .map(|c| {
             json!({
                 "name": c.name,
-                "unit": c.unit.text(),
+                "unit": c.unit,
                 "definition": c.definition,
                 "source": c.source,
-                "stage": c.stage.text(),
+                "stage": c.stage,
             })
         })
         .collect();

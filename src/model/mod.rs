@@ -7,6 +7,7 @@ pub mod object;
 pub mod request;
 pub mod rows;
 pub mod schema;
+pub mod sink;
 pub mod snapshot;
 pub mod source;
 pub mod statistics;

@@ -35,21 +35,3 @@ impl SurfaceMesh {
         names
     }
 }
-
-/// Takes meshes as they are finished.
-pub trait SurfaceSink {
-    /// Takes the meshes of some objects of a family, in an order that is the same for every run.
-    ///
-    /// # Errors
-    /// `Output` when they cannot be written.
-    fn put(&mut self, family: usize, meshes: Vec<SurfaceMesh>) -> crate::base::error::Result<()>;
-}
-
-/// Keeps nothing.
-pub struct NoSurfaces;
-
-impl SurfaceSink for NoSurfaces {
-    fn put(&mut self, _family: usize, _meshes: Vec<SurfaceMesh>) -> crate::base::error::Result<()> {
-        Ok(())
-    }
-}

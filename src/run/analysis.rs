@@ -8,9 +8,9 @@ use crate::measure::row::{Context, row};
 use crate::model::columns::Row;
 use crate::model::object::{Detected, Object, Scales, Sum, Tally};
 use crate::model::request::{Extent, Family, Indicator, Request, Side, Surfaces};
+use crate::model::sink::ObjectSink;
 use crate::model::source::{AnySource, Fields, PlaneSource};
 use crate::model::statistics::{Alignment, GradientLoss, Scan, Survey};
-use crate::model::surface::SurfaceSink;
 use crate::run::criteria::criteria;
 use crate::run::passes::ShapePlan;
 use crate::run::ready::{Ready, reject_overflow, surveyed};
@@ -115,7 +115,7 @@ pub fn analyse(
     request: &Request,
     execution: &Execution,
     observe: &dyn Observe,
-    sink: &mut (dyn SurfaceSink + Send),
+    sink: &mut (dyn ObjectSink + Send),
 ) -> Result<Analysis> {
     match source {
         AnySource::F32(s) => typed(s, snapshot, request, execution, observe, sink),
@@ -157,7 +157,7 @@ fn typed<T: Real>(
     request: &Request,
     execution: &Execution,
     observe: &dyn Observe,
-    sink: &mut (dyn SurfaceSink + Send),
+    sink: &mut (dyn ObjectSink + Send),
 ) -> Result<Analysis> {
     let mut ready = Ready::new(source, &snapshot, request, execution, observe)?;
     let (scan, survey, frame) = surveyed(&mut ready, &snapshot, request, observe)?;
@@ -181,6 +181,7 @@ fn typed<T: Real>(
             pass.split(&deriver, &criteria[k], fraction, regions, request.min_cells)?;
         }
     }
+    pass.offer(&deriver, &families, &criteria, &found, snapshot.time, sink)?;
     let extras = request.extras();
     let plan = ShapePlan {
         max_cells: request.max_object_cells,

@@ -9,15 +9,20 @@ use crate::base::error::{Error, Kind, Result};
 use crate::base::observe::Observe;
 use crate::base::par::Pool;
 use crate::export::atomic::Folder;
-use crate::export::{csv, json as dictionary};
-use crate::model::request::{Outputs, Request, Surfaces};
+use crate::export::json as dictionary;
+use crate::model::columns::Row;
+use crate::model::request::{Outputs, Request};
+use crate::model::schema::Schema;
 use crate::model::snapshot::SnapshotRef;
-use crate::model::surface::NoSurfaces;
 use crate::read::{self, InputSpec, Opened};
 use crate::run::analysis::{Analysis, Execution, Snapshot, analyse};
 use crate::run::clock::Clock;
-use crate::run::meshes::MeshFiles;
+use crate::run::files::SnapshotFiles;
+use crate::run::parts::{self, FamilyOverview, PARTS, Part, Tables};
 use crate::run::{provenance, summary};
+
+/// Which snapshots a run goes through; in its folder while it is unfinished.
+pub const PLAN: &str = "plan.json";
 
 /// A settled run.
 #[derive(Debug, Clone, PartialEq)]
@@ -44,8 +49,8 @@ pub struct RunConfig {
 pub struct Outcome {
     /// The run folder.
     pub folder: PathBuf,
-    /// Snapshots that were analysed.
-    pub done: Vec<Analysis>,
+    /// What was found, by snapshot and family.
+    pub overview: Vec<FamilyOverview>,
     /// Snapshots that failed, with the reason.
     pub failed: Vec<(SnapshotRef, Error)>,
 }
@@ -78,19 +83,23 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     if usable.is_empty() {
         return Err(none_usable(failed));
     }
+    let tables = Tables::new(&config.outputs)?;
     let folder = Folder::create(&config.output, config.replace)?;
-    let mut table = csv::header();
-    let mut done = Vec::new();
-    let mut snapshots: Vec<Value> = Vec::new();
+    folder.subfolder(PARTS)?;
+    let names: Vec<&str> = usable.iter().map(|(_, name)| name.as_str()).collect();
+    folder.write(PLAN, dictionary::pretty(&json!({ "snapshots": names })).as_bytes())?;
+    let schema = Schema { companions: config.request.companions.clone() };
+    let common = parts::common(&summary::request(&config.request, &config.input));
+    let mut done: Vec<Part> = Vec::new();
+    let mut cells = 0;
     for (path, name) in &usable {
-        let one = pool.run(|| one(path, name, config, &folder, &clock));
-        match one {
+        match pool.run(|| one(path, name, config, &folder, &clock)) {
             Ok((analysis, datasets)) => {
-                for family in &analysis.families {
-                    table.push_str(&pool.run(|| csv::lines(&family.rows)));
-                }
-                snapshots.push(summary::snapshot(&analysis, &path.to_string(), &datasets));
-                done.push(analysis);
+                cells += analysis.grid.cells();
+                let rows: Vec<&[Row]> = analysis.families.iter().map(|f| f.rows.as_slice()).collect();
+                let snapshot = summary::snapshot(&analysis, &path.to_string(), &datasets);
+                pool.run(|| parts::write(&folder, name, &schema, &common, tables, snapshot, &rows))?;
+                done.push(Part::read(&folder.path(""), name)?);
             }
             Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => {
                 tell(&e, config, observe);
@@ -103,19 +112,11 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
         return Err(none_usable(failed));
     }
     let failures: Vec<Value> = failed.iter().map(|(p, e)| json!({ "path": p.to_string(), "error": e.to_string() })).collect();
-    let what = json!({
-        "program": provenance::program(),
-        "request": summary::request(&config.request, &config.input),
-        "conventions": summary::conventions(),
-        "snapshots": snapshots,
-        "failed": failures,
-    });
-    folder.write("catalogue.csv", table.as_bytes())?;
-    folder.write("columns.json", dictionary::pretty(&dictionary::dictionary()).as_bytes())?;
-    folder.write("run.json", dictionary::pretty(&what).as_bytes())?;
-    let how = provenance::timing(&clock.stages(), started.elapsed().as_secs_f64(), pool.threads(), &done);
+    let overview = parts::join(&folder, &done, &schema, tables, failures, &pool)?;
+    let how = provenance::timing(&clock.stages(), started.elapsed().as_secs_f64(), pool.threads(), cells);
     folder.write("timing.json", dictionary::pretty(&how).as_bytes())?;
-    Ok(Outcome { folder: folder.finish()?, done, failed })
+    folder.remove(PLAN)?;
+    Ok(Outcome { folder: folder.finish()?, overview, failed })
 }
 
 fn check(opened: Opened, path: &Path, request: &Request) -> Result<String> {
@@ -176,24 +177,22 @@ fn one(path: &SnapshotRef, name: &str, config: &RunConfig, folder: &Folder, obse
     let snapshot =
         Snapshot { name: name.to_string(), time: opened.time, components: component_names(&opened.datasets, fields.components()) };
     let (request, execution) = (&config.request, &config.execution);
-    let analysis = if request.surfaces == Surfaces::None {
-        analyse(opened.source, snapshot, request, execution, observe, &mut NoSurfaces)?
-    } else {
-        let families = request.families_for(fields)?;
-        let mut files =
-            MeshFiles::new(folder, name, families, fields, &request.mesh_values, request.surfaces, opened.source.grid().is_flat())?;
-        match analyse(opened.source, snapshot, request, execution, observe, &mut files) {
-            Ok(analysis) => {
-                files.finish()?;
-                analysis
+    let families = request.families_for(fields)?;
+    let flat = opened.source.grid().is_flat();
+    let mut files = SnapshotFiles::new(folder, name, families, fields, flat, request, &config.outputs)?;
+    match analyse(opened.source, snapshot, request, execution, observe, &mut files) {
+        Ok(mut analysis) => {
+            for warning in files.finish()? {
+                observe.warning(&format!("{name}: {warning}"));
+                analysis.warnings.push(warning);
             }
-            Err(e) => {
-                files.abandon();
-                return Err(e);
-            }
+            Ok((analysis, opened.datasets))
         }
-    };
-    Ok((analysis, opened.datasets))
+        Err(e) => {
+            files.abandon();
+            Err(e)
+        }
+    }
 }
 
 /// One name a component for messages; an array with a component axis stands for three.

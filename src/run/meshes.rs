@@ -7,8 +7,9 @@ use crate::base::error::{Error, Result};
 use crate::export::atomic::Folder;
 use crate::export::ply::{Joins, PlyWriter};
 use crate::model::request::{Family, Indicator, Surfaces};
+use crate::model::sink::ObjectSink;
 use crate::model::source::Fields;
-use crate::model::surface::{SurfaceMesh, SurfaceSink};
+use crate::model::surface::SurfaceMesh;
 
 /// One file a family, or one an object.
 pub struct MeshFiles<'a> {
@@ -110,7 +111,7 @@ impl<'a> MeshFiles<'a> {
     }
 }
 
-impl SurfaceSink for MeshFiles<'_> {
+impl ObjectSink for MeshFiles<'_> {
     fn put(&mut self, family: usize, meshes: Vec<SurfaceMesh>) -> Result<()> {
         if self.each {
             for mesh in &meshes {

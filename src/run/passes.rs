@@ -15,9 +15,10 @@ use crate::measure::surface::{Shaped, Trace, shape};
 use crate::model::object::Detected;
 use crate::model::request::{Family, Level};
 use crate::model::rows::Need;
+use crate::model::sink::ObjectSink;
 use crate::model::source::{Fields, PlaneSource};
 use crate::model::statistics::{Alignment, Scan, Survey};
-use crate::model::surface::{SurfaceMesh, SurfaceSink};
+use crate::model::surface::SurfaceMesh;
 use crate::run::stream::{Buffers, blocks};
 use crate::space::grid::Grid;
 use crate::space::slab::Block;
@@ -220,7 +221,7 @@ impl<T: Real> Pass<'_, T> {
         criteria: &[Criterion],
         found: &mut [Detected],
         plan: &ShapePlan,
-        sink: &mut (dyn SurfaceSink + Send),
+        sink: &mut (dyn ObjectSink + Send),
     ) -> Result<Vec<Vec<Option<Shaped>>>> {
         let grid = self.source.grid().clone();
         let fields = if plan.mesh_cells.is_some() { self.source.fields() } else { Fields::default() };

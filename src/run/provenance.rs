@@ -2,7 +2,6 @@
 
 use serde_json::{Value, json};
 
-use crate::run::analysis::Analysis;
 use crate::run::clock::StageTime;
 
 /// The program and the instruction set that results are identical for.
@@ -24,8 +23,7 @@ fn instruction_set() -> &'static str {
 }
 
 /// `timing.json`: threads, seconds, rates, peak memory, host.
-pub fn timing(stages: &[StageTime], seconds: f64, threads: usize, done: &[Analysis]) -> Value {
-    let cells: u64 = done.iter().map(|a| a.grid.cells()).sum();
+pub fn timing(stages: &[StageTime], seconds: f64, threads: usize, cells: u64) -> Value {
     let stages: Vec<Value> = stages.iter().map(|s| json!({ "stage": s.name, "seconds": s.seconds, "planes": s.planes })).collect();
     json!({
         "seconds": seconds,

@@ -2,36 +2,79 @@
 
 use serde_json::{Value, json};
 
+use crate::export::hdf5::axes;
 use crate::export::json::number;
 use crate::math::stats::Cosine;
 use crate::model::object::{COSINES, Scales, Sum, Tally};
-use crate::model::request::{Frame, Request, Surfaces};
+use crate::model::request::{Frame, Indicator, Request, Surfaces};
 use crate::model::statistics::{Alignment, GradientStats};
-use crate::read::InputSpec;
+use crate::read::{InputSpec, Staggering, Stretch};
 use crate::run::analysis::{Analysis, FamilyResult};
 
-/// The request and the reading options.
+/// The request and the reading options: everything that a result depends on besides the data.
 pub fn request(request: &Request, input: &InputSpec) -> Value {
     let families: Vec<String> = request.families.iter().map(ToString::to_string).collect();
-    json!({
+    let names = |list: &[Indicator]| list.iter().map(|i| i.name()).collect::<Vec<_>>();
+    let run_rms: serde_json::Map<String, Value> = request.run_rms.iter().map(|(family, rms)| (family.clone(), json!(rms))).collect();
+    let mut out = json!({
         "families": families,
         "families_default": request.families.is_empty(),
+        "run_rms": run_rms,
         "connectivity": request.connectivity.neighbours(),
         "min_cells": request.min_cells,
         "max_object_cells": request.max_object_cells,
         "viscosity": number(request.viscosity),
         "resistivity": number(request.resistivity),
+        "dissipation": number(request.dissipation),
+        "kolmogorov_length": number(request.kolmogorov_length),
         "frame": match request.frame { Frame::Box => "box", Frame::Stored => "stored" },
         "derivative": request.scheme.name(),
+        "filter": request.filter.map(|f| f.to_string()),
+        "companions": names(&request.companions),
+        "mesh_values": names(&request.mesh_values),
         "surfaces": match request.surfaces { Surfaces::None => "none", Surfaces::Together => "together", Surfaces::Each => "each" },
         "surface_min_cells": request.surface_min_cells,
+    });
+    if let (Some(out), Value::Object(reading)) = (out.as_object_mut(), reading(input)) {
+        out.extend(reading);
+    }
+    out
+}
+
+fn reading(input: &InputSpec) -> Value {
+    let stretch = |s: &Option<Stretch>| match s {
+        None => Value::Null,
+        Some(Stretch::Indices(first, end)) => json!({ "first": first, "end": end }),
+        Some(Stretch::Positions(from, to)) => json!({ "from": from, "to": to }),
+    };
+    let raw = input.raw.as_ref().map(|r| {
+        json!({
+            "precision": if r.double { "f64" } else { "f32" },
+            "byte_order": if r.big_endian { "big" } else { "little" },
+            "shape": r.shape,
+            "offset": r.offset,
+            "record_markers": r.record_markers,
+        })
+    });
+    json!({
         "velocity": input.velocity,
         "magnetic": input.magnetic,
+        "buoyancy": input.buoyancy,
+        "density": input.density,
+        "magnetic_at": match input.staggering {
+            Staggering::Centres => "centres",
+            Staggering::LowerFaces => "lower faces",
+            Staggering::UpperFaces => "upper faces",
+        },
         "order": input.order,
         "lengths": input.lengths,
         "spacing": input.spacing,
+        "coordinates": input.coordinates,
         "origin": input.origin,
         "periodic": axes(input.periodic),
+        "region": input.region.iter().map(stretch).collect::<Vec<_>>(),
+        "raw": raw,
+        "time_from": { "attribute": input.time.attribute, "dataset": input.time.dataset, "name": input.time.name },
     })
 }
 
@@ -49,14 +92,9 @@ pub fn conventions() -> Value {
     })
 }
 
-fn axes(flags: [bool; 3]) -> String {
-    let text: String = ["x", "y", "z"].iter().zip(flags).filter(|(_, f)| *f).map(|(a, _)| *a).collect();
-    if text.is_empty() { "none".to_string() } else { text }
-}
-
 /// One snapshot.
 pub fn snapshot(a: &Analysis, path: &str, datasets: &[String]) -> Value {
-    let n = a.survey.cells as f64;
+    let n = a.survey.weight;
     let lengths: Vec<f64> = (0..3).map(|k| a.grid.length(k)).collect();
     let names = ["u", "v", "w", "bx", "by", "bz"];
     let first = if a.fields.velocity { 0 } else { 3 };
@@ -90,6 +128,7 @@ pub fn snapshot(a: &Analysis, path: &str, datasets: &[String]) -> Value {
         "periodic": axes(a.grid.periodic),
         "components": components,
         "frame_velocity": a.frame,
+        "mean_field": a.guide_field.map(|(mean, ratio)| json!({ "mean": mean, "over_fluctuations": number(Some(ratio)) })),
         "velocity": if a.fields.velocity { gradient(&a.survey.velocity, n, a, 0) } else { Value::Null },
         "magnetic": if a.fields.magnetic { gradient(&a.survey.magnetic, n, a, 1) } else { Value::Null },
         "kolmogorov_length": number(a.kolmogorov_length),
@@ -114,7 +153,7 @@ fn gradient(g: &GradientStats, n: f64, a: &Analysis, which: usize) -> Value {
 }
 
 fn family(a: &Analysis, f: &FamilyResult) -> Value {
-    let n = a.survey.cells as f64;
+    let n = a.survey.weight;
     let k = a.families.iter().position(|g| g.family.name == f.family.name).unwrap_or(0);
     let s = &a.survey.indicators[k];
     let rms = (s.square_sum / n).sqrt();
@@ -130,6 +169,7 @@ fn family(a: &Analysis, f: &FamilyResult) -> Value {
         "definition": f.family.to_string(),
         "indicator": f.family.indicator.name(),
         "level": f.level,
+        "inner_level": number(f.inner_level),
         "level_in_rms": number((rms > 0.0).then(|| f.level / rms)),
         "volume_fraction": f.volume_fraction,
         "indicator_mean": s.sum / n,
@@ -149,7 +189,7 @@ fn family(a: &Analysis, f: &FamilyResult) -> Value {
 fn shares(a: &Analysis, t: &Tally, scales: &Scales) -> Value {
     let of = |part: f64, whole: f64| number((whole > 0.0).then(|| part / whole));
     json!({
-        "volume": t.moments.count as f64 / a.survey.cells as f64,
+        "volume": t.weight() / a.survey.weight,
         "viscous": if a.fields.velocity { of(t.sum(Sum::Strain2, scales), a.survey.velocity.strain2) } else { Value::Null },
         "ohmic": if a.fields.magnetic { of(t.sum(Sum::Current2, scales), a.survey.magnetic.curl2) } else { Value::Null },
     })
@@ -162,6 +202,9 @@ fn alignment(a: &Alignment) -> Value {
         "lorentz_sin2": ratio(a.lorentz2, a.j2b2),
         "sin2_uncorrelated": 2.0 / 3.0,
     });
+    if a.j2b2_fluct > 0.0 {
+        out["lorentz_sin2_fluct"] = ratio(a.lorentz2_fluct, a.j2b2_fluct);
+    }
     for (name, c) in COSINES.iter().zip(&a.cosines) {
         if c.defined > 0 {
             out[*name] = cosine(c);

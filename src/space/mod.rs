@@ -1,5 +1,6 @@
 //! Height 1: containers that live in the box.
 
+pub mod cut;
 mod dilate;
 pub mod grid;
 pub mod patch;

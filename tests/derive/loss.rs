@@ -4,8 +4,8 @@ use ropewalk::base::observe::Silent;
 use ropewalk::base::par::Pool;
 use ropewalk::math::diff::{AxisStencil, Pick, RowScratch};
 use ropewalk::model::request::{Family, Request, Scheme, Surfaces};
+use ropewalk::model::sink::NoFiles;
 use ropewalk::model::source::{AnySource, Fields, MemorySource};
-use ropewalk::model::surface::NoSurfaces;
 use ropewalk::run::analysis::{Analysis, Execution, Snapshot, analyse};
 use ropewalk::space::grid::Grid;
 use ropewalk::synth::random::solenoidal;
@@ -30,7 +30,7 @@ fn analysed(scheme: Scheme, threads: usize, block_planes: usize) -> Analysis {
     };
     let execution = Execution { block_planes: Some(block_planes), ..Execution::default() };
     let snapshot = Snapshot { name: "random".into(), time: None, components: Vec::new() };
-    Pool::new(threads).unwrap().run(|| analyse(source, snapshot, &request, &execution, &Silent, &mut NoSurfaces)).unwrap()
+    Pool::new(threads).unwrap().run(|| analyse(source, snapshot, &request, &execution, &Silent, &mut NoFiles)).unwrap()
 }
 
 /// 1 − ⟨(du/dx)²⟩ by differences over the same by transforms, of all x-lines (Parseval; transforms keep all but the Nyquist wave,

@@ -5,7 +5,7 @@ use ropewalk::base::error::Kind;
 use ropewalk::base::observe::Silent;
 use ropewalk::model::columns::{COLUMNS, Col, Value};
 use ropewalk::model::request::Request;
-use ropewalk::model::surface::NoSurfaces;
+use ropewalk::model::sink::NoFiles;
 use ropewalk::run::analysis::{Execution, Snapshot, analyse};
 use ropewalk::space::grid::Grid;
 
@@ -29,7 +29,7 @@ fn bad_cells_are_located_and_refused() {
         for block_planes in [None, Some(2)] {
             let execution = Execution { block_planes, ..Execution::default() };
             let source = stored::<f32>(grid.clone(), VELOCITY, &u);
-            let e = analyse(source, snapshot.clone(), &request, &execution, &Silent, &mut NoSurfaces).err().expect("refused");
+            let e = analyse(source, snapshot.clone(), &request, &execution, &Silent, &mut NoFiles).err().expect("refused");
             assert_eq!(e.kind(), Kind::Data);
             let message = e.to_string();
             for part in ["broken", "3 NaN or infinite", "v at x=3 y=4 z=5", "u at x=0 y=0 z=13", "w at x=9 y=11 z=13"] {

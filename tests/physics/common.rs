@@ -7,8 +7,9 @@ use ropewalk::base::observe::Silent;
 use ropewalk::base::real::Real;
 use ropewalk::model::columns::{COLUMNS, Col, Row, Value};
 use ropewalk::model::request::{Family, Frame, Request};
+use ropewalk::model::sink::ObjectSink;
 use ropewalk::model::source::{AnySource, Fields, MemorySource};
-use ropewalk::model::surface::{SurfaceMesh, SurfaceSink};
+use ropewalk::model::surface::SurfaceMesh;
 use ropewalk::run::analysis::{Analysis, Execution, FamilyResult, Snapshot, analyse};
 use ropewalk::space::grid::Grid;
 
@@ -84,7 +85,7 @@ pub fn request(families: &[&str]) -> Request {
 #[derive(Default)]
 pub struct Kept(pub Vec<Vec<SurfaceMesh>>);
 
-impl SurfaceSink for Kept {
+impl ObjectSink for Kept {
     fn put(&mut self, family: usize, meshes: Vec<SurfaceMesh>) -> Result<()> {
         if self.0.len() <= family {
             self.0.resize(family + 1, Vec::new());

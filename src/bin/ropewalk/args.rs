@@ -20,6 +20,8 @@ pub enum Command {
     Demo(Demo),
     /// Snapshots in, a catalogue of their objects and surface meshes out
     Catalogue(Box<Catalogue>),
+    /// Join the run folders of separate jobs, such as a job array over snapshots, into one
+    Gather(Gather),
     /// Print the data dictionary: name, unit, definition, source of every column
     Columns,
 }
@@ -105,12 +107,40 @@ pub struct Catalogue {
     #[arg(long, value_name = "CELLS", default_value_t = 0, help_heading = "Objects")]
     pub surface_min_cells: u64,
 
+    /// Tables to write; catalogue.csv is always there
+    #[arg(long, value_name = "LIST", value_enum, value_delimiter = ',', help_heading = "Output")]
+    pub tables: Option<Vec<TableArg>>,
+    /// Label volumes: which object every cell belongs to, as HDF5
+    #[arg(long, help_heading = "Output")]
+    pub labels: bool,
+    /// Cut-outs of all fields around objects, as HDF5: largest:N of every family, or ID and FAMILY:ID (repeatable)
+    #[arg(long, value_name = "SPEC", value_delimiter = ',', help_heading = "Output")]
+    pub cut_outs: Vec<String>,
+    /// Cells around the object of a cut-out
+    #[arg(long, value_name = "CELLS", default_value_t = 8, help_heading = "Output")]
+    pub cut_out_margin: usize,
+
     /// Worker threads; 0 takes one per core
     #[arg(long, value_name = "N", default_value_t = 0, help_heading = "Execution (never changes a result)")]
     pub threads: usize,
     /// Planes worked on at a time; chosen from the snapshot when not given
     #[arg(long, value_name = "N", help_heading = "Execution (never changes a result)")]
     pub block_planes: Option<usize>,
+    #[command(flatten)]
+    pub talk: Talk,
+}
+
+#[derive(Debug, ClapArgs)]
+pub struct Gather {
+    /// Run folders to join; of an unfinished one (NAME.unfinished) the snapshots that are complete
+    #[arg(value_name = "DIR", required = true)]
+    pub runs: Vec<PathBuf>,
+    /// Run folder to write
+    #[arg(short, long, value_name = "DIR", default_value = "ropewalk-run")]
+    pub output: PathBuf,
+    /// Put this run in the place of an earlier one of that name, once it is complete
+    #[arg(long)]
+    pub replace: bool,
     #[command(flatten)]
     pub talk: Talk,
 }
@@ -151,6 +181,13 @@ pub enum ConnectivityArg {
     Eighteen,
     #[value(name = "26")]
     TwentySix,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+pub enum TableArg {
+    Csv,
+    Parquet,
+    Jsonl,
 }
 
 #[derive(Debug, Clone, Copy, ValueEnum)]

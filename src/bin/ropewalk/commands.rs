@@ -5,14 +5,17 @@ use std::path::{Path, PathBuf};
 use std::process::ExitCode;
 
 use ropewalk::base::error::{Error, Result};
-use ropewalk::model::columns::{COLUMNS, Col, Row, Value};
+use ropewalk::model::indicator::INDICATORS;
 use ropewalk::model::request::{Family, Outputs, Request};
+use ropewalk::model::schema::{Schema, companion_columns};
 use ropewalk::model::snapshot::SnapshotRef;
 use ropewalk::read::InputSpec;
 use ropewalk::run::analysis::Execution;
-use ropewalk::run::catalogue::{Outcome, RunConfig, catalogue};
+use ropewalk::run::catalogue::{RunConfig, catalogue};
+use ropewalk::run::gather::{GatherConfig, gather};
+use ropewalk::run::parts::{CLASSES, FamilyOverview};
 
-use crate::args::{Args, Command, Demo};
+use crate::args::{Args, Command, Demo, Gather};
 use crate::console::{self, Console};
 use crate::{exit, settle};
 
@@ -22,11 +25,12 @@ pub fn run(args: &Args) -> Result<ExitCode> {
         Command::Catalogue(a) => {
             let outcome = catalogue(&settle::catalogue(a)?, &Console::new(a.talk))?;
             if !a.talk.quiet {
-                console::result(&overview(&outcome))?;
+                console::result(&overview(&outcome.overview, &outcome.folder))?;
             }
             Ok(if outcome.failed.is_empty() { ExitCode::SUCCESS } else { ExitCode::from(exit::PARTIAL) })
         }
         Command::Demo(a) => demo(a),
+        Command::Gather(a) => gathered(a),
         Command::Columns => {
             console::result(&columns())?;
             Ok(ExitCode::SUCCESS)
@@ -86,7 +90,7 @@ fn demo(a: &Demo) -> Result<ExitCode> {
         if !outcome.failed.is_empty() {
             code = ExitCode::from(exit::PARTIAL);
         }
-        let _ = writeln!(text, "{}", overview(&outcome));
+        let _ = writeln!(text, "{}", overview(&outcome.overview, &outcome.folder));
     }
     text += &what_to_look_at(&a.folder);
     if !a.talk.quiet {
@@ -124,55 +128,63 @@ fn demo_data(named: Option<&Path>) -> Result<PathBuf> {
     })
 }
 
-/// A few lines a family: what was found.
-fn overview(outcome: &Outcome) -> String {
+fn gathered(a: &Gather) -> Result<ExitCode> {
+    let config = GatherConfig { runs: a.runs.clone(), output: a.output.clone(), replace: a.replace, threads: 0 };
+    let done = gather(&config, &Console::new(a.talk))?;
+    if !a.talk.quiet {
+        console::result(&overview(&done.overview, &done.folder))?;
+    }
+    Ok(if done.missing.is_empty() { ExitCode::SUCCESS } else { ExitCode::from(exit::PARTIAL) })
+}
+
+/// A line a snapshot and family: what was found.
+fn overview(found: &[FamilyOverview], folder: &Path) -> String {
     let mut out = String::new();
     let _ = writeln!(
         out,
         "{:<16} {:<12} {:>11} {:>8} {:>8} {:>11}  classes",
         "snapshot", "family", "level", "objects", "volume", "dissipation"
     );
-    for a in &outcome.done {
-        for f in &a.families {
-            let sum = |c: Col| f.rows.iter().filter_map(|r| r.get(c).as_f64()).fold(0.0, |a, b| a + b);
-            let volume = sum(Col::Cells) / a.survey.cells as f64;
-            let dissipation =
-                if a.fields.magnetic && f.family.indicator.needs().magnetic { sum(Col::OhmicShare) } else { sum(Col::ViscousShare) };
-            let line = format!(
-                "{:<16} {:<12} {:>11.5} {:>8} {:>7.2}% {:>10.2}%  {}",
-                a.snapshot.name,
-                f.family.name,
-                f.level,
-                f.rows.len(),
-                100.0 * volume,
-                100.0 * dissipation,
-                classes(&f.rows)
-            );
-            let _ = writeln!(out, "{}", line.trim_end());
-        }
+    let percent = |share: Option<f64>| share.map_or("-".to_string(), |v| format!("{:.2}%", 100.0 * v));
+    for f in found {
+        let classes: Vec<String> = CLASSES.iter().zip(f.classes).filter(|(_, n)| *n > 0).map(|(c, n)| format!("{n} {c}")).collect();
+        let line = format!(
+            "{:<16} {:<12} {:>11.5} {:>8} {:>8} {:>11}  {}",
+            f.snapshot,
+            f.family,
+            f.level,
+            f.objects,
+            percent(f.volume),
+            percent(f.dissipation),
+            classes.join(", ")
+        );
+        let _ = writeln!(out, "{}", line.trim_end());
     }
-    let _ = writeln!(out, "{}", outcome.folder.display());
+    let _ = writeln!(out, "{}", folder.display());
     out
 }
 
-fn classes(rows: &[Row]) -> String {
-    let count = |name: &str| rows.iter().filter(|r| matches!(r.get(Col::Class), Value::Text(t) if t == name)).count();
-    let parts: Vec<String> = ["filament", "sheet", "blob", "tangle"]
-        .iter()
-        .map(|c| (c, count(c)))
-        .filter(|(_, n)| *n > 0)
-        .map(|(c, n)| format!("{n} {c}"))
-        .collect();
-    parts.join(", ")
-}
-
+/// The dictionary of columns, then what `--companions` can add to it.
 fn columns() -> String {
     let mut out = String::new();
-    for c in COLUMNS {
-        let _ = write!(out, "{} [{}]\n    {}\n", c.name, c.unit.text(), c.definition);
-        if !c.source.is_empty() {
-            let _ = writeln!(out, "    source: {}", c.source);
-        }
+    for c in Schema::default().columns() {
+        entry(&mut out, &c.name, &c.unit, &c.definition, &c.source);
+    }
+    out += "\nColumns that --companions LIST adds, three for every indicator named\n\n";
+    for (c, what) in companion_columns(INDICATORS[0].indicator).iter().zip(["Volume mean", "Smallest value", "Largest value"]) {
+        let ending = c.name.strip_prefix(INDICATORS[0].name).unwrap_or_default();
+        entry(&mut out, &format!("INDICATOR{ending}"), "of the indicator", &format!("{what} of the indicator over the object."), "");
+    }
+    out += "\nIndicators, for families and companions; L length, T time\n\n";
+    for i in &INDICATORS {
+        entry(&mut out, i.name, i.unit, i.definition, i.source);
     }
     out
+}
+
+fn entry(out: &mut String, name: &str, unit: &str, definition: &str, source: &str) {
+    let _ = write!(out, "{name} [{unit}]\n    {definition}\n");
+    if !source.is_empty() {
+        let _ = writeln!(out, "    source: {source}");
+    }
 }

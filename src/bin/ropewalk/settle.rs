@@ -3,13 +3,13 @@
 use std::path::PathBuf;
 
 use ropewalk::base::error::{Error, Result};
-use ropewalk::model::request::{Connectivity, Family, Frame, Outputs, Request, Scheme, Surfaces};
+use ropewalk::model::request::{Connectivity, CutOuts, Family, Frame, Outputs, Request, Scheme, Surfaces};
 use ropewalk::model::snapshot::SnapshotRef;
 use ropewalk::read::InputSpec;
 use ropewalk::run::analysis::Execution;
 use ropewalk::run::catalogue::RunConfig;
 
-use crate::args::{Catalogue, ConnectivityArg, DerivativeArg, FrameArg, SurfacesArg};
+use crate::args::{Catalogue, ConnectivityArg, DerivativeArg, FrameArg, SurfacesArg, TableArg};
 
 /// More than any machine has cores for.
 const MOST_THREADS: usize = 1024;
@@ -87,11 +87,23 @@ pub fn catalogue(a: &Catalogue) -> Result<RunConfig> {
             surface_min_cells: a.surface_min_cells,
             ..Request::default()
         },
-        outputs: Outputs::default(),
+        outputs: outputs(a)?,
         execution: Execution { block_planes: a.block_planes, ..Execution::default() },
         threads: a.threads,
         output: a.output.clone(),
         replace: a.replace,
+    })
+}
+
+fn outputs(a: &Catalogue) -> Result<Outputs> {
+    let default = Outputs::default();
+    let named = |table: TableArg, default: bool| a.tables.as_ref().map_or(default, |t| t.contains(&table));
+    Ok(Outputs {
+        parquet: named(TableArg::Parquet, default.parquet),
+        json_lines: named(TableArg::Jsonl, default.json_lines),
+        labels: a.labels,
+        cut_outs: CutOuts::parse(&a.cut_outs)?,
+        cut_out_margin: a.cut_out_margin,
     })
 }
 
