@@ -3,9 +3,11 @@
 pub mod analysis;
 pub mod catalogue;
 pub mod clock;
+pub mod config;
 mod criteria;
 mod meshes;
 pub mod passes;
+pub mod plan;
 mod provenance;
 mod ready;
 pub mod run_rms;
