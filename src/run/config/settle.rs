@@ -268,6 +268,7 @@ fn request(r: &mut Reader<'_>, entries: &Entries) -> Request {
             _ => Surfaces::Together,
         },
         surface_min_cells: r.whole(Key::SurfaceMinCells, 0, u64::MAX).unwrap_or(default.surface_min_cells),
+        ..default
     }
 }
 
