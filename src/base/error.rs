@@ -32,15 +32,40 @@ struct Body {
     kind: Kind,
     what: String,
     path: Option<PathBuf>,
+    line: Option<usize>,
     item: Option<String>,
     expected: Option<String>,
     found: Option<String>,
     hint: Option<String>,
+    /// Several faults found together; the other parts then say nothing.
+    parts: Vec<Error>,
 }
 
 impl Error {
     fn new(kind: Kind, what: impl Into<String>) -> Self {
-        Error(Box::new(Body { kind, what: what.into(), path: None, item: None, expected: None, found: None, hint: None }))
+        let what = what.into();
+        Error(Box::new(Body { kind, what, path: None, line: None, item: None, expected: None, found: None, hint: None, parts: Vec::new() }))
+    }
+
+    /// All faults of a request as one error: no error where there are none, the fault itself where there is one.
+    ///
+    /// # Errors
+    /// `Usage` where there are faults.
+    pub fn usage_all(mut faults: Vec<Error>) -> Result<()> {
+        match faults.len() {
+            0 => Ok(()),
+            1 => Err(faults.remove(0)),
+            n => {
+                let mut all = Self::new(Kind::Usage, format!("{n} faults"));
+                all.0.parts = faults;
+                Err(all)
+            }
+        }
+    }
+
+    /// The faults it is made of; itself where it is one.
+    pub fn parts(&self) -> &[Error] {
+        if self.0.parts.is_empty() { std::slice::from_ref(self) } else { &self.0.parts }
     }
 
     /// A request that cannot be honoured; `what` says what could not be done.
@@ -80,6 +105,13 @@ impl Error {
         self
     }
 
+    /// Names the line of the file, the first being 1.
+    #[must_use]
+    pub fn line(mut self, line: usize) -> Self {
+        self.0.line = Some(line);
+        self
+    }
+
     /// Names the dataset, option or other part inside the file or request.
     #[must_use]
     pub fn item(mut self, item: impl Into<String>) -> Self {
@@ -112,17 +144,29 @@ impl Error {
     pub fn kind(&self) -> Kind {
         self.0.kind
     }
+
+    /// The line of the file, where one is named.
+    pub fn at_line(&self) -> Option<usize> {
+        self.0.line
+    }
 }
 
 impl fmt::Display for Error {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         let b = &*self.0;
+        if !b.parts.is_empty() {
+            let lines: Vec<String> = b.parts.iter().map(ToString::to_string).collect();
+            return write!(f, "{}", lines.join("\n"));
+        }
         write!(f, "{}", b.what)?;
-        match (&b.path, &b.item) {
-            (Some(p), Some(i)) => write!(f, ": {}: {i}", p.display())?,
+        match (&b.path, b.line) {
+            (Some(p), Some(n)) => write!(f, ": {}:{n}", p.display())?,
             (Some(p), None) => write!(f, ": {}", p.display())?,
-            (None, Some(i)) => write!(f, ": {i}")?,
+            (None, Some(n)) => write!(f, ": line {n}")?,
             (None, None) => {}
+        }
+        if let Some(i) = &b.item {
+            write!(f, ": {i}")?;
         }
         match (&b.expected, &b.found) {
             (Some(e), Some(x)) => write!(f, ": expected {e}, found {x}")?,
@@ -156,5 +200,16 @@ mod tests {
             "cannot use velocity component: run/s1.h5: /flow/w: expected shape 64x64x64, found 64x64x32; hint: all components of a snapshot share one grid"
         );
         assert_eq!(e.kind(), Kind::Input);
+    }
+
+    #[test]
+    fn faults_found_together_are_told_one_a_line() {
+        let first = Error::usage("cannot use a").at("run.toml").line(3).item("x.a");
+        let second = Error::usage("cannot use b").line(4);
+        assert_eq!(Error::usage_all(Vec::new()), Ok(()));
+        assert_eq!(Error::usage_all(vec![first.clone()]), Err(first.clone()));
+        let all = Error::usage_all(vec![first.clone(), second.clone()]).unwrap_err();
+        assert_eq!(all.to_string(), "cannot use a: run.toml:3: x.a\ncannot use b: line 4");
+        assert_eq!((all.parts(), all.kind()), (&[first, second][..], Kind::Usage));
     }
 }

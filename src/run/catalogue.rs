@@ -69,7 +69,7 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     let mut failed: Vec<(SnapshotRef, Error)> = Vec::new();
     let mut usable = Vec::new();
     for path in &config.snapshots {
-        match read::open(path, &config.input).and_then(|o| check(o, &path.path, &config.request)) {
+        match read::open(path, &config.input).and_then(|o| check(&o, &path.path, &config.request)) {
             Ok(name) => usable.push((path.clone(), name)),
             Err(e) => failed.push((path.clone(), e)),
         }
@@ -119,9 +119,9 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     Ok(Outcome { folder: folder.finish()?, overview, failed })
 }
 
-fn check(opened: Opened, path: &Path, request: &Request) -> Result<String> {
+pub(super) fn check(opened: &Opened, path: &Path, request: &Request) -> Result<String> {
     request.families_for(opened.source.fields()).map_err(|e| e.at(path))?;
-    Ok(opened.name)
+    Ok(opened.name.clone())
 }
 
 /// Tells a failure at once where other snapshots follow; that of the only snapshot is the error of the run.
@@ -132,7 +132,7 @@ fn tell(e: &Error, config: &RunConfig, observe: &dyn Observe) {
 }
 
 /// Gives every snapshot a name of its own: where file names are equal, the names of the folders around them go before.
-fn tell_apart(snapshots: &mut [(SnapshotRef, String)]) -> Result<()> {
+pub(super) fn tell_apart(snapshots: &mut [(SnapshotRef, String)]) -> Result<()> {
     let own: Vec<String> = snapshots.iter().map(|(_, name)| name.clone()).collect();
     let names = |depth: usize| -> Vec<String> {
         let named = |(s, _): &(SnapshotRef, String), own: &String| {
@@ -163,7 +163,7 @@ fn tell_apart(snapshots: &mut [(SnapshotRef, String)]) -> Result<()> {
 }
 
 /// The error of a run in which no snapshot could be used.
-fn none_usable(mut failed: Vec<(SnapshotRef, Error)>) -> Error {
+pub(super) fn none_usable(mut failed: Vec<(SnapshotRef, Error)>) -> Error {
     match failed.len() {
         0 => Error::usage("no snapshot given").hint("name one or more files"),
         1 => failed.remove(0).1,

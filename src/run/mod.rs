@@ -3,6 +3,7 @@
 pub mod analysis;
 pub mod catalogue;
 pub mod clock;
+pub mod config;
 mod criteria;
 mod cutouts;
 mod files;
@@ -10,6 +11,7 @@ pub mod gather;
 mod meshes;
 pub mod parts;
 pub mod passes;
+pub mod plan;
 mod provenance;
 mod ready;
 pub mod run_rms;

@@ -2,7 +2,9 @@
 
 use std::path::PathBuf;
 
-use clap::{Args as ClapArgs, Parser, Subcommand, ValueEnum};
+use clap::{Args as ClapArgs, Parser, Subcommand};
+
+use crate::flags::Flags;
 
 /// Catalogues of coherent structures from turbulence snapshots: vortex filaments, current sheets, and whatever else a
 /// threshold on a derived field outlines.
@@ -18,6 +20,8 @@ pub struct Args {
 pub enum Command {
     /// Run the main job on the shipped demo run and say what to look at
     Demo(Demo),
+    /// Say what a file holds and how it would be read; write a run file for it
+    Inspect(Inspect),
     /// Snapshots in, a catalogue of their objects and surface meshes out
     Catalogue(Box<Catalogue>),
     /// Join the run folders of separate jobs, such as a job array over snapshots, into one
@@ -42,90 +46,32 @@ pub struct Demo {
 }
 
 #[derive(Debug, ClapArgs)]
-pub struct Catalogue {
-    /// HDF5 files, .npy files with a component axis, folders of .npy files, or quoted patterns like "run/*.h5"
-    #[arg(value_name = "SNAPSHOT", required = true)]
-    pub snapshots: Vec<String>,
-    /// Run folder to write
-    #[arg(short, long, value_name = "DIR", default_value = "ropewalk-run")]
-    pub output: PathBuf,
-    /// Put this run in the place of an earlier one of that name, once it is complete
+pub struct Inspect {
+    /// HDF5 files, .npy files, folders of .npy files, or files without a header
+    #[arg(value_name = "FILE", required = true)]
+    pub files: Vec<PathBuf>,
+    /// Write a commented run file for them, with every setting
+    #[arg(long, value_name = "RUN.toml")]
+    pub run_file: Option<PathBuf>,
+    /// Overwrite an earlier run file of that name
     #[arg(long)]
     pub replace: bool,
+}
 
-    /// Datasets of the velocity: three, or one with a component axis
-    #[arg(long, value_name = "U,V,W", value_delimiter = ',', help_heading = "Input")]
-    pub velocity: Option<Vec<String>>,
-    /// Datasets of the magnetic field: three, or one with a component axis
-    #[arg(long, value_name = "BX,BY,BZ", value_delimiter = ',', help_heading = "Input")]
-    pub magnetic: Option<Vec<String>>,
-    /// Array axes, slowest first; a c at one end places the component axis
-    #[arg(long, value_name = "AXES", default_value = "zyx", help_heading = "Input")]
-    pub order: String,
-    /// Box lengths: three numbers, or one for a cube; 2pi is understood
-    #[arg(long, value_name = "LX,LY,LZ", allow_hyphen_values = true, help_heading = "Input")]
-    pub lengths: Option<String>,
-    /// Distance between samples, instead of lengths
-    #[arg(long, value_name = "DX,DY,DZ", allow_hyphen_values = true, help_heading = "Input")]
-    pub spacing: Option<String>,
-    /// Position of the first sample
-    #[arg(long, value_name = "X,Y,Z", default_value = "0,0,0", allow_hyphen_values = true, help_heading = "Input")]
-    pub origin: String,
-    /// Periodic axes: any subset of xyz, or none
-    #[arg(long, value_name = "AXES", default_value = "xyz", help_heading = "Input")]
-    pub periodic: String,
-
-    /// Kinematic viscosity
-    #[arg(long, value_name = "NU", allow_negative_numbers = true, help_heading = "Physics")]
-    pub viscosity: Option<f64>,
-    /// Magnetic diffusivity
-    #[arg(long, value_name = "ETA", allow_negative_numbers = true, help_heading = "Physics")]
-    pub resistivity: Option<f64>,
-    /// Frame of the velocity: that of the box mean, or as stored
-    #[arg(long, value_enum, default_value = "box", help_heading = "Physics")]
-    pub frame: FrameArg,
-    /// Derivatives: central differences of order 2 to 8, a nine-point stencil optimised in wavenumber, or spectral (exact) on periodic axes; auto is fd8
-    #[arg(long, value_enum, default_value = "auto", help_heading = "Physics")]
-    pub derivative: DerivativeArg,
-
-    /// A family of objects, "NAME: INDICATOR > LEVEL" (repeatable). LEVEL is a number, alone or with rms, mean or volume. Without it: vorticity > 3 rms, and current > 3 rms with a magnetic field
-    #[arg(long = "family", value_name = "SPEC", help_heading = "Objects")]
-    pub families: Vec<String>,
-    /// Smallest object that is listed; smaller ones are counted
-    #[arg(long, value_name = "CELLS", default_value_t = 27, help_heading = "Objects")]
-    pub min_cells: u64,
-    /// Neighbours of a cell that belong to the same object
-    #[arg(long, value_enum, default_value = "26", help_heading = "Objects")]
-    pub connectivity: ConnectivityArg,
-    /// Larger objects get additive columns only
-    #[arg(long, value_name = "CELLS", default_value_t = 1 << 22, help_heading = "Objects")]
-    pub max_object_cells: u64,
-    /// Surface meshes: one file a snapshot and family, one an object, or none
-    #[arg(long, value_enum, default_value = "together", help_heading = "Objects")]
-    pub surfaces: SurfacesArg,
-    /// Smallest object that gets a mesh
-    #[arg(long, value_name = "CELLS", default_value_t = 0, help_heading = "Objects")]
-    pub surface_min_cells: u64,
-
-    /// Tables to write; catalogue.csv is always there
-    #[arg(long, value_name = "LIST", value_enum, value_delimiter = ',', help_heading = "Output")]
-    pub tables: Option<Vec<TableArg>>,
-    /// Label volumes: which object every cell belongs to, as HDF5
-    #[arg(long, help_heading = "Output")]
-    pub labels: bool,
-    /// Cut-outs of all fields around objects, as HDF5: largest:N of every family, or ID and FAMILY:ID (repeatable)
-    #[arg(long, value_name = "SPEC", value_delimiter = ',', help_heading = "Output")]
-    pub cut_outs: Vec<String>,
-    /// Cells around the object of a cut-out
-    #[arg(long, value_name = "CELLS", default_value_t = 8, help_heading = "Output")]
-    pub cut_out_margin: usize,
-
-    /// Worker threads; 0 takes one per core
-    #[arg(long, value_name = "N", default_value_t = 0, help_heading = "Execution (never changes a result)")]
-    pub threads: usize,
-    /// Planes worked on at a time; chosen from the snapshot when not given
-    #[arg(long, value_name = "N", help_heading = "Execution (never changes a result)")]
-    pub block_planes: Option<usize>,
+#[derive(Debug, ClapArgs)]
+#[command(after_help = "Every option but --dry-run, -q and -v is also a setting of the run file, and one that is given here replaces the \
+    setting there (--lengths also a spacing, and the other way round). Relative paths in a run file start from its folder, \
+    those given here from the present one. ropewalk inspect SNAPSHOT --run-file RUN.toml writes a run file to begin with.")]
+pub struct Catalogue {
+    /// A run file RUN.toml; or snapshots: HDF5 files, .npy files, folders of .npy files, quoted patterns like "run/*.h5";
+    /// {field} in a name stands for the component, FILE:/GROUP is one step of an HDF5 file
+    #[arg(value_name = "RUN.toml|SNAPSHOT")]
+    pub named: Vec<String>,
+    #[command(flatten)]
+    pub flags: Flags,
+    /// Check everything that headers tell and print what would be done; nothing is written
+    #[arg(long)]
+    pub dry_run: bool,
     #[command(flatten)]
     pub talk: Talk,
 }
@@ -154,45 +100,4 @@ pub struct Talk {
     /// Name every stage as it begins
     #[arg(short, long, conflicts_with = "quiet")]
     pub verbose: bool,
-}
-
-#[derive(Debug, Clone, Copy, ValueEnum)]
-pub enum FrameArg {
-    Box,
-    Stored,
-}
-
-#[derive(Debug, Clone, Copy, ValueEnum)]
-pub enum DerivativeArg {
-    Auto,
-    Fd2,
-    Fd4,
-    Fd6,
-    Fd8,
-    Opt,
-    Spectral,
-}
-
-#[derive(Debug, Clone, Copy, ValueEnum)]
-pub enum ConnectivityArg {
-    #[value(name = "6")]
-    Six,
-    #[value(name = "18")]
-    Eighteen,
-    #[value(name = "26")]
-    TwentySix,
-}
-
-#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
-pub enum TableArg {
-    Csv,
-    Parquet,
-    Jsonl,
-}
-
-#[derive(Debug, Clone, Copy, ValueEnum)]
-pub enum SurfacesArg {
-    Together,
-    Each,
-    None,
 }

@@ -14,21 +14,27 @@ use ropewalk::run::analysis::Execution;
 use ropewalk::run::catalogue::{RunConfig, catalogue};
 use ropewalk::run::gather::{GatherConfig, gather};
 use ropewalk::run::parts::{CLASSES, FamilyOverview};
+use ropewalk::run::plan::{Place, plan};
 
 use crate::args::{Args, Command, Demo, Gather};
 use crate::console::{self, Console};
-use crate::{exit, settle};
+use crate::{exit, inspect, settle};
 
 /// Runs the command.
 pub fn run(args: &Args) -> Result<ExitCode> {
     match &args.command {
         Command::Catalogue(a) => {
-            let outcome = catalogue(&settle::catalogue(a)?, &Console::new(a.talk))?;
+            let config = settle::catalogue(a)?;
+            if a.dry_run {
+                return dry_run(&config);
+            }
+            let outcome = catalogue(&config, &Console::new(a.talk))?;
             if !a.talk.quiet {
                 console::result(&overview(&outcome.overview, &outcome.folder))?;
             }
             Ok(if outcome.failed.is_empty() { ExitCode::SUCCESS } else { ExitCode::from(exit::PARTIAL) })
         }
+        Command::Inspect(a) => inspect::run(a),
         Command::Demo(a) => demo(a),
         Command::Gather(a) => gathered(a),
         Command::Columns => {
@@ -36,6 +42,20 @@ pub fn run(args: &Args) -> Result<ExitCode> {
             Ok(ExitCode::SUCCESS)
         }
     }
+}
+
+/// Prints the plan; ends as the run would before its first plane.
+fn dry_run(config: &RunConfig) -> Result<ExitCode> {
+    let plan = plan(config)?;
+    console::result(&plan.to_string())?;
+    if plan.place == Place::Taken {
+        return Err(Error::output("cannot make the run folder")
+            .at(&plan.folder)
+            .expected("nothing there")
+            .found("a run folder or file of that name")
+            .hint("name another with -o, or pass --replace to put this run in its place once it is complete"));
+    }
+    Ok(if plan.unusable.is_empty() { ExitCode::SUCCESS } else { ExitCode::from(exit::PARTIAL) })
 }
 
 /// One run of the demo.

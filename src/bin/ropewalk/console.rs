@@ -18,9 +18,11 @@ pub fn usage(e: &clap::Error) -> ExitCode {
     if e.use_stderr() || !shown { ExitCode::from(exit::USAGE) } else { ExitCode::SUCCESS }
 }
 
-/// Prints the error that ends the run.
+/// Prints the error that ends the run, each of its faults on a line.
 pub fn error(e: &Error) {
-    eprintln!("error: {e}");
+    for fault in e.parts() {
+        eprintln!("error: {fault}");
+    }
 }
 
 /// Prints results. A reader that stops listening is no error, a full disk is.

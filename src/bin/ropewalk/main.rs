@@ -4,6 +4,8 @@ mod args;
 mod commands;
 mod console;
 mod exit;
+mod flags;
+mod inspect;
 mod settle;
 
 use std::process::ExitCode;

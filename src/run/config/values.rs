@@ -1,0 +1,358 @@
+//! Values of settings by kind: text, names, numbers, parts of axes. What cannot be read is a fault, and the default goes on.
+
+use std::collections::BTreeSet;
+use std::f64::consts::PI;
+
+use crate::base::error::Error;
+use crate::read::Stretch;
+use crate::run::config::given::{Given, Node, Raw};
+use crate::run::config::nearest::nearest;
+use crate::run::config::registry::Key;
+
+const AXES: [&str; 3] = ["x", "y", "z"];
+
+/// Reads settings and gathers faults.
+pub(super) struct Reader<'g> {
+    /// The settings.
+    pub given: &'g Given,
+    /// What is wrong.
+    pub faults: Vec<Error>,
+    /// Settings with a fault: what follows from them is not checked.
+    pub broken: BTreeSet<Key>,
+}
+
+impl<'g> Reader<'g> {
+    pub fn new(given: &'g Given) -> Self {
+        Reader { given, faults: given.faults.clone(), broken: BTreeSet::new() }
+    }
+
+    /// Notes that a value is not what it should be; the hint is an example.
+    pub fn unlike(&mut self, key: Key, node: &Node, expected: &str) {
+        self.fault(key, node, expected, node.found(), example(key, node));
+    }
+
+    /// Notes a fault.
+    pub fn fault(&mut self, key: Key, node: &Node, expected: &str, found: String, hint: String) {
+        let e = Error::usage("cannot use a setting").item(self.given.label(key)).expected(expected).found(found).hint(hint);
+        self.push(key, node.line, e);
+    }
+
+    /// Notes an error about one setting, at a line.
+    pub fn push(&mut self, key: Key, line: Option<usize>, e: Error) {
+        self.broken.insert(key);
+        self.faults.push(self.given.placed(e, line));
+    }
+
+    /// Whether a setting has a fault.
+    pub fn is_broken(&self, key: Key) -> bool {
+        self.broken.contains(&key)
+    }
+
+    /// A text that is not empty.
+    pub fn text(&mut self, key: Key) -> Option<String> {
+        let node = self.given.node(key)?;
+        match &node.raw {
+            Raw::Typed(t) | Raw::Text(t) if !t.trim().is_empty() => Some(t.clone()),
+            _ => {
+                self.unlike(key, node, "a text");
+                None
+            }
+        }
+    }
+
+    /// One of the setting's choices.
+    pub fn choice(&mut self, key: Key) -> Option<&'static str> {
+        let node = self.given.node(key)?;
+        let text = match &node.raw {
+            Raw::Typed(t) | Raw::Text(t) => t.clone(),
+            Raw::Integer(i) => i.to_string(),
+            _ => String::new(),
+        };
+        let choices = key.setting().choices;
+        let found = choices.iter().find(|c| **c == text).copied();
+        if found.is_none() {
+            let hint = nearest(&text, choices.iter().copied()).map_or_else(|| example(key, node), |c| format!("did you mean {c}?"));
+            self.fault(key, node, &format!("one of {}", choices.join(", ")), node.found(), hint);
+        }
+        found
+    }
+
+    /// Yes or no.
+    pub fn switch(&mut self, key: Key) -> Option<bool> {
+        let node = self.given.node(key)?;
+        match &node.raw {
+            Raw::Bool(b) => Some(*b),
+            Raw::Typed(t) if t == "yes" => Some(true),
+            Raw::Typed(t) if t == "no" => Some(false),
+            _ => {
+                self.unlike(key, node, if node.line.is_some() { "true or false" } else { "yes or no" });
+                None
+            }
+        }
+    }
+
+    /// A whole number in a range.
+    pub fn whole(&mut self, key: Key, least: u64, most: u64) -> Option<u64> {
+        let node = self.given.node(key)?;
+        let value = match &node.raw {
+            Raw::Integer(i) => u64::try_from(*i).ok(),
+            Raw::Typed(t) => t.trim().parse().ok(),
+            _ => None,
+        };
+        if let Some(v) = value.filter(|v| (least..=most).contains(v)) {
+            return Some(v);
+        }
+        let expected = match (least, most) {
+            (0, u64::MAX) => "a whole number".to_string(),
+            (least, u64::MAX) => format!("a whole number of at least {least}"),
+            (least, most) => format!("a whole number from {least} to {most}"),
+        };
+        self.unlike(key, node, &expected);
+        None
+    }
+
+    /// A number above 0.
+    pub fn positive(&mut self, key: Key) -> Option<f64> {
+        let node = self.given.node(key)?;
+        let value = number(node).filter(|v| *v > 0.0);
+        if value.is_none() {
+            self.unlike(key, node, "a number above 0");
+        }
+        value
+    }
+
+    /// Numbers, any of them.
+    pub fn numbers(&mut self, key: Key) -> Option<Vec<f64>> {
+        let node = self.given.node(key)?;
+        let values = numbers(node);
+        if values.is_none() {
+            self.unlike(key, node, "finite numbers");
+        }
+        values
+    }
+
+    /// Three numbers, or one for all axes.
+    pub fn triple(&mut self, key: Key, above_zero: bool) -> Option<[f64; 3]> {
+        let node = self.given.node(key)?;
+        let values = match numbers(node).as_deref() {
+            Some([v]) => Some([*v; 3]),
+            Some([x, y, z]) => Some([*x, *y, *z]),
+            _ => None,
+        };
+        let values = values.filter(|v| !above_zero || v.iter().all(|v| *v > 0.0));
+        if values.is_none() {
+            let which = if above_zero { " above 0" } else { "" };
+            self.unlike(key, node, &format!("three finite numbers{which}, or one for all axes"));
+        }
+        values
+    }
+
+    /// A list of texts, each with its place. A text with commas is a list.
+    pub fn list(&mut self, key: Key) -> Option<Vec<(String, Node)>> {
+        let node = self.given.node(key)?;
+        let split = |t: &str| t.split(',').map(|p| p.trim().to_string()).collect::<Vec<_>>();
+        let items: Option<Vec<(String, Node)>> = match &node.raw {
+            Raw::Typed(t) | Raw::Text(t) => Some(split(t).into_iter().map(|t| (t, node.clone())).collect()),
+            Raw::Integer(i) => Some(vec![(i.to_string(), node.clone())]),
+            Raw::List(items) => items
+                .iter()
+                .map(|n| match &n.raw {
+                    Raw::Text(t) | Raw::Typed(t) => Some((t.clone(), n.clone())),
+                    Raw::Integer(i) => Some((i.to_string(), n.clone())),
+                    _ => None,
+                })
+                .collect(),
+            _ => None,
+        };
+        let items = items.filter(|list| list.iter().all(|(t, _)| !t.trim().is_empty()));
+        if items.is_none() {
+            self.unlike(key, node, "a list of texts, none of them empty");
+        }
+        items
+    }
+
+    /// Texts, each of which may hold commas.
+    pub fn texts(&mut self, key: Key) -> Option<Vec<(String, Node)>> {
+        match self.given.node(key).map(|n| (&n.raw, n)) {
+            Some((Raw::Text(t), node)) if !t.trim().is_empty() => Some(vec![(t.clone(), node.clone())]),
+            _ => self.list(key),
+        }
+    }
+
+    /// Periodic axes.
+    pub fn axes(&mut self, key: Key) -> Option<[bool; 3]> {
+        let node = self.given.node(key)?;
+        if let Raw::Typed(t) | Raw::Text(t) = &node.raw {
+            if t == "none" {
+                return Some([false; 3]);
+            }
+            let each: [usize; 3] = std::array::from_fn(|a| t.matches(AXES[a]).count());
+            if !t.is_empty() && each.iter().sum::<usize>() == t.chars().count() && each.iter().all(|n| *n < 2) {
+                return Some(each.map(|n| n == 1));
+            }
+        }
+        self.unlike(key, node, "a subset of xyz, or none");
+        None
+    }
+
+    /// One text an axis, as `x=TEXT,z=TEXT` or as a table.
+    pub fn by_axis(&mut self, key: Key, expected: &str) -> Option<[Option<Node>; 3]> {
+        let node = self.given.node(key)?;
+        let mut out = [None, None, None];
+        let entries: Option<Vec<(String, Node)>> = match &node.raw {
+            Raw::Typed(t) | Raw::Text(t) => t
+                .split(',')
+                .map(|part| {
+                    let (axis, rest) = part.split_once('=')?;
+                    Some((axis.trim().to_string(), Node { raw: Raw::Text(rest.trim().to_string()), line: node.line }))
+                })
+                .collect(),
+            Raw::Table(entries) => Some(entries.clone()),
+            _ => None,
+        };
+        for (axis, value) in entries.unwrap_or_else(|| vec![(String::new(), node.clone())]) {
+            match AXES.iter().position(|a| *a == axis) {
+                Some(a) if out[a].is_none() => out[a] = Some(value),
+                Some(_) => {
+                    self.fault(key, node, "every axis once", format!("{axis} twice in {}", node.found()), example(key, node));
+                    return None;
+                }
+                None => {
+                    let found = if axis.is_empty() { node.found() } else { format!("the axis \"{axis}\"") };
+                    self.fault(key, node, expected, found, example(key, node));
+                    return None;
+                }
+            }
+        }
+        Some(out)
+    }
+
+    /// Names of coordinates.
+    pub fn coordinates(&mut self) -> [Option<String>; 3] {
+        const EXPECTED: &str = "the name of a dataset for some of x, y, z";
+        let Some(found) = self.by_axis(Key::Coordinates, EXPECTED) else { return [None, None, None] };
+        found.map(|node| {
+            let node = node?;
+            match &node.raw {
+                Raw::Text(t) if !t.is_empty() => Some(t.clone()),
+                _ => {
+                    self.unlike(Key::Coordinates, &node, EXPECTED);
+                    None
+                }
+            }
+        })
+    }
+
+    /// Parts of axes, by positions or by indices.
+    pub fn stretches(&mut self, key: Key) -> [Option<Stretch>; 3] {
+        let cells = key == Key::RegionCells;
+        let expected = if cells {
+            "FIRST:END for some of x, y, z, two whole numbers, the second larger"
+        } else {
+            "FROM:TO for some of x, y, z, two numbers, the second larger"
+        };
+        let Some(found) = self.by_axis(key, expected) else { return [None; 3] };
+        found.map(|node| {
+            let node = node?;
+            let out = if cells { indices(&node) } else { positions(&node) };
+            if out.is_none() {
+                self.unlike(key, &node, expected);
+            }
+            out
+        })
+    }
+}
+
+/// What a setting looks like, in the form of the place where the fault is.
+fn example(key: Key, node: &Node) -> String {
+    let s = key.setting();
+    match (node.line, s.flag) {
+        (Some(_), _) => format!("for example {} = {}", s.name, s.example),
+        (None, "") => format!("for example {}", s.typed),
+        (None, flag) if s.typed.contains([' ', '<', '>', '*', '{']) => format!("for example --{flag} \"{}\"", s.typed),
+        (None, flag) => format!("for example --{flag} {}", s.typed),
+    }
+}
+
+/// The two ends of a part of an axis.
+fn ends(node: &Node) -> Option<(Node, Node)> {
+    match &node.raw {
+        Raw::List(both) => match both.as_slice() {
+            [a, b] => Some((a.clone(), b.clone())),
+            _ => None,
+        },
+        Raw::Text(t) => {
+            let (a, b) = t.split_once(':')?;
+            let of = |t: &str| Node { raw: Raw::Typed(t.trim().to_string()), line: node.line };
+            Some((of(a), of(b)))
+        }
+        _ => None,
+    }
+}
+
+fn positions(node: &Node) -> Option<Stretch> {
+    let (a, b) = ends(node)?;
+    let (a, b) = (number(&a)?, number(&b)?);
+    (a < b).then_some(Stretch::Positions(a, b))
+}
+
+fn indices(node: &Node) -> Option<Stretch> {
+    let whole = |n: &Node| match &n.raw {
+        Raw::Integer(i) => Some(*i),
+        Raw::Typed(t) => t.parse().ok(),
+        _ => None,
+    };
+    let (a, b) = ends(node)?;
+    let (a, b) = (whole(&a)?, whole(&b)?);
+    (a < b).then_some(Stretch::Indices(a, b))
+}
+
+fn number(node: &Node) -> Option<f64> {
+    let value = match &node.raw {
+        Raw::Integer(i) => Some(*i as f64),
+        Raw::Float(v) => Some(*v),
+        Raw::Typed(t) | Raw::Text(t) => parse_number(t),
+        _ => None,
+    };
+    value.filter(|v| v.is_finite())
+}
+
+fn numbers(node: &Node) -> Option<Vec<f64>> {
+    match &node.raw {
+        Raw::List(items) => items.iter().map(number).collect(),
+        Raw::Typed(t) | Raw::Text(t) => t.split(',').map(|p| parse_number(p).filter(|v| v.is_finite())).collect(),
+        _ => number(node).map(|v| vec![v]),
+    }
+}
+
+/// A number, with multiples of pi: `2pi`, `-pi`, `4pi/3`, `0.5pi`.
+fn parse_number(text: &str) -> Option<f64> {
+    let text = text.trim();
+    let Some((before, after)) = text.split_once("pi") else { return text.parse().ok() };
+    let factor: f64 = match before.trim_end_matches('*').trim() {
+        "" | "+" => 1.0,
+        "-" => -1.0,
+        number => number.parse().ok()?,
+    };
+    let divisor: f64 = match after.trim() {
+        "" => 1.0,
+        rest => rest.strip_prefix('/')?.trim().parse().ok()?,
+    };
+    Some(factor * PI / divisor)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn numbers_with_pi() {
+        let tau = std::f64::consts::TAU;
+        for (text, value) in [("2pi", tau), ("-pi", -PI), ("4pi/3", 4.0 * PI / 3.0), ("0.5*pi", 0.5 * PI), ("1e-3", 1e-3), (" 2 ", 2.0)] {
+            assert_eq!(parse_number(text), Some(value), "{text}");
+        }
+        for text in ["", "pie", "2pi3", "xpi", "pi/x", "1,5"] {
+            assert_eq!(parse_number(text), None, "{text}");
+        }
+    }
+}

@@ -1,0 +1,434 @@
+//! What a run would do, as data: snapshots, passes, bytes to read, memory, files to be written. Only headers are opened.
+
+use std::fmt;
+use std::path::PathBuf;
+
+use crate::base::error::{Error, Kind, Result};
+use crate::base::real::Real;
+use crate::derive::filter::{self, filter_bytes};
+use crate::derive::{Deriver, Plan as Derived, fewest_samples, z_lines_bytes};
+use crate::model::request::{CutOuts, Extent, Family, Frame, Outputs, Request, Surfaces};
+use crate::model::snapshot::SnapshotRef;
+use crate::model::source::{AnySource, PlaneSource};
+use crate::read::{self, Opened};
+use crate::run::analysis::Execution;
+use crate::run::catalogue::{RunConfig, check, none_usable, tell_apart};
+use crate::run::run_rms;
+use crate::run::stream::block_ranges;
+use crate::space::grid::Grid;
+
+/// Bytes that the patch and surface of an open object take a cell, roughly.
+const OBJECT_BYTES: u64 = 200;
+/// Blocks of planes alive at once: the one worked on and its neighbours, and the one being read.
+const BLOCKS: u64 = 4;
+/// What the program and its libraries take before any plane is read, roughly.
+const PROGRAM_BYTES: u64 = 30 << 20;
+
+/// What a run would do.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Plan {
+    /// Usable snapshots in the order of the catalogue.
+    pub snapshots: Vec<SnapshotPlan>,
+    /// The others, with the reason.
+    pub unusable: Vec<(SnapshotRef, Error)>,
+    /// The run folder.
+    pub folder: PathBuf,
+    /// What stands there now.
+    pub place: Place,
+    /// Files to be written below it; `ID` stands for every object's.
+    pub files: Vec<String>,
+}
+
+/// What stands where the run folder is to be.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Place {
+    /// Nothing.
+    Free,
+    /// Something that will be replaced if it is an earlier run.
+    Replaced,
+    /// Something that is in the way.
+    Taken,
+}
+
+/// What would be done with one snapshot.
+#[derive(Debug, Clone, PartialEq)]
+pub struct SnapshotPlan {
+    /// Its name in the catalogue.
+    pub name: String,
+    /// Where it is.
+    pub snapshot: SnapshotRef,
+    /// Samples, spacing, origin, periodic axes.
+    pub grid: Grid,
+    /// `f32` or `f64`.
+    pub precision: &'static str,
+    /// Names of the components.
+    pub components: Vec<&'static str>,
+    /// Its time, where known.
+    pub time: Option<f64>,
+    /// The families.
+    pub families: Vec<Family>,
+    /// Passes in their order.
+    pub passes: Vec<PassPlan>,
+    /// What it is estimated to need.
+    pub memory: Memory,
+}
+
+/// One pass over the planes.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct PassPlan {
+    /// Its name.
+    pub name: &'static str,
+    /// Bytes of values to read from files, uncompressed; 0 where planes are in memory.
+    pub bytes: u64,
+}
+
+/// An estimate of the memory one snapshot takes, in bytes.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Memory {
+    /// Blocks of planes that are read ahead, worked on, or kept as halo.
+    pub blocks: u64,
+    /// The whole snapshot, where it is read once and kept.
+    pub kept: u64,
+    /// Filtered fields.
+    pub filter: u64,
+    /// Spectral derivatives along z.
+    pub spectral: u64,
+    /// Open objects and their surfaces, at most: one of the largest size that is measured, or the box.
+    pub objects: u64,
+}
+
+impl Memory {
+    /// All of it, with what the program itself takes.
+    pub fn total(&self) -> u64 {
+        PROGRAM_BYTES + self.blocks + self.kept + self.filter + self.spectral + self.objects
+    }
+}
+
+impl SnapshotPlan {
+    /// Bytes to read in all passes.
+    pub fn bytes(&self) -> u64 {
+        self.passes.iter().map(|p| p.bytes).sum()
+    }
+}
+
+impl Plan {
+    /// Bytes to read in all.
+    pub fn bytes(&self) -> u64 {
+        self.snapshots.iter().map(SnapshotPlan::bytes).sum()
+    }
+
+    /// Memory of the snapshot that takes most: they are worked on one after the other.
+    pub fn memory(&self) -> u64 {
+        self.snapshots.iter().map(|s| s.memory.total()).max().unwrap_or(0)
+    }
+}
+
+/// Makes the plan of a run.
+///
+/// # Errors
+/// Those that the run itself would meet before its first plane, but for a run folder that is in the way: that is part of the plan.
+pub fn plan(config: &RunConfig) -> Result<Plan> {
+    let mut unusable: Vec<(SnapshotRef, Error)> = Vec::new();
+    let mut usable = Vec::new();
+    let mut opened = Vec::new();
+    for snapshot in &config.snapshots {
+        let one = read::open(snapshot, &config.input)
+            .and_then(|o| Ok((looked_at(&o, snapshot, config)?, check(&o, &snapshot.path, &config.request)?)));
+        match one {
+            Ok((seen, name)) => {
+                usable.push((snapshot.clone(), name));
+                opened.push(seen);
+            }
+            Err(e) => unusable.push((snapshot.clone(), e)),
+        }
+    }
+    if usable.is_empty() {
+        if let [(_, e), ..] = unusable.as_slice()
+            && unusable.iter().all(|(_, e)| e.kind() == Kind::Usage)
+        {
+            return Err(e.clone());
+        }
+        return Err(none_usable(unusable));
+    }
+    tell_apart(&mut usable)?;
+    for (seen, (_, name)) in opened.iter_mut().zip(usable) {
+        seen.name = name;
+    }
+    let there = config.output.symlink_metadata().is_ok();
+    let place = match (there, config.replace) {
+        (false, _) => Place::Free,
+        (true, true) => Place::Replaced,
+        (true, false) => Place::Taken,
+    };
+    let files = files(&opened, &config.request, &config.outputs);
+    Ok(Plan { snapshots: opened, unusable, folder: config.output.clone(), place, files })
+}
+
+/// The plan of one snapshot; its name follows.
+fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Result<SnapshotPlan> {
+    let (request, execution, outputs) = (&config.request, &config.execution, &config.outputs);
+    let grid = opened.source.grid().clone();
+    let fields = opened.source.fields();
+    let families = request.families_for(fields).map_err(|e| e.at(&snapshot.path))?;
+    for (a, axis) in ["x", "y", "z"].iter().enumerate() {
+        let fewest = fewest_samples(request.scheme, &grid, a);
+        if grid.n[a] < fewest {
+            return Err(Error::input("cannot derive along an axis")
+                .at(&snapshot.path)
+                .item(format!("{axis} axis"))
+                .expected(format!("at least {fewest} samples"))
+                .found(grid.n[a].to_string())
+                .hint(format!("--derivative {} reads {fewest} samples", request.scheme.name())));
+        }
+    }
+    if request.filter.is_some() {
+        filter::check(&grid).map_err(|e| e.at(&snapshot.path))?;
+    }
+    let Source { precision, width, costly, thickest, halo, spectral } = match &opened.source {
+        AnySource::F32(s) => source(&**s, &families, request, execution),
+        AnySource::F64(s) => source(&**s, &families, request, execution),
+    };
+    let plane = grid.plane_cells() as u64 * fields.components() as u64 * width as u64;
+    let whole = plane * grid.n[2] as u64;
+    let kept = costly && whole <= execution.keep_bytes;
+    let memory = Memory {
+        blocks: BLOCKS * plane * thickest as u64,
+        kept: if kept { whole } else { 0 },
+        filter: request.filter.map_or(0, |_| filter_bytes(&grid, fields, width)),
+        spectral: if spectral { z_lines_bytes(&grid, fields, width) } else { 0 },
+        objects: OBJECT_BYTES * grid.cells().min(request.max_object_cells),
+    };
+    // Planes beyond both periodic faces are read again.
+    let reading = Reading { whole, halo: 2 * halo as u64 * plane, kept, spectral };
+    let passes = passes(&families, request, outputs, &reading);
+    let components = fields.names();
+    Ok(SnapshotPlan {
+        name: opened.name.clone(),
+        snapshot: snapshot.clone(),
+        grid,
+        precision,
+        components,
+        time: opened.time,
+        families,
+        passes,
+        memory,
+    })
+}
+
+/// What the plan needs to know of an opened source.
+struct Source {
+    precision: &'static str,
+    /// Bytes a value.
+    width: usize,
+    costly: bool,
+    /// Planes of the thickest block.
+    thickest: usize,
+    /// Planes of halo on each side of a periodic z-axis.
+    halo: usize,
+    /// Whether derivatives along z are taken of whole lines.
+    spectral: bool,
+}
+
+fn source<T: Real>(source: &dyn PlaneSource<T>, families: &[Family], request: &Request, execution: &Execution) -> Source {
+    let plan = Derived {
+        indicators: families.iter().map(|f| f.indicator).collect(),
+        extras: request.extras(),
+        scheme: request.scheme,
+        frame: [0.0; 3],
+        mean_field: None,
+        viscosity: request.viscosity,
+        resistivity: request.resistivity,
+    };
+    let deriver = Deriver::<T>::new(source.grid(), source.fields(), plan);
+    Source {
+        precision: T::NAME,
+        width: size_of::<T>(),
+        costly: source.is_costly(),
+        thickest: block_ranges(source, execution.block_planes).iter().map(ExactSizeIterator::len).max().unwrap_or(0),
+        halo: deriver.halo(),
+        spectral: deriver.wanted_z_lines().is_some(),
+    }
+}
+
+/// What a pass costs.
+struct Reading {
+    /// All planes.
+    whole: u64,
+    /// Planes read again beyond periodic faces.
+    halo: u64,
+    /// Whether the snapshot is read once and kept.
+    kept: bool,
+    /// Whether derivatives along z are taken of whole lines.
+    spectral: bool,
+}
+
+/// The passes over one snapshot.
+fn passes(families: &[Family], request: &Request, outputs: &Outputs, reading: &Reading) -> Vec<PassPlan> {
+    let mut out: Vec<PassPlan> = Vec::new();
+    let indicators = || families.iter().map(|f| f.indicator).chain(request.companions.iter().copied());
+    let moving = request.frame == Frame::Box && indicators().any(crate::model::indicator::Indicator::depends_on_frame);
+    let prepared = |out: &mut Vec<PassPlan>| {
+        let mut in_memory = reading.kept;
+        let mut add =
+            |name: &'static str, bytes: u64, in_memory: bool| out.push(PassPlan { name, bytes: if in_memory { 0 } else { bytes } });
+        if reading.kept {
+            add("read", reading.whole, false);
+        }
+        if request.filter.is_some() {
+            add("check", reading.whole, in_memory);
+            add("filter", reading.whole, in_memory);
+            in_memory = true;
+        }
+        if reading.spectral {
+            add("lines", reading.whole, in_memory);
+        }
+        if moving {
+            add("mean", reading.whole, in_memory);
+        }
+        add("survey", reading.whole + reading.halo, in_memory);
+        in_memory
+    };
+    if run_rms::is_wanted(families) {
+        // Everything up to the survey is done once before, for the rms of the run.
+        prepared(&mut out);
+    }
+    let in_memory = prepared(&mut out);
+    let mut add = |name: &'static str| out.push(PassPlan { name, bytes: if in_memory { 0 } else { reading.whole + reading.halo } });
+    add("detection");
+    for _ in families.iter().filter(|f| matches!(f.extent(), Extent::FromPeaks { .. })) {
+        add("peaks");
+        add("parts");
+    }
+    add("shapes");
+    if outputs.cut_outs != CutOuts::None {
+        out.push(PassPlan { name: "cut-outs", bytes: reading.whole });
+    }
+    out
+}
+
+fn files(snapshots: &[SnapshotPlan], request: &Request, outputs: &Outputs) -> Vec<String> {
+    let mut out = vec!["catalogue.csv".to_string()];
+    let mut add = |wanted: bool, name: String| out.extend(wanted.then_some(name));
+    add(outputs.parquet, "catalogue.parquet".into());
+    add(outputs.json_lines, "catalogue.jsonl".into());
+    for name in ["columns.json", "run.json", "timing.json"] {
+        add(true, name.into());
+    }
+    for s in snapshots {
+        for f in &s.families {
+            match request.surfaces {
+                Surfaces::None => {}
+                Surfaces::Together => add(true, format!("surfaces/{}/{}.ply", s.name, f.name)),
+                Surfaces::Each => add(true, format!("surfaces/{}/{}/ID.ply", s.name, f.name)),
+            }
+            add(outputs.labels, format!("labels/{}/{}.h5", s.name, f.name));
+            add(outputs.cut_outs != CutOuts::None, format!("cutouts/{}/{}/ID.h5", s.name, f.name));
+        }
+    }
+    out
+}
+
+impl fmt::Display for Plan {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        let total = self.snapshots.len() + self.unusable.len();
+        writeln!(f, "{} of {total} snapshots can be used; nothing was read but headers, nothing is written.\n", self.snapshots.len())?;
+        writeln!(
+            f,
+            "{:<20} {:<18} {:<5} {:<24} {:>10} {:>10} {:>10}",
+            "snapshot", "samples x y z", "type", "components", "time", "to read", "memory"
+        )?;
+        for s in &self.snapshots {
+            let n = s.grid.n.map(|n| n.to_string()).join(" x ");
+            let time = s.time.map_or_else(String::new, |t| t.to_string());
+            let (read, memory) = (bytes(s.bytes()), bytes(s.memory.total()));
+            let line =
+                format!("{:<20} {n:<18} {:<5} {:<24} {time:>10} {read:>10} {memory:>10}", s.name, s.precision, s.components.join(","));
+            writeln!(f, "{}", line.trim_end())?;
+        }
+        for (snapshot, e) in &self.unusable {
+            writeln!(f, "{snapshot}: not usable: {e}")?;
+        }
+        for (title, text) in
+            [("Box", boxes as fn(&SnapshotPlan) -> Vec<String>), ("Families", families), ("Passes", told), ("Memory", parts)]
+        {
+            writeln!(f, "\n{title}")?;
+            let mut groups: Vec<(Vec<String>, usize)> = Vec::new();
+            for lines in self.snapshots.iter().map(text) {
+                match groups.iter_mut().find(|(g, _)| *g == lines) {
+                    Some((_, n)) => *n += 1,
+                    None => groups.push((lines, 1)),
+                }
+            }
+            for (lines, n) in &groups {
+                if groups.len() > 1 {
+                    writeln!(f, "  of {n} {}", if *n == 1 { "snapshot" } else { "snapshots" })?;
+                }
+                lines.iter().try_for_each(|l| writeln!(f, "  {l}"))?;
+            }
+        }
+        writeln!(f, "\nTo read in all: {} of uncompressed values", bytes(self.bytes()))?;
+        writeln!(f, "Memory: about {}, of which objects take what they need; an estimate", bytes(self.memory()))?;
+        let place = match self.place {
+            Place::Free => "new",
+            Place::Replaced => "takes the place of what is there, if that is a run folder",
+            Place::Taken => "is there already, and not replaced without --replace",
+        };
+        writeln!(f, "\nRun folder {}: {place}", self.folder.display())?;
+        self.files.iter().try_for_each(|name| writeln!(f, "  {name}"))
+    }
+}
+
+fn boxes(s: &SnapshotPlan) -> Vec<String> {
+    let three = |v: [f64; 3]| v.map(|v| v.to_string()).join(", ");
+    let periodic: String = ["x", "y", "z"].iter().zip(s.grid.periodic).filter(|(_, p)| *p).map(|(a, _)| *a).collect();
+    let mut out = vec![
+        format!("lengths {}", three([0, 1, 2].map(|a| s.grid.length(a)))),
+        format!("spacing {}", three(s.grid.spacing)),
+        format!("first sample at {}", three(s.grid.origin)),
+        format!("periodic axes: {}", if periodic.is_empty() { "none" } else { &periodic }),
+    ];
+    let stretched: String = ["x", "y", "z"].iter().zip(&s.grid.stretched).filter(|(_, c)| c.is_some()).map(|(a, _)| *a).collect();
+    if !stretched.is_empty() {
+        out.push(format!("unequal spacing, the mean is shown: {stretched}"));
+    }
+    out
+}
+
+fn families(s: &SnapshotPlan) -> Vec<String> {
+    s.families.iter().map(ToString::to_string).collect()
+}
+
+fn told(s: &SnapshotPlan) -> Vec<String> {
+    s.passes.iter().map(|p| format!("{:<10} {:>10}", p.name, if p.bytes == 0 { "in memory".to_string() } else { bytes(p.bytes) })).collect()
+}
+
+fn parts(s: &SnapshotPlan) -> Vec<String> {
+    let m = &s.memory;
+    [
+        ("the program itself", PROGRAM_BYTES),
+        ("blocks of planes", m.blocks),
+        ("the snapshot, kept", m.kept),
+        ("filtered fields", m.filter),
+        ("derivatives along z", m.spectral),
+        ("objects, at most", m.objects),
+    ]
+    .into_iter()
+    .filter(|(_, n)| *n > 0)
+    .map(|(name, n)| format!("{name:<20} {:>10}", bytes(n)))
+    .collect()
+}
+
+/// A number of bytes for reading.
+pub fn bytes(n: u64) -> String {
+    const UNITS: [&str; 5] = ["KiB", "MiB", "GiB", "TiB", "PiB"];
+    if n < 1024 {
+        return format!("{n} B");
+    }
+    let mut value = n as f64 / 1024.0;
+    let mut unit = 0;
+    while value >= 1024.0 && unit + 1 < UNITS.len() {
+        value /= 1024.0;
+        unit += 1;
+    }
+    format!("{value:.1} {}", UNITS[unit])
+}
