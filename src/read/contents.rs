@@ -3,11 +3,11 @@
 use std::path::Path;
 
 use ::hdf5::types::{FixedAscii, FixedUnicode, FloatSize, TypeDescriptor, VarLenAscii, VarLenUnicode};
-use ::hdf5::{Attribute, Dataset, Datatype, Group, Location};
+use ::hdf5::{Attribute, Dataset, Datatype, Location};
 
 use crate::base::error::{Error, Result};
 use crate::read::inspect::Item;
-use crate::read::shelf::{datasets, groups, open_file};
+use crate::read::shelf::{all_groups, datasets, open_file};
 use crate::read::{natural, npy};
 
 /// Most datasets and groups looked at, and longest values of an attribute shown.
@@ -47,7 +47,7 @@ pub(super) struct Inside {
 pub(super) fn hdf5(path: &Path) -> Result<Inside> {
     let file = open_file(path, None)?;
     let mut found = Vec::new();
-    datasets(&file, "", 0, MOST, &mut found);
+    datasets(&file, "", MOST, &mut found);
     let mut inside = Inside { attributes: attributes(&file), ..Inside::default() };
     for (name, dataset) in found {
         let own = attributes(&dataset);
@@ -56,8 +56,9 @@ pub(super) fn hdf5(path: &Path) -> Result<Inside> {
         }
         if dataset.size() == 1
             && let Ok(values) = dataset.read_raw::<f64>()
+            && let [value] = values[..]
         {
-            inside.scalars.push((name.clone(), values[0]));
+            inside.scalars.push((name.clone(), value));
         }
         inside.items.push(Item {
             name: name.clone(),
@@ -68,7 +69,8 @@ pub(super) fn hdf5(path: &Path) -> Result<Inside> {
         });
         inside.of_items.push((name, own));
     }
-    walk(&file, "", 0, &mut inside.groups);
+    let groups = all_groups(&file, MOST, natural::compare);
+    inside.groups = groups.into_iter().map(|(path, group)| (path, attributes(&group))).collect();
     Ok(inside)
 }
 
@@ -81,20 +83,6 @@ pub(super) fn axis_of(name: &str) -> Option<usize> {
         let forms = ["", "c", "_c", "_centre", "_center", "_coord", "_coordinates", "coord"];
         forms.iter().any(|f| last == format!("{axis}{f}"))
     })
-}
-
-fn walk(group: &Group, prefix: &str, depth: usize, found: &mut Vec<(String, Vec<Named>)>) {
-    let mut names = groups(group);
-    names.sort_by(|a, b| natural::compare(a, b));
-    for name in names {
-        if found.len() >= MOST || depth > 8 {
-            return;
-        }
-        let Ok(inner) = group.group(&name) else { continue };
-        let full = format!("{prefix}/{name}");
-        found.push((full.clone(), attributes(&inner)));
-        walk(&inner, &full, depth + 1, found);
-    }
 }
 
 fn attributes(place: &Location) -> Vec<Named> {

@@ -222,3 +222,30 @@ fn what_cannot_be_looked_into() {
          hint: write it with numpy.save",
     );
 }
+
+#[test]
+fn odd_contents_are_told_without_fuss() {
+    let dir = tempfile::tempdir().unwrap();
+    let path = dir.path().join("s.h5");
+    let file = File::create(&path).unwrap();
+    for (c, name) in ["u", "v", "w"].into_iter().enumerate() {
+        put::<f32>(&file, name, &SHAPE, &coded(N, c));
+    }
+    // A ring, an empty dataset, no values, integers, booleans, text.
+    file.create_group("a/b").unwrap();
+    file.link_soft("/", "a/b/ring").unwrap();
+    file.link_soft("/nowhere", "dangling").unwrap();
+    file.new_dataset::<f64>().shape(0).create("none").unwrap();
+    file.new_dataset_builder().empty::<f64>().shape(::hdf5::Extents::Null).create("empty").unwrap();
+    file.new_dataset::<i16>().create("time").unwrap().write_scalar(&7i16).unwrap();
+    file.new_attr::<bool>().create("flag").unwrap().write_scalar(&true).unwrap();
+    let text: VarLenUnicode = "many words".parse().unwrap();
+    file.new_dataset::<VarLenUnicode>().create("text").unwrap().write_scalar(&text).unwrap();
+    file.close().unwrap();
+    let got = inspect(&path).unwrap();
+    let items: Vec<&str> = got.items.iter().map(|i| i.name.as_str()).collect();
+    assert_eq!(items, ["/empty", "/none", "/text", "/time", "/u", "/v", "/w"]);
+    assert_eq!(got.attributes.len(), 1);
+    assert_eq!(got.time, Some(7.0));
+    opens(&got, None);
+}
