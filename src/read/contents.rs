@@ -14,6 +14,8 @@ use crate::read::{natural, npy};
 const MOST: usize = 4096;
 const SHOWN: usize = 8;
 const LONGEST_TEXT: usize = 200;
+/// Attributes by which the HDF5 library links dimension scales (HDF5 Dimension Scale Specification): they tell nothing else.
+const SCALES: [&str; 4] = ["CLASS", "NAME", "REFERENCE_LIST", "DIMENSION_LIST"];
 
 /// An attribute: its text, and its values where they are numbers.
 #[derive(Debug, Clone, PartialEq)]
@@ -48,6 +50,7 @@ pub(super) fn hdf5(path: &Path) -> Result<Inside> {
     let file = open_file(path, None)?;
     let mut found = Vec::new();
     datasets(&file, "", MOST, &mut found);
+    found.sort_by(|a, b| natural::compare(&a.0, &b.0));
     let mut inside = Inside { attributes: attributes(&file), ..Inside::default() };
     for (name, dataset) in found {
         let own = attributes(&dataset);
@@ -87,6 +90,7 @@ pub(super) fn axis_of(name: &str) -> Option<usize> {
 
 fn attributes(place: &Location) -> Vec<Named> {
     let mut names = place.attr_names().unwrap_or_default();
+    names.retain(|name| !SCALES.contains(&name.as_str()));
     names.sort_by(|a, b| natural::compare(a, b));
     names.into_iter().filter_map(|name| place.attr(&name).ok().map(|a| named(name, &a))).collect()
 }

@@ -142,6 +142,7 @@ fn components_in_a_group_and_spacing() {
         ..InputSpec::default()
     };
     assert_eq!(got.guess, want);
+    assert_eq!(got.reasons[3], "spacing from the attributes dx, dy, dz, in the order x, y, z");
     let opened = opens(&got, None);
     assert!(opened.source.fields().buoyancy);
 }
@@ -191,8 +192,14 @@ fn files_without_a_header_are_guessed_by_size() {
     let record = |body: Vec<u8>| [&(body.len() as u32).to_be_bytes()[..], &body, &(body.len() as u32).to_be_bytes()].concat();
     let each: Vec<u8> = (0..3).flat_map(|c| record(doubles(&coded(n, c), true))).collect();
     let got = inspect(&write(dir.path(), "b.dat", &each)).unwrap();
-    assert_eq!(got.reasons[0], "its size fits 8x8x8 samples of 3 components in float64 with 4-byte record markers, big-endian");
+    assert_eq!(got.reasons[0], "it has 3 records of 4096 bytes between 4-byte markers, big-endian");
+    assert_eq!(got.reasons[1], "its size fits 8x8x8 samples of 3 components in float64 with 4-byte record markers, big-endian");
     opens(&got, None);
+    let got = inspect(&write(dir.path(), "d.dat", &record(vec![1; 300]))).unwrap();
+    assert_eq!(
+        got.reasons,
+        ["it has 1 record of 300 bytes between 4-byte markers, big-endian", "no cubic shape of float32 or float64 values has its size"]
+    );
     let got = inspect(&write(dir.path(), "c.dat", &[7; 1000])).unwrap();
     assert_eq!((got.guess.raw, &got.reasons[..]), (None, &["no cubic shape of float32 or float64 values has its size".to_string()][..]));
 }
