@@ -109,42 +109,28 @@ pub fn lambda2<T: Real>(g: &Gradient<T>, remove_trace: bool, out: &mut Vec<T>) {
     let n = g.d[0][0].len();
     out.resize(n, T::ZERO);
     let d = slices(g, n);
-    if n < LANES {
-        let mut padded = [[[T::ZERO; LANES]; 3]; 3];
-        for (row, slices) in padded.iter_mut().flatten().zip(d.iter().flatten()) {
-            row[..n].copy_from_slice(slices);
+    for first in (0..n).step_by(LANES) {
+        let count = LANES.min(n - first);
+        let d: Slices<'_, T> = std::array::from_fn(|c| std::array::from_fn(|a| &d[c][a][first..first + count]));
+        let mut m = [[0.0f64; LANES]; 6];
+        for l in 0..count {
+            let mut a = cell(&d, l);
+            if remove_trace {
+                a = without_trace(a);
+            }
+            let [[xx, xy, xz], [yx, yy, yz], [zx, zy, zz]] = a;
+            m[0][l] = xx * xx + xy * yx + xz * zx;
+            m[1][l] = yx * xy + yy * yy + yz * zy;
+            m[2][l] = zx * xz + zy * yz + zz * zz;
+            m[3][l] = 0.5 * ((xx * xy + xy * yy + xz * zy) + (yx * xx + yy * yx + yz * zx));
+            m[4][l] = 0.5 * ((xx * xz + xy * yz + xz * zz) + (zx * xx + zy * yx + zz * zx));
+            m[5][l] = 0.5 * ((yx * xz + yy * yz + yz * zz) + (zx * xy + zy * yy + zz * zy));
         }
-        let values = several(std::array::from_fn(|c| std::array::from_fn(|a| &padded[c][a])), remove_trace);
-        out.copy_from_slice(&values[..n]);
-        return;
-    }
-    // The last cells are taken together with some before them: a cell's value does not depend on its neighbours.
-    for first in (0..n).step_by(LANES).map(|i| i.min(n - LANES)) {
-        let chunk = |s: &'_ [T]| -> [T; LANES] { std::array::from_fn(|l| s[first + l]) };
-        let values: [[[T; LANES]; 3]; 3] = std::array::from_fn(|c| std::array::from_fn(|a| chunk(d[c][a])));
-        let values = several(std::array::from_fn(|c| std::array::from_fn(|a| &values[c][a])), remove_trace);
-        out[first..first + LANES].copy_from_slice(&values);
-    }
-}
-
-#[inline(always)]
-fn several<T: Real>(d: [[&[T; LANES]; 3]; 3], remove_trace: bool) -> [T; LANES] {
-    let mut m = [[0.0f64; LANES]; 6];
-    for l in 0..LANES {
-        let mut a: Matrix = std::array::from_fn(|c| std::array::from_fn(|k| d[c][k][l].wide()));
-        if remove_trace {
-            a = without_trace(a);
+        let values = if size_of::<T>() == size_of::<f32>() { middle_single(m) } else { middle(m) };
+        for (o, v) in out[first..first + count].iter_mut().zip(values) {
+            *o = T::of(v);
         }
-        let square = |i: usize, j: usize| a[i][0] * a[0][j] + a[i][1] * a[1][j] + a[i][2] * a[2][j];
-        m[0][l] = square(0, 0);
-        m[1][l] = square(1, 1);
-        m[2][l] = square(2, 2);
-        m[3][l] = 0.5 * (square(0, 1) + square(1, 0));
-        m[4][l] = 0.5 * (square(0, 2) + square(2, 0));
-        m[5][l] = 0.5 * (square(1, 2) + square(2, 1));
     }
-    let values = if size_of::<T>() == size_of::<f32>() { middle_single(m) } else { middle(m) };
-    values.map(T::of)
 }
 
 #[cfg(test)]
