@@ -1,6 +1,6 @@
 //! From settings as found to a run: every value read, every fault told.
 
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 use crate::base::error::{Error, Result};
 use crate::model::indicator::{INDICATORS, Indicator};
@@ -102,9 +102,8 @@ fn pattern(r: &Reader<'_>, text: &str) -> String {
     if !is_pattern(text) || plain.exists() || plain.as_os_str() == text || PathBuf::from(text).is_absolute() {
         return plain.to_string_lossy().into_owned();
     }
-    let folder = r.given.folder().to_string_lossy().into_owned();
-    let literal: String = folder.chars().map(|c| if is_pattern(&c.to_string()) { format!("[{c}]") } else { c.to_string() }).collect();
-    PathBuf::from(literal).join(text).to_string_lossy().into_owned()
+    let folder = glob::Pattern::escape(&r.given.folder().to_string_lossy());
+    Path::new(&folder).join(text).to_string_lossy().into_owned()
 }
 
 fn series(r: &mut Reader<'_>) -> Series {

@@ -7,7 +7,7 @@ use crate::base::error::Error;
 use crate::read::Stretch;
 use crate::run::config::given::{Given, Node, Raw};
 use crate::run::config::nearest::nearest;
-use crate::run::config::registry::Key;
+use crate::run::config::registry::{Key, Takes};
 
 const AXES: [&str; 3] = ["x", "y", "z"];
 
@@ -269,6 +269,7 @@ fn example(key: Key, node: &Node) -> String {
     match (node.line, s.flag) {
         (Some(_), _) => format!("for example {} = {}", s.name, s.example),
         (None, "") => format!("for example {}", s.typed),
+        (None, flag) if s.takes == Takes::Switch => format!("for example --{flag}={}", s.typed),
         (None, flag) if s.typed.contains([' ', '<', '>', '*', '{']) => format!("for example --{flag} \"{}\"", s.typed),
         (None, flag) => format!("for example --{flag} {}", s.typed),
     }
