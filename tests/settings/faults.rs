@@ -37,7 +37,10 @@ fn syntax() {
     added("[input]\norigin = 1\n", &[&at(5, "duplicate key")]);
     added("order\n", &[&at(5, "key with no value, expected `=`")]);
     // The rest is looked at all the same, but nothing is called missing that may stand on a line that cannot be read.
-    whole("[snapshots]\npaths = [\"a.h5\"\n[input]\nperiodic = \"xq\"\n", &[&at(3, "missing comma between array elements, expected `,`")]);
+    whole(
+        "[snapshots]\npaths = [\"a.h5\"\n[input]\nperiodic = \"xq\"\n",
+        &[&at(3, "missing comma between array elements, expected `,`"), &at(4, "missing comma between array elements, expected `,`")],
+    );
     whole(
         "[input]\nlengths == 3\nperiodic = \"xq\"\n",
         &[
@@ -87,13 +90,13 @@ fn values_of_the_wrong_kind() {
     let cases = [
         ("[snapshots]", "steps = 3", "a text", "3", "steps = \"step_*\""),
         ("[snapshots]", "steps = \"\"", "a text", "nothing", "steps = \"step_*\""),
-        ("[snapshots]", "lists = 1979-05-27", "a list of texts, none of them empty", "the date 1979-05-27", "lists = [\"run.txt\"]"),
+        ("[snapshots]", "lists = 1979-05-27", "a list of texts", "the date 1979-05-27", "lists = [\"run.txt\"]"),
         ("[snapshots]", "times = [1, true]", "finite numbers", "[1, true]", "times = [0.0, 0.5]"),
         ("[snapshots]", "times = [nan]", "finite numbers", "[NaN]", "times = [0.0, 0.5]"),
         ("[input]", "velocity = [\"u\", \"v\", \"w\", \"x\"]", VECTOR, "[\"u\", \"v\", \"w\", \"x\"]", VELOCITY),
         ("[input]", "velocity = [\"u\", \"v\", \"u\"]", "different datasets for the components", "[\"u\", \"v\", \"u\"]", VELOCITY),
         ("[input]", "velocity = [\"u\", \"\", \"w\"]", "a list of texts, none of them empty", "[\"u\", nothing, \"w\"]", VELOCITY),
-        ("[input]", "velocity = 1.5", "a list of texts, none of them empty", "1.5", VELOCITY),
+        ("[input]", "velocity = 1.5", "a list of texts", "1.5", VELOCITY),
         ("[input]", "buoyancy = [\"b\"]", "a text", "[\"b\"]", "buoyancy = \"theta\""),
         ("[input]", "density = true", "a text", "true", "density = \"rho\""),
         ("[input]", "order = \"zyy\"", ORDER, "\"zyy\"", "order = \"xyz\""),
@@ -139,7 +142,7 @@ fn values_of_the_wrong_kind() {
         ("[output]", "cut_outs = [12, \"worms:x\"]", CUT_OUTS, "\"worms:x\"", "cut_outs = \"largest:3\""),
         ("[output]", "cut_outs = [\"largest:3\", 4]", CUT_OUTS, "\"largest:3\"", "cut_outs = \"largest:3\""),
         ("[execution]", "threads = 5000", "a whole number from 0 to 1024", "5000", "threads = 2"),
-        ("[execution]", "block_planes = 0", "a whole number from 1 to 4294967295", "0", "block_planes = 16"),
+        ("[execution]", "block_planes = 0", "a whole number of at least 1", "0", "block_planes = 16"),
     ];
     for (table, line, expected, found, example) in cases {
         let key = line.split(' ').next().unwrap();
@@ -183,12 +186,12 @@ fn choices() {
     added(
         "[input.raw]\nvalues = \"f16\"\nendian = \"middle\"\nrecords = 16\nshape = [1, 2.5]\noffset = -1\n",
         &[
-            "cannot use a setting: run.toml:6: input.raw.values: expected one of f32, f64, found \"f16\"; hint: did you mean f32?",
+            "cannot use a setting: run.toml:6: input.raw.values: expected one of f32, f64, found \"f16\"; hint: for example values = \"f32\"",
             "cannot use a setting: run.toml:7: input.raw.endian: expected one of little, big, found \"middle\"; hint: for example endian = \"big\"",
             "cannot use a setting: run.toml:8: input.raw.records: expected one of none, 4, 8, found 16; hint: for example records = 4",
             "cannot use a setting: run.toml:9: input.raw.shape: expected whole numbers of at least 1, found [1, 2.5]; \
              hint: for example shape = [64, 64, 128]",
-            "cannot use a setting: run.toml:10: input.raw.offset: expected a whole number from 0 to 9223372036854775807, found -1; \
+            "cannot use a setting: run.toml:10: input.raw.offset: expected a whole number, found -1; \
              hint: for example offset = 512",
         ],
     );
@@ -211,13 +214,7 @@ fn choices() {
 #[test]
 fn families_and_what_they_need() {
     added(
-        "velocity = [\"u\", \"v\", \"w\"]\n[objects]\nfamilies = [\n  \"a: q > 1 rms\",\n  \"b vorticity > 1\",\n  \"c: current > 3 rms\",\n  \"d: dissipation_viscous > 1 mean\",\n  \"a: speed > 1\",\n  \"e: q > 2 volume\",\n  3,\n]\n",
-        &["cannot use a setting: run.toml:7: objects.families: expected a list of texts, none of them empty, \
-           found [\"a: q > 1 rms\", \"b vorticity > 1\", \"c: current > 3 rms\", \"d: dissipation_viscous > 1 mean\", \"a: speed > 1\", \"e: q > 2 volume\", 3]; \
-           hint: for example families = [\"worms: vorticity > 2.5 rms\", \"cores: q > 0.01 volume\"]"],
-    );
-    added(
-        "velocity = [\"u\", \"v\", \"w\"]\n[objects]\nfamilies = [\n  \"a: q > 1 rms\",\n  \"b vorticity > 1\",\n  \"c: current > 3 rms\",\n  \"d: dissipation_viscous > 1 mean\",\n  \"a: speed > 1\",\n  \"e: q > 2 volume\",\n  \"f: buoyancy > 1\",\n]\ncompanions = [\"cross_helicity\", \"dissipation_ohmic\"]\n[output]\nmesh_values = [\"buoyancy_gradient\"]\n",
+        "velocity = [\"u\", \"v\", \"w\"]\n[objects]\nfamilies = [\n  \"a: q > 1 rms\",\n  \"b vorticity > 1\",\n  \"c: current > 3 rms\",\n  \"d: dissipation_viscous > 1 mean\",\n  \"a: speed > 1\",\n  \"e: q > 2 volume\",\n  \"f: buoyancy > 1\",\n  3,\n]\ncompanions = [\"cross_helicity\", \"dissipation_ohmic\"]\n[output]\nmesh_values = [\"buoyancy_gradient\"]\n",
         &[
             "cannot read family: run.toml:9: \"b vorticity > 1\": expected \"NAME: INDICATOR > LEVEL [down to LEVEL]\", found no colon; \
              hint: for example \"vorticity: vorticity > 3 rms\"",
@@ -230,11 +227,13 @@ fn families_and_what_they_need() {
             "cannot read family: run.toml:13: \"e: q > 2 volume\": expected \"NAME: INDICATOR > LEVEL [down to LEVEL]\", \
              found the volume fraction 2; hint: a volume fraction lies between 0 and 1",
             "cannot detect family: run.toml:14: \"f: buoyancy > 1\": expected a buoyancy field, found none; hint: name its dataset with --buoyancy B",
-            "cannot add companion columns: run.toml:16: cross_helicity: expected a magnetic field, found none; \
+            "cannot use a setting: run.toml:15: objects.families: expected a text in the list, found 3; \
+             hint: for example families = [\"worms: vorticity > 2.5 rms\", \"cores: q > 0.01 volume\"]",
+            "cannot add companion columns: run.toml:17: cross_helicity: expected a magnetic field, found none; \
              hint: name its datasets with --magnetic BX,BY,BZ",
-            "cannot add companion columns: run.toml:16: dissipation_ohmic: expected a magnetic field, found none; \
+            "cannot add companion columns: run.toml:17: dissipation_ohmic: expected a magnetic field, found none; \
              hint: name its datasets with --magnetic BX,BY,BZ",
-            "cannot add mesh values: run.toml:18: buoyancy_gradient: expected a buoyancy field, found none; hint: name its dataset with --buoyancy B",
+            "cannot add mesh values: run.toml:19: buoyancy_gradient: expected a buoyancy field, found none; hint: name its dataset with --buoyancy B",
         ],
     );
     added(
