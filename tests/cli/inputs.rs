@@ -83,7 +83,7 @@ fn a_pattern_takes_every_match_in_order() {
     place.succeed(&format!("catalogue run_*.h5 {OPTIONS} --surfaces none"));
     let run = place.json("ropewalk-run/run.json");
     let names: Vec<&str> = run["snapshots"].as_array().expect("snapshots").iter().filter_map(|s| s["snapshot"].as_str()).collect();
-    assert_eq!(names, ["run_1", "run_10", "run_2"]);
+    assert_eq!(names, ["run_1", "run_2", "run_10"]);
 }
 
 #[test]
@@ -191,7 +191,7 @@ fn bad_options() {
     for (options, message) in cases {
         fails(&place, &format!("catalogue good.h5 {options}"), 2, message);
     }
-    let usage = "\n\nUsage: ropewalk catalogue [OPTIONS] [RUN.toml|SNAPSHOT]...\n\nFor more information, try '--help'.";
+    let usage = "\n\nUsage: ropewalk catalogue --lengths <LX,LY,LZ> <RUN.toml|SNAPSHOT>...\n\nFor more information, try '--help'.";
     let tip = "\n\n  tip: to pass '--colour' as a value, use '-- --colour'";
     fails(&place, "catalogue good.h5 --lengths 1 --colour", 2, &format!("unexpected argument '--colour' found{tip}{usage}"));
     fails(&place, "weave", 2, "unrecognized subcommand 'weave'\n\nUsage: ropewalk <COMMAND>\n\nFor more information, try '--help'.");

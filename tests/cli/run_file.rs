@@ -93,7 +93,7 @@ fn a_run_file_stands_alone() {
 #[test]
 fn exit_codes() {
     let place = Place::with_snapshot();
-    let mut code = |paths: &str| {
+    let code = |paths: &str| {
         place.write("run.toml", RUN.replace("\"*.h5\"", paths).as_bytes());
         place.run("catalogue run.toml --replace").code
     };
