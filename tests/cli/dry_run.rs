@@ -64,11 +64,13 @@ fn the_demo_is_planned() {
         "columns.json",
         "run.json",
         "timing.json",
+        "parts/mhd_0001.json",
+        "parts/mhd_0001.jsonl",
         "surfaces/mhd_0001/vorticity.ply",
         "surfaces/mhd_0001/current.ply",
     ];
-    assert_eq!(plan.files[..7], files);
-    assert_eq!(plan.files.len(), 5 + 3 * 2);
+    assert_eq!(plan.files[..9], files);
+    assert_eq!(plan.files.len(), 5 + 3 * 4);
 }
 
 /// What is asked for decides the passes, the memory and the files.
@@ -92,9 +94,9 @@ fn passes_follow_the_request() {
     c.outputs = Outputs { parquet: false, json_lines: true, labels: true, cut_outs: CutOuts::Largest(2), cut_out_margin: 8 };
     let asked = of(&c);
     let names: Vec<&str> = asked.snapshots[0].passes.iter().map(|p| p.name).collect();
-    assert_eq!(names, ["mean", "survey", "mean", "survey", "detection", "peaks", "parts", "shapes", "cut-outs"]);
+    assert_eq!(names, ["read", "survey", "read", "survey", "detection", "peaks", "sums", "cut-outs", "shapes"]);
     assert_eq!(asked.files[..5], ["catalogue.csv", "catalogue.jsonl", "columns.json", "run.json", "timing.json"]);
-    assert_eq!(asked.files[5..8], ["surfaces/mhd_0001/h/ID.ply", "labels/mhd_0001/h.h5", "cutouts/mhd_0001/h/ID.h5"]);
+    assert_eq!(asked.files[7..10], ["surfaces/mhd_0001/h/ID.ply", "labels/mhd_0001/h.h5", "cutouts/mhd_0001/h/ID.h5"]);
 
     c.request = Request {
         scheme: Scheme::Spectral,
@@ -104,11 +106,46 @@ fn passes_follow_the_request() {
     c.outputs = Outputs::default();
     let whole_field = of(&c);
     let reads: Vec<(&str, bool)> = passes(&whole_field).iter().map(|(n, b)| (*n, *b > 0)).collect();
-    let wanted = [("check", true), ("filter", true), ("lines", false), ("survey", false), ("detection", false), ("shapes", false)];
+    let wanted = [("read", true), ("filter", true), ("lines", false), ("survey", false), ("detection", false), ("shapes", false)];
     assert_eq!(reads, wanted);
     let Memory { spectral, filter, .. } = whole_field.snapshots[0].memory;
     assert_eq!(spectral, WHOLE, "derivatives along z of all components");
     assert!(filter > WHOLE && filter < 3 * WHOLE, "{filter}");
+}
+
+/// A run goes through the passes that were planned and leaves the files that were planned, `ID` standing for one or more.
+#[test]
+fn the_run_does_what_was_planned() {
+    let place = Place::with_snapshot();
+    for options in [
+        "",
+        "--labels --cut-outs largest:2 --surfaces each --tables csv,jsonl",
+        "--family 'h: helicity > 2 rms' --family 't: vorticity > 0.7 peak' --cut-outs largest:1",
+        "--filter 'sharp 0.6' --derivative spectral --surfaces none",
+    ] {
+        let line = format!("catalogue good.h5 {OPTIONS} {options} --replace -o run");
+        let told = place.succeed(&format!("{line} --dry-run")).out;
+        let part = |title: &str| told.split(&format!("\n{title}")).nth(1).expect("a part").lines().skip(1).take_while(|l| !l.is_empty());
+        let passes: Vec<&str> = part("Passes").filter_map(|l| l.split_whitespace().next()).collect();
+        let stages = place.succeed(&format!("{line} -v")).err;
+        let ran: Vec<&str> = stages.lines().filter_map(|l| l.strip_suffix(": 16 planes")).collect();
+        assert_eq!(passes, ran, "{options}");
+
+        let mut planned: Vec<String> = part("Run folder").map(|l| l.trim().to_string()).collect();
+        let id = |name: &str| match name.rsplit_once('/') {
+            Some((folder, file)) if file.starts_with(|c: char| c.is_ascii_digit()) => {
+                format!("{folder}/ID{}", file.trim_start_matches(|c: char| c.is_ascii_digit()))
+            }
+            _ => name.to_string(),
+        };
+        let files = place.listing();
+        let mut left: Vec<String> =
+            files.iter().filter_map(|f| f.strip_prefix("run/")).filter(|f| !f.is_empty() && !f.ends_with('/')).map(id).collect();
+        left.sort();
+        left.dedup();
+        planned.sort();
+        assert_eq!(left, planned, "{options}");
+    }
 }
 
 /// The estimate is of the right size: a run takes no more than 1.5 times of it, and not less than a tenth.
@@ -160,6 +197,8 @@ Run folder out: new
   columns.json
   run.json
   timing.json
+  parts/good.json
+  parts/good.jsonl
   surfaces/good/v.ply
 ";
     assert_eq!(ran.out, wanted);

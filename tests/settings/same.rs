@@ -211,3 +211,14 @@ fn patterns_in_a_folder_with_brackets() {
     assert_eq!(at("runs [old]/run.toml"), ["runs [[]old[]]/*.h5", "runs [old]/a.h5"]);
     assert_eq!(at("run.toml"), ["*.h5", "a.h5"]);
 }
+
+/// The run file in the README is one.
+#[test]
+fn the_example_of_the_readme() {
+    let readme = include_str!("../../README.md");
+    let text = readme.split("```toml\n").nth(1).and_then(|t| t.split("```").next()).expect("a run file");
+    let Settled { series, config } = settled(&Given::parse(text, Path::new("run.toml")));
+    assert_eq!(series.paths, ["run/*.h5"]);
+    assert_eq!(config.input.lengths, Some([4.0 * PI, 2.0, 2.0 * PI]));
+    assert_eq!((config.request.families.len(), config.output), (2, PathBuf::from("results")));
+}
