@@ -27,7 +27,8 @@ const CONFINED: &[(&[&str], &[&str])] = &[
     (&["println!", "print!", "eprintln!", "eprint!", "dbg!"], &["bin/ropewalk/console.rs"]),
     (&["rayon"], &["base/par.rs"]),
     (&["rustfft", "realfft"], &["math/fft.rs"]),
-    (&["glob"], &["read/series.rs", "bin/ropewalk/settle.rs"]),
+    (&["glob"], &["read/series.rs"]),
+    (&["toml"], &["run/config/file.rs"]),
 ];
 
 const LONGEST: usize = 600;

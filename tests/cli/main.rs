@@ -1,9 +1,12 @@
 //! The built program run as a user would run it.
 
 mod demo;
+mod dry_run;
 mod exits;
 mod help;
 mod inputs;
+mod inspect;
 mod place;
+mod run_file;
 mod same;
 mod talk;
