@@ -2,8 +2,10 @@
 
 mod demo;
 mod exits;
+mod gather;
 mod help;
 mod inputs;
+mod outputs;
 mod place;
 mod same;
 mod talk;
