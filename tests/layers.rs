@@ -22,13 +22,17 @@ const HEIGHTS: &[(&str, u8)] = &[
     ("bin", 7),
 ];
 
-/// Names that only the listed files may use.
+/// Names that only the listed files may use; a home that ends with / is a whole folder.
 const CONFINED: &[(&[&str], &[&str])] = &[
     (&["println!", "print!", "eprintln!", "eprint!", "dbg!"], &["bin/ropewalk/console.rs"]),
     (&["rayon"], &["base/par.rs"]),
     (&["rustfft", "realfft"], &["math/fft.rs"]),
     (&["glob"], &["read/series.rs"]),
     (&["toml"], &["run/config/file.rs"]),
+    // Reading and writing have one home each.
+    (&["::hdf5"], &["read/", "export/hdf5.rs"]),
+    (&["::parquet"], &["export/parquet.rs"]),
+    (&["ply_rs"], &["export/ply.rs"]),
 ];
 
 const LONGEST: usize = 600;
@@ -156,7 +160,8 @@ fn faults(path: &str, text: &str) -> Vec<String> {
     }
     let code = code_of(text);
     for (words, homes) in CONFINED {
-        for word in words.iter().filter(|w| !homes.contains(&path) && !places(&code, w).is_empty()) {
+        let at_home = homes.iter().any(|h| *h == path || (h.ends_with('/') && path.starts_with(h)));
+        for word in words.iter().filter(|w| !at_home && !places(&code, w).is_empty()) {
             fault(format!("uses {word}, which belongs into {}", homes.join(", ")));
         }
     }
@@ -249,6 +254,8 @@ fn the_scanner_finds_planted_faults() {
         ("bin/ropewalk/a.rs", "fn f() { eprintln!(\"x\"); }", "uses eprintln!, which belongs into bin/ropewalk/console.rs"),
         ("detect/a.rs", "use rayon::prelude::*;", "uses rayon, which belongs into base/par.rs"),
         ("synth/a.rs", "fn f(p: realfft::RealFftPlanner<f64>) {}", "uses realfft, which belongs into math/fft.rs"),
+        ("run/a.rs", "use ::hdf5::File;", "uses ::hdf5, which belongs into read/, export/hdf5.rs"),
+        ("export/csv.rs", "fn f(e: ::parquet::errors::ParquetError) {}", "uses ::parquet, which belongs into export/parquet.rs"),
         ("run/a.rs", "fn f() { std::env::var(\"X\"); }", "reads the environment with env::var"),
         ("attic/a.rs", "", "stands in the unknown folder attic"),
         ("run/a.rs", "const C: char = '\"'; use crate::bin::x; const D: char = '\"';", "imports bin (height 7) from height 6"),
@@ -273,6 +280,8 @@ fn the_scanner_leaves_good_files_alone() {
         ("run/a.rs", "pub(crate) fn f() { let crate_like = 1; let my_rayon = 2; writeln!(x); }"),
         ("run/a.rs", "const V: &str = env!(\"CARGO_PKG_VERSION\"); const A: &str = std::env::consts::ARCH;"),
         ("base/par.rs", "use rayon::prelude::*;"),
+        ("read/a.rs", "use ::hdf5::File; use crate::read::hdf5::open;"),
+        ("run/a.rs", "use crate::export::hdf5::axes; use crate::export::parquet::ParquetWriter;"),
         ("bin/ropewalk/a.rs", "use crate::args::Args; use ropewalk::run::catalogue; fn f() { std::env::var(\"NO_COLOR\"); }"),
         ("bin/ropewalk/console.rs", "fn f() { eprintln!(\"x\"); }"),
     ];

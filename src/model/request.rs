@@ -95,38 +95,6 @@ pub enum CutOuts {
     Named(Vec<(Option<String>, u64)>),
 }
 
-impl CutOuts {
-    /// Reads `largest:N`, or any number of `ID` and `FAMILY:ID`.
-    ///
-    /// # Errors
-    /// `Usage`, naming what is wrong.
-    pub fn parse(specs: &[String]) -> Result<CutOuts> {
-        let wrong = |found: String| {
-            Error::usage("cannot choose cut-outs")
-                .expected("largest:N alone, or ID and FAMILY:ID")
-                .found(found)
-                .hint("for example largest:3, or 7,vorticity:12")
-        };
-        if let [one] = specs
-            && let Some(n) = one.strip_prefix("largest:")
-        {
-            return match n.parse::<usize>() {
-                Ok(n) if n > 0 => Ok(CutOuts::Largest(n)),
-                _ => Err(wrong(format!("\"{one}\""))),
-            };
-        }
-        let named = |spec: &String| {
-            let (family, id) = spec.rsplit_once(':').map_or((None, spec.as_str()), |(family, id)| (Some(family), id));
-            match id.parse::<u64>() {
-                Ok(id) if id > 0 && family != Some("") && family != Some("largest") => Ok((family.map(str::to_string), id)),
-                _ => Err(wrong(format!("\"{spec}\" among {}", specs.join(",")))),
-            }
-        };
-        let list = specs.iter().map(named).collect::<Result<Vec<_>>>()?;
-        Ok(if list.is_empty() { CutOuts::None } else { CutOuts::Named(list) })
-    }
-}
-
 /// What is written besides `catalogue.csv`, `run.json` and `columns.json`; changes no number.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Outputs {
@@ -283,18 +251,6 @@ mod tests {
         assert_eq!(Request::default().families_for(velocity).unwrap()[0].to_string(), "vorticity: vorticity > 3 rms");
         let with = Request { companions: vec![Indicator::Buoyancy], ..Request::default() };
         assert!(with.families_for(velocity).unwrap_err().to_string().contains("cannot add companion columns: buoyancy"));
-    }
-
-    #[test]
-    fn cut_outs_are_chosen_by_size_or_name() {
-        let parse = |specs: &[&str]| CutOuts::parse(&specs.iter().map(ToString::to_string).collect::<Vec<_>>());
-        assert_eq!(parse(&[]).unwrap(), CutOuts::None);
-        assert_eq!(parse(&["largest:3"]).unwrap(), CutOuts::Largest(3));
-        assert_eq!(parse(&["7", "v:12"]).unwrap(), CutOuts::Named(vec![(None, 7), (Some("v".into()), 12)]));
-        for bad in [&["largest:0"][..], &["largest"], &["largest:2", "7"], &["v:"], &[":3"], &["0"], &["-1"]] {
-            let message = parse(bad).unwrap_err().to_string();
-            assert!(message.starts_with("cannot choose cut-outs: expected largest:N alone"), "{message}");
-        }
     }
 
     #[test]

@@ -49,7 +49,7 @@ const OF_SNAPSHOTS: [&str; 3] = ["surfaces", "labels", "cutouts"];
 /// `run.json` are those of one run over the snapshots in that order.
 ///
 /// # Errors
-/// `Usage` when no folder is given; `Input` when one is no run folder, when requests, program or columns differ, or a snapshot is there twice; `Output`.
+/// `Input` when a folder holds no run, when requests or programs differ, or a snapshot is there twice; `Output`.
 pub fn gather(config: &GatherConfig, observe: &dyn Observe) -> Result<Gathered> {
     let started = Instant::now();
     let pool = Pool::new(config.threads)?;

@@ -21,6 +21,7 @@ fn help_of_every_command() {
         ("demo --help", "help_demo.txt"),
         ("inspect --help", "help_inspect.txt"),
         ("catalogue --help", "help_catalogue.txt"),
+        ("gather --help", "help_gather.txt"),
         ("columns --help", "help_columns.txt"),
     ] {
         let ran = place.succeed(line);
@@ -74,6 +75,25 @@ fn dictionary_header_and_listing_agree() {
         }
     }
     let ran = place.succeed("columns");
-    assert_eq!(ran.out, listing);
+    let rest = ran.out.strip_prefix(&listing).unwrap_or_else(|| panic!("the dictionary, then more:\n{}", ran.out));
     assert_eq!(ran.err, "");
+    assert!(rest.starts_with("\nColumns that --companions LIST adds, three for every indicator named\n"), "{rest}");
+    for ending in ["mean", "min", "max"] {
+        assert!(rest.contains(&format!("\nINDICATOR_{ending} [of the indicator]\n")), "{rest}");
+    }
+    for i in &ropewalk::model::indicator::INDICATORS {
+        assert!(rest.contains(&format!("\n{} [{}]\n    {}\n", i.name, i.unit, i.definition)), "{} is not in {rest}", i.name);
+    }
+}
+
+/// Companions that were asked for stand in header and dictionary.
+#[test]
+fn companions_have_columns() {
+    let place = Place::with_snapshot();
+    place.succeed(&format!("catalogue good.h5 {OPTIONS} --companions strain,q"));
+    let header = place.read("ropewalk-run/catalogue.csv").lines().next().expect("a header").to_string();
+    assert!(header.ends_with(",flags,strain_mean,strain_min,strain_max,q_mean,q_min,q_max"), "{header}");
+    let dictionary = place.json("ropewalk-run/columns.json");
+    let last = dictionary["columns"].as_array().and_then(|c| c.last()).expect("a column");
+    assert_eq!((&last["name"], &last["unit"]), (&"q_max".into(), &"1/T^2".into()));
 }

@@ -3,9 +3,11 @@
 mod demo;
 mod dry_run;
 mod exits;
+mod gather;
 mod help;
 mod inputs;
 mod inspect;
+mod outputs;
 mod place;
 mod run_file;
 mod same;

@@ -89,6 +89,13 @@ impl Place {
         }
     }
 
+    /// Gives a file of [`Place::hdf5`] a time.
+    pub fn timed(&self, name: &str, time: f64) {
+        let _no_starting = STARTING.write().unwrap_or_else(|e| e.into_inner());
+        let file = hdf5::File::open_rw(self.path(name)).expect("an HDF5 file");
+        file.new_attr::<f64>().create("time").and_then(|a| a.write_scalar(&time)).expect("a written attribute");
+    }
+
     /// Writes an array in the format of NumPy Enhancement Proposal 1, version 1.0.
     pub fn npy(&self, name: &str, shape: &[usize], values: &[f32]) {
         let shape: Vec<String> = shape.iter().map(usize::to_string).collect();

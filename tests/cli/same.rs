@@ -6,8 +6,22 @@ use serde_json::Value;
 
 use crate::place::{OPTIONS, Place, field, flow};
 
-const RESULTS: [&str; 6] =
-    ["catalogue.csv", "columns.json", "run.json", "surfaces/both/v.ply", "surfaces/both/h.ply", "surfaces/both/j.ply"];
+const RESULTS: [&str; 14] = [
+    "catalogue.csv",
+    "catalogue.parquet",
+    "catalogue.jsonl",
+    "columns.json",
+    "run.json",
+    "parts/both.json",
+    "parts/both.jsonl",
+    "surfaces/both/v.ply",
+    "surfaces/both/h.ply",
+    "surfaces/both/j.ply",
+    "labels/both/v.h5",
+    "labels/both/h.h5",
+    "cutouts/both/v/000001.h5",
+    "cutouts/both/h/000001.h5",
+];
 
 #[test]
 fn results_do_not_depend_on_threads_or_blocks() {
@@ -15,6 +29,7 @@ fn results_do_not_depend_on_threads_or_blocks() {
     place.hdf5("both.h5", &[flow(), field()].concat());
     let families = "--family 'v: vorticity > 1.2 rms' --family 'h: helicity > 1.5 rms' --family 'j: current > 0.02 volume'";
     let line = format!("catalogue both.h5 --lengths 2pi {families} --connectivity 6 --min-cells 4 --viscosity 0.01 --resistivity 0.02");
+    let line = format!("{line} --tables csv,parquet,jsonl --labels --cut-outs 1 --cut-out-margin 2");
     let mut runs = Vec::new();
     for threads in [1, 3] {
         for planes in [1, 5] {

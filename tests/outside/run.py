@@ -10,6 +10,7 @@ import frame
 import labels
 import layouts
 import meshes
+import outputs
 import peaks
 import readme
 
@@ -20,7 +21,7 @@ import totals
 
 def main():
     passed, failed = 0, []
-    for module in (tables, layouts, labels, derivatives, totals, frame, peaks, meshes, readme):
+    for module in (tables, layouts, labels, derivatives, totals, frame, peaks, meshes, outputs, readme):
         for name, check in sorted(vars(module).items()):
             if not name.startswith("check_"):
                 continue
