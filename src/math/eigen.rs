@@ -46,7 +46,7 @@ const SINE: [f64; 15] = [
     -4.378_700_366e-6,
 ];
 
-/// As [`middle`] at an eighth of its cost, to 5e-8 of the largest eigenvalue: enough for elements known in single precision.
+/// As [`middle`] at a fraction of its cost, to 5e-8 of the largest eigenvalue: enough for elements known in single precision.
 ///
 /// With the mean m of the eigenvalues and their spread p, the middle one is m − 2p sin(⅓ asin r), r = det((M − m)/p)/2. By
 /// t = √((1 − |r|)/2) the sine becomes h(t), smooth where r is ±1, two eigenvalues being equal.
