@@ -1,17 +1,23 @@
 //! Kernels one by one: row derivatives and alignment, labelling, isosurface and its geometry, on a random solenoidal field.
 
+use std::sync::Arc;
+
 use divan::Bencher;
 use ropewalk::base::observe::Silent;
+use ropewalk::derive::{Deriver, Plan, Scratch};
 use ropewalk::math::diff::{AxisStencil, Pick, RowScratch, Scheme, Support, difference};
 use ropewalk::math::isosurface::isosurface;
 use ropewalk::math::stats::{Cosine, row_sum};
 use ropewalk::math::surface::measure;
-use ropewalk::model::request::{Family, Request, Surfaces};
+use ropewalk::model::request::{Family, Indicator, Request, Surfaces};
+use ropewalk::model::rows::Need;
 use ropewalk::model::sink::NoFiles;
 use ropewalk::model::source::{AnySource, Fields, MemorySource};
 use ropewalk::run::analysis::{Execution, Snapshot, analyse};
 use ropewalk::space::grid::Grid;
 use ropewalk::space::patch::{Interval, PatchShape};
+use ropewalk::space::slab::{Batch, Block};
+use ropewalk::survey::spectra::SpectraSum;
 use ropewalk::synth::random::solenoidal;
 
 fn main() {
@@ -91,6 +97,47 @@ fn geometry_of_a_ball(bencher: Bencher) {
     let (shape, values) = ball();
     let surface = isosurface(&shape, &values, 0.0);
     bencher.bench_local(|| measure(&surface, [1.0; 3]));
+}
+
+/// Lines sampled from eight planes of a 256^3 box, among them one of those that x- and y-lines are taken from.
+#[divan::bench]
+fn spectra_of_eight_planes(bencher: Bencher) {
+    let grid = Grid::periodic([N; 3], [1.0; 3]);
+    let components: Vec<Vec<f32>> = (0..3).map(|c| (0..8 * N * N).map(|i| ((i + c) as f32 * 0.37).sin()).collect()).collect();
+    let batches = [Arc::new(Batch { first: 0, planes: 8, components })];
+    let block = Block::new(0..8, &batches, N * N);
+    bencher
+        .counter(divan::counter::ItemsCount::new(8 * N * N))
+        .with_inputs(|| SpectraSum::<f32>::new(&grid, 3))
+        .bench_local_refs(|sum| sum.add(&block));
+}
+
+/// The indicators made of the velocity gradient, and the derivatives they take, in eight planes of a 256^2 box.
+#[divan::bench(args = ["vorticity", "q", "delta", "lambda2", "swirling"], sample_count = 10)]
+fn indicator_of_eight_planes(bencher: Bencher, name: &str) {
+    let grid = Grid::periodic([N, N, 24], [1.0; 3]);
+    let components: Vec<Vec<f32>> = (0..3).map(|c| (0..24 * N * N).map(|i| ((i * (c + 1)) as f32 * 0.37).sin()).collect()).collect();
+    let batches = [Arc::new(Batch { first: 0, planes: 24, components })];
+    let block = Block::new(8..16, &batches, N * N);
+    let plan = Plan {
+        indicators: vec![Indicator::named(name).unwrap()],
+        extras: Vec::new(),
+        scheme: Scheme::Fd8,
+        frame: [0.0; 3],
+        mean_field: None,
+        viscosity: None,
+        resistivity: None,
+    };
+    let deriver = Deriver::<f32>::new(&grid, Fields::VELOCITY, plan);
+    let mut scratch = Scratch::default();
+    bencher.counter(divan::counter::ItemsCount::new(8 * N * N)).bench_local(|| {
+        let ready = deriver.prepare(&block, Need::default());
+        for z in 8..16 {
+            for y in 0..N {
+                deriver.row(&block, &ready, z, y, 0..N, Need::default(), &mut scratch);
+            }
+        }
+    });
 }
 
 /// The whole analysis of a 96^3 random field in memory, without files.

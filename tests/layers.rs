@@ -27,6 +27,8 @@ const CONFINED: &[(&[&str], &[&str])] = &[
     (&["println!", "print!", "eprintln!", "eprint!", "dbg!"], &["bin/ropewalk/console.rs"]),
     (&["rayon"], &["base/par.rs"]),
     (&["rustfft", "realfft"], &["math/fft.rs"]),
+    (&["glob"], &["read/series.rs"]),
+    (&["toml"], &["run/config/file.rs"]),
     // Reading and writing have one home each.
     (&["::hdf5"], &["read/", "export/hdf5.rs"]),
     (&["::parquet"], &["export/parquet.rs"]),

@@ -23,7 +23,8 @@ pub fn filter_bytes(grid: &Grid, fields: Fields, value_bytes: usize) -> u64 {
 /// `Usage`, naming the axis.
 pub fn check(grid: &Grid) -> Result<()> {
     for (a, name) in ["x", "y", "z"].into_iter().enumerate() {
-        if !grid.periodic[a] && !(a == 2 && grid.is_flat()) {
+        let one_sample = a == 2 && grid.is_flat();
+        if !(grid.periodic[a] || one_sample) {
             return Err(Error::usage("cannot filter")
                 .item(format!("axis {name}"))
                 .expected("periodic axes of equal spacing")

@@ -65,7 +65,7 @@ pub struct GradientStats {
     pub div2: f64,
     /// Sum of the squared divergence over the sampled rows.
     pub div2_sampled: f64,
-    /// Sum of (order 8 minus order 6 of the divergence)² over the sampled rows.
+    /// Sum of (divergence by the scheme minus that by its comparison)² over the sampled rows.
     pub div_miss2: f64,
     /// Number of sampled cells.
     pub sampled: u64,

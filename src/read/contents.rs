@@ -3,17 +3,19 @@
 use std::path::Path;
 
 use ::hdf5::types::{FixedAscii, FixedUnicode, FloatSize, TypeDescriptor, VarLenAscii, VarLenUnicode};
-use ::hdf5::{Attribute, Dataset, Datatype, Group, Location};
+use ::hdf5::{Attribute, Dataset, Datatype, Location};
 
 use crate::base::error::{Error, Result};
 use crate::read::inspect::Item;
-use crate::read::shelf::{datasets, groups, open_file};
+use crate::read::shelf::{all_groups, datasets, open_file};
 use crate::read::{natural, npy};
 
 /// Most datasets and groups looked at, and longest values of an attribute shown.
 const MOST: usize = 4096;
 const SHOWN: usize = 8;
 const LONGEST_TEXT: usize = 200;
+/// Attributes by which the HDF5 library links dimension scales (HDF5 Dimension Scale Specification): they tell nothing else.
+const SCALES: [&str; 4] = ["CLASS", "NAME", "REFERENCE_LIST", "DIMENSION_LIST"];
 
 /// An attribute: its text, and its values where they are numbers.
 #[derive(Debug, Clone, PartialEq)]
@@ -47,7 +49,8 @@ pub(super) struct Inside {
 pub(super) fn hdf5(path: &Path) -> Result<Inside> {
     let file = open_file(path, None)?;
     let mut found = Vec::new();
-    datasets(&file, "", 0, MOST, &mut found);
+    datasets(&file, "", MOST, &mut found);
+    found.sort_by(|a, b| natural::compare(&a.0, &b.0));
     let mut inside = Inside { attributes: attributes(&file), ..Inside::default() };
     for (name, dataset) in found {
         let own = attributes(&dataset);
@@ -56,8 +59,9 @@ pub(super) fn hdf5(path: &Path) -> Result<Inside> {
         }
         if dataset.size() == 1
             && let Ok(values) = dataset.read_raw::<f64>()
+            && let [value] = values[..]
         {
-            inside.scalars.push((name.clone(), values[0]));
+            inside.scalars.push((name.clone(), value));
         }
         inside.items.push(Item {
             name: name.clone(),
@@ -68,7 +72,8 @@ pub(super) fn hdf5(path: &Path) -> Result<Inside> {
         });
         inside.of_items.push((name, own));
     }
-    walk(&file, "", 0, &mut inside.groups);
+    let groups = all_groups(&file, MOST, natural::compare);
+    inside.groups = groups.into_iter().map(|(path, group)| (path, attributes(&group))).collect();
     Ok(inside)
 }
 
@@ -83,22 +88,9 @@ pub(super) fn axis_of(name: &str) -> Option<usize> {
     })
 }
 
-fn walk(group: &Group, prefix: &str, depth: usize, found: &mut Vec<(String, Vec<Named>)>) {
-    let mut names = groups(group);
-    names.sort_by(|a, b| natural::compare(a, b));
-    for name in names {
-        if found.len() >= MOST || depth > 8 {
-            return;
-        }
-        let Ok(inner) = group.group(&name) else { continue };
-        let full = format!("{prefix}/{name}");
-        found.push((full.clone(), attributes(&inner)));
-        walk(&inner, &full, depth + 1, found);
-    }
-}
-
 fn attributes(place: &Location) -> Vec<Named> {
     let mut names = place.attr_names().unwrap_or_default();
+    names.retain(|name| !SCALES.contains(&name.as_str()));
     names.sort_by(|a, b| natural::compare(a, b));
     names.into_iter().filter_map(|name| place.attr(&name).ok().map(|a| named(name, &a))).collect()
 }

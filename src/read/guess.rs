@@ -232,17 +232,19 @@ fn size(attributes: &[&Named], n: [usize; 3], g: &mut Guess) {
         _ => None,
     };
     let each = |names: [&str; 3]| {
-        let v = names.map(|name| find(name).and_then(|a| if let [one] = a.numbers[..] { Some(one) } else { None }));
-        let z = v[2].or(flat.then_some(1.0));
-        Some([v[0]?, v[1]?, z?])
+        let v = names.map(|name| find(name).and_then(|a| if let [one] = a.numbers[..] { Some((a.name.clone(), one)) } else { None }));
+        let said: Vec<&str> = v.iter().flatten().map(|(name, _)| name.as_str()).collect();
+        let said = format!("attributes {}", said.join(", "));
+        let v = v.map(|found| found.map(|(_, one)| one));
+        Some((said, [v[0]?, v[1]?, v[2].or(flat.then_some(1.0))?]))
     };
-    let whole = |words: &[&str]| words.iter().find_map(|w| find(w).and_then(|a| Some((a.name.clone(), triple(&a.numbers)?))));
-    let parts = |names: [&str; 3]| each(names).map(|v| (names[..if flat { 2 } else { 3 }].join(","), v));
-    if let Some((from, v)) = parts(["lx", "ly", "lz"]).or_else(|| whole(&LENGTHS)) {
-        g.reasons.push(format!("lengths of the box from the attribute {from}, in the order x, y, z"));
+    let whole =
+        |words: &[&str]| words.iter().find_map(|w| find(w).and_then(|a| Some((format!("attribute {}", a.name), triple(&a.numbers)?))));
+    if let Some((from, v)) = each(["lx", "ly", "lz"]).or_else(|| whole(&LENGTHS)) {
+        g.reasons.push(format!("lengths of the box from the {from}, in the order x, y, z"));
         g.spec.lengths = Some(v);
-    } else if let Some((from, v)) = parts(["dx", "dy", "dz"]).or_else(|| whole(&SPACING)) {
-        g.reasons.push(format!("spacing from the attribute {from}, in the order x, y, z"));
+    } else if let Some((from, v)) = each(["dx", "dy", "dz"]).or_else(|| whole(&SPACING)) {
+        g.reasons.push(format!("spacing from the {from}, in the order x, y, z"));
         (g.spec.lengths, g.spec.spacing) = (None, Some(v));
     } else {
         g.reasons.push("nothing tells the size of the box: 2 pi is assumed".into());

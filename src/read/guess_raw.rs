@@ -35,8 +35,8 @@ impl Fit {
     }
 }
 
-/// Cubic layouts that fit a file, the likeliest first.
-pub(super) fn fits(path: &Path, length: u64) -> Result<Vec<Fit>> {
+/// Cubic layouts that fit a file, the likeliest first, and what its record markers tell where it has some.
+pub(super) fn fits(path: &Path, length: u64) -> Result<(Vec<Fit>, Option<String>)> {
     let mut head = Vec::new();
     let file = File::open(path).map_err(|e| Error::input("cannot look into the file").at(path).found(e.to_string()))?;
     file.take(8).read_to_end(&mut head).map_err(|e| Error::input("cannot look into the file").at(path).found(e.to_string()))?;
@@ -48,10 +48,13 @@ pub(super) fn fits(path: &Path, length: u64) -> Result<Vec<Fit>> {
         }
         // Records of one length to the end of the file are no accident.
         let Ok(all) = records(path, 0, marker, big_endian, &[first]) else { continue };
-        let found = with_markers(&all, marker, big_endian);
-        if !found.is_empty() {
-            return Ok(found);
+        if all.iter().any(|r| r.pieces.len() != 1) {
+            continue;
         }
+        let order = if big_endian { "big" } else { "little" };
+        let records = if all.len() == 1 { "1 record".into() } else { format!("{} records", all.len()) };
+        let told = format!("it has {records} of {first} bytes between {marker}-byte markers, {order}-endian");
+        return Ok((with_markers(&all, marker, big_endian), Some(told)));
     }
     let mut out = Vec::new();
     for double in [false, true] {
@@ -60,7 +63,7 @@ pub(super) fn fits(path: &Path, length: u64) -> Result<Vec<Fit>> {
             out.extend(cube(length, components * width).map(|n| Fit { layout: layout(n, double, false, None), components }));
         }
     }
-    Ok(out)
+    Ok((out, None))
 }
 
 fn with_markers(all: &[Record], marker: u8, big_endian: bool) -> Vec<Fit> {

@@ -103,8 +103,9 @@ fn told(path: &Path, kind: &str, bytes: u64, inside: Inside, single: Option<&str
 
 /// A file without a header, or of another kind: only its size tells anything.
 fn headerless(path: &Path, bytes: u64) -> Result<Contents> {
-    let fits = guess_raw::fits(path, bytes)?;
-    let mut reasons: Vec<String> = fits.iter().map(|f| format!("its size fits {}", f.text())).collect();
+    let (fits, records) = guess_raw::fits(path, bytes)?;
+    let mut reasons: Vec<String> = records.into_iter().collect();
+    reasons.extend(fits.iter().map(|f| format!("its size fits {}", f.text())));
     let mut guess = InputSpec { lengths: Some([TAU; 3]), ..InputSpec::default() };
     if let Some(first) = fits.into_iter().next() {
         if first.components == 1 {

@@ -1,10 +1,11 @@
 //! The HDF5 files of a snapshot: opened once, names resolved to files and datasets, groups listed.
 
 use std::cell::RefCell;
+use std::cmp::Ordering;
 use std::ops::RangeInclusive;
 use std::path::{Path, PathBuf};
 
-use ::hdf5::{Dataset, File, Group, Location, LocationType};
+use ::hdf5::{Dataset, File, Group, Location, LocationInfo, LocationType};
 
 use crate::base::error::{Error, Result};
 use crate::read::header::shape_text;
@@ -101,7 +102,7 @@ impl Shelf {
         let place = self.group.clone().unwrap_or_default();
         let mut all = Vec::new();
         match self.group.as_deref().map_or_else(|| Ok((*file).clone()), |g| file.group(g)) {
-            Ok(group) => datasets(&group, &place, 0, MOST, &mut all),
+            Ok(group) => datasets(&group, &place, MOST, &mut all),
             Err(_) => {
                 return Err(Error::input("cannot find the group").at(&path).item(place).found(format!("only {}", groups_text(&file))));
             }
@@ -167,7 +168,7 @@ pub(super) fn number(place: &Location, name: &str) -> Option<f64> {
 /// The datasets of a file with shapes, for messages.
 fn listing(file: &File) -> String {
     let mut found = Vec::new();
-    datasets(file, "", 0, LISTED + 1, &mut found);
+    datasets(file, "", LISTED + 1, &mut found);
     listed(&found)
 }
 
@@ -184,26 +185,70 @@ fn listed(datasets: &[(String, Dataset)]) -> String {
 }
 
 /// Collects up to `most` datasets below a group with their paths.
-pub(super) fn datasets(group: &Group, prefix: &str, depth: usize, most: usize, found: &mut Vec<(String, Dataset)>) {
+pub(super) fn datasets(group: &Group, prefix: &str, most: usize, found: &mut Vec<(String, Dataset)>) {
+    let mut trail = group.loc_info().into_iter().collect();
+    below(group, prefix, most, &mut trail, found);
+}
+
+fn below(group: &Group, prefix: &str, most: usize, trail: &mut Vec<LocationInfo>, found: &mut Vec<(String, Dataset)>) {
     for name in group.member_names().unwrap_or_default() {
-        // Links can form rings: both the depth and the number are limited.
         if found.len() >= most {
             return;
         }
         let full = format!("{prefix}/{name}");
-        match group.loc_type_by_name(&name) {
-            Ok(LocationType::Dataset) => {
+        let Ok(info) = group.loc_info_by_name(&name) else { continue };
+        match info.loc_type {
+            LocationType::Dataset => {
                 if let Ok(dataset) = group.dataset(&name) {
                     found.push((full, dataset));
                 }
             }
-            Ok(LocationType::Group) if depth < DEEPEST => {
+            LocationType::Group if trail.len() <= DEEPEST && !is_above(&info, trail) => {
                 if let Ok(inner) = group.group(&name) {
-                    datasets(&inner, &full, depth + 1, most, found);
+                    trail.push(info);
+                    below(&inner, &full, most, trail, found);
+                    trail.pop();
                 }
             }
             _ => {}
         }
+    }
+}
+
+/// Whether a group is one of those above it: links can form rings.
+fn is_above(info: &LocationInfo, trail: &[LocationInfo]) -> bool {
+    trail.iter().any(|t| (t.fileno, t.token) == (info.fileno, info.token))
+}
+
+/// Collects up to `most` groups below a group, rings left out, with their paths; those of one group in the order of `compare`.
+pub(super) fn all_groups(group: &Group, most: usize, compare: fn(&str, &str) -> Ordering) -> Vec<(String, Group)> {
+    let mut found = Vec::new();
+    let mut trail: Vec<LocationInfo> = group.loc_info().into_iter().collect();
+    groups_below(group, "", most, compare, &mut trail, &mut found);
+    found
+}
+
+fn groups_below(
+    group: &Group,
+    prefix: &str,
+    most: usize,
+    compare: fn(&str, &str) -> Ordering,
+    trail: &mut Vec<LocationInfo>,
+    found: &mut Vec<(String, Group)>,
+) {
+    let mut names = groups(group);
+    names.sort_by(|a, b| compare(a, b));
+    for name in names {
+        let Ok(info) = group.loc_info_by_name(&name) else { continue };
+        if found.len() >= most || trail.len() > DEEPEST || is_above(&info, trail) {
+            continue;
+        }
+        let Ok(inner) = group.group(&name) else { continue };
+        let full = format!("{prefix}/{name}");
+        found.push((full.clone(), inner.clone()));
+        trail.push(info);
+        groups_below(&inner, &full, most, compare, trail, found);
+        trail.pop();
     }
 }
 

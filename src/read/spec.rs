@@ -57,15 +57,16 @@ pub struct TimeSource {
 /// How to read a snapshot. Triples are in the order x, y, z.
 #[derive(Debug, Clone, PartialEq)]
 pub struct InputSpec {
-    /// Names of the velocity: three (one dataset a component, in the order u, v, w) or one (a dataset
-    /// with a component axis). HDF5 names may have group paths (`/flow/u`); in a folder they are file
-    /// names with or without `.npy`.
+    /// Names of the velocity: three (one dataset a component, in the order u, v, w), one (a dataset with a component axis), or two
+    /// on a plane, whose third component is then 0. HDF5 names may have group paths (`flow/u`), from the group of the step where
+    /// they do not begin with `/`; in a folder they are file names with or without `.npy`; where the path of the snapshot has
+    /// `{field}`, they stand in its place; in a file without a header they only say how many components there are.
     ///
     /// Default none: when [`InputSpec::magnetic`] is none as well, both fields are guessed, each as
     /// the first complete set of
     /// `u,v,w` | `ux,uy,uz` | `vx,vy,vz` | `velocity`, and `bx,by,bz` | `magnetic` | `b`,
-    /// in the root group or folder. A single name is taken only for an array of rank 4. When one of
-    /// the two is given, only that one is read.
+    /// in the root group or folder. A single name is taken only for an array of rank 4 (3 on a plane). When one of
+    /// the two is given, only that one is read. A file without a header is a velocity, or with twice as many components both.
     pub velocity: Option<Vec<String>>,
     /// Names of the magnetic field, as for the velocity. Default none.
     pub magnetic: Option<Vec<String>>,
@@ -76,9 +77,12 @@ pub struct InputSpec {
     /// Fortran-order `.npy` file lists it last and is reversed before anything else, so that an array
     /// indexed (x, y, z) in Fortran is `zyx`. Without `c`, the component axis of an array of rank 4
     /// is whichever of its first and last axes has length 3.
+    ///
+    /// A plane is `yx` or `xy`, which any order without its z means as well, or has an axis of length 1, which must be z.
     pub order: String,
     /// Box lengths, in the user's length unit: number of samples times spacing, at open faces too.
-    /// Exactly one of lengths and spacing must be given. Default none.
+    /// Exactly one of lengths and spacing must be given, unless all axes have coordinates. The entry of an axis with coordinates and
+    /// that of z on a plane mean nothing. Default none.
     pub lengths: Option<[f64; 3]>,
     /// Distance between samples, in the user's length unit. Default none.
     pub spacing: Option<[f64; 3]>,
@@ -92,9 +96,10 @@ pub struct InputSpec {
     pub density: Option<String>,
     /// Where the magnetic components are stored. Default at the samples.
     pub staggering: Staggering,
-    /// Names of one-dimensional datasets with the coordinates of the samples, per axis; such an axis is open. Default none.
+    /// Names of one-dimensional datasets of the file with the coordinates of the samples, per axis, or of files beside it: `.npy`, or
+    /// text with one number a line. Such an axis is open, unless the spacing turns out to be equal. Default none.
     pub coordinates: [Option<String>; 3],
-    /// Layout of files without a header. Default none.
+    /// Layout of files without a header; with one, every path is read as such. Default none.
     pub raw: Option<RawLayout>,
     /// The part of the box to use; open faces where cut. Default all of it.
     pub region: [Option<Stretch>; 3],

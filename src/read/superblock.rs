@@ -37,7 +37,7 @@ pub(super) fn check(path: &Path) -> Result<()> {
             return Err(fault()
                 .expected("an HDF5 signature")
                 .found(format!("a file beginning \"{}\"", head.escape_ascii()))
-                .hint("snapshots are HDF5 files, .npy files or folders of .npy files"));
+                .hint("snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout"));
         }
     }
     let block = bytes(&mut file, at, 96).map_err(io)?;

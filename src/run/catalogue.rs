@@ -19,6 +19,8 @@ use crate::run::analysis::{Analysis, Execution, Snapshot, analyse};
 use crate::run::clock::Clock;
 use crate::run::files::SnapshotFiles;
 use crate::run::parts::{self, FamilyOverview, PARTS, Part, Tables};
+use crate::run::remarks::remarks;
+use crate::run::run_rms::{self, RunRms};
 use crate::run::{provenance, summary};
 
 /// Which snapshots a run goes through; in its folder while it is unfinished.
@@ -51,6 +53,8 @@ pub struct Outcome {
     pub folder: PathBuf,
     /// What was found, by snapshot and family.
     pub overview: Vec<FamilyOverview>,
+    /// What the numbers mean and how far they can be trusted, one sentence each.
+    pub remarks: Vec<String>,
     /// Snapshots that failed, with the reason.
     pub failed: Vec<(SnapshotRef, Error)>,
 }
@@ -89,11 +93,12 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     let names: Vec<&str> = usable.iter().map(|(_, name)| name.as_str()).collect();
     folder.write(PLAN, dictionary::pretty(&json!({ "snapshots": names })).as_bytes())?;
     let schema = Schema { companions: config.request.companions.clone() };
-    let common = parts::common(&summary::request(&config.request, &config.input));
+    let request = settled(config, &mut usable, &mut failed, &pool, &clock)?;
+    let common = parts::common(&summary::request(&request, &config.input));
     let mut done: Vec<Part> = Vec::new();
     let mut cells = 0;
     for (path, name) in &usable {
-        match pool.run(|| one(path, name, config, &folder, &clock)) {
+        match pool.run(|| one(path, name, config, &request, &folder, &clock)) {
             Ok((analysis, datasets)) => {
                 cells += analysis.grid.cells();
                 let rows: Vec<&[Row]> = analysis.families.iter().map(|f| f.rows.as_slice()).collect();
@@ -116,7 +121,7 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     let how = provenance::timing(&clock.stages(), started.elapsed().as_secs_f64(), pool.threads(), cells);
     folder.write("timing.json", dictionary::pretty(&how).as_bytes())?;
     folder.remove(PLAN)?;
-    Ok(Outcome { folder: folder.finish()?, overview, failed })
+    Ok(Outcome { folder: folder.finish()?, overview, remarks: remarks(&done), failed })
 }
 
 pub(super) fn check(opened: &Opened, path: &Path, request: &Request) -> Result<String> {
@@ -171,18 +176,58 @@ pub(super) fn none_usable(mut failed: Vec<(SnapshotRef, Error)>) -> Error {
     }
 }
 
-fn one(path: &SnapshotRef, name: &str, config: &RunConfig, folder: &Folder, observe: &dyn Observe) -> Result<(Analysis, Vec<String>)> {
+/// The request with the levels that depend on the whole run; a snapshot that fails on the way is taken out.
+fn settled(
+    config: &RunConfig,
+    usable: &mut Vec<(SnapshotRef, String)>,
+    failed: &mut Vec<(SnapshotRef, Error)>,
+    pool: &Pool,
+    observe: &dyn Observe,
+) -> Result<Request> {
+    let mut request = config.request.clone();
+    if !run_rms::is_wanted(&request.families) {
+        return Ok(request);
+    }
+    let mut sums = RunRms::default();
+    let mut good = Vec::new();
+    for (path, name) in usable.drain(..) {
+        let added = read::open(&path, &config.input)
+            .and_then(|opened| pool.run(|| sums.add(opened, &name, &config.request, &config.execution, observe)));
+        match added {
+            Ok(()) => good.push((path, name)),
+            Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => {
+                tell(&e, config, observe);
+                failed.push((path, e));
+            }
+            Err(e) => return Err(e),
+        }
+    }
+    if good.is_empty() {
+        return Err(none_usable(std::mem::take(failed)));
+    }
+    *usable = good;
+    request.run_rms = sums.finish(&request.families)?;
+    Ok(request)
+}
+
+fn one(
+    path: &SnapshotRef,
+    name: &str,
+    config: &RunConfig,
+    request: &Request,
+    folder: &Folder,
+    observe: &dyn Observe,
+) -> Result<(Analysis, Vec<String>)> {
     let opened = read::open(path, &config.input)?;
     let fields = opened.source.fields();
-    let snapshot =
-        Snapshot { name: name.to_string(), time: opened.time, components: component_names(&opened.datasets, fields.components()) };
-    let (request, execution) = (&config.request, &config.execution);
+    let snapshot = Snapshot { name: name.to_string(), time: opened.time, components: opened.components };
+    let execution = &config.execution;
     let families = request.families_for(fields)?;
     let flat = opened.source.grid().is_flat();
     let mut files = SnapshotFiles::new(folder, name, families, fields, flat, request, &config.outputs)?;
     match analyse(opened.source, snapshot, request, execution, observe, &mut files) {
         Ok(mut analysis) => {
-            for warning in files.finish()? {
+            for warning in opened.notes.into_iter().chain(files.finish()?) {
                 observe.warning(&format!("{name}: {warning}"));
                 analysis.warnings.push(warning);
             }
@@ -193,15 +238,4 @@ fn one(path: &SnapshotRef, name: &str, config: &RunConfig, folder: &Folder, obse
             Err(e)
         }
     }
-}
-
-/// One name a component for messages; an array with a component axis stands for three.
-fn component_names(datasets: &[String], components: usize) -> Vec<String> {
-    if datasets.len() == components {
-        return datasets.to_vec();
-    }
-    if datasets.len() * 3 == components {
-        return datasets.iter().flat_map(|d| (0..3).map(move |c| format!("{d}[{c}]"))).collect();
-    }
-    Vec::new()
 }

@@ -36,6 +36,8 @@ pub struct Gathered {
     pub folder: PathBuf,
     /// What was found, by snapshot and family.
     pub overview: Vec<FamilyOverview>,
+    /// What the numbers mean and how far they can be trusted, one sentence each.
+    pub remarks: Vec<String>,
     /// Snapshots that are not in it: they failed, or their run was not finished.
     pub missing: Vec<String>,
 }
@@ -114,7 +116,7 @@ pub fn gather(config: &GatherConfig, observe: &dyn Observe) -> Result<Gathered> 
     let mut how = provenance::timing(&[], started.elapsed().as_secs_f64(), pool.threads(), cells);
     how["gathered"] = json!(config.runs.iter().map(|r| r.display().to_string()).collect::<Vec<_>>());
     folder.write("timing.json", pretty(&how).as_bytes())?;
-    Ok(Gathered { folder: folder.finish()?, overview, missing })
+    Ok(Gathered { folder: folder.finish()?, remarks: crate::run::remarks::remarks(&all), overview, missing })
 }
 
 fn cells(snapshot: &Value) -> u64 {

@@ -14,6 +14,7 @@ pub mod passes;
 pub mod plan;
 mod provenance;
 mod ready;
+pub mod remarks;
 pub mod run_rms;
 mod split;
 pub mod stream;

@@ -13,6 +13,7 @@ use crate::model::source::{AnySource, PlaneSource};
 use crate::read::{self, Opened};
 use crate::run::analysis::Execution;
 use crate::run::catalogue::{RunConfig, check, none_usable, tell_apart};
+use crate::run::parts::{PARTS, Tables};
 use crate::run::run_rms;
 use crate::run::stream::block_ranges;
 use crate::space::grid::Grid;
@@ -76,7 +77,7 @@ pub struct SnapshotPlan {
 /// One pass over the planes.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct PassPlan {
-    /// Its name.
+    /// Its name, as in `timing.json`.
     pub name: &'static str,
     /// Bytes of values to read from files, uncompressed; 0 where planes are in memory.
     pub bytes: u64,
@@ -151,6 +152,7 @@ pub fn plan(config: &RunConfig) -> Result<Plan> {
         return Err(none_usable(unusable));
     }
     tell_apart(&mut usable)?;
+    Tables::new(&config.outputs)?;
     for (seen, (_, name)) in opened.iter_mut().zip(usable) {
         seen.name = name;
     }
@@ -275,7 +277,7 @@ fn passes(families: &[Family], request: &Request, outputs: &Outputs, reading: &R
             add("read", reading.whole, false);
         }
         if request.filter.is_some() {
-            add("check", reading.whole, in_memory);
+            add("read", reading.whole, in_memory);
             add("filter", reading.whole, in_memory);
             in_memory = true;
         }
@@ -283,7 +285,7 @@ fn passes(families: &[Family], request: &Request, outputs: &Outputs, reading: &R
             add("lines", reading.whole, in_memory);
         }
         if moving {
-            add("mean", reading.whole, in_memory);
+            add("read", reading.whole, in_memory);
         }
         add("survey", reading.whole + reading.halo, in_memory);
         in_memory
@@ -297,12 +299,12 @@ fn passes(families: &[Family], request: &Request, outputs: &Outputs, reading: &R
     add("detection");
     for _ in families.iter().filter(|f| matches!(f.extent(), Extent::FromPeaks { .. })) {
         add("peaks");
-        add("parts");
+        add("sums");
+    }
+    if outputs.cut_outs != CutOuts::None {
+        add("cut-outs");
     }
     add("shapes");
-    if outputs.cut_outs != CutOuts::None {
-        out.push(PassPlan { name: "cut-outs", bytes: reading.whole });
-    }
     out
 }
 
@@ -315,6 +317,8 @@ fn files(snapshots: &[SnapshotPlan], request: &Request, outputs: &Outputs) -> Ve
         add(true, name.into());
     }
     for s in snapshots {
+        add(true, format!("{PARTS}/{}.json", s.name));
+        add(true, format!("{PARTS}/{}.jsonl", s.name));
         for f in &s.families {
             match request.surfaces {
                 Surfaces::None => {}

@@ -26,7 +26,7 @@ impl RunRms {
     /// Those of [`mean_squares`].
     pub fn add(&mut self, opened: Opened, name: &str, request: &Request, execution: &Execution, observe: &dyn Observe) -> Result<()> {
         let families = request.families_for(opened.source.fields())?;
-        let snapshot = Snapshot { name: name.to_string(), time: opened.time, components: opened.datasets };
+        let snapshot = Snapshot { name: name.to_string(), time: opened.time, components: opened.components };
         let squares = mean_squares(opened.source, &snapshot, request, execution, observe)?;
         if self.names.is_empty() {
             self.names = families.iter().map(|f| f.name.clone()).collect();

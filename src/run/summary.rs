@@ -81,7 +81,12 @@ fn reading(input: &InputSpec) -> Value {
 /// Conventions a reader of the numbers needs.
 pub fn conventions() -> Value {
     json!({
-        "rms": "root of the box mean of the square; of the magnitude for vectors",
+        "rms": "root of the volume mean of the square; of the magnitude for vectors",
+        "run_rms": "root of the mean over snapshots of that mean square",
+        "volume": "level read from counts in bins a relative 2^-12 wide: at most one bin off",
+        "peak": "cells in descending order belong to the slope of their highest neighbour; a lower peak joins a higher one across a saddle \
+                 beyond the fraction of the higher; each slope beyond the fraction of its peak is an object",
+        "gradient_variance_lost": "sum (k^2 - k'^2) E over sum k^2 E from one-dimensional spectra of sampled lines, k' the scheme's modified wavenumber",
         "curl": "right-handed",
         "q": "(|omega|^2 / 4) - (S:S / 2), S = (A + A^T) / 2, A_ij = du_i/dx_j",
         "dissipation": "viscous 2 nu S:S, Ohmic eta |j|^2, magnetic field in velocity units",
@@ -96,8 +101,7 @@ pub fn conventions() -> Value {
 pub fn snapshot(a: &Analysis, path: &str, datasets: &[String]) -> Value {
     let n = a.survey.weight;
     let lengths: Vec<f64> = (0..3).map(|k| a.grid.length(k)).collect();
-    let names = ["u", "v", "w", "bx", "by", "bz"];
-    let first = if a.fields.velocity { 0 } else { 3 };
+    let names = a.fields.names();
     let components: Vec<Value> = a
         .scan
         .components
@@ -105,7 +109,7 @@ pub fn snapshot(a: &Analysis, path: &str, datasets: &[String]) -> Value {
         .enumerate()
         .map(|(k, c)| {
             json!({
-                "name": names[first + k],
+                "name": names[k],
                 "mean": c.sum / n,
                 "rms": (c.square_sum / n).sqrt(),
                 "min": c.min,
@@ -126,6 +130,8 @@ pub fn snapshot(a: &Analysis, path: &str, datasets: &[String]) -> Value {
         "lengths": lengths,
         "origin": a.grid.origin,
         "periodic": axes(a.grid.periodic),
+        "coordinates": a.grid.stretched.iter().map(|s| s.as_ref().map(|s| s.positions.clone())).collect::<Vec<_>>(),
+        "compressible": a.fields.compressible,
         "components": components,
         "frame_velocity": a.frame,
         "mean_field": a.guide_field.map(|(mean, ratio)| json!({ "mean": mean, "over_fluctuations": number(Some(ratio)) })),
@@ -146,6 +152,10 @@ fn gradient(g: &GradientStats, n: f64, a: &Analysis, which: usize) -> Value {
         "divergence_over_curl": number(d.ratio),
         "divergence_explained": number(d.explained),
     });
+    let (lost, first) = if which == 0 { (a.gradient_loss.velocity, 0) } else { (a.gradient_loss.magnetic, a.fields.first_magnetic()) };
+    out["gradient_variance_lost"] = number(lost);
+    let components = a.gradient_loss.components.iter().skip(first).take(3);
+    out["gradient_variance_lost_by_axis"] = components.map(|c| c.map(number).to_vec()).collect();
     if which == 0 {
         out["strain2_mean"] = json!(g.strain2 / n);
     }

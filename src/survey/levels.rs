@@ -42,9 +42,9 @@ impl Divergence {
     }
 }
 
-/// How many times the difference between order 6 and 8 still counts as truncation. The error of order 8 stays below
-/// three times that difference up to wavenumber 2.2 / spacing, beyond the two-thirds limit 2.09 (from the modified
-/// wavenumbers of the two stencils).
+/// How many times the difference between a scheme and its comparison still counts as truncation. The error of every scheme stays
+/// below three times that difference up to the two-thirds limit, wavenumber 2.09 / spacing (from the modified wavenumbers; a test of
+/// [`crate::math::scheme`]).
 const TRUNCATION_FACTOR: f64 = 3.0;
 
 /// Round-off of a derivative in units of `EPSILON * rms / spacing`.

@@ -2,6 +2,8 @@
 
 use std::path::Path;
 
+use ropewalk::run::config::registry::SETTINGS;
+
 use crate::place::{OPTIONS, Place};
 
 /// Compares with a file beside this one; a difference prints the replacement.
@@ -17,6 +19,7 @@ fn help_of_every_command() {
     for (line, file) in [
         ("--help", "help.txt"),
         ("demo --help", "help_demo.txt"),
+        ("inspect --help", "help_inspect.txt"),
         ("catalogue --help", "help_catalogue.txt"),
         ("gather --help", "help_gather.txt"),
         ("columns --help", "help_columns.txt"),
@@ -24,6 +27,24 @@ fn help_of_every_command() {
         let ran = place.succeed(line);
         golden(file, &ran.out);
         assert_eq!(ran.err, "", "{line}");
+    }
+}
+
+/// Every setting has a flag in the help of the main job, and every flag there is a setting, but for those that say how to talk.
+#[test]
+fn every_setting_is_a_flag_and_the_other_way_round() {
+    let help = Place::new().succeed("catalogue --help").out;
+    let shown: Vec<&str> = help
+        .lines()
+        .filter(|l| l.trim_start().starts_with('-') && (2..=6).contains(&(l.len() - l.trim_start().len())))
+        .filter_map(|l| l.split("--").nth(1)?.split(|c: char| !c.is_alphanumeric() && c != '-').next())
+        .collect();
+    let settings: Vec<&str> = SETTINGS.iter().map(|s| s.flag).filter(|f| !f.is_empty()).collect();
+    let others = ["dry-run", "quiet", "verbose", "help"];
+    assert_eq!(shown, [&others[..], &settings].concat());
+    for s in &SETTINGS {
+        let told = s.flag.is_empty() || s.help.split_whitespace().all(|word| help.contains(word));
+        assert!(told, "{}", s.path());
     }
 }
 

@@ -59,7 +59,7 @@ fn a_text_file() {
     let place = Place::new();
     place.write("notes.txt", b"These are notes.\n");
     let message = "cannot read the HDF5 file: notes.txt: expected an HDF5 signature, found a file beginning \"These ar\"; \
-        hint: snapshots are HDF5 files, .npy files or folders of .npy files";
+        hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout";
     fails(&place, &format!("catalogue notes.txt {OPTIONS}"), 3, message);
 }
 
@@ -83,7 +83,7 @@ fn a_pattern_takes_every_match_in_order() {
     place.succeed(&format!("catalogue run_*.h5 {OPTIONS} --surfaces none"));
     let run = place.json("ropewalk-run/run.json");
     let names: Vec<&str> = run["snapshots"].as_array().expect("snapshots").iter().filter_map(|s| s["snapshot"].as_str()).collect();
-    assert_eq!(names, ["run_1", "run_10", "run_2"]);
+    assert_eq!(names, ["run_1", "run_2", "run_10"]);
 }
 
 #[test]
@@ -127,20 +127,20 @@ fn npy_files() {
 #[test]
 fn bad_families() {
     let place = Place::with_snapshot();
+    let indicators: Vec<&str> = ropewalk::model::indicator::INDICATORS.iter().map(|i| i.name).collect();
+    let unknown =
+        format!("\"a: swirl > 3\": expected an indicator of this version, found \"swirl\"; hint: one of {}", indicators.join(", "));
+    const GRAMMAR: &str = "\"NAME: INDICATOR > LEVEL [down to LEVEL]\"";
     let cases = [
-        (
-            "vorticity",
-            "\"vorticity\": expected \"NAME: INDICATOR > LEVEL\", found no colon; hint: for example \"vorticity: vorticity > 3 rms\"",
-        ),
+        ("vorticity", format!("\"vorticity\": expected {GRAMMAR}, found no colon; hint: for example \"vorticity: vorticity > 3 rms\"")),
         (
             "a: vorticity > 3 sigma",
-            "\"a: vorticity > 3 sigma\": expected \"NAME: INDICATOR > LEVEL\", found the word \"sigma\"; hint: this version knows rms, mean and volume",
+            format!(
+                "\"a: vorticity > 3 sigma\": expected {GRAMMAR}, found the word \"sigma\"; \
+                 hint: a level is a number, alone or with rms, run-rms, mean, volume or peak"
+            ),
         ),
-        (
-            "a: swirl > 3",
-            "\"a: swirl > 3\": expected an indicator of this version, found \"swirl\"; hint: one of vorticity, enstrophy, current, q, strain, \
-             dissipation_viscous, dissipation_ohmic, helicity, relative_helicity, cross_helicity, current_helicity, lamb, lorentz, speed, field",
-        ),
+        ("a: swirl > 3", unknown),
     ];
     for (family, rest) in cases {
         let line = format!("catalogue good.h5 --lengths 2pi --family '{family}'");
@@ -151,11 +151,11 @@ fn bad_families() {
         hint: name its datasets with --magnetic BX,BY,BZ";
     fails(&place, line, 2, message);
     let line = "catalogue good.h5 --lengths 2pi --family 'd: dissipation_viscous > 3 mean'";
-    let message = "cannot detect family: good.h5: \"d: dissipation_viscous > 3 mean\": expected the viscosity, found none; \
-        hint: give --viscosity, or threshold strain instead";
+    let message = "cannot detect family: \"d: dissipation_viscous > 3 mean\": expected the viscosity, found none; \
+        hint: give --viscosity, or use strain instead";
     fails(&place, line, 2, message);
     let line = "catalogue good.h5 --lengths 2pi --family 'a: q > 1 rms' --family 'a: speed > 1'";
-    let message = "cannot use family: good.h5: \"a: speed > 1\": expected a name of its own, found \"a\" twice; \
+    let message = "cannot use family: \"a: speed > 1\": expected a name of its own, found \"a\" twice; \
         hint: give every family another name before the colon";
     fails(&place, line, 2, message);
 }
@@ -166,34 +166,54 @@ fn bad_options() {
     let cases = [
         (
             "",
-            "cannot settle the size of the box: --lengths, --spacing: expected exactly one of them, found neither; \
-             hint: --lengths 6.283185,6.283185,6.283185 for a 2 pi box",
+            "cannot settle the size of the box: --lengths, --spacing: expected one of them, found neither; \
+             hint: --lengths 2pi is a cube of that side",
         ),
         (
-            "--lengths 1,2",
-            "cannot read an option: --lengths: expected three numbers, or one for all axes, found \"1,2\"; \
-             hint: for example 6.283185,6.283185,3.141593 or 2pi",
+            "--lengths -1",
+            "cannot use a setting: --lengths: expected three finite numbers above 0, or one for all axes, found \"-1\"; \
+             hint: for example --lengths 2pi,2pi,pi",
         ),
-        ("--lengths -1", "cannot settle the size of the box: --lengths: expected 3 finite numbers above 0, found -1,-1,-1"),
-        ("--lengths 1 --periodic xx", "cannot read an option: --periodic: expected a subset of xyz, or none, found \"xx\""),
         (
-            "--lengths 1 --order zyy",
-            "cannot use the axis order: --order: expected a permutation of xyz (of xy for planes) with an optional c first or last, found \"zyy\"; \
-             hint: --order zyx for arrays with z slowest and x fastest",
+            "--lengths 1 --viscosity -1",
+            "cannot use a setting: --viscosity: expected a number above 0, found \"-1\"; hint: for example --viscosity 0.002",
         ),
-        ("--lengths 1 --viscosity -1", "cannot use a coefficient: --viscosity: expected a number above 0, found -1"),
-        ("--lengths 1 --min-cells 0", "cannot use a size: --min-cells: expected at least 1, found 0"),
-        ("--lengths 1 --block-planes 0", "cannot use a thickness: --block-planes: expected at least 1, found 0"),
+        (
+            "--lengths 1 --periodic ''",
+            "cannot use a setting: --periodic: expected a subset of xyz, or none, found nothing; hint: for example --periodic xz",
+        ),
+        (
+            "--lengths 1 --velocity u,v,w --magnetic u,v,w",
+            "cannot read two fields from one dataset: --velocity, --magnetic: expected different datasets, found u, v, w in both; \
+             hint: every dataset is one field",
+        ),
     ];
     for (options, message) in cases {
         fails(&place, &format!("catalogue good.h5 {options}"), 2, message);
     }
-    let usage = "\n\nUsage: ropewalk catalogue --lengths <LX,LY,LZ> <SNAPSHOT>...\n\nFor more information, try '--help'.";
+    let usage = "\n\nUsage: ropewalk catalogue --lengths <LX,LY,LZ> <RUN.toml|SNAPSHOT>...\n\nFor more information, try '--help'.";
     let tip = "\n\n  tip: to pass '--colour' as a value, use '-- --colour'";
     fails(&place, "catalogue good.h5 --lengths 1 --colour", 2, &format!("unexpected argument '--colour' found{tip}{usage}"));
     fails(&place, "weave", 2, "unrecognized subcommand 'weave'\n\nUsage: ropewalk <COMMAND>\n\nFor more information, try '--help'.");
-    let toml = "cannot read a run file: run.toml; hint: this version takes snapshots and options on the command line";
-    fails(&place, "catalogue run.toml", 2, toml);
+}
+
+/// All faults of a command line at once, each on a line.
+#[test]
+fn several_bad_options() {
+    let place = Place::with_snapshot();
+    let ran = place.run("catalogue good.h5 --order zyy --min-cells 0 --threads 5000 --threads 2 --block-planes 0 --origin -1,2");
+    assert_eq!(ran.code, 2);
+    let wanted = "\
+error: cannot use a setting: --threads: expected it once, found it 2 times: \"5000\", \"2\"
+error: cannot use a setting: --order: expected a permutation of xyz (of xy for planes) with an optional c first or last, found \"zyy\"; \
+hint: for example --order xyz
+error: cannot use a setting: --origin: expected three finite numbers, or one for all axes, found \"-1,2\"; hint: for example --origin 0,-1.5,-pi
+error: cannot use a setting: --min-cells: expected a whole number of at least 1, found \"0\"; hint: for example --min-cells 8
+error: cannot use a setting: --block-planes: expected a whole number of at least 1, found \"0\"; hint: for example --block-planes 16
+error: cannot settle the size of the box: --lengths, --spacing: expected one of them, found neither; hint: --lengths 2pi is a cube of that side
+";
+    assert_eq!(ran.err, wanted);
+    assert_eq!((ran.out.as_str(), place.listing()), ("", vec!["good.h5".to_string()]));
 }
 
 #[test]
@@ -222,17 +242,4 @@ fn a_family_that_fits_one_snapshot_only() {
     let reason = "cannot detect family: good.h5: \"j: current > 2.2 rms\": expected a magnetic field, found none; \
         hint: name its datasets with --magnetic BX,BY,BZ";
     assert_eq!(ran.err, format!("error: snapshot skipped: {reason}\n"));
-}
-
-#[test]
-fn options_that_make_no_sense_together() {
-    let place = Place::with_snapshot();
-    let wrong = [
-        ("--velocity u,v,w --magnetic u,v,w", "cannot read two fields: --velocity, --magnetic: expected different datasets, found u,v,w"),
-        ("--periodic ''", "cannot read an option: --periodic: expected a subset of xyz, or none, found nothing"),
-        ("--threads 5000", "cannot use a number of threads: --threads: expected at most 1024, found 5000; hint: 0 takes one per core"),
-    ];
-    for (options, message) in wrong {
-        fails(&place, &format!("catalogue good.h5 --lengths 2pi {options}"), 2, message);
-    }
 }

@@ -25,6 +25,7 @@ fn analysed(scheme: Scheme, threads: usize, block_planes: usize) -> Analysis {
     let request = Request {
         families: families.iter().map(|f| Family::parse(f).unwrap()).collect(),
         scheme,
+        min_cells: 4,
         surfaces: Surfaces::None,
         ..Request::default()
     };
@@ -56,7 +57,7 @@ fn sampled_lines_tell_the_loss_of_all() {
         let found = loss.components[0][0].unwrap();
         assert!(wanted < before && (found / wanted - 1.0).abs() < 0.1, "{scheme:?}: {found}, all lines {wanted}");
         // The field is isotropic, and velocity has twice as many transverse derivatives, whose spectrum reaches further.
-        assert!((found * 0.9..2.0 * found).contains(&loss.velocity.unwrap()), "{scheme:?}: {loss:?}");
+        assert!((found..3.0 * found).contains(&loss.velocity.unwrap()), "{scheme:?}: {loss:?}");
         assert_eq!(loss.magnetic, None);
         before = wanted;
     }
@@ -70,7 +71,8 @@ fn analyses_are_the_same_for_any_blocks_and_threads() {
         let (a, b) = (analysed(scheme, 1, 48), analysed(scheme, 3, 5));
         assert_eq!((&a.survey, &a.scan, &a.alignment), (&b.survey, &b.scan, &b.alignment), "{scheme:?}");
         for (f, g) in a.families.iter().zip(&b.families) {
-            assert!(!f.rows.is_empty() && f.rows == g.rows, "{scheme:?} {}", f.family.name);
+            assert!(!f.rows.is_empty(), "{scheme:?} {}: no rows", f.family.name);
+            assert_eq!(format!("{:?}", f.rows), format!("{:?}", g.rows), "{scheme:?} {}", f.family.name);
         }
         assert_eq!(a.gradient_loss, b.gradient_loss);
     }

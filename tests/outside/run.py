@@ -5,6 +5,7 @@ import sys
 import time
 import traceback
 
+import derivatives
 import frame
 import labels
 import layouts
@@ -20,7 +21,7 @@ import totals
 
 def main():
     passed, failed = 0, []
-    for module in (tables, layouts, labels, totals, frame, peaks, meshes, outputs, readme):
+    for module in (tables, layouts, labels, derivatives, totals, frame, peaks, meshes, outputs, readme):
         for name, check in sorted(vars(module).items()):
             if not name.startswith("check_"):
                 continue

@@ -127,11 +127,11 @@ fn files_that_are_not_hdf5() {
     );
     check(
         Some(b"time,energy\n0,1\n"),
-        "cannot read the HDF5 file: DIR/s.h5: expected an HDF5 signature, found a file beginning \"time,ene\"; hint: snapshots are HDF5 files, .npy files or folders of .npy files",
+        "cannot read the HDF5 file: DIR/s.h5: expected an HDF5 signature, found a file beginning \"time,ene\"; hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout",
     );
     check(
         Some(&[b'x'; 5000]),
-        "cannot read the HDF5 file: DIR/s.h5: expected an HDF5 signature, found a file beginning \"xxxxxxxx\"; hint: snapshots are HDF5 files, .npy files or folders of .npy files",
+        "cannot read the HDF5 file: DIR/s.h5: expected an HDF5 signature, found a file beginning \"xxxxxxxx\"; hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout",
     );
     check(
         Some(b"\x89HDF"),

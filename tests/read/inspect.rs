@@ -142,6 +142,7 @@ fn components_in_a_group_and_spacing() {
         ..InputSpec::default()
     };
     assert_eq!(got.guess, want);
+    assert_eq!(got.reasons[3], "spacing from the attributes dx, dy, dz, in the order x, y, z");
     let opened = opens(&got, None);
     assert!(opened.source.fields().buoyancy);
 }
@@ -191,8 +192,14 @@ fn files_without_a_header_are_guessed_by_size() {
     let record = |body: Vec<u8>| [&(body.len() as u32).to_be_bytes()[..], &body, &(body.len() as u32).to_be_bytes()].concat();
     let each: Vec<u8> = (0..3).flat_map(|c| record(doubles(&coded(n, c), true))).collect();
     let got = inspect(&write(dir.path(), "b.dat", &each)).unwrap();
-    assert_eq!(got.reasons[0], "its size fits 8x8x8 samples of 3 components in float64 with 4-byte record markers, big-endian");
+    assert_eq!(got.reasons[0], "it has 3 records of 4096 bytes between 4-byte markers, big-endian");
+    assert_eq!(got.reasons[1], "its size fits 8x8x8 samples of 3 components in float64 with 4-byte record markers, big-endian");
     opens(&got, None);
+    let got = inspect(&write(dir.path(), "d.dat", &record(vec![1; 300]))).unwrap();
+    assert_eq!(
+        got.reasons,
+        ["it has 1 record of 300 bytes between 4-byte markers, big-endian", "no cubic shape of float32 or float64 values has its size"]
+    );
     let got = inspect(&write(dir.path(), "c.dat", &[7; 1000])).unwrap();
     assert_eq!((got.guess.raw, &got.reasons[..]), (None, &["no cubic shape of float32 or float64 values has its size".to_string()][..]));
 }
@@ -221,4 +228,31 @@ fn what_cannot_be_looked_into() {
         "cannot read the npy file: DIR/s.npy: expected the signature \"\\x93NUMPY\", found a file beginning \"text\"; \
          hint: write it with numpy.save",
     );
+}
+
+#[test]
+fn odd_contents_are_told_without_fuss() {
+    let dir = tempfile::tempdir().unwrap();
+    let path = dir.path().join("s.h5");
+    let file = File::create(&path).unwrap();
+    for (c, name) in ["u", "v", "w"].into_iter().enumerate() {
+        put::<f32>(&file, name, &SHAPE, &coded(N, c));
+    }
+    // A ring, an empty dataset, no values, integers, booleans, text.
+    file.create_group("a/b").unwrap();
+    file.link_soft("/", "a/b/ring").unwrap();
+    file.link_soft("/nowhere", "dangling").unwrap();
+    file.new_dataset::<f64>().shape(0).create("none").unwrap();
+    file.new_dataset_builder().empty::<f64>().shape(::hdf5::Extents::Null).create("empty").unwrap();
+    file.new_dataset::<i16>().create("time").unwrap().write_scalar(&7i16).unwrap();
+    file.new_attr::<bool>().create("flag").unwrap().write_scalar(&true).unwrap();
+    let text: VarLenUnicode = "many words".parse().unwrap();
+    file.new_dataset::<VarLenUnicode>().create("text").unwrap().write_scalar(&text).unwrap();
+    file.close().unwrap();
+    let got = inspect(&path).unwrap();
+    let items: Vec<&str> = got.items.iter().map(|i| i.name.as_str()).collect();
+    assert_eq!(items, ["/empty", "/none", "/text", "/time", "/u", "/v", "/w"]);
+    assert_eq!(got.attributes.len(), 1);
+    assert_eq!(got.time, Some(7.0));
+    opens(&got, None);
 }

@@ -248,6 +248,14 @@ fn records_that_do_not_fit() {
         &damaged,
         "record 1 at byte 0: expected the marker 240 behind the record, found 241; hint: the file is damaged, or has no records",
     );
+    // A record that was not cut has a positive marker behind it.
+    let mut damaged = three(&little);
+    damaged[244..248].copy_from_slice(&(-240i32).to_le_bytes());
+    check(
+        &little,
+        &damaged,
+        "record 1 at byte 0: expected the marker 240 behind the record, found -240; hint: the file is damaged, or has no records",
+    );
     let plain: Vec<u8> = (0..3).flat_map(|c| bytes(&coded(N, c), &little)).collect();
     check(
         &little,

@@ -30,7 +30,7 @@ pub fn run(args: &Args) -> Result<ExitCode> {
             }
             let outcome = catalogue(&config, &Console::new(a.talk))?;
             if !a.talk.quiet {
-                console::result(&overview(&outcome.overview, &outcome.folder))?;
+                console::result(&overview(&outcome.overview, &outcome.remarks, &outcome.folder))?;
             }
             Ok(if outcome.failed.is_empty() { ExitCode::SUCCESS } else { ExitCode::from(exit::PARTIAL) })
         }
@@ -110,7 +110,7 @@ fn demo(a: &Demo) -> Result<ExitCode> {
         if !outcome.failed.is_empty() {
             code = ExitCode::from(exit::PARTIAL);
         }
-        let _ = writeln!(text, "{}", overview(&outcome.overview, &outcome.folder));
+        let _ = writeln!(text, "{}", overview(&outcome.overview, &outcome.remarks, &outcome.folder));
     }
     text += &what_to_look_at(&a.folder);
     if !a.talk.quiet {
@@ -152,13 +152,13 @@ fn gathered(a: &Gather) -> Result<ExitCode> {
     let config = GatherConfig { runs: a.runs.clone(), output: a.output.clone(), replace: a.replace, threads: 0 };
     let done = gather(&config, &Console::new(a.talk))?;
     if !a.talk.quiet {
-        console::result(&overview(&done.overview, &done.folder))?;
+        console::result(&overview(&done.overview, &done.remarks, &done.folder))?;
     }
     Ok(if done.missing.is_empty() { ExitCode::SUCCESS } else { ExitCode::from(exit::PARTIAL) })
 }
 
 /// A line a snapshot and family: what was found.
-fn overview(found: &[FamilyOverview], folder: &Path) -> String {
+fn overview(found: &[FamilyOverview], remarks: &[String], folder: &Path) -> String {
     let mut out = String::new();
     let _ = writeln!(
         out,
@@ -179,6 +179,9 @@ fn overview(found: &[FamilyOverview], folder: &Path) -> String {
             classes.join(", ")
         );
         let _ = writeln!(out, "{}", line.trim_end());
+    }
+    for remark in remarks {
+        let _ = writeln!(out, "{remark}");
     }
     let _ = writeln!(out, "{}", folder.display());
     out

@@ -224,6 +224,7 @@ fn folder(r: &mut Reader<'_>, s: &Settled) {
 
 /// An absolute path without `.` and `..`, as far as its text tells.
 fn tidy(path: &Path) -> PathBuf {
+    let path = if path.as_os_str().is_empty() { Path::new(".") } else { path };
     let full = std::path::absolute(path).unwrap_or_else(|_| path.to_path_buf());
     let mut out = PathBuf::new();
     for part in full.components() {

@@ -92,7 +92,8 @@ impl Tables<'_> {
         entries.sort_by_key(|(k, _)| k.span().start);
         for (key, value) in entries {
             let line = self.lines.of_byte(key.span().start);
-            if self.torn.contains(&line) {
+            let last = if matches!(value.get_ref(), DeValue::Table(_)) { line } else { self.lines.of_byte(value.span().end) };
+            if self.torn.iter().any(|t| (line..=last.max(line)).contains(t)) {
                 continue;
             }
             let name: &str = key.get_ref();
@@ -116,7 +117,11 @@ impl Tables<'_> {
 
     fn unknown(&mut self, path: &str, name: &str, full: &str, line: usize, is_table: bool) {
         let tables = || TABLES.iter().map(|(t, _, _)| *t);
-        let keys = || SETTINGS.iter().filter(|s| s.table == path).map(|s| s.name);
+        let own = format!("{path}.");
+        let keys = || {
+            let inner = TABLES.iter().filter_map(|(t, _, _)| t.strip_prefix(own.as_str()));
+            SETTINGS.iter().filter(|s| s.table == path).map(|s| s.name).chain(inner)
+        };
         let elsewhere = SETTINGS.iter().find(|s| s.name == name && !is_table);
         let (expected, hint) = if path.is_empty() {
             let expected = format!("one of the tables {}", tables().collect::<Vec<_>>().join(", "));

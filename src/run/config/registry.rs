@@ -169,7 +169,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Lists,
         ("snapshots", "lists"),
         ("list", "FILE"),
-        "A text file with one path a line, a time behind it where known (repeatable)",
+        "A text file with one path a line, a time behind it where known",
         ("[\"run.txt\"]", "run.txt"),
     )
     .many(),
@@ -191,7 +191,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Velocity,
         ("input", "velocity"),
         ("velocity", "U,V,W"),
-        "Datasets of the velocity: three (two on a plane), or one with a component axis. Without --velocity and --magnetic usual names are looked for",
+        "Datasets of the velocity: three (two on a plane), or one with a component axis. Where neither velocity nor magnetic is named, usual names are looked for",
         ("[\"flow/u\", \"flow/v\", \"flow/w\"]", "flow/u,flow/v,flow/w"),
     ),
     s(
@@ -292,7 +292,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::RawShape,
         ("input.raw", "shape"),
         ("raw-shape", "NZ,NY,NX"),
-        "Samples along every axis, slowest first, in the order of --order, without the component axis",
+        "Samples along every space axis, slowest first",
         ("[64, 64, 128]", "64,64,128"),
     ),
     s(
@@ -378,7 +378,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Families,
         ("objects", "families"),
         ("family", "SPEC"),
-        "A family of objects, \"NAME: INDICATOR > LEVEL [down to LEVEL]\", or < (repeatable). LEVEL is a number, alone or with rms, run-rms, mean, volume or peak. Without it: vorticity > 3 rms, and current > 3 rms with a magnetic field",
+        "A family of objects, \"NAME: INDICATOR > LEVEL [down to LEVEL]\", or <. LEVEL is a number, alone or with rms, run-rms, mean, volume or peak. When none is given: vorticity > 3 rms, and current > 3 rms with a magnetic field",
         ("[\"worms: vorticity > 2.5 rms\", \"cores: q > 0.01 volume\"]", "worms: vorticity > 2.5 rms"),
     )
     .many(),

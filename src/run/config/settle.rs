@@ -1,6 +1,6 @@
 //! From settings as found to a run: every value read, every fault told.
 
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 use crate::base::error::{Error, Result};
 use crate::model::indicator::{INDICATORS, Indicator};
@@ -59,7 +59,10 @@ pub fn check(given: &Given) -> Result<Settled> {
         input,
         request,
         outputs,
-        execution: Execution { block_planes: r.whole(Key::BlockPlanes, 1, u32::MAX.into()).map(|n| n as usize), ..Execution::default() },
+        execution: Execution {
+            block_planes: r.whole(Key::BlockPlanes, 1, u64::MAX).map(|n| usize::try_from(n).unwrap_or(usize::MAX)),
+            ..Execution::default()
+        },
         threads: r.whole(Key::Threads, 0, MOST_THREADS).unwrap_or(0) as usize,
         output: r.text(Key::Folder).map_or_else(|| PathBuf::from("ropewalk-run"), |t| path(&r, Key::Folder, &t)),
         replace: r.switch(Key::Replace).unwrap_or(false),
@@ -102,9 +105,8 @@ fn pattern(r: &Reader<'_>, text: &str) -> String {
     if !is_pattern(text) || plain.exists() || plain.as_os_str() == text || PathBuf::from(text).is_absolute() {
         return plain.to_string_lossy().into_owned();
     }
-    let folder = r.given.folder().to_string_lossy().into_owned();
-    let literal: String = folder.chars().map(|c| if is_pattern(&c.to_string()) { format!("[{c}]") } else { c.to_string() }).collect();
-    PathBuf::from(literal).join(text).to_string_lossy().into_owned()
+    let folder = glob::Pattern::escape(&r.given.folder().to_string_lossy());
+    Path::new(&folder).join(text).to_string_lossy().into_owned()
 }
 
 fn series(r: &mut Reader<'_>) -> Series {
@@ -175,7 +177,7 @@ fn order(r: &mut Reader<'_>) -> Option<String> {
 fn raw(r: &mut Reader<'_>) -> Option<RawLayout> {
     let values = r.choice(Key::RawValues);
     let endian = r.choice(Key::RawEndian);
-    let offset = r.whole(Key::RawOffset, 0, i64::MAX as u64);
+    let offset = r.whole(Key::RawOffset, 0, u64::MAX);
     let records = r.choice(Key::RawRecords);
     let shape = r.numbers(Key::RawShape).and_then(|sizes| {
         let whole = |v: &f64| (v.fract() == 0.0 && (1.0..=1e9).contains(v)).then_some(*v as usize);

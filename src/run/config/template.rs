@@ -18,7 +18,7 @@ pub fn text(known: &Known, notes: &[String]) -> String {
     let mut out = String::new();
     comment(
         &mut out,
-        "Run file of ropewalk. A setting counts once the # before it is taken away; what stands behind # is the default where there is one, else an example.",
+        "Run file of ropewalk. A setting counts once the # before it is taken away. Of alternatives one is enough: lengths or spacing, positions or indices.",
     );
     comment(&mut out, "What would be done with it: ropewalk catalogue RUN.toml --dry-run. Flags replace what stands here.");
     if !notes.is_empty() {
@@ -30,8 +30,9 @@ pub fn text(known: &Known, notes: &[String]) -> String {
         comment(&mut out, &format!("{}.", capital(about)));
         for s in SETTINGS.iter().filter(|s| s.table == table) {
             out.push('\n');
-            comment(&mut out, &explained(s));
-            match known.iter().find(|(k, _)| *k == s.key) {
+            let value = known.iter().find(|(k, _)| *k == s.key);
+            comment(&mut out, &explained(s, value.is_some()));
+            match value {
                 Some((_, value)) => out.push_str(&format!("{} = {value}\n", s.name)),
                 None => out.push_str(&format!("#{} = {}\n", s.name, placeholder(s))),
             }
@@ -40,14 +41,17 @@ pub fn text(known: &Known, notes: &[String]) -> String {
     out
 }
 
-/// Help, choices and whether there is a default.
-fn explained(s: &Setting) -> String {
+/// Help and choices, and what the line below is.
+fn explained(s: &Setting, active: bool) -> String {
     let mut text = format!("{}.", s.help.trim_end_matches('.'));
     if !s.choices.is_empty() {
         text += &format!(" One of {}.", s.choices.join(", "));
     }
-    if s.default.is_empty() {
-        text += " No default.";
+    match (active, s.default) {
+        (true, "") => {}
+        (true, default) => text += &format!(" Default {default}."),
+        (false, "") => text += " For example:",
+        (false, _) => text += " Default:",
     }
     text
 }

@@ -7,7 +7,7 @@ use crate::base::error::Error;
 use crate::read::Stretch;
 use crate::run::config::given::{Given, Node, Raw};
 use crate::run::config::nearest::nearest;
-use crate::run::config::registry::Key;
+use crate::run::config::registry::{Key, Takes};
 
 const AXES: [&str; 3] = ["x", "y", "z"];
 
@@ -151,24 +151,33 @@ impl<'g> Reader<'g> {
     pub fn list(&mut self, key: Key) -> Option<Vec<(String, Node)>> {
         let node = self.given.node(key)?;
         let split = |t: &str| t.split(',').map(|p| p.trim().to_string()).collect::<Vec<_>>();
-        let items: Option<Vec<(String, Node)>> = match &node.raw {
-            Raw::Typed(t) | Raw::Text(t) => Some(split(t).into_iter().map(|t| (t, node.clone())).collect()),
-            Raw::Integer(i) => Some(vec![(i.to_string(), node.clone())]),
-            Raw::List(items) => items
-                .iter()
-                .map(|n| match &n.raw {
-                    Raw::Text(t) | Raw::Typed(t) => Some((t.clone(), n.clone())),
-                    Raw::Integer(i) => Some((i.to_string(), n.clone())),
-                    _ => None,
-                })
-                .collect(),
-            _ => None,
+        let items: Vec<(String, Node)> = match &node.raw {
+            Raw::Typed(t) | Raw::Text(t) => split(t).into_iter().map(|t| (t, node.clone())).collect(),
+            Raw::Integer(i) if key == Key::CutOuts => vec![(i.to_string(), node.clone())],
+            Raw::List(items) => items.iter().filter_map(|n| Some((self.entry(key, n)?, n.clone()))).collect(),
+            _ => {
+                self.unlike(key, node, "a list of texts");
+                return None;
+            }
         };
-        let items = items.filter(|list| list.iter().all(|(t, _)| !t.trim().is_empty()));
-        if items.is_none() {
+        if items.iter().any(|(t, _)| t.trim().is_empty()) {
             self.unlike(key, node, "a list of texts, none of them empty");
+            return None;
         }
-        items
+        Some(items)
+    }
+
+    /// The text of an entry of a list; an entry that is none is a fault of its own.
+    fn entry(&mut self, key: Key, node: &Node) -> Option<String> {
+        match &node.raw {
+            Raw::Text(t) | Raw::Typed(t) => Some(t.clone()),
+            // Ids of objects are numbers.
+            Raw::Integer(i) if key == Key::CutOuts => Some(i.to_string()),
+            _ => {
+                self.unlike(key, node, "a text in the list");
+                None
+            }
+        }
     }
 
     /// Texts, each of which may hold commas.
@@ -269,6 +278,7 @@ fn example(key: Key, node: &Node) -> String {
     match (node.line, s.flag) {
         (Some(_), _) => format!("for example {} = {}", s.name, s.example),
         (None, "") => format!("for example {}", s.typed),
+        (None, flag) if s.takes == Takes::Switch => format!("for example --{flag}={}", s.typed),
         (None, flag) if s.typed.contains([' ', '<', '>', '*', '{']) => format!("for example --{flag} \"{}\"", s.typed),
         (None, flag) => format!("for example --{flag} {}", s.typed),
     }

@@ -1,0 +1,5 @@
+//! Settings: every fault of a run file and of flags, run file and flags the same, relative paths.
+
+mod faults;
+mod flags;
+mod same;
