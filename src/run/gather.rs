@@ -15,7 +15,7 @@ use crate::export::atomic::{Folder, unfinished};
 use crate::export::json::pretty;
 use crate::run::catalogue::PLAN;
 use crate::run::parts::{self, FamilyOverview, PARTS, Part, Tables};
-use crate::run::provenance;
+use crate::run::remarks::remarks;
 
 /// What is gathered and where to.
 #[derive(Debug, Clone, PartialEq, Eq)]
@@ -112,15 +112,10 @@ pub fn gather(config: &GatherConfig, observe: &dyn Observe) -> Result<Gathered> 
         }
     }
     let overview = parts::join(&folder, &all, &schema, tables, failed, &pool)?;
-    let cells: u64 = all.iter().map(|p| cells(&p.what["snapshot"])).sum();
-    let mut how = provenance::timing(&[], started.elapsed().as_secs_f64(), pool.threads(), cells);
-    how["gathered"] = json!(config.runs.iter().map(|r| r.display().to_string()).collect::<Vec<_>>());
+    let from: Vec<String> = config.runs.iter().map(|r| r.display().to_string()).collect();
+    let how = json!({ "seconds": started.elapsed().as_secs_f64(), "threads": pool.threads(), "gathered": from });
     folder.write("timing.json", pretty(&how).as_bytes())?;
-    Ok(Gathered { folder: folder.finish()?, remarks: crate::run::remarks::remarks(&all), overview, missing })
-}
-
-fn cells(snapshot: &Value) -> u64 {
-    snapshot["cells"].as_array().into_iter().flatten().filter_map(Value::as_u64).product()
+    Ok(Gathered { folder: folder.finish()?, remarks: remarks(&all), overview, missing })
 }
 
 fn same(a: &Path, b: &Path) -> bool {

@@ -86,7 +86,7 @@ impl<T: Real> Pass<'_, T> {
             Patches::new(grid.clone(), criterion.family, criterion.side, Fields::default(), Vec::new(), &regions.objects, u64::MAX);
         let mut out: Vec<(usize, Vec<Grown>)> = Vec::new();
         let reach = |z| deriver.reach(z);
-        blocks(self.source, &self.ranges, deriver.halo(), reach, &self.buffers, self.observe, |block| {
+        blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
             patches.begin_block(block.z.clone(), &tiles, &mut regions.objects);
             let ready = deriver.prepare(block, Need::default());
             par::map_range(tiles.len(), |t| {
@@ -118,7 +118,7 @@ impl<T: Real> Pass<'_, T> {
         self.observe.stage("sums", grid.n[2] as u64);
         let need = Need { strain: true, alignment: true, extras: !criterion.scales.extras.is_empty(), ..Need::default() };
         let reach = |z| deriver.reach(z);
-        blocks(self.source, &self.ranges, deriver.halo(), reach, &self.buffers, self.observe, |block| {
+        blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
             let ready = deriver.prepare(block, need);
             let sums = par::map(&tiles, |_, rows_y| {
                 let mut scratch = Scratch::default();

@@ -20,7 +20,8 @@ fn jobs() -> Place {
 /// Every file of a run but `timing.json`.
 fn results(place: &Place, run: &str) -> Vec<String> {
     let all = place.listing();
-    let files = all.iter().filter_map(|f| f.strip_prefix(&format!("{run}/"))).filter(|f| !f.ends_with('/') && *f != "timing.json");
+    let files =
+        all.iter().filter_map(|f| f.strip_prefix(&format!("{run}/"))).filter(|f| !f.is_empty() && !f.ends_with('/') && *f != "timing.json");
     files.map(str::to_string).collect()
 }
 

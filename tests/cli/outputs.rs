@@ -31,7 +31,7 @@ fn binary_files_are_the_same_every_time() {
     sleep(Duration::from_millis(1100));
     place.succeed(&format!("{line} -o b"));
     let files: Vec<String> = place.listing().iter().filter_map(|f| f.strip_prefix("a/")).map(str::to_string).collect();
-    assert_eq!(files.iter().filter(|f| f.ends_with(".h5")).count(), 4, "{files:?}");
+    assert_eq!(files.iter().filter(|f| f.ends_with(".h5")).count(), 3, "{files:?}");
     for file in files.iter().filter(|f| f.ends_with(".h5") || f.ends_with(".parquet")) {
         let bytes = |run: &str| fs::read(place.path(&format!("{run}/{file}"))).expect("a result");
         assert!(bytes("a") == bytes("b"), "{file} differs");

@@ -64,20 +64,21 @@ def check_cut_outs_hold_the_snapshot():
     """Every field to the bit, the mask as the label volume has it, positions; objects across faces and one that fills the box."""
     across, whole = 0, 0
     for path, lengths, _ in snapshots():
-        specs = ["v: vorticity > 2.5 rms", "c: current > 2 rms", "web: vorticity > 0.9 rms"]
-        options = ["--min-cells", 27, "--surfaces", "none", "--labels", "--cut-outs", "largest:6", "--cut-out-margin", 5]
+        specs = ["v: vorticity > 2.5 rms", "c: current > 2 rms", "web: vorticity > 0.9 rms", "p: vorticity > 0.6 peak"]
+        # More than are held open at a time.
+        options = ["--min-cells", 12, "--surfaces", "none", "--labels", "--cut-outs", "largest:30", "--cut-out-margin", 5]
         folder = support.run(path, *size(lengths), *options, *support.families(specs))
         with h5py.File(path) as f:
             snapshot = {name: f[name][...] for name in ("u", "v", "w", "bx", "by", "bz")}
             time = f.attrs.get("time")
         flow = labels.Flow(path, lengths)
         rows = {(r["family"], int(r["id"])): r for r in support.rows(folder)}
-        for family in ("v", "c", "web"):
+        for family in ("v", "c", "web", "p"):
             with h5py.File(folder / "labels" / path.stem / f"{family}.h5") as f:
                 volume = f["labels"][...]
             files = sorted((folder / "cutouts" / path.stem / family).glob("*.h5"))
             sizes = sorted((int(r["cells"]) for (name, _), r in rows.items() if name == family), reverse=True)
-            assert len(files) == min(6, len(sizes)), files
+            assert len(files) == min(30, len(sizes)), files
             told = []
             for file in files:
                 number = int(file.stem)
