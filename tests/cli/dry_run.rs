@@ -120,7 +120,7 @@ fn the_run_does_what_was_planned() {
     for options in [
         "",
         "--labels --cut-outs largest:2 --surfaces each --tables csv,jsonl",
-        "--family 'h: helicity > 2 rms' --family 't: vorticity > 0.7 peak' --cut-outs largest:1",
+        "--family 'h: helicity > 2 rms' --family 't: vorticity > 1.5 rms down to 0.4 peak' --cut-outs largest:1",
         "--filter 'sharp 0.6' --derivative spectral --surfaces none",
     ] {
         let line = format!("catalogue good.h5 {OPTIONS} {options} --replace -o run");
