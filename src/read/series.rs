@@ -27,6 +27,11 @@ pub struct Series {
     pub times: Vec<f64>,
 }
 
+/// A text that a pattern matches as it stands, whatever characters it has.
+pub fn literal(text: &str) -> String {
+    glob::Pattern::escape(text)
+}
+
 /// The snapshots: paths in the order named, then lists, those of a pattern sorted with numbers in their names compared as numbers.
 ///
 /// What exists is taken as it is named, even when it looks like a pattern; what does not exist and is no pattern is left to
