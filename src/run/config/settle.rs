@@ -105,7 +105,9 @@ fn pattern(r: &Reader<'_>, text: &str) -> String {
     if !is_pattern(text) || plain.exists() || plain.as_os_str() == text || PathBuf::from(text).is_absolute() {
         return plain.to_string_lossy().into_owned();
     }
-    let folder = glob::Pattern::escape(&r.given.folder().to_string_lossy());
+    let folder = r.given.folder().to_string_lossy();
+    let literal = |c: char| if "*?[]".contains(c) { format!("[{c}]") } else { c.to_string() };
+    let folder: String = folder.chars().map(literal).collect();
     Path::new(&folder).join(text).to_string_lossy().into_owned()
 }
 
