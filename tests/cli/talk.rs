@@ -8,10 +8,9 @@ fn the_overview_is_all_of_standard_output() {
     let ran = place.succeed(&format!("catalogue good.h5 {OPTIONS}"));
     assert_eq!(ran.err, "", "no progress where there is no terminal");
     let lines: Vec<&str> = ran.out.lines().collect();
-    assert_eq!(lines.len(), 3, "{}", ran.out);
     assert_eq!(lines[0], "snapshot         family             level  objects   volume dissipation  classes");
     assert!(lines[1].starts_with("good             v "), "{}", lines[1]);
-    assert_eq!(lines[2], "ropewalk-run");
+    assert_eq!(lines.last(), Some(&"ropewalk-run"), "remarks stand between the rows and the folder");
     let rows = place.read("ropewalk-run/catalogue.csv").lines().count() - 1;
     let told: usize = lines[1].split_whitespace().nth(3).and_then(|n| n.parse().ok()).expect("a number of objects");
     assert_eq!(told, rows);
