@@ -14,5 +14,6 @@ mod planes;
 mod same_answer;
 mod sheets;
 mod stretched;
+mod symmetries;
 mod uniform_flows;
 mod vortices;
