@@ -11,7 +11,7 @@ use ropewalk::export::csv;
 use ropewalk::export::ply::{Joins, PlyWriter};
 use ropewalk::model::columns::Col;
 use ropewalk::model::object::Sum;
-use ropewalk::model::request::{Family, Request};
+use ropewalk::model::request::{Family, Filter, FilterShape, Indicator, Request, Scheme};
 use ropewalk::model::source::AnySource;
 use ropewalk::model::surface::SurfaceMesh;
 use ropewalk::read::{InputSpec, open};
@@ -19,8 +19,17 @@ use ropewalk::run::analysis::Execution;
 use ropewalk::space::grid::Grid;
 use ropewalk::synth::random::solenoidal;
 
-const SUMMED: [Sum; 7] =
-    [Sum::Indicator, Sum::Strain2, Sum::Current2, Sum::Lamb2, Sum::Speed2Vorticity2, Sum::Lorentz2, Sum::Current2Field2];
+const SUMMED: [Sum; 9] = [
+    Sum::Indicator,
+    Sum::Strain2,
+    Sum::Current2,
+    Sum::Lamb2,
+    Sum::Speed2Vorticity2,
+    Sum::Lorentz2,
+    Sum::Current2Field2,
+    Sum::Lorentz2Fluct,
+    Sum::Current2Field2Fluct,
+];
 const THREADS: [usize; 4] = [1, 2, 3, 8];
 const BLOCKS: [Option<usize>; 7] = [None, Some(1), Some(2), Some(3), Some(5), Some(7), Some(16)];
 
@@ -51,7 +60,8 @@ fn bytes(o: &Outcome) -> Vec<u8> {
             all.extend(floats.flat_map(|v| v.to_bits().to_le_bytes()));
             all.extend(m.triangles.iter().flatten().flat_map(|v| v.to_le_bytes()));
         }
-        let values = SurfaceMesh::value_names(a.fields, &[]);
+        let Some(first) = meshes.first() else { continue };
+        let values = vec!["value"; first.values.len()];
         let mut file = PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), Joins::Triangles, values, Vec::new()).unwrap();
         // One call a mesh and one call for all must not differ either.
         let (first, rest) = meshes.split_at(meshes.len() / 2);
@@ -122,6 +132,58 @@ fn random_fields_in_single_precision() {
 #[test]
 fn random_fields_in_double_precision() {
     same(random::<f64>, &requested(), a_selection());
+}
+
+/// Every way of deriving, of growing objects and of measuring that is not in the request above.
+fn grown(scheme: Scheme, filter: Option<Filter>) -> Request {
+    let families = [
+        "grown: vorticity > 1.6 rms down to 0.6 peak",
+        "both: current > 2 rms down to 1.4 rms",
+        "cores: lambda2 < -1.2 rms",
+        "spin: swirling > 1.5 rms",
+        "waves: elsasser_minus > 0.04 volume",
+    ];
+    Request {
+        families: families.iter().map(|f| Family::parse(f).unwrap()).collect(),
+        companions: vec![Indicator::Delta, Indicator::LambSin, Indicator::RelativeHelicity],
+        mesh_values: vec![Indicator::Q, Indicator::LorentzSin],
+        scheme,
+        filter,
+        ..requested()
+    }
+}
+
+fn guided<T: Precision>(grid: Grid) -> AnySource {
+    let lengths = std::array::from_fn(|a| grid.length(a));
+    let field = |seed| solenoidal(grid.n, lengths, seed, |k| k * (-k / 3.0).exp(), 0.2);
+    let mut components: Vec<Vec<f64>> = field(7).into_iter().chain(field(8)).collect();
+    components[5].iter_mut().for_each(|b| *b += 0.7);
+    stored::<T>(grid, BOTH, &components)
+}
+
+#[test]
+fn every_scheme_and_the_filter() {
+    let grid = Grid::periodic([32, 28, 36], [TAU, 5.5, 7.1]);
+    for (scheme, filter) in [
+        (Scheme::Spectral, None),
+        (Scheme::Fd2, None),
+        (Scheme::Opt, None),
+        (Scheme::Fd8, Some(Filter { shape: FilterShape::Gaussian, width: 0.5 })),
+    ] {
+        let request = grown(scheme, filter);
+        same(|| guided::<f32>(grid.clone()), &request, [(2, None), (3, Some(5)), (8, Some(16))].into_iter());
+    }
+}
+
+#[test]
+fn stretched_and_partly_open_boxes() {
+    let n = [32, 28, 36];
+    let y = (0..n[1]).map(|i| (1.4 * (2.0 * i as f64 / 27.0 - 1.0)).tanh()).collect();
+    let grid = Grid::periodic(n, [TAU, 2.0, 7.1]).with_positions(1, y);
+    for scheme in [Scheme::Fd8, Scheme::Spectral] {
+        let request = grown(scheme, None);
+        same(|| guided::<f64>(grid.clone()), &request, [(2, None), (3, Some(5)), (8, Some(7))].into_iter());
+    }
 }
 
 /// The comparison above must have something to tell apart: wrapping objects, cut objects, dropped objects, meshes everywhere.
