@@ -35,6 +35,21 @@ def check_every_ropewalk_command():
         f["flow/B"] = b
     for name, values in zip("uvw", u):
         np.save(place / "folder" / name, values)
+    (place / "raw").mkdir()
+    for name, values in zip("uvw", u):
+        marker = np.uint32(values.nbytes).tobytes()
+        (place / "raw" / f"{name}.raw").write_bytes(marker + values.tobytes() + marker)
+    with h5py.File(place / "steps.h5", "w") as f:
+        for step in (1, 2):
+            for name, values in zip("uvw", u):
+                f[f"step_{step}/{name}"] = values * step
+    with h5py.File(place / "channel.h5", "w") as f:
+        f["grid/y"] = np.tanh(1.5 * (np.arange(16) / 7.5 - 1.0))
+        for name, values in zip("uvw", u):
+            f[name] = values
+    with h5py.File(place / "plane.h5", "w") as f:
+        for name, values in zip("uv", u):
+            f[name] = values[0]
     np.save(place / "velocity", np.ascontiguousarray(np.moveaxis(u, 0, -1)))
     (place / "bin").mkdir()
     (place / "bin" / "ropewalk").symlink_to(support.PROGRAM)

@@ -12,6 +12,7 @@ import layouts
 import meshes
 import outputs
 import peaks
+import quantities
 import readme
 
 import support
@@ -21,7 +22,7 @@ import totals
 
 def main():
     passed, failed = 0, []
-    for module in (tables, layouts, labels, derivatives, totals, frame, peaks, meshes, outputs, readme):
+    for module in (tables, layouts, labels, derivatives, totals, frame, peaks, quantities, meshes, outputs, readme):
         for name, check in sorted(vars(module).items()):
             if not name.startswith("check_"):
                 continue
