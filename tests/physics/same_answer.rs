@@ -13,7 +13,6 @@ use ropewalk::model::columns::Col;
 use ropewalk::model::object::Sum;
 use ropewalk::model::request::{Family, Filter, FilterShape, Indicator, Request, Scheme};
 use ropewalk::model::source::AnySource;
-use ropewalk::model::surface::SurfaceMesh;
 use ropewalk::read::{InputSpec, open};
 use ropewalk::run::analysis::Execution;
 use ropewalk::space::grid::Grid;
