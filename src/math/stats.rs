@@ -145,9 +145,8 @@ pub struct Cosine {
     pub defined: u64,
     sum: i128,
     abs_sum: i128,
-    /// Sums of the weights of all and of the aligned cells, where cells have weights; else 0.
-    weight: i128,
-    aligned_weight: i128,
+    /// Sums of the weights of all and of the aligned cells, where cells have weights.
+    weights: Option<Box<[i128; 2]>>,
     /// Cells with |cos| > 0.9.
     pub aligned: u64,
     /// Cells a bin: 20 equal bins over [-1, 1].
@@ -208,10 +207,11 @@ impl Cosine {
                 let (sum, weight) = (i128::from(fixed(c.wide() * w)), i128::from(fixed(w)));
                 self.sum += sum;
                 self.abs_sum += sum.abs();
-                self.weight += weight;
+                let weights = self.weights.get_or_insert_default();
+                weights[0] += weight;
                 if c.abs().wide() > 0.9 {
                     self.aligned += 1;
-                    self.aligned_weight += weight;
+                    weights[1] += weight;
                 }
             }
         }
@@ -219,8 +219,10 @@ impl Cosine {
 
     /// Adds the statistics of other cells.
     pub fn merge(&mut self, other: &Cosine) {
-        self.weight += other.weight;
-        self.aligned_weight += other.aligned_weight;
+        if let Some(theirs) = &other.weights {
+            let ours = self.weights.get_or_insert_default();
+            (ours[0], ours[1]) = (ours[0] + theirs[0], ours[1] + theirs[1]);
+        }
         self.defined += other.defined;
         self.sum += other.sum;
         self.abs_sum += other.abs_sum;
@@ -237,8 +239,10 @@ impl Cosine {
             defined: self.defined - part.defined,
             sum: self.sum - part.sum,
             abs_sum: self.abs_sum - part.abs_sum,
-            weight: self.weight - part.weight,
-            aligned_weight: self.aligned_weight - part.aligned_weight,
+            weights: self.weights.as_ref().map(|w| {
+                let part = part.weights.as_deref().copied().unwrap_or_default();
+                Box::new([w[0] - part[0], w[1] - part[1]])
+            }),
             aligned: self.aligned - part.aligned,
             bins: std::array::from_fn(|b| self.bins[b] - part.bins[b]),
         }
@@ -256,13 +260,13 @@ impl Cosine {
 
     /// Share of the defined cells (of their volume, where it differs) with |cos| > 0.9.
     pub fn aligned_share(&self) -> Option<f64> {
-        let aligned = if self.weight > 0 { self.aligned_weight as f64 / COSINE_SCALE } else { self.aligned as f64 };
+        let aligned = self.weights.as_ref().map_or(self.aligned as f64, |w| w[1] as f64 / COSINE_SCALE);
         (self.defined > 0).then(|| aligned / self.total())
     }
 
     /// Number, or weight, of the cells.
     fn total(&self) -> f64 {
-        if self.weight > 0 { self.weight as f64 / COSINE_SCALE } else { self.defined as f64 }
+        self.weights.as_ref().map_or(self.defined as f64, |w| w[0] as f64 / COSINE_SCALE)
     }
 }
 

@@ -216,11 +216,11 @@ fn alignment(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
         }
     }
     if c.guide {
-        let cosines = &object.tally.cosines;
-        r.number(Col::CosCurrentBFluct, cosines[3].mean());
-        r.number(Col::AbsCosCurrentBFluct, cosines[3].abs_mean());
-        r.number(Col::CosUBFluct, cosines[4].mean());
-        r.number(Col::AbsCosUBFluct, cosines[4].abs_mean());
+        let [.., current, flow] = object.tally.all_cosines();
+        r.number(Col::CosCurrentBFluct, current.mean());
+        r.number(Col::AbsCosCurrentBFluct, current.abs_mean());
+        r.number(Col::CosUBFluct, flow.mean());
+        r.number(Col::AbsCosUBFluct, flow.abs_mean());
     }
 }
 

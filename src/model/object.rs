@@ -65,8 +65,10 @@ pub struct Tally {
     /// Open faces of the box that the object touches.
     pub open_faces: Faces,
     sums: [i128; SUMS],
-    /// Cosines in the order of [`COSINES`].
-    pub cosines: [Cosine; 5],
+    /// Cosines in the order of [`COSINES`], those without the mean field left out.
+    pub cosines: [Cosine; 3],
+    /// Those, where there is a mean field.
+    pub fluctuating: Option<Box<[Cosine; 2]>>,
     /// Sum and extremes of the companions, in their order.
     pub extras: Vec<Extra>,
 }
@@ -94,6 +96,7 @@ impl Tally {
             open_faces: 0,
             sums: [0; SUMS],
             cosines: Default::default(),
+            fluctuating: None,
         }
     }
 
@@ -137,12 +140,16 @@ impl Tally {
                 self.sums[k] += exact_sum(&column[x0..x1], weights, scales.sums[k]);
             }
         }
-        for (c, row) in self.cosines.iter_mut().zip(rows.cosines()) {
-            match weights {
-                _ if row.is_empty() => {}
-                Some(weights) => c.add_weighted(&row[x0..x1], weights),
-                None => c.add_few(&row[x0..x1]),
-            }
+        let add = |c: &mut Cosine, row: &[T]| match weights {
+            _ if row.is_empty() => {}
+            Some(weights) => c.add_weighted(&row[x0..x1], weights),
+            None => c.add_few(&row[x0..x1]),
+        };
+        let [first @ .., j_fluct, u_fluct] = rows.cosines();
+        self.cosines.iter_mut().zip(first).for_each(|(c, row)| add(c, row));
+        if !j_fluct.is_empty() {
+            let pair = self.fluctuating.get_or_insert_default();
+            pair.iter_mut().zip([j_fluct, u_fluct]).for_each(|(c, row)| add(c, row));
         }
         if self.extras.is_empty() {
             self.extras.resize(scales.extras.len(), Extra { sum: 0, min: f64::INFINITY, max: f64::NEG_INFINITY });
@@ -202,12 +209,23 @@ impl Tally {
         for (a, b) in self.sums.iter_mut().zip(other.sums) {
             *a += b;
         }
+        if let Some(theirs) = &other.fluctuating {
+            let ours = self.fluctuating.get_or_insert_default();
+            ours.iter_mut().zip(theirs.iter()).for_each(|(a, b)| a.merge(b));
+        }
         for (a, b) in self.cosines.iter_mut().zip(&other.cosines) {
             // Fields that are not there leave theirs empty.
             if b.defined > 0 {
                 a.merge(b);
             }
         }
+    }
+
+    /// All cosines in the order of [`COSINES`].
+    pub fn all_cosines(&self) -> [Cosine; 5] {
+        let [a, b, c] = self.cosines.clone();
+        let [d, e] = self.fluctuating.as_deref().cloned().unwrap_or_default();
+        [a, b, c, d, e]
     }
 
     /// A sum over the cells, each weighted by its volume over that of the largest cell.

@@ -246,7 +246,7 @@ fn typed<T: Real>(
 
 fn inside_alignment(listed: &Tally, scales: &Scales) -> Alignment {
     Alignment {
-        cosines: listed.cosines.clone(),
+        cosines: listed.all_cosines(),
         lamb2: listed.sum(Sum::Lamb2, scales),
         u2w2: listed.sum(Sum::Speed2Vorticity2, scales),
         lorentz2: listed.sum(Sum::Lorentz2, scales),

@@ -47,7 +47,7 @@ fn bytes(o: &Outcome) -> Vec<u8> {
         for tally in [&f.listed, &f.dropped.1] {
             // Its coordinates and peak have no meaning.
             let sums = SUMMED.map(|s| tally.sum(s, &f.scales));
-            writeln!(all, "{} {sums:?} {} {:?}", tally.moments.count, tally.open_faces, tally.cosines).unwrap();
+            writeln!(all, "{} {sums:?} {} {:?}", tally.moments.count, tally.open_faces, tally.all_cosines()).unwrap();
         }
         f.rows.iter().for_each(|r| csv::push_row(&mut all, r));
     }
