@@ -35,6 +35,24 @@ pub fn check(grid: &Grid) -> Result<()> {
     Ok(())
 }
 
+/// Whether a filter does something to a grid and leaves something.
+///
+/// # Errors
+/// `Usage` when its width is larger than the box or smaller than a cell.
+pub fn check_width(grid: &Grid, filter: &Filter) -> Result<()> {
+    let axes = || (0..3).filter(|&a| grid.n[a] > 1);
+    let least = axes().map(|a| grid.spacing[a]).fold(f64::INFINITY, f64::min);
+    let most = axes().map(|a| grid.length(a)).fold(0.0, f64::max);
+    if filter.width >= least && filter.width <= most {
+        return Ok(());
+    }
+    Err(Error::usage("cannot filter")
+        .item(format!("\"{filter}\""))
+        .expected(format!("a width from {least}, one cell, to {most}, the box"))
+        .found(filter.width.to_string())
+        .hint(if filter.width < least { "a narrower filter changes nothing" } else { "a wider filter leaves nothing but the mean" }))
+}
+
 /// The factor of a wave of squared wavenumber `k2`.
 fn factor(filter: &Filter, k2: f64) -> f64 {
     match filter.shape {

@@ -10,12 +10,24 @@ use crate::model::source::Fields;
 pub use crate::space::runs::Connectivity;
 
 /// In which frame velocity is measured.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, Copy, PartialEq)]
 pub enum Frame {
     /// The frame of the box mean: its mean velocity is subtracted.
     Box,
     /// As stored.
     Stored,
+    /// A frame that moves with the given velocity, as for a part of a box whose mean is known.
+    Given([f64; 3]),
+}
+
+impl fmt::Display for Frame {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Frame::Box => write!(f, "box"),
+            Frame::Stored => write!(f, "stored"),
+            Frame::Given([u, v, w]) => write!(f, "{u},{v},{w}"),
+        }
+    }
 }
 
 /// Shape of a low-pass filter.

@@ -183,8 +183,8 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
                 .hint(format!("--derivative {} reads {fewest} samples", request.scheme.name())));
         }
     }
-    if request.filter.is_some() {
-        filter::check(&grid).map_err(|e| e.at(&snapshot.path))?;
+    if let Some(wanted) = &request.filter {
+        filter::check(&grid).and_then(|()| filter::check_width(&grid, wanted)).map_err(|e| e.at(&snapshot.path))?;
     }
     let Source { precision, width, costly, thickest, halo, spectral } = match &opened.source {
         AnySource::F32(s) => source(&**s, &families, request, execution),

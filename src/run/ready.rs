@@ -74,6 +74,7 @@ impl<T: Real> Ready<T> {
             Ready { source, grid, fields, families, ranges, buffers: Buffers::default(), plan, z_lines: None, stored_digest: None };
         if let Some(filter) = &request.filter {
             filter::check(&ready.grid)?;
+            filter::check_width(&ready.grid, filter)?;
             // Bad cells and the digest are those of what is stored.
             let (scan, _) = ready.pass(observe).survey(None, true, &[], 0)?;
             reject_bad_cells(&scan, snapshot)?;
@@ -110,7 +111,11 @@ pub(super) fn surveyed<T: Real>(
     let weight = weight(&ready.grid);
     let moving =
         request.frame == Frame::Box && families.iter().map(|f| &f.indicator).chain(&request.companions).any(|i| i.depends_on_frame());
-    let still = ready.deriver([0.0; 3], None);
+    let known = match request.frame {
+        Frame::Given(velocity) if fields.velocity => velocity,
+        _ => [0.0; 3],
+    };
+    let still = ready.deriver(known, None);
     let (mut scan, survey, frame) = if moving {
         // The mean must be known before an indicator that depends on it is surveyed.
         let (scan, _) = ready.pass(observe).survey(None, true, &families, companions)?;
@@ -122,7 +127,7 @@ pub(super) fn surveyed<T: Real>(
     } else {
         let (scan, survey) = ready.pass(observe).survey(Some(&still), true, &families, companions)?;
         reject_bad_cells(&scan, snapshot)?;
-        let frame = if request.frame == Frame::Box { whole::mean_velocity(&scan, weight, fields) } else { [0.0; 3] };
+        let frame = if request.frame == Frame::Box { whole::mean_velocity(&scan, weight, fields) } else { known };
         (scan, survey, frame)
     };
     reject_overflow::<T>(&survey_sums(&survey), snapshot)?;

@@ -6,7 +6,7 @@ use crate::export::hdf5::axes;
 use crate::export::json::number;
 use crate::math::stats::Cosine;
 use crate::model::object::{COSINES, Scales, Sum, Tally};
-use crate::model::request::{Frame, Indicator, Request, Surfaces};
+use crate::model::request::{Indicator, Request, Surfaces};
 use crate::model::statistics::{Alignment, GradientStats};
 use crate::read::{InputSpec, Staggering, Stretch};
 use crate::run::analysis::{Analysis, FamilyResult};
@@ -27,7 +27,7 @@ pub fn request(request: &Request, input: &InputSpec) -> Value {
         "resistivity": number(request.resistivity),
         "dissipation": number(request.dissipation),
         "kolmogorov_length": number(request.kolmogorov_length),
-        "frame": match request.frame { Frame::Box => "box", Frame::Stored => "stored" },
+        "frame": request.frame.to_string(),
         "derivative": request.scheme.name(),
         "filter": request.filter.map(|f| f.to_string()),
         "companions": names(&request.companions),

@@ -16,7 +16,8 @@ fn six_digits(v: f64) -> String {
 pub fn warnings(divergence: &[Divergence; 2], families: &[FamilyResult], fields: Fields, request: &Request) -> Vec<String> {
     let mut out = Vec::new();
     for (d, name) in divergence.iter().zip(["velocity", "magnetic field"]) {
-        if fields.compressible && name == "velocity" {
+        // Neither a compressible velocity nor B/√ρ is solenoidal.
+        if fields.compressible {
             continue;
         }
         if let (true, Some(r), Some(e)) = (d.is_suspicious(), d.ratio, d.explained) {
@@ -52,7 +53,8 @@ pub fn warnings(divergence: &[Divergence; 2], families: &[FamilyResult], fields:
             ));
         }
     }
-    if fields.velocity && fields.magnetic && request.viscosity.is_some() != request.resistivity.is_some() {
+    let stated = request.dissipation.is_some() || request.kolmogorov_length.is_some();
+    if !stated && fields.velocity && fields.magnetic && request.viscosity.is_some() != request.resistivity.is_some() {
         out.push("only one of viscosity and resistivity is given: columns in Kolmogorov lengths need both".to_string());
     }
     out
