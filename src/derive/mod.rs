@@ -61,6 +61,9 @@ pub struct Deriver<T> {
     z_lines: Option<Arc<ZLines<T>>>,
     pool: Pool<T>,
     periodic_z: bool,
+    /// Samples along x, y, z, and which axes end at faces.
+    n: [usize; 3],
+    open: [bool; 3],
     /// Subtracted from the velocity.
     frame: [T; 3],
     mean_field: Option<[T; 3]>,
@@ -114,6 +117,8 @@ impl<T: Real> Deriver<T> {
             z_lines: None,
             pool: Pool::default(),
             periodic_z: grid.periodic[2],
+            n: grid.n,
+            open: std::array::from_fn(|a| !grid.periodic[a] && !(a == 2 && grid.is_flat())),
             frame: frame.map(T::of),
             mean_field: mean_field.map(|m| m.map(T::of)),
             viscosity: T::of(viscosity.unwrap_or(1.0)),
@@ -151,6 +156,15 @@ impl<T: Real> Deriver<T> {
     /// Planes of halo that a periodic z-axis needs on each side.
     pub fn halo(&self) -> usize {
         if self.periodic_z { self.stencils[2].halo() } else { 0 }
+    }
+
+    /// The cells of row (y, z) whose stencils reach no open face.
+    pub fn inner(&self, y: usize, z: usize) -> Range<usize> {
+        let along = |a: usize| {
+            let (n, margin) = (self.n[a], if self.open[a] { self.stencils[a].halo() } else { 0 });
+            margin..n.saturating_sub(margin).max(margin)
+        };
+        if along(1).contains(&y) && along(2).contains(&z) { along(0) } else { 0..0 }
     }
 
     /// What has to be derived for rows that are needed so.

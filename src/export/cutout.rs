@@ -42,6 +42,13 @@ impl CutOut {
         if let Some(time) = found.time {
             file.number("time", time)?;
         }
+        if found.fields.velocity {
+            file.triple("frame_velocity", found.frame)?;
+        }
+        if found.fields.compressible {
+            // Without the density, which is not kept, a reader could not know.
+            file.number("compressible", 1u32)?;
+        }
         file.grid(&self.cut.grid(found.grid))?;
         for name in &self.datasets {
             file.planes(name, self.stored, self.cut.n)?;

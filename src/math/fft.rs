@@ -356,7 +356,9 @@ impl<T: Real + FftNum> Lines<T> for Planned<T> {
         let half = line.len() / 2 + 1;
         let zero = rustfft::num_complex::Complex::new(T::ZERO, T::ZERO);
         scratch.real.clear();
-        scratch.real.extend_from_slice(line);
+        // A large mean would cost digits of what varies.
+        let base = line[0];
+        scratch.real.extend(line.iter().map(|&v| v - base));
         scratch.lines.resize(half.max(scratch.lines.len()), zero);
         scratch.work.resize(self.work_len.max(scratch.work.len()), zero);
         let spectrum = &mut scratch.lines[..half];
@@ -386,14 +388,18 @@ impl<T: Real + FftNum> Lines<T> for Planned<T> {
             let here = first..(first + 2 * pairs).min(width);
             let count = here.len().div_ceil(2);
             let lines = &mut scratch.lines[..count * n];
+            // As in a row: each line is measured from its first value.
+            scratch.real.clear();
+            scratch.real.extend_from_slice(&from.map_or(&*to[0], |f| f[0])[here.clone()]);
+            let (bases, last_base) = scratch.real.as_chunks::<2>();
             for i in 0..n {
                 let row = &from.map_or(&*to[i], |f| f[i])[here.clone()];
                 let (both, single) = row.as_chunks::<2>();
                 for (b, &[re, im]) in both.iter().enumerate() {
-                    lines[b * n + i] = rustfft::num_complex::Complex::new(re, im);
+                    lines[b * n + i] = rustfft::num_complex::Complex::new(re - bases[b][0], im - bases[b][1]);
                 }
                 if let [last] = single {
-                    lines[(count - 1) * n + i] = rustfft::num_complex::Complex::new(*last, T::ZERO);
+                    lines[(count - 1) * n + i] = rustfft::num_complex::Complex::new(*last - last_base[0], T::ZERO);
                 }
             }
             self.forward.process_with_scratch(lines, &mut scratch.work);

@@ -1,5 +1,7 @@
 //! Sums that do not depend on the order of addition, row sums in a fixed order, cosine histograms, quantile histograms.
 
+use std::collections::BTreeMap;
+
 use crate::base::real::Real;
 
 /// Bins of a cosine histogram over [-1, 1].
@@ -316,56 +318,75 @@ fn digest<T: Real>(part: &[T], slots: &mut [u64]) -> (i64, i64, u32) {
 
 /// Bits of the mantissa a [`Quantiles`] bin keeps: bins are 2^-12 of the value wide.
 const MANTISSA_BITS: u32 = 12;
+/// Bins of one sign and power of two.
+const PAGE: usize = 1 << MANTISSA_BITS;
 
 /// Counts of values in bins of constant relative width, for levels by volume fraction in one pass.
 ///
-/// Positive and negative magnitudes from 2^-126 to 2^128 have their own bins; a level read from it is off by at most one
-/// bin, a relative 2^-12 = 2.5e-4, and is the same for any order of the values.
-#[derive(Debug, Clone, PartialEq, Eq)]
+/// Every sign and power of two has its own bins, made when the first value falls into it; a level read from them is off by at most
+/// one bin, a relative 2^-12 = 2.5e-4, and is the same for any order of the values.
+#[derive(Debug, Clone, PartialEq, Eq, Default)]
 pub struct Quantiles {
-    bins: Vec<u64>,
-}
-
-impl Default for Quantiles {
-    fn default() -> Self {
-        Quantiles { bins: vec![0; 1 << (9 + MANTISSA_BITS)] }
-    }
+    /// By the sign and exponent of the value, ascending.
+    pages: BTreeMap<u16, Box<[u64; PAGE]>>,
 }
 
 impl Quantiles {
-    /// Order-preserving bin of a value.
+    /// Order-preserving page and bin of a value.
     #[inline(always)]
-    fn bin(v: f64) -> usize {
-        let bits = (v as f32).to_bits();
-        let ordered = if bits >> 31 == 1 { !bits } else { bits | 0x8000_0000 };
-        (ordered >> (23 - MANTISSA_BITS)) as usize
+    fn place(v: f64) -> (u16, usize) {
+        // -0 belongs with 0.
+        let bits = (v + 0.0).to_bits();
+        let ordered = if bits >> 63 == 1 { !bits } else { bits | 1 << 63 };
+        ((ordered >> 52) as u16, (ordered >> (52 - MANTISSA_BITS)) as usize % PAGE)
     }
 
-    /// Lower edge of a bin.
-    fn edge(bin: usize) -> f64 {
-        let ordered = (bin as u32) << (23 - MANTISSA_BITS);
-        let bits = if ordered >> 31 == 1 { ordered & 0x7fff_ffff } else { !ordered };
-        f64::from(f32::from_bits(bits))
+    /// Lower edge of a bin; that of the bin after a page's last begins the next page.
+    fn edge(page: u16, bin: usize) -> f64 {
+        let ordered = (u64::from(page) << 52) + ((bin as u64) << (52 - MANTISSA_BITS));
+        let bits = if ordered >> 63 == 1 { ordered & !(1 << 63) } else { !ordered };
+        f64::from_bits(bits)
+    }
+
+    fn count(&mut self, v: f64, weight: u64) {
+        let (page, bin) = Self::place(v);
+        self.pages.entry(page).or_insert_with(|| Box::new([0; PAGE]))[bin] += weight;
     }
 
     /// Counts the values of a row.
     pub fn add<T: Real>(&mut self, row: &[T]) {
-        for v in row {
-            self.bins[Self::bin(v.wide())] += 1;
+        // Neighbours mostly share their page, which is looked up only when it changes.
+        let mut rest = row;
+        while let Some(first) = rest.first() {
+            let (page, _) = Self::place(first.wide());
+            let bins = self.pages.entry(page).or_insert_with(|| Box::new([0; PAGE]));
+            let mut taken = 0;
+            for v in rest {
+                let (own, bin) = Self::place(v.wide());
+                if own != page {
+                    break;
+                }
+                bins[bin] += 1;
+                taken += 1;
+            }
+            rest = &rest[taken..];
         }
     }
 
     /// Counts the values of a row of cells of unequal volume; weights lie between 0 and 1 and are kept to 2^-24.
     pub fn add_weighted<T: Real>(&mut self, row: &[T], weights: &[f64]) {
         for (v, w) in row.iter().zip(weights) {
-            self.bins[Self::bin(v.wide())] += (w * f64::from(1 << 24)).round() as u64;
+            self.count(v.wide(), (w * f64::from(1 << 24)).round() as u64);
         }
     }
 
     /// Adds other counts.
     pub fn merge(&mut self, other: &Quantiles) {
-        for (a, b) in self.bins.iter_mut().zip(&other.bins) {
-            *a += b;
+        for (page, theirs) in &other.pages {
+            let ours = self.pages.entry(*page).or_insert_with(|| Box::new([0; PAGE]));
+            for (a, b) in ours.iter_mut().zip(theirs.iter()) {
+                *a += b;
+            }
         }
     }
 
@@ -374,20 +395,22 @@ impl Quantiles {
     /// # Panics
     /// When nothing was counted.
     pub fn level_above(&self, fraction: f64) -> f64 {
-        let total: u64 = self.bins.iter().sum();
+        let bins = || self.pages.iter().flat_map(|(page, bins)| bins.iter().enumerate().map(|(b, n)| (*page, b, *n)));
+        let total: u64 = bins().map(|(_, _, n)| n).sum();
         assert!(total > 0, "expected at least one value, got none");
         let wanted = fraction * total as f64;
-        let mut above = 0u64;
-        for b in (0..self.bins.len()).rev() {
-            let here = self.bins[b];
-            if here > 0 && (above + here) as f64 >= wanted {
-                let (low, high) = (Self::edge(b), Self::edge(b + 1));
+        // From below: what lies above is the rest.
+        let (mut above, mut level) = (total, f64::NAN);
+        for (page, bin, here) in bins().filter(|(_, _, n)| *n > 0) {
+            above -= here;
+            if (above as f64) < wanted {
+                let (low, high) = (Self::edge(page, bin), Self::edge(page, bin + 1));
                 let share = ((wanted - above as f64) / here as f64).clamp(0.0, 1.0);
                 return high - share * (high - low);
             }
-            above += here;
+            level = Self::edge(page, bin);
         }
-        Self::edge(self.bins.iter().position(|&n| n > 0).unwrap_or(0))
+        level
     }
 }
 
@@ -434,5 +457,14 @@ mod tests {
             let exact = 1.0 - 2.0 * fraction;
             assert!((q.level_above(fraction) - exact).abs() < 4e-4, "{fraction}: {}", q.level_above(fraction));
         }
+        // Far outside the range of single precision.
+        for scale in [1e-200, 1e200] {
+            let mut far = Quantiles::default();
+            far.add(&v.iter().map(|x| x * scale).collect::<Vec<f64>>());
+            assert!((far.level_above(0.3) / scale - 0.4).abs() < 4e-4, "{}", far.level_above(0.3));
+        }
+        let mut zeros = Quantiles::default();
+        zeros.add(&[0.0f32, -0.0, 0.0]);
+        assert!(zeros.level_above(0.5).abs() < 1e-300);
     }
 }

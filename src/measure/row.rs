@@ -37,6 +37,8 @@ pub struct Context {
     pub strain2: f64,
     /// Box sum of |j|² over cells.
     pub current2: f64,
+    /// On a plane, whether velocity and magnetic field lie in it: their cosines with a curl are then 0 by themselves.
+    pub in_plane: [bool; 2],
     /// Whether there is a mean magnetic field to take off.
     pub guide: bool,
     /// Indicators with columns of their own.
@@ -117,6 +119,8 @@ fn identity(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
 /// Sets what comes from the moments; returns the extents over the axes along which the object is finite.
 fn moments(c: &Context, object: &Object, r: &mut Row) -> [f64; 3] {
     let g = &c.grid;
+    // On a plane nothing has a place or a direction across it.
+    let dimensions = if g.is_flat() { 2 } else { 3 };
     // Where cells differ in volume, positions are weighted by it.
     let (centre, mut covariance) = match &object.tally.weighted {
         Some(w) => {
@@ -132,12 +136,12 @@ fn moments(c: &Context, object: &Object, r: &mut Row) -> [f64; 3] {
         }
     };
     for (a, col) in [Col::CentroidX, Col::CentroidY, Col::CentroidZ].into_iter().enumerate() {
-        r.number(col, (!object.spans[a]).then_some(centre[a]));
+        r.number(col, (!object.spans[a] && a < dimensions).then_some(centre[a]));
     }
     let peak = c.grid.coordinates(object.tally.peak_cell);
     r.number(Col::Peak, Some(object.tally.peak));
     for (a, col) in [Col::PeakX, Col::PeakY, Col::PeakZ].into_iter().enumerate() {
-        r.number(col, Some(c.grid.position(a, peak[a] as f64)));
+        r.number(col, (a < dimensions).then(|| c.grid.position(a, peak[a] as f64)));
     }
     let closed = object.spans.iter().any(|&s| s);
     // Moments along an axis on which the object closes on itself mean nothing; the others still tell its section.
@@ -157,11 +161,10 @@ fn moments(c: &Context, object: &Object, r: &mut Row) -> [f64; 3] {
         (Col::Extent2, Col::Extent2Eta, [Col::Axis2X, Col::Axis2Y, Col::Axis2Z]),
         (Col::Extent3, Col::Extent3Eta, [Col::Axis3X, Col::Axis3Y, Col::Axis3Z]),
     ];
-    let dimensions = if g.is_flat() { 2 } else { 3 };
     for (k, (extent, in_eta, axis)) in columns.into_iter().enumerate().take(dimensions) {
         r.number(extent, Some(extents[k]));
         r.number(in_eta, c.kolmogorov_length.map(|l| extents[k] / l));
-        for (a, col) in axis.into_iter().enumerate() {
+        for (a, col) in axis.into_iter().enumerate().take(dimensions) {
             r.number(col, Some(axes[k][a]));
         }
     }
@@ -179,26 +182,30 @@ fn sums(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
         let strain2 = sum(Sum::Strain2);
         r.number(Col::DissipationViscous, c.viscosity.map(|nu| 2.0 * nu * strain2 * volume));
         r.number(Col::ViscousShare, ratio(strain2, c.strain2));
-        r.number(Col::LambSin2, ratio(sum(Sum::Lamb2), sum(Sum::Speed2Vorticity2)));
+        if !c.in_plane[0] {
+            r.number(Col::LambSin2, ratio(sum(Sum::Lamb2), sum(Sum::Speed2Vorticity2)));
+        }
     }
     if c.fields.magnetic {
         let current2 = sum(Sum::Current2);
         r.number(Col::DissipationOhmic, c.resistivity.map(|eta| eta * current2 * volume));
         r.number(Col::OhmicShare, ratio(current2, c.current2));
-        r.number(Col::LorentzSin2, ratio(sum(Sum::Lorentz2), sum(Sum::Current2Field2)));
-        if c.guide {
+        if !c.in_plane[1] {
+            r.number(Col::LorentzSin2, ratio(sum(Sum::Lorentz2), sum(Sum::Current2Field2)));
+        }
+        if c.guide && !c.in_plane[1] {
             r.number(Col::LorentzSin2Fluct, ratio(sum(Sum::Lorentz2Fluct), sum(Sum::Current2Field2Fluct)));
         }
     }
-    let undirected =
-        (c.fields.velocity && r.get(Col::LambSin2) == &Value::Missing) || (c.fields.magnetic && r.get(Col::LorentzSin2) == &Value::Missing);
+    let undirected = (c.fields.velocity && !c.in_plane[0] && r.get(Col::LambSin2) == &Value::Missing)
+        || (c.fields.magnetic && !c.in_plane[1] && r.get(Col::LorentzSin2) == &Value::Missing);
     if undirected {
         flags.push("undefined_direction");
     }
 }
 
 fn alignment(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
-    let present = [c.fields.velocity, c.fields.magnetic, c.fields.velocity && c.fields.magnetic];
+    let present = [c.fields.velocity && !c.in_plane[0], c.fields.magnetic && !c.in_plane[1], c.fields.velocity && c.fields.magnetic];
     let columns = [
         [Col::CosUVorticity, Col::AbsCosUVorticity, Col::AlignedUVorticity, Col::HistogramUVorticity],
         [Col::CosCurrentB, Col::AbsCosCurrentB, Col::AlignedCurrentB, Col::HistogramCurrentB],
@@ -217,8 +224,10 @@ fn alignment(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
     }
     if c.guide {
         let [.., current, flow] = object.tally.all_cosines();
-        r.number(Col::CosCurrentBFluct, current.mean());
-        r.number(Col::AbsCosCurrentBFluct, current.abs_mean());
+        if !c.in_plane[1] {
+            r.number(Col::CosCurrentBFluct, current.mean());
+            r.number(Col::AbsCosCurrentBFluct, current.abs_mean());
+        }
         r.number(Col::CosUBFluct, flow.mean());
         r.number(Col::AbsCosUBFluct, flow.abs_mean());
     }

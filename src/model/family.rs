@@ -75,8 +75,8 @@ pub struct Family {
     pub down_to: Option<Level>,
 }
 
-/// The level that peaks must exceed where a family says only `F peak`.
-pub const PEAKS_BEYOND: Level = Level::Rms(3.0);
+/// The multiple of the rms that peaks must exceed where a family says only `F peak`.
+pub const PEAKS_BEYOND: f64 = 3.0;
 
 /// How the cells of an object follow from levels.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -134,7 +134,10 @@ impl Family {
     /// How objects follow from the levels.
     pub fn extent(&self) -> Extent {
         match (self.level, self.down_to) {
-            (Level::Peak(fraction), _) => Extent::FromPeaks { inner: PEAKS_BEYOND, fraction },
+            (Level::Peak(fraction), _) => {
+                let sign = if self.side == Side::Above { 1.0 } else { -1.0 };
+                Extent::FromPeaks { inner: Level::Rms(sign * PEAKS_BEYOND), fraction }
+            }
             (inner, Some(Level::Peak(fraction))) => Extent::FromPeaks { inner, fraction },
             (inner, Some(outer)) => Extent::Grown { inner, outer },
             (level, None) => Extent::Single(level),
@@ -289,6 +292,7 @@ mod tests {
     fn extents_follow_the_words() {
         let of = |text: &str| Family::parse(text).unwrap().extent();
         assert_eq!(of("a: q > 0.5 peak"), Extent::FromPeaks { inner: Level::Rms(3.0), fraction: 0.5 });
+        assert_eq!(of("a: lambda2 < 0.5 peak"), Extent::FromPeaks { inner: Level::Rms(-3.0), fraction: 0.5 });
         assert_eq!(of("a: q > 2 down to 0.5 peak"), Extent::FromPeaks { inner: Level::Absolute(2.0), fraction: 0.5 });
         assert_eq!(of("a: q > 2 down to 1 rms"), Extent::Grown { inner: Level::Absolute(2.0), outer: Level::Rms(1.0) });
     }

@@ -135,7 +135,7 @@ pub const INDICATORS: [IndicatorInfo; 25] = [
         Indicator::PressureLaplacian,
         "pressure_laplacian",
         "1/T^2",
-        "Laplacian of pressure over density, 2 Q (solenoidal flow).",
+        "Laplacian of pressure over density in solenoidal flow, 2 Q with Q as there.",
         "divergence of the Navier-Stokes equation",
     ),
 ];

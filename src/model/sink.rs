@@ -23,6 +23,8 @@ pub struct FamilyObjects<'a> {
     pub fields: Fields,
     /// Storage precision, `f32` or `f64`.
     pub precision: &'static str,
+    /// Velocity that was subtracted.
+    pub frame: [f64; 3],
     /// Time of the snapshot, where known.
     pub time: Option<f64>,
     /// Its objects, by id.

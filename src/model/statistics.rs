@@ -61,11 +61,11 @@ pub struct GradientStats {
     pub strain2: f64,
     /// Largest S:S.
     pub strain2_max: f64,
-    /// Sum of the squared divergence.
+    /// Sum of the squared divergence over cells whose stencils reach no open face: near one the scheme has nothing to compare with.
     pub div2: f64,
-    /// Sum of the squared divergence over the sampled rows.
-    pub div2_sampled: f64,
-    /// Sum of (divergence by the scheme minus that by its comparison)² over the sampled rows.
+    /// Volume of those cells over that of the largest cell.
+    pub div_weight: f64,
+    /// Sum over the sampled rows of the squared difference that the scheme's comparison makes in the divergence, of the same cells.
     pub div_miss2: f64,
     /// Number of sampled cells.
     pub sampled: u64,
@@ -79,7 +79,7 @@ impl GradientStats {
         self.strain2 += o.strain2;
         self.strain2_max = self.strain2_max.max(o.strain2_max);
         self.div2 += o.div2;
-        self.div2_sampled += o.div2_sampled;
+        self.div_weight += o.div_weight;
         self.div_miss2 += o.div_miss2;
         self.sampled += o.sampled;
     }

@@ -14,7 +14,7 @@ use crate::model::statistics::{Alignment, GradientLoss, Scan, Survey};
 use crate::run::criteria::criteria;
 use crate::run::passes::ShapePlan;
 use crate::run::ready::{Ready, reject_overflow, surveyed};
-use crate::run::warnings::warnings;
+use crate::run::warnings::{round_off, warnings};
 use crate::run::whole;
 use crate::space::grid::Grid;
 use crate::survey::levels::Divergence;
@@ -181,7 +181,7 @@ fn typed<T: Real>(
             pass.split(&deriver, &criteria[k], fraction, regions, request.min_cells)?;
         }
     }
-    pass.offer(&deriver, &families, &criteria, &found, snapshot.time, sink)?;
+    pass.offer(&deriver, &families, &criteria, &found, frame, snapshot.time, sink)?;
     let extras = request.extras();
     let plan = ShapePlan {
         max_cells: request.max_object_cells,
@@ -199,6 +199,8 @@ fn typed<T: Real>(
     let divergence = whole::divergences::<T>(&scan, &survey, &grid, fields);
     let gradient_loss = spectra::loss(&scan.lines, &grid, fields, request.scheme);
     let kolmogorov_length = whole::kolmogorov(&survey, fields, request);
+    let across = |first: usize| scan.components.get(first + 2).is_some_and(|c| c.min == 0.0 && c.max == 0.0);
+    let in_plane = [fields.velocity && grid.is_flat() && across(0), fields.magnetic && grid.is_flat() && across(fields.first_magnetic())];
     let mut results = Vec::new();
     for (((family, criterion), detected), shapes) in families.iter().zip(&criteria).zip(found).zip(shapes) {
         let context = Context {
@@ -211,6 +213,7 @@ fn typed<T: Real>(
             viscosity: whole::effective_viscosity(&survey, fields, request),
             resistivity: request.resistivity,
             kolmogorov_length,
+            in_plane,
             guide: mean_field.is_some(),
             companions: request.companions.clone(),
             strain2: survey.velocity.strain2,
@@ -223,6 +226,7 @@ fn typed<T: Real>(
     }
     let mut warnings = warnings(&divergence, &results, fields, request);
     warnings.splice(0..0, deriver.fallbacks().iter().cloned());
+    warnings.extend(round_off(&results, &survey, T::EPSILON));
     for w in &warnings {
         observe.warning(&format!("{}: {w}", snapshot.name));
     }

@@ -47,6 +47,7 @@ impl<T: Real> Pass<'_, T> {
         families: &[Family],
         criteria: &[Criterion],
         found: &[Detected],
+        frame: [f64; 3],
         time: Option<f64>,
         sink: &mut (dyn ObjectSink + Send),
     ) -> Result<()> {
@@ -55,7 +56,8 @@ impl<T: Real> Pass<'_, T> {
         let mut wanted = Vec::new();
         for (index, ((family, criterion), detected)) in families.iter().zip(criteria).zip(found).enumerate() {
             let level = criterion.level;
-            let offered = FamilyObjects { index, family, level, grid: &grid, fields, precision: T::NAME, time, objects: &detected.objects };
+            let offered =
+                FamilyObjects { index, family, level, grid: &grid, fields, precision: T::NAME, frame, time, objects: &detected.objects };
             wanted.extend(sink.objects(&offered)?.into_iter().map(|cut| Wanted { family: index, cut }));
         }
         if wanted.is_empty() { Ok(()) } else { self.cut_outs(deriver, &wanted, sink) }

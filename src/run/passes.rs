@@ -111,7 +111,7 @@ impl<T: Real> Pass<'_, T> {
                             let need = Need { truncation: sampled, extras: companions > 0, ..SURVEY };
                             deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);
                             grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
-                            moments::add_row(&mut part, &scratch.rows, sampled);
+                            moments::add_row(&mut part, &scratch.rows, sampled, deriver.inner(y, z));
                             for (q, row) in counts.iter_mut().zip(&scratch.rows.indicators) {
                                 match (q, scratch.rows.weights.as_slice()) {
                                     (None, _) => {}

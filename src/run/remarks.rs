@@ -11,7 +11,10 @@ pub fn remarks(parts: &[Part]) -> Vec<String> {
     let request = &first.what["request"];
     let families: Vec<&str> =
         parts.iter().flat_map(|p| list(&p.what["snapshot"]["families"])).filter_map(|f| f["definition"].as_str()).collect();
-    if families.iter().any(|f| f.contains(" rms") || f.contains("peak")) {
+    // The level stands behind the sign; a peak fraction alone means peaks beyond 3 rms.
+    let level = |f: &&str| f.split(['>', '<']).next_back().unwrap_or_default().split_whitespace().map(String::from).collect::<Vec<_>>();
+    let by_rms = |f: &&str| level(f).iter().any(|w| w == "rms" || w == "run-rms") || level(f).get(1).is_some_and(|w| w == "peak");
+    if families.iter().any(by_rms) {
         out.push("rms: root of the volume mean of the square in each snapshot; for vectors, of the squared magnitude".to_string());
     }
     for (family, rms) in request["run_rms"].as_object().into_iter().flatten() {
@@ -22,13 +25,23 @@ pub fn remarks(parts: &[Part]) -> Vec<String> {
     }
     let guide = range(parts, |s| s["mean_field"]["over_fluctuations"].as_f64());
     if let Some((low, high)) = guide {
-        out.push(format!("mean over fluctuating magnetic field: {}", span(low, high)));
+        out.push(format!("|<b>|/b', mean over rms fluctuation of the magnetic field (b' of the vector's magnitude): {}", span(low, high)));
     }
     let scheme = request["derivative"].as_str().unwrap_or_default();
     for (key, name) in [("velocity", "velocity"), ("magnetic", "magnetic field")] {
-        if let Some((low, high)) = range(parts, |s| s[key]["gradient_variance_lost"].as_f64()) {
-            let percent = |v: f64| 100.0 * v;
-            out.push(format!("gradient variance of the {name} that {scheme} loses: {} %", span(percent(low), percent(high))));
+        let there = parts.iter().any(|p| !p.what["snapshot"][key].is_null());
+        match range(parts, |s| s[key]["gradient_variance_lost"].as_f64()) {
+            Some((low, high)) => {
+                let percent = |v: f64| 100.0 * v;
+                out.push(format!(
+                    "gradient variance of the {name} that {scheme} loses, from sampled lines: {} %",
+                    span(percent(low), percent(high))
+                ));
+            }
+            None if there => {
+                out.push(format!("gradient variance of the {name} that {scheme} loses: not to be told without a periodic axis"))
+            }
+            None => {}
         }
     }
     out
@@ -45,8 +58,11 @@ fn range(parts: &[Part], of: impl Fn(&Value) -> Option<f64>) -> Option<(f64, f64
     })
 }
 
-/// Three significant digits.
+/// Three significant digits; 0 for what round-off leaves.
 fn short(v: f64) -> String {
+    if v.abs() < 1e-10 {
+        return "0".to_string();
+    }
     let rounded: f64 = format!("{v:.2e}").parse().unwrap_or(v);
     if rounded == 0.0 || (1e-3..1e5).contains(&rounded.abs()) { format!("{rounded}") } else { format!("{rounded:e}") }
 }
@@ -64,5 +80,6 @@ mod tests {
     fn numbers_are_short() {
         assert_eq!(span(0.012_345, 0.012_349), "0.0123");
         assert_eq!(span(1e-9, 12.0), "1e-9 to 12");
+        assert_eq!(span(1e-17, 0.5), "0 to 0.5");
     }
 }

@@ -82,6 +82,8 @@ fn reading(input: &InputSpec) -> Value {
 pub fn conventions() -> Value {
     json!({
         "rms": "root of the volume mean of the square; of the magnitude for vectors",
+        "mean_field": "over_fluctuations is |<b>| over the root of <|b - <b>|^2>, of the whole vector, not of one component",
+        "filter": "sharp: wavenumbers |k| <= pi / width kept; gaussian: exp(-k^2 width^2 / 24); of the fields as derived from, b after division by the root of a density",
         "run_rms": "root of the mean over snapshots of that mean square",
         "volume": "level read from counts in bins a relative 2^-12 wide: at most one bin off",
         "peak": "cells in descending order belong to the slope of their highest neighbour; a lower peak joins a higher one across a saddle \

@@ -81,13 +81,13 @@ pub fn divergences<T: Real>(scan: &Scan, survey: &Survey, grid: &Grid, fields: F
     ]
 }
 
-/// The Kolmogorov length: as given, else (ν³/ε)^¼ with ε as given, else with ε = 2ν⟨S:S⟩ + η⟨|j|²⟩; missing where a coefficient
+/// The Kolmogorov length: as given, else (ν³/ε)^¼ with ε as given (and ν effective, where it is not), else with ε = 2ν⟨S:S⟩ + η⟨|j|²⟩; missing where a coefficient
 /// that belongs to the total is unknown.
 pub fn kolmogorov(survey: &Survey, fields: Fields, request: &Request) -> Option<f64> {
     if request.kolmogorov_length.is_some() {
         return request.kolmogorov_length;
     }
-    let nu = request.viscosity.filter(|_| fields.velocity)?;
+    let nu = effective_viscosity(survey, fields, request).filter(|_| fields.velocity)?;
     let n = survey.weight;
     let from_gradients = || {
         let ohmic = if fields.magnetic { request.resistivity? * survey.magnetic.curl2 / n } else { 0.0 };

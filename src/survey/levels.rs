@@ -17,10 +17,12 @@ pub fn absolute<T: Real>(level: Level, side: Side, stats: &IndicatorStats, n: f6
         Level::Peak(_) => f64::NAN,
         Level::Mean(v) => v * stats.sum / n,
         Level::Volume(fraction) => stats.quantiles.as_ref().map_or(f64::NAN, |q| {
-            q.level_above(match side {
+            // A bin reaches beyond the values in it.
+            let level = q.level_above(match side {
                 Side::Above => fraction,
                 Side::Below => 1.0 - fraction,
-            })
+            });
+            level.clamp(stats.min, stats.max)
         }),
     };
     T::of(level).wide()
@@ -56,7 +58,7 @@ pub fn divergence<T: Real>(g: &GradientStats, weight: f64, rms: f64, spacing: f6
     if curl == 0.0 || g.sampled == 0 {
         return Divergence { ratio: None, explained: None };
     }
-    let div = (g.div2 / weight).sqrt();
+    let div = (g.div2 / g.div_weight).sqrt();
     let miss = (g.div_miss2 / g.sampled as f64).sqrt();
     let floor = ROUND_OFF_FACTOR * T::EPSILON * rms / spacing;
     Divergence { ratio: Some(div / curl), explained: Some((TRUNCATION_FACTOR * miss + floor) / curl) }

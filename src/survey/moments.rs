@@ -1,5 +1,7 @@
 //! Sums of gradient quantities and indicators over the box, added up row by row, tile by tile, plane by plane in a fixed order.
 
+use std::ops::Range;
+
 use crate::base::real::Real;
 use crate::math::stats::{row_max, row_square_sum, row_stats, row_sum, weighted_square_sum, weighted_sum};
 use crate::model::request::Family;
@@ -15,11 +17,13 @@ pub fn empty(families: &[Family], companions: usize) -> Survey {
     Survey { indicators: vec![indicator.clone(); families.len()], extras: vec![indicator; companions], ..Survey::default() }
 }
 
-/// Adds one derived row. `sampled` rows carry the truncation measure.
-pub fn add_row<T: Real>(survey: &mut Survey, rows: &Rows<T>, sampled: bool) {
+/// Adds one derived row. `sampled` rows carry the truncation measure; the divergence is judged in the cells `inner`.
+pub fn add_row<T: Real>(survey: &mut Survey, rows: &Rows<T>, sampled: bool, inner: Range<usize>) {
     let w = &rows.weights;
-    gradient(&mut survey.velocity, &rows.w2, Some(&rows.strain2), &rows.div_u, &rows.div_u_miss, w, sampled);
-    gradient(&mut survey.magnetic, &rows.j2, None, &rows.div_b, &rows.div_b_miss, w, sampled);
+    gradient(&mut survey.velocity, &rows.w2, Some(&rows.strain2), w);
+    gradient(&mut survey.magnetic, &rows.j2, None, w);
+    divergence(&mut survey.velocity, &rows.div_u, &rows.div_u_miss, w, sampled, inner.clone());
+    divergence(&mut survey.magnetic, &rows.div_b, &rows.div_b_miss, w, sampled, inner);
     let mut cells = rows.w2.len().max(rows.j2.len());
     let extras = survey.extras.iter_mut().zip(&rows.extras);
     for (s, row) in survey.indicators.iter_mut().zip(&rows.indicators).chain(extras) {
@@ -34,7 +38,7 @@ pub fn add_row<T: Real>(survey: &mut Survey, rows: &Rows<T>, sampled: bool) {
     survey.weight += if w.is_empty() { cells as f64 } else { w.iter().sum() };
 }
 
-fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, div: &[T], miss: &[T], weights: &[f64], sampled: bool) {
+fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, weights: &[f64]) {
     if curl2.is_empty() {
         return;
     }
@@ -45,12 +49,23 @@ fn gradient<T: Real>(g: &mut GradientStats, curl2: &[T], strain2: Option<&[T]>, 
         g.strain2 += sum(s);
         g.strain2_max = g.strain2_max.max(row_max(s));
     }
-    let div2 = if weights.is_empty() { row_square_sum(div) } else { weighted_square_sum(div, weights) };
-    g.div2 += div2;
+}
+
+fn divergence<T: Real>(g: &mut GradientStats, div: &[T], miss: &[T], weights: &[f64], sampled: bool, inner: Range<usize>) {
+    if div.is_empty() || inner.is_empty() {
+        return;
+    }
+    let cells = inner.len();
+    if weights.is_empty() {
+        g.div2 += row_square_sum(&div[inner.clone()]);
+        g.div_weight += cells as f64;
+    } else {
+        g.div2 += weighted_square_sum(&div[inner.clone()], &weights[inner.clone()]);
+        g.div_weight += weights[inner.clone()].iter().sum::<f64>();
+    }
     if sampled {
-        g.div2_sampled += div2;
-        g.div_miss2 += row_square_sum(miss);
-        g.sampled += div.len() as u64;
+        g.div_miss2 += row_square_sum(&miss[inner]);
+        g.sampled += cells as u64;
     }
 }
 

@@ -15,8 +15,8 @@ use crate::space::slab::Block;
 const STRIDE: usize = 8;
 /// Lines of a component and axis at most.
 const MOST_LINES: usize = 1024;
-/// Fewer are not left, where there are as many.
-const FEWEST_LINES: usize = 16;
+/// Fewer are not left, where there are as many: small boxes are sampled more densely.
+const FEWEST_LINES: usize = 1024;
 /// Values of a component that are kept for its z-lines at most.
 const MOST_VALUES: usize = 1 << 20;
 /// Power of the changes along lines, over that of their mean, that transforms in double precision make of constants.
@@ -52,6 +52,11 @@ fn strides(a: usize, b: usize, most: usize) -> [usize; 2] {
     [s, s]
 }
 
+/// First line of a plane: shifted from plane to plane, so that lines do not stand behind each other.
+fn shift(z: usize, strides: [usize; 2]) -> usize {
+    z / strides[1] * 3 % strides[0]
+}
+
 impl<T: Real> SpectraSum<T> {
     /// A sum for a grid with so many components.
     pub fn new(grid: &Grid, components: usize) -> Self {
@@ -75,10 +80,11 @@ impl<T: Real> SpectraSum<T> {
             let planes: Vec<usize> = block.z.clone().filter(|z| z % strides[1] == 0).collect();
             let length = self.n[a] / 2 + 1;
             let parts = par::map_range(planes.len() * self.components, |i| {
-                let plane = block.plane(i % self.components, planes[i / self.components] as isize);
+                let z = planes[i / self.components];
+                let plane = block.plane(i % self.components, z as isize);
                 let mut sum = vec![0.0; length];
                 let (mut line, mut scratch) = (Vec::new(), LineScratch::default());
-                for at in (0..across).step_by(strides[0]) {
+                for at in (shift(z, *strides)..across).step_by(strides[0]) {
                     line.clear();
                     if a == 0 {
                         line.extend(plane[at * nx..(at + 1) * nx].iter().map(|v| v.wide()));
@@ -92,7 +98,7 @@ impl<T: Real> SpectraSum<T> {
             for (i, part) in parts.iter().enumerate() {
                 add(&mut self.power[i % self.components][a], part);
             }
-            self.lines[a] += (planes.len() * across.div_ceil(strides[0])) as u64;
+            self.lines[a] += planes.iter().map(|&z| (across - shift(z, *strides)).div_ceil(strides[0]) as u64).sum::<u64>();
         }
         if let Some((_, strides)) = &self.axes[2] {
             for z in block.z.clone() {

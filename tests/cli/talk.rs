@@ -12,7 +12,7 @@ fn the_overview_is_all_of_standard_output() {
     assert_eq!(lines[0], "snapshot         family             level  objects   volume dissipation  classes");
     assert!(lines[1].starts_with("good             v "), "{}", lines[1]);
     assert!(lines[2].starts_with("rms: root of the volume mean of the square"), "{}", lines[2]);
-    assert!(lines[3].starts_with("gradient variance of the velocity that fd8 loses: "), "{}", lines[3]);
+    assert!(lines[3].starts_with("gradient variance of the velocity that fd8 loses, from sampled lines: "), "{}", lines[3]);
     assert_eq!(lines[4], "ropewalk-run");
     let rows = place.read("ropewalk-run/catalogue.csv").lines().count() - 1;
     let told: usize = lines[1].split_whitespace().nth(3).and_then(|n| n.parse().ok()).expect("a number of objects");
