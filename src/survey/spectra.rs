@@ -16,7 +16,7 @@ const STRIDE: usize = 8;
 /// Lines of a component and axis at most.
 const MOST_LINES: usize = 1024;
 /// Fewer are not left, where there are as many: small boxes are sampled more densely.
-const FEWEST_LINES: usize = 1024;
+const FEWEST_LINES: usize = 512;
 /// Values of a component that are kept for its z-lines at most.
 const MOST_VALUES: usize = 1 << 20;
 /// Power of the changes along lines, over that of their mean, that transforms in double precision make of constants.
@@ -46,7 +46,7 @@ fn strides(a: usize, b: usize, most: usize) -> [usize; 2] {
     while count(s) > most.max(1) {
         s += 1;
     }
-    while s > 1 && count(s) < FEWEST_LINES {
+    while s > 1 && count(s) < FEWEST_LINES && count(s - 1) <= most.max(1) {
         s -= 1;
     }
     [s, s]
