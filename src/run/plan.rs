@@ -180,7 +180,7 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
                 .item(format!("{axis} axis"))
                 .expected(format!("at least {fewest} samples"))
                 .found(grid.n[a].to_string())
-                .hint(format!("--derivative {} reads {fewest} samples", request.scheme.name())));
+                .hint(format!("--derivative {} and the measure of its error read {fewest} samples", request.scheme.name())));
         }
     }
     if let Some(wanted) = &request.filter {

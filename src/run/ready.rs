@@ -53,7 +53,7 @@ impl<T: Real> Ready<T> {
                     .item(format!("{} axis {axis}", snapshot.name))
                     .expected(format!("at least {fewest} samples"))
                     .found(grid.n[a].to_string())
-                    .hint(format!("--derivative {} reads {fewest} samples", request.scheme.name())));
+                    .hint(format!("--derivative {} and the measure of its error read {fewest} samples", request.scheme.name())));
             }
         }
         let bytes = grid.cells() * fields.components() as u64 * size_of::<T>() as u64;
