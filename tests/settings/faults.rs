@@ -101,7 +101,7 @@ fn values_of_the_wrong_kind() {
         ("[input]", "density = true", "a text", "true", "density = \"rho\""),
         ("[input]", "order = \"zyy\"", ORDER, "\"zyy\"", "order = \"xyz\""),
         ("[input]", "order = \"zcyx\"", ORDER, "\"zcyx\"", "order = \"xyz\""),
-        ("[input]", "origin = [1, 2]", "three finite numbers, or one for all axes", "[1, 2]", "origin = [0, -1.5, \"-pi\"]"),
+        ("[input]", "origin = [1, 2, 3, 4]", "three finite numbers, or one for all axes", "[1, 2, 3, 4]", "origin = [0, -1.5, \"-pi\"]"),
         ("[input]", "origin = \"2pies\"", "three finite numbers, or one for all axes", "\"2pies\"", "origin = [0, -1.5, \"-pi\"]"),
         ("[input]", "periodic = \"xx\"", "a subset of xyz, or none", "\"xx\"", "periodic = \"xz\""),
         ("[input]", "periodic = true", "a subset of xyz, or none", "true", "periodic = \"xz\""),
@@ -122,7 +122,12 @@ fn values_of_the_wrong_kind() {
         ("[physics]", "viscosity = \"low\"", "a number above 0", "\"low\"", "viscosity = 0.002"),
         ("[physics]", "resistivity = -1.5", "a number above 0", "-1.5", "resistivity = 0.003"),
         ("[physics]", "dissipation = inf", "a number above 0", "inf", "dissipation = 0.08"),
-        ("[physics]", "kolmogorov_length = [1]", "a number above 0", "[1]", "kolmogorov_length = 0.01"),
+        ("[physics]", "kolmogorov_length = [1]", "a number above 0", "[1]", "kolmogorov_length = 0.0178"),
+        ("[physics]", "frame = \"moving\"", FRAME, "\"moving\"", "frame = [0.1, 0, 0]"),
+        ("[physics]", "frame = [0.1, 0]", FRAME, "[0.1, 0]", "frame = [0.1, 0, 0]"),
+        ("[physics]", "frame = [0.1, 0, inf]", FRAME, "[0.1, 0, inf]", "frame = [0.1, 0, 0]"),
+        ("[physics]", "frame = 2", FRAME, "2", "frame = [0.1, 0, 0]"),
+        ("[physics]", "frame = \"\"", FRAME, "nothing", "frame = [0.1, 0, 0]"),
         ("[objects]", "min_cells = 0", "a whole number of at least 1", "0", "min_cells = 8"),
         ("[objects]", "min_cells = \"8\"", "a whole number of at least 1", "\"8\"", "min_cells = 8"),
         ("[objects]", "max_object_cells = 1.5", "a whole number of at least 1", "1.5", "max_object_cells = 1000000"),
@@ -158,6 +163,7 @@ fn values_of_the_wrong_kind() {
     }
 }
 
+const FRAME: &str = "box, stored, or the velocity of a frame, three finite numbers";
 const VECTOR: &str = "three names (one dataset a component; two on a plane), or one (a component axis)";
 const VELOCITY: &str = "velocity = [\"flow/u\", \"flow/v\", \"flow/w\"]";
 const ORDER: &str = "a permutation of xyz (of xy for planes) with an optional c first or last";
@@ -171,7 +177,6 @@ const CUT_OUTS: &str = "largest:N, or ids like 12 or FAMILY:12, or none";
 fn choices() {
     let cases = [
         ("[input]", "staggering = \"centers\"", "centres, lower, upper", "\"centers\"", "did you mean centres?"),
-        ("[physics]", "frame = \"moving\"", "box, stored", "\"moving\"", "for example frame = \"stored\""),
         ("[physics]", "derivative = \"fd9\"", "auto, fd2, fd4, fd6, fd8, opt, spectral", "\"fd9\"", "did you mean fd2?"),
         ("[physics]", "derivative = 8", "auto, fd2, fd4, fd6, fd8, opt, spectral", "8", "for example derivative = \"spectral\""),
         ("[objects]", "connectivity = 27", "6, 18, 26", "27", "did you mean 26?"),
@@ -219,27 +224,27 @@ fn families_and_what_they_need() {
             "cannot read family: run.toml:9: \"b vorticity > 1\": expected \"NAME: INDICATOR > LEVEL [down to LEVEL]\", found no colon; \
              hint: for example \"vorticity: vorticity > 3 rms\"",
             "cannot detect family: run.toml:10: \"c: current > 3 rms\": expected a magnetic field, found none; \
-             hint: name its datasets with --magnetic BX,BY,BZ",
+             hint: magnetic = [\"flow/bx\", \"flow/by\", \"flow/bz\"] below [input] names its datasets",
             "cannot detect family: run.toml:11: \"d: dissipation_viscous > 1 mean\": expected the viscosity, found none; \
-             hint: give --viscosity, or use strain instead",
+             hint: viscosity = 0.002 below [physics], or strain instead",
             "cannot use family: run.toml:12: \"a: speed > 1\": expected a name of its own, found \"a\" twice; \
              hint: give every family another name before the colon",
             "cannot read family: run.toml:13: \"e: q > 2 volume\": expected \"NAME: INDICATOR > LEVEL [down to LEVEL]\", \
              found the volume fraction 2; hint: a volume fraction lies between 0 and 1",
-            "cannot detect family: run.toml:14: \"f: buoyancy > 1\": expected a buoyancy field, found none; hint: name its dataset with --buoyancy B",
+            "cannot detect family: run.toml:14: \"f: buoyancy > 1\": expected a buoyancy field, found none; hint: buoyancy = \"theta\" below [input] names its dataset",
             "cannot use a setting: run.toml:15: objects.families: expected a text in the list, found 3; \
              hint: for example families = [\"worms: vorticity > 2.5 rms\", \"cores: q > 0.01 volume\"]",
             "cannot add companion columns: run.toml:17: cross_helicity: expected a magnetic field, found none; \
-             hint: name its datasets with --magnetic BX,BY,BZ",
+             hint: magnetic = [\"flow/bx\", \"flow/by\", \"flow/bz\"] below [input] names its datasets",
             "cannot add companion columns: run.toml:17: dissipation_ohmic: expected a magnetic field, found none; \
-             hint: name its datasets with --magnetic BX,BY,BZ",
-            "cannot add mesh values: run.toml:19: buoyancy_gradient: expected a buoyancy field, found none; hint: name its dataset with --buoyancy B",
+             hint: magnetic = [\"flow/bx\", \"flow/by\", \"flow/bz\"] below [input] names its datasets",
+            "cannot add mesh values: run.toml:19: buoyancy_gradient: expected a buoyancy field, found none; hint: buoyancy = \"theta\" below [input] names its dataset",
         ],
     );
     added(
         "magnetic = \"b\"\n[objects]\nfamilies = \"d: dissipation_ohmic > 1\"\n",
         &["cannot detect family: run.toml:7: \"d: dissipation_ohmic > 1\": expected the resistivity, found none; \
-         hint: give --resistivity, or use current instead"],
+         hint: resistivity = 0.003 below [physics], or current instead"],
     );
     // Without names both fields may be found.
     added("[objects]\nfamilies = [\"c: current > 3 rms\", \"v: vorticity > 3 rms\"]\n", &[]);

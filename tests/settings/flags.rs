@@ -16,7 +16,7 @@ fn told(flags: &[(&str, &[&str])]) -> String {
 #[test]
 fn every_fault_is_told_at_once() {
     let faults = told(&[
-        ("lengths", &["1,2"]),
+        ("lengths", &["1,2,3,4"]),
         ("spacing", &["1", "2"]),
         ("order", &["zz"]),
         ("periodic", &[""]),
@@ -45,11 +45,11 @@ fn every_fault_is_told_at_once() {
          hint: for example --region-cells x=10:50,z=-8:24",
         "cannot use a setting: --order: expected a permutation of xyz (of xy for planes) with an optional c first or last, found \"zz\"; \
          hint: for example --order xyz",
-        "cannot use a setting: --lengths: expected three finite numbers above 0, or one for all axes, found \"1,2\"; \
-         hint: for example --lengths 2pi,2pi,pi",
-        "cannot use a setting: --periodic: expected a subset of xyz, or none, found nothing; hint: for example --periodic xz",
         "cannot use a setting: --coordinates: expected the name of a dataset for some of x, y, z, found \"grid\"; \
          hint: for example --coordinates y=grid/y",
+        "cannot use a setting: --lengths: expected three finite numbers above 0, or one for all axes, found \"1,2,3,4\"; \
+         hint: for example --lengths 2pi,2pi,pi",
+        "cannot use a setting: --periodic: expected a subset of xyz, or none, found nothing; hint: for example --periodic xz",
         &format!(
             "cannot read family: \"b: vortex > 1\": expected an indicator of this version, found \"vortex\"; hint: one of {}",
             indicators.join(", ")

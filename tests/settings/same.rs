@@ -100,8 +100,8 @@ name = "out_{time}.h5"
 viscosity = 1e-3
 resistivity = 2e-3
 dissipation = 0.1
-kolmogorov_length = 0.02
-frame = "stored"
+kolmogorov_length = 0.01
+frame = [-0.5, 0, "pi"]
 derivative = "opt"
 filter = "gaussian 0.2"
 [objects]
@@ -151,8 +151,8 @@ fn a_whole_run_file_is_settled() {
         r.families.iter().map(ToString::to_string).collect::<Vec<_>>(),
         ["w: vorticity > 4 rms down to 2 rms", "d: dissipation_ohmic > 2 mean"]
     );
-    assert_eq!((r.viscosity, r.resistivity, r.dissipation, r.kolmogorov_length), (Some(1e-3), Some(2e-3), Some(0.1), Some(0.02)));
-    assert_eq!((r.frame, r.scheme), (Frame::Stored, Scheme::Opt));
+    assert_eq!((r.viscosity, r.resistivity, r.dissipation, r.kolmogorov_length), (Some(1e-3), Some(2e-3), Some(0.1), Some(0.01)));
+    assert_eq!((r.frame, r.scheme), (Frame::Given([-0.5, 0.0, PI]), Scheme::Opt));
     assert_eq!(r.filter, Some(Filter { shape: FilterShape::Gaussian, width: 0.2 }));
     assert_eq!((r.min_cells, r.max_object_cells, r.connectivity), (5, 1000, Connectivity::Eighteen));
     assert_eq!(r.companions.iter().map(|i| i.name()).collect::<Vec<_>>(), ["speed", "field"]);

@@ -50,7 +50,7 @@ fn arg(s: &'static Setting) -> Arg {
     match (s.takes, s.key) {
         (Takes::Switch, _) => arg.num_args(0..=1).require_equals(true).default_missing_value("yes"),
         // Numbers that may begin with a sign and go on with more than digits: -pi, -1,0,0.
-        (_, Key::Lengths | Key::Spacing | Key::Origin | Key::Times) => arg.allow_hyphen_values(true),
+        (_, Key::Lengths | Key::Spacing | Key::Origin | Key::Times | Key::Frame) => arg.allow_hyphen_values(true),
         _ => arg.allow_negative_numbers(true),
     }
 }

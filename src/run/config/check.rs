@@ -3,23 +3,29 @@
 use std::path::{Component, Path, PathBuf};
 
 use crate::base::error::Error;
-use crate::model::request::{CutOuts, Family, Request};
+use crate::model::request::{Family, Indicator, Request};
 use crate::model::source::Fields;
+use crate::run::config::given::Node;
 use crate::run::config::registry::Key;
 use crate::run::config::settle::{Entries, Settled, is_pattern};
 use crate::run::config::values::Reader;
 
 const AXES: [&str; 3] = ["x", "y", "z"];
+/// Part by which the Kolmogorov length may differ from the one of viscosity and dissipation: figures are rounded.
+const KOLMOGOROV_TOLERANCE: f64 = 0.01;
 
 /// Adds every contradiction and everything missing to the faults.
 pub(super) fn contradictions(r: &mut Reader<'_>, settled: &Settled, entries: &Entries) {
     snapshots(r, settled);
+    named_twice(r, entries);
     extent_of_box(r, settled);
     faces(r, settled);
     datasets(r, settled);
     raw(r, settled);
+    kolmogorov(r, settled);
     fields(r, entries);
-    cut_outs(r, settled);
+    family_names(r, entries);
+    cut_outs(r, entries);
     folder(r, settled);
 }
 
@@ -51,6 +57,20 @@ fn snapshots(r: &mut Reader<'_>, s: &Settled) {
         against(r, "cannot give the snapshots their times", &[Key::Times], |e| {
             e.expected(format!("{paths}, one a snapshot")).found(times.to_string()).hint("without it, the times in the files are taken")
         });
+    }
+}
+
+/// A snapshot is one row set of the catalogue: named twice, it would stand there twice.
+fn named_twice(r: &mut Reader<'_>, entries: &Entries) {
+    let paths: Vec<(PathBuf, &str, &Node)> = entries.paths.iter().map(|(p, n)| (tidy(Path::new(p)), p.as_str(), n)).collect();
+    let lists: Vec<(PathBuf, &str, &Node)> = entries.lists.iter().map(|(p, n)| (tidy(p), p.to_str().unwrap_or("a list"), n)).collect();
+    for (key, all) in [(Key::Paths, paths), (Key::Lists, lists)] {
+        for (i, (full, said, node)) in all.iter().enumerate() {
+            if all[..i].iter().filter(|(other, _, _)| other == full).count() == 1 {
+                let e = Error::usage("cannot take snapshots twice").item(r.given.label(key)).expected("every path once");
+                r.push(key, node.line, e.found(format!("{said} again")).hint("drop one of them"));
+            }
+        }
     }
 }
 
@@ -148,6 +168,19 @@ fn raw(r: &mut Reader<'_>, s: &Settled) {
     }
 }
 
+/// The length follows from viscosity and dissipation, or contradicts them.
+fn kolmogorov(r: &mut Reader<'_>, s: &Settled) {
+    let q = &s.config.request;
+    let (Some(nu), Some(epsilon), Some(length)) = (q.viscosity, q.dissipation, q.kolmogorov_length) else { return };
+    let own = (nu.powi(3) / epsilon).powf(0.25);
+    if (own - length).abs() > KOLMOGOROV_TOLERANCE * length {
+        against(r, "cannot settle the Kolmogorov length", &[Key::Viscosity, Key::Dissipation, Key::KolmogorovLength], |e| {
+            let e = e.expected(format!("the length (viscosity^3/dissipation)^(1/4) = {own:.4e}")).found(format!("{length:.4e}"));
+            e.hint("correct one of them, or leave the dissipation or the length out")
+        });
+    }
+}
+
 /// Families, companions and mesh values against the fields that will be there, as far as the names tell.
 fn fields(r: &mut Reader<'_>, entries: &Entries) {
     let has = |k: Key| r.given.has(k);
@@ -162,18 +195,11 @@ fn fields(r: &mut Reader<'_>, entries: &Entries) {
     let some = |k: Key| r.given.has(k).then_some(1.0);
     let known = Request { viscosity: some(Key::Viscosity), resistivity: some(Key::Resistivity), ..Request::default() };
     let any = Family::defaults(fields);
-    let mut names: Vec<&str> = Vec::new();
     for (family, node) in &entries.families {
         let own = Request { families: vec![family.clone()], ..known.clone() };
         if let Err(e) = own.families_for(fields) {
-            r.push(Key::Families, node.line, e);
+            r.push(Key::Families, node.line, with_keys(e, node, family.indicator, fields, &known));
         }
-        if names.contains(&family.name.as_str()) {
-            let e = Error::usage("cannot use family").item(format!("\"{family}\"")).expected("a name of its own");
-            let e = e.found(format!("\"{}\" twice", family.name)).hint("give every family another name before the colon");
-            r.push(Key::Families, node.line, e);
-        }
-        names.push(&family.name);
     }
     for (key, list) in [(Key::Companions, &entries.companions), (Key::MeshValues, &entries.mesh_values)] {
         for (indicator, node) in list {
@@ -184,24 +210,66 @@ fn fields(r: &mut Reader<'_>, entries: &Entries) {
                 own.mesh_values.push(*indicator)
             }
             if let Err(e) = own.families_for(fields) {
-                r.push(key, node.line, e);
+                r.push(key, node.line, with_keys(e, node, *indicator, fields, &known));
             }
         }
     }
 }
 
-fn cut_outs(r: &mut Reader<'_>, s: &Settled) {
-    let CutOuts::Named(list) = &s.config.outputs.cut_outs else { return };
-    if r.is_broken(Key::Families) {
-        return;
+/// The error about something an indicator needs, its hint in the words of the place where the indicator stands.
+fn with_keys(e: Error, node: &Node, indicator: Indicator, fields: Fields, known: &Request) -> Error {
+    if node.line.is_none() {
+        return e;
     }
-    let families = &s.config.request.families;
-    let names: Vec<String> =
-        if families.is_empty() { Family::defaults(Fields::BOTH) } else { families.clone() }.into_iter().map(|f| f.name).collect();
-    for name in list.iter().filter_map(|(f, _)| f.as_ref()).filter(|f| !names.contains(f)) {
-        against(r, "cannot cut out objects", &[Key::CutOuts], |e| {
-            e.expected(format!("a family: {}", names.join(", "))).found(format!("\"{name}\"")).hint("FAMILY:ID, ID or largest:N")
-        });
+    let needs = indicator.needs();
+    let (key, rest) = if needs.velocity && !fields.velocity {
+        (Key::Velocity, " names its datasets")
+    } else if needs.magnetic && !fields.magnetic {
+        (Key::Magnetic, " names its datasets")
+    } else if needs.buoyancy && !fields.buoyancy {
+        (Key::Buoyancy, " names its dataset")
+    } else if indicator == Indicator::DissipationViscous && known.viscosity.is_none() {
+        (Key::Viscosity, ", or strain instead")
+    } else if indicator == Indicator::DissipationOhmic && known.resistivity.is_none() {
+        (Key::Resistivity, ", or current instead")
+    } else {
+        return e;
+    };
+    let s = key.setting();
+    e.hint(format!("{} = {} below [{}]{rest}", s.name, s.example, s.table))
+}
+
+/// The name of a family as written, whatever else is wrong with it.
+fn name_in(text: &str) -> Option<&str> {
+    text.split_once(':').map(|(name, _)| name.trim()).filter(|n| !n.is_empty())
+}
+
+fn family_names(r: &mut Reader<'_>, entries: &Entries) {
+    let mut names: Vec<&str> = Vec::new();
+    for (text, node) in &entries.family_texts {
+        let Some(name) = name_in(text) else { continue };
+        if names.contains(&name) {
+            let e = Error::usage("cannot use family").item(format!("\"{}\"", text.trim())).expected("a name of its own");
+            let e = e.found(format!("\"{name}\" twice")).hint("give every family another name before the colon");
+            r.push(Key::Families, node.line, e);
+        }
+        names.push(name);
+    }
+}
+
+fn cut_outs(r: &mut Reader<'_>, entries: &Entries) {
+    let texts = &entries.family_texts;
+    let defaults = Family::defaults(Fields::BOTH);
+    let names: Vec<&str> = match (texts.is_empty(), r.is_broken(Key::Families)) {
+        (true, true) => return,
+        (true, false) => defaults.iter().map(|f| f.name.as_str()).collect(),
+        // Of a family without a colon the first word may be the name.
+        (false, _) => texts.iter().filter_map(|(t, _)| name_in(t).or_else(|| t.split_whitespace().next())).collect(),
+    };
+    for (name, node) in entries.cut_out_families.iter().filter(|(f, _)| !names.contains(&f.as_str())) {
+        let e = Error::usage("cannot cut out objects").item(r.given.label(Key::CutOuts));
+        let e = e.expected(format!("a family: {}", names.join(", "))).found(format!("\"{name}\"")).hint("FAMILY:ID, ID or largest:N");
+        r.push(Key::CutOuts, node.line, e);
     }
 }
 

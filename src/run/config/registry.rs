@@ -169,7 +169,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Lists,
         ("snapshots", "lists"),
         ("list", "FILE"),
-        "A text file with one path a line, a time behind it where known",
+        "A text file with one path a line; a time may stand behind it, and # begins a comment. Paths start from the folder of the list",
         ("[\"run.txt\"]", "run.txt"),
     )
     .many(),
@@ -184,7 +184,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Times,
         ("snapshots", "times"),
         ("times", "T1,T2,..."),
-        "Times of the snapshots in their order, instead of those in the files",
+        "Times of the snapshots in their order; they go before those of lists, and those before what is found in files and their names",
         ("[0.0, 0.5]", "0.0,0.5"),
     ),
     s(
@@ -221,17 +221,17 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Lengths,
         ("input", "lengths"),
         ("lengths", "LX,LY,LZ"),
-        "Box lengths: three numbers, or one for a cube; 2pi is understood. Samples times spacing, at open faces too",
+        "Box lengths: three numbers, or one for a cube, or two on a plane (order yx or xy); 2pi is understood. Samples times spacing, at open faces too. For an axis whose coordinates are given 0, or the length that its cells are to fill",
         ("[\"2pi\", \"2pi\", \"pi\"]", "2pi,2pi,pi"),
     ),
     s(
         Key::Spacing,
         ("input", "spacing"),
         ("spacing", "DX,DY,DZ"),
-        "Distance between samples, instead of lengths",
+        "Distance between samples, instead of lengths: three numbers, or one, or two on a plane",
         ("[0.1, 0.1, 0.05]", "0.1,0.1,0.05"),
     ),
-    s(Key::Origin, ("input", "origin"), ("origin", "X,Y,Z"), "Position of the first sample", ("[0, -1.5, \"-pi\"]", "0,-1.5,-pi"))
+    s(Key::Origin, ("input", "origin"), ("origin", "X,Y,Z"), "Position of the first sample: three numbers, or one, or two on a plane", ("[0, -1.5, \"-pi\"]", "0,-1.5,-pi"))
         .or("0,0,0"),
     s(
         Key::Periodic,
@@ -316,21 +316,21 @@ pub const SETTINGS: [Setting; 48] = [
         Key::TimeAttribute,
         ("input.time", "attribute"),
         ("time-attribute", "NAME"),
-        "Attribute that holds the time",
+        "Attribute that holds the time. It goes before a dataset, that before a number in the name, and that before an attribute time or t",
         ("\"t_now\"", "t_now"),
     ),
     s(
         Key::TimeDataset,
         ("input.time", "dataset"),
         ("time-dataset", "NAME"),
-        "Dataset that holds the time, one number",
+        "Dataset that holds the time, one number; where a time attribute is named as well and found, that one counts",
         ("\"info/time\"", "info/time"),
     ),
     s(
         Key::TimeName,
         ("input.time", "name"),
         ("time-name", "PATTERN"),
-        "File name with {time} where the time stands and * for anything else",
+        "File name with {time} where the time stands and * for anything else; counts where a time attribute or dataset is not named or not found",
         ("\"out_t{time}.h5\"", "out_t{time}.h5"),
     ),
     s(Key::Viscosity, ("physics", "viscosity"), ("viscosity", "NU"), "Kinematic viscosity", ("0.002", "0.002")),
@@ -339,24 +339,23 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Dissipation,
         ("physics", "dissipation"),
         ("dissipation", "EPSILON"),
-        "Mean total dissipation a unit mass, where the run states it",
+        "Mean total dissipation EPSILON a unit mass, where the run states it: the Kolmogorov length is then (NU^3/EPSILON)^(1/4), instead of the one with the snapshot's own dissipation",
         ("0.08", "0.08"),
     ),
     s(
         Key::KolmogorovLength,
         ("physics", "kolmogorov_length"),
         ("kolmogorov-length", "LENGTH"),
-        "Kolmogorov length, where the run states it",
-        ("0.01", "0.01"),
+        "Kolmogorov length, where the run states it. It goes before that of a given dissipation, and that before the snapshot's own; with viscosity and dissipation it may differ by 1 % from (NU^3/EPSILON)^(1/4)",
+        ("0.0178", "0.0178"),
     ),
     s(
         Key::Frame,
         ("physics", "frame"),
         ("frame", "FRAME"),
-        "Frame of the velocity: that of the box mean, or as stored",
-        ("\"stored\"", "stored"),
+        "Frame of the velocity: box (that of its mean), stored, or the velocity U,V,W of a frame",
+        ("[0.1, 0, 0]", "0.1,0,0"),
     )
-    .choices(&["box", "stored"])
     .or("box"),
     s(
         Key::Derivative,
@@ -378,7 +377,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Families,
         ("objects", "families"),
         ("family", "SPEC"),
-        "A family of objects, \"NAME: INDICATOR > LEVEL [down to LEVEL]\", or <. LEVEL is a number, alone or with rms, run-rms, mean, volume or peak. When none is given: vorticity > 3 rms, and current > 3 rms with a magnetic field",
+        "A family of objects, \"NAME: INDICATOR > LEVEL [down to LEVEL]\", or <. ropewalk columns defines the indicators. LEVEL is a number, alone or with rms, run-rms, mean, volume or peak. When none is given: vorticity > 3 rms, and current > 3 rms with a magnetic field",
         ("[\"worms: vorticity > 2.5 rms\", \"cores: q > 0.01 volume\"]", "worms: vorticity > 2.5 rms"),
     )
     .many(),

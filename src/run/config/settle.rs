@@ -4,7 +4,7 @@ use std::path::{Path, PathBuf};
 
 use crate::base::error::{Error, Result};
 use crate::model::indicator::{INDICATORS, Indicator};
-use crate::model::request::{Connectivity, CutOuts, Family, Filter, Frame, Outputs, Request, Scheme, Surfaces};
+use crate::model::request::{Connectivity, CutOuts, Family, Filter, Outputs, Request, Scheme, Surfaces};
 use crate::read::series::{self, Series};
 use crate::read::{InputSpec, RawLayout, Staggering, TimeSource};
 use crate::run::analysis::Execution;
@@ -35,8 +35,14 @@ pub(super) type Placed<T> = Vec<(T, Node)>;
 /// Lists whose entries are checked one by one.
 pub(super) struct Entries {
     pub families: Placed<Family>,
+    /// All families as they are written, with those that cannot be read.
+    pub family_texts: Placed<String>,
     pub companions: Placed<Indicator>,
     pub mesh_values: Placed<Indicator>,
+    /// Families that cut-outs name.
+    pub cut_out_families: Placed<String>,
+    pub paths: Placed<String>,
+    pub lists: Placed<PathBuf>,
 }
 
 /// Reads and checks all settings, without a look at any snapshot.
@@ -45,15 +51,23 @@ pub(super) struct Entries {
 /// `Usage` with every fault, those of the run file in the order of its lines.
 pub fn check(given: &Given) -> Result<Settled> {
     let mut r = Reader::new(given);
-    let series = series(&mut r);
+    let (paths, lists) = sources(&mut r);
+    let series = series(&mut r, &paths, &lists);
     let input = input(&mut r);
+    let family_texts = r.texts(Key::Families).unwrap_or_default();
+    let (cut_outs, cut_out_families) = cut_outs(&mut r);
     let entries = Entries {
-        families: families(&mut r),
+        families: families(&mut r, &family_texts),
+        family_texts,
         companions: indicators(&mut r, Key::Companions),
         mesh_values: indicators(&mut r, Key::MeshValues),
+        cut_out_families,
+        paths,
+        lists,
     };
-    let request = request(&mut r, &entries);
-    let outputs = outputs(&mut r);
+    let plane = is_plane(&r, &input.order);
+    let request = request(&mut r, &entries, plane);
+    let outputs = outputs(&mut r, cut_outs);
     let config = RunConfig {
         snapshots: Vec::new(),
         input,
@@ -109,12 +123,18 @@ fn pattern(r: &Reader<'_>, text: &str) -> String {
     Path::new(&folder).join(text).to_string_lossy().into_owned()
 }
 
-fn series(r: &mut Reader<'_>) -> Series {
+/// Paths and lists as they are to be looked for.
+fn sources(r: &mut Reader<'_>) -> (Placed<String>, Placed<PathBuf>) {
     let paths = r.texts(Key::Paths).unwrap_or_default();
     let lists = r.texts(Key::Lists).unwrap_or_default();
+    let paths = paths.into_iter().map(|(t, n)| (pattern(r, &t), n)).collect();
+    (paths, lists.into_iter().map(|(t, n)| (path(r, Key::Lists, &t), n)).collect())
+}
+
+fn series(r: &mut Reader<'_>, paths: &Placed<String>, lists: &Placed<PathBuf>) -> Series {
     Series {
-        paths: paths.iter().map(|(t, _)| pattern(r, t)).collect(),
-        lists: lists.iter().map(|(t, _)| path(r, Key::Lists, t)).collect(),
+        paths: paths.iter().map(|(p, _)| p.clone()).collect(),
+        lists: lists.iter().map(|(p, _)| p.clone()).collect(),
         steps: r.text(Key::Steps),
         times: r.numbers(Key::Times).unwrap_or_default(),
     }
@@ -122,17 +142,23 @@ fn series(r: &mut Reader<'_>) -> Series {
 
 fn input(r: &mut Reader<'_>) -> InputSpec {
     let (positions, cells) = (r.stretches(Key::Region), r.stretches(Key::RegionCells));
+    let order = order(r).unwrap_or_else(|| "zyx".to_string());
+    let plane = is_plane(r, &order);
+    let coordinates = r.coordinates();
+    // The positions of an axis with coordinates follow from them; a plane has no size along z.
+    let known = |a: usize| coordinates[a].is_some() || r.is_broken(Key::Coordinates) || (a == 2 && plane);
+    let free = [0, 1, 2].map(known);
     InputSpec {
         velocity: vector(r, Key::Velocity),
         magnetic: vector(r, Key::Magnetic),
         buoyancy: r.text(Key::Buoyancy),
         density: r.text(Key::Density),
-        order: order(r).unwrap_or_else(|| "zyx".to_string()),
-        lengths: r.triple(Key::Lengths, true),
-        spacing: r.triple(Key::Spacing, true),
-        origin: r.triple(Key::Origin, false).unwrap_or([0.0; 3]),
+        order,
+        lengths: r.sizes(Key::Lengths, free, plane),
+        spacing: r.sizes(Key::Spacing, free, plane),
+        origin: r.position(Key::Origin, plane).unwrap_or([0.0; 3]),
         periodic: r.axes(Key::Periodic).unwrap_or([true; 3]),
-        coordinates: r.coordinates(),
+        coordinates,
         staggering: match r.choice(Key::Staggering) {
             Some("lower") => Staggering::LowerFaces,
             Some("upper") => Staggering::UpperFaces,
@@ -144,19 +170,22 @@ fn input(r: &mut Reader<'_>) -> InputSpec {
     }
 }
 
+/// Whether two numbers stand for a place or size: on what is said to be a plane, or what may be one as its order cannot be read.
+fn is_plane(r: &Reader<'_>, order: &str) -> bool {
+    r.is_broken(Key::Order) || order.chars().filter(|c| *c != 'c').count() == 2
+}
+
 /// Datasets of a vector field: three, two on a plane, or one with a component axis.
 fn vector(r: &mut Reader<'_>, key: Key) -> Option<Vec<String>> {
     let names: Vec<String> = r.list(key)?.into_iter().map(|(t, _)| t).collect();
     let node = r.given.node(key)?;
     if !(1..=3).contains(&names.len()) {
         r.unlike(key, node, "three names (one dataset a component; two on a plane), or one (a component axis)");
-        return None;
     }
     if (1..names.len()).any(|i| names[..i].contains(&names[i])) {
         r.unlike(key, node, "different datasets for the components");
-        return None;
     }
-    Some(names)
+    (!r.is_broken(key)).then_some(names)
 }
 
 /// Axis letters: x, y and mostly z in some order, with a c at one end where there is a component axis.
@@ -213,11 +242,11 @@ fn time_name(r: &mut Reader<'_>) -> Option<String> {
     None
 }
 
-fn families(r: &mut Reader<'_>) -> Placed<Family> {
+fn families(r: &mut Reader<'_>, texts: &Placed<String>) -> Placed<Family> {
     let mut out = Vec::new();
-    for (text, node) in r.texts(Key::Families).unwrap_or_default() {
-        match Family::parse(&text) {
-            Ok(family) => out.push((family, node)),
+    for (text, node) in texts {
+        match Family::parse(text) {
+            Ok(family) => out.push((family, node.clone())),
             Err(e) => r.push(Key::Families, node.line, e),
         }
     }
@@ -243,7 +272,7 @@ fn indicators(r: &mut Reader<'_>, key: Key) -> Placed<Indicator> {
     out
 }
 
-fn request(r: &mut Reader<'_>, entries: &Entries) -> Request {
+fn request(r: &mut Reader<'_>, entries: &Entries, plane: bool) -> Request {
     let default = Request::default();
     let plain = |list: &Placed<Indicator>| list.iter().map(|(i, _)| *i).collect();
     Request {
@@ -259,7 +288,7 @@ fn request(r: &mut Reader<'_>, entries: &Entries) -> Request {
         resistivity: r.positive(Key::Resistivity),
         dissipation: r.positive(Key::Dissipation),
         kolmogorov_length: r.positive(Key::KolmogorovLength),
-        frame: if r.choice(Key::Frame) == Some("stored") { Frame::Stored } else { Frame::Box },
+        frame: r.frame(plane).unwrap_or(default.frame),
         scheme: r.choice(Key::Derivative).and_then(Scheme::named).unwrap_or(default.scheme),
         filter: filter(r),
         companions: plain(&entries.companions),
@@ -286,14 +315,14 @@ fn filter(r: &mut Reader<'_>) -> Option<Filter> {
     }
 }
 
-fn outputs(r: &mut Reader<'_>) -> Outputs {
+fn outputs(r: &mut Reader<'_>, cut_outs: Option<CutOuts>) -> Outputs {
     let default = Outputs::default();
     let tables = tables(r);
     Outputs {
         parquet: tables.as_ref().map_or(default.parquet, |t| t.iter().any(|t| t == "parquet")),
         json_lines: tables.as_ref().map_or(default.json_lines, |t| t.iter().any(|t| t == "jsonl")),
         labels: r.switch(Key::Labels).unwrap_or(default.labels),
-        cut_outs: cut_outs(r).unwrap_or(default.cut_outs),
+        cut_outs: cut_outs.unwrap_or(default.cut_outs),
         cut_out_margin: r.whole(Key::CutOutMargin, 0, MOST_MARGIN).map_or(default.cut_out_margin, |n| n as usize),
     }
 }
@@ -312,8 +341,10 @@ fn tables(r: &mut Reader<'_>) -> Option<Vec<String>> {
     Some(out)
 }
 
-fn cut_outs(r: &mut Reader<'_>) -> Option<CutOuts> {
-    let items = r.list(Key::CutOuts)?;
+/// What is asked for, none where some of it cannot be read, and the families that are named.
+fn cut_outs(r: &mut Reader<'_>) -> (Option<CutOuts>, Placed<String>) {
+    let mut families = Vec::new();
+    let Some(items) = r.list(Key::CutOuts) else { return (None, families) };
     let alone = items.len() == 1;
     let mut named = Vec::new();
     for (text, node) in &items {
@@ -322,14 +353,14 @@ fn cut_outs(r: &mut Reader<'_>) -> Option<CutOuts> {
             None => (None, text.as_str()),
         };
         match (family.as_deref(), number.parse::<u64>()) {
-            (None, _) if text == "none" && alone => return Some(CutOuts::None),
-            (Some("largest"), Ok(n)) if n > 0 && alone => return Some(CutOuts::Largest(n as usize)),
-            (Some("largest"), _) | (_, Err(_)) => {
-                r.unlike(Key::CutOuts, node, "largest:N, or ids like 12 or FAMILY:12, or none");
-                return None;
+            (None, _) if text == "none" && alone => return (Some(CutOuts::None), families),
+            (Some("largest"), Ok(n)) if n > 0 && alone => return (Some(CutOuts::Largest(n as usize)), families),
+            (Some("largest"), _) | (_, Err(_)) => r.unlike(Key::CutOuts, node, "largest:N, or ids like 12 or FAMILY:12, or none"),
+            (_, Ok(id)) => {
+                families.extend(family.clone().map(|f| (f, node.clone())));
+                named.push((family, id));
             }
-            (_, Ok(id)) => named.push((family, id)),
         }
     }
-    Some(CutOuts::Named(named))
+    ((!r.is_broken(Key::CutOuts)).then_some(CutOuts::Named(named)), families)
 }

@@ -4,12 +4,15 @@ use std::collections::BTreeSet;
 use std::f64::consts::PI;
 
 use crate::base::error::Error;
+use crate::model::request::Frame;
 use crate::read::Stretch;
 use crate::run::config::given::{Given, Node, Raw};
 use crate::run::config::nearest::nearest;
 use crate::run::config::registry::{Key, Takes};
 
 const AXES: [&str; 3] = ["x", "y", "z"];
+const SIZES: &str = "three finite numbers above 0, or one for all axes";
+const POSITION: &str = "three finite numbers, or one for all axes";
 
 /// Reads settings and gathers faults.
 pub(super) struct Reader<'g> {
@@ -131,20 +134,65 @@ impl<'g> Reader<'g> {
         values
     }
 
-    /// Three numbers, or one for all axes.
-    pub fn triple(&mut self, key: Key, above_zero: bool) -> Option<[f64; 3]> {
+    /// Lengths along the axes: three numbers, or one for all axes, or two on a plane. Entries of axes that are `free` may be 0.
+    pub fn sizes(&mut self, key: Key, free: [bool; 3], plane: bool) -> Option<[f64; 3]> {
         let node = self.given.node(key)?;
-        let values = match numbers(node).as_deref() {
-            Some([v]) => Some([*v; 3]),
-            Some([x, y, z]) => Some([*x, *y, *z]),
-            _ => None,
-        };
-        let values = values.filter(|v| !above_zero || v.iter().all(|v| *v > 0.0));
+        let values = self.axis_numbers(key, SIZES, plane.then_some(1.0))?;
+        let values = values.filter(|v| v.iter().zip(free).all(|(v, free)| *v > 0.0 || (free && *v == 0.0)));
         if values.is_none() {
-            let which = if above_zero { " above 0" } else { "" };
-            self.unlike(key, node, &format!("three finite numbers{which}, or one for all axes"));
+            self.unlike(key, node, SIZES);
         }
         values
+    }
+
+    /// A position: three numbers, or one for all axes, or two on a plane.
+    pub fn position(&mut self, key: Key, plane: bool) -> Option<[f64; 3]> {
+        let node = self.given.node(key)?;
+        let values = self.axis_numbers(key, POSITION, plane.then_some(0.0))?;
+        if values.is_none() {
+            self.unlike(key, node, POSITION);
+        }
+        values
+    }
+
+    /// One number an axis; two with the third that a plane is given. The outer none is a fault that has been told.
+    fn axis_numbers(&mut self, key: Key, expected: &str, third: Option<f64>) -> Option<Option<[f64; 3]>> {
+        let node = self.given.node(key)?;
+        Some(match (numbers(node).as_deref(), third) {
+            (Some([v]), _) => Some([*v; 3]),
+            (Some([x, y, z]), _) => Some([*x, *y, *z]),
+            (Some([x, y]), Some(z)) => Some([*x, *y, z]),
+            (Some([_, _]), None) => {
+                // Whether a file holds a plane is known only when it is opened, and a box needs all three.
+                let order = if node.line.is_some() { "order = \"yx\"" } else { "--order yx" };
+                let hint = format!("for a plane give {order} as well (or xy)");
+                self.fault(key, node, expected, node.found(), hint);
+                return None;
+            }
+            _ => None,
+        })
+    }
+
+    /// The frame of the velocity: a word, or a velocity of three numbers, two on a plane.
+    pub fn frame(&mut self, plane: bool) -> Option<Frame> {
+        const WORDS: [(&str, Frame); 2] = [("box", Frame::Box), ("stored", Frame::Stored)];
+        let node = self.given.node(Key::Frame)?;
+        let text = match &node.raw {
+            Raw::Typed(t) | Raw::Text(t) => t.as_str(),
+            _ => "",
+        };
+        if let Some((_, frame)) = WORDS.iter().find(|(word, _)| *word == text) {
+            return Some(*frame);
+        }
+        match numbers(node).as_deref() {
+            Some([u, v, w]) => return Some(Frame::Given([*u, *v, *w])),
+            Some([u, v]) if plane => return Some(Frame::Given([*u, *v, 0.0])),
+            _ => {}
+        }
+        let near = nearest(text, WORDS.map(|(word, _)| word)).filter(|_| !text.is_empty());
+        let hint = near.map_or_else(|| example(Key::Frame, node), |word| format!("did you mean {word}?"));
+        self.fault(Key::Frame, node, "box, stored, or the velocity of a frame, three finite numbers", node.found(), hint);
+        None
     }
 
     /// A list of texts, each with its place. A text with commas is a list.
@@ -160,11 +208,12 @@ impl<'g> Reader<'g> {
                 return None;
             }
         };
-        if items.iter().any(|(t, _)| t.trim().is_empty()) {
+        let (items, empty): (Vec<_>, Vec<_>) = items.into_iter().partition(|(t, _)| !t.trim().is_empty());
+        if !empty.is_empty() {
             self.unlike(key, node, "a list of texts, none of them empty");
-            return None;
         }
-        Some(items)
+        // The others are looked at all the same.
+        (empty.is_empty() || !items.is_empty()).then_some(items)
     }
 
     /// The text of an entry of a list; an entry that is none is a fault of its own.
@@ -222,14 +271,10 @@ impl<'g> Reader<'g> {
         for (axis, value) in entries.unwrap_or_else(|| vec![(String::new(), node.clone())]) {
             match AXES.iter().position(|a| *a == axis) {
                 Some(a) if out[a].is_none() => out[a] = Some(value),
-                Some(_) => {
-                    self.fault(key, node, "every axis once", format!("{axis} twice in {}", node.found()), example(key, node));
-                    return None;
-                }
+                Some(_) => self.fault(key, node, "every axis once", format!("{axis} twice in {}", node.found()), example(key, node)),
                 None => {
                     let found = if axis.is_empty() { node.found() } else { format!("the axis \"{axis}\"") };
                     self.fault(key, node, expected, found, example(key, node));
-                    return None;
                 }
             }
         }
