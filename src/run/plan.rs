@@ -9,7 +9,7 @@ use crate::derive::filter::{self, filter_bytes};
 use crate::derive::{Deriver, Plan as Derived, fewest_samples, z_lines_bytes};
 use crate::model::request::{CutOuts, Extent, Family, Frame, Outputs, Request, Surfaces};
 use crate::model::snapshot::SnapshotRef;
-use crate::model::source::{AnySource, PlaneSource};
+use crate::model::source::{AnySource, Fields, PlaneSource};
 use crate::read::{self, Opened};
 use crate::run::analysis::Execution;
 use crate::run::catalogue::{RunConfig, check, none_usable, tell_apart};
@@ -198,7 +198,7 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
         kept: if kept { whole } else { 0 },
         filter: request.filter.map_or(0, |_| filter_bytes(&grid, fields, width)),
         spectral: if spectral { z_lines_bytes(&grid, fields, width) } else { 0 },
-        objects: OBJECT_BYTES * grid.cells().min(request.max_object_cells),
+        objects: object_bytes(&grid, fields, request, &families, width),
     };
     // Planes beyond both periodic faces are read again.
     let reading = Reading { whole, halo: 2 * halo as u64 * plane, kept, spectral };
@@ -306,6 +306,21 @@ fn passes(families: &[Family], request: &Request, outputs: &Outputs, reading: &R
     }
     add("shapes");
     out
+}
+
+/// Open objects at most: the box in one object of the largest size that is measured, its surface, and what its vertices carry; all
+/// cells of the box where objects are grown from peaks, whose regions are split whatever their size.
+fn object_bytes(grid: &Grid, fields: Fields, request: &Request, families: &[Family], value_bytes: usize) -> u64 {
+    /// Bytes a cell to sort the cells of a region and tell its slopes apart.
+    const PEAK_BYTES: u64 = 40;
+    let meshes = request.surfaces != Surfaces::None;
+    let vectors = 6 * (usize::from(fields.velocity) + usize::from(fields.magnetic));
+    let carried = if meshes { vectors + request.mesh_values.len() } else { 0 };
+    // A value of the patch, and the same interpolated to the vertices beside it.
+    let cell = OBJECT_BYTES + (carried * (value_bytes + 12)) as u64;
+    let shapes = cell * grid.cells().min(request.max_object_cells);
+    let grown = families.iter().any(|f| matches!(f.extent(), Extent::FromPeaks { .. }));
+    shapes.max(if grown { (PEAK_BYTES + value_bytes as u64) * grid.cells() } else { 0 })
 }
 
 fn files(snapshots: &[SnapshotPlan], request: &Request, outputs: &Outputs) -> Vec<String> {
