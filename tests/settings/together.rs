@@ -1,7 +1,5 @@
 //! Faults that hide behind others: all of one setting, families and paths that are named twice, what planes and coordinates allow.
 
-use std::path::Path;
-
 use ropewalk::model::request::Frame;
 use ropewalk::read::InputSpec;
 use ropewalk::run::config::registry::{Key, SETTINGS};
