@@ -95,10 +95,13 @@ fn passes_follow_the_request() {
     let asked = of(&c);
     let names: Vec<&str> = asked.snapshots[0].passes.iter().map(|p| p.name).collect();
     assert_eq!(names, ["read", "survey", "read", "survey", "detection", "peaks", "sums", "cut-outs", "shapes"]);
-    // 64 MiB are held at most; two boxes for each of three families would be more.
-    assert_eq!(asked.snapshots[0].memory.cut_outs, 64 << 20);
-    let Memory { blocks, kept, objects, .. } = asked.snapshots[0].memory;
-    assert_eq!(asked.memory(), (30 << 20) + blocks + kept + objects + (64 << 20));
+    // Two boxes of each of three families, of six components and the indicator.
+    let Memory { blocks, kept, objects, cut_outs, .. } = asked.snapshots[0].memory;
+    assert_eq!(cut_outs, 2 * 3 * 7 * 64 * 64 * 64 * 4);
+    assert_eq!(asked.memory(), (30 << 20) + blocks + kept + objects + cut_outs);
+    // 64 MiB are held at most.
+    let many = RunConfig { outputs: Outputs { cut_outs: CutOuts::Largest(9), ..c.outputs.clone() }, ..c.clone() };
+    assert_eq!(of(&many).snapshots[0].memory.cut_outs, 64 << 20);
     assert_eq!(asked.files[..5], ["catalogue.csv", "catalogue.jsonl", "columns.json", "run.json", "timing.json"]);
     assert_eq!(asked.files[7..10], ["surfaces/mhd_0001/h/ID.ply", "labels/mhd_0001/h.h5", "cutouts/mhd_0001/h/ID.h5"]);
 
