@@ -17,7 +17,7 @@ use crate::space::cut::CutBox;
 use crate::space::slab::Block;
 
 /// Bytes of cut-outs that are held at a time, unless one plane takes more.
-const HELD_BYTES: usize = 64 << 20;
+pub(super) const HELD_BYTES: usize = 64 << 20;
 /// Planes of a box that are written together.
 const PLANES: usize = 8;
 

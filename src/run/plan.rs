@@ -13,6 +13,7 @@ use crate::model::source::{AnySource, Fields, PlaneSource};
 use crate::read::{self, Opened};
 use crate::run::analysis::Execution;
 use crate::run::catalogue::{RunConfig, check, none_usable, tell_apart};
+use crate::run::cutouts::HELD_BYTES;
 use crate::run::parts::{PARTS, Tables};
 use crate::run::run_rms;
 use crate::run::stream::block_ranges;
@@ -96,12 +97,14 @@ pub struct Memory {
     pub spectral: u64,
     /// Open objects and their surfaces, at most: one of the largest size that is measured, or the box.
     pub objects: u64,
+    /// Planes of cut-outs that are held until they are written, at most.
+    pub cut_outs: u64,
 }
 
 impl Memory {
     /// All of it, with what the program itself takes.
     pub fn total(&self) -> u64 {
-        PROGRAM_BYTES + self.blocks + self.kept + self.filter + self.spectral + self.objects
+        PROGRAM_BYTES + self.blocks + self.kept + self.filter + self.spectral + self.objects + self.cut_outs
     }
 }
 
@@ -199,6 +202,7 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
         filter: request.filter.map_or(0, |_| filter_bytes(&grid, fields, width)),
         spectral: if spectral { z_lines_bytes(&grid, fields, width) } else { 0 },
         objects: object_bytes(&grid, fields, request, &families, width),
+        cut_outs: cut_out_bytes(&outputs.cut_outs, families.len(), &grid, (fields.components() + 1) * width),
     };
     // Planes beyond both periodic faces are read again.
     let reading = Reading { whole, halo: 2 * halo as u64 * plane, kept, spectral };
@@ -215,6 +219,17 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
         passes,
         memory,
     })
+}
+
+/// Bytes of cut-outs held at a time: never more than whole boxes for all that are asked for, with the fields and the indicator.
+fn cut_out_bytes(asked: &CutOuts, families: usize, grid: &Grid, bytes_a_cell: usize) -> u64 {
+    let objects = match asked {
+        CutOuts::None => 0,
+        CutOuts::Largest(n) => *n,
+        CutOuts::Named(list) => list.len(),
+    };
+    let whole = grid.cells().saturating_mul(bytes_a_cell as u64);
+    whole.saturating_mul((objects * families) as u64).min(HELD_BYTES as u64)
 }
 
 /// What the plan needs to know of an opened source.
@@ -430,6 +445,7 @@ fn parts(s: &SnapshotPlan) -> Vec<String> {
         ("filtered fields", m.filter),
         ("derivatives along z", m.spectral),
         ("objects, at most", m.objects),
+        ("cut-outs, at most", m.cut_outs),
     ]
     .into_iter()
     .filter(|(_, n)| *n > 0)

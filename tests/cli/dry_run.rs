@@ -49,7 +49,7 @@ fn the_demo_is_planned() {
         // Compressed, and small enough to be kept: read once.
         assert_eq!(s.bytes(), WHOLE);
         assert_eq!(s.memory.kept, WHOLE);
-        assert_eq!((s.memory.filter, s.memory.spectral), (0, 0));
+        assert_eq!((s.memory.filter, s.memory.spectral, s.memory.cut_outs), (0, 0, 0));
         // 200 bytes a cell of the largest object, which is no larger than the box.
         assert_eq!(s.memory.objects, 200 * 64 * 64 * 64);
     }
@@ -95,6 +95,13 @@ fn passes_follow_the_request() {
     let asked = of(&c);
     let names: Vec<&str> = asked.snapshots[0].passes.iter().map(|p| p.name).collect();
     assert_eq!(names, ["read", "survey", "read", "survey", "detection", "peaks", "sums", "cut-outs", "shapes"]);
+    // Two boxes of each of three families, of six components and the indicator.
+    let Memory { blocks, kept, objects, cut_outs, .. } = asked.snapshots[0].memory;
+    assert_eq!(cut_outs, 2 * 3 * 7 * 64 * 64 * 64 * 4);
+    assert_eq!(asked.memory(), (30 << 20) + blocks + kept + objects + cut_outs);
+    // 64 MiB are held at most.
+    let many = RunConfig { outputs: Outputs { cut_outs: CutOuts::Largest(9), ..c.outputs.clone() }, ..c.clone() };
+    assert_eq!(of(&many).snapshots[0].memory.cut_outs, 64 << 20);
     assert_eq!(asked.files[..5], ["catalogue.csv", "catalogue.jsonl", "columns.json", "run.json", "timing.json"]);
     assert_eq!(asked.files[7..10], ["surfaces/mhd_0001/h/ID.ply", "labels/mhd_0001/h.h5", "cutouts/mhd_0001/h/ID.h5"]);
 
@@ -103,6 +110,9 @@ fn passes_follow_the_request() {
         filter: Some("sharp 0.5").map(|t| ropewalk::model::request::Filter::parse(t).expect("a filter")),
         ..Request::default()
     };
+    // One box of the six components and the indicator of one of two families, and of the other.
+    c.outputs.cut_outs = CutOuts::Named(vec![(None, 3)]);
+    assert_eq!(of(&c).snapshots[0].memory.cut_outs, 2 * 7 * 64 * 64 * 64 * 4);
     c.outputs = Outputs::default();
     let whole_field = of(&c);
     let reads: Vec<(&str, bool)> = passes(&whole_field).iter().map(|(n, b)| (*n, *b > 0)).collect();

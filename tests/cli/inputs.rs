@@ -201,13 +201,13 @@ fn bad_options() {
 #[test]
 fn several_bad_options() {
     let place = Place::with_snapshot();
-    let ran = place.run("catalogue good.h5 --order zyy --min-cells 0 --threads 5000 --threads 2 --block-planes 0 --origin -1,2");
+    let ran = place.run("catalogue good.h5 --order zyy --min-cells 0 --threads 5000 --threads 2 --block-planes 0 --origin -1,2,3,4");
     assert_eq!(ran.code, 2);
     let wanted = "\
 error: cannot use a setting: --threads: expected it once, found it 2 times: \"5000\", \"2\"
 error: cannot use a setting: --order: expected a permutation of xyz (of xy for planes) with an optional c first or last, found \"zyy\"; \
 hint: for example --order xyz
-error: cannot use a setting: --origin: expected three finite numbers, or one for all axes, found \"-1,2\"; hint: for example --origin 0,-1.5,-pi
+error: cannot use a setting: --origin: expected three finite numbers, or one for all axes, found \"-1,2,3,4\"; hint: for example --origin 0,-1.5,-pi
 error: cannot use a setting: --min-cells: expected a whole number of at least 1, found \"0\"; hint: for example --min-cells 8
 error: cannot use a setting: --block-planes: expected a whole number of at least 1, found \"0\"; hint: for example --block-planes 16
 error: cannot settle the size of the box: --lengths, --spacing: expected one of them, found neither; hint: --lengths 2pi is a cube of that side
@@ -223,7 +223,10 @@ fn two_snapshots_of_one_name() {
     place.hdf5("later/good.h5", &flow());
     let message = "cannot tell two snapshots apart: good.h5: expected a name of its own, found the name \"good\", also that of good.h5; \
         hint: name every snapshot once";
-    fails(&place, &format!("catalogue good.h5 good.h5 {OPTIONS}"), 2, message);
+    // Named twice, and named and matched by a pattern.
+    let twice = "cannot take snapshots twice: SNAPSHOT: expected every path once, found ./good.h5 again; hint: drop one of them";
+    fails(&place, &format!("catalogue good.h5 ./good.h5 {OPTIONS}"), 2, twice);
+    fails(&place, &format!("catalogue good.h5 'goo*.h5' {OPTIONS}"), 2, message);
     place.succeed(&format!("catalogue good.h5 later/good.h5 {OPTIONS} -o both"));
     let table = place.read("both/catalogue.csv");
     for name in ["good,", "later_good,"] {

@@ -33,6 +33,15 @@ fn the_run_file_runs_as_it_is() {
     let text = place.read("jobs/run.toml");
     let whole = place.path("good.h5").canonicalize().expect("a path").display().to_string();
     assert!(text.contains("\npaths = [\"data/s1.h5\", \"") && text.contains(&whole), "{text}");
+    // The size of the box is nowhere told, and nobody is to overlook that.
+    let missing = place.run("catalogue jobs/run.toml --dry-run");
+    assert_eq!(missing.code, 2);
+    assert_eq!(
+        missing.err,
+        "error: cannot settle the size of the box: input.lengths, input.spacing: expected one of them, found neither; \
+         hint: lengths = \"2pi\" is a cube of that side\n"
+    );
+    place.write("jobs/run.toml", text.replace("#lengths = ", "lengths = ").as_bytes());
     place.succeed("catalogue jobs/run.toml --dry-run");
     place.succeed("catalogue jobs/run.toml -o from-file --surfaces none");
     place.succeed("catalogue jobs/data/s1.h5 good.h5 --lengths 2pi -o from-flags --surfaces none");
@@ -52,6 +61,17 @@ fn an_edited_run_file_is_not_lost() {
     );
     assert_eq!(place.read("run.toml"), "mine");
     place.succeed("inspect good.h5 --run-file run.toml --replace");
+    place.succeed("catalogue run.toml --dry-run --lengths 2pi");
+}
+
+/// A size that the file tells is active, also when it is 2 pi.
+#[test]
+fn a_size_in_the_file_is_taken() {
+    let place = Place::with_snapshot();
+    place.sized("good.h5", std::f64::consts::TAU);
+    let told = place.succeed("inspect good.h5 --run-file run.toml").out;
+    assert!(told.lines().any(|l| l.trim_start().starts_with("input.lengths ") && l.ends_with("[\"2pi\", \"2pi\", \"2pi\"]")), "{told}");
+    assert!(place.read("run.toml").contains("\nlengths = [\"2pi\", \"2pi\", \"2pi\"]\n"));
     place.succeed("catalogue run.toml --dry-run");
 }
 

@@ -91,9 +91,18 @@ impl Place {
 
     /// Gives a file of [`Place::hdf5`] a time.
     pub fn timed(&self, name: &str, time: f64) {
+        self.attribute(name, "time", time);
+    }
+
+    /// Gives it the length of a cube.
+    pub fn sized(&self, name: &str, length: f64) {
+        self.attribute(name, "length", length);
+    }
+
+    fn attribute(&self, name: &str, attribute: &str, value: f64) {
         let _no_starting = STARTING.write().unwrap_or_else(|e| e.into_inner());
         let file = hdf5::File::open_rw(self.path(name)).expect("an HDF5 file");
-        file.new_attr::<f64>().create("time").and_then(|a| a.write_scalar(&time)).expect("a written attribute");
+        file.new_attr::<f64>().create(attribute).and_then(|a| a.write_scalar(&value)).expect("a written attribute");
     }
 
     /// Writes an array in the format of NumPy Enhancement Proposal 1, version 1.0.

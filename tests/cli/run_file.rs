@@ -89,6 +89,34 @@ fn a_run_file_stands_alone() {
     assert_eq!((nothing.code, nothing.err.as_str()), (2, wanted));
 }
 
+/// The ending tells, however it is written; a run file by another name is no snapshot.
+#[test]
+fn names_of_run_files() {
+    let place = Place::with_snapshot();
+    place.write("RUN.TOML", RUN.as_bytes());
+    place.succeed("catalogue RUN.TOML --dry-run");
+    place.write("run.txt", RUN.as_bytes());
+    let ran = place.run("catalogue run.txt --lengths 1");
+    let wanted = "error: cannot use a snapshot: run.txt: expected a snapshot, found a text with the table [snapshots]; \
+                  hint: a run file's name ends in .toml\n";
+    assert_eq!((ran.code, ran.err.as_str()), (2, wanted));
+    place.write("notes.txt", b"[snapshotted] yesterday\n");
+    let other = place.run("catalogue notes.txt --lengths 1");
+    assert!(other.code == 3 && other.err.contains("expected an HDF5 signature"), "{}", other.err);
+}
+
+#[test]
+fn a_frame_of_given_velocity() {
+    let place = Place::with_snapshot();
+    place.write("run.toml", RUN.replace("[objects]", "[physics]\nframe = [-0.5, 0, 0.25]\n[objects]").as_bytes());
+    place.succeed("catalogue run.toml --companions speed");
+    place.succeed("catalogue run.toml --companions speed --frame -0.5,0,0.25 -o flags");
+    place.succeed("catalogue run.toml --companions speed --frame box -o box");
+    assert_eq!(place.read("out/catalogue.csv"), place.read("flags/catalogue.csv"));
+    assert_ne!(place.read("out/catalogue.csv"), place.read("box/catalogue.csv"));
+    assert_eq!(place.json("out/run.json")["request"]["frame"], "-0.5,0,0.25");
+}
+
 /// What can only be told with the files at hand is told after what needs none, with the codes of a run without a run file.
 #[test]
 fn exit_codes() {

@@ -4,6 +4,8 @@ use std::path::PathBuf;
 
 use clap::{Args as ClapArgs, Parser, Subcommand};
 
+use ropewalk::model::indicator::INDICATORS;
+
 use crate::flags::Flags;
 
 /// Catalogues of coherent structures from turbulence snapshots: vortex filaments, current sheets, and whatever else a
@@ -59,9 +61,7 @@ pub struct Inspect {
 }
 
 #[derive(Debug, ClapArgs)]
-#[command(after_help = "Every option but --dry-run, -q and -v is also a setting of the run file, and one that is given here replaces the \
-    setting there (--lengths also a spacing, and the other way round). Relative paths in a run file start from its folder, \
-    those given here from the present one. ropewalk inspect SNAPSHOT --run-file RUN.toml writes a run file to begin with.")]
+#[command(after_help = after_help())]
 pub struct Catalogue {
     /// A run file RUN.toml; or snapshots: HDF5 files, .npy files, folders of .npy files, quoted patterns like "run/*.h5";
     /// {field} in a name stands for the component, FILE:/GROUP is one step of an HDF5 file
@@ -101,3 +101,16 @@ pub struct Talk {
     #[arg(short, long, conflicts_with = "quiet")]
     pub verbose: bool,
 }
+
+/// What stands below the options of a run.
+fn after_help() -> String {
+    let names: Vec<&str> = INDICATORS.iter().map(|i| i.name).collect();
+    format!(
+        "Indicators, for --family, --companions and --mesh-values: {}. ropewalk columns defines them.\n\n{SETTINGS_HELP}",
+        names.join(", ")
+    )
+}
+
+const SETTINGS_HELP: &str = "Every option but --dry-run, -q and -v is also a setting of the run file, and one that is given here replaces the \
+    setting there (--lengths also a spacing, and the other way round). Relative paths in a run file start from its folder, \
+    those given here from the present one. ropewalk inspect SNAPSHOT --run-file RUN.toml writes a run file to begin with.";

@@ -32,6 +32,9 @@ impl FromArgMatches for Flags {
 fn arg(s: &'static Setting) -> Arg {
     let heading = TABLES.iter().find(|(t, _, _)| *t == s.table).map(|(_, heading, _)| *heading);
     let mut help = s.help.to_string();
+    if s.key == Key::Families {
+        help += "; the indicators stand at the end of this help";
+    }
     if s.takes == Takes::Many {
         help += " (repeatable)";
     }

@@ -8,6 +8,7 @@ use std::process::ExitCode;
 
 use ropewalk::base::error::{Error, Result};
 use ropewalk::read::inspect::{Contents, inspect};
+use ropewalk::run::config::registry::Key;
 use ropewalk::run::config::template;
 use ropewalk::run::plan::bytes;
 
@@ -94,11 +95,16 @@ fn told(c: &Contents) -> String {
         pairs(&mut out, "      ", &item.attributes);
     }
     let _ = writeln!(out, "  would be read with");
-    let known: Vec<(String, String)> = template::guessed(std::slice::from_ref(c), Path::new("run.toml"))
+    let findings = template::guessed(std::slice::from_ref(c), Path::new("run.toml"));
+    let mut known: Vec<(String, String)> = findings
+        .known
         .into_iter()
         .filter(|(k, _)| k.setting().table != "snapshots" || k.setting().name == "steps")
         .map(|(k, v)| (k.setting().path(), v))
         .collect();
+    if findings.size_is_missing {
+        known.push((Key::Lengths.setting().path(), "to be given: nothing tells the size of the box".into()));
+    }
     pairs(&mut out, "    ", &known);
     if !c.reasons.is_empty() {
         let _ = writeln!(out, "  because");
@@ -161,10 +167,10 @@ mod tests {
   would be read with
     input.velocity     \"flow/u\"
     input.order        \"zyx\"
-    input.lengths      [\"2pi\", \"2pi\", \"2pi\"]
     input.origin       [0.0, 0.0, 0.0]
     input.periodic     \"xyz\"
     physics.viscosity  0.019
+    input.lengths      to be given: nothing tells the size of the box
   because
     velocity: a name that is usual
 ";

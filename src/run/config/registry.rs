@@ -353,7 +353,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Frame,
         ("physics", "frame"),
         ("frame", "FRAME"),
-        "Frame of the velocity: box (that of its mean), stored, or the velocity U,V,W of a frame",
+        "Frame of the velocity: box, stored, or the velocity U,V,W of a frame; box is that of the mean over the box",
         ("[0.1, 0, 0]", "0.1,0,0"),
     )
     .or("box"),
@@ -377,7 +377,7 @@ pub const SETTINGS: [Setting; 48] = [
         Key::Families,
         ("objects", "families"),
         ("family", "SPEC"),
-        "A family of objects, \"NAME: INDICATOR > LEVEL [down to LEVEL]\", or <. ropewalk columns defines the indicators. LEVEL is a number, alone or with rms, run-rms, mean, volume or peak. When none is given: vorticity > 3 rms, and current > 3 rms with a magnetic field",
+        "A family of objects, \"NAME: INDICATOR > LEVEL [down to LEVEL]\", or <. LEVEL is a number, alone or with rms, run-rms, mean, volume or peak. When none is given: vorticity > 3 rms, and current > 3 rms with a magnetic field",
         ("[\"worms: vorticity > 2.5 rms\", \"cores: q > 0.01 volume\"]", "worms: vorticity > 2.5 rms"),
     )
     .many(),

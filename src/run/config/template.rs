@@ -3,6 +3,7 @@
 use std::f64::consts::PI;
 use std::path::{Path, PathBuf};
 
+use crate::model::indicator::INDICATORS;
 use crate::read::inspect::Contents;
 use crate::read::{Staggering, Stretch};
 use crate::run::config::registry::{Key, SETTINGS, Setting, TABLES};
@@ -13,8 +14,17 @@ const WIDTH: usize = 100;
 /// Settings with their values as they stand in a run file.
 pub type Known = Vec<(Key, String)>;
 
-/// The text of a run file in which the given settings are active. `notes` go to its top.
-pub fn text(known: &Known, notes: &[String]) -> String {
+/// What was found out about snapshots.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct Findings {
+    /// Settings that are known.
+    pub known: Known,
+    /// Whether nothing tells the size of the box.
+    pub size_is_missing: bool,
+}
+
+/// The text of a run file in which what is known is active. `notes` go to its top.
+pub fn text(findings: &Findings, notes: &[String]) -> String {
     let mut out = String::new();
     comment(
         &mut out,
@@ -30,9 +40,11 @@ pub fn text(known: &Known, notes: &[String]) -> String {
         comment(&mut out, &format!("{}.", capital(about)));
         for s in SETTINGS.iter().filter(|s| s.table == table) {
             out.push('\n');
-            let value = known.iter().find(|(k, _)| *k == s.key);
-            comment(&mut out, &explained(s, value.is_some()));
+            let value = findings.known.iter().find(|(k, _)| *k == s.key);
+            let missing = s.key == Key::Lengths && findings.size_is_missing;
+            comment(&mut out, &explained(s, value.is_some(), missing));
             match value {
+                _ if missing => out.push_str(&format!("#{} = {}\n", s.name, triple(&[2.0 * PI; 3]))),
                 Some((_, value)) => out.push_str(&format!("{} = {value}\n", s.name)),
                 None => out.push_str(&format!("#{} = {}\n", s.name, placeholder(s))),
             }
@@ -41,9 +53,22 @@ pub fn text(known: &Known, notes: &[String]) -> String {
     out
 }
 
-/// Help and choices, and what the line below is.
-fn explained(s: &Setting, active: bool) -> String {
+/// Help, flag and choices, and what the line below is.
+fn explained(s: &Setting, active: bool, missing: bool) -> String {
     let mut text = format!("{}.", s.help.trim_end_matches('.'));
+    if s.key == Key::Families {
+        let names: Vec<&str> = INDICATORS.iter().map(|i| i.name).collect();
+        text += &format!(" Indicators: {}; ropewalk columns defines them.", names.join(", "));
+    }
+    match s.short {
+        Some(letter) => text += &format!(" Flag -{letter}."),
+        // The others are called as their keys.
+        None if !s.flag.is_empty() && s.flag != s.name.replace('_', "-") => text += &format!(" Flag --{}.", s.flag),
+        None => {}
+    }
+    if missing {
+        return text + " Nothing tells the size of the box: give it here or as a spacing. A box of 2 pi would be:";
+    }
     if !s.choices.is_empty() {
         text += &format!(" One of {}.", s.choices.join(", "));
     }
@@ -71,9 +96,10 @@ fn placeholder(s: &Setting) -> String {
 /// What was found out about a snapshot, as settings.
 ///
 /// `at` is where the run file will stand; paths are written relative to its folder where they lie below it, else whole.
-pub fn guessed(contents: &[Contents], at: &Path) -> Known {
+pub fn guessed(contents: &[Contents], at: &Path) -> Findings {
+    let Some(first) = contents.first() else { return Findings::default() };
+    let size_is_missing = size_is_assumed(first);
     let mut out: Known = Vec::new();
-    let Some(first) = contents.first() else { return out };
     let paths: Vec<String> = contents.iter().map(|c| quoted(&from_folder_of(&c.path, at))).collect();
     out.push((Key::Paths, format!("[{}]", paths.join(", "))));
     if let Some(pattern) = common_pattern(&first.steps) {
@@ -91,7 +117,7 @@ pub fn guessed(contents: &[Contents], at: &Path) -> Known {
     put(Key::Buoyancy, text(&g.buoyancy));
     put(Key::Density, text(&g.density));
     put(Key::Order, Some(quoted(&g.order)));
-    put(Key::Lengths, g.lengths.as_ref().map(triple));
+    put(Key::Lengths, g.lengths.as_ref().filter(|_| !size_is_missing).map(triple));
     put(Key::Spacing, g.spacing.as_ref().filter(|_| g.lengths.is_none()).map(triple));
     put(Key::Origin, Some(triple(&g.origin)));
     let axes = ["x", "y", "z"];
@@ -137,7 +163,12 @@ pub fn guessed(contents: &[Contents], at: &Path) -> Known {
     for (key, name) in [(Key::Viscosity, "viscosity"), (Key::Resistivity, "resistivity")] {
         put(key, stated(first, name).map(number));
     }
-    out
+    Findings { known: out, size_is_missing }
+}
+
+/// Whether the lengths are those that stand for unknown ones: 2 pi along all axes, of which no reason speaks.
+fn size_is_assumed(contents: &Contents) -> bool {
+    contents.guess.lengths == Some([2.0 * PI; 3]) && !contents.reasons.iter().any(|r| r.starts_with("lengths of the box from"))
 }
 
 /// A coefficient that the file states in an attribute of that name.
@@ -292,6 +323,7 @@ mod tests {
         };
         let known = guessed(&[contents(plain)], Path::new("run.toml"));
         let whole = text(&known, &[]);
+        assert!(!known.size_is_missing);
         let settle = |text: &str| check_settings(&Given::parse(text, Path::new("run.toml")));
         let base = settle(&whole).unwrap();
         let lines: Vec<&str> = whole.lines().collect();
@@ -311,6 +343,52 @@ mod tests {
             tried += 1;
         }
         assert!(tried > 25, "{tried}");
+    }
+
+    /// A size that nothing tells is not active, so that it is asked for; one that the file tells is, also when it is the same.
+    #[test]
+    fn an_assumed_size_is_not_active() {
+        let two_pi = |reasons: &[&str]| {
+            let spec = InputSpec { lengths: Some([2.0 * PI; 3]), ..InputSpec::default() };
+            Contents { reasons: reasons.iter().map(|r| r.to_string()).collect(), ..contents(spec) }
+        };
+        let of = |c: Contents| {
+            let text = text(&guessed(&[c], Path::new("run.toml")), &[]);
+            (check_settings(&Given::parse(&text, Path::new("run.toml"))).map(|s| s.config.input.lengths), text)
+        };
+        let (settled, text) = of(two_pi(&["u,v,w named as a velocity"]));
+        let told = settled.unwrap_err().to_string();
+        assert!(
+            told.starts_with("cannot settle the size of the box: input.lengths, input.spacing: expected one of them, found neither"),
+            "{told}"
+        );
+        let on = text.replace("#lengths = [\"2pi\", \"2pi\", \"2pi\"]", "lengths = [\"2pi\", \"2pi\", \"2pi\"]");
+        assert_ne!(on, text);
+        let settled = check_settings(&Given::parse(&on, Path::new("run.toml"))).unwrap_or_else(|e| panic!("{e}"));
+        assert_eq!(settled.config.input.lengths, Some([2.0 * PI; 3]));
+        let (settled, _) = of(two_pi(&["lengths of the box from the attribute L, in the order x, y, z"]));
+        assert_eq!(settled, Ok(Some([2.0 * PI; 3])));
+    }
+
+    /// Where key and flag are not called alike, the comment tells the flag.
+    #[test]
+    fn flags_of_other_names_are_told() {
+        let flat = text(&Findings::default(), &[]).replace("\n# ", " ");
+        let before = |key: &str| flat.lines().zip(flat.lines().skip(1)).find(|(_, l)| l.starts_with(&format!("#{key} = "))).unwrap().0;
+        for (key, flag) in [
+            ("families", "--family"),
+            ("lists", "--list"),
+            ("folder", "-o"),
+            ("values", "--raw-values"),
+            ("shape", "--raw-shape"),
+            ("name", "--time-name"),
+        ] {
+            assert!(before(key).contains(&format!(" Flag {flag}. ")), "{key}: {}", before(key));
+        }
+        for key in ["min_cells", "lengths", "cut_outs", "paths"] {
+            assert!(!before(key).contains(" Flag "), "{key}: {}", before(key));
+        }
+        assert!(INDICATORS.iter().all(|i| before("families").contains(i.name)));
     }
 
     #[test]
