@@ -47,7 +47,7 @@ impl Parts {
 impl Reader<'_> {
     /// All components in one file.
     fn one(&self, path: &Path, spec: &InputSpec) -> Result<Arrays> {
-        let length = size_of(path)?;
+        let length = size_of(path, HINT)?;
         let all = self.divisions(spec);
         let counts: Vec<usize> = all.iter().map(Parts::components).collect();
         let found = self.contents(path, length, &counts)?;
@@ -88,7 +88,7 @@ impl Reader<'_> {
             let mut sizes = Vec::new();
             for name in names {
                 let file = with_name(path, name);
-                let length = size_of(&file)?;
+                let length = size_of(&file, field.hint())?;
                 let counts = if names.len() > 1 || !field.is_vector() { vec![1] } else { self.vector_counts() };
                 let found = self.contents(&file, length, &counts)?;
                 let Some((n, stretches)) = counts.iter().zip(found).find_map(|(n, f)| f.map(|f| (*n, f))) else {
@@ -291,13 +291,13 @@ enum Stretches {
     Each(Vec<Record>),
 }
 
-fn size_of(path: &Path) -> Result<u64> {
+fn size_of(path: &Path, hint: &str) -> Result<u64> {
     let path: PathBuf = path.into();
     match std::fs::metadata(&path) {
         Ok(m) if m.is_file() => Ok(m.len()),
         Ok(_) => Err(Error::input(WHAT).at(&path).expected("a file").found("a folder or device")),
         Err(e) if e.kind() == std::io::ErrorKind::NotFound => {
-            Err(Error::input("cannot find the file").at(&path).found("nothing").hint(HINT))
+            Err(Error::input("cannot find the file").at(&path).found("nothing").hint(hint))
         }
         Err(e) => Err(Error::input(WHAT).at(&path).found(e.to_string())),
     }

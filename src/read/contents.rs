@@ -2,10 +2,12 @@
 
 use std::path::Path;
 
-use ::hdf5::types::{FixedAscii, FixedUnicode, FloatSize, TypeDescriptor, VarLenAscii, VarLenUnicode};
+use ::hdf5::types::{FloatSize, TypeDescriptor};
 use ::hdf5::{Attribute, Dataset, Datatype, Location};
 
 use crate::base::error::{Error, Result};
+use crate::read::attribute::texts;
+use crate::read::coordinates::Coordinates;
 use crate::read::inspect::Item;
 use crate::read::shelf::{all_groups, datasets, open_file};
 use crate::read::{natural, npy};
@@ -14,6 +16,8 @@ use crate::read::{natural, npy};
 const MOST: usize = 4096;
 const SHOWN: usize = 8;
 const LONGEST_TEXT: usize = 200;
+/// Longest dataset taken for coordinates.
+const LONGEST_LINE: usize = 1 << 20;
 /// Attributes by which the HDF5 library links dimension scales (HDF5 Dimension Scale Specification): they tell nothing else.
 const SCALES: [&str; 4] = ["CLASS", "NAME", "REFERENCE_LIST", "DIMENSION_LIST"];
 
@@ -28,6 +32,18 @@ pub(super) struct Named {
     pub numbers: Vec<f64>,
 }
 
+impl Named {
+    /// The value, where it is one finite number, be it written as text.
+    pub fn one(&self) -> Option<f64> {
+        match self.numbers[..] {
+            [one] => Some(one),
+            [] => self.text.trim().parse().ok(),
+            _ => None,
+        }
+        .filter(|v: &f64| v.is_finite())
+    }
+}
+
 /// What stands in a file.
 #[derive(Debug, Clone, PartialEq, Default)]
 pub(super) struct Inside {
@@ -39,8 +55,8 @@ pub(super) struct Inside {
     pub groups: Vec<(String, Vec<Named>)>,
     /// Attributes of datasets, with the path of the dataset.
     pub of_items: Vec<(String, Vec<Named>)>,
-    /// Paths of datasets with one axis that may be coordinates, and their numbers of values.
-    pub lines: Vec<(String, usize)>,
+    /// Paths of datasets with one axis that may be coordinates, and their values.
+    pub lines: Vec<(String, Coordinates)>,
     /// Values of datasets that hold one number.
     pub scalars: Vec<(String, f64)>,
 }
@@ -54,8 +70,13 @@ pub(super) fn hdf5(path: &Path) -> Result<Inside> {
     let mut inside = Inside { attributes: attributes(&file), ..Inside::default() };
     for (name, dataset) in found {
         let own = attributes(&dataset);
-        if dataset.ndim() == 1 && axis_of(&name).is_some() {
-            inside.lines.push((name.clone(), dataset.size()));
+        if dataset.ndim() == 1
+            && axis_of(&name).is_some()
+            && dataset.size() <= LONGEST_LINE
+            && let Ok(values) = dataset.read_raw::<f64>()
+        {
+            let single = dataset.dtype().is_ok_and(|t| t.size() <= 4);
+            inside.lines.push((name.clone(), Coordinates { values, single, path: path.into(), item: Some(name.clone()) }));
         }
         if dataset.size() == 1
             && let Ok(values) = dataset.read_raw::<f64>()
@@ -108,25 +129,22 @@ fn named(name: String, attribute: &Attribute) -> Named {
         }
         return Named { name, text: shown.join(", "), numbers };
     }
-    let mut text = text_of(attribute).unwrap_or_else(|| "another type".into()).split_whitespace().collect::<Vec<_>>().join(" ");
+    if size <= SHOWN
+        && let Ok(flags) = attribute.read_raw::<bool>()
+    {
+        let text = flags.iter().map(bool::to_string).collect::<Vec<_>>().join(", ");
+        return Named { name, text, numbers: flags.into_iter().map(|f| f64::from(u8::from(f))).collect() };
+    }
+    let mut text = texts(attribute)
+        .map(|all| all.into_iter().take(SHOWN).collect::<Vec<_>>().join(", "))
+        .unwrap_or_else(|| "another type".into())
+        .split_whitespace()
+        .collect::<Vec<_>>()
+        .join(" ");
     if let Some((at, _)) = text.char_indices().nth(LONGEST_TEXT) {
         text.truncate(at);
     }
     Named { name, text, numbers: Vec::new() }
-}
-
-/// The text of a string attribute.
-fn text_of(attribute: &Attribute) -> Option<String> {
-    fn joined<S: ToString>(all: Vec<S>) -> String {
-        all.iter().take(SHOWN).map(ToString::to_string).collect::<Vec<_>>().join(", ")
-    }
-    match attribute.dtype().ok()?.to_descriptor().ok()? {
-        TypeDescriptor::VarLenUnicode => attribute.read_raw::<VarLenUnicode>().ok().map(joined),
-        TypeDescriptor::VarLenAscii => attribute.read_raw::<VarLenAscii>().ok().map(joined),
-        TypeDescriptor::FixedAscii(n) if n <= 256 => attribute.read_raw::<FixedAscii<256>>().ok().map(joined),
-        TypeDescriptor::FixedUnicode(n) if n <= 256 => attribute.read_raw::<FixedUnicode<256>>().ok().map(joined),
-        _ => None,
-    }
 }
 
 fn type_text(dtype: &Datatype) -> String {
@@ -187,8 +205,12 @@ pub(super) fn npy(path: &Path) -> Result<Inside> {
         let name = file.file_name().unwrap_or_default().to_string_lossy().into_owned();
         match npy::describe(&file) {
             Ok((shape, values)) => {
-                if shape.len() == 1 && axis_of(&name).is_some() {
-                    inside.lines.push((name.clone(), shape[0]));
+                if shape.len() == 1
+                    && axis_of(&name).is_some()
+                    && shape[0] <= LONGEST_LINE
+                    && let Ok((values, single)) = npy::line(&file)
+                {
+                    inside.lines.push((name.clone(), Coordinates { values, single, path: file.clone(), item: None }));
                 }
                 inside.items.push(Item { name, shape, values, storage: "contiguous".into(), attributes: Vec::new() });
             }

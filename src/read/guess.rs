@@ -1,11 +1,12 @@
-//! A guess at how a file is to be read: names, axis order, size of the box, coordinates, steps and time from what stands in it.
+//! A guess at how a file is to be read: names, axis order, coordinates, steps and time from what stands in it.
 
 use std::collections::BTreeMap;
 use std::f64::consts::TAU;
 
 use crate::read::contents::{Inside, Named, axis_of};
-use crate::read::natural;
+use crate::read::coordinates::Coordinates;
 use crate::read::spec::InputSpec;
+use crate::read::{guess_box, natural};
 
 /// What was guessed.
 pub(super) struct Guess {
@@ -19,36 +20,73 @@ pub(super) struct Guess {
     pub time: Option<f64>,
 }
 
-/// Words that attributes with the lengths of the box, or with the spacing, have as names.
-const LENGTHS: [&str; 9] = ["lengths", "length", "box_lengths", "box_size", "boxsize", "box", "domain_size", "domain", "l"];
-const SPACING: [&str; 3] = ["spacing", "dx", "h"];
+/// What of a file is looked at.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum View<'a> {
+    /// All of it.
+    Whole,
+    /// The only array of a file that holds no other, by its name.
+    Single(&'a str),
+    /// One group, without slashes around it.
+    Group(&'a str),
+}
+
+/// Where the fields were found.
+struct Found {
+    /// The group that holds them, empty for the root.
+    place: String,
+    /// The group that names begin in: that of the step, empty for the root.
+    step: String,
+    /// The first array.
+    first: String,
+    /// Its shape.
+    shape: Vec<usize>,
+}
+
 const TIMES: [&str; 4] = ["time", "t", "sim_time", "simulation_time"];
 const DENSITY: [&str; 2] = ["rho", "density"];
 const BUOYANCY: [&str; 3] = ["buoyancy", "theta", "temperature"];
 
-/// Guesses how `inside` is to be read; `single` is the name of the only array of a file that holds no other.
-pub(super) fn guess(inside: &Inside, single: Option<&str>) -> Guess {
-    let steps = steps(inside);
+/// Guesses how `inside` is to be read.
+pub(super) fn guess(inside: &Inside, view: View<'_>) -> Guess {
+    let steps = if view == View::Whole { steps(inside) } else { Vec::new() };
     let mut g = Guess { spec: InputSpec { lengths: Some([TAU; 3]), ..InputSpec::default() }, reasons: Vec::new(), steps, time: None };
-    if g.steps.len() > 1 {
-        g.reasons.push(format!("{} groups look like steps, {} the first", g.steps.len(), g.steps[0]));
+    let found = names(inside, view, &mut g);
+    if let Some(first) = g.steps.first() {
+        let told = format!("{} groups look like steps, {first} the first", g.steps.len());
+        if found.as_ref().is_some_and(|f| f.step.is_empty()) {
+            g.reasons.push(format!("{told}, but the fields are in none of them"));
+            g.steps.clear();
+        } else {
+            g.reasons.insert(0, told);
+        }
     }
-    let Some((place, shape)) = names(inside, single, &mut g) else {
-        g.reasons.push("no usual names of a velocity or magnetic field: name them".into());
+    let Some(found) = found else {
+        if view == View::Whole || g.reasons.is_empty() {
+            g.reasons.push("no usual names of a velocity or magnetic field: name them".into());
+        }
         return g;
     };
-    let lines = lines(inside, &place);
-    let samples = order(&shape, &lines, &mut g);
-    scalars(inside, &place, &shape, &mut g);
-    coordinates(&lines, samples, &place, &mut g);
-    let attributes = attributes(inside, &place);
-    size(&attributes, samples, &mut g);
-    time(inside, &attributes, &place, &mut g);
+    let lines = lines(inside, &found);
+    let samples = order(&found.shape, &lines, &mut g);
+    scalars(inside, &found, &mut g);
+    let spaced = coordinates(&lines, samples, &found, &mut g);
+    let mut attributes = of_group(inside, &found.place);
+    if found.step != found.place {
+        attributes.extend(of_group(inside, &found.step));
+    }
+    if !found.place.is_empty() && !found.step.is_empty() {
+        attributes.extend(&inside.attributes);
+    }
+    let first = inside.of_items.iter().find(|(path, _)| *path == found.first);
+    attributes.extend(first.into_iter().flat_map(|(_, a)| a));
+    guess_box::settle(&attributes, samples, &spaced, &mut g);
+    time(inside, &found, &mut g);
     g
 }
 
 /// Groups with numbers in otherwise equal names, in natural order.
-fn steps(inside: &Inside) -> Vec<String> {
+pub(super) fn steps(inside: &Inside) -> Vec<String> {
     let mut alike: BTreeMap<String, Vec<String>> = BTreeMap::new();
     for (path, _) in &inside.groups {
         let last = path.rsplit('/').next().unwrap_or(path);
@@ -57,7 +95,7 @@ fn steps(inside: &Inside) -> Vec<String> {
         }
         let above = &path[..path.len() - last.len()];
         let bare: String = last.chars().filter(|c| !c.is_ascii_digit() && *c != '.').collect();
-        let holds = inside.items.iter().any(|i| i.name.starts_with(&format!("{path}/")) && i.shape.len() > 1);
+        let holds = inside.items.iter().any(|i| i.shape.len() > 1 && rest(&i.name, path).is_some());
         if holds {
             alike.entry(format!("{above}{bare}")).or_default().push(path.trim_matches('/').into());
         }
@@ -80,60 +118,126 @@ fn sets(stems: &[&str], first: &[&[&str]], whole: &[&str]) -> Vec<Vec<String>> {
     out
 }
 
-/// Finds the fields: their place (a group path, empty for the root) and the shape of the first array.
-fn names(inside: &Inside, single: Option<&str>, g: &mut Guess) -> Option<(String, Vec<usize>)> {
-    if let Some(name) = single {
+/// Sets of names of the velocity and of the magnetic field.
+fn vectors() -> [Vec<Vec<String>>; 2] {
+    [
+        sets(&["u", "v", "vel", "velocity"], &[&["u", "v", "w"]], &["velocity", "vel", "u"]),
+        sets(&["b", "mag", "magnetic", "magnetic_field"], &[], &["magnetic", "magnetic_field", "b"]),
+    ]
+}
+
+/// All usual names of fields, in lower case.
+pub(super) fn usual_names() -> Vec<String> {
+    let mut out: Vec<String> = Vec::new();
+    for name in vectors().concat().concat().into_iter().chain(DENSITY.iter().chain(&BUOYANCY).map(|n| n.to_string())) {
+        if !out.contains(&name) {
+            out.push(name);
+        }
+    }
+    out
+}
+
+/// Finds the fields.
+fn names(inside: &Inside, view: View<'_>, g: &mut Guess) -> Option<Found> {
+    if let View::Single(name) = view {
         let item = inside.items.first()?;
+        let found = Found { place: String::new(), step: String::new(), first: item.name.clone(), shape: item.shape.clone() };
+        if !has_components(&item.shape) {
+            g.reasons.push(match item.shape.len() {
+                4 => format!("{name} has four axes, none of length 3 at its ends for the components (is one the time?): not a velocity"),
+                2 | 3 => format!("{name} has no component axis, it is one component: give its folder, or {{field}} for the names of all"),
+                n => format!("{name} has {n} axes: not a velocity"),
+            });
+            return None;
+        }
         g.reasons.push(format!("{name} is taken as the velocity"));
         g.spec.velocity = Some(vec![name.into()]);
-        return Some((String::new(), item.shape.clone()));
+        return Some(found);
     }
-    let velocity = sets(&["u", "v", "vel", "velocity"], &[&["u", "v", "w"]], &["velocity", "vel", "u"]);
-    let magnetic = sets(&["b", "mag", "magnetic", "magnetic_field"], &[], &["magnetic", "magnetic_field", "b"]);
-    let mut places: Vec<String> = g.steps.first().map(|s| format!("/{s}")).into_iter().collect();
+    let [velocity, magnetic] = vectors();
+    let step = match view {
+        View::Group(group) => format!("/{group}"),
+        _ => g.steps.first().map_or(String::new(), |s| format!("/{s}")),
+    };
+    let mut places = vec![step.clone()];
+    places.extend(inside.groups.iter().map(|(path, _)| path).filter(|p| !step.is_empty() && is_below(p, &step)).cloned());
     places.push(String::new());
     places.extend(inside.groups.iter().map(|(path, _)| path.clone()));
+    let mut odd: Vec<String> = Vec::new();
     for place in places {
         let here: Vec<(&str, &Vec<usize>)> =
             inside.items.iter().filter_map(|i| Some((rest(&i.name, &place)?, &i.shape))).filter(|(n, _)| !n.contains('/')).collect();
         let find = |sets: &[Vec<String>]| -> Option<(Vec<String>, Vec<usize>)> { sets.iter().find_map(|set| complete(set, &here)) };
         let (u, b) = (find(&velocity), find(&magnetic));
-        let Some(shape) = u.as_ref().or(b.as_ref()).map(|found| found.1.clone()) else { continue };
-        let full = |name: String| said(&format!("{place}/{name}"), &place, &g.steps);
-        let full = |found: Option<(Vec<String>, Vec<usize>)>| found.map(|(set, _)| set.into_iter().map(full).collect::<Vec<_>>());
-        let (u, b) = (full(u), full(b));
-        for (field, found, slot) in [("velocity", u, 0), ("magnetic field", b, 1)] {
-            let Some(set) = found else { continue };
-            g.reasons.push(format!("{} named as a {field}", set.join(",")));
-            if slot == 0 { g.spec.velocity = Some(set) } else { g.spec.magnetic = Some(set) }
+        let Some((set, shape)) = u.as_ref().or(b.as_ref()) else {
+            let known = |n: &str| velocity.iter().chain(&magnetic).flatten().any(|k| *k == plain(n));
+            odd.extend(here.iter().filter(|(n, s)| s.len() == 4 && known(n)).map(|(n, _)| format!("{place}/{n}")));
+            continue;
+        };
+        let whole = |name: &str| if inside.items.iter().any(|i| i.name == name) { name.to_string() } else { format!("{place}/{name}") };
+        // The step counts only where the fields are in it.
+        let step = if place == step || is_below(&place, &step) { step } else { String::new() };
+        let found = Found { first: whole(&set[0]), shape: shape.clone(), step, place: place.clone() };
+        let full = |f: Option<(Vec<String>, Vec<usize>)>| f.map(|(set, _)| set.iter().map(|n| said(&whole(n), &found.step)).collect());
+        let fields: [(&str, Option<Vec<String>>); 2] = [("velocity", full(u)), ("magnetic field", full(b))];
+        for (field, set) in &fields {
+            if let Some(set) = set {
+                g.reasons.push(format!("{} named as a {field}", set.join(",")));
+            }
         }
-        return Some((place, shape));
+        let [(_, u), (_, b)] = fields;
+        (g.spec.velocity, g.spec.magnetic) = (u, b);
+        return Some(found);
+    }
+    odd.dedup();
+    odd.truncate(3);
+    for name in odd {
+        g.reasons.push(format!("{name} has four axes, none of length 3 at its ends for the components (is one the time?): not taken"));
     }
     None
 }
 
 /// The rest of a path below a place.
 fn rest<'a>(path: &'a str, place: &str) -> Option<&'a str> {
-    path.strip_prefix(place).map(|r| r.trim_start_matches('/'))
+    let rest = path.strip_prefix(place)?;
+    if place.is_empty() { Some(rest.trim_start_matches('/')) } else { rest.strip_prefix('/') }
 }
 
-/// How a path is named: relative to the root or to the step where the fields are in one of them, else in full.
-fn said(path: &str, place: &str, steps: &[String]) -> String {
-    let relative = place.is_empty() || steps.first().is_some_and(|s| place == format!("/{s}"));
-    match rest(path, place) {
-        Some(name) if relative && !name.contains('/') => name.into(),
+fn is_below(path: &str, place: &str) -> bool {
+    !place.is_empty() && rest(path, place).is_some()
+}
+
+/// How a path is named: relative to the step where it is in it, by its name alone where it is in the root group, else in full.
+fn said(path: &str, step: &str) -> String {
+    let top = path.trim_start_matches('/');
+    match rest(path, step) {
+        Some(inner) if !step.is_empty() => inner.into(),
+        _ if step.is_empty() && !top.contains('/') => top.into(),
         _ => path.into(),
+    }
+}
+
+/// A name as it is compared.
+fn plain(name: &str) -> String {
+    name.strip_suffix(".npy").unwrap_or(name).to_lowercase()
+}
+
+/// Whether a single array can be a vector field.
+fn has_components(shape: &[usize]) -> bool {
+    let few = |n: usize| n == 2 || n == 3;
+    match *shape {
+        [first, .., last] if shape.len() == 4 => first == 3 || last == 3,
+        [first, _, last] => few(first) || few(last),
+        _ => false,
     }
 }
 
 /// The names of a set as they are spelled, when all are there with one shape that suits.
 fn complete(set: &[String], here: &[(&str, &Vec<usize>)]) -> Option<(Vec<String>, Vec<usize>)> {
-    let plain = |name: &str| name.strip_suffix(".npy").unwrap_or(name).to_lowercase();
     let spelled: Vec<&(&str, &Vec<usize>)> = set.iter().filter_map(|name| here.iter().find(|(n, _)| plain(n) == *name)).collect();
     let shape = spelled.first()?.1;
-    let few = |n: usize| n == 2 || n == 3;
     let fits = match set.len() {
-        1 => shape.len() == 4 || (shape.len() == 3 && (few(shape[0]) || few(shape[2]))),
+        1 => has_components(shape),
         _ => shape.len() == 2 || shape.len() == 3,
     };
     let enough =
@@ -142,22 +246,27 @@ fn complete(set: &[String], here: &[(&str, &Vec<usize>)]) -> Option<(Vec<String>
     (fits && enough && same).then(|| (spelled.iter().map(|s| s.0.to_string()).collect(), shape.clone()))
 }
 
-/// Coordinates that may belong to a place: axis, path, number of samples.
-fn lines(inside: &Inside, place: &str) -> Vec<(usize, String, usize)> {
+/// Coordinates that may belong to the fields, with their axes: those beside them before those of the step, of the root, of any group.
+fn lines<'a>(inside: &'a Inside, found: &Found) -> Vec<(usize, &'a str, &'a Coordinates)> {
     let mut out = Vec::new();
     for axis in 0..3 {
         let of = |near: &dyn Fn(&str) -> bool| {
-            inside.lines.iter().find(|(name, _)| axis_of(name) == Some(axis) && near(name)).map(|(name, n)| (axis, name.clone(), *n))
+            inside.lines.iter().find(|(name, _)| axis_of(name) == Some(axis) && near(name)).map(|(name, c)| (axis, name.as_str(), c))
         };
-        let here = |name: &str| rest(name, place).is_some_and(|r| !r.contains('/'));
-        let root = |name: &str| !name.trim_start_matches('/').contains('/');
-        out.extend(of(&here).or_else(|| of(&root)).or_else(|| of(&|_| true)));
+        let directly = |name: &str, place: &str| rest(name, place).is_some_and(|r| !r.contains('/'));
+        out.extend(
+            of(&|n| directly(n, &found.place))
+                .or_else(|| of(&|n| directly(n, &found.step)))
+                .or_else(|| of(&|n| is_below(n, &found.step)))
+                .or_else(|| of(&|n| directly(n, "")))
+                .or_else(|| of(&|_| true)),
+        );
     }
     out
 }
 
 /// Settles the axis order, and gives the samples along x, y, z.
-fn order(shape: &[usize], lines: &[(usize, String, usize)], g: &mut Guess) -> [usize; 3] {
+fn order(shape: &[usize], lines: &[(usize, &str, &Coordinates)], g: &mut Guess) -> [usize; 3] {
     let single = g.spec.velocity.as_ref().or(g.spec.magnetic.as_ref()).is_some_and(|n| n.len() == 1);
     let few = |n: usize| n == 3 || (n == 2 && shape.len() == 3);
     let (before, after) = match (single, few(shape[0]), few(shape[shape.len() - 1])) {
@@ -168,7 +277,7 @@ fn order(shape: &[usize], lines: &[(usize, String, usize)], g: &mut Guess) -> [u
     let space = &shape[before.len()..shape.len() - after.len()];
     let orders: &[&str] = if space.len() == 2 { &["yx", "xy"] } else { &["zyx", "xyz", "zxy", "yzx", "yxz", "xzy"] };
     let samples = |order: &str| ["x", "y", "z"].map(|l| order.find(l).and_then(|p| space.get(p)).copied().unwrap_or(1));
-    let fits = |order: &&&str| lines.iter().all(|(axis, _, n)| samples(order)[*axis] == *n);
+    let fits = |order: &&&str| lines.iter().all(|(axis, _, c)| samples(order)[*axis] == c.values.len());
     let found = orders.iter().find(fits).unwrap_or(&orders[0]);
     g.spec.order = format!("{before}{found}{after}");
     if !(before.is_empty() && after.is_empty()) {
@@ -182,88 +291,76 @@ fn order(shape: &[usize], lines: &[(usize, String, usize)], g: &mut Guess) -> [u
 }
 
 /// Scalars on the same grid.
-fn scalars(inside: &Inside, place: &str, shape: &[usize], g: &mut Guess) {
+fn scalars(inside: &Inside, found: &Found, g: &mut Guess) {
+    let shape = &found.shape;
     let single = g.spec.velocity.as_ref().or(g.spec.magnetic.as_ref()).is_some_and(|n| n.len() == 1);
     let rank = shape.len() - usize::from(single);
     for (words, density) in [(&DENSITY[..], true), (&BUOYANCY[..], false)] {
-        let found = inside.items.iter().find_map(|i| {
-            let name = rest(&i.name, place)?;
-            let plain = name.strip_suffix(".npy").unwrap_or(name).to_lowercase();
-            let sized = i.shape.len() == rank && (single || i.shape == shape);
-            (sized && words.contains(&plain.as_str())).then(|| said(&i.name, place, &g.steps))
+        let named = inside.items.iter().find_map(|i| {
+            let name = plain(rest(&i.name, &found.place)?);
+            let sized = i.shape.len() == rank && (single || i.shape == *shape);
+            (sized && words.contains(&name.as_str())).then(|| said(&i.name, &found.step))
         });
-        let Some(name) = found else { continue };
+        let Some(name) = named else { continue };
         g.reasons.push(format!("{name} named as a {}", if density { "density" } else { "buoyancy" }));
         if density { g.spec.density = Some(name) } else { g.spec.buoyancy = Some(name) }
     }
 }
 
-fn coordinates(lines: &[(usize, String, usize)], samples: [usize; 3], place: &str, g: &mut Guess) {
-    for (axis, path, n) in lines {
-        if samples[*axis] != *n || *n < 2 {
+/// Names the coordinates that fit, and gives how each axis is spaced by them.
+fn coordinates<'a>(
+    lines: &[(usize, &str, &'a Coordinates)],
+    samples: [usize; 3],
+    found: &Found,
+    g: &mut Guess,
+) -> [Option<&'a Coordinates>; 3] {
+    let mut out = [None, None, None];
+    for &(axis, path, line) in lines {
+        let n = samples[axis];
+        if line.values.len() != n || n < 2 {
             continue;
         }
-        let name = said(path, place, &g.steps);
-        g.reasons.push(format!("{name} has as many numbers as samples along {}", ["x", "y", "z"][*axis]));
-        g.spec.coordinates[*axis] = Some(name);
+        let (name, letter) = (said(path, &found.step), ["x", "y", "z"][axis]);
+        if line.check(axis, n).is_err() {
+            g.reasons.push(format!("{name} has as many numbers as samples along {letter}, but they do not ascend: not taken"));
+            continue;
+        }
+        g.reasons.push(format!("{name} has as many numbers as samples along {letter}"));
+        g.spec.coordinates[axis] = Some(name);
+        out[axis] = Some(line);
     }
+    out
 }
 
-/// Attributes that may tell of a place: those of its group, of the root, of the first dataset in it.
-fn attributes<'a>(inside: &'a Inside, place: &str) -> Vec<&'a Named> {
-    let own = inside.groups.iter().filter(|(path, _)| path == place).flat_map(|(_, a)| a);
-    let first = inside.of_items.iter().find(|(path, _)| rest(path, place).is_some_and(|r| !r.is_empty() && !r.contains('/')));
-    own.chain(&inside.attributes).chain(first.into_iter().flat_map(|(_, a)| a)).collect()
+/// Attributes of a group; empty for the root.
+fn of_group<'a>(inside: &'a Inside, place: &str) -> Vec<&'a Named> {
+    if place.is_empty() {
+        return inside.attributes.iter().collect();
+    }
+    inside.groups.iter().filter(|(path, _)| path == place).flat_map(|(_, a)| a).collect()
 }
 
-/// Lengths or spacing of the box.
-fn size(attributes: &[&Named], n: [usize; 3], g: &mut Guess) {
-    let flat = n[2] == 1;
-    if (0..3).all(|a| g.spec.coordinates[a].is_some() || (a == 2 && flat)) {
-        g.spec.lengths = None;
-        return;
-    }
-    let good = |v: &[f64]| v.iter().all(|x| x.is_finite() && *x > 0.0);
-    let find = |name: &str| attributes.iter().find(|a| a.name.eq_ignore_ascii_case(name) && good(&a.numbers)).copied();
-    let triple = |v: &[f64]| match *v {
-        [one] => Some([one; 3]),
-        [x, y] if flat => Some([x, y, 1.0]),
-        [x, y, z] => Some([x, y, z]),
-        _ => None,
-    };
-    let each = |names: [&str; 3]| {
-        let v = names.map(|name| find(name).and_then(|a| if let [one] = a.numbers[..] { Some((a.name.clone(), one)) } else { None }));
-        let said: Vec<&str> = v.iter().flatten().map(|(name, _)| name.as_str()).collect();
-        let said = format!("attributes {}", said.join(", "));
-        let v = v.map(|found| found.map(|(_, one)| one));
-        Some((said, [v[0]?, v[1]?, v[2].or(flat.then_some(1.0))?]))
-    };
-    let whole =
-        |words: &[&str]| words.iter().find_map(|w| find(w).and_then(|a| Some((format!("attribute {}", a.name), triple(&a.numbers)?))));
-    if let Some((from, v)) = each(["lx", "ly", "lz"]).or_else(|| whole(&LENGTHS)) {
-        g.reasons.push(format!("lengths of the box from the {from}, in the order x, y, z"));
-        g.spec.lengths = Some(v);
-    } else if let Some((from, v)) = each(["dx", "dy", "dz"]).or_else(|| whole(&SPACING)) {
-        g.reasons.push(format!("spacing from the {from}, in the order x, y, z"));
-        (g.spec.lengths, g.spec.spacing) = (None, Some(v));
-    } else {
-        g.reasons.push("nothing tells the size of the box: 2 pi is assumed".into());
-    }
-}
-
-fn time(inside: &Inside, attributes: &[&Named], place: &str, g: &mut Guess) {
-    let one = |a: &&&Named| a.numbers.len() == 1 && a.numbers[0].is_finite() && TIMES.contains(&a.name.to_lowercase().as_str());
-    if let Some(a) = attributes.iter().find(one) {
-        g.time = Some(a.numbers[0]);
+/// The time, from the places that are looked at when the snapshot is opened.
+fn time(inside: &Inside, found: &Found, g: &mut Guess) {
+    let one = |a: &&Named| a.one().filter(|_| TIMES.contains(&a.name.to_lowercase().as_str()));
+    let first = inside.of_items.iter().find(|(path, _)| *path == found.first);
+    let mut attributes = of_group(inside, &found.step);
+    attributes.extend(if found.step.is_empty() { &[][..] } else { &inside.attributes[..] });
+    attributes.extend(first.into_iter().flat_map(|(_, a)| a));
+    if let Some((a, value)) = attributes.iter().find_map(|a| Some((a, one(a)?))) {
+        g.time = Some(value);
         g.reasons.push(format!("time from the attribute {}", a.name));
         if !["time", "t"].contains(&a.name.as_str()) {
             g.spec.time.attribute = Some(a.name.clone());
         }
         return;
     }
-    let near = |name: &str| rest(name, place).is_some_and(|r| TIMES.contains(&r.to_lowercase().as_str()));
-    if let Some((path, value)) = inside.scalars.iter().find(|(path, _)| near(path)) {
-        let name = said(path, place, &g.steps);
+    let near = |place: &str| {
+        let named = |path: &str| rest(path, place).is_some_and(|r| TIMES.contains(&r.to_lowercase().as_str()));
+        inside.scalars.iter().find(|(path, _)| named(path))
+    };
+    if let Some((path, value)) = near(&found.place).or_else(|| near(&found.step)).or_else(|| near("")) {
+        let name = said(path, &found.step);
         g.time = Some(*value);
         g.reasons.push(format!("time from the dataset {name}"));
         g.spec.time.dataset = Some(name);

@@ -10,15 +10,17 @@ use ndarray::IxDyn;
 
 use crate::base::error::{Error, Result};
 use crate::read::arrange::arrange;
+use crate::read::attribute::number;
 use crate::read::coordinates::{self, Coordinates};
 use crate::read::header::{Header, Precision, wrong_type};
 use crate::read::names::{GUESSES, HINT, PLACE, choose, has_place, has_vector};
 use crate::read::order::{Axes, Order};
 use crate::read::raw::RawArray;
-use crate::read::shelf::{Shelf, condense, find, number, open_file};
+use crate::read::shelf::{Shelf, condense, find, open_file};
 use crate::read::source::{Array, Arrays, Store};
 use crate::read::spec::InputSpec;
 use crate::read::time::FoundTime;
+use crate::read::{contents, guess, steps};
 
 /// Bytes all chunk caches of a snapshot may take together.
 const CACHE_LIMIT: usize = 512 << 20;
@@ -57,7 +59,13 @@ pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &O
             error.expected(format!("files with {GUESSES} in place of {PLACE}")).found("none of them")
         } else {
             let place = group.map_or("the root group".into(), |g| format!("/{}", g.trim_matches('/')));
-            error.expected(format!("{GUESSES} in {place}")).found(shelf.listing()?)
+            // Steps are looked for only where nobody said which to read.
+            let steps = if group.is_none() { contents::hdf5(path).map(|i| guess::steps(&i)).unwrap_or_default() } else { Vec::new() };
+            let error = error.expected(format!("{GUESSES} in {place}")).found(shelf.listing()?);
+            match steps::hint(path, &steps) {
+                Some(hint) => error.hint(hint),
+                None => error,
+            }
         });
     }
     let mut places: Vec<(PathBuf, String)> = Vec::new();
@@ -66,14 +74,20 @@ pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &O
     for (field, names) in &choices {
         let single = names.len() > 1 || !field.is_vector();
         for name in names {
-            let (file, item) = shelf.place(name, if single { 2..=3 } else { 3..=4 })?;
-            let dataset = find(&shelf.file(&file)?, &file, &item)?;
+            let (file, item) = shelf.place(name, if single { 2..=3 } else { 3..=4 }, field.hint())?;
+            let dataset = find(&shelf.file(&file)?, &file, &item, field.hint())?;
             headers.push(header(&file, &item, &dataset)?);
             datasets.push(dataset);
             places.push((file, item));
         }
     }
-    let arrangement = arrange(&choices, &headers, order, spec.staggering)?;
+    let mut arrangement = arrange(&choices, &headers, order, spec.staggering)?;
+    let mut notes = Vec::new();
+    let fields = &mut arrangement.slots.fields;
+    if fields.velocity && !fields.compressible && is_compressible(&shelf, &places[0].0) {
+        fields.compressible = true;
+        notes.push("the attribute compressible says that the flow is compressible".into());
+    }
     let time = times(&shelf, spec, &places[0], &datasets[0]);
     let coordinates = coordinates_of(&shelf, spec)?;
     let plans: Vec<Plan> = places.iter().zip(&datasets).zip(&arrangement.axes).map(|((p, d), axes)| Plan::new(&p.0, d, axes)).collect();
@@ -106,13 +120,13 @@ pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &O
                         file
                     }
                 };
-                Store::Library(ChunkedArray { header: header.clone(), dataset: find(&file, &path, &item)?, put_in: axes.put_in })
+                Store::Library(ChunkedArray { header: header.clone(), dataset: find(&file, &path, &item, HINT)?, put_in: axes.put_in })
             }
         };
         arrays.push(Array { header, axes, store, depth: plan.depth, filtered: plan.filtered });
     }
     let arrays = Arrays::new(arrays, arrangement.slots, arrangement.samples);
-    Ok(Arrays { time, coordinates, last_face: arrangement.last_face, ..arrays })
+    Ok(Arrays { time, coordinates, last_face: arrangement.last_face, notes, ..arrays })
 }
 
 /// How a dataset is best read.
@@ -178,7 +192,7 @@ fn precision(dtype: &Datatype) -> std::result::Result<Precision, String> {
 }
 
 /// The times that the places named and the usual ones hold. Attributes are those of the step's group, the root group or the first
-/// dataset.
+/// dataset; behind them come datasets of the step's group and the root group.
 fn times(shelf: &Shelf, spec: &InputSpec, first: &(PathBuf, String), dataset: &Dataset) -> FoundTime {
     let Ok(file) = shelf.file(&first.0) else { return FoundTime::default() };
     let group = shelf.group().and_then(|g| file.group(g).ok());
@@ -188,21 +202,30 @@ fn times(shelf: &Shelf, spec: &InputSpec, first: &(PathBuf, String), dataset: &D
     };
     // Of the usual names each place is asked for both before the next place is.
     let usual = |place: &::hdf5::Location| ["time", "t"].into_iter().find_map(|name| number(place, name));
-    let held = |name: &String| {
-        let values = file.dataset(&shelf.rooted(name)).ok()?.read_raw::<f64>().ok()?;
-        if let [time] = values[..] { Some(time).filter(|t| t.is_finite()) } else { None }
+    let one = |path: &str| {
+        let dataset = file.dataset(path).ok().filter(|d| d.size() == 1)?;
+        if let [time] = dataset.read_raw::<f64>().ok()?[..] { Some(time).filter(|t| t.is_finite()) } else { None }
     };
+    let held = |place: &str| ["time", "t"].into_iter().find_map(|name| one(&format!("{place}/{name}")));
+    let attributes = group.as_ref().and_then(|g| usual(g)).or_else(|| usual(&file)).or_else(|| usual(dataset));
     FoundTime {
         attribute: spec.time.attribute.as_ref().and_then(|name| attribute(name)),
-        dataset: spec.time.dataset.as_ref().and_then(held),
-        usual: group.as_ref().and_then(|g| usual(g)).or_else(|| usual(&file)).or_else(|| usual(dataset)),
+        dataset: spec.time.dataset.as_ref().and_then(|name| one(&shelf.rooted(name))),
+        usual: attributes.or_else(|| held(shelf.group()?)).or_else(|| held("")),
     }
+}
+
+/// Whether the group of the step or the root group says in an attribute that the flow is compressible, as cut-outs of such flows do.
+fn is_compressible(shelf: &Shelf, path: &Path) -> bool {
+    let Ok(file) = shelf.file(path) else { return false };
+    let group = shelf.group().and_then(|g| file.group(g).ok()).and_then(|g| number(&g, "compressible"));
+    group.or_else(|| number(&file, "compressible")) == Some(1.0)
 }
 
 /// The coordinates named: datasets of the file, else files beside it.
 fn coordinates_of(shelf: &Shelf, spec: &InputSpec) -> Result<[Option<Coordinates>; 3]> {
     let mut out = [None, None, None];
-    for (slot, name) in out.iter_mut().zip(&spec.coordinates) {
+    for (a, (slot, name)) in out.iter_mut().zip(&spec.coordinates).enumerate() {
         let Some(name) = name else { continue };
         let path = shelf.some_path()?;
         let file = shelf.file(&path)?;
@@ -212,7 +235,9 @@ fn coordinates_of(shelf: &Shelf, spec: &InputSpec) -> Result<[Option<Coordinates
             *slot = Some(coordinates::beside(folder, name)?);
             continue;
         }
-        let dataset = find(&file, &path, &item)?;
+        let axis = ["x", "y", "z"][a];
+        let hint = format!("--coordinates {axis}=NAME names a dataset of the file, or a file beside it");
+        let dataset = find(&file, &path, &item, &hint)?;
         let fault = || Error::input("cannot use the coordinates").at(&path).item(&item);
         if dataset.ndim() != 1 {
             let shape = crate::read::header::shape_text(&dataset.shape());

@@ -35,16 +35,19 @@ use crate::read::staggered::Centred;
 use crate::space::grid::Grid;
 
 mod arrange;
+mod attribute;
 mod binary;
 mod contents;
 mod coordinates;
 mod density;
 mod geometry;
 mod guess;
+mod guess_box;
 mod guess_raw;
 mod hdf5;
 mod header;
 pub mod inspect;
+mod inspect_parts;
 mod layers;
 mod names;
 mod natural;
@@ -59,6 +62,7 @@ mod shelf;
 mod source;
 mod spec;
 mod staggered;
+mod steps;
 mod superblock;
 mod time;
 
@@ -69,7 +73,8 @@ pub struct Opened {
     /// The supplier of planes.
     pub source: AnySource,
     /// Time of the snapshot in the user's unit: the one given with the snapshot, else from the places that [`TimeSource`] names, else
-    /// the attribute `time` or `t` of the step's group, the root group or the first dataset read.
+    /// the attribute `time` or `t` of the step's group, the root group or the first dataset read, else a dataset of that name with one
+    /// number in the step's group or the root group.
     pub time: Option<f64>,
     /// Name of the snapshot: the file name without its extension (unless that is a number) and without `{field}`, or the name of the
     /// folder; a group follows behind `_`.
@@ -117,7 +122,9 @@ pub fn open(snapshot: &SnapshotRef, spec: &InputSpec) -> Result<Opened> {
         }
     }
     let mut notes = arrays.slots.notes();
-    if arrays.slots.fields.compressible && !arrays.slots.density {
+    notes.append(&mut arrays.notes);
+    notes.extend(names::fixed(spec, group));
+    if spec.density.is_some() && !arrays.slots.density {
         notes.push("the density is not read: only the magnetic field is divided by its root".into());
     }
     let (grid, said) = geometry::grid(spec, arrays.samples, &arrays.coordinates)?;

@@ -42,6 +42,15 @@ impl Field {
         }
     }
 
+    /// What to try when its names do not fit.
+    pub fn hint(self) -> &'static str {
+        match self {
+            Field::Velocity | Field::Magnetic => HINT,
+            Field::Buoyancy => "--buoyancy NAME names it",
+            Field::Density => "--density NAME names it",
+        }
+    }
+
     /// Whether it has components.
     pub fn is_vector(self) -> bool {
         matches!(self, Field::Velocity | Field::Magnetic)
@@ -141,4 +150,21 @@ fn has_components(shape: &[usize]) -> bool {
 
 fn is_plane(shape: &[usize]) -> bool {
     shape.len() == 2 || (shape.len() == 3 && shape.contains(&1))
+}
+
+/// What the user should know of names that are absolute and lie in a group like that of the step: they are the same for every step.
+pub(super) fn fixed(spec: &InputSpec, group: Option<&str>) -> Vec<String> {
+    let Some(group) = group.filter(|g| g.bytes().any(|b| b.is_ascii_digit())) else { return Vec::new() };
+    let bare = |part: &str| part.chars().filter(|c| !c.is_ascii_digit() && *c != '.').collect::<String>();
+    let numbered = |part: &str| part.bytes().any(|b| b.is_ascii_digit());
+    let steps: Vec<&str> = group.trim_matches('/').split('/').collect();
+    let is_fixed = |name: &String| {
+        let parts: Vec<&str> = name.trim_matches('/').split('/').collect();
+        let alike = |(a, b): (&&str, &&str)| a == b || (numbered(a) && numbered(b) && bare(a) == bare(b));
+        name.starts_with('/') && parts.len() > steps.len() && parts.iter().zip(&steps).all(alike)
+    };
+    let vectors = [&spec.velocity, &spec.magnetic].into_iter().flatten().flatten();
+    let others = [&spec.buoyancy, &spec.density, &spec.time.dataset].into_iter().chain(&spec.coordinates).flatten();
+    let all = vectors.chain(others).filter(|name| is_fixed(name));
+    all.map(|name| format!("the name {name} is absolute: the same for every step")).collect()
 }

@@ -69,10 +69,10 @@ pub(super) fn open_folder(folder: &Path, spec: &InputSpec, order: &Order) -> Res
             .hint(HINT));
     }
     let mut files = Vec::new();
-    for name in choices.iter().flat_map(|(_, names)| names) {
+    for (field, name) in each(&choices) {
         let path = file_of(name);
         if !path.is_file() {
-            return Err(Error::input("cannot find the file").at(&path).found(format!("only {}", listing(folder))).hint(HINT));
+            return Err(Error::input("cannot find the file").at(&path).found(format!("only {}", listing(folder))).hint(field.hint()));
         }
         files.push(read_header(&path, label(folder, name))?);
     }
@@ -90,15 +90,20 @@ pub(super) fn open_many(path: &Path, spec: &InputSpec, order: &Order) -> Result<
             .hint(HINT));
     }
     let mut files = Vec::new();
-    for name in choices.iter().flat_map(|(_, names)| names) {
+    for (field, name) in each(&choices) {
         let path = with_name(path, name);
         if !path.is_file() {
-            return Err(Error::input("cannot find the file").at(&path).found("nothing").hint(HINT));
+            return Err(Error::input("cannot find the file").at(&path).found("nothing").hint(field.hint()));
         }
         let own = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
         files.push(read_header(&path, own)?);
     }
     assemble(&choices, files, spec, order)
+}
+
+/// Every name with its field.
+fn each(choices: &[Choice]) -> impl Iterator<Item = (Field, &String)> {
+    choices.iter().flat_map(|(field, names)| names.iter().map(move |name| (*field, name)))
 }
 
 /// The shape of a file, if there is one. A damaged one counts as present, so that its damage is reported and not its absence.

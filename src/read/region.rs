@@ -35,7 +35,7 @@ pub(super) fn settle(region: &[Option<Stretch>; 3], grid: &Grid) -> Result<Optio
         (cut.first[a], cut.n[a]) = (first, count);
         out.n[a] = count;
         match &grid.stretched[a] {
-            Some(s) => out = out.with_positions(a, s.positions[first as usize..first as usize + count].to_vec()),
+            Some(_) => out = out.with_part(a, first as usize..first as usize + count),
             None => out.origin[a] = grid.position(a, first as f64),
         }
         // The whole of a periodic axis stays periodic, wherever it begins.
@@ -45,11 +45,11 @@ pub(super) fn settle(region: &[Option<Stretch>; 3], grid: &Grid) -> Result<Optio
 }
 
 fn fault(axis: usize, stretch: &Stretch) -> Error {
-    let said = match stretch {
-        Stretch::Indices(a, b) => format!("samples {a}..{b}"),
-        Stretch::Positions(a, b) => format!("positions {a} to {b}"),
-    };
-    Error::usage(WHAT).item(format!("--region {} {said}", ["x", "y", "z"][axis]))
+    let axis = ["x", "y", "z"][axis];
+    Error::usage(WHAT).item(match stretch {
+        Stretch::Indices(a, b) => format!("--region-cells {axis} {a}..{b}"),
+        Stretch::Positions(a, b) => format!("--region {axis} {a} to {b}"),
+    })
 }
 
 fn samples(axis: usize, stretch: &Stretch, grid: &Grid) -> Result<(i64, usize)> {
@@ -57,7 +57,7 @@ fn samples(axis: usize, stretch: &Stretch, grid: &Grid) -> Result<(i64, usize)> 
     let (first, end) = match *stretch {
         Stretch::Indices(first, end) => {
             if end <= first {
-                return Err(fault(axis, stretch).expected("an end above the first sample").found("no samples"));
+                return Err(fault(axis, stretch).expected("an end above the first sample").found("no samples").hint(ENDS));
             }
             if !grid.periodic[axis] && (first < 0 || end > n) {
                 return Err(fault(axis, stretch).expected(format!("samples inside 0..{n}")).found("an open axis").hint(WRAP));
@@ -68,7 +68,8 @@ fn samples(axis: usize, stretch: &Stretch, grid: &Grid) -> Result<(i64, usize)> 
     };
     let count = end.checked_sub(first).unwrap_or(i64::MAX);
     if count > n {
-        return Err(fault(axis, stretch).expected(format!("at most one period, {n} samples")).found(format!("{count} samples")));
+        let hint = "the first sample of the next period is that of this one: end before it";
+        return Err(fault(axis, stretch).expected(format!("at most one period, {n} samples")).found(format!("{count} samples")).hint(hint));
     }
     if count < 2 {
         return Err(fault(axis, stretch).expected("at least 2 samples").found(format!("{}", count.max(0))).hint("widen the region"));
@@ -76,12 +77,14 @@ fn samples(axis: usize, stretch: &Stretch, grid: &Grid) -> Result<(i64, usize)> 
     Ok((first, count as usize))
 }
 
+const ENDS: &str = "indices count from 0, the second is one past the last sample";
+const ORDER: &str = "the first sample taken comes first, also across a periodic face";
 const WRAP: &str = "a region goes across a face only where the axis is periodic";
 
 /// First sample and one past the last of a range of positions.
 fn positions(axis: usize, stretch: &Stretch, from: f64, to: f64, grid: &Grid) -> Result<(i64, i64)> {
     if !(from.is_finite() && to.is_finite() && from <= to) {
-        return Err(fault(axis, stretch).expected("two finite positions in ascending order").found(format!("{from} and {to}")));
+        return Err(fault(axis, stretch).expected("two finite positions in ascending order").found(format!("{from} and {to}")).hint(ORDER));
     }
     let n = grid.n[axis];
     let (low, high) = (grid.position(axis, 0.0), grid.position(axis, (n - 1) as f64));

@@ -5,11 +5,12 @@ use std::cmp::Ordering;
 use std::ops::RangeInclusive;
 use std::path::{Path, PathBuf};
 
-use ::hdf5::{Dataset, File, Group, Location, LocationInfo, LocationType};
+use ::hdf5::{Dataset, File, Group, LocationInfo, LocationType};
 
 use crate::base::error::{Error, Result};
 use crate::read::header::shape_text;
-use crate::read::names::{HINT, has_place, with_name};
+use crate::read::names::{has_place, with_name};
+use crate::read::steps::{is_pattern, no_steps};
 
 /// Most datasets named in a message, and how deep groups are searched for them.
 const LISTED: usize = 12;
@@ -34,7 +35,7 @@ impl Shelf {
             if let Some(group) = &shelf.group
                 && !matches!(file.loc_type_by_name(group), Ok(LocationType::Group))
             {
-                return Err(Error::input("cannot find the group").at(path).item(group).found(format!("only {}", groups_text(&file))));
+                return Err(no_group(path, group, &file));
             }
         }
         Ok(shelf)
@@ -76,7 +77,7 @@ impl Shelf {
                 return None;
             }
             // A file that cannot be used counts as present, so that its fault is reported and not its absence.
-            self.place(name, 2..=4).unwrap_or_else(|_| (with_name(&self.path, name), self.rooted(name)))
+            self.place(name, 2..=4, "").unwrap_or_else(|_| (with_name(&self.path, name), self.rooted(name)))
         } else {
             (self.path.clone(), self.rooted(name))
         };
@@ -85,15 +86,15 @@ impl Shelf {
     }
 
     /// The file and dataset of a name. In a file of its own, a component is the dataset of that name or the only one with a rank of
-    /// `ranks`.
-    pub fn place(&self, name: &str, ranks: RangeInclusive<usize>) -> Result<(PathBuf, String)> {
+    /// `ranks`. The hint is for one that is not there.
+    pub fn place(&self, name: &str, ranks: RangeInclusive<usize>, hint: &str) -> Result<(PathBuf, String)> {
         let item = self.rooted(name);
         if !has_place(&self.path) {
             return Ok((self.path.clone(), item));
         }
         let path = with_name(&self.path, name);
         if !path.is_file() {
-            return Err(Error::input("cannot find the file").at(&path).found("nothing").hint(HINT));
+            return Err(Error::input("cannot find the file").at(&path).found("nothing").hint(hint));
         }
         let file = self.file(&path)?;
         if file.dataset(&item).is_ok() {
@@ -104,7 +105,7 @@ impl Shelf {
         match self.group.as_deref().map_or_else(|| Ok((*file).clone()), |g| file.group(g)) {
             Ok(group) => datasets(&group, &place, MOST, &mut all),
             Err(_) => {
-                return Err(Error::input("cannot find the group").at(&path).item(place).found(format!("only {}", groups_text(&file))));
+                return Err(no_group(&path, &place, &file));
             }
         }
         let fitting: Vec<&(String, Dataset)> = all.iter().filter(|(_, d)| ranks.contains(&d.ndim())).collect();
@@ -124,6 +125,14 @@ impl Shelf {
     }
 }
 
+/// The error for a group that is not there, or a pattern that matches none.
+fn no_group(path: &Path, group: &str, file: &File) -> Error {
+    if is_pattern(group) {
+        return no_steps(path, group.trim_matches('/'), file);
+    }
+    Error::input("cannot find the group").at(path).item(group).found(format!("only {}", groups_text(file)))
+}
+
 /// Opens a file that was found to be HDF5, with slots and bytes of the chunk cache where they matter.
 pub(super) fn open_file(path: &Path, cache: Option<(usize, usize)>) -> Result<File> {
     super::superblock::check(path)?;
@@ -139,30 +148,22 @@ pub(super) fn open_file(path: &Path, cache: Option<(usize, usize)>) -> Result<Fi
     })
 }
 
-/// The dataset of a path inside a file.
-pub(super) fn find(file: &File, path: &Path, name: &str) -> Result<Dataset> {
+/// The dataset of a path inside a file. The hint is for one that is not there.
+pub(super) fn find(file: &File, path: &Path, name: &str, hint: &str) -> Result<Dataset> {
     let fault = |what: &str| Error::input(what).at(path).item(name);
     match file.loc_type_by_name(name) {
         Ok(LocationType::Dataset) => {}
         Ok(LocationType::Group) => {
-            return Err(fault("cannot use the dataset").expected("a dataset").found("a group").hint(HINT));
+            return Err(fault("cannot use the dataset").expected("a dataset").found("a group").hint(hint));
         }
         Ok(_) => {
-            return Err(fault("cannot use the dataset").expected("a dataset").found("another object").hint(HINT));
+            return Err(fault("cannot use the dataset").expected("a dataset").found("another object").hint(hint));
         }
         Err(_) => {
-            return Err(fault("cannot find the dataset").found(format!("only {}", listing(file))).hint(HINT));
+            return Err(fault("cannot find the dataset").found(format!("only {}", listing(file))).hint(hint));
         }
     }
     file.dataset(name).map_err(|e| fault("cannot open the dataset").found(condense(&e)))
-}
-
-/// An attribute, if it is one finite number.
-pub(super) fn number(place: &Location, name: &str) -> Option<f64> {
-    match place.attr(name).ok()?.read_raw::<f64>().ok()?.as_slice() {
-        [one] if one.is_finite() => Some(*one),
-        _ => None,
-    }
 }
 
 /// The datasets of a file with shapes, for messages.

@@ -63,6 +63,8 @@ pub(super) struct Arrays {
     pub datasets: Vec<String>,
     /// How every component delivered is named to the user.
     pub components: Vec<String>,
+    /// What the user should know of the files.
+    pub notes: Vec<String>,
 }
 
 impl Arrays {
@@ -83,6 +85,7 @@ impl Arrays {
         }
         components.truncate(slots.fields.components());
         Arrays {
+            notes: Vec::new(),
             arrays,
             slots,
             samples,

@@ -43,7 +43,8 @@ pub enum Stretch {
     Positions(f64, f64),
 }
 
-/// Where the time of a snapshot stands; the first that is given and found wins, then the attributes `time` and `t`.
+/// Where the time of a snapshot stands; the first that is given and found wins, then the attributes `time` and `t`, then datasets of
+/// those names in the step's group or the root group that hold one number. Attributes may be numbers or texts of one number.
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct TimeSource {
     /// Name of an attribute of the root group, the step's group or the first dataset.
@@ -81,12 +82,18 @@ pub struct InputSpec {
     /// A plane is `yx` or `xy`, which any order without its z means as well, or has an axis of length 1, which must be z.
     pub order: String,
     /// Box lengths, in the user's length unit: number of samples times spacing, at open faces too.
-    /// Exactly one of lengths and spacing must be given, unless all axes have coordinates. The entry of an axis with coordinates and
-    /// that of z on a plane mean nothing. Default none.
+    /// Exactly one of lengths and spacing must be given, unless all axes have coordinates. The entry of z on a plane means nothing.
+    ///
+    /// On an axis with coordinates 0 says nothing. Otherwise, where they are unequally spaced, the two cells at the ends are made so
+    /// that all cells together have that length L: each reaches `(L - (last - first)) / 2` beyond its sample, which must be from 0
+    /// to the distance to the neighbour. Samples on the walls of a channel have `L = last - first`, half cells at the walls. With 0
+    /// each reaches half the distance to its neighbour. Where they are equally spaced L must be the number of samples times their
+    /// distance, to a thousandth and to half a spacing. Default none.
     pub lengths: Option<[f64; 3]>,
-    /// Distance between samples, in the user's length unit. Default none.
+    /// Distance between samples, in the user's length unit. On an axis with coordinates 0 says nothing; otherwise it must be their
+    /// distance, which unequally spaced ones do not have. Default none.
     pub spacing: Option<[f64; 3]>,
-    /// Position of the first sample. Default 0.
+    /// Position of the first sample; on an axis with coordinates these decide. Default 0.
     pub origin: [f64; 3],
     /// Which axes wrap. Default all.
     pub periodic: [bool; 3],
@@ -142,10 +149,11 @@ impl InputSpec {
         // A plane needs no size along z: whether it is one is known only when its arrays are.
         let needed = [0, 1].map(|a| self.coordinates[a].is_none());
         let needed = [needed[0], needed[1], false];
+        let bare = [0, 1, 2].map(|a| self.coordinates[a].is_none());
         match (&self.lengths, &self.spacing) {
             (Some(l), None) => check_size("--lengths", l, needed)?,
             (None, Some(s)) => check_size("--spacing", s, needed)?,
-            (None, None) if needed.contains(&true) => return Err(no_size()),
+            (None, None) if needed.contains(&true) => return Err(no_size(bare)),
             (None, None) => {}
             (Some(_), Some(_)) => return Err(size_fault("both", "drop one of them")),
         }
@@ -195,12 +203,14 @@ impl RawLayout {
 }
 
 fn size_fault(found: &str, hint: &str) -> Error {
-    Error::usage("cannot settle the size of the box").item("--lengths, --spacing").expected("exactly one of them").found(found).hint(hint)
+    Error::usage("cannot settle the size of the box").item("--lengths, --spacing").expected("one of them").found(found).hint(hint)
 }
 
-/// The error when the size of an axis is not given.
-pub(super) fn no_size() -> Error {
-    size_fault("neither", "--lengths 6.283185,6.283185,6.283185 for a 2 pi box")
+/// The error when the size of axes is not given.
+pub(super) fn no_size(without: [bool; 3]) -> Error {
+    let axes: Vec<&str> = ["x", "y", "z"].into_iter().zip(without).filter(|(_, w)| *w).map(|(a, _)| a).collect();
+    let error = size_fault("neither", "--lengths 6.283185,6.283185,6.283185 for a 2 pi box");
+    if axes.len() == 3 { error } else { error.expected(format!("one of them for {}", axes.join(", "))) }
 }
 
 /// Checks the entries of a triple that are needed.

@@ -34,10 +34,9 @@ pub(super) fn check(path: &Path) -> Result<()> {
         at = if at == 0 { 512 } else { at * 2 };
         if at >= length {
             let head = bytes(&mut file, 0, 8).map_err(io)?;
-            return Err(fault()
-                .expected("an HDF5 signature")
-                .found(format!("a file beginning \"{}\"", head.escape_ascii()))
-                .hint("snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout"));
+            return Err(fault().expected("an HDF5 signature").found(format!("a file beginning \"{}\"", head.escape_ascii())).hint(
+                "snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need --raw-values and --raw-shape",
+            ));
         }
     }
     let block = bytes(&mut file, at, 96).map_err(io)?;

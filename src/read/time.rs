@@ -15,7 +15,7 @@ pub(super) struct FoundTime {
     pub attribute: Option<f64>,
     /// The dataset that the user names.
     pub dataset: Option<f64>,
-    /// A usual attribute.
+    /// A usual attribute or dataset.
     pub usual: Option<f64>,
 }
 

@@ -29,7 +29,7 @@ pub struct Stretched {
     /// Largest of the widths.
     pub largest: f64,
     /// Widths of their cells: half the distance between the neighbours; at the ends the distance to the only neighbour, so that
-    /// equal spacing gives every sample a whole cell.
+    /// equal spacing gives every sample a whole cell, unless a length of all cells is given.
     pub widths: Vec<f64>,
 }
 
@@ -54,18 +54,58 @@ impl Grid {
         self
     }
 
-    /// The same grid with the samples of one axis, which becomes open, at the given positions.
+    /// The same grid with the samples of one axis, which becomes open, at the given positions; the cells at the ends are as wide as
+    /// the distance to the neighbour.
     ///
     /// # Panics
     /// When their number is not that of the samples, is below 2, or they do not ascend strictly.
     #[must_use]
-    pub fn with_positions(mut self, axis: usize, positions: Vec<f64>) -> Grid {
+    pub fn with_positions(self, axis: usize, positions: Vec<f64>) -> Grid {
+        let reach = ends(&positions).map(|gap| 0.5 * gap);
+        self.reaching(axis, positions, reach)
+    }
+
+    /// As [`Grid::with_positions`], but all cells together have the given length: those at the two ends reach equally far beyond
+    /// their samples. A length of `last - first` gives half cells, as for samples on walls.
+    ///
+    /// # Panics
+    /// As `with_positions`, and when the cells at the ends would reach back, or farther than to their neighbours.
+    #[must_use]
+    pub fn with_positions_over(self, axis: usize, positions: Vec<f64>, length: f64) -> Grid {
+        let span = positions.last().unwrap_or(&0.0) - positions.first().unwrap_or(&0.0);
+        let reach = 0.5 * (length - span);
+        let most = ends(&positions).into_iter().fold(f64::INFINITY, f64::min);
+        let slack = 1e-9 * span;
+        assert!(reach >= -slack && reach <= most + slack, "expected a length from {span} to {}, got {length}", span + 2.0 * most);
+        self.reaching(axis, positions, [reach.max(0.0); 2])
+    }
+
+    /// The same grid with a part of a stretched axis. Where it ends as the axis does, its last cell is that of the axis.
+    ///
+    /// # Panics
+    /// When the axis is not stretched or the part has fewer than 2 samples.
+    #[must_use]
+    pub fn with_part(mut self, axis: usize, part: Range<usize>) -> Grid {
+        let whole = self.stretched[axis].clone().expect("a stretched axis");
+        let (positions, n) = (whole.positions[part.clone()].to_vec(), whole.positions.len());
+        let [own, all] = [ends(&positions), ends(&whole.positions)];
+        let reach = [
+            if part.start == 0 { whole.widths[0] - 0.5 * all[0] } else { 0.5 * own[0] },
+            if part.end == n { whole.widths[n - 1] - 0.5 * all[1] } else { 0.5 * own[1] },
+        ];
+        self.n[axis] = positions.len();
+        self.reaching(axis, positions, reach)
+    }
+
+    /// The samples of one axis at positions, with cells at its ends that reach so far beyond their samples.
+    fn reaching(mut self, axis: usize, positions: Vec<f64>, reach: [f64; 2]) -> Grid {
         let n = positions.len();
         assert!(n == self.n[axis] && n >= 2, "expected {} positions, got {n}", self.n[axis]);
         assert!(positions.windows(2).all(|p| p[0] < p[1]), "expected strictly ascending positions");
+        let [first, last] = ends(&positions);
         let width = |i: usize| match i {
-            0 => positions[1] - positions[0],
-            i if i + 1 == n => positions[i] - positions[i - 1],
+            0 => reach[0] + 0.5 * first,
+            i if i + 1 == n => 0.5 * last + reach[1],
             i => 0.5 * (positions[i + 1] - positions[i - 1]),
         };
         let widths: Vec<f64> = (0..n).map(width).collect();
@@ -191,6 +231,14 @@ impl Grid {
     }
 }
 
+/// Distances of the first and the last position to their neighbours.
+fn ends(positions: &[f64]) -> [f64; 2] {
+    match positions {
+        [a, b, ..] => [b - a, positions[positions.len() - 1] - positions[positions.len() - 2]],
+        _ => [0.0; 2],
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -212,5 +260,21 @@ mod tests {
         let g = Grid::periodic([4, 4, 1], [8.0, 4.0, 7.0]);
         assert!(g.is_flat());
         assert_eq!(g.largest_cell(), 2.0);
+    }
+
+    /// Samples of a channel on both walls: the cells fill it exactly, the trapezoidal rule (textbook quadrature).
+    #[test]
+    fn a_length_settles_the_cells_at_the_ends() {
+        let walls = vec![-1.0, -0.75, 0.0, 0.5, 1.0];
+        let plain = Grid::periodic([4, 5, 4], [1.0; 3]);
+        let g = plain.clone().with_positions_over(1, walls.clone(), 2.0);
+        assert_eq!(g.stretched[1].as_ref().unwrap().widths, [0.125, 0.5, 0.625, 0.5, 0.25]);
+        assert_eq!((g.length(1), g.origin[1], g.periodic), (2.0, -1.0, [true, false, true]));
+        let g = plain.clone().with_positions_over(1, walls.clone(), 2.25);
+        assert_eq!(g.stretched[1].as_ref().unwrap().widths, [0.25, 0.5, 0.625, 0.5, 0.375]);
+        let part = g.clone().with_part(1, 0..3);
+        assert_eq!(part.stretched[1].as_ref().unwrap().widths, [0.25, 0.5, 0.75]);
+        assert_eq!(g.clone().with_part(1, 0..5), g);
+        assert!(std::panic::catch_unwind(|| plain.with_positions_over(1, walls, 2.6)).is_err());
     }
 }

@@ -34,6 +34,8 @@ fn with_lines(dir: &Path, lines: &[(&str, Vec<f64>)]) -> PathBuf {
 fn along(axis: usize, name: &str) -> InputSpec {
     let mut own = InputSpec { lengths: Some([6.0, 5.0, 4.5]), origin: [7.0; 3], ..spec("zyx") };
     own.coordinates[axis] = Some(name.into());
+    own.lengths.as_mut().unwrap()[axis] = 0.0;
+    own.origin[axis] = 0.0;
     own
 }
 
@@ -55,9 +57,7 @@ fn unequal_spacing_makes_an_open_stretched_axis() {
         assert_eq!([0, 1, 2].map(|a| a == axis || grid.spacing[a] == 0.5), [true; 3]);
         let name = ["x", "y", "z"][axis];
         assert_eq!(got.notes, [format!("{name} axis: the coordinates /grid/line are unequally spaced, the axis is open")]);
-        // The entry of such an axis in the lengths means nothing.
         let mut own = along(axis, "grid/line");
-        own.lengths.as_mut().unwrap()[axis] = 0.0;
         own.periodic[axis] = false;
         let got = opened(&path, &own);
         assert_eq!(got.source.grid().spacing, grid.spacing);
@@ -149,8 +149,8 @@ fn coordinates_that_do_not_fit() {
     let refused = |name: &str| fault(dir.path(), &path.clone().into(), &along(0, name));
     assert_eq!(
         refused("y").1,
-        "cannot find the dataset: DIR/s.h5: /y: found only /u 9x10x12, /v 9x10x12, /w 9x10x12, /x 12; hint: --velocity U,V,W or \
-         --magnetic BX,BY,BZ names them (or one name of an array with a component axis)"
+        "cannot find the dataset: DIR/s.h5: /y: found only /u 9x10x12, /v 9x10x12, /w 9x10x12, /x 12; hint: --coordinates x=NAME \
+         names a dataset of the file, or a file beside it"
     );
     assert_eq!(refused("u").1, "cannot use the coordinates: DIR/s.h5: /u: expected a dataset with one axis, found 9x10x12");
     write(dir.path(), "x.txt", b"1\n2 # two\n3,4\n");
@@ -161,7 +161,7 @@ fn coordinates_that_do_not_fit() {
     let own = InputSpec { lengths: None, ..along(0, "x") };
     assert_eq!(
         fault(dir.path(), &path.clone().into(), &own).1,
-        "cannot settle the size of the box: --lengths, --spacing: expected exactly one of them, found neither; \
+        "cannot settle the size of the box: --lengths, --spacing: expected one of them for y, z, found neither; \
          hint: --lengths 6.283185,6.283185,6.283185 for a 2 pi box"
     );
     let own = InputSpec { lengths: None, coordinates: [Some("x".into()), Some("single".into()), None], ..spec("zyx") };
@@ -177,6 +177,83 @@ fn coordinates_that_do_not_fit() {
         "cannot find the coordinates: DIR/run/z.txt: expected a .npy file, or a text file with one number a line, found nothing; \
          hint: names are those of files in the folder of the snapshot"
     );
+}
+
+/// Lengths beside coordinates. That samples on both walls fill the channel with half cells there is the trapezoidal rule.
+#[test]
+fn lengths_settle_the_cells_at_the_ends() {
+    let dir = tempfile::tempdir().unwrap();
+    let walls: Vec<f64> = vec![-1.0, -0.9, -0.6, -0.2, 0.0, 0.2, 0.5, 0.7, 0.95, 1.0];
+    let path = with_lines(dir.path(), &[("y", walls.clone()), ("x", (0..12).map(|i| 0.5 + 0.25 * f64::from(i)).collect())]);
+    let with = |axis: usize, length: f64| {
+        let mut own = along(axis, ["x", "y"][axis]);
+        own.lengths.as_mut().unwrap()[axis] = length;
+        own
+    };
+    let grid = |length: f64| opened(&path, &with(1, length)).source.grid().clone();
+    let ends = |length: f64| {
+        let widths = grid(length).stretched[1].as_ref().unwrap().widths.clone();
+        ((widths[0] * 1e6).round() / 1e6, (widths[9] * 1e6).round() / 1e6)
+    };
+    assert_eq!((ends(0.0), ends(2.0), ends(2.1)), ((0.1, 0.05), (0.05, 0.025), (0.1, 0.075)));
+    assert!((grid(2.0).length(1) - 2.0).abs() < 1e-15 && (grid(2.0000001).length(1) - 2.0).abs() < 1e-6);
+    let refused = |own: &InputSpec| fault(dir.path(), &path.clone().into(), own);
+    let usage = |text: &str| (Kind::Usage, format!("cannot settle the size of the box: {text}"));
+    for length in [1.99, 2.2] {
+        assert_eq!(
+            refused(&with(1, length)),
+            usage(&format!(
+                "--lengths for y: expected 2 to 2.1, as the coordinates /y go from -1 to 1, found {length}; \
+                 hint: leave the entry of y 0 for whole cells at the ends"
+            ))
+        );
+    }
+    assert_eq!(
+        refused(&with(1, f64::NAN)),
+        usage(
+            "--lengths for y: expected a finite number above 0, or 0, found NaN; hint: leave the entry of y 0 to take what the coordinates say"
+        )
+    );
+    // Equal spacing: 12 samples 0.25 apart are 3 long.
+    assert_eq!(opened(&path, &with(0, 3.001)).source.grid().spacing[0], 0.25);
+    assert_eq!(
+        refused(&with(0, 3.1)),
+        usage(
+            "--lengths for x: expected 3, as 12 coordinates /x that are 0.25 apart say, found 3.1; \
+             hint: leave the entry of x 0 to take what the coordinates say"
+        )
+    );
+    assert_eq!(
+        refused(&with(0, 2.75)),
+        usage(
+            "--lengths for x: expected 3, as 12 coordinates /x that are 0.25 apart say, found 2.75; \
+             hint: the last sample repeats the first one of the period, or the samples lie on both walls: store the arrays without it, \
+             or leave the entry of x 0 for whole cells at the walls"
+        )
+    );
+    let spaced = |axis: usize, spacing: [f64; 3]| InputSpec { lengths: None, spacing: Some(spacing), ..along(axis, ["x", "y"][axis]) };
+    assert_eq!(opened(&path, &spaced(0, [0.25, 1.0, 1.0])).source.grid().spacing, [0.25, 1.0, 1.0]);
+    assert_eq!(
+        refused(&spaced(0, [0.26, 1.0, 1.0])),
+        usage(
+            "--spacing for x: expected 0.25, as 12 coordinates /x that are 0.25 apart say, found 0.26; \
+             hint: leave the entry of x 0 to take what the coordinates say"
+        )
+    );
+    assert_eq!(
+        refused(&spaced(1, [1.0; 3])),
+        usage(
+            "--spacing for y: expected 0, as the coordinates /y are unequally spaced, found 1; \
+             hint: --lengths says how long all cells are together"
+        )
+    );
+    // The coordinates decide where the axis begins. A region that ends at a wall keeps the cell there.
+    let mut own = InputSpec { origin: [7.0; 3], ..with(1, 2.0) };
+    own.region[1] = Some(Stretch::Indices(0, 4));
+    let got = opened(&path, &own);
+    assert_eq!(got.source.grid().stretched[1].as_ref().unwrap().widths[0], grid(2.0).stretched[1].as_ref().unwrap().widths[0]);
+    assert_eq!(got.source.grid().origin, [7.0, -1.0, 7.0]);
+    assert_eq!(got.notes[0], "y axis: it begins at -1, as the coordinates /y say, not at the origin 7");
 }
 
 #[test]
@@ -232,5 +309,7 @@ fn densities_must_be_positive_where_they_are_needed() {
         assert_eq!(values(&path, &own)[2], coded(N, 2));
     }
     let own = InputSpec { velocity: crate::files::names(&["u", "v", "w"]), density: Some("ro".into()), ..spec("zyx") };
-    assert!(fault(dir.path(), &path.into(), &own).1.starts_with("cannot find the dataset: DIR/s.h5: /ro: found only /bx"));
+    let text = fault(dir.path(), &path.into(), &own).1;
+    assert!(text.starts_with("cannot find the dataset: DIR/s.h5: /ro: found only /bx"), "{text}");
+    assert!(text.ends_with("; hint: --density NAME names it"), "{text}");
 }

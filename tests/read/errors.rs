@@ -90,11 +90,11 @@ fn descriptions_that_make_no_sense() {
     );
     check(
         &|s| s.lengths = None,
-        "cannot settle the size of the box: --lengths, --spacing: expected exactly one of them, found neither; hint: --lengths 6.283185,6.283185,6.283185 for a 2 pi box",
+        "cannot settle the size of the box: --lengths, --spacing: expected one of them, found neither; hint: --lengths 6.283185,6.283185,6.283185 for a 2 pi box",
     );
     check(
         &|s| s.spacing = Some([1.0; 3]),
-        "cannot settle the size of the box: --lengths, --spacing: expected exactly one of them, found both; hint: drop one of them",
+        "cannot settle the size of the box: --lengths, --spacing: expected one of them, found both; hint: drop one of them",
     );
     check(
         &|s| s.lengths = Some([1.0, 0.0, 1.0]),
@@ -127,11 +127,11 @@ fn files_that_are_not_hdf5() {
     );
     check(
         Some(b"time,energy\n0,1\n"),
-        "cannot read the HDF5 file: DIR/s.h5: expected an HDF5 signature, found a file beginning \"time,ene\"; hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout",
+        "cannot read the HDF5 file: DIR/s.h5: expected an HDF5 signature, found a file beginning \"time,ene\"; hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need --raw-values and --raw-shape",
     );
     check(
         Some(&[b'x'; 5000]),
-        "cannot read the HDF5 file: DIR/s.h5: expected an HDF5 signature, found a file beginning \"xxxxxxxx\"; hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout",
+        "cannot read the HDF5 file: DIR/s.h5: expected an HDF5 signature, found a file beginning \"xxxxxxxx\"; hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need --raw-values and --raw-shape",
     );
     check(
         Some(b"\x89HDF"),

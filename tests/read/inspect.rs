@@ -163,7 +163,7 @@ fn planes_and_files_of_numpy() {
     assert_eq!((got.items[0].name.as_str(), got.items[0].values.as_str()), ("broken.npy", "not usable"));
     assert_eq!((&got.items[1].shape[..], got.items[1].values.as_str()), (&[10, 12][..], "float64 little-endian"));
     assert_eq!(got.guess.velocity, names(&["u.npy", "v.npy"]));
-    assert_eq!((got.guess.order.as_str(), got.guess.lengths), ("yx", Some([TAU; 3])));
+    assert_eq!((got.guess.order.as_str(), got.guess.lengths), ("yx", Some([0.0, TAU, TAU])));
     let opened = opens(&got, None);
     assert_eq!((opened.source.grid().n, opened.source.grid().spacing[0]), (n, 1.0));
     let mixed: Vec<f64> = (0..1080).flat_map(|i| (0..3).map(move |c| code(c, i % 12, i / 12 % 10, i / 120))).collect();
@@ -182,11 +182,7 @@ fn files_without_a_header_are_guessed_by_size() {
     assert_eq!((got.kind.as_str(), got.bytes), ("no known header", 6 * 512 * 4));
     assert_eq!(
         got.reasons,
-        [
-            "its size fits 8x8x8 samples of 6 components in float32",
-            "its size fits 8x8x8 samples of 3 components in float64",
-            "nothing tells the size of the box: 2 pi is assumed",
-        ]
+        ["its size fits 8x8x8 samples of 6 components in float32", "nothing tells the size of the box: 2 pi is assumed",]
     );
     opens(&got, None);
     let record = |body: Vec<u8>| [&(body.len() as u32).to_be_bytes()[..], &body, &(body.len() as u32).to_be_bytes()].concat();
@@ -198,10 +194,76 @@ fn files_without_a_header_are_guessed_by_size() {
     let got = inspect(&write(dir.path(), "d.dat", &record(vec![1; 300]))).unwrap();
     assert_eq!(
         got.reasons,
-        ["it has 1 record of 300 bytes between 4-byte markers, big-endian", "no cubic shape of float32 or float64 values has its size"]
+        ["it has 1 record of 300 bytes between 4-byte markers, big-endian", "its values are of no sane magnitude in either type"]
     );
     let got = inspect(&write(dir.path(), "c.dat", &[7; 1000])).unwrap();
-    assert_eq!((got.guess.raw, &got.reasons[..]), (None, &["no cubic shape of float32 or float64 values has its size".to_string()][..]));
+    assert_eq!(
+        (got.guess.raw, &got.reasons[..]),
+        (None, &["its values are of no sane magnitude in any type and byte order".to_string()][..])
+    );
+}
+
+/// Values tell type and byte order, whatever the size allows.
+#[test]
+fn values_tell_the_layout() {
+    let dir = tempfile::tempdir().unwrap();
+    let n = [8; 3];
+    let wave = |c: usize| filled(n, |x, y, z| 1e-3 * ((0.7 * x as f64).sin() + (1.1 * y as f64 + c as f64).cos() * (0.3 * z as f64).sin()));
+    let all: Vec<f64> = (0..6).flat_map(wave).collect();
+    for (big, double) in [(false, false), (true, false), (false, true), (true, true)] {
+        let bytes = if double { doubles(&all, big) } else { singles(&all, big) };
+        let raw = inspect(&write(dir.path(), "f.dat", &bytes)).unwrap().guess.raw.unwrap();
+        assert_eq!((raw.big_endian, raw.double, &raw.shape[..]), (big, double, &n[..]), "{big} {double}");
+    }
+    // A text or an archive of that very size is none.
+    for (head, kind) in [(&b"PK\x03\x04"[..], "zip archive"), (b"\x1f\x8b", "gzip file"), (b"0.5 1.5\n", "text")] {
+        let mut bytes = vec![b'1'; 6 * 512 * 4];
+        bytes[..head.len()].copy_from_slice(head);
+        let got = inspect(&write(dir.path(), "f.npz", &bytes)).unwrap();
+        assert_eq!((got.kind.as_str(), got.guess.raw, got.reasons.len()), (kind, None, 1));
+        assert!(got.reasons[0].contains("not a snapshot"), "{:?}", got.reasons);
+    }
+    // Records of no cube.
+    let body = doubles(&all[..7 * 9 * 10], false);
+    let marker = (body.len() as u32).to_le_bytes();
+    let got = inspect(&write(dir.path(), "r.dat", &[&marker[..], &body, &marker].concat())).unwrap();
+    assert_eq!(
+        got.reasons,
+        ["it has 1 record of 5040 bytes between 4-byte markers, little-endian", "its records are no cubes of values: give their shape"]
+    );
+}
+
+#[test]
+fn one_file_a_component() {
+    let dir = tempfile::tempdir().unwrap();
+    let n = [8; 3];
+    for (c, name) in ["u", "v", "w"].into_iter().enumerate() {
+        write(dir.path(), &format!("{name}_1.npy"), &npy(1, "'<f4'", false, &n, &singles(&coded(n, c), false)));
+        write(dir.path(), &format!("{name}_1.dat"), &singles(&coded(n, c), false));
+        let file = File::create(dir.path().join(format!("{name}_1.h5"))).unwrap();
+        put::<f64>(&file, "data", &n, &coded(n, c));
+        number(&file, "lx", &[6.0]);
+        number(&file, "ly", &[5.0]);
+        number(&file, "lz", &[4.0]);
+        number(&file, "time", &[0.5]);
+        file.close().unwrap();
+    }
+    for (name, kind, time) in [("npy", "npy", None), ("h5", "HDF5", Some(0.5))] {
+        let got = inspect(&dir.path().join(format!("{{field}}_1.{name}"))).unwrap();
+        assert_eq!((got.kind, got.time), (format!("{kind}, one file a component"), time));
+        assert_eq!(got.guess.velocity, names(&["u", "v", "w"]));
+        assert_eq!(got.guess.lengths, Some(if time.is_some() { [6.0, 5.0, 4.0] } else { [TAU; 3] }));
+        opens(&inspect(&dir.path().join(format!("{{field}}_1.{name}"))).unwrap(), None);
+    }
+    let got = inspect(&dir.path().join("{field}_1.dat")).unwrap();
+    assert_eq!((got.bytes, got.guess.raw.as_ref().unwrap().shape.clone()), (3 * 512 * 4, n.to_vec()));
+    opens(&got, None);
+    let e = inspect(&dir.path().join("{field}_2.dat")).unwrap_err();
+    assert_eq!(
+        plain(dir.path(), &e),
+        "cannot look into the files: DIR/{field}_2.dat: expected files with usual names of components, such as u, v, w, in place of \
+         {field}, found none of them; hint: give the file of one component"
+    );
 }
 
 #[test]

@@ -4,6 +4,7 @@ mod coordinates;
 mod errors;
 mod files;
 mod flows;
+mod guesses;
 mod hdf5;
 mod inspect;
 mod npy;

@@ -97,22 +97,38 @@ fn regions_that_cannot_be_cut() {
     let check = |axis: usize, periodic: bool, stretch: Stretch, text: &str| {
         let mut own = InputSpec { periodic: [periodic; 3], lengths: Some([12.0, 10.0, 9.0]), ..spec("zyx") };
         own.region[axis] = Some(stretch);
-        assert_eq!(fault(dir.path(), &path.clone().into(), &own), (Kind::Usage, format!("cannot cut the region: --region {text}")));
+        assert_eq!(fault(dir.path(), &path.clone().into(), &own), (Kind::Usage, format!("cannot cut the region: --region{text}")));
     };
+    let next = "hint: the first sample of the next period is that of this one: end before it";
     let wrap = "hint: a region goes across a face only where the axis is periodic";
-    check(0, true, Stretch::Indices(5, 5), "x samples 5..5: expected an end above the first sample, found no samples");
-    check(1, true, Stretch::Indices(5, 6), "y samples 5..6: expected at least 2 samples, found 1; hint: widen the region");
-    check(2, false, Stretch::Indices(-1, 4), &format!("z samples -1..4: expected samples inside 0..9, found an open axis; {wrap}"));
-    check(2, false, Stretch::Indices(4, 10), &format!("z samples 4..10: expected samples inside 0..9, found an open axis; {wrap}"));
-    check(2, true, Stretch::Indices(-1, 9), "z samples -1..9: expected at most one period, 9 samples, found 10 samples");
-    check(0, true, Stretch::Positions(0.0, 12.0), "x positions 0 to 12: expected at most one period, 12 samples, found 13 samples");
-    check(0, true, Stretch::Positions(2.2, 2.8), "x positions 2.2 to 2.8: expected at least 2 samples, found 0; hint: widen the region");
-    check(0, true, Stretch::Positions(3.0, 2.0), "x positions 3 to 2: expected two finite positions in ascending order, found 3 and 2");
+    check(
+        0,
+        true,
+        Stretch::Indices(5, 5),
+        "-cells x 5..5: expected an end above the first sample, found no samples; hint: indices count from 0, the second is one past the last sample",
+    );
+    check(1, true, Stretch::Indices(5, 6), "-cells y 5..6: expected at least 2 samples, found 1; hint: widen the region");
+    check(2, false, Stretch::Indices(-1, 4), &format!("-cells z -1..4: expected samples inside 0..9, found an open axis; {wrap}"));
+    check(2, false, Stretch::Indices(4, 10), &format!("-cells z 4..10: expected samples inside 0..9, found an open axis; {wrap}"));
+    check(2, true, Stretch::Indices(-1, 9), &format!("-cells z -1..9: expected at most one period, 9 samples, found 10 samples; {next}"));
+    check(
+        0,
+        true,
+        Stretch::Positions(0.0, 12.0),
+        &format!(" x 0 to 12: expected at most one period, 12 samples, found 13 samples; {next}"),
+    );
+    check(0, true, Stretch::Positions(2.2, 2.8), " x 2.2 to 2.8: expected at least 2 samples, found 0; hint: widen the region");
+    check(
+        0,
+        true,
+        Stretch::Positions(3.0, 2.0),
+        " x 3 to 2: expected two finite positions in ascending order, found 3 and 2; hint: the first sample taken comes first, also across a periodic face",
+    );
     check(
         1,
         false,
         Stretch::Positions(3.0, 20.0),
-        &format!("y positions 3 to 20: expected positions inside the box, found samples from 0 to 9 on an open axis; {wrap}"),
+        &format!(" y 3 to 20: expected positions inside the box, found samples from 0 to 9 on an open axis; {wrap}"),
     );
     let flat = dir.path().join("p.h5");
     hdf5(&flat, &[5, 7], &[("u", vec![0.0; 35]), ("v", vec![0.0; 35])]);
@@ -120,6 +136,6 @@ fn regions_that_cannot_be_cut() {
     own.region[2] = Some(Stretch::Indices(0, 1));
     assert_eq!(
         fault(dir.path(), &flat.into(), &own).1,
-        "cannot cut the region: --region z samples 0..1: expected no part of z, found a plane; hint: cut a plane along x and y only"
+        "cannot cut the region: --region-cells z 0..1: expected no part of z, found a plane; hint: cut a plane along x and y only"
     );
 }

@@ -4,11 +4,11 @@ use std::path::{Path, PathBuf};
 
 use ::hdf5::File;
 use ropewalk::base::error::Kind;
-use ropewalk::read::InputSpec;
 use ropewalk::read::series::{Series, expand};
+use ropewalk::read::{InputSpec, RawLayout};
 
 use crate::files::{names, spec};
-use crate::flows::{plain, write};
+use crate::flows::{fault, plain, write};
 
 /// The snapshots as text, with the folder of the test left out and times behind `@`.
 fn told(dir: &Path, series: &Series, spec: &InputSpec) -> Vec<String> {
@@ -77,6 +77,51 @@ fn files_of_components_make_one_snapshot() {
                 .into()
         )
     );
+}
+
+#[test]
+fn a_file_of_any_component_is_enough() {
+    let dir = tempfile::tempdir().unwrap();
+    touch(dir.path(), &["u_9.dat", "v_9.dat", "w_9.dat", "v_10.dat", "w_10.dat", "w_2.dat", "b_notes.dat", "theta_11.dat"]);
+    let t = |own: &InputSpec| told(dir.path(), &paths(dir.path(), &["{field}_*.dat"]), own);
+    // A lone b is no field beside a velocity whose names are there.
+    assert_eq!(t(&spec("zyx")), ["{field}_2.dat", "{field}_9.dat", "{field}_10.dat", "{field}_notes.dat"][..3]);
+    let own = InputSpec { velocity: names(&["u", "v", "w"]), buoyancy: Some("theta".into()), ..spec("zyx") };
+    assert_eq!(t(&own), ["{field}_2.dat", "{field}_9.dat", "{field}_10.dat", "{field}_11.dat"]);
+    let raw = RawLayout { double: false, big_endian: false, shape: vec![3, 4, 5], offset: 0, record_markers: None };
+    let own = InputSpec { raw: Some(raw), ..own };
+    let (kind, text) = fault(dir.path(), &dir.path().join("{field}_10.dat").into(), &own);
+    assert_eq!(kind, Kind::Input);
+    assert!(text.starts_with("cannot find the file: DIR/u_10.dat: found nothing"), "{text}");
+    // The set that is there most wholly counts: u* would match ux1 as well.
+    touch(dir.path(), &["ux1.h5", "uy1.h5", "uz1.h5", "uy2.h5"]);
+    assert_eq!(told(dir.path(), &paths(dir.path(), &["{field}?.h5"]), &spec("zyx")), ["{field}1.h5", "{field}2.h5"]);
+}
+
+/// A broken file among those with steps is left to open() to report, with the true reason.
+#[test]
+fn files_without_steps_do_not_end_the_others() {
+    let dir = tempfile::tempdir().unwrap();
+    steps(&dir.path().join("a_1.h5"), &["step_9", "step_10"]);
+    steps(&dir.path().join("a_2.h5"), &["grid"]);
+    let whole = std::fs::read(dir.path().join("a_1.h5")).unwrap();
+    write(dir.path(), "a_3.h5", &whole[..whole.len() / 2]);
+    let with = |named: &[&str]| Series { steps: Some("step_*".into()), ..paths(dir.path(), named) };
+    let all = with(&["a_*.h5", "none.h5"]);
+    let want = ["a_1.h5:/step_9", "a_1.h5:/step_10", "a_2.h5:/step_*", "a_3.h5:/step_*", "none.h5:/step_*"];
+    assert_eq!(told(dir.path(), &all, &spec("zyx")), want);
+    let found = expand(&all, &spec("zyx")).unwrap();
+    let reason = |i: usize| fault(dir.path(), &found[i], &spec("zyx"));
+    let no_steps = "cannot find steps: DIR/a_2.h5: \"step_*\": expected a pattern that matches a group, found only /grid; \
+                    hint: the pattern begins at the root group";
+    assert_eq!(reason(2), (Kind::Input, no_steps.into()));
+    assert!(reason(3).1.ends_with("hint: the file is truncated: copy or write it again"), "{}", reason(3).1);
+    assert!(reason(4).1.starts_with("cannot find the snapshot: DIR/none.h5"), "{}", reason(4).1);
+    // Where no file has a step, the first fault is that of the run.
+    assert_eq!(refused(dir.path(), &with(&["a_2.h5", "a_3.h5"])), (Kind::Input, no_steps.into()));
+    // A malformed pattern is wrong for every file.
+    let bad = Series { steps: Some("s[".into()), ..all };
+    assert_eq!(refused(dir.path(), &bad).0, Kind::Usage);
 }
 
 fn steps(path: &Path, groups: &[&str]) {
@@ -156,5 +201,26 @@ fn lists_and_times() {
     assert_eq!(refuse(b"# nothing\n").1, "cannot read the list: DIR/bad.txt: expected one path a line, found none");
     assert_eq!(refuse(b"\xff\xfe").1, "cannot read the list: DIR/bad.txt: expected a text file with one path a line, found other bytes");
     let none = Series { lists: vec![PathBuf::from("/nowhere/list.txt")], ..Series::default() };
-    assert!(refused(dir.path(), &none).1.starts_with("cannot read the list: /nowhere/list.txt: found "));
+    assert_eq!(
+        refused(dir.path(), &none),
+        (
+            Kind::Input,
+            "cannot read the list: /nowhere/list.txt: expected a text file with one path a line, found nothing; \
+             hint: check the path of the list"
+                .into()
+        )
+    );
+    // What stands behind a path that is there is a time.
+    for (line, path, time) in [("a.h5 five", "a.h5", "five"), ("c_*.h5  nan", "c_*.h5", "nan"), ("b 1.h5 1,5", "b 1.h5", "1,5")] {
+        assert_eq!(
+            refuse(format!("a.h5\n{line} # t\n").as_bytes()),
+            (
+                Kind::Input,
+                format!(
+                    "cannot use the list: DIR/bad.txt: line 2: expected a finite number behind {path}, its time, found \"{time}\"; \
+                     hint: a # begins a comment"
+                )
+            )
+        );
+    }
 }

@@ -58,6 +58,7 @@ fn error(dir: &Path, n: usize, case: &Case) -> f64 {
     (own.lengths, own.spacing) = (None, Some([h; 3]));
     if case.stretched {
         own.coordinates = [0; 3].map(|_| Some("x".into()));
+        own.spacing = None;
     }
     let got = values(&path, &own);
     let mut worst: f64 = 0.0;

@@ -63,6 +63,20 @@ fn groups_are_steps() {
         fault(dir.path(), &step(&path, "steps"), &spec("zyx")).1.contains("| magnetic | b in /steps, found /bx 3x4x5, "),
         "the group is named"
     );
+    // Where nobody says which step, the hint says how.
+    let steps = dir.path().join("iter.h5");
+    let file = File::create(&steps).unwrap();
+    for name in ["iter/10", "iter/20"] {
+        components(&file.create_group(name).unwrap(), &["u", "v", "w"], 0);
+    }
+    file.close().unwrap();
+    let text = fault(dir.path(), &steps.clone().into(), &spec("zyx")).1;
+    let hint = "; hint: --steps \"iter/*\" reads its groups as steps, iter.h5:/iter/10 one of them";
+    assert!(text.starts_with("cannot find a velocity or magnetic field: DIR/iter.h5") && text.ends_with(hint), "{text}");
+    let own = InputSpec { velocity: names(&["u", "v", "w"]), buoyancy: Some("theta".into()), ..spec("zyx") };
+    let text = fault(dir.path(), &step(&steps, "iter/10"), &own).1;
+    assert!(text.starts_with("cannot find the dataset: DIR/iter.h5: /iter/10/theta"), "{text}");
+    assert!(text.ends_with("; hint: --buoyancy NAME names it"), "{text}");
     let npy = write(dir.path(), "s.npy", &npy(1, "'<f4'", false, &[3, 3, 4, 5], &[0; 720]));
     assert_eq!(
         fault(dir.path(), &step(&npy, "a"), &spec("zyx")),
