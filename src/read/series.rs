@@ -2,13 +2,15 @@
 
 use std::path::{Path, PathBuf};
 
+use ::hdf5::File;
+
 use crate::base::error::{Error, Kind, Result};
 use crate::model::snapshot::SnapshotRef;
 use crate::read::names::{MAGNETIC, PLACE, VELOCITY, has_place, named, with_name};
 use crate::read::natural;
-use crate::read::shelf::open_file;
+use crate::read::shelf::{groups, open_file};
 use crate::read::spec::InputSpec;
-use crate::read::steps::{is_pattern, matching, no_steps};
+use crate::read::steps::{is_pattern, no_steps};
 
 /// Longest list read.
 const LIST_LIMIT: u64 = 64 << 20;
@@ -117,7 +119,8 @@ fn files(named: &str, spec: &InputSpec) -> Result<Vec<PathBuf>> {
     let mut best: Vec<Vec<String>> = Vec::new();
     for sets in names_of(spec) {
         let mut fullest: Option<(usize, Vec<String>)> = None;
-        for set in sets {
+        // A lone `b` beside a velocity may be anything.
+        for set in sets.into_iter().filter(|set| best.is_empty() || set.len() == 3) {
             let found = set.iter().map(found_by).collect::<Result<Vec<_>>>()?;
             // In sixths, as sets have one to three names or those that the user gives.
             let share = 6 * found.iter().filter(|f| !f.is_empty()).count() / set.len();
@@ -223,6 +226,27 @@ fn found_steps(path: &Path, pattern: &str, spec: &InputSpec) -> Result<Vec<Strin
     let opened = open_file(&file, None)?;
     let found = matching(&opened, pattern)?;
     if found.is_empty() { Err(no_steps(path, pattern, &opened)) } else { Ok(found) }
+}
+
+/// The groups that a pattern matches, from the root, in natural order.
+///
+/// # Errors
+/// `Usage` for a malformed pattern.
+fn matching(file: &File, pattern: &str) -> Result<Vec<String>> {
+    let mut found = vec![String::new()];
+    for part in pattern.trim_matches('/').split('/') {
+        let bad = |e: String| Error::usage("cannot read a pattern").item(format!("\"{pattern}\"")).found(e);
+        let part = glob::Pattern::new(part).map_err(|e| bad(e.to_string()))?;
+        let mut deeper = Vec::new();
+        for above in &found {
+            let group = if above.is_empty() { Some((**file).clone()) } else { file.group(above).ok() };
+            let names = group.map(|g| groups(&g)).unwrap_or_default();
+            deeper.extend(names.into_iter().filter(|n| part.matches(n)).map(|n| format!("{above}/{n}")));
+        }
+        found = deeper;
+    }
+    found.sort_by(|a, b| natural::compare(a, b));
+    Ok(found)
 }
 
 /// The snapshots of a list.

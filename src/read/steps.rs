@@ -1,37 +1,15 @@
-//! Groups of a file that are steps of a run: those that a pattern matches, and the error where there are none.
+//! Groups of a file that are steps of a run: what is a pattern of them, what to say where none is there or nobody asked for them.
 
 use std::path::Path;
 
 use ::hdf5::File;
 
-use crate::base::error::{Error, Result};
-use crate::read::natural;
-use crate::read::shelf::{groups, groups_text};
+use crate::base::error::Error;
+use crate::read::shelf::groups_text;
 
 /// Whether a text is a pattern.
 pub(super) fn is_pattern(text: &str) -> bool {
     text.contains(['*', '?', '['])
-}
-
-/// The groups that a pattern matches, from the root, in natural order.
-///
-/// # Errors
-/// `Usage` for a malformed pattern.
-pub(super) fn matching(file: &File, pattern: &str) -> Result<Vec<String>> {
-    let mut found = vec![String::new()];
-    for part in pattern.trim_matches('/').split('/') {
-        let bad = |e: String| Error::usage("cannot read a pattern").item(format!("\"{pattern}\"")).found(e);
-        let part = glob::Pattern::new(part).map_err(|e| bad(e.to_string()))?;
-        let mut deeper = Vec::new();
-        for above in &found {
-            let group = if above.is_empty() { Some((**file).clone()) } else { file.group(above).ok() };
-            let names = group.map(|g| groups(&g)).unwrap_or_default();
-            deeper.extend(names.into_iter().filter(|n| part.matches(n)).map(|n| format!("{above}/{n}")));
-        }
-        found = deeper;
-    }
-    found.sort_by(|a, b| natural::compare(a, b));
-    Ok(found)
 }
 
 /// The error for a pattern that matches none.
