@@ -50,8 +50,9 @@ fn the_demo_is_planned() {
         assert_eq!(s.bytes(), WHOLE);
         assert_eq!(s.memory.kept, WHOLE);
         assert_eq!((s.memory.filter, s.memory.spectral, s.memory.cut_outs), (0, 0, 0));
-        // 200 bytes a cell of the largest object, which is no larger than the box.
-        assert_eq!(s.memory.objects, 200 * 64 * 64 * 64);
+        // 200 bytes a cell of the largest object, which is no larger than the box, and 16 for each of the twelve components of u, ω,
+        // b and j that its vertices carry.
+        assert_eq!(s.memory.objects, (200 + 12 * 16) * 64 * 64 * 64);
     }
     assert_eq!(plan.snapshots.iter().map(|s| s.time).collect::<Vec<_>>(), [Some(1.5), Some(1.6), Some(1.7)]);
     assert_eq!(passes(&plan), [("read", WHOLE), ("survey", 0), ("detection", 0), ("shapes", 0)]);
@@ -177,7 +178,7 @@ fn the_plan_is_printed_and_nothing_is_done() {
 1 of 1 snapshots can be used; nothing was read but headers, nothing is written.
 
 snapshot             samples x y z      type  components                     time    to read     memory
-good                 16 x 16 x 16       f32   u,v,w                                216.0 KiB   30.9 MiB
+good                 16 x 16 x 16       f32   u,v,w                                216.0 KiB   31.2 MiB
 
 Box
   lengths 6.283185307179586, 6.283185307179586, 6.283185307179586
@@ -196,10 +197,10 @@ Passes
 Memory
   the program itself     30.0 MiB
   blocks of planes       96.0 KiB
-  objects, at most      800.0 KiB
+  objects, at most        1.2 MiB
 
 To read in all: 216.0 KiB of uncompressed values
-Memory: about 30.9 MiB, of which objects take what they need; an estimate
+Memory: about 31.2 MiB, of which objects take what they need; an estimate
 
 Run folder out: new
   catalogue.csv

@@ -41,7 +41,7 @@ fn one_bad_snapshot_of_two_is_1_and_the_other_is_done() {
     assert_eq!(
         ran.err,
         "error: snapshot skipped: cannot read the HDF5 file: bad.h5: expected an HDF5 signature, found a file beginning \"nothing \"; \
-         hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout\n\
+         hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need --raw-values and --raw-shape\n\
          error: snapshot skipped: cannot use the snapshot: broken: expected finite values, \
          found 1 NaN or infinite, first broken.h5:/v at x=5 y=0 z=0; hint: indices count from 0; was the file written completely?\n"
     );

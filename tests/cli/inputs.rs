@@ -59,7 +59,7 @@ fn a_text_file() {
     let place = Place::new();
     place.write("notes.txt", b"These are notes.\n");
     let message = "cannot read the HDF5 file: notes.txt: expected an HDF5 signature, found a file beginning \"These ar\"; \
-        hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need a layout";
+        hint: snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need --raw-values and --raw-shape";
     fails(&place, &format!("catalogue notes.txt {OPTIONS}"), 3, message);
 }
 
