@@ -118,7 +118,7 @@ impl<T: Real> Deriver<T> {
             pool: Pool::default(),
             periodic_z: grid.periodic[2],
             n: grid.n,
-            open: std::array::from_fn(|a| !grid.periodic[a] && !(a == 2 && grid.is_flat())),
+            open: std::array::from_fn(|a| !(grid.periodic[a] || a == 2 && grid.is_flat())),
             frame: frame.map(T::of),
             mean_field: mean_field.map(|m| m.map(T::of)),
             viscosity: T::of(viscosity.unwrap_or(1.0)),

@@ -81,7 +81,7 @@ impl CutBox {
                 let first = self.start[a] as usize;
                 // A single sample has no width of its own, so a flat stretched axis keeps that of the grid.
                 if self.n[a] >= 2 {
-                    own = own.with_positions(a, s.positions[first..first + self.n[a]].to_vec());
+                    own = own.with_part(a, first..first + self.n[a]);
                 }
             }
         }

@@ -279,7 +279,7 @@ fn contradictions() {
         ),
         (
             "region = { x = [0, 1], y = [0, 1] }\nregion_cells = { y = [0, 9] }\n",
-            "cannot cut a part out of the box: run.toml:6: input.region, input.region_cells: expected one of them an axis, found both for y; \
+            "cannot cut a part out of the box: run.toml:6: input.region, input.region_cells: expected one of them for each axis, found both for y; \
              hint: positions or indices, not both",
         ),
         (

@@ -174,7 +174,11 @@ fn flags_replace_what_the_file_says() {
     given.flag(Key::Folder, vec!["here".into()]);
     given.flag(Key::Lists, vec!["a.txt".into(), "b.txt".into()]);
     let Settled { series, config } = settled(&given);
-    assert_eq!((config.input.lengths, config.input.spacing), (None, Some([0.1; 3])), "one way to say it takes the place of the other");
+    assert_eq!(
+        (config.input.lengths, config.input.spacing),
+        (None, Some([0.1, 0.1, 0.0])),
+        "one way to say it takes the place of the other; z has coordinates"
+    );
     assert_eq!(config.request.families[0].to_string(), "j: current > 3 rms");
     assert_eq!(config.request.families.len(), 1);
     assert_eq!(config.outputs.cut_outs, CutOuts::None);

@@ -98,7 +98,7 @@ fn extent_of_box(r: &mut Reader<'_>, s: &Settled) {
     };
     if !both.is_empty() {
         against(r, "cannot cut a part out of the box", &[Key::Region, Key::RegionCells], |e| {
-            e.expected("one of them an axis").found(format!("both for {}", both.join(", "))).hint("positions or indices, not both")
+            e.expected("one of them for each axis").found(format!("both for {}", both.join(", "))).hint("positions or indices, not both")
         });
     }
 }

@@ -142,7 +142,10 @@ impl<'g> Reader<'g> {
         if values.is_none() {
             self.unlike(key, node, SIZES);
         }
-        values
+        // One number is meant for the axes that need one: coordinates know their own length.
+        let single = numbers(node).is_some_and(|n| n.len() == 1);
+        let known = |a: usize| single && free[a] && !(a == 2 && plane);
+        values.map(|v| std::array::from_fn(|a| if known(a) { 0.0 } else { v[a] }))
     }
 
     /// A position: three numbers, or one for all axes, or two on a plane.
