@@ -77,7 +77,7 @@ impl CutBox {
         own.periodic = self.whole;
         for a in 0..3 {
             own.origin[a] = grid.position(a, self.start[a] as f64);
-            if let Some(s) = &grid.stretched[a] {
+            if grid.stretched[a].is_some() {
                 let first = self.start[a] as usize;
                 // A single sample has no width of its own, so a flat stretched axis keeps that of the grid.
                 if self.n[a] >= 2 {
