@@ -169,10 +169,10 @@ fn overview(found: &[FamilyOverview], remarks: &[String], folder: &Path) -> Stri
     for f in found {
         let classes: Vec<String> = CLASSES.iter().zip(f.classes).filter(|(_, n)| *n > 0).map(|(c, n)| format!("{n} {c}")).collect();
         let line = format!(
-            "{:<16} {:<12} {:>11.5} {:>8} {:>8} {:>11}  {}",
+            "{:<16} {:<12} {:>11} {:>8} {:>8} {:>11}  {}",
             f.snapshot,
             f.family,
-            f.level,
+            level(f.level),
             f.objects,
             percent(f.volume),
             percent(f.dissipation),
@@ -185,6 +185,11 @@ fn overview(found: &[FamilyOverview], remarks: &[String], folder: &Path) -> Stri
     }
     let _ = writeln!(out, "{}", folder.display());
     out
+}
+
+/// Five decimals where they tell something.
+fn level(v: f64) -> String {
+    if v == 0.0 || (1e-2..1e6).contains(&v.abs()) { format!("{v:.5}") } else { format!("{v:.4e}") }
 }
 
 /// The dictionary of columns, then what `--companions` can add to it.
