@@ -85,7 +85,7 @@ fn size(attributes: &[&Named], n: [usize; 3], lines: &[Option<&Coordinates>; 3],
         (v, false)
     } else {
         if needed.contains(&true) {
-            told.push("nothing tells the size of the box: 2 pi is assumed".into());
+            told.push("nothing tells the size of the box".into());
         }
         ([0, 1, 2].map(|a| if lines[a].is_some() { 0.0 } else { TAU }), true)
     };

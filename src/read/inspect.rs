@@ -142,7 +142,7 @@ pub(super) fn headerless(path: &Path, bytes: u64) -> Result<Contents> {
             reasons.push("with one component a file, {field} stands for the component's name in the path".into());
         }
         told.guess.raw = Some(first.layout);
-        reasons.push("nothing tells the size of the box: 2 pi is assumed".into());
+        reasons.push("nothing tells the size of the box".into());
     } else if reasons.is_empty() {
         reasons.push("no cubic shape of float32 or float64 values has its size".into());
     }
