@@ -2,7 +2,7 @@
 
 use std::sync::{Arc, Mutex};
 
-use crate::base::error::{Error, Result};
+use crate::base::error::Result;
 use crate::base::observe::Observe;
 use crate::base::par;
 use crate::base::real::Real;
@@ -81,22 +81,6 @@ impl<T> ZLines<T> {
 /// Bytes that the derivatives along z of a whole box take.
 pub fn z_lines_bytes(grid: &Grid, fields: Fields, value_bytes: usize) -> u64 {
     grid.cells() * fields.components() as u64 * value_bytes as u64
-}
-
-/// Whether they fit.
-///
-/// # Errors
-/// `Limit`, naming the figure and what does without.
-pub fn check_z_lines(grid: &Grid, fields: Fields, value_bytes: usize, most: u64) -> Result<()> {
-    let bytes = z_lines_bytes(grid, fields, value_bytes);
-    if bytes <= most {
-        return Ok(());
-    }
-    let gib = |b: u64| format!("{:.2} GiB", b as f64 / (1u64 << 30) as f64);
-    Err(Error::limit("cannot take spectral derivatives along z")
-        .expected(format!("at most {} of memory", gib(most)))
-        .found(format!("{} for the derivatives of all planes", gib(bytes)))
-        .hint("--derivative fd8 needs a few planes only"))
 }
 
 /// Reads the snapshot once and derives the components that are `wanted` along z, which must be periodic.

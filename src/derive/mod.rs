@@ -23,7 +23,7 @@ use alignment::pair;
 use gradient::{Buffers, Gradient, Place};
 use indicator::{Sources, Wants};
 use lines::Pool;
-pub use lines::{Prepared, ZLines, check_z_lines, z_lines, z_lines_bytes};
+pub use lines::{Prepared, ZLines, z_lines, z_lines_bytes};
 
 /// What is derived and how.
 #[derive(Debug, Clone, PartialEq)]
@@ -60,7 +60,6 @@ pub struct Deriver<T> {
     fallbacks: Vec<String>,
     z_lines: Option<Arc<ZLines<T>>>,
     pool: Pool<T>,
-    periodic_z: bool,
     /// Samples along x, y, z, and which axes end at faces.
     n: [usize; 3],
     open: [bool; 3],
@@ -69,8 +68,6 @@ pub struct Deriver<T> {
     mean_field: Option<[T; 3]>,
     viscosity: T,
     resistivity: T,
-    nx: usize,
-    ny: usize,
 }
 
 /// Scratch of one worker.
@@ -116,15 +113,12 @@ impl<T: Real> Deriver<T> {
             fallbacks: fallbacks(grid, scheme),
             z_lines: None,
             pool: Pool::default(),
-            periodic_z: grid.periodic[2],
             n: grid.n,
             open: std::array::from_fn(|a| !(grid.periodic[a] || a == 2 && grid.is_flat())),
             frame: frame.map(T::of),
             mean_field: mean_field.map(|m| m.map(T::of)),
             viscosity: T::of(viscosity.unwrap_or(1.0)),
             resistivity: T::of(resistivity.unwrap_or(1.0)),
-            nx: grid.n[0],
-            ny: grid.n[1],
         }
     }
 
@@ -155,7 +149,7 @@ impl<T: Real> Deriver<T> {
 
     /// Planes of halo that a periodic z-axis needs on each side.
     pub fn halo(&self) -> usize {
-        if self.periodic_z { self.stencils[2].halo() } else { 0 }
+        if self.open[2] { 0 } else { self.stencils[2].halo() }
     }
 
     /// The cells of row (y, z) whose stencils reach no open face.
@@ -203,7 +197,7 @@ impl<T: Real> Deriver<T> {
         if self.fields.buoyancy {
             wanted.push(w.buoyancy_gradient);
         }
-        Prepared::along_lines(line, block, &wanted, self.nx, &self.pool)
+        Prepared::along_lines(line, block, &wanted, self.n[0], &self.pool)
     }
 
     /// Derives the cells `x` of row `y` of plane `z` of the block into `scratch.rows`.
@@ -219,7 +213,7 @@ impl<T: Real> Deriver<T> {
     ) {
         let Scratch { velocity, magnetic, buoyancy, fluctuation, buffers, rows } = scratch;
         let wants = self.wants(need);
-        let (nx, ny) = (self.nx, self.ny);
+        let [nx, ny, _] = self.n;
         let place = Place { stencils: &self.stencils, block, ready, z_lines: self.z_lines.as_deref(), z, y, x: &x, nx, ny };
         if wants.vorticity {
             place.gradient(0, wants.full, buffers, velocity);

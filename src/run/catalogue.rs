@@ -19,6 +19,7 @@ use crate::run::analysis::{Analysis, Execution, Snapshot, analyse};
 use crate::run::clock::Clock;
 use crate::run::files::SnapshotFiles;
 use crate::run::parts::{self, FamilyOverview, PARTS, Part, Tables};
+use crate::run::ready::check_grid;
 use crate::run::remarks::remarks;
 use crate::run::run_rms::{self, RunRms};
 use crate::run::{provenance, summary};
@@ -126,6 +127,7 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
 
 pub(super) fn check(opened: &Opened, path: &Path, request: &Request) -> Result<String> {
     request.families_for(opened.source.fields()).map_err(|e| e.at(path))?;
+    check_grid(opened.source.grid(), &opened.name, request).map_err(|e| e.at(path))?;
     Ok(opened.name.clone())
 }
 

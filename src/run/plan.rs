@@ -5,8 +5,8 @@ use std::path::PathBuf;
 
 use crate::base::error::{Error, Kind, Result};
 use crate::base::real::Real;
-use crate::derive::filter::{self, filter_bytes};
-use crate::derive::{Deriver, Plan as Derived, fewest_samples, z_lines_bytes};
+use crate::derive::filter::filter_bytes;
+use crate::derive::{Deriver, z_lines_bytes};
 use crate::model::request::{CutOuts, Extent, Family, Frame, Outputs, Request, Surfaces};
 use crate::model::snapshot::SnapshotRef;
 use crate::model::source::{AnySource, Fields, PlaneSource};
@@ -15,6 +15,7 @@ use crate::run::analysis::Execution;
 use crate::run::catalogue::{RunConfig, check, none_usable, tell_apart};
 use crate::run::cutouts::HELD_BYTES;
 use crate::run::parts::{PARTS, Tables};
+use crate::run::ready::derived;
 use crate::run::run_rms;
 use crate::run::stream::block_ranges;
 use crate::space::grid::Grid;
@@ -137,7 +138,7 @@ pub fn plan(config: &RunConfig) -> Result<Plan> {
     let mut opened = Vec::new();
     for snapshot in &config.snapshots {
         let one = read::open(snapshot, &config.input)
-            .and_then(|o| Ok((looked_at(&o, snapshot, config)?, check(&o, &snapshot.path, &config.request)?)));
+            .and_then(|o| check(&o, &snapshot.path, &config.request).and_then(|name| Ok((looked_at(&o, snapshot, config)?, name))));
         match one {
             Ok((seen, name)) => {
                 usable.push((snapshot.clone(), name));
@@ -175,20 +176,6 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
     let grid = opened.source.grid().clone();
     let fields = opened.source.fields();
     let families = request.families_for(fields).map_err(|e| e.at(&snapshot.path))?;
-    for (a, axis) in ["x", "y", "z"].iter().enumerate() {
-        let fewest = fewest_samples(request.scheme, &grid, a);
-        if grid.n[a] < fewest {
-            return Err(Error::input("cannot derive along an axis")
-                .at(&snapshot.path)
-                .item(format!("{axis} axis"))
-                .expected(format!("at least {fewest} samples"))
-                .found(grid.n[a].to_string())
-                .hint(format!("--derivative {} and the measure of its error read {fewest} samples", request.scheme.name())));
-        }
-    }
-    if let Some(wanted) = &request.filter {
-        filter::check(&grid).and_then(|()| filter::check_width(&grid, wanted)).map_err(|e| e.at(&snapshot.path))?;
-    }
     let Source { precision, width, costly, thickest, halo, spectral } = match &opened.source {
         AnySource::F32(s) => source(&**s, &families, request, execution),
         AnySource::F64(s) => source(&**s, &families, request, execution),
@@ -247,16 +234,7 @@ struct Source {
 }
 
 fn source<T: Real>(source: &dyn PlaneSource<T>, families: &[Family], request: &Request, execution: &Execution) -> Source {
-    let plan = Derived {
-        indicators: families.iter().map(|f| f.indicator).collect(),
-        extras: request.extras(),
-        scheme: request.scheme,
-        frame: [0.0; 3],
-        mean_field: None,
-        viscosity: request.viscosity,
-        resistivity: request.resistivity,
-    };
-    let deriver = Deriver::<T>::new(source.grid(), source.fields(), plan);
+    let deriver = Deriver::<T>::new(source.grid(), source.fields(), derived(families, request));
     Source {
         precision: T::NAME,
         width: size_of::<T>(),

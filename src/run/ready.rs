@@ -16,6 +16,37 @@ use crate::run::stream::{Buffers, block_ranges};
 use crate::run::whole;
 use crate::space::grid::Grid;
 
+/// Whether a grid has the samples that the scheme reads, and can be filtered where that is asked for.
+///
+/// # Errors
+/// `Input` for an axis with too few samples, `Usage` for a filter that does not fit.
+pub(super) fn check_grid(grid: &Grid, name: &str, request: &Request) -> Result<()> {
+    for (a, axis) in ["x", "y", "z"].iter().enumerate() {
+        let fewest = fewest_samples(request.scheme, grid, a);
+        if grid.n[a] < fewest {
+            return Err(Error::input("cannot derive along an axis")
+                .item(format!("{name} axis {axis}"))
+                .expected(format!("at least {fewest} samples"))
+                .found(grid.n[a].to_string())
+                .hint(format!("--derivative {} and the measure of its error read {fewest} samples", request.scheme.name())));
+        }
+    }
+    request.filter.iter().try_for_each(|f| filter::check(grid).and_then(|()| filter::check_width(grid, f)))
+}
+
+/// What is derived for a request, in the frame of what is stored.
+pub(super) fn derived(families: &[Family], request: &Request) -> Plan {
+    Plan {
+        indicators: families.iter().map(|f| f.indicator).collect(),
+        extras: request.extras(),
+        scheme: request.scheme,
+        frame: [0.0; 3],
+        mean_field: None,
+        viscosity: request.viscosity,
+        resistivity: request.resistivity,
+    }
+}
+
 /// A checked source with what every pass over it needs.
 pub(super) struct Ready<T> {
     source: Box<dyn PlaneSource<T>>,
@@ -46,35 +77,16 @@ impl<T: Real> Ready<T> {
         let grid = source.grid().clone();
         let fields = source.fields();
         let families = request.families_for(fields)?;
-        for (a, axis) in ["x", "y", "z"].iter().enumerate() {
-            let fewest = fewest_samples(request.scheme, &grid, a);
-            if grid.n[a] < fewest {
-                return Err(Error::input("cannot derive along an axis")
-                    .item(format!("{} axis {axis}", snapshot.name))
-                    .expected(format!("at least {fewest} samples"))
-                    .found(grid.n[a].to_string())
-                    .hint(format!("--derivative {} and the measure of its error read {fewest} samples", request.scheme.name())));
-            }
-        }
+        check_grid(&grid, &snapshot.name, request)?;
         let bytes = grid.cells() * fields.components() as u64 * size_of::<T>() as u64;
         let ranges = block_ranges(&*source, execution.block_planes);
         if source.is_costly() && bytes <= execution.keep_bytes {
             source = Box::new(kept(&mut *source, observe)?);
         }
-        let plan = Plan {
-            indicators: families.iter().map(|f| f.indicator).collect(),
-            extras: request.extras(),
-            scheme: request.scheme,
-            frame: [0.0; 3],
-            mean_field: None,
-            viscosity: request.viscosity,
-            resistivity: request.resistivity,
-        };
+        let plan = derived(&families, request);
         let mut ready =
             Ready { source, grid, fields, families, ranges, buffers: Buffers::default(), plan, z_lines: None, stored_digest: None };
         if let Some(filter) = &request.filter {
-            filter::check(&ready.grid)?;
-            filter::check_width(&ready.grid, filter)?;
             // Bad cells and the digest are those of what is stored.
             let (scan, _) = ready.pass(observe).survey(None, true, &[], 0)?;
             reject_bad_cells(&scan, snapshot)?;

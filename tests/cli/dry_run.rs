@@ -251,3 +251,20 @@ fn differences_between_snapshots_are_told() {
     let part = "Families\n  of 1 snapshot\n  vorticity: vorticity > 3 rms\n  of 1 snapshot\n  current: current > 3 rms\n";
     assert!(ran.out.contains(part), "{}", ran.out);
 }
+
+/// What headers tell is told before anything is read, by the run as by its plan.
+#[test]
+fn too_few_samples_and_a_useless_filter_are_found_beforehand() {
+    let place = Place::with_snapshot();
+    for (options, code, text) in [
+        ("--region-cells x=0:8", 3, "cannot derive along an axis: good.h5: good axis x: expected at least 9 samples, found 8"),
+        ("--filter 'sharp 9'", 2, "a wider filter leaves nothing but the mean"),
+    ] {
+        for dry in ["", "--dry-run"] {
+            let ran = place.run(&format!("catalogue good.h5 {OPTIONS} {options} {dry}"));
+            assert_eq!(ran.code, code, "{}", ran.err);
+            assert!(ran.err.contains(text), "{}", ran.err);
+        }
+    }
+    assert!(!place.path("ropewalk-run").exists(), "nothing was begun");
+}

@@ -2,7 +2,7 @@
 
 use ropewalk::base::observe::Silent;
 use ropewalk::base::real::Real;
-use ropewalk::derive::{Deriver, Scratch, check_z_lines, fewest_samples, z_lines, z_lines_bytes};
+use ropewalk::derive::{Deriver, Scratch, fewest_samples, z_lines, z_lines_bytes};
 use ropewalk::math::diff::modified_wavenumber;
 use ropewalk::model::request::{Indicator as I, Scheme};
 use ropewalk::model::rows::Need;
@@ -187,9 +187,4 @@ fn where_a_scheme_gives_way_is_said() {
 fn memory_for_z_lines_is_known_beforehand() {
     let grid = Grid::periodic([1024; 3], [1.0; 3]);
     assert_eq!(z_lines_bytes(&grid, Fields::VELOCITY, 4), 12 << 30);
-    assert!(check_z_lines(&grid, Fields::VELOCITY, 4, 12 << 30).is_ok());
-    let refused = check_z_lines(&grid, Fields::VELOCITY, 4, 8 << 30).unwrap_err();
-    assert_eq!(refused.kind(), ropewalk::base::error::Kind::Limit);
-    let text = refused.to_string();
-    assert!(text.contains("12.00 GiB") && text.contains("8.00 GiB") && text.contains("--derivative fd8"), "{text}");
 }

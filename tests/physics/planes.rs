@@ -70,6 +70,11 @@ fn plane_taylor_green_has_four_vortices() {
 /// A disc: area πR², contour 2πR, extents R√3 (second moment R²/4), converging; off the grid and across both faces.
 #[test]
 fn a_disc_has_its_area_and_contour() {
+    disc::<f64>();
+    disc::<f32>();
+}
+
+fn disc<T: Precision>() {
     let (centre, radius) = ([0.03, 1.96], 0.5);
     let mut last = f64::INFINITY;
     for n in [40, 80, 160] {
@@ -78,7 +83,7 @@ fn a_disc_has_its_area_and_contour() {
             let d: [f64; 2] = std::array::from_fn(|a| p[a] - centre[a] - 2.0 * ((p[a] - centre[a]) / 2.0).round());
             [(1.5 - d[0].hypot(d[1]) / radius).max(0.0), 0.0, 0.0]
         };
-        let o = run(sampled::<f64>(g.clone(), VELOCITY, f), &request(&["d: speed > 0.5"]));
+        let o = run(sampled::<T>(g.clone(), VELOCITY, f), &request(&["d: speed > 0.5"]));
         let row = o.only(0);
         near(number(row, Col::Area), PI * radius * radius, 2.0 / n as f64, "area");
         near(number(row, Col::Extent1), radius * 3f64.sqrt(), 2.0 / n as f64, "extent");
