@@ -127,11 +127,12 @@ fn indicator_of_eight_planes(bencher: Bencher, name: &str) {
         mean_field: None,
         viscosity: None,
         resistivity: None,
+        portable: false,
     };
     let deriver = Deriver::<f32>::new(&grid, Fields::VELOCITY, plan);
     let mut scratch = Scratch::default();
     bencher.counter(divan::counter::ItemsCount::new(8 * N * N)).bench_local(|| {
-        let ready = deriver.prepare(&block, Need::default());
+        let ready = deriver.prepare(&block, Need::default()).unwrap();
         for z in 8..16 {
             for y in 0..N {
                 deriver.row(&block, &ready, z, y, 0..N, Need::default(), &mut scratch);

@@ -1,5 +1,6 @@
 //! Height 0: knows nothing about grids or flows.
 
+pub mod budget;
 pub mod error;
 pub mod observe;
 pub mod par;

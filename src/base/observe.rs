@@ -6,6 +6,10 @@ pub trait Observe: Sync {
     fn stage(&self, _name: &str, _total: u64) {}
     /// `units` more are done.
     fn advance(&self, _units: u64) {}
+    /// So many bytes were read from files.
+    fn read(&self, _bytes: u64) {}
+    /// So many bytes were written to files.
+    fn wrote(&self, _bytes: u64) {}
     /// The current stage is over.
     fn done(&self) {}
     /// Something the user should know; also kept in the results.

@@ -11,6 +11,7 @@ mod lines;
 use std::ops::Range;
 use std::sync::Arc;
 
+use crate::base::error::Result;
 use crate::base::real::Real;
 use crate::math::diff::{AxisStencil, Pick};
 use crate::model::request::{Indicator, Scheme};
@@ -42,6 +43,8 @@ pub struct Plan {
     pub viscosity: Option<f64>,
     /// Magnetic diffusivity, as the viscosity.
     pub resistivity: Option<f64>,
+    /// Whether everything is computed by one path on every machine.
+    pub portable: bool,
 }
 
 /// The fewest samples that an axis of a grid must have for a scheme.
@@ -98,7 +101,7 @@ impl<T: Real> Deriver<T> {
     /// # Panics
     /// When an axis has fewer than [`fewest_samples`].
     pub fn new(grid: &Grid, fields: Fields, plan: Plan) -> Self {
-        let Plan { indicators, extras, scheme, frame, mean_field, viscosity, resistivity } = plan;
+        let Plan { indicators, extras, scheme, frame, mean_field, viscosity, resistivity, portable: _ } = plan;
         let stencils = std::array::from_fn(|a| match &grid.stretched[a] {
             _ if a == 2 && grid.is_flat() => AxisStencil::flat(),
             Some(s) => AxisStencil::stretched(scheme, &s.positions),
@@ -184,8 +187,11 @@ impl<T: Real> Deriver<T> {
     }
 
     /// Derives what a whole block needs before its rows, of which no more is asked than `need`.
-    pub fn prepare(&self, block: &Block<'_, T>, need: Need) -> Prepared<T> {
-        let Some(line) = self.stencils[1].line() else { return Prepared::nothing(&self.pool) };
+    ///
+    /// # Errors
+    /// `Output` when what was put aside in a file cannot be read again.
+    pub fn prepare(&self, block: &Block<'_, T>, need: Need) -> Result<Prepared<T>> {
+        let Some(line) = self.stencils[1].line() else { return Ok(Prepared::nothing(&self.pool)) };
         let w = self.wants(need);
         let mut wanted = Vec::new();
         if self.fields.velocity {
@@ -197,7 +203,7 @@ impl<T: Real> Deriver<T> {
         if self.fields.buoyancy {
             wanted.push(w.buoyancy_gradient);
         }
-        Prepared::along_lines(line, block, &wanted, self.n[0], &self.pool)
+        Ok(Prepared::along_lines(line, block, &wanted, self.n[0], &self.pool))
     }
 
     /// Derives the cells `x` of row `y` of plane `z` of the block into `scratch.rows`.

@@ -163,6 +163,8 @@ pub struct Request {
     pub surfaces: Surfaces,
     /// Objects of fewer cells get no mesh. Default 0: every listed object.
     pub surface_min_cells: u64,
+    /// Whether everything is computed by one path on every machine, the slowest, instead of the fastest each one has.
+    pub portable: bool,
 }
 
 impl Default for Request {
@@ -184,6 +186,7 @@ impl Default for Request {
             run_rms: Vec::new(),
             surfaces: Surfaces::Together,
             surface_min_cells: 0,
+            portable: false,
         }
     }
 }

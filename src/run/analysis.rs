@@ -1,5 +1,7 @@
 //! One snapshot from planes to rows: orders the passes.
 
+use std::path::PathBuf;
+
 use crate::base::error::Result;
 use crate::base::observe::Observe;
 use crate::base::real::Real;
@@ -21,17 +23,19 @@ use crate::survey::levels::Divergence;
 use crate::survey::spectra;
 
 /// How a run is carried out; nothing here changes a result.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Execution {
     /// Planes a block; chosen from the snapshot where not given.
     pub block_planes: Option<usize>,
-    /// A source that is costly to read (compressed, transposed) is read once and kept when its fields fit in so many bytes.
-    pub keep_bytes: u64,
+    /// Bytes that may be used besides what the program and its threads take themselves.
+    pub memory: u64,
+    /// A folder for what does not fit; files in it are removed as soon as they are open.
+    pub scratch: Option<PathBuf>,
 }
 
 impl Default for Execution {
     fn default() -> Self {
-        Execution { block_planes: None, keep_bytes: 2 << 30 }
+        Execution { block_planes: None, memory: 4 << 30, scratch: None }
     }
 }
 

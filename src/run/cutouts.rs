@@ -73,7 +73,7 @@ impl<T: Real> Pass<'_, T> {
             if pieces.is_empty() {
                 return Ok(());
             }
-            let ready = deriver.prepare(block, Need::default());
+            let ready = deriver.prepare(block, Need::default())?;
             let bytes = |p: &Piece| p.planes * wanted[p.which].cut.n[0] * wanted[p.which].cut.n[1] * values;
             let mut rest = pieces.as_slice();
             while let Some(first) = rest.first() {

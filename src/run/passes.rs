@@ -97,7 +97,7 @@ impl<T: Real> Pass<'_, T> {
                 }
             }
             let Some(deriver) = deriver.filter(|_| sound) else { return Ok(()) };
-            let ready = deriver.prepare(block, Need { truncation: true, extras: companions > 0, ..SURVEY });
+            let ready = deriver.prepare(block, Need { truncation: true, extras: companions > 0, ..SURVEY })?;
             let parts = par::map(&tiles, |_, rows_y| {
                 let mut counts = take(&quantiles).unwrap_or_else(|| wanted.iter().map(|w| w.then(Quantiles::default)).collect());
                 let mut scratch = Scratch::default();
@@ -166,7 +166,7 @@ impl<T: Real> Pass<'_, T> {
             self.buffers,
             self.observe,
             |block| {
-                let ready = deriver.prepare(block, need);
+                let ready = deriver.prepare(block, need)?;
                 let parts = par::map(&tiles, |_, rows_y| {
                     let mut scratch = Scratch::default();
                     let mut sweeps: Vec<TileSweep> =
@@ -249,7 +249,7 @@ impl<T: Real> Pass<'_, T> {
                     || waiting.into_iter().try_for_each(|(k, meshes)| sink.put(k, meshes)),
                     || shape_block(&grid, deriver, criteria, &tiles, block, &mut patches, found, plan, &mut out),
                 );
-                pending = meshes;
+                pending = meshes?;
                 written
             },
         )?;
@@ -270,14 +270,14 @@ fn shape_block<T: Real>(
     found: &mut [Detected],
     plan: &ShapePlan,
     out: &mut [Vec<Option<Shaped>>],
-) -> Vec<(usize, Vec<SurfaceMesh>)> {
+) -> Result<Vec<(usize, Vec<SurfaceMesh>)>> {
     for (p, f) in patches.iter_mut().zip(found.iter_mut()) {
         p.begin_block(block.z.clone(), tiles, &mut f.objects);
     }
     let open: &[Patches<T>] = patches;
     let meshes = plan.mesh_cells.is_some();
     let need = Need { extras: meshes && !plan.mesh_extras.is_empty(), vectors: meshes, ..Need::default() };
-    let ready = deriver.prepare(block, need);
+    let ready = deriver.prepare(block, need)?;
     par::map_range(tiles.len(), |t| {
         let mut scratch = Scratch::default();
         let mut wanted: Vec<Wanted> = open.iter().flat_map(|p| p.wanted(t)).collect();
@@ -309,7 +309,7 @@ fn shape_block<T: Real>(
         }
         finished.push((k, meshes));
     }
-    finished
+    Ok(finished)
 }
 
 /// The stretches of a row that cover what is wanted of it, nearby ones joined: deriving a few cells more is cheaper than

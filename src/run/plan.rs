@@ -182,7 +182,7 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
     };
     let plane = grid.plane_cells() as u64 * fields.components() as u64 * width as u64;
     let whole = plane * grid.n[2] as u64;
-    let kept = costly && whole <= execution.keep_bytes;
+    let kept = costly && whole <= execution.memory;
     let memory = Memory {
         blocks: BLOCKS * plane * thickest as u64,
         kept: if kept { whole } else { 0 },

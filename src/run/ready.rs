@@ -44,6 +44,7 @@ pub(super) fn derived(families: &[Family], request: &Request) -> Plan {
         mean_field: None,
         viscosity: request.viscosity,
         resistivity: request.resistivity,
+        portable: request.portable,
     }
 }
 
@@ -80,7 +81,7 @@ impl<T: Real> Ready<T> {
         check_grid(&grid, &snapshot.name, request)?;
         let bytes = grid.cells() * fields.components() as u64 * size_of::<T>() as u64;
         let ranges = block_ranges(&*source, execution.block_planes);
-        if source.is_costly() && bytes <= execution.keep_bytes {
+        if source.is_costly() && bytes <= execution.memory {
             source = Box::new(kept(&mut *source, observe)?);
         }
         let plan = derived(&families, request);

@@ -88,7 +88,7 @@ impl<T: Real> Pass<'_, T> {
         let reach = |z| deriver.reach(z);
         blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
             patches.begin_block(block.z.clone(), &tiles, &mut regions.objects);
-            let ready = deriver.prepare(block, Need::default());
+            let ready = deriver.prepare(block, Need::default())?;
             par::map_range(tiles.len(), |t| {
                 let mut scratch = Scratch::default();
                 let mut wanted: Vec<Wanted> = patches.wanted(t).collect();
@@ -119,7 +119,7 @@ impl<T: Real> Pass<'_, T> {
         let need = Need { strain: true, alignment: true, extras: !criterion.scales.extras.is_empty(), ..Need::default() };
         let reach = |z| deriver.reach(z);
         blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
-            let ready = deriver.prepare(block, need);
+            let ready = deriver.prepare(block, need)?;
             let sums = par::map(&tiles, |_, rows_y| {
                 let mut scratch = Scratch::default();
                 let mut sums: BTreeMap<u32, Tally> = BTreeMap::new();

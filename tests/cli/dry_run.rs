@@ -79,7 +79,7 @@ fn the_demo_is_planned() {
 fn passes_follow_the_request() {
     let mut c = config(vec![demo("mhd_0001.h5")]);
     // Nothing is kept: every pass reads all planes, and 4 more beyond each periodic face (differences of order 8).
-    c.execution = Execution { keep_bytes: 0, block_planes: Some(8) };
+    c.execution = Execution { memory: 0, block_planes: Some(8), scratch: None };
     let whole = WHOLE + 8 * PLANE;
     let of = |c: &RunConfig| plan(c).expect("a plan");
     assert_eq!(passes(&of(&c)), [("survey", whole), ("detection", whole), ("shapes", whole)]);

@@ -22,6 +22,7 @@ pub fn plan(scheme: Scheme, indicators: &[Indicator]) -> Plan {
         mean_field: None,
         viscosity: None,
         resistivity: None,
+        portable: false,
     }
 }
 
@@ -60,7 +61,7 @@ pub fn each_row<T: Real>(
     let ranges = block_ranges(&*source, Some(planes));
     let mut scratch = Scratch::default();
     let run = |block: &ropewalk::space::slab::Block<'_, T>| {
-        let ready = deriver.prepare(block, need);
+        let ready = deriver.prepare(block, need)?;
         for z in block.z.clone() {
             for y in 0..grid.n[1] {
                 deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);

@@ -118,7 +118,7 @@ fn parts_of_rows_are_the_same_bits() {
             let ranges = block_ranges(&source, Some(4));
             let (mut a, mut b) = (Scratch::default(), Scratch::default());
             let check = |block: &ropewalk::space::slab::Block<'_, f32>| {
-                let ready = deriver.prepare(block, need);
+                let ready = deriver.prepare(block, need)?;
                 for z in block.z.clone() {
                     for y in 0..grid.n[1] {
                         deriver.row(block, &ready, z, y, 0..21, need, &mut a);
