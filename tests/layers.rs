@@ -26,6 +26,7 @@ const HEIGHTS: &[(&str, u8)] = &[
 const CONFINED: &[(&[&str], &[&str])] = &[
     (&["println!", "print!", "eprintln!", "eprint!", "dbg!"], &["bin/ropewalk/console.rs"]),
     (&["rayon"], &["base/par.rs"]),
+    (&["memmap2"], &["base/pages.rs"]),
     (&["rustfft", "realfft"], &["math/fft.rs"]),
     (&["glob"], &["read/series.rs"]),
     (&["toml"], &["run/config/file.rs"]),

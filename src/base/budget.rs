@@ -7,7 +7,7 @@ use crate::base::error::{Error, Result};
 /// A limit in bytes, and how much of it is taken.
 #[derive(Debug)]
 pub struct Budget {
-    limit: u64,
+    limit: AtomicU64,
     taken: AtomicU64,
 }
 
@@ -21,22 +21,27 @@ pub struct Reserved<'a> {
 impl Budget {
     /// Nothing is taken yet.
     pub fn new(limit: u64) -> Budget {
-        Budget { limit, taken: AtomicU64::new(0) }
+        Budget { limit: AtomicU64::new(limit), taken: AtomicU64::new(0) }
     }
 
     /// The limit in bytes.
     pub fn limit(&self) -> u64 {
-        self.limit
+        self.limit.load(Ordering::Relaxed)
+    }
+
+    /// Raises the limit by what was taken elsewhere and is free again.
+    pub fn grow(&self, bytes: u64) {
+        self.limit.fetch_add(bytes, Ordering::Relaxed);
     }
 
     /// Bytes that are not taken.
     pub fn left(&self) -> u64 {
-        self.limit.saturating_sub(self.taken.load(Ordering::Relaxed))
+        self.limit().saturating_sub(self.taken.load(Ordering::Relaxed))
     }
 
     /// Takes bytes where so many are left.
     pub fn offer(&self, bytes: u64) -> Option<Reserved<'_>> {
-        let fits = |taken: u64| taken.checked_add(bytes).filter(|&sum| sum <= self.limit);
+        let fits = |taken: u64| taken.checked_add(bytes).filter(|&sum| sum <= self.limit());
         self.taken.fetch_update(Ordering::Relaxed, Ordering::Relaxed, fits).ok().map(|_| Reserved { budget: self, bytes })
     }
 
@@ -49,7 +54,7 @@ impl Budget {
             let taken = self.taken.load(Ordering::Relaxed);
             Error::limit("cannot go on within the memory budget")
                 .item(what)
-                .expected(format!("at most {}", size(self.limit)))
+                .expected(format!("at most {}", size(self.limit())))
                 .found(format!("a need of {}", size(taken.saturating_add(bytes))))
                 .hint(format!(
                     "--memory {} or more{}{hint}",

@@ -3,5 +3,6 @@
 pub mod budget;
 pub mod error;
 pub mod observe;
+pub mod pages;
 pub mod par;
 pub mod real;

@@ -4,7 +4,8 @@ use crate::base::par;
 use crate::detect::rows::tidy;
 use crate::detect::tile::{ClosedTile, Criterion};
 use crate::math::disjoint::OffsetSets;
-use crate::model::object::{Detected, Dropped, Object, Tally};
+use crate::model::contents::Contents;
+use crate::model::object::{Detected, Dropped, LEFT_OUT, Member, Members, Object, Tally};
 use crate::model::request::Side;
 use crate::space::grid::Grid;
 use crate::space::patch::Interval;
@@ -51,6 +52,15 @@ impl Labeller {
         }
         self.runs.extend(tile.runs.iter().map(|r| Run { component: r.component + first_component, ..*r }));
         self.tallies.append(&mut tile.tallies);
+    }
+
+    /// Bytes that what was added takes, and that joining it will take: the objects' own lists of cells and those of rows.
+    pub fn bytes(&self) -> u64 {
+        const RUN: usize = size_of::<Run>() + size_of::<Interval>() + size_of::<Member>();
+        // Parent, offset and spans of the sets, slot, frame and object of a component.
+        const COMPONENT: usize = size_of::<Tally>() + 48;
+        let rows = self.rows.len() * (size_of::<(usize, usize)>() + size_of::<usize>());
+        (self.runs.capacity() * RUN + self.tallies.capacity() * COMPONENT + rows) as u64
     }
 
     fn row(&self, y: usize, z: usize) -> &[Run] {
@@ -117,7 +127,7 @@ impl Labeller {
     /// The objects, numbered by their smallest cell, and what was left out for its size.
     pub fn finish(self, min_cells: u64) -> Detected {
         let mut sets = self.join();
-        let Labeller { grid, criterion, runs, tallies, .. } = self;
+        let Labeller { grid, criterion, runs, tallies, rows, .. } = self;
         let n = tallies.len();
         let size = grid.n.map(|v| v as i64);
         // Root tallies, each in the frame of its root.
@@ -144,13 +154,14 @@ impl Labeller {
             (0..n as u32).filter(|&c| slot[c as usize] != u32::MAX && rises(&merged[slot[c as usize] as usize])).collect();
         let mut kept: Vec<u32> = roots.iter().copied().filter(|&r| merged[slot[r as usize] as usize].moments.count >= min_cells).collect();
         kept.sort_by_key(|&r| merged[slot[r as usize] as usize].first_cell);
-        let mut dropped = Dropped { objects: (roots.len() - kept.len()) as u64, tally: Tally::empty() };
-        let mut object_of = vec![u32::MAX; n];
+        let mut dropped = Dropped { objects: (roots.len() - kept.len()) as u64, tally: Tally::empty(), contents: Contents::default() };
+        let mut object_of = vec![NO_OBJECT; n];
         for (k, &r) in kept.iter().enumerate() {
             object_of[r as usize] = k as u32;
         }
         for &r in &roots {
-            if object_of[r as usize] == u32::MAX {
+            if object_of[r as usize] == NO_OBJECT {
+                object_of[r as usize] = LEFT_OUT;
                 dropped.tally.merge(&merged[slot[r as usize] as usize], [0; 3], grid.n, criterion.side);
             }
         }
@@ -160,6 +171,7 @@ impl Labeller {
             .map(|(k, &r)| Object {
                 id: k as u64 + 1,
                 tally: std::mem::replace(&mut merged[slot[r as usize] as usize], Tally::empty()),
+                contents: None,
                 level: None,
                 wall: 0.0,
                 spans: sets.spans(r),
@@ -169,19 +181,28 @@ impl Labeller {
         drop(merged);
         // Where each object's frame has to move so that its centroid lies inside the box.
         let homes: Vec<[i32; 3]> = objects.iter_mut().map(|o| o.tally.bring_home(&grid)).collect();
-        for run in &runs {
-            let (root, offset) = frame[run.component as usize];
-            let k = object_of[root as usize];
-            if k == u32::MAX {
-                continue;
+        // Runs come tile by tile; their rows are gone through in order.
+        let mut members = Members::new(grid.n[1], runs.len());
+        for (from, to) in rows {
+            for run in &runs[from..to] {
+                let (root, offset) = frame[run.component as usize];
+                let k = object_of[root as usize];
+                if k == NO_OBJECT {
+                    continue;
+                }
+                members.push(Member { x0: run.x0, x1: run.x1, object: k });
+                if k == LEFT_OUT {
+                    continue;
+                }
+                let object = &mut objects[k as usize];
+                let closed = object.spans.iter().any(|&s| s);
+                let place = |a: usize, v: u32| {
+                    let boxes = if closed { 0 } else { i64::from(offset[a] + homes[k as usize][a]) };
+                    (i64::from(v) + boxes * size[a]) as i32
+                };
+                object.intervals.push(Interval { z: place(2, run.z), y: place(1, run.y), x: place(0, run.x0), len: run.x1 - run.x0 });
             }
-            let object = &mut objects[k as usize];
-            let closed = object.spans.iter().any(|&s| s);
-            let place = |a: usize, v: u32| {
-                let boxes = if closed { 0 } else { i64::from(offset[a] + homes[k as usize][a]) };
-                (i64::from(v) + boxes * size[a]) as i32
-            };
-            object.intervals.push(Interval { z: place(2, run.z), y: place(1, run.y), x: place(0, run.x0), len: run.x1 - run.x0 });
+            members.end_row();
         }
         drop(runs);
         par::for_chunks(&mut objects, 16, |_, some| {
@@ -190,9 +211,12 @@ impl Labeller {
                 if closed { object.intervals.sort_unstable() } else { tidy(&mut object.intervals) }
             }
         });
-        Detected { objects, dropped }
+        Detected { objects, dropped, members }
     }
 }
+
+/// Marks a component that never rises beyond the inner level; below [`LEFT_OUT`].
+const NO_OBJECT: u32 = u32::MAX - 1;
 
 /// Neighbour index along an axis and the box shift of the neighbour as seen from here; `None` beyond an open face.
 fn step(i: usize, d: i32, n: usize, periodic: bool) -> Option<(usize, i32)> {

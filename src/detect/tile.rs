@@ -1,9 +1,9 @@
 //! Runs and provisional components of one tile: some rows of some consecutive planes, without any wrap.
 
 use crate::base::real::Real;
-use crate::model::object::{Scales, Tally};
+use crate::model::contents::Scales;
+use crate::model::object::Tally;
 use crate::model::request::Side;
-use crate::model::rows::Rows;
 use crate::space::grid::Grid;
 use crate::space::runs::{Connectivity, Run, touching};
 
@@ -64,15 +64,14 @@ impl TileSweep {
         }
     }
 
-    /// Adds the next row.
+    /// Adds the next row: its indicator, and on a stretched grid the volumes of its cells over that of the largest.
     ///
     /// # Panics
     /// When rows do not come in order.
-    pub fn add_row<T: Real>(&mut self, grid: &Grid, rows: &Rows<T>, y: usize, z: usize) {
+    pub fn add_row<T: Real>(&mut self, grid: &Grid, values: &[T], weights: &[f64], y: usize, z: usize) {
         let height = self.rows_y.1 - self.rows_y.0;
         assert_eq!(self.starts.len() - 1, (z - self.first_z) * height + y - self.rows_y.0, "order of rows");
-        let Criterion { family, side, level, connectivity, ref scales, .. } = self.criterion;
-        let values = &rows.indicators[family];
+        let Criterion { side, level, connectivity, .. } = self.criterion;
         let level = T::of(level);
         let begin = self.runs.len();
         match side {
@@ -109,9 +108,9 @@ impl TileSweep {
                     self.parent.push(run.component);
                     self.tallies.push(Tally::empty());
                 }
-                let tally = &mut self.tallies[run.component as usize];
-                tally.add_run(grid, rows, family, side, scales, (run.x0 as usize, run.x1 as usize), y, z);
-                tally.open_faces |= grid.open_faces((run.x0 as usize, run.x1 as usize), y, z);
+                let cells = run.x0 as usize..run.x1 as usize;
+                let weights = if weights.is_empty() { weights } else { &weights[cells.clone()] };
+                self.tallies[run.component as usize].add_run(grid, &values[cells], weights, side, run.x0 as usize, y, z);
             }
         }
         self.starts.push(self.runs.len());

@@ -11,7 +11,7 @@ use crate::model::request::Side;
 use crate::model::rows::Rows;
 use crate::model::source::Fields;
 use crate::space::grid::Grid;
-use crate::space::patch::{PatchShape, Segment};
+use crate::space::patch::{Interval, PatchShape, Segment};
 
 /// Cells of margin around an object that its surface needs.
 const MARGIN: usize = 1;
@@ -90,14 +90,12 @@ pub struct Patches<T> {
 }
 
 impl<T: Real> Patches<T> {
-    /// Patches for the objects of a family that are no larger than `max_cells`.
-    pub fn new(grid: Grid, family: usize, side: Side, fields: Fields, extras: Vec<usize>, objects: &[Object], max_cells: u64) -> Self {
-        let mut waiting: Vec<(usize, usize, usize)> = objects
-            .iter()
-            .enumerate()
-            .filter(|(_, o)| o.tally.moments.count <= max_cells)
-            .map(|(k, o)| {
-                let (first, last) = planes(&grid, o);
+    /// Patches for those objects of a family that are in the list `which`.
+    pub fn new(grid: Grid, family: usize, side: Side, fields: Fields, extras: Vec<usize>, objects: &[Object], which: Vec<usize>) -> Self {
+        let mut waiting: Vec<(usize, usize, usize)> = which
+            .into_iter()
+            .map(|k| {
+                let (first, last) = planes(&grid, &objects[k]);
                 (first, last, k)
             })
             .collect();
@@ -105,8 +103,9 @@ impl<T: Real> Patches<T> {
         Patches { grid, family, side, fields, extras, waiting, open: Vec::new(), deliveries: Vec::new() }
     }
 
-    fn carried(&self) -> usize {
-        1 + 6 * (usize::from(self.fields.velocity) + usize::from(self.fields.magnetic)) + self.extras.len()
+    /// Values carried a cell: the indicator, the vectors of `fields`, and further indicators.
+    pub fn carried(fields: Fields, extras: usize) -> usize {
+        1 + 6 * (usize::from(fields.velocity) + usize::from(fields.magnetic)) + extras
     }
 
     /// Opens what begins in the planes `z` and finds out which rows are wanted; `tiles` are the row ranges of the workers.
@@ -120,13 +119,12 @@ impl<T: Real> Patches<T> {
             }
             self.waiting.pop();
             let spans = objects[object].spans;
-            opening.push((object, last, std::mem::take(&mut objects[object].intervals), spans.iter().any(|&s| s)));
+            opening.push((object, last, std::mem::take(&mut objects[object].intervals), spans));
         }
-        let grid = self.grid.clone();
-        let carried = self.carried();
-        let opened = par::map_owned(opening, |_, (object, last_plane, intervals, closed)| {
-            let period = std::array::from_fn(|a| (closed && grid.periodic[a]).then_some(grid.n[a] as i32));
-            let shape = PatchShape::around(intervals, MARGIN, grid.n, grid.periodic, period);
+        let grid = &self.grid;
+        let carried = Self::carried(self.fields, self.extras.len());
+        let opened = par::map_owned(opening, |_, (object, last_plane, intervals, spans)| {
+            let shape = patch_shape(grid, intervals, spans);
             let values = Mutex::new(vec![T::ZERO; shape.cells * carried]);
             Open { object, last_plane, shape, values }
         });
@@ -222,8 +220,15 @@ impl<T: Real> Patches<T> {
     }
 }
 
+/// The cells stored around an object.
+pub fn patch_shape(grid: &Grid, intervals: Vec<Interval>, spans: [bool; 3]) -> PatchShape {
+    let closed = spans.contains(&true);
+    let period = std::array::from_fn(|a| (closed && grid.periodic[a]).then_some(grid.n[a] as i32));
+    PatchShape::around(intervals, MARGIN, grid.n, grid.periodic, period)
+}
+
 /// First and last plane of the stream that an object's patch needs; the whole box for one that crosses the z-face.
-fn planes(grid: &Grid, object: &Object) -> (usize, usize) {
+pub fn planes(grid: &Grid, object: &Object) -> (usize, usize) {
     let n = grid.n[2] as i32;
     let margin = MARGIN as i32;
     let low = object.intervals.first().map_or(0, |i| i.z) - margin;

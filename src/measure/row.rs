@@ -7,7 +7,8 @@ use crate::math::surface::SurfaceMeasures;
 use crate::measure::classify::{Evidence, TANGLED, class};
 use crate::measure::surface::Outline;
 use crate::model::columns::{Col, Row, Value};
-use crate::model::object::{Object, Scales, Sum};
+use crate::model::contents::{Scales, Sum};
+use crate::model::object::Object;
 use crate::model::request::Indicator;
 use crate::model::source::Fields;
 use crate::space::grid::Grid;
@@ -75,8 +76,9 @@ pub fn row(context: &Context, object: &Object, outline: Option<&Outline>) -> Row
     }
     r.set(Col::Flags, Value::Text(flags.join(" ")));
     let weight = object.tally.weight();
-    for (k, extra) in object.tally.extras.iter().enumerate().take(context.companions.len()) {
-        let mean = object.tally.extra_sum(k, &context.scales) / weight;
+    let held = object.contents();
+    for (k, extra) in held.extras.iter().enumerate().take(context.companions.len()) {
+        let mean = held.extra_sum(k, &context.scales) / weight;
         r.push_companion([Some(mean), Some(extra.min), Some(extra.max)]);
     }
     r
@@ -175,7 +177,7 @@ fn sums(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
     let t = &object.tally;
     let n = t.weight();
     let volume = c.grid.largest_cell();
-    let sum = |s: Sum| t.sum(s, &c.scales);
+    let sum = |s: Sum| object.contents().sum(s, &c.scales);
     r.number(Col::IndicatorMean, Some(sum(Sum::Indicator) / n));
     let ratio = |a: f64, b: f64| (b > 0.0).then(|| a / b);
     if c.fields.velocity {
@@ -212,7 +214,7 @@ fn alignment(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
         [Col::CosUB, Col::AbsCosUB, Col::AlignedUB, Col::HistogramUB],
     ];
     for k in (0..3).filter(|&k| present[k]) {
-        let cosine: &Cosine = &object.tally.cosines[k];
+        let cosine: &Cosine = &object.contents().cosines[k];
         let [mean, magnitude, aligned, histogram] = columns[k];
         r.number(mean, cosine.mean());
         r.number(magnitude, cosine.abs_mean());
@@ -223,7 +225,7 @@ fn alignment(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
         }
     }
     if c.guide {
-        let [.., current, flow] = object.tally.all_cosines();
+        let [.., current, flow] = object.contents().all_cosines();
         if !c.in_plane[1] {
             r.number(Col::CosCurrentBFluct, current.mean());
             r.number(Col::AbsCosCurrentBFluct, current.abs_mean());

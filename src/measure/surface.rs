@@ -9,6 +9,9 @@ use crate::model::request::{Connectivity, Side};
 use crate::model::surface::SurfaceMesh;
 use crate::space::grid::Grid;
 
+/// Bytes a stored cell, at most but for rare shapes, that the surface of a patch takes while it is made, measured and written.
+pub const MESH_BYTES: u64 = 160;
+
 /// The measured outline of an object.
 #[derive(Debug, Clone, PartialEq)]
 pub enum Outline {

@@ -1,6 +1,7 @@
 //! Height 4: plain data the stages exchange; no input or output.
 
 pub mod columns;
+pub mod contents;
 pub mod family;
 pub mod indicator;
 pub mod object;

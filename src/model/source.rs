@@ -1,5 +1,8 @@
 //! Where planes come from: files, memory or formulas, all behind one trait that nobody downstream looks behind.
 
+use std::marker::PhantomData;
+use std::ops::Deref;
+
 use crate::base::error::Result;
 use crate::base::real::Real;
 use crate::space::grid::Grid;
@@ -70,6 +73,11 @@ pub trait PlaneSource<T: Real>: Send {
     fn is_costly(&self) -> bool {
         false
     }
+
+    /// The whole components, `nz * ny * nx` values each, where they are in memory: nothing has to be read then.
+    fn held(&self) -> Option<Vec<&[T]>> {
+        None
+    }
 }
 
 /// A source of either precision.
@@ -99,33 +107,38 @@ impl AnySource {
 }
 
 /// Whole components in memory.
-pub struct MemorySource<T> {
+pub struct MemorySource<T, C = Vec<T>> {
     grid: Grid,
     fields: Fields,
-    components: Vec<Vec<T>>,
+    components: Vec<C>,
+    values: PhantomData<T>,
 }
 
-impl<T: Real> MemorySource<T> {
+impl<T: Real, C: Deref<Target = [T]>> MemorySource<T, C> {
     /// Components in the order u, v, w, bx, by, bz (those present), each `nz * ny * nx` long, x fastest.
     ///
     /// # Panics
     /// When the number of components or a length does not fit.
-    pub fn new(grid: Grid, fields: Fields, components: Vec<Vec<T>>) -> Self {
+    pub fn new(grid: Grid, fields: Fields, components: Vec<C>) -> Self {
         assert_eq!(components.len(), fields.components(), "number of components");
         for c in &components {
             assert_eq!(c.len() as u64, grid.cells(), "cells of a component");
         }
-        MemorySource { grid, fields, components }
+        MemorySource { grid, fields, components, values: PhantomData }
     }
 }
 
-impl<T: Real> PlaneSource<T> for MemorySource<T> {
+impl<T: Real, C: Deref<Target = [T]> + Send> PlaneSource<T> for MemorySource<T, C> {
     fn grid(&self) -> &Grid {
         &self.grid
     }
 
     fn fields(&self) -> Fields {
         self.fields
+    }
+
+    fn held(&self) -> Option<Vec<&[T]>> {
+        Some(self.components.iter().map(|c| &**c).collect())
     }
 
     fn read(&mut self, z0: usize, z1: usize, out: &mut [&mut [T]]) -> Result<()> {

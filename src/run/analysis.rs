@@ -8,14 +8,15 @@ use crate::base::real::Real;
 use crate::detect::Criterion;
 use crate::measure::row::{Context, row};
 use crate::model::columns::Row;
-use crate::model::object::{Detected, Object, Scales, Sum, Tally};
+use crate::model::contents::{Contents, Scales, Sum};
+use crate::model::object::{Detected, Dropped, Tally};
 use crate::model::request::{Extent, Family, Indicator, Request, Side, Surfaces};
 use crate::model::sink::ObjectSink;
 use crate::model::source::{AnySource, Fields, PlaneSource};
 use crate::model::statistics::{Alignment, GradientLoss, Scan, Survey};
 use crate::run::criteria::criteria;
-use crate::run::passes::ShapePlan;
-use crate::run::ready::{Ready, reject_overflow, surveyed};
+use crate::run::ready::{Ready, Surveyed, surveyed};
+use crate::run::shape_pass::ShapePlan;
 use crate::run::warnings::{round_off, warnings};
 use crate::run::whole;
 use crate::space::grid::Grid;
@@ -62,10 +63,12 @@ pub struct FamilyResult {
     pub volume_fraction: f64,
     /// Rows of the catalogue, by id.
     pub rows: Vec<Row>,
-    /// Sums over all listed objects; coordinates and peak have no meaning.
+    /// All listed objects together; coordinates and peak have no meaning.
     pub listed: Tally,
-    /// Number of objects left out for their size, and their sums.
-    pub dropped: (u64, Tally),
+    /// What these hold.
+    pub contents: Contents,
+    /// Those left out for their size.
+    pub dropped: Dropped,
     /// Objects whose shape was not measured for their size.
     pub oversized: u64,
     /// Scales of the sums.
@@ -146,7 +149,7 @@ pub fn mean_squares(
         observe: &dyn Observe,
     ) -> Result<Vec<f64>> {
         let mut ready = Ready::new(source, snapshot, request, execution, observe)?;
-        let (_, survey, _) = surveyed(&mut ready, snapshot, request, observe)?;
+        let Surveyed { survey, .. } = surveyed(&mut ready, snapshot, request, false, observe)?;
         Ok(survey.indicators.iter().map(|s| s.square_sum / survey.weight).collect())
     }
     match source {
@@ -164,22 +167,21 @@ fn typed<T: Real>(
     sink: &mut (dyn ObjectSink + Send),
 ) -> Result<Analysis> {
     let mut ready = Ready::new(source, &snapshot, request, execution, observe)?;
-    let (scan, survey, frame) = surveyed(&mut ready, &snapshot, request, observe)?;
+    let Surveyed { scan, survey, alignment, frame, guide, mean_field, kept } = surveyed(&mut ready, &snapshot, request, true, observe)?;
     let (grid, fields, families) = (ready.grid.clone(), ready.fields, ready.families.clone());
-    let guide = whole::guide_field(&scan, survey.weight, fields);
-    let mean_field = guide.filter(|(_, ratio)| *ratio >= whole::GUIDE_RATIO).map(|(mean, _)| mean);
     let deriver = ready.deriver(frame, mean_field);
     let common = whole::common_bounds(&scan, &survey, fields, frame, mean_field);
     let criteria = criteria::<T>(&families, &survey, common, request, &snapshot)?;
-    let mut pass = ready.pass(observe);
     // Regions that peaks grow in are kept whatever their size: it is the grown objects that are listed or not.
     let from_peaks = |k: usize| match families[k].extent() {
         Extent::FromPeaks { fraction, .. } => Some(fraction),
         _ => None,
     };
     let least: Vec<u64> = (0..families.len()).map(|k| if from_peaks(k).is_some() { 1 } else { request.min_cells }).collect();
-    let (mut found, alignment) = pass.detect(&deriver, &criteria, &least)?;
-    reject_overflow::<T>(&[alignment.lamb2, alignment.u2w2, alignment.lorentz2, alignment.j2b2], &snapshot)?;
+    let mut found = ready.pass(observe).detect(&deriver, &criteria, &least, kept.as_ref())?;
+    drop(kept);
+    ready.release_kept();
+    let mut pass = ready.pass(observe);
     for (k, regions) in found.iter_mut().enumerate() {
         if let Some(fraction) = from_peaks(k) {
             pass.split(&deriver, &criteria[k], fraction, regions, request.min_cells)?;
@@ -252,7 +254,7 @@ fn typed<T: Real>(
     })
 }
 
-fn inside_alignment(listed: &Tally, scales: &Scales) -> Alignment {
+fn inside_alignment(listed: &Contents, scales: &Scales) -> Alignment {
     Alignment {
         cosines: listed.all_cosines(),
         lamb2: listed.sum(Sum::Lamb2, scales),
@@ -273,12 +275,12 @@ fn summed(
     survey: &Survey,
     whole: &Alignment,
 ) -> FamilyResult {
-    let mut listed = Tally::empty();
-    let add = |sum: &mut Tally, o: &Object| sum.merge(&o.tally, [0; 3], [0; 3], Side::Above);
+    let (mut listed, mut contents) = (Tally::empty(), Contents::default());
     for o in &detected.objects {
-        add(&mut listed, o);
+        listed.merge(&o.tally, [0; 3], [0; 3], Side::Above);
+        contents.merge(o.contents());
     }
-    let inside = inside_alignment(&listed, &criterion.scales);
+    let inside = inside_alignment(&contents, &criterion.scales);
     let beyond = listed.weight() + detected.dropped.tally.weight();
     FamilyResult {
         family: family.clone(),
@@ -289,7 +291,8 @@ fn summed(
         outside: whole.without(&inside),
         inside,
         listed,
-        dropped: (detected.dropped.objects, detected.dropped.tally),
+        contents,
+        dropped: detected.dropped,
         oversized,
         scales: criterion.scales.clone(),
     }

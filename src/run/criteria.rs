@@ -4,7 +4,7 @@ use crate::base::error::{Error, Result};
 use crate::base::real::Real;
 use crate::detect::Criterion;
 use crate::math::stats::Scale;
-use crate::model::object::{SUMS, Scales, Sum};
+use crate::model::contents::{SUMS, Scales, Sum};
 use crate::model::request::{Extent, Family, Level, Request, Side};
 use crate::model::statistics::Survey;
 use crate::run::analysis::Snapshot;

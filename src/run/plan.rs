@@ -3,27 +3,26 @@
 use std::fmt;
 use std::path::PathBuf;
 
+use crate::base::budget::size;
 use crate::base::error::{Error, Kind, Result};
 use crate::base::real::Real;
 use crate::derive::filter::filter_bytes;
 use crate::derive::{Deriver, z_lines_bytes};
-use crate::model::request::{CutOuts, Extent, Family, Frame, Outputs, Request, Surfaces};
+use crate::model::request::{CutOuts, Extent, Family, Outputs, Request, Surfaces};
 use crate::model::snapshot::SnapshotRef;
 use crate::model::source::{AnySource, Fields, PlaneSource};
 use crate::read::{self, Opened};
 use crate::run::analysis::Execution;
 use crate::run::catalogue::{RunConfig, check, none_usable, tell_apart};
 use crate::run::cutouts::HELD_BYTES;
+use crate::run::memory::{Arrangement, arrange};
 use crate::run::parts::{PARTS, Tables};
 use crate::run::ready::derived;
 use crate::run::run_rms;
-use crate::run::stream::block_ranges;
 use crate::space::grid::Grid;
 
 /// Bytes that the patch and surface of an open object take a cell, roughly.
 const OBJECT_BYTES: u64 = 200;
-/// Blocks of planes alive at once: the one worked on and its neighbours, and the one being read.
-const BLOCKS: u64 = 4;
 /// What the program and its libraries take before any plane is read, roughly.
 const PROGRAM_BYTES: u64 = 30 << 20;
 
@@ -92,6 +91,8 @@ pub struct Memory {
     pub blocks: u64,
     /// The whole snapshot, where it is read once and kept.
     pub kept: u64,
+    /// The families' indicators, where they are kept.
+    pub indicators: u64,
     /// Filtered fields.
     pub filter: u64,
     /// Spectral derivatives along z.
@@ -105,7 +106,7 @@ pub struct Memory {
 impl Memory {
     /// All of it, with what the program itself takes.
     pub fn total(&self) -> u64 {
-        PROGRAM_BYTES + self.blocks + self.kept + self.filter + self.spectral + self.objects + self.cut_outs
+        PROGRAM_BYTES + self.blocks + self.kept + self.indicators + self.filter + self.spectral + self.objects + self.cut_outs
     }
 }
 
@@ -176,24 +177,25 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
     let grid = opened.source.grid().clone();
     let fields = opened.source.fields();
     let families = request.families_for(fields).map_err(|e| e.at(&snapshot.path))?;
-    let Source { precision, width, costly, thickest, halo, spectral } = match &opened.source {
-        AnySource::F32(s) => source(&**s, &families, request, execution),
-        AnySource::F64(s) => source(&**s, &families, request, execution),
-    };
+    let Source { precision, width, halo, spectral, arrangement } = match &opened.source {
+        AnySource::F32(s) => source(&**s, &opened.name, &families, request, execution),
+        AnySource::F64(s) => source(&**s, &opened.name, &families, request, execution),
+    }?;
     let plane = grid.plane_cells() as u64 * fields.components() as u64 * width as u64;
     let whole = plane * grid.n[2] as u64;
-    let kept = costly && whole <= execution.memory;
     let memory = Memory {
-        blocks: BLOCKS * plane * thickest as u64,
-        kept: if kept { whole } else { 0 },
+        blocks: arrangement.blocks,
+        kept: if arrangement.keep_planes { whole } else { 0 },
+        indicators: if arrangement.keep_indicators { arrangement.indicators } else { 0 },
         filter: request.filter.map_or(0, |_| filter_bytes(&grid, fields, width)),
         spectral: if spectral { z_lines_bytes(&grid, fields, width) } else { 0 },
         objects: object_bytes(&grid, fields, request, &families, width),
         cut_outs: cut_out_bytes(&outputs.cut_outs, families.len(), &grid, (fields.components() + 1) * width),
     };
     // Planes beyond both periodic faces are read again.
-    let reading = Reading { whole, halo: 2 * halo as u64 * plane, kept, spectral };
-    let passes = passes(&families, request, outputs, &reading);
+    let halo = if opened_costly(&opened.source) { 0 } else { 2 * halo as u64 * plane };
+    let reading = Reading { whole, halo, keep_planes: arrangement.keep_planes, keep_indicators: arrangement.keep_indicators, spectral };
+    let passes = passes(&families, outputs, request, &reading);
     let components = fields.names();
     Ok(SnapshotPlan {
         name: opened.name.clone(),
@@ -224,24 +226,35 @@ struct Source {
     precision: &'static str,
     /// Bytes a value.
     width: usize,
-    costly: bool,
-    /// Planes of the thickest block.
-    thickest: usize,
     /// Planes of halo on each side of a periodic z-axis.
     halo: usize,
     /// Whether derivatives along z are taken of whole lines.
     spectral: bool,
+    arrangement: Arrangement,
 }
 
-fn source<T: Real>(source: &dyn PlaneSource<T>, families: &[Family], request: &Request, execution: &Execution) -> Source {
+fn source<T: Real>(
+    source: &dyn PlaneSource<T>,
+    name: &str,
+    families: &[Family],
+    request: &Request,
+    execution: &Execution,
+) -> Result<Source> {
     let deriver = Deriver::<T>::new(source.grid(), source.fields(), derived(families, request));
-    Source {
+    Ok(Source {
         precision: T::NAME,
         width: size_of::<T>(),
-        costly: source.is_costly(),
-        thickest: block_ranges(source, execution.block_planes).iter().map(ExactSizeIterator::len).max().unwrap_or(0),
         halo: deriver.halo(),
         spectral: deriver.wanted_z_lines().is_some(),
+        arrangement: arrange(source, families, deriver.halo(), execution.block_planes, execution.memory, name)?,
+    })
+}
+
+/// Whether planes beyond a periodic face are kept rather than read again.
+fn opened_costly(source: &AnySource) -> bool {
+    match source {
+        AnySource::F32(s) => s.is_costly(),
+        AnySource::F64(s) => s.is_costly(),
     }
 }
 
@@ -252,52 +265,44 @@ struct Reading {
     /// Planes read again beyond periodic faces.
     halo: u64,
     /// Whether the snapshot is read once and kept.
-    kept: bool,
+    keep_planes: bool,
+    /// Whether the families' indicators are kept from the survey to the detection.
+    keep_indicators: bool,
     /// Whether derivatives along z are taken of whole lines.
     spectral: bool,
 }
 
 /// The passes over one snapshot.
-fn passes(families: &[Family], request: &Request, outputs: &Outputs, reading: &Reading) -> Vec<PassPlan> {
+fn passes(families: &[Family], outputs: &Outputs, request: &Request, reading: &Reading) -> Vec<PassPlan> {
     let mut out: Vec<PassPlan> = Vec::new();
-    let indicators = || families.iter().map(|f| f.indicator).chain(request.companions.iter().copied());
-    let moving = request.frame == Frame::Box && indicators().any(crate::model::indicator::Indicator::depends_on_frame);
-    let prepared = |out: &mut Vec<PassPlan>| {
-        let mut in_memory = reading.kept;
-        let mut add =
-            |name: &'static str, bytes: u64, in_memory: bool| out.push(PassPlan { name, bytes: if in_memory { 0 } else { bytes } });
-        if reading.kept {
-            add("read", reading.whole, false);
-        }
+    let mut in_memory = false;
+    let mut add = |name: &'static str, bytes: u64, in_memory: bool| {
+        out.push(PassPlan { name, bytes: if in_memory { 0 } else { bytes } });
+    };
+    // Everything up to the survey is done once before, where the rms of the run is wanted.
+    for _ in 0..1 + usize::from(run_rms::is_wanted(families)) {
+        add("read", reading.whole, false);
+        in_memory = reading.keep_planes;
         if request.filter.is_some() {
-            add("read", reading.whole, in_memory);
             add("filter", reading.whole, in_memory);
             in_memory = true;
+            add("read", reading.whole, in_memory);
         }
         if reading.spectral {
             add("lines", reading.whole, in_memory);
         }
-        if moving {
-            add("read", reading.whole, in_memory);
-        }
         add("survey", reading.whole + reading.halo, in_memory);
-        in_memory
-    };
-    if run_rms::is_wanted(families) {
-        // Everything up to the survey is done once before, for the rms of the run.
-        prepared(&mut out);
     }
-    let in_memory = prepared(&mut out);
-    let mut add = |name: &'static str| out.push(PassPlan { name, bytes: if in_memory { 0 } else { reading.whole + reading.halo } });
-    add("detection");
+    let all = reading.whole + reading.halo;
+    add("detection", all, in_memory || reading.keep_indicators);
     for _ in families.iter().filter(|f| matches!(f.extent(), Extent::FromPeaks { .. })) {
-        add("peaks");
-        add("sums");
+        add("peaks", all, in_memory);
+        add("sums", all, in_memory);
     }
     if outputs.cut_outs != CutOuts::None {
-        add("cut-outs");
+        add("cut-outs", all, in_memory);
     }
-    add("shapes");
+    add("shapes", all, in_memory);
     out
 }
 
@@ -352,7 +357,7 @@ impl fmt::Display for Plan {
         for s in &self.snapshots {
             let n = s.grid.n.map(|n| n.to_string()).join(" x ");
             let time = s.time.map_or_else(String::new, |t| t.to_string());
-            let (read, memory) = (bytes(s.bytes()), bytes(s.memory.total()));
+            let (read, memory) = (size(s.bytes()), size(s.memory.total()));
             let line =
                 format!("{:<20} {n:<18} {:<5} {:<24} {time:>10} {read:>10} {memory:>10}", s.name, s.precision, s.components.join(","));
             writeln!(f, "{}", line.trim_end())?;
@@ -378,8 +383,8 @@ impl fmt::Display for Plan {
                 lines.iter().try_for_each(|l| writeln!(f, "  {l}"))?;
             }
         }
-        writeln!(f, "\nTo read in all: {} of uncompressed values", bytes(self.bytes()))?;
-        writeln!(f, "Memory: about {}, of which objects take what they need; an estimate", bytes(self.memory()))?;
+        writeln!(f, "\nTo read in all: {} of uncompressed values", size(self.bytes()))?;
+        writeln!(f, "Memory: about {}, of which objects take what they need; an estimate", size(self.memory()))?;
         let place = match self.place {
             Place::Free => "new",
             Place::Replaced => "takes the place of what is there, if that is a run folder",
@@ -411,7 +416,7 @@ fn families(s: &SnapshotPlan) -> Vec<String> {
 }
 
 fn told(s: &SnapshotPlan) -> Vec<String> {
-    s.passes.iter().map(|p| format!("{:<10} {:>10}", p.name, if p.bytes == 0 { "in memory".to_string() } else { bytes(p.bytes) })).collect()
+    s.passes.iter().map(|p| format!("{:<10} {:>10}", p.name, if p.bytes == 0 { "in memory".to_string() } else { size(p.bytes) })).collect()
 }
 
 fn parts(s: &SnapshotPlan) -> Vec<String> {
@@ -420,6 +425,7 @@ fn parts(s: &SnapshotPlan) -> Vec<String> {
         ("the program itself", PROGRAM_BYTES),
         ("blocks of planes", m.blocks),
         ("the snapshot, kept", m.kept),
+        ("indicators, kept", m.indicators),
         ("filtered fields", m.filter),
         ("derivatives along z", m.spectral),
         ("objects, at most", m.objects),
@@ -427,21 +433,6 @@ fn parts(s: &SnapshotPlan) -> Vec<String> {
     ]
     .into_iter()
     .filter(|(_, n)| *n > 0)
-    .map(|(name, n)| format!("{name:<20} {:>10}", bytes(n)))
+    .map(|(name, n)| format!("{name:<20} {:>10}", size(n)))
     .collect()
-}
-
-/// A number of bytes for reading.
-pub fn bytes(n: u64) -> String {
-    const UNITS: [&str; 5] = ["KiB", "MiB", "GiB", "TiB", "PiB"];
-    if n < 1024 {
-        return format!("{n} B");
-    }
-    let mut value = n as f64 / 1024.0;
-    let mut unit = 0;
-    while value >= 1024.0 && unit + 1 < UNITS.len() {
-        value /= 1024.0;
-        unit += 1;
-    }
-    format!("{value:.1} {}", UNITS[unit])
 }

@@ -1,18 +1,20 @@
 //! A checked source and its survey: what has to be known before levels are settled.
 
-use std::ops::Range;
 use std::sync::Arc;
 
+use crate::base::budget::Budget;
 use crate::base::error::{Error, Result};
 use crate::base::observe::Observe;
 use crate::base::real::Real;
 use crate::derive::{Deriver, Plan, ZLines, fewest_samples, filter, z_lines};
 use crate::model::request::{Family, Frame, Request};
 use crate::model::source::{Fields, MemorySource, PlaneSource};
-use crate::model::statistics::{Scan, Survey};
+use crate::model::statistics::{Alignment, Scan, Survey};
 use crate::run::analysis::{Execution, Snapshot};
+use crate::run::kept::Kept;
+use crate::run::memory::{Arrangement, arrange};
 use crate::run::passes::Pass;
-use crate::run::stream::{Buffers, block_ranges};
+use crate::run::stream::Buffers;
 use crate::run::whole;
 use crate::space::grid::Grid;
 
@@ -57,7 +59,8 @@ pub(super) struct Ready<T> {
     pub fields: Fields,
     /// The families.
     pub families: Vec<Family>,
-    ranges: Vec<Range<usize>>,
+    arrangement: Arrangement,
+    budget: Budget,
     buffers: Buffers<T>,
     plan: Plan,
     /// Derivatives along z of the whole box, where the scheme takes them line by line.
@@ -69,7 +72,7 @@ pub(super) struct Ready<T> {
 impl<T: Real> Ready<T> {
     /// Checks the request against the source.
     pub fn new(
-        mut source: Box<dyn PlaneSource<T>>,
+        source: Box<dyn PlaneSource<T>>,
         snapshot: &Snapshot,
         request: &Request,
         execution: &Execution,
@@ -79,25 +82,33 @@ impl<T: Real> Ready<T> {
         let fields = source.fields();
         let families = request.families_for(fields)?;
         check_grid(&grid, &snapshot.name, request)?;
-        let bytes = grid.cells() * fields.components() as u64 * size_of::<T>() as u64;
-        let ranges = block_ranges(&*source, execution.block_planes);
-        if source.is_costly() && bytes <= execution.memory {
-            source = Box::new(kept(&mut *source, observe)?);
-        }
         let plan = derived(&families, request);
-        let mut ready =
-            Ready { source, grid, fields, families, ranges, buffers: Buffers::default(), plan, z_lines: None, stored_digest: None };
+        let halo = Deriver::<T>::new(&grid, fields, plan.clone()).halo();
+        let arrangement = arrange(&*source, &families, halo, execution.block_planes, execution.memory, &snapshot.name)?;
+        let taken = arrangement.blocks
+            + if arrangement.keep_planes { arrangement.planes } else { 0 }
+            + if arrangement.keep_indicators { arrangement.indicators } else { 0 };
+        let budget = Budget::new(execution.memory - taken);
+        let buffers = Buffers::default();
+        let mut ready = Ready { source, grid, fields, families, arrangement, budget, buffers, plan, z_lines: None, stored_digest: None };
         if let Some(filter) = &request.filter {
             // Bad cells and the digest are those of what is stored.
-            let (scan, _) = ready.pass(observe).survey(None, true, &[], 0)?;
-            reject_bad_cells(&scan, snapshot)?;
+            let scan = ready.scan(snapshot, observe)?;
             ready.stored_digest = Some(scan.digest);
             ready.source = Box::new(filter::filtered(&mut *ready.source, filter, observe)?);
         }
-        if let Some(wanted) = ready.deriver([0.0; 3], None).wanted_z_lines() {
-            ready.z_lines = Some(Arc::new(z_lines(&mut *ready.source, &wanted, observe)?));
-        }
         Ok(ready)
+    }
+
+    /// Reads everything once, and keeps the planes where that is arranged.
+    fn scan(&mut self, snapshot: &Snapshot, observe: &dyn Observe) -> Result<Scan> {
+        let keep = self.arrangement.keep_planes;
+        let (scan, planes) = self.pass(observe).scan(keep)?;
+        reject_bad_cells(&scan, snapshot)?;
+        if let Some(planes) = planes {
+            self.source = Box::new(MemorySource::new(self.grid.clone(), self.fields, planes));
+        }
+        Ok(scan)
     }
 
     /// What derives rows from its planes.
@@ -107,47 +118,69 @@ impl<T: Real> Ready<T> {
 
     /// A pass over the planes.
     pub fn pass<'a>(&'a mut self, observe: &'a dyn Observe) -> Pass<'a, T> {
-        Pass { source: &mut *self.source, ranges: self.ranges.clone(), buffers: &self.buffers, observe }
+        let Ready { source, arrangement, buffers, budget, .. } = self;
+        Pass { source: &mut **source, ranges: arrangement.ranges.clone(), buffers, budget, observe }
+    }
+
+    /// Gives the memory of the kept indicators, which are gone, to objects.
+    pub fn release_kept(&mut self) {
+        if self.arrangement.keep_indicators {
+            self.budget.grow(self.arrangement.indicators);
+        }
     }
 }
 
-/// The survey of a source, and the velocity that is subtracted from now on.
+/// What a snapshot is found to hold before levels are settled.
+pub(super) struct Surveyed<T> {
+    /// Raw statistics and digest.
+    pub scan: Scan,
+    /// Derived statistics.
+    pub survey: Survey,
+    /// Alignment over the box.
+    pub alignment: Alignment,
+    /// Velocity that is subtracted.
+    pub frame: [f64; 3],
+    /// Mean magnetic field and its ratio to the fluctuations.
+    pub guide: Option<([f64; 3], f64)>,
+    /// The mean field, where it is strong enough to be left out in further columns.
+    pub mean_field: Option<[f64; 3]>,
+    /// Indicators that stay in memory.
+    pub kept: Option<Kept<T>>,
+}
+
+/// The survey of a source; with `detecting`, all that detection wants to know as well.
 pub(super) fn surveyed<T: Real>(
     ready: &mut Ready<T>,
     snapshot: &Snapshot,
     request: &Request,
+    detecting: bool,
     observe: &dyn Observe,
-) -> Result<(Scan, Survey, [f64; 3])> {
+) -> Result<Surveyed<T>> {
     let fields = ready.fields;
     let families = ready.families.clone();
     let companions = request.companions.len();
     let weight = weight(&ready.grid);
-    let moving =
-        request.frame == Frame::Box && families.iter().map(|f| &f.indicator).chain(&request.companions).any(|i| i.depends_on_frame());
-    let known = match request.frame {
+    let mut scan = ready.scan(snapshot, observe)?;
+    if let Some(wanted) = ready.deriver([0.0; 3], None).wanted_z_lines() {
+        ready.z_lines = Some(Arc::new(z_lines(&mut *ready.source, &wanted, observe)?));
+    }
+    let frame = match request.frame {
+        Frame::Box => whole::mean_velocity(&scan, weight, fields),
         Frame::Given(velocity) if fields.velocity => velocity,
         _ => [0.0; 3],
     };
-    let still = ready.deriver(known, None);
-    let (mut scan, survey, frame) = if moving {
-        // The mean must be known before an indicator that depends on it is surveyed.
-        let (scan, _) = ready.pass(observe).survey(None, true, &families, companions)?;
-        reject_bad_cells(&scan, snapshot)?;
-        let frame = whole::mean_velocity(&scan, weight, fields);
-        let deriver = ready.deriver(frame, None);
-        let (_, survey) = ready.pass(observe).survey(Some(&deriver), false, &families, companions)?;
-        (scan, survey, frame)
-    } else {
-        let (scan, survey) = ready.pass(observe).survey(Some(&still), true, &families, companions)?;
-        reject_bad_cells(&scan, snapshot)?;
-        let frame = if request.frame == Frame::Box { whole::mean_velocity(&scan, weight, fields) } else { known };
-        (scan, survey, frame)
-    };
-    reject_overflow::<T>(&survey_sums(&survey), snapshot)?;
+    let guide = whole::guide_field(&scan, weight, fields);
+    let mean_field = guide.filter(|(_, ratio)| *ratio >= whole::GUIDE_RATIO).map(|(mean, _)| mean);
+    let deriver = ready.deriver(frame, mean_field);
+    let mut kept = (detecting && ready.arrangement.keep_indicators).then(|| Kept::new(&ready.grid, &families));
+    let (survey, alignment) = ready.pass(observe).survey(&deriver, &families, companions, detecting, kept.as_mut())?;
+    let mut sums = survey_sums(&survey);
+    sums.extend([alignment.lamb2, alignment.u2w2, alignment.lorentz2, alignment.j2b2]);
+    reject_overflow::<T>(&sums, snapshot)?;
     if let Some(digest) = &ready.stored_digest {
         scan.digest.clone_from(digest);
     }
-    Ok((scan, survey, frame))
+    Ok(Surveyed { scan, survey, alignment, frame, guide, mean_field, kept })
 }
 
 /// Volume of the box over that of its largest cell.
@@ -156,23 +189,6 @@ fn weight(grid: &Grid) -> f64 {
         return grid.cells() as f64;
     }
     (0..3).map(|a| (0..grid.n[a]).map(|i| grid.width(a, i)).sum::<f64>() / grid.largest_width(a)).product()
-}
-
-fn kept<T: Real>(source: &mut dyn PlaneSource<T>, observe: &dyn Observe) -> Result<MemorySource<T>> {
-    let grid = source.grid().clone();
-    let fields = source.fields();
-    let plane = grid.plane_cells();
-    let mut components = vec![vec![T::ZERO; plane * grid.n[2]]; fields.components()];
-    observe.stage("read", grid.n[2] as u64);
-    let step = source.natural_planes().max(1);
-    for z in (0..grid.n[2]).step_by(step) {
-        let end = (z + step).min(grid.n[2]);
-        let mut slices: Vec<&mut [T]> = components.iter_mut().map(|c| &mut c[z * plane..end * plane]).collect();
-        source.read(z, end, &mut slices)?;
-        observe.advance((end - z) as u64);
-    }
-    observe.done();
-    Ok(MemorySource::new(grid, fields, components))
 }
 
 fn reject_bad_cells(scan: &Scan, snapshot: &Snapshot) -> Result<()> {
@@ -194,7 +210,7 @@ fn survey_sums(survey: &Survey) -> Vec<f64> {
 }
 
 /// Squares and products can leave the range of the storage precision where the field itself does not.
-pub(super) fn reject_overflow<T: Real>(sums: &[f64], snapshot: &Snapshot) -> Result<()> {
+fn reject_overflow<T: Real>(sums: &[f64], snapshot: &Snapshot) -> Result<()> {
     if sums.iter().all(|s| s.is_finite()) {
         return Ok(());
     }

@@ -9,7 +9,8 @@ use crate::derive::{Deriver, Scratch};
 use crate::detect::Criterion;
 use crate::detect::peaks::{Grown, PeakRule, grow};
 use crate::measure::patches::{Patches, Wanted};
-use crate::model::object::{Detected, Dropped, Object, Tally};
+use crate::model::contents::Contents;
+use crate::model::object::{Detected, Dropped, LEFT_OUT, Member, Members, Object, Tally};
 use crate::model::request::Side;
 use crate::model::rows::Need;
 use crate::model::source::Fields;
@@ -42,14 +43,16 @@ impl<T: Real> Pass<'_, T> {
         min_cells: u64,
     ) -> Result<()> {
         let grown = self.grow(deriver, criterion, fraction, regions)?;
-        let tallies = self.tally(deriver, criterion, &grown)?;
-        let mut parts: Vec<Object> = grown
-            .into_iter()
+        let grid = self.source.grid().clone();
+        let pieces = pieces(&grown, grid.n);
+        let tallies = self.tally(deriver, criterion, grown.len(), &pieces)?;
+        let mut parts: Vec<(u32, Object)> = (0..)
+            .zip(grown)
             .zip(tallies)
-            .map(|(g, tally)| {
-                let peak = tally.peak;
-                let mut o = Object { id: 0, tally, level: Some(fraction * peak), wall: g.wall, spans: g.spans, intervals: g.intervals };
-                let grid = self.source.grid();
+            .map(|((part, g), tally)| {
+                let level = Some(fraction * tally.peak);
+                let mut o = Object { id: 0, tally, contents: None, level, wall: g.wall, spans: g.spans, intervals: g.intervals };
+                let grid = &grid;
                 let boxes = o.tally.bring_home(grid);
                 if !o.spans.contains(&true) {
                     let shift: [i32; 3] = std::array::from_fn(|a| boxes[a] * grid.n[a] as i32);
@@ -57,19 +60,32 @@ impl<T: Real> Pass<'_, T> {
                         (i.x, i.y, i.z) = (i.x + shift[0], i.y + shift[1], i.z + shift[2]);
                     }
                 }
-                o
+                (part, o)
             })
             .collect();
-        parts.sort_by_key(|o| o.tally.first_cell);
-        let (listed, small): (Vec<Object>, Vec<Object>) = parts.into_iter().partition(|o| o.tally.moments.count >= min_cells);
-        let mut dropped = Dropped { objects: small.len() as u64, tally: Tally::empty() };
-        for o in &small {
-            dropped.tally.merge(&o.tally, [0; 3], self.source.grid().n, Side::Above);
+        parts.sort_by_key(|(_, o)| o.tally.first_cell);
+        let mut dropped = Dropped { objects: 0, tally: Tally::empty(), contents: Contents::default() };
+        let mut objects: Vec<Object> = Vec::new();
+        let mut object_of = vec![LEFT_OUT; parts.len()];
+        for (part, mut o) in parts {
+            if o.tally.moments.count < min_cells {
+                dropped.objects += 1;
+                dropped.tally.merge(&o.tally, [0; 3], grid.n, Side::Above);
+                continue;
+            }
+            object_of[part as usize] = objects.len() as u32;
+            o.id = objects.len() as u64 + 1;
+            objects.push(o);
         }
-        *regions = Detected { objects: listed, dropped };
-        for (k, o) in regions.objects.iter_mut().enumerate() {
-            o.id = k as u64 + 1;
+        let mut members = Members::new(grid.n[1], pieces.len());
+        let mut rest = pieces.into_iter().peekable();
+        for (z, y) in (0..grid.n[2] as u32).flat_map(|z| (0..grid.n[1] as u32).map(move |y| (z, y))) {
+            while let Some(p) = rest.next_if(|p| (p.z, p.y) == (z, y)) {
+                members.push(Member { x0: p.x0, x1: p.x1, object: object_of[p.part as usize] });
+            }
+            members.end_row();
         }
+        *regions = Detected { objects, dropped, members };
         Ok(())
     }
 
@@ -82,8 +98,9 @@ impl<T: Real> Pass<'_, T> {
         // Compared with values of storage precision.
         let inner = up * T::of(criterion.inner.unwrap_or(f64::NAN)).wide();
         let rule = PeakRule { fraction, inner, connectivity: criterion.connectivity };
+        let all = (0..regions.objects.len()).collect();
         let mut patches: Patches<T> =
-            Patches::new(grid.clone(), criterion.family, criterion.side, Fields::default(), Vec::new(), &regions.objects, u64::MAX);
+            Patches::new(grid.clone(), criterion.family, criterion.side, Fields::default(), Vec::new(), &regions.objects, all);
         let mut out: Vec<(usize, Vec<Grown>)> = Vec::new();
         let reach = |z| deriver.reach(z);
         blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
@@ -109,17 +126,15 @@ impl<T: Real> Pass<'_, T> {
         Ok(out.into_iter().flat_map(|(_, grown)| grown).collect())
     }
 
-    /// Sums over the cells of every part, in the frame of its intervals.
-    fn tally(&mut self, deriver: &Deriver<T>, criterion: &Criterion, grown: &[Grown]) -> Result<Vec<Tally>> {
+    /// Sums over the cells of every one of `count` parts, in the frame of its intervals.
+    fn tally(&mut self, deriver: &Deriver<T>, criterion: &Criterion, count: usize, pieces: &[Piece]) -> Result<Vec<Tally>> {
         let grid = self.source.grid().clone();
         let tiles = self.tiles();
-        let mut tallies = vec![Tally::empty(); grown.len()];
-        let pieces = pieces(grown, grid.n);
+        let mut tallies = vec![Tally::empty(); count];
         self.observe.stage("sums", grid.n[2] as u64);
-        let need = Need { strain: true, alignment: true, extras: !criterion.scales.extras.is_empty(), ..Need::default() };
         let reach = |z| deriver.reach(z);
         blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
-            let ready = deriver.prepare(block, need)?;
+            let ready = deriver.prepare(block, Need::default())?;
             let sums = par::map(&tiles, |_, rows_y| {
                 let mut scratch = Scratch::default();
                 let mut sums: BTreeMap<u32, Tally> = BTreeMap::new();
@@ -128,13 +143,14 @@ impl<T: Real> Pass<'_, T> {
                     let to = pieces.partition_point(|p| (p.z, p.y) < (z as u32, rows_y.end as u32));
                     for row in pieces[from..to].chunk_by(|a, b| a.y == b.y) {
                         let y = row[0].y as usize;
-                        deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);
+                        deriver.row(block, &ready, z, y, 0..grid.n[0], Need::default(), &mut scratch);
                         grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
+                        let rows = &scratch.rows;
                         for p in row {
                             let mut one = Tally::empty();
-                            let x = (p.x0 as usize, p.x1 as usize);
-                            one.add_run(&grid, &scratch.rows, criterion.family, criterion.side, &criterion.scales, x, y, z);
-                            one.open_faces = grid.open_faces(x, y, z);
+                            let x = p.x0 as usize..p.x1 as usize;
+                            let weights = rows.weights.get(x.clone()).unwrap_or_default();
+                            one.add_run(&grid, &rows.indicators[criterion.family][x.clone()], weights, criterion.side, x.start, y, z);
                             sums.entry(p.part).or_insert_with(Tally::empty).merge(&one, p.boxes, grid.n, criterion.side);
                         }
                     }

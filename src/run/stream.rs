@@ -5,6 +5,7 @@ use std::sync::{Arc, Mutex};
 
 use crate::base::error::Result;
 use crate::base::observe::Observe;
+use crate::base::pages::Pages;
 use crate::base::par;
 use crate::base::real::Real;
 use crate::model::source::PlaneSource;
@@ -15,9 +16,10 @@ use crate::space::slab::{Batch, Block};
 /// small beside the snapshot.
 const BLOCK_BYTES: usize = 6 << 20;
 
-/// The blocks of a pass: of the thickness asked for, else of a multiple of the file's natural depth near
-/// `BLOCK_BYTES`. The first blocks are thinner where the file does not mind, so that work begins before much is read.
-pub fn block_ranges<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>) -> Vec<Range<usize>> {
+/// The blocks of a pass: of the thickness asked for, else of a multiple of the file's natural depth near `BLOCK_BYTES`, or as thin as
+/// `most` bytes for all that is alive at once ([`alive`]) demand. The first blocks are thinner where the file does not mind, so that
+/// work begins before much is read.
+pub fn block_ranges<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>, halo: usize, most: u64) -> Vec<Range<usize>> {
     let n = source.grid().n[2];
     if let Some(k) = wanted {
         return cut(n, k.clamp(1, n), false);
@@ -25,7 +27,28 @@ pub fn block_ranges<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>)
     let plane = source.grid().plane_cells() * source.fields().components() * size_of::<T>();
     let fits = (BLOCK_BYTES / plane.max(1)).clamp(4, 64);
     let natural = source.natural_planes().max(1);
-    cut(n, (fits.max(natural) / natural * natural).clamp(1, n), natural == 1)
+    let mut thickness = (fits.max(natural) / natural * natural).clamp(1, n);
+    while thickness > 1 && alive(source, thickness, halo) > most {
+        thickness = if thickness > natural { thickness - natural } else { thickness / 2 };
+    }
+    cut(n, thickness, natural == 1)
+}
+
+/// Bytes of the planes that are in memory at once in a pass: the block with its halo, the ends that are shared across a periodic face,
+/// the batch that is read and the one that waits.
+pub fn alive<T: Real>(source: &dyn PlaneSource<T>, thickness: usize, halo: usize) -> u64 {
+    if source.held().is_some() {
+        return 0;
+    }
+    let grid = source.grid();
+    let plane = (grid.plane_cells() * source.fields().components() * size_of::<T>()) as u64;
+    let ends = if shares_ends(source) { 2 * thickness.max(halo) } else { 0 };
+    plane * (4 * thickness + 2 * halo + ends) as u64
+}
+
+/// Whether planes that a periodic halo repeats are kept instead of read again.
+fn shares_ends<T: Real>(source: &dyn PlaneSource<T>) -> bool {
+    source.is_costly() && source.grid().periodic[2]
 }
 
 fn cut(n: usize, thickness: usize, thin_start: bool) -> Vec<Range<usize>> {
@@ -41,7 +64,7 @@ fn cut(n: usize, thickness: usize, thin_start: bool) -> Vec<Range<usize>> {
 
 /// Batches of component buffers that go round, within a pass and from one pass to the next: a fresh buffer costs as much
 /// in page faults as reading into it.
-pub struct Buffers<T>(Mutex<Vec<Vec<Vec<T>>>>);
+pub struct Buffers<T>(Mutex<Vec<Vec<Pages<T>>>>);
 
 impl<T> Default for Buffers<T> {
     fn default() -> Self {
@@ -50,36 +73,57 @@ impl<T> Default for Buffers<T> {
 }
 
 impl<T: Real> Buffers<T> {
-    fn take(&self, components: usize, cells: usize) -> Vec<Vec<T>> {
+    fn take(&self, components: usize, cells: usize) -> Vec<Pages<T>> {
         let used = self.0.lock().ok().and_then(|mut free| free.pop());
-        let mut buffers = used.unwrap_or_else(|| vec![Vec::new(); components]);
-        for b in &mut buffers {
-            // A new vector of zeros is not touched before it is read into; growing an old one is.
-            if b.capacity() < cells {
-                *b = vec![T::ZERO; cells];
-            }
-            b.resize(cells, T::ZERO);
-        }
-        buffers
+        used.filter(|b| b.len() == components && b.iter().all(|c| c.len() >= cells))
+            .unwrap_or_else(|| (0..components).map(|_| Pages::new(cells)).collect())
     }
 
-    fn give(&self, batch: Arc<Batch<T>>) {
-        if let (Ok(batch), Ok(mut free)) = (Arc::try_unwrap(batch), self.0.lock()) {
-            free.push(batch.components);
+    fn give(&self, batch: Batch<T>) {
+        if let (Ok(components), Ok(mut free)) = (Arc::try_unwrap(batch.components), self.0.lock()) {
+            free.push(components);
         }
     }
 }
 
-/// What to read, in order: unwrapped first plane, and the planes as stored.
-fn plan(grid: &Grid, ranges: &[Range<usize>], halo: usize) -> Vec<(isize, Range<usize>)> {
+/// One batch of a pass: where it stands (unwrapped first plane), its planes as stored, and the batch read before that it repeats.
+struct Item {
+    first: isize,
+    z: Range<usize>,
+    repeats: Option<usize>,
+    /// Whether a later item repeats it.
+    again: bool,
+}
+
+/// What to read, in order.
+fn plan(grid: &Grid, ranges: &[Range<usize>], halo: usize, share: bool) -> Vec<Item> {
     let n = grid.n[2];
-    let mut out = Vec::new();
-    if grid.periodic[2] {
-        out.push((-(halo as isize), n - halo..n));
+    let once = |first: isize, z: Range<usize>| Item { first, z, repeats: None, again: false };
+    let inner = || ranges.iter().map(|z| once(z.start as isize, z.clone()));
+    if !grid.periodic[2] || halo == 0 {
+        return inner().collect();
     }
-    out.extend(ranges.iter().map(|z| (z.start as isize, z.clone())));
-    if grid.periodic[2] {
-        out.push((n as isize, 0..halo));
+    if !share {
+        let (before, behind) = (once(-(halo as isize), n - halo..n), once(n as isize, 0..halo));
+        return [before].into_iter().chain(inner()).chain([behind]).collect();
+    }
+    // The last blocks first, then all in order, then the first ones: none is read twice.
+    let tail = ranges.partition_point(|z| z.end <= n - halo);
+    let head = ranges.partition_point(|z| z.start < halo);
+    let mut out: Vec<Item> = ranges[tail..].iter().map(|z| once(z.start as isize - n as isize, z.clone())).collect();
+    for (k, z) in ranges.iter().enumerate() {
+        let repeats = k.checked_sub(tail);
+        out.push(Item { repeats, ..once(z.start as isize, z.clone()) });
+    }
+    let before = ranges.len() - tail;
+    for (k, z) in ranges[..head].iter().enumerate() {
+        let repeats = Some(k.checked_sub(tail).unwrap_or(before + k));
+        out.push(Item { repeats, ..once((z.start + n) as isize, z.clone()) });
+    }
+    for k in 0..out.len() {
+        if let Some(earlier) = out[k].repeats {
+            out[earlier].again = true;
+        }
     }
     out
 }
@@ -102,21 +146,36 @@ pub fn blocks<T: Real>(
 ) -> Result<()> {
     let grid = source.grid().clone();
     let plane_cells = grid.plane_cells();
+    if let Some(components) = source.held() {
+        for z in ranges {
+            each(&Block::of_whole(z.clone(), reach(z.clone()), &components, plane_cells, grid.n[2]))?;
+            observe.advance(z.len() as u64);
+        }
+        return Ok(());
+    }
     let components = source.fields().components();
-    let mut todo = plan(&grid, ranges, halo).into_iter();
+    let mut saved: Vec<Option<Arc<Vec<Pages<T>>>>> = Vec::new();
+    let mut todo = plan(&grid, ranges, halo, shares_ends(source)).into_iter();
     let next = || -> Option<Result<Batch<T>>> {
-        let (first, z) = todo.next()?;
-        let mut buffers = buffers.take(components, z.len() * plane_cells);
-        let mut slices: Vec<&mut [T]> = buffers.iter_mut().map(Vec::as_mut_slice).collect();
+        let Item { first, z, repeats, again } = todo.next()?;
+        if let Some(components) = repeats.and_then(|k| saved[k].clone()) {
+            saved.push(None);
+            return Some(Ok(Batch { first, planes: z.len(), components }));
+        }
+        let mut values = buffers.take(components, z.len() * plane_cells);
+        let mut slices: Vec<&mut [T]> = values.iter_mut().map(|v| &mut v[..z.len() * plane_cells]).collect();
         let read = source.read(z.start, z.end, &mut slices);
-        Some(read.map(|()| Batch { first, planes: z.len(), components: buffers }))
+        observe.read((components * z.len() * plane_cells * size_of::<T>()) as u64);
+        let values = Arc::new(values);
+        saved.push(again.then(|| values.clone()));
+        Some(read.map(|()| Batch { first, planes: z.len(), components: values }))
     };
-    let mut window: Vec<Arc<Batch<T>>> = Vec::new();
+    let mut window: Vec<Batch<T>> = Vec::new();
     let mut waiting = ranges.iter();
     let mut outcome = Ok(());
     par::read_ahead(1, next, |batch| {
         match batch {
-            Ok(b) => window.push(Arc::new(b)),
+            Ok(b) => window.push(b),
             Err(e) => outcome = Err(e),
         }
         while outcome.is_ok()
@@ -138,6 +197,48 @@ pub fn blocks<T: Real>(
     });
     window.into_iter().for_each(|batch| buffers.give(batch));
     outcome
+}
+
+/// Reads the whole snapshot into memory, showing every block (without halo) to `each` while the next one is read.
+///
+/// # Errors
+/// Those of the source and of `each`.
+pub fn kept<T: Real>(
+    source: &mut dyn PlaneSource<T>,
+    ranges: &[Range<usize>],
+    observe: &dyn Observe,
+    mut each: impl FnMut(&Block<'_, T>) -> Result<()>,
+) -> Result<Vec<Pages<T>>> {
+    let grid = source.grid().clone();
+    let plane = grid.plane_cells();
+    let mut whole: Vec<Pages<T>> = (0..source.fields().components()).map(|_| Pages::new(plane * grid.n[2])).collect();
+    let mut rest: Vec<&mut [T]> = whole.iter_mut().map(|c| &mut **c).collect();
+    let mut todo = ranges.iter().cloned();
+    let next = || {
+        let z = todo.next()?;
+        let mut slices: Vec<&mut [T]> = rest
+            .iter_mut()
+            .map(|r| {
+                let (now, later) = std::mem::take(r).split_at_mut(z.len() * plane);
+                *r = later;
+                now
+            })
+            .collect();
+        let read = source.read(z.start, z.end, &mut slices);
+        observe.read((slices.len() * z.len() * plane * size_of::<T>()) as u64);
+        Some(read.map(|()| (z, slices)))
+    };
+    let mut outcome = Ok(());
+    par::read_ahead(1, next, |item| {
+        outcome = item.and_then(|(z, slices)| {
+            let here: Vec<&[T]> = slices.iter().map(|s| &**s).collect();
+            each(&Block::of_planes(z.clone(), &here, plane))?;
+            observe.advance(z.len() as u64);
+            Ok(())
+        });
+        outcome.is_ok()
+    });
+    outcome.map(|()| whole)
 }
 
 #[cfg(test)]

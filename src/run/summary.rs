@@ -5,7 +5,8 @@ use serde_json::{Value, json};
 use crate::export::hdf5::axes;
 use crate::export::json::number;
 use crate::math::stats::Cosine;
-use crate::model::object::{COSINES, Scales, Sum, Tally};
+use crate::model::contents::{COSINES, Contents, Scales, Sum};
+use crate::model::object::Tally;
 use crate::model::request::{Indicator, Request, Surfaces};
 use crate::model::statistics::{Alignment, GradientStats};
 use crate::read::{InputSpec, Staggering, Stretch};
@@ -169,9 +170,10 @@ fn family(a: &Analysis, f: &FamilyResult) -> Value {
     let k = a.families.iter().position(|g| g.family.name == f.family.name).unwrap_or(0);
     let s = &a.survey.indicators[k];
     let rms = (s.square_sum / n).sqrt();
-    let share = |t: &Tally| shares(a, t, &f.scales);
-    let mut background = share(&f.listed);
-    let dropped = share(&f.dropped.1);
+    let share = |t: &Tally, c: &Contents| shares(a, t, c, &f.scales);
+    let listed = share(&f.listed, &f.contents);
+    let mut background = listed.clone();
+    let dropped = share(&f.dropped.tally, &f.dropped.contents);
     for key in ["volume", "viscous", "ohmic"] {
         let rest = background[key].as_f64().zip(dropped[key].as_f64()).map(|(p, q)| 1.0 - p - q);
         background[key] = number(rest);
@@ -189,21 +191,21 @@ fn family(a: &Analysis, f: &FamilyResult) -> Value {
         "indicator_min": s.min,
         "indicator_max": s.max,
         "objects": f.rows.len(),
-        "dropped_objects": f.dropped.0,
-        "dropped_cells": f.dropped.1.moments.count,
+        "dropped_objects": f.dropped.objects,
+        "dropped_cells": f.dropped.tally.moments.count,
         "oversized_objects": f.oversized,
-        "shares": { "objects": share(&f.listed), "dropped": dropped, "background": background },
+        "shares": { "objects": listed, "dropped": dropped, "background": background },
         "alignment": { "objects": alignment(&f.inside), "outside": alignment(&f.outside) },
     })
 }
 
 /// Shares of the box total; objects, dropped ones and background add up to 1.
-fn shares(a: &Analysis, t: &Tally, scales: &Scales) -> Value {
+fn shares(a: &Analysis, t: &Tally, c: &Contents, scales: &Scales) -> Value {
     let of = |part: f64, whole: f64| number((whole > 0.0).then(|| part / whole));
     json!({
         "volume": t.weight() / a.survey.weight,
-        "viscous": if a.fields.velocity { of(t.sum(Sum::Strain2, scales), a.survey.velocity.strain2) } else { Value::Null },
-        "ohmic": if a.fields.magnetic { of(t.sum(Sum::Current2, scales), a.survey.magnetic.curl2) } else { Value::Null },
+        "viscous": if a.fields.velocity { of(c.sum(Sum::Strain2, scales), a.survey.velocity.strain2) } else { Value::Null },
+        "ohmic": if a.fields.magnetic { of(c.sum(Sum::Current2, scales), a.survey.magnetic.curl2) } else { Value::Null },
     })
 }
 

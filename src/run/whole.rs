@@ -1,7 +1,7 @@
 //! Numbers of the whole box that follow from the survey: mean fields, bounds of sums, divergences, Kolmogorov length.
 
 use crate::base::real::Real;
-use crate::model::object::{SUMS, Sum};
+use crate::model::contents::{SUMS, Sum};
 use crate::model::request::Request;
 use crate::model::source::Fields;
 use crate::model::statistics::{IndicatorStats, Scan, Survey};

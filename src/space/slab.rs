@@ -3,6 +3,9 @@
 use std::ops::Range;
 use std::sync::Arc;
 
+use crate::base::pages::Pages;
+use crate::base::real::Real;
+
 /// Consecutive planes of all components as they were read.
 #[derive(Debug)]
 pub struct Batch<T> {
@@ -10,8 +13,8 @@ pub struct Batch<T> {
     pub first: isize,
     /// Number of planes.
     pub planes: usize,
-    /// One array a component, z slowest and x fastest.
-    pub components: Vec<Vec<T>>,
+    /// One array a component, z slowest and x fastest; shared where planes stand on both sides of a periodic face.
+    pub components: Arc<Vec<Pages<T>>>,
 }
 
 /// A block of planes `z` to work on, with every plane its stencils read.
@@ -25,19 +28,35 @@ pub struct Block<'a, T> {
     planes: Vec<&'a [T]>,
 }
 
-impl<'a, T> Block<'a, T> {
+impl<'a, T: Real> Block<'a, T> {
     /// The planes of `batches` (consecutive, ascending) as one block.
-    pub fn new(z: Range<usize>, batches: &'a [Arc<Batch<T>>], plane_cells: usize) -> Self {
+    pub fn new(z: Range<usize>, batches: &'a [Batch<T>], plane_cells: usize) -> Self {
         let components = batches[0].components.len();
         let mut planes = Vec::new();
         for batch in batches {
             for k in 0..batch.planes {
-                for c in &batch.components {
+                for c in batch.components.iter() {
                     planes.push(&c[k * plane_cells..(k + 1) * plane_cells]);
                 }
             }
         }
         Block { z, first: batches[0].first, components, planes }
+    }
+
+    /// The planes `reach.0..reach.1` (unwrapped) of whole components in memory, `n` planes each.
+    pub fn of_whole(z: Range<usize>, reach: (isize, isize), components: &[&'a [T]], plane_cells: usize, n: usize) -> Self {
+        let mut planes = Vec::with_capacity((reach.1 - reach.0) as usize * components.len());
+        for k in reach.0..reach.1 {
+            let at = k.rem_euclid(n as isize) as usize * plane_cells;
+            planes.extend(components.iter().map(|c| &c[at..at + plane_cells]));
+        }
+        Block { z, first: reach.0, components: components.len(), planes }
+    }
+
+    /// Exactly the planes `z`, one slice a component.
+    pub fn of_planes(z: Range<usize>, components: &[&'a [T]], plane_cells: usize) -> Self {
+        let planes = (0..z.len()).flat_map(|k| components.iter().map(move |c| &c[k * plane_cells..(k + 1) * plane_cells])).collect();
+        Block { first: z.start as isize, z, components: components.len(), planes }
     }
 
     /// Number of components.

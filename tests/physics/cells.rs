@@ -81,7 +81,7 @@ fn a_field_of_zeros_has_no_objects() {
     let zero = vec![vec![0.0; 1000]; 6];
     let o = run(stored::<f32>(cube(10), BOTH, &zero), &request(&families));
     for f in &o.analysis.families {
-        assert_eq!((f.rows.len(), f.dropped.0, f.volume_fraction), (0, 0, 0.0), "{}", f.family);
+        assert_eq!((f.rows.len(), f.dropped.objects, f.volume_fraction), (0, 0, 0.0), "{}", f.family);
     }
     assert_eq!(o.analysis.alignment.cosines[0].mean(), None);
     assert_eq!((o.analysis.divergence[0].ratio, o.analysis.kolmogorov_length), (None, None));

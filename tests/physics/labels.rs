@@ -8,9 +8,9 @@ use proptest::prelude::*;
 use ropewalk::detect::{Criterion, Labeller, TileSweep};
 use ropewalk::math::stats::Scale;
 use ropewalk::model::columns::Col;
-use ropewalk::model::object::{Detected, SUMS, Scales};
+use ropewalk::model::contents::{SUMS, Scales};
+use ropewalk::model::object::Detected;
 use ropewalk::model::request::{Connectivity, Request, Side};
-use ropewalk::model::rows::Rows;
 use ropewalk::run::analysis::Execution;
 use ropewalk::space::grid::Grid;
 
@@ -117,8 +117,8 @@ fn detect(grid: &Grid, mask: &[bool], connectivity: Connectivity, height: usize,
             let mut sweep = TileSweep::new(criterion.clone(), (y0, y1), z0);
             for z in z0..(z0 + thickness).min(nz) {
                 for y in y0..y1 {
-                    let row = (0..nx).map(|x| f32::from(u8::from(mask[grid.index(x, y, z) as usize]))).collect();
-                    sweep.add_row(grid, &Rows::<f32> { indicators: vec![row], ..Rows::default() }, y, z);
+                    let row: Vec<f32> = (0..nx).map(|x| f32::from(u8::from(mask[grid.index(x, y, z) as usize]))).collect();
+                    sweep.add_row(grid, &row, &[], y, z);
                 }
             }
             tiles.push(sweep.close());
@@ -249,9 +249,9 @@ fn whole_analyses_find_the_same_objects() {
                     let all = components(&grid, side, connectivity);
                     let kept: Vec<_> = all.iter().filter(|c| c.len() >= 3).collect();
                     assert_eq!(o.rows(k).len(), kept.len());
-                    assert_eq!(o.family(k).dropped.0, (all.len() - kept.len()) as u64);
+                    assert_eq!(o.family(k).dropped.objects, (all.len() - kept.len()) as u64);
                     let beyond = side.iter().filter(|&&m| m).count();
-                    assert_eq!(o.family(k).listed.moments.count + o.family(k).dropped.1.moments.count, beyond as u64);
+                    assert_eq!(o.family(k).listed.moments.count + o.family(k).dropped.tally.moments.count, beyond as u64);
                     for (row, want) in o.rows(k).iter().zip(&kept) {
                         assert_eq!(number(row, Col::Cells), want.len() as f64);
                         let axes = spans(&grid, side, connectivity, want[0]);

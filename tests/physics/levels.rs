@@ -138,7 +138,7 @@ fn small_grown_objects_are_dropped_but_counted() {
     let source = || sampled::<f64>(cube(40), VELOCITY, |p| [f(p), 0.0, 0.0]);
     let all = run(source(), &request(&["f: speed > 1 down to 0.5 peak"]));
     let large = run(source(), &Request { min_cells: 100, connectivity: Connectivity::Six, ..request(&["f: speed > 1 down to 0.5 peak"]) });
-    assert_eq!((all.rows(0).len(), large.rows(0).len(), large.family(0).dropped.0), (2, 1, 1));
-    let cells = |o: &Outcome| o.family(0).listed.moments.count + o.family(0).dropped.1.moments.count;
+    assert_eq!((all.rows(0).len(), large.rows(0).len(), large.family(0).dropped.objects), (2, 1, 1));
+    let cells = |o: &Outcome| o.family(0).listed.moments.count + o.family(0).dropped.tally.moments.count;
     assert_eq!(cells(&all), cells(&large));
 }

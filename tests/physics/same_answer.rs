@@ -10,7 +10,7 @@ use ropewalk::base::par::Pool;
 use ropewalk::export::csv;
 use ropewalk::export::ply::{Joins, PlyWriter};
 use ropewalk::model::columns::Col;
-use ropewalk::model::object::Sum;
+use ropewalk::model::contents::Sum;
 use ropewalk::model::request::{Family, Filter, FilterShape, Indicator, Request, Scheme};
 use ropewalk::model::source::AnySource;
 use ropewalk::read::{InputSpec, open};
@@ -43,11 +43,11 @@ fn bytes(o: &Outcome) -> Vec<u8> {
         writeln!(all, "{:?} {:?} {:?} {:?}", i.sum, i.square_sum, i.min, i.max).unwrap();
     }
     for f in &a.families {
-        writeln!(all, "{:?} {:?} {:?} {:?} {:?}", f.level, f.volume_fraction, f.dropped.0, f.inside, f.outside).unwrap();
-        for tally in [&f.listed, &f.dropped.1] {
+        writeln!(all, "{:?} {:?} {:?} {:?} {:?}", f.level, f.volume_fraction, f.dropped.objects, f.inside, f.outside).unwrap();
+        for (tally, contents) in [(&f.listed, &f.contents), (&f.dropped.tally, &f.dropped.contents)] {
             // Its coordinates and peak have no meaning.
-            let sums = SUMMED.map(|s| tally.sum(s, &f.scales));
-            writeln!(all, "{} {sums:?} {} {:?}", tally.moments.count, tally.open_faces, tally.all_cosines()).unwrap();
+            let sums = SUMMED.map(|s| contents.sum(s, &f.scales));
+            writeln!(all, "{} {sums:?} {} {:?}", tally.moments.count, tally.open_faces, contents.all_cosines()).unwrap();
         }
         f.rows.iter().for_each(|r| csv::push_row(&mut all, r));
     }
@@ -192,7 +192,7 @@ fn the_random_run_has_every_kind_of_object() {
     let rows = || o.analysis.families.iter().flat_map(|f| &f.rows);
     assert!(rows().any(|r| text(r, Col::Wraps).contains('x')), "an object that wraps");
     assert!(rows().any(|r| !text(r, Col::OpenFaces).is_empty()), "an object at an open face");
-    assert!(o.analysis.families.iter().any(|f| f.dropped.0 > 0), "dropped objects");
+    assert!(o.analysis.families.iter().any(|f| f.dropped.objects > 0), "dropped objects");
     assert!(o.analysis.families.iter().zip(&o.meshes).all(|(f, m)| !f.rows.is_empty() && f.rows.len() == m.len()));
 }
 

@@ -6,11 +6,11 @@ use std::io::Write as _;
 use std::path::Path;
 use std::process::ExitCode;
 
+use ropewalk::base::budget::size as bytes;
 use ropewalk::base::error::{Error, Result};
 use ropewalk::read::inspect::{Contents, inspect};
 use ropewalk::run::config::registry::Key;
 use ropewalk::run::config::template;
-use ropewalk::run::plan::bytes;
 
 use crate::args::Inspect;
 use crate::{console, exit};
