@@ -22,6 +22,7 @@ fn config(snapshots: Vec<SnapshotRef>) -> RunConfig {
         request: Request::default(),
         outputs: Outputs::default(),
         execution: Execution::default(),
+        memory_from: String::new(),
         threads: 0,
         output: "no such folder/run".into(),
         replace: false,
