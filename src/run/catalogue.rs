@@ -228,8 +228,7 @@ fn settled(
     let n = usable.len() as u64;
     for (k, (path, name)) in usable.drain(..).enumerate() {
         clock.snapshot(&name, k as u64 + 1, n);
-        let added = open(&path, config, clock)
-            .and_then(|opened| pool.run(|| sums.add(opened, &name, &config.request, execution, clock)));
+        let added = open(&path, config, clock).and_then(|opened| pool.run(|| sums.add(opened, &name, &config.request, execution, clock)));
         match added {
             Ok(()) => good.push((path, name)),
             Err(e) if of_one_snapshot(&e) => {

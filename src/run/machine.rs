@@ -112,7 +112,12 @@ impl Machine {
             if let Some(asked) = asked.filter(|a| *a > room && bound != Bound::Machine) {
                 return Err(Error::limit("cannot take the memory budget asked for")
                     .item(bound.name())
-                    .expected(format!("{} or more, for --memory {} and the program with {}", size(own.saturating_add(asked)), size(asked), told(threads)))
+                    .expected(format!(
+                        "{} or more, for --memory {} and the program with {}",
+                        size(own.saturating_add(asked)),
+                        size(asked),
+                        told(threads)
+                    ))
                     .found(size(limit))
                     .hint(format!("--memory {}MiB or less, or raise the limit", room >> 20)));
             }
@@ -254,10 +259,7 @@ mod tests {
              31 25 0:27 / /sys/fs/cgroup/cpu rw shared:8 master:3 - cgroup cgroup rw,cpu\n";
         // The group is named from outside the container, whose own group is what is mounted.
         let groups = "4:memory:/box/a/b\n3:cpu,cpuacct:/x\n0::/\n";
-        assert_eq!(
-            files(groups, older),
-            ["/sys/fs/cgroup/memory/b/memory.limit_in_bytes", "/sys/fs/cgroup/memory/memory.limit_in_bytes"]
-        );
+        assert_eq!(files(groups, older), ["/sys/fs/cgroup/memory/b/memory.limit_in_bytes", "/sys/fs/cgroup/memory/memory.limit_in_bytes"]);
         // A hierarchy of the newer version beside, without a limit of memory.
         assert_eq!(files(groups, &format!("{older}{newer}")).last().map(String::as_str), Some("/sys/fs/cgroup/memory.max"));
         assert!(files("4:cpu:/a\n", older).is_empty() && files("", newer).is_empty() && files("nonsense", "nonsense - x").is_empty());

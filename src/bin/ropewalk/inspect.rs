@@ -12,7 +12,7 @@ use ropewalk::run::config::registry::Key;
 use ropewalk::run::config::template;
 use ropewalk::run::plan::bytes;
 
-use crate::args::Inspect;
+use crate::args::{Inspect, Progress};
 use crate::{console, exit};
 
 /// Looks into every file; those that cannot be read are told and the others go on.
@@ -24,7 +24,7 @@ pub fn run(a: &Inspect) -> Result<ExitCode> {
             Ok(contents) => found.push(contents),
             Err(e) if a.files.len() == 1 => return Err(e),
             Err(e) => {
-                console::error(&e);
+                console::error(&e, Progress::None);
                 failed = true;
             }
         }

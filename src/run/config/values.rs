@@ -135,7 +135,13 @@ impl<'g> Reader<'g> {
         let value = parse_size(&text);
         if value.is_none() {
             let hint = meant_size(&text).map_or_else(|| example(key, node), |m| format!("did you mean {m}?"));
-            self.fault(key, node, &format!("a size above 0 with one of the units {}", UNITS.map(|(u, _)| u).join(", ")), node.found(), hint);
+            self.fault(
+                key,
+                node,
+                &format!("a size above 0 with one of the units {}", UNITS.map(|(u, _)| u).join(", ")),
+                node.found(),
+                hint,
+            );
         }
         value
     }
