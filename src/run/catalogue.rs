@@ -117,7 +117,6 @@ fn run(config: &RunConfig, clock: &Clock<'_>) -> Result<Outcome> {
         clock.snapshot(name, k as u64 + 1, usable.len() as u64);
         match pool.run(|| one(path, name, config, &request, &execution, &folder, clock)) {
             Ok((analysis, datasets)) => {
-                clock.stage("tables", 0);
                 cells += analysis.grid.cells();
                 let rows: Vec<&[Row]> = analysis.families.iter().map(|f| f.rows.as_slice()).collect();
                 let snapshot = summary::snapshot(&analysis, &path.to_string(), &datasets);
@@ -275,6 +274,8 @@ fn one(
     let mut files = SnapshotFiles::new(folder, name, families, fields, flat, request, &config.outputs, clock)?;
     match analyse(opened.source, snapshot, request, execution, clock, &mut files) {
         Ok(mut analysis) => {
+            // Goes on until its part is written.
+            clock.stage("tables", 0);
             for warning in opened.notes.into_iter().chain(files.finish()?) {
                 clock.warning(&format!("{name}: {warning}"));
                 analysis.warnings.push(warning);

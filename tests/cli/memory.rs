@@ -41,7 +41,9 @@ fn too_little_for_the_program_itself_is_refused() {
     for kib in [60_000, 100_000, 150_000, 200_000, 235_000] {
         let ran = limited(&place, 'v', kib, &line);
         assert_eq!(ran.code, 4, "{kib}: {}", ran.err);
-        assert!(ran.err.starts_with("error: cannot run within the memory there is: the limit of address space (ulimit -v): expected at least "));
+        assert!(
+            ran.err.starts_with("error: cannot run within the memory there is: the limit of address space (ulimit -v): expected at least ")
+        );
         assert!(ran.err.ends_with("hint: raise the limit, or take fewer threads: --threads 1\n"), "{}", ran.err);
         assert_eq!(ran.out, "");
     }

@@ -72,7 +72,10 @@ fn warnings_failures_and_errors_are_lines_too() {
     assert_eq!((ran.code, &last["event"], &last["exit_code"]), (3, &"error".into(), &3.into()));
     // Faults of settings, one a line.
     let ran = place.run("catalogue good.h5 --lengths x --order q --progress json");
-    assert_eq!(lines(&ran.err).iter().map(|l| (l["event"].clone(), l["exit_code"].clone())).collect::<Vec<_>>(), vec![("error".into(), 2.into()); 2]);
+    assert_eq!(
+        lines(&ran.err).iter().map(|l| (l["event"].clone(), l["exit_code"].clone())).collect::<Vec<_>>(),
+        vec![("error".into(), 2.into()); 2]
+    );
 }
 
 #[test]

@@ -184,7 +184,8 @@ fn sizes_without_a_unit() {
     for (given, found, meant) in
         [("160", "160", "160MiB"), ("\"2G\"", "\"2G\"", "2GiB"), ("1073741824", "1073741824", "1024MiB"), ("1.5", "1.5", "1.5MiB")]
     {
-        let message = format!("cannot use a setting: run.toml:6: execution.memory: expected {SIZE}, found {found}; hint: did you mean {meant}?");
+        let message =
+            format!("cannot use a setting: run.toml:6: execution.memory: expected {SIZE}, found {found}; hint: did you mean {meant}?");
         whole(&format!("{BASE}[execution]\nmemory = {given}\n"), &[&message]);
     }
 }

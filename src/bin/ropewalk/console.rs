@@ -96,7 +96,7 @@ impl Console {
 /// The bar of a stage, or a line without one where it does not go through planes.
 fn bar(of_planes: u64) -> ProgressBar {
     let bar = ProgressBar::with_draw_target(Some(of_planes), ProgressDrawTarget::stderr_with_hz(10));
-    let template = if of_planes == 0 { "{msg:>10}" } else { "{msg:>10} {wide_bar} {pos}/{len} planes, {prefix}{eta} left" };
+    let template = if of_planes == 0 { "{msg:>10}" } else { "{msg:>10} {wide_bar} {pos}/{len} planes{prefix}" };
     match ProgressStyle::with_template(template) {
         Ok(style) => bar.with_style(style),
         Err(_) => bar,
@@ -134,7 +134,7 @@ impl Observe for Console {
                 s.track.line("advance", now).iter().for_each(|l| say(&l.to_string()));
             }
             if let Some(bar) = &s.bar {
-                bar.set_prefix(s.track.rate(now));
+                bar.set_prefix(s.track.pace(now));
                 bar.set_position(s.track.planes());
             }
         });

@@ -73,18 +73,19 @@ impl Track {
         }
     }
 
-    /// How fast is read, for people; nothing where nothing is.
-    pub fn rate(&self, now: Instant) -> String {
-        let Some(s) = self.stage.as_ref().filter(|s| s.read > 0) else { return String::new() };
+    /// How fast is read and how long it will take, for people; nothing where nothing is known.
+    pub fn pace(&self, now: Instant) -> String {
+        let Some(s) = &self.stage else { return String::new() };
         let seconds = now.duration_since(s.began).as_secs_f64().max(1e-3);
-        format!("{}/s, ", bytes((s.read as f64 / seconds) as u64))
+        let rate = (s.read > 0).then(|| format!(", {}/s", bytes((s.read as f64 / seconds) as u64)));
+        let left = s.left(seconds).map(|left| format!(", {} left", duration(left)));
+        [rate, left].into_iter().flatten().collect()
     }
 
     /// The stage as a line of JSON; `event` is `begin`, `advance` or `end`.
     pub fn line(&self, event: &str, now: Instant) -> Option<Value> {
         let s = self.stage.as_ref()?;
         let seconds = now.duration_since(s.began).as_secs_f64();
-        let left = (s.planes > 0 && s.of_planes >= s.planes).then(|| seconds * (s.of_planes - s.planes) as f64 / s.planes as f64);
         let snapshot = self.snapshot.as_ref();
         Some(json!({
             "event": event,
@@ -96,8 +97,24 @@ impl Track {
             "of_planes": s.of_planes,
             "bytes_read": s.read,
             "seconds": seconds,
-            "seconds_left": left,
+            "seconds_left": s.left(seconds),
         }))
+    }
+}
+
+impl Stage {
+    /// Seconds to come, should it go on as in the seconds before.
+    fn left(&self, seconds: f64) -> Option<f64> {
+        (self.planes > 0 && self.of_planes >= self.planes).then(|| seconds * (self.of_planes - self.planes) as f64 / self.planes as f64)
+    }
+}
+
+fn duration(seconds: f64) -> String {
+    let s = seconds.round() as u64;
+    match s {
+        0..60 => format!("{s} s"),
+        60..3600 => format!("{} min {} s", s / 60, s % 60),
+        _ => format!("{} h {} min", s / 3600, s / 60 % 60),
     }
 }
 
@@ -119,7 +136,7 @@ mod tests {
         let due: Vec<u64> = (1..=40).map(|k| 10 * k).filter(|ms| t.advance(1, at(*ms))).collect();
         assert_eq!(due, [100, 200, 300, 400]);
         t.read(3 << 20);
-        assert_eq!(t.rate(at(1000)), "3.0 MiB/s, ");
+        assert_eq!(t.pace(at(1000)), ", 3.0 MiB/s, 0 s left");
         t.begin("survey", 40, start);
         t.advance(10, at(500));
         let line = t.line("advance", at(500)).unwrap();
@@ -128,6 +145,11 @@ mod tests {
         assert_eq!((&line["snapshot"], &line["snapshot_number"], &line["of_snapshots"]), (&json!("s2"), &json!(2), &json!(3)));
         t.end();
         assert!(!t.advance(1, at(5000)) && t.line("end", at(5000)).is_none());
-        assert_eq!(t.rate(at(1000)), "");
+        assert_eq!(t.pace(at(1000)), "");
+    }
+
+    #[test]
+    fn durations() {
+        assert_eq!([0.4, 59.4, 61.0, 3599.0, 7380.0].map(duration), ["0 s", "59 s", "1 min 1 s", "59 min 59 s", "2 h 3 min"]);
     }
 }

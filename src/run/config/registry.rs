@@ -513,7 +513,7 @@ pub const SETTINGS: [Setting; 51] = [
         Key::Memory,
         ("execution", "memory"),
         ("memory", "SIZE"),
-        "Memory that planes, fields and objects may take, with a unit: KiB, MiB, GiB, TiB, or kB, MB, GB, TB. The program takes up to 32 MiB, and 8 MiB a thread, besides. When not given: half of the smallest of the machine's memory, the limit of its control group, and what ulimit -v and -d allow",
+        "Memory that planes, fields and objects may take, with a unit: KiB, MiB, GiB, TiB, or kB, MB, GB, TB. The program takes up to 32 MiB, and 8 MiB a thread, besides. When not given: half of the smallest of the machine's memory, the limit of its control group, and the limits of ulimit -v and -d",
         ("\"1.5GiB\"", "1.5GiB"),
     ),
     s(
