@@ -117,6 +117,7 @@ fn run(config: &RunConfig, clock: &Clock<'_>) -> Result<Outcome> {
         clock.snapshot(name, k as u64 + 1, usable.len() as u64);
         match pool.run(|| one(path, name, config, &request, &execution, &folder, clock)) {
             Ok((analysis, datasets)) => {
+                clock.stage("tables", 0);
                 cells += analysis.grid.cells();
                 let rows: Vec<&[Row]> = analysis.families.iter().map(|f| f.rows.as_slice()).collect();
                 let snapshot = summary::snapshot(&analysis, &path.to_string(), &datasets);
@@ -274,8 +275,7 @@ fn one(
     let mut files = SnapshotFiles::new(folder, name, families, fields, flat, request, &config.outputs, clock)?;
     match analyse(opened.source, snapshot, request, execution, clock, &mut files) {
         Ok(mut analysis) => {
-            // Goes on until its part is written.
-            clock.stage("tables", 0);
+            clock.stage("files", 0);
             for warning in opened.notes.into_iter().chain(files.finish()?) {
                 clock.warning(&format!("{name}: {warning}"));
                 analysis.warnings.push(warning);
@@ -286,5 +286,23 @@ fn one(
             files.abandon();
             Err(e)
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// A refusal of one snapshot is its failure, that of all is the run's; beside other failures the input is what to look at.
+    #[test]
+    fn refusals_for_want_of_memory() {
+        let failed = |errors: &[Error]| errors.iter().map(|e| (SnapshotRef::from(PathBuf::from("a.h5")), e.clone())).collect::<Vec<_>>();
+        let (little, bad) = (Error::limit("little"), Error::input("bad"));
+        assert_eq!(none_usable(failed(std::slice::from_ref(&little))), little);
+        let all = none_usable(failed(&[little.clone(), little.clone()]));
+        assert_eq!(all.kind(), Kind::Limit);
+        assert_eq!(all.to_string(), "cannot use any snapshot: expected at least one that fits into the memory budget, found 2 that do not");
+        assert_eq!(none_usable(failed(&[little.clone(), bad.clone()])).kind(), Kind::Input);
+        assert!(of_one_snapshot(&little) && of_one_snapshot(&bad) && !of_one_snapshot(&Error::output("full")));
     }
 }
