@@ -6,11 +6,11 @@ use std::io::Write as _;
 use std::path::Path;
 use std::process::ExitCode;
 
+use ropewalk::base::budget::size;
 use ropewalk::base::error::{Error, Result};
 use ropewalk::read::inspect::{Contents, inspect};
 use ropewalk::run::config::registry::Key;
 use ropewalk::run::config::template;
-use ropewalk::run::plan::bytes;
 
 use crate::args::{Inspect, Progress};
 use crate::{console, exit};
@@ -70,7 +70,7 @@ fn write(out: &Path, text: &str, replace: bool) -> Result<()> {
 /// All that is known of one file.
 fn told(c: &Contents) -> String {
     let mut out = String::new();
-    let _ = writeln!(out, "{}: {}, {}", c.path.display(), c.kind, bytes(c.bytes));
+    let _ = writeln!(out, "{}: {}, {}", c.path.display(), c.kind, size(c.bytes));
     if let Some(t) = c.time {
         let _ = writeln!(out, "  time {t}");
     }

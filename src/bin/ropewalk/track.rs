@@ -2,7 +2,7 @@
 
 use std::time::{Duration, Instant};
 
-use ropewalk::run::plan::bytes;
+use ropewalk::base::budget::size;
 use serde_json::{Value, json};
 
 /// Lines of one stage are at least this far apart, but for its first and last.
@@ -77,7 +77,7 @@ impl Track {
     pub fn pace(&self, now: Instant) -> String {
         let Some(s) = &self.stage else { return String::new() };
         let seconds = now.duration_since(s.began).as_secs_f64().max(1e-3);
-        let rate = (s.read > 0).then(|| format!(", {}/s", bytes((s.read as f64 / seconds) as u64)));
+        let rate = (s.read > 0).then(|| format!(", {}/s", size((s.read as f64 / seconds) as u64)));
         let left = s.left(seconds).map(|left| format!(", {} left", duration(left)));
         [rate, left].into_iter().flatten().collect()
     }
