@@ -34,6 +34,12 @@ impl<T: Real> Pages<T> {
     }
 }
 
+impl<T> From<Vec<T>> for Pages<T> {
+    fn from(plain: Vec<T>) -> Self {
+        Pages { len: plain.len(), map: None, plain }
+    }
+}
+
 impl<T: Real> Deref for Pages<T> {
     type Target = [T];
 

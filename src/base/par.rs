@@ -1,8 +1,13 @@
 //! The only file that names the thread library: fixed-order maps over work items, and the pool they run in.
 
+use std::sync::Mutex;
+
 use rayon::prelude::*;
 
 use crate::base::error::{Error, Result};
+
+/// Bytes of stack that every thread here is started with: where address space is limited, they count from the start.
+pub const STACK_BYTES: usize = 2 << 20;
 
 /// A thread pool of a settled size. Everything inside [`Pool::run`] uses its threads.
 pub struct Pool(rayon::ThreadPool);
@@ -11,14 +16,15 @@ impl Pool {
     /// `threads` = 0 takes one per available core.
     ///
     /// # Errors
-    /// `Internal` when the system refuses to start threads.
+    /// `Limit` when the system refuses to start threads.
     pub fn new(threads: usize) -> Result<Pool> {
         rayon::ThreadPoolBuilder::new()
             .num_threads(threads)
             .thread_name(|i| format!("ropewalk-{i}"))
+            .stack_size(STACK_BYTES)
             .build()
             .map(Pool)
-            .map_err(|e| Error::internal("cannot start worker threads").found(e.to_string()))
+            .map_err(|e| Error::limit("cannot start worker threads").found(e.to_string()).hint("take fewer: --threads 1"))
     }
 
     /// Runs `f` inside the pool.
@@ -55,26 +61,42 @@ pub fn for_chunks<T: Send>(data: &mut [T], size: usize, f: impl Fn(usize, &mut [
     data.par_chunks_mut(size).enumerate().for_each(|(i, c)| f(i, c));
 }
 
+/// Threads that a pool has where nobody says how many.
+pub fn default_threads() -> usize {
+    std::thread::available_parallelism().map_or(1, std::num::NonZero::get)
+}
+
 /// Runs two closures, at the same time when threads allow.
 pub fn join<A: Send, B: Send>(a: impl FnOnce() -> A + Send, b: impl FnOnce() -> B + Send) -> (A, B) {
     rayon::join(a, b)
 }
 
 /// Calls `next` on a thread of its own until it returns `None`, at most `depth` items ahead of `each`, which runs here
-/// and ends the work early by returning `false`.
-pub fn read_ahead<T: Send>(depth: usize, mut next: impl FnMut() -> Option<T> + Send, mut each: impl FnMut(T) -> bool) {
+/// and ends the work early by returning `false`. Where the system refuses a thread, both take turns here.
+pub fn read_ahead<T: Send>(depth: usize, next: impl FnMut() -> Option<T> + Send, mut each: impl FnMut(T) -> bool) {
+    // Shared, so that it is still here when no thread can be started.
+    let next = Mutex::new(next);
+    let call = || next.lock().ok().and_then(|mut next| next());
     std::thread::scope(|scope| {
         let (send, receive) = std::sync::mpsc::sync_channel(depth);
-        scope.spawn(move || {
-            while let Some(item) = next() {
+        let ahead = move || {
+            while let Some(item) = call() {
                 if send.send(item).is_err() {
                     break;
                 }
             }
-        });
-        for item in receive {
-            if !each(item) {
-                break;
+        };
+        if std::thread::Builder::new().stack_size(STACK_BYTES).spawn_scoped(scope, ahead).is_ok() {
+            for item in receive {
+                if !each(item) {
+                    break;
+                }
+            }
+        } else {
+            while let Some(item) = call() {
+                if !each(item) {
+                    break;
+                }
             }
         }
     });

@@ -1,7 +1,6 @@
 //! The main job: snapshots in, a run folder out.
 
 use std::path::{Path, PathBuf};
-use std::time::Instant;
 
 use serde_json::{Value, json};
 
@@ -18,10 +17,13 @@ use crate::read::{self, InputSpec, Opened};
 use crate::run::analysis::{Analysis, Execution, Snapshot, analyse};
 use crate::run::clock::Clock;
 use crate::run::files::SnapshotFiles;
+use crate::run::machine::Share;
+use crate::run::memory;
 use crate::run::parts::{self, FamilyOverview, PARTS, Part, Tables};
 use crate::run::ready::check_grid;
 use crate::run::remarks::remarks;
 use crate::run::run_rms::{self, RunRms};
+use crate::run::scratch::{self, ScratchFolder};
 use crate::run::{provenance, summary};
 
 /// Which snapshots a run goes through; in its folder while it is unfinished.
@@ -38,8 +40,10 @@ pub struct RunConfig {
     pub request: Request,
     /// What is written.
     pub outputs: Outputs,
-    /// What changes nothing.
+    /// What changes nothing. A folder for what does not fit is made inside that of `scratch`, or below the run folder without one.
     pub execution: Execution,
+    /// Where the memory budget of `execution` comes from, in words, for `timing.json`.
+    pub memory_from: String,
     /// Worker threads; 0 takes one per core.
     pub threads: usize,
     /// The run folder.
@@ -66,15 +70,24 @@ pub struct Outcome {
 /// when none can be used, that is an error and nothing is written.
 ///
 /// # Errors
-/// `Usage` for a request that fits no snapshot, `Input` or `Data` when no snapshot is usable, `Output` for the run folder.
+/// `Usage` for a request that fits no snapshot, `Input` or `Data` when no snapshot is usable, `Limit` when none fits into the memory
+/// budget, `Output` for the run folder.
 pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
-    let started = Instant::now();
-    let pool = Pool::new(config.threads)?;
     let clock = Clock::new(observe);
+    let outcome = run(config, &clock);
+    // A stage that failed is over as well.
+    clock.done();
+    outcome
+}
+
+fn run(config: &RunConfig, clock: &Clock<'_>) -> Result<Outcome> {
+    clock.stage("open", 0);
+    let pool = Pool::new(config.threads)?;
+    scratch::check(config.execution.scratch.as_deref())?;
     let mut failed: Vec<(SnapshotRef, Error)> = Vec::new();
     let mut usable = Vec::new();
     for path in &config.snapshots {
-        match read::open(path, &config.input).and_then(|o| check(&o, &path.path, &config.request)) {
+        match read::open(path, &config.input).and_then(|o| check(&o, &path.path, config)) {
             Ok(name) => usable.push((path.clone(), name)),
             Err(e) => failed.push((path.clone(), e)),
         }
@@ -83,7 +96,7 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
         // The request fits no snapshot: that is one fault, not one a snapshot.
         return Err(failed.into_iter().next().map_or_else(|| Error::usage("no snapshot given").hint("name one or more files"), |(_, e)| e));
     }
-    failed.iter().for_each(|(_, e)| tell(e, config, observe));
+    failed.iter().for_each(|(_, e)| tell(e, config, clock));
     tell_apart(&mut usable)?;
     if usable.is_empty() {
         return Err(none_usable(failed));
@@ -94,21 +107,28 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
     let names: Vec<&str> = usable.iter().map(|(_, name)| name.as_str()).collect();
     folder.write(PLAN, dictionary::pretty(&json!({ "snapshots": names })).as_bytes())?;
     let schema = Schema { companions: config.request.companions.clone() };
-    let request = settled(config, &mut usable, &mut failed, &pool, &clock)?;
+    let scratch = ScratchFolder::new(config.execution.scratch.as_deref(), &folder)?;
+    let execution = Execution { scratch: Some(scratch.path().to_path_buf()), ..config.execution.clone() };
+    clock.done();
+    let request = settled(config, &execution, &mut usable, &mut failed, &pool, clock)?;
     let common = parts::common(&summary::request(&request, &config.input));
     let mut done: Vec<Part> = Vec::new();
     let mut cells = 0;
-    for (path, name) in &usable {
-        match pool.run(|| one(path, name, config, &request, &folder, &clock)) {
+    for (k, (path, name)) in usable.iter().enumerate() {
+        clock.snapshot(name, k as u64 + 1, usable.len() as u64);
+        match pool.run(|| one(path, name, config, &request, &execution, &folder, clock)) {
             Ok((analysis, datasets)) => {
+                clock.stage("tables", 0);
                 cells += analysis.grid.cells();
                 let rows: Vec<&[Row]> = analysis.families.iter().map(|f| f.rows.as_slice()).collect();
                 let snapshot = summary::snapshot(&analysis, &path.to_string(), &datasets);
                 pool.run(|| parts::write(&folder, name, &schema, &common, tables, snapshot, &rows))?;
                 done.push(Part::read(&folder.path(""), name)?);
+                clock.done();
             }
-            Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => {
-                tell(&e, config, observe);
+            Err(e) if of_one_snapshot(&e) => {
+                clock.done();
+                tell(&e, config, clock);
                 failed.push((path.clone(), e));
             }
             Err(e) => return Err(e),
@@ -118,17 +138,27 @@ pub fn catalogue(config: &RunConfig, observe: &dyn Observe) -> Result<Outcome> {
         return Err(none_usable(failed));
     }
     let failures: Vec<Value> = failed.iter().map(|(p, e)| json!({ "path": p.to_string(), "error": e.to_string() })).collect();
+    clock.stage("tables", 0);
     let overview = parts::join(&folder, &done, &schema, tables, failures, &pool)?;
-    let how = provenance::timing(&clock.stages(), started.elapsed().as_secs_f64(), pool.threads(), cells);
+    clock.done();
+    scratch.remove()?;
+    let memory = Share { bytes: execution.memory, from: config.memory_from.clone() };
+    let how = provenance::timing(clock, pool.threads(), &memory, cells);
     folder.write("timing.json", dictionary::pretty(&how).as_bytes())?;
     folder.remove(PLAN)?;
     Ok(Outcome { folder: folder.finish()?, overview, remarks: remarks(&done), failed })
 }
 
-pub(super) fn check(opened: &Opened, path: &Path, request: &Request) -> Result<String> {
-    request.families_for(opened.source.fields()).map_err(|e| e.at(path))?;
-    check_grid(opened.source.grid(), &opened.name, request).map_err(|e| e.at(path))?;
+pub(super) fn check(opened: &Opened, path: &Path, config: &RunConfig) -> Result<String> {
+    config.request.families_for(opened.source.fields()).map_err(|e| e.at(path))?;
+    check_grid(opened.source.grid(), &opened.name, &config.request).map_err(|e| e.at(path))?;
+    memory::check(&opened.source, &opened.name, &config.request, &config.execution).map_err(|e| e.at(path))?;
     Ok(opened.name.clone())
+}
+
+/// Whether an error says that one snapshot cannot be used, while others may.
+fn of_one_snapshot(e: &Error) -> bool {
+    matches!(e.kind(), Kind::Input | Kind::Data | Kind::Limit)
 }
 
 /// Tells a failure at once where other snapshots follow; that of the only snapshot is the error of the run.
@@ -174,6 +204,10 @@ pub(super) fn none_usable(mut failed: Vec<(SnapshotRef, Error)>) -> Error {
     match failed.len() {
         0 => Error::usage("no snapshot given").hint("name one or more files"),
         1 => failed.remove(0).1,
+        n if failed.iter().all(|(_, e)| e.kind() == Kind::Limit) => {
+            let e = Error::limit("cannot use any snapshot").expected("at least one that fits into the memory budget");
+            e.found(format!("{n} that do not"))
+        }
         n => Error::input("cannot use any snapshot").expected("at least one that is usable").found(format!("{n} that are not")),
     }
 }
@@ -181,10 +215,11 @@ pub(super) fn none_usable(mut failed: Vec<(SnapshotRef, Error)>) -> Error {
 /// The request with the levels that depend on the whole run; a snapshot that fails on the way is taken out.
 fn settled(
     config: &RunConfig,
+    execution: &Execution,
     usable: &mut Vec<(SnapshotRef, String)>,
     failed: &mut Vec<(SnapshotRef, Error)>,
     pool: &Pool,
-    observe: &dyn Observe,
+    clock: &Clock<'_>,
 ) -> Result<Request> {
     let mut request = config.request.clone();
     if !run_rms::is_wanted(&request.families) {
@@ -192,13 +227,15 @@ fn settled(
     }
     let mut sums = RunRms::default();
     let mut good = Vec::new();
-    for (path, name) in usable.drain(..) {
-        let added = read::open(&path, &config.input)
-            .and_then(|opened| pool.run(|| sums.add(opened, &name, &config.request, &config.execution, observe)));
+    let n = usable.len() as u64;
+    for (k, (path, name)) in usable.drain(..).enumerate() {
+        clock.snapshot(&name, k as u64 + 1, n);
+        let added = open(&path, config, clock).and_then(|opened| pool.run(|| sums.add(opened, &name, &config.request, execution, clock)));
         match added {
             Ok(()) => good.push((path, name)),
-            Err(e) if matches!(e.kind(), Kind::Input | Kind::Data) => {
-                tell(&e, config, observe);
+            Err(e) if of_one_snapshot(&e) => {
+                clock.done();
+                tell(&e, config, clock);
                 failed.push((path, e));
             }
             Err(e) => return Err(e),
@@ -212,25 +249,37 @@ fn settled(
     Ok(request)
 }
 
+/// Opens a snapshot, as a stage of its own.
+fn open(path: &SnapshotRef, config: &RunConfig, clock: &Clock<'_>) -> Result<Opened> {
+    clock.stage("open", 0);
+    let opened = read::open(path, &config.input);
+    clock.done();
+    if let Ok(opened) = &opened {
+        clock.plane_cells(opened.source.grid().plane_cells() as u64);
+    }
+    opened
+}
+
 fn one(
     path: &SnapshotRef,
     name: &str,
     config: &RunConfig,
     request: &Request,
+    execution: &Execution,
     folder: &Folder,
-    observe: &dyn Observe,
+    clock: &Clock<'_>,
 ) -> Result<(Analysis, Vec<String>)> {
-    let opened = read::open(path, &config.input)?;
+    let opened = open(path, config, clock)?;
     let fields = opened.source.fields();
     let snapshot = Snapshot { name: name.to_string(), time: opened.time, components: opened.components };
-    let execution = &config.execution;
     let families = request.families_for(fields)?;
     let flat = opened.source.grid().is_flat();
-    let mut files = SnapshotFiles::new(folder, name, families, fields, flat, request, &config.outputs)?;
-    match analyse(opened.source, snapshot, request, execution, observe, &mut files) {
+    let mut files = SnapshotFiles::new(folder, name, families, fields, flat, request, &config.outputs, clock)?;
+    match analyse(opened.source, snapshot, request, execution, clock, &mut files) {
         Ok(mut analysis) => {
+            clock.stage("files", 0);
             for warning in opened.notes.into_iter().chain(files.finish()?) {
-                observe.warning(&format!("{name}: {warning}"));
+                clock.warning(&format!("{name}: {warning}"));
                 analysis.warnings.push(warning);
             }
             Ok((analysis, opened.datasets))
@@ -239,5 +288,23 @@ fn one(
             files.abandon();
             Err(e)
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// A refusal of one snapshot is its failure, that of all is the run's; beside other failures the input is what to look at.
+    #[test]
+    fn refusals_for_want_of_memory() {
+        let failed = |errors: &[Error]| errors.iter().map(|e| (SnapshotRef::from(PathBuf::from("a.h5")), e.clone())).collect::<Vec<_>>();
+        let (little, bad) = (Error::limit("little"), Error::input("bad"));
+        assert_eq!(none_usable(failed(std::slice::from_ref(&little))), little);
+        let all = none_usable(failed(&[little.clone(), little.clone()]));
+        assert_eq!(all.kind(), Kind::Limit);
+        assert_eq!(all.to_string(), "cannot use any snapshot: expected at least one that fits into the memory budget, found 2 that do not");
+        assert_eq!(none_usable(failed(&[little.clone(), bad.clone()])).kind(), Kind::Input);
+        assert!(of_one_snapshot(&little) && of_one_snapshot(&bad) && !of_one_snapshot(&Error::output("full")));
     }
 }

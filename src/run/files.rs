@@ -3,6 +3,7 @@
 use std::collections::VecDeque;
 
 use crate::base::error::Result;
+use crate::base::observe::Observe;
 use crate::export::atomic::Folder;
 use crate::export::cutout::CutOut;
 use crate::export::hdf5::Hdf5File;
@@ -22,6 +23,7 @@ const MOST_OPEN: usize = 32;
 /// The files of one snapshot.
 pub struct SnapshotFiles<'a> {
     folder: &'a Folder,
+    observe: &'a dyn Observe,
     snapshot: String,
     outputs: &'a Outputs,
     meshes: Option<MeshFiles<'a>>,
@@ -45,6 +47,7 @@ impl<'a> SnapshotFiles<'a> {
         flat: bool,
         request: &Request,
         outputs: &'a Outputs,
+        observe: &'a dyn Observe,
     ) -> Result<Self> {
         let meshes = if request.surfaces == Surfaces::None {
             None
@@ -53,7 +56,7 @@ impl<'a> SnapshotFiles<'a> {
         };
         let named = if let CutOuts::Named(list) = &outputs.cut_outs { list.len() } else { 0 };
         let (cuts, open) = (Vec::new(), VecDeque::new());
-        Ok(SnapshotFiles { folder, snapshot: snapshot.to_string(), outputs, meshes, cuts, open, seen: vec![false; named] })
+        Ok(SnapshotFiles { folder, observe, snapshot: snapshot.to_string(), outputs, meshes, cuts, open, seen: vec![false; named] })
     }
 
     /// The objects of a family that are cut out.
@@ -116,14 +119,20 @@ impl ObjectSink for SnapshotFiles<'_> {
     fn objects(&mut self, found: &FamilyObjects<'_>) -> Result<Vec<CutBox>> {
         let (snapshot, family) = (&self.snapshot, &found.family.name);
         if self.outputs.labels {
+            let planes = found.grid.n[2] as u64;
+            self.observe.stage("labels", planes);
             self.folder.subfolder(&format!("labels/{snapshot}"))?;
             labels::write(&self.folder.path(&format!("labels/{snapshot}/{family}.h5")), snapshot, found)?;
+            self.observe.advance(planes);
+            self.observe.done();
         }
         let chosen = self.chosen(found);
         let place = format!("cutouts/{}/{family}", self.snapshot);
-        if !chosen.is_empty() {
-            self.folder.subfolder(&place)?;
+        if chosen.is_empty() {
+            return Ok(Vec::new());
         }
+        self.observe.stage("cut-outs", 0);
+        self.folder.subfolder(&place)?;
         let mut boxes = Vec::new();
         for object in chosen {
             let cut = CutBox::around(&object.intervals, self.outputs.cut_out_margin, WIDTH, found.grid);
@@ -133,6 +142,7 @@ impl ObjectSink for SnapshotFiles<'_> {
             self.cuts.push((name, out));
             boxes.push(cut);
         }
+        self.observe.done();
         Ok(boxes)
     }
 

@@ -5,9 +5,12 @@ use std::ops::Range;
 use crate::base::budget::{rounded_up, size};
 use crate::base::error::{Error, Result};
 use crate::base::real::Real;
-use crate::model::request::Family;
-use crate::model::source::PlaneSource;
+use crate::derive::Deriver;
+use crate::model::request::{Family, Request};
+use crate::model::source::{AnySource, PlaneSource};
+use crate::run::analysis::Execution;
 use crate::run::kept::kept_bytes;
+use crate::run::ready::derived;
 use crate::run::stream::{alive, block_ranges};
 
 /// Share of the budget for planes that are worked on, where blocks can be made thinner.
@@ -74,4 +77,20 @@ pub fn arrange<T: Real>(
     let keep_indicators = take(indicators);
     let keep_planes = costly || (!held && !source.is_costly() && take(planes));
     Ok(Arrangement { ranges, blocks, keep_planes, planes, keep_indicators, indicators })
+}
+
+/// Whether a snapshot can be analysed within the budget, as far as its headers tell.
+///
+/// # Errors
+/// `Limit` when it cannot; `Usage` when the request does not fit the fields.
+pub fn check(source: &AnySource, name: &str, request: &Request, execution: &Execution) -> Result<()> {
+    fn typed<T: Real>(source: &dyn PlaneSource<T>, name: &str, request: &Request, execution: &Execution) -> Result<()> {
+        let families = request.families_for(source.fields())?;
+        let halo = Deriver::<T>::new(source.grid(), source.fields(), derived(&families, request)).halo();
+        arrange(source, &families, halo, execution.block_planes, execution.memory, name).map(|_| ())
+    }
+    match source {
+        AnySource::F32(s) => typed(&**s, name, request, execution),
+        AnySource::F64(s) => typed(&**s, name, request, execution),
+    }
 }

@@ -70,7 +70,7 @@ pub struct Part {
 
 /// What a part is about besides its snapshot; equal in all parts of a run.
 pub fn common(request: &Value) -> Value {
-    json!({ "program": provenance::program(), "request": request })
+    json!({ "program": provenance::program(request["portable"] == true), "request": request })
 }
 
 /// Writes the part of a snapshot; it counts once its `.json` is there.

@@ -139,7 +139,7 @@ pub fn plan(config: &RunConfig) -> Result<Plan> {
     let mut opened = Vec::new();
     for snapshot in &config.snapshots {
         let one = read::open(snapshot, &config.input)
-            .and_then(|o| check(&o, &snapshot.path, &config.request).and_then(|name| Ok((looked_at(&o, snapshot, config)?, name))));
+            .and_then(|o| check(&o, &snapshot.path, config).and_then(|name| Ok((looked_at(&o, snapshot, config)?, name))));
         match one {
             Ok((seen, name)) => {
                 usable.push((snapshot.clone(), name));

@@ -31,6 +31,7 @@ pub fn request(request: &Request, input: &InputSpec) -> Value {
         "frame": request.frame.to_string(),
         "derivative": request.scheme.name(),
         "filter": request.filter.map(|f| f.to_string()),
+        "portable": request.portable,
         "companions": names(&request.companions),
         "mesh_values": names(&request.mesh_values),
         "surfaces": match request.surfaces { Surfaces::None => "none", Surfaces::Together => "together", Surfaces::Each => "each" },

@@ -205,7 +205,8 @@ mod tests {
                 let at = [i % N[0], i / N[0] % N[1], z + i / grid.plane_cells()];
                 wave(at[axis])
             };
-            let components: Vec<Vec<f64>> = (0..3).map(|c| (0..cells).map(|i| f64::from(c + 1) * value(i)).collect()).collect();
+            let wave = |c| (0..cells).map(|i| f64::from(c + 1) * value(i)).collect::<Vec<f64>>();
+            let components = (0..3).map(|c| wave(c).into()).collect();
             let batches = [Batch { first: z as isize, planes: planes.len(), components: Arc::new(components) }];
             sum.add(&Block::new(planes, &batches, grid.plane_cells()));
         }

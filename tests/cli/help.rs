@@ -40,7 +40,7 @@ fn every_setting_is_a_flag_and_the_other_way_round() {
         .filter_map(|l| l.split("--").nth(1)?.split(|c: char| !c.is_alphanumeric() && c != '-').next())
         .collect();
     let settings: Vec<&str> = SETTINGS.iter().map(|s| s.flag).filter(|f| !f.is_empty()).collect();
-    let others = ["dry-run", "quiet", "verbose", "help"];
+    let others = ["dry-run", "quiet", "verbose", "progress", "help"];
     assert_eq!(shown, [&others[..], &settings].concat());
     for s in &SETTINGS {
         let told = s.flag.is_empty() || s.help.split_whitespace().all(|word| help.contains(word));

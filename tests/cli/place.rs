@@ -46,14 +46,14 @@ impl Place {
             .flat_map(|(i, part)| if i % 2 == 1 { vec![part.to_string()] } else { part.split_whitespace().map(str::to_string).collect() });
         let mut command = Command::new(env!("CARGO_BIN_EXE_ropewalk"));
         command.args(words).current_dir(self.0.path()).env_remove("COLUMNS");
-        command.stdin(Stdio::null()).stdout(Stdio::piped()).stderr(Stdio::piped());
-        let started = {
-            let _no_writing = STARTING.read().unwrap_or_else(|e| e.into_inner());
-            command.spawn().expect("the program starts")
-        };
-        let output = started.wait_with_output().expect("the program ends");
-        let text = |bytes: Vec<u8>| String::from_utf8(bytes).expect("UTF-8 output");
-        Ran { code: output.status.code().expect("an exit code"), out: text(output.stdout), err: text(output.stderr) }
+        ended(command)
+    }
+
+    /// Runs a line of the shell here.
+    pub fn shell(&self, line: &str) -> Ran {
+        let mut command = Command::new("sh");
+        command.args(["-c", line]).current_dir(self.0.path()).env_remove("COLUMNS");
+        ended(command)
     }
 
     /// Runs it and expects success.
@@ -127,6 +127,18 @@ impl Place {
         out.sort();
         out
     }
+}
+
+/// What a command left behind.
+fn ended(mut command: Command) -> Ran {
+    command.stdin(Stdio::null()).stdout(Stdio::piped()).stderr(Stdio::piped());
+    let started = {
+        let _no_writing = STARTING.read().unwrap_or_else(|e| e.into_inner());
+        command.spawn().expect("the program starts")
+    };
+    let output = started.wait_with_output().expect("the program ends");
+    let text = |bytes: Vec<u8>| String::from_utf8(bytes).expect("UTF-8 output");
+    Ran { code: output.status.code().expect("an exit code"), out: text(output.stdout), err: text(output.stderr) }
 }
 
 fn list(folder: &Path, prefix: &str, out: &mut Vec<String>) {

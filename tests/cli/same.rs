@@ -81,6 +81,25 @@ fn how_it_ran_stands_in_timing_alone() {
     }
 }
 
+/// One path on every machine is part of what was asked, and named instead of an instruction set.
+#[test]
+fn the_portable_path_is_recorded() {
+    let place = Place::with_snapshot();
+    place.write("run.toml", b"[snapshots]\npaths = \"good.h5\"\n[input]\nlengths = \"2pi\"\n[physics]\nportable = true\n");
+    for (line, portable) in [
+        (format!("catalogue good.h5 {OPTIONS}"), false),
+        (format!("catalogue good.h5 {OPTIONS} --portable"), true),
+        ("catalogue run.toml".into(), true),
+    ] {
+        place.succeed(&format!("{line} -q --replace -o run"));
+        for (file, what) in [("run/run.json", "run"), ("run/parts/good.json", "part")] {
+            let found = place.json(file);
+            assert_eq!(found["request"]["portable"], portable, "{line}: {what}");
+            assert_eq!(found["program"]["instruction_set"] == "portable", portable, "{line}: {what}");
+        }
+    }
+}
+
 #[test]
 fn shares_add_to_one() {
     let place = Place::new();

@@ -58,7 +58,7 @@ pub fn each_row<T: Real>(
     let deriver = Deriver::<T>::new(&grid, source.fields(), plan.clone());
     let lines = deriver.wanted_z_lines().map(|wanted| z_lines(source, &wanted, &Silent).unwrap().into());
     let deriver = deriver.with_z_lines(lines);
-    let ranges = block_ranges(&*source, Some(planes));
+    let ranges = block_ranges(&*source, Some(planes), 0, u64::MAX);
     let mut scratch = Scratch::default();
     let run = |block: &ropewalk::space::slab::Block<'_, T>| {
         let ready = deriver.prepare(block, need)?;

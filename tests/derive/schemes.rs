@@ -115,7 +115,7 @@ fn parts_of_rows_are_the_same_bits() {
             let deriver = Deriver::<f32>::new(&grid, Fields::VELOCITY, plan(scheme, &[I::Swirling]));
             let lines = deriver.wanted_z_lines().map(|wanted| z_lines(&mut source, &wanted, &Silent).unwrap().into());
             let deriver = deriver.with_z_lines(lines);
-            let ranges = block_ranges(&source, Some(4));
+            let ranges = block_ranges(&source, Some(4), 0, u64::MAX);
             let (mut a, mut b) = (Scratch::default(), Scratch::default());
             let check = |block: &ropewalk::space::slab::Block<'_, f32>| {
                 let ready = deriver.prepare(block, need)?;

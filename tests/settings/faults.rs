@@ -148,6 +148,10 @@ fn values_of_the_wrong_kind() {
         ("[output]", "cut_outs = [\"largest:3\", 4]", CUT_OUTS, "\"largest:3\"", "cut_outs = \"largest:3\""),
         ("[execution]", "threads = 5000", "a whole number from 0 to 1024", "5000", "threads = 2"),
         ("[execution]", "block_planes = 0", "a whole number of at least 1", "0", "block_planes = 16"),
+        ("[execution]", "memory = \"0MiB\"", SIZE, "\"0MiB\"", "memory = \"1.5GiB\""),
+        ("[execution]", "memory = true", SIZE, "true", "memory = \"1.5GiB\""),
+        ("[execution]", "scratch = 1", "a text", "1", "scratch = \"/scratch\""),
+        ("[physics]", "portable = \"yes\"", "true or false", "\"yes\"", "portable = true"),
     ];
     for (table, line, expected, found, example) in cases {
         let key = line.split(' ').next().unwrap();
@@ -172,6 +176,19 @@ const POSITIONS: &str = "FROM:TO for some of x, y, z, two numbers, the second la
 const CELLS: &str = "FIRST:END for some of x, y, z, two whole numbers, the second larger";
 const REGION: &str = "region = { x = [0.5, 1.5], z = [\"0\", \"pi\"] }";
 const CUT_OUTS: &str = "largest:N, or ids like 12 or FAMILY:12, or none";
+const SIZE: &str = "a size above 0 with one of the units KiB, MiB, GiB, TiB, kB, MB, GB, TB";
+
+/// What a size without a unit, or with another one, may have been meant to be.
+#[test]
+fn sizes_without_a_unit() {
+    for (given, found, meant) in
+        [("160", "160", "160MiB"), ("\"2G\"", "\"2G\"", "2GiB"), ("1073741824", "1073741824", "1024MiB"), ("1.5", "1.5", "1.5MiB")]
+    {
+        let message =
+            format!("cannot use a setting: run.toml:6: execution.memory: expected {SIZE}, found {found}; hint: did you mean {meant}?");
+        whole(&format!("{BASE}[execution]\nmemory = {given}\n"), &[&message]);
+    }
+}
 
 #[test]
 fn choices() {

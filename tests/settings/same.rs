@@ -104,6 +104,7 @@ kolmogorov_length = 0.01
 frame = [-0.5, 0, "pi"]
 derivative = "opt"
 filter = "gaussian 0.2"
+portable = true
 [objects]
 families = ["w: vorticity > 4 rms down to 2 rms", "d: dissipation_ohmic > 2 mean"]
 min_cells = 5
@@ -123,6 +124,8 @@ cut_out_margin = 2
 [execution]
 threads = 3
 block_planes = 7
+memory = "1.5GiB"
+scratch = "aside"
 "#;
 
 /// Every value of a run file where it belongs.
@@ -161,7 +164,8 @@ fn a_whole_run_file_is_settled() {
     let cut_outs = CutOuts::Named(vec![(None, 12), (Some("w".into()), 3)]);
     assert_eq!(config.outputs, Outputs { parquet: false, json_lines: true, labels: true, cut_outs, cut_out_margin: 2 });
     assert_eq!((config.output, config.replace), (PathBuf::from("/home/jobs/out"), true));
-    assert_eq!((config.threads, config.execution.block_planes), (3, Some(7)));
+    assert_eq!((config.threads, config.execution.block_planes, r.portable), (3, Some(7), true));
+    assert_eq!((config.execution.memory, config.execution.scratch), (3 << 29, Some(PathBuf::from("/home/jobs/aside"))));
 }
 
 #[test]

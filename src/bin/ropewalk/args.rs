@@ -2,7 +2,7 @@
 
 use std::path::PathBuf;
 
-use clap::{Args as ClapArgs, Parser, Subcommand};
+use clap::{Args as ClapArgs, Parser, Subcommand, ValueEnum};
 
 use ropewalk::model::indicator::INDICATORS;
 
@@ -100,6 +100,30 @@ pub struct Talk {
     /// Name every stage as it begins
     #[arg(short, long, conflicts_with = "quiet")]
     pub verbose: bool,
+    /// How progress is told on standard error: auto on a terminal only, json as one JSON object a line (so are warnings and errors
+    /// then), none not at all
+    #[arg(long, value_name = "HOW", default_value = "auto", hide_possible_values = true)]
+    pub progress: Progress,
+}
+
+/// How progress is told.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+pub enum Progress {
+    Auto,
+    Json,
+    None,
+}
+
+impl Args {
+    /// How progress is told, and with it errors.
+    pub fn progress(&self) -> Progress {
+        match &self.command {
+            Command::Demo(a) => a.talk.progress,
+            Command::Catalogue(a) => a.talk.progress,
+            Command::Gather(a) => a.talk.progress,
+            Command::Inspect(_) | Command::Columns => Progress::None,
+        }
+    }
 }
 
 /// What stands below the options of a run.
@@ -111,6 +135,6 @@ fn after_help() -> String {
     )
 }
 
-const SETTINGS_HELP: &str = "Every option but --dry-run, -q and -v is also a setting of the run file, and one that is given here replaces the \
+const SETTINGS_HELP: &str = "Every option but --dry-run, -q, -v and --progress is also a setting of the run file, and one that is given here replaces the \
     setting there (--lengths also a spacing, and the other way round). Relative paths in a run file start from its folder, \
     those given here from the present one. ropewalk inspect SNAPSHOT --run-file RUN.toml writes a run file to begin with.";

@@ -13,6 +13,7 @@ use ropewalk::read::InputSpec;
 use ropewalk::run::analysis::Execution;
 use ropewalk::run::catalogue::{RunConfig, catalogue};
 use ropewalk::run::gather::{GatherConfig, gather};
+use ropewalk::run::machine::Machine;
 use ropewalk::run::parts::{CLASSES, FamilyOverview};
 use ropewalk::run::plan::{Place, plan};
 
@@ -88,6 +89,7 @@ const DEMO: [DemoRun; 2] = [
 
 fn demo(a: &Demo) -> Result<ExitCode> {
     let data = demo_data(a.data.as_deref())?;
+    let share = Machine::here().share(None, 0)?;
     let mut code = ExitCode::SUCCESS;
     let mut text = String::new();
     for run in &DEMO {
@@ -101,7 +103,8 @@ fn demo(a: &Demo) -> Result<ExitCode> {
                 ..Request::default()
             },
             outputs: Outputs::default(),
-            execution: Execution::default(),
+            execution: Execution { memory: share.bytes, ..Execution::default() },
+            memory_from: share.from.clone(),
             threads: 0,
             output: a.folder.join(run.folder),
             replace: a.replace,
@@ -149,6 +152,8 @@ fn demo_data(named: Option<&Path>) -> Result<PathBuf> {
 }
 
 fn gathered(a: &Gather) -> Result<ExitCode> {
+    // Refuses where there is too little for the program itself.
+    Machine::here().share(None, 0)?;
     let config = GatherConfig { runs: a.runs.clone(), output: a.output.clone(), replace: a.replace, threads: 0 };
     let done = gather(&config, &Console::new(a.talk))?;
     if !a.talk.quiet {

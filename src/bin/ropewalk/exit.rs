@@ -11,10 +11,15 @@ pub const USAGE: u8 = 2;
 
 /// The code of an error that ended the run.
 pub fn code(e: &Error) -> ExitCode {
-    ExitCode::from(match e.kind() {
+    ExitCode::from(number(e))
+}
+
+/// The same as a number.
+pub fn number(e: &Error) -> u8 {
+    match e.kind() {
         Kind::Usage => USAGE,
         Kind::Input | Kind::Data => 3,
         Kind::Limit => 4,
         Kind::Output | Kind::Internal => 5,
-    })
+    }
 }

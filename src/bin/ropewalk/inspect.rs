@@ -6,13 +6,13 @@ use std::io::Write as _;
 use std::path::Path;
 use std::process::ExitCode;
 
-use ropewalk::base::budget::size as bytes;
+use ropewalk::base::budget::size;
 use ropewalk::base::error::{Error, Result};
 use ropewalk::read::inspect::{Contents, inspect};
 use ropewalk::run::config::registry::Key;
 use ropewalk::run::config::template;
 
-use crate::args::Inspect;
+use crate::args::{Inspect, Progress};
 use crate::{console, exit};
 
 /// Looks into every file; those that cannot be read are told and the others go on.
@@ -24,7 +24,7 @@ pub fn run(a: &Inspect) -> Result<ExitCode> {
             Ok(contents) => found.push(contents),
             Err(e) if a.files.len() == 1 => return Err(e),
             Err(e) => {
-                console::error(&e);
+                console::error(&e, Progress::None);
                 failed = true;
             }
         }
@@ -70,7 +70,7 @@ fn write(out: &Path, text: &str, replace: bool) -> Result<()> {
 /// All that is known of one file.
 fn told(c: &Contents) -> String {
     let mut out = String::new();
-    let _ = writeln!(out, "{}: {}, {}", c.path.display(), c.kind, bytes(c.bytes));
+    let _ = writeln!(out, "{}: {}, {}", c.path.display(), c.kind, size(c.bytes));
     if let Some(t) = c.time {
         let _ = writeln!(out, "  time {t}");
     }

@@ -7,6 +7,7 @@ mod exit;
 mod flags;
 mod inspect;
 mod settle;
+mod track;
 
 use std::process::ExitCode;
 
@@ -20,7 +21,7 @@ fn main() -> ExitCode {
     match commands::run(&args) {
         Ok(code) => code,
         Err(e) => {
-            console::error(&e);
+            console::error(&e, args.progress());
             exit::code(&e)
         }
     }

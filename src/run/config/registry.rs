@@ -36,6 +36,7 @@ pub enum Key {
     Frame,
     Derivative,
     Filter,
+    Portable,
     Families,
     MinCells,
     Connectivity,
@@ -52,6 +53,8 @@ pub enum Key {
     CutOutMargin,
     Threads,
     BlockPlanes,
+    Memory,
+    Scratch,
 }
 
 /// How a flag takes its value.
@@ -156,7 +159,7 @@ const fn s(
 }
 
 /// Every setting, in the order of [`Key`].
-pub const SETTINGS: [Setting; 48] = [
+pub const SETTINGS: [Setting; 51] = [
     s(
         Key::Paths,
         ("snapshots", "paths"),
@@ -374,6 +377,15 @@ pub const SETTINGS: [Setting; 48] = [
         ("\"sharp 0.2\"", "sharp 0.2"),
     ),
     s(
+        Key::Portable,
+        ("physics", "portable"),
+        ("portable", "yes|no"),
+        "Compute by one path on every machine, the slowest, so that the bytes are the same on all of them; else each takes the fastest it has",
+        ("true", "yes"),
+    )
+    .switch()
+    .or("no"),
+    s(
         Key::Families,
         ("objects", "families"),
         ("family", "SPEC"),
@@ -497,6 +509,20 @@ pub const SETTINGS: [Setting; 48] = [
         "Planes worked on at a time; chosen from the snapshot when not given",
         ("16", "16"),
     ),
+    s(
+        Key::Memory,
+        ("execution", "memory"),
+        ("memory", "SIZE"),
+        "Memory that planes, fields and objects may take, with a unit: KiB, MiB, GiB, TiB, or kB, MB, GB, TB. The program takes up to 32 MiB, and 8 MiB a thread, besides. When not given: half of the smallest of the machine's memory, the limit of its control group, and the limits of ulimit -v and -d",
+        ("\"1.5GiB\"", "1.5GiB"),
+    ),
+    s(
+        Key::Scratch,
+        ("execution", "scratch"),
+        ("scratch", "DIR"),
+        "Folder on a disk with room, for what does not fit into memory; emptied at the end. When not given: the unfinished run folder",
+        ("\"/scratch\"", "/scratch"),
+    ),
 ];
 
 #[cfg(test)]
@@ -513,6 +539,6 @@ mod tests {
             assert!(s.choices.is_empty() || s.choices.contains(&s.typed), "{}", s.path());
             assert_ne!(s.typed, s.default, "{}", s.path());
         }
-        assert_eq!(SETTINGS.len(), Key::BlockPlanes as usize + 1);
+        assert_eq!(SETTINGS.len(), Key::Scratch as usize + 1);
     }
 }

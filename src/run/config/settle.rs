@@ -14,6 +14,7 @@ use crate::run::config::given::{Given, Node};
 use crate::run::config::nearest::nearest;
 use crate::run::config::registry::Key;
 use crate::run::config::values::Reader;
+use crate::run::machine::Machine;
 
 /// More than any machine has cores for.
 const MOST_THREADS: u64 = 1024;
@@ -75,8 +76,10 @@ pub fn check(given: &Given) -> Result<Settled> {
         outputs,
         execution: Execution {
             block_planes: r.whole(Key::BlockPlanes, 1, u64::MAX).map(|n| usize::try_from(n).unwrap_or(usize::MAX)),
-            ..Execution::default()
+            memory: r.size(Key::Memory).unwrap_or(Execution::default().memory),
+            scratch: r.text(Key::Scratch).map(|t| path(&r, Key::Scratch, &t)),
         },
+        memory_from: String::new(),
         threads: r.whole(Key::Threads, 0, MOST_THREADS).unwrap_or(0) as usize,
         output: r.text(Key::Folder).map_or_else(|| PathBuf::from("ropewalk-run"), |t| path(&r, Key::Folder, &t)),
         replace: r.switch(Key::Replace).unwrap_or(false),
@@ -90,12 +93,15 @@ pub fn check(given: &Given) -> Result<Settled> {
     Ok(settled)
 }
 
-/// Reads and checks all settings and finds the snapshots.
+/// Reads and checks all settings, settles the memory budget, and finds the snapshots.
 ///
 /// # Errors
-/// `Usage` with every fault; those of [`series::expand`].
+/// `Usage` with every fault; `Limit` where there is no memory to run in; those of [`series::expand`].
 pub fn settle(given: &Given) -> Result<RunConfig> {
-    let Settled { series, config } = check(given)?;
+    let Settled { series, mut config } = check(given)?;
+    let asked = given.has(Key::Memory).then_some(config.execution.memory);
+    let share = Machine::here().share(asked, config.threads)?;
+    (config.execution.memory, config.memory_from) = (share.bytes, share.from);
     let snapshots = series::expand(&series, &config.input)?;
     Ok(RunConfig { snapshots, ..config })
 }
@@ -291,6 +297,7 @@ fn request(r: &mut Reader<'_>, entries: &Entries, plane: bool) -> Request {
         frame: r.frame(plane).unwrap_or(default.frame),
         scheme: r.choice(Key::Derivative).and_then(Scheme::named).unwrap_or(default.scheme),
         filter: filter(r),
+        portable: r.switch(Key::Portable).unwrap_or(default.portable),
         companions: plain(&entries.companions),
         mesh_values: plain(&entries.mesh_values),
         surfaces: match r.choice(Key::Surfaces) {

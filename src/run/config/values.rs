@@ -124,6 +124,28 @@ impl<'g> Reader<'g> {
         value
     }
 
+    /// A number of bytes with its unit.
+    pub fn size(&mut self, key: Key) -> Option<u64> {
+        let node = self.given.node(key)?;
+        let text = match &node.raw {
+            Raw::Typed(t) | Raw::Text(t) => t.trim().to_string(),
+            Raw::Integer(_) | Raw::Float(_) => node.found(),
+            _ => String::new(),
+        };
+        let value = parse_size(&text);
+        if value.is_none() {
+            let hint = meant_size(&text).map_or_else(|| example(key, node), |m| format!("did you mean {m}?"));
+            self.fault(
+                key,
+                node,
+                &format!("a size above 0 with one of the units {}", UNITS.map(|(u, _)| u).join(", ")),
+                node.found(),
+                hint,
+            );
+        }
+        value
+    }
+
     /// Numbers, any of them.
     pub fn numbers(&mut self, key: Key) -> Option<Vec<f64>> {
         let node = self.given.node(key)?;
@@ -399,9 +421,85 @@ fn parse_number(text: &str) -> Option<f64> {
     Some(factor * PI / divisor)
 }
 
+/// Units of sizes: powers of 1024, then of 1000.
+const UNITS: [(&str, u64); 8] = [
+    ("KiB", 1 << 10),
+    ("MiB", 1 << 20),
+    ("GiB", 1 << 30),
+    ("TiB", 1 << 40),
+    ("kB", 1_000),
+    ("MB", 1_000_000),
+    ("GB", 1_000_000_000),
+    ("TB", 1_000_000_000_000),
+];
+
+/// Number and unit of a size, whatever the unit.
+fn split_size(text: &str) -> Option<(f64, &str)> {
+    let (number, unit) = text.split_at(text.find(|c: char| !c.is_ascii_digit() && c != '.').unwrap_or(text.len()));
+    Some((number.parse().ok()?, unit.trim()))
+}
+
+/// A number of bytes, at least 1.
+fn parse_size(text: &str) -> Option<u64> {
+    let (number, unit) = split_size(text)?;
+    let (_, factor) = UNITS.iter().find(|(u, _)| *u == unit)?;
+    let bytes = number * *factor as f64;
+    // More than any machine has, and exact enough: a whole number of bytes below 2^53.
+    (1.0..9e15).contains(&bytes).then_some(bytes as u64)
+}
+
+/// What someone may have meant who left the unit out or wrote it in another way.
+fn meant_size(text: &str) -> Option<String> {
+    let (number, unit) = split_size(text)?;
+    let written = &text[..text.len() - text.trim_start_matches(|c: char| c.is_ascii_digit() || c == '.').len()];
+    let unit = unit.to_ascii_lowercase();
+    let unit = match unit.as_str() {
+        // So few can only be of a larger unit, so many only bytes.
+        "" | "b" if number < 1024.0 => "MiB",
+        "" | "b" => return Some(format!("{}MiB", (number / 1048576.0).ceil().max(1.0))),
+        other => UNITS.iter().map(|(u, _)| *u).find(|u| {
+            let u = u.to_ascii_lowercase();
+            u == other || u.trim_end_matches('b') == other || u.trim_end_matches("ib") == other
+        })?,
+    };
+    Some(format!("{written}{unit}")).filter(|m| parse_size(m).is_some())
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn sizes_have_units() {
+        for (text, bytes) in [
+            ("160MiB", 160 << 20),
+            ("1.5GiB", 3 << 29),
+            ("2 TiB", 2 << 40),
+            ("500MB", 500_000_000),
+            ("64kB", 64_000),
+            ("1KiB", 1024),
+            ("0.25GB", 250_000_000),
+        ] {
+            assert_eq!(parse_size(text), Some(bytes), "{text}");
+        }
+        for text in ["", "160", "MiB", "-1MiB", "0MiB", "1mib", "2G", "1e3MiB", "1.2.3MiB", "9000000TiB", "1 PiB", "0.0001KiB"] {
+            assert_eq!(parse_size(text), None, "{text}");
+        }
+        for (text, meant) in [
+            ("160", Some("160MiB")),
+            ("1073741824", Some("1024MiB")),
+            ("2G", Some("2GiB")),
+            ("2gb", Some("2GB")),
+            ("512m", Some("512MiB")),
+            ("1.5gib", Some("1.5GiB")),
+            ("3KB", Some("3kB")),
+            ("much", None),
+            ("2 stone", None),
+            ("0", None),
+        ] {
+            assert_eq!(meant_size(text).as_deref(), meant, "{text}");
+        }
+    }
 
     #[test]
     fn numbers_with_pi() {
