@@ -104,7 +104,7 @@ fn geometry_of_a_ball(bencher: Bencher) {
 fn spectra_of_eight_planes(bencher: Bencher) {
     let grid = Grid::periodic([N; 3], [1.0; 3]);
     let components: Vec<Vec<f32>> = (0..3).map(|c| (0..8 * N * N).map(|i| ((i + c) as f32 * 0.37).sin()).collect()).collect();
-    let batches = [Batch { first: 0, planes: 8, components: Arc::new(components) }];
+    let batches = [Batch { first: 0, planes: 8, components: Arc::new(components.into_iter().map(Into::into).collect()) }];
     let block = Block::new(0..8, &batches, N * N);
     bencher
         .counter(divan::counter::ItemsCount::new(8 * N * N))
@@ -117,7 +117,7 @@ fn spectra_of_eight_planes(bencher: Bencher) {
 fn indicator_of_eight_planes(bencher: Bencher, name: &str) {
     let grid = Grid::periodic([N, N, 24], [1.0; 3]);
     let components: Vec<Vec<f32>> = (0..3).map(|c| (0..24 * N * N).map(|i| ((i * (c + 1)) as f32 * 0.37).sin()).collect()).collect();
-    let batches = [Batch { first: 0, planes: 24, components: Arc::new(components) }];
+    let batches = [Batch { first: 0, planes: 24, components: Arc::new(components.into_iter().map(Into::into).collect()) }];
     let block = Block::new(8..16, &batches, N * N);
     let plan = Plan {
         indicators: vec![Indicator::named(name).unwrap()],
