@@ -1,11 +1,27 @@
 //! The only file that names the thread library: fixed-order maps over work items, and the pool they run in.
 
+use std::cell::RefCell;
+use std::sync::mpsc::{RecvTimeoutError, TryRecvError, sync_channel};
+use std::sync::{Arc, OnceLock, Weak};
+use std::time::Duration;
+
 use rayon::prelude::*;
 
 use crate::base::error::{Error, Result};
 
-/// A thread pool of a settled size. Everything inside [`Pool::run`] uses its threads.
-pub struct Pool(rayon::ThreadPool);
+/// How long one who waits for what is read looks away before helping the pool again.
+const PAUSE: Duration = Duration::from_micros(100);
+
+/// The pool of a thread, known to its workers before it is built.
+type Home = Arc<OnceLock<Weak<rayon::ThreadPool>>>;
+
+thread_local! {
+    /// The pool this thread is a worker of, or reads for.
+    static HOME: RefCell<Option<Home>> = const { RefCell::new(None) };
+}
+
+/// A thread pool of a settled size. Everything inside [`Pool::run`] uses its threads, and so does who reads ahead for it.
+pub struct Pool(Arc<rayon::ThreadPool>);
 
 impl Pool {
     /// `threads` = 0 takes one per available core.
@@ -13,12 +29,17 @@ impl Pool {
     /// # Errors
     /// `Internal` when the system refuses to start threads.
     pub fn new(threads: usize) -> Result<Pool> {
-        rayon::ThreadPoolBuilder::new()
+        let home = Home::default();
+        let of_workers = Arc::clone(&home);
+        let pool = rayon::ThreadPoolBuilder::new()
             .num_threads(threads)
             .thread_name(|i| format!("ropewalk-{i}"))
+            .start_handler(move |_| settle(Some(Arc::clone(&of_workers))))
             .build()
-            .map(Pool)
-            .map_err(|e| Error::internal("cannot start worker threads").found(e.to_string()))
+            .map_err(|e| Error::internal("cannot start worker threads").found(e.to_string()))?;
+        let pool = Arc::new(pool);
+        home.get_or_init(|| Arc::downgrade(&pool));
+        Ok(Pool(pool))
     }
 
     /// Runs `f` inside the pool.
@@ -32,6 +53,27 @@ impl Pool {
     }
 }
 
+/// Says which pool this thread belongs to.
+fn settle(home: Option<Home>) {
+    HOME.with(|h| *h.borrow_mut() = home);
+}
+
+/// Runs `f` in the pool of this thread: where it is, if that is a worker; else on a worker of the pool it reads for.
+fn at_home<R: Send>(f: impl FnOnce() -> R + Send) -> R {
+    if rayon::current_thread_index().is_some() {
+        return f();
+    }
+    match HOME.with(|h| h.borrow().as_ref().and_then(|home| home.get()?.upgrade())) {
+        Some(pool) => pool.install(f),
+        None => f(),
+    }
+}
+
+/// Threads that work at the same time in the pool of this thread.
+pub fn threads() -> usize {
+    at_home(rayon::current_num_threads)
+}
+
 /// Maps every item; results come back in item order whatever the number of threads.
 pub fn map<T: Sync, R: Send>(items: &[T], f: impl Fn(usize, &T) -> R + Sync + Send) -> Vec<R> {
     items.par_iter().enumerate().with_max_len(1).map(|(i, t)| f(i, t)).collect()
@@ -42,9 +84,9 @@ pub fn map_range<R: Send>(n: usize, f: impl Fn(usize) -> R + Sync + Send) -> Vec
     (0..n).into_par_iter().with_max_len(1).map(f).collect()
 }
 
-/// Consumes and maps every item; results come back in item order.
+/// Consumes and maps every item; results come back in item order. Called from a thread that reads ahead, it uses the pool read for.
 pub fn map_owned<T: Send, R: Send>(items: Vec<T>, f: impl Fn(usize, T) -> R + Sync + Send) -> Vec<R> {
-    items.into_par_iter().enumerate().with_max_len(1).map(|(i, t)| f(i, t)).collect()
+    at_home(|| items.into_par_iter().enumerate().with_max_len(1).map(|(i, t)| f(i, t)).collect())
 }
 
 /// Calls `f(chunk index, chunk)` on consecutive chunks of `size` items (the last may be shorter).
@@ -61,21 +103,82 @@ pub fn join<A: Send, B: Send>(a: impl FnOnce() -> A + Send, b: impl FnOnce() -> 
 }
 
 /// Calls `next` on a thread of its own until it returns `None`, at most `depth` items ahead of `each`, which runs here
-/// and ends the work early by returning `false`.
+/// and ends the work early by returning `false`. What `next` maps with [`map_owned`] is done by the pool of this thread, which
+/// helps while it waits.
 pub fn read_ahead<T: Send>(depth: usize, mut next: impl FnMut() -> Option<T> + Send, mut each: impl FnMut(T) -> bool) {
+    let home = HOME.with(|h| h.borrow().clone());
     std::thread::scope(|scope| {
-        let (send, receive) = std::sync::mpsc::sync_channel(depth);
+        let (send, receive) = sync_channel(depth);
         scope.spawn(move || {
+            settle(home);
             while let Some(item) = next() {
                 if send.send(item).is_err() {
                     break;
                 }
             }
         });
-        for item in receive {
+        loop {
+            let item = match receive.try_recv() {
+                Ok(item) => item,
+                Err(TryRecvError::Disconnected) => break,
+                // A worker that only waited would be missing from the pool: with one thread nothing would go on.
+                Err(TryRecvError::Empty) if rayon::yield_now() == Some(rayon::Yield::Executed) => continue,
+                Err(TryRecvError::Empty) => match receive.recv_timeout(PAUSE) {
+                    Ok(item) => item,
+                    Err(RecvTimeoutError::Timeout) => continue,
+                    Err(RecvTimeoutError::Disconnected) => break,
+                },
+            };
             if !each(item) {
                 break;
             }
         }
     });
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn who_reads_ahead_uses_the_threads_of_its_pool() {
+        for threads in [1, 2, 3] {
+            let pool = Pool::new(threads).expect("threads start");
+            let mut got = Vec::new();
+            pool.run(|| {
+                let mut left = 20;
+                let next = || {
+                    left -= 1;
+                    let work = |_, i: usize| (i, rayon::current_num_threads(), std::thread::current().name().map(String::from));
+                    (left >= 0).then(|| (super::threads(), map_owned((0..7).collect(), work)))
+                };
+                read_ahead(1, next, |(count, items)| {
+                    assert_eq!(count, threads);
+                    // Work of its own beside that of the reader.
+                    got.push(items.len() + map_range(50, |i| i % 2).iter().sum::<usize>());
+                    for (i, (item, count, name)) in items.into_iter().enumerate() {
+                        assert_eq!((item, count), (i, threads));
+                        assert!(name.is_some_and(|n| n.starts_with("ropewalk-")), "on a worker");
+                    }
+                    true
+                });
+            });
+            assert_eq!(got, [32; 20]);
+        }
+    }
+
+    #[test]
+    fn reading_ahead_ends_early_without_a_pool() {
+        let mut seen = 0;
+        let mut i = 0;
+        let next = || {
+            i += 1;
+            Some(map_owned(vec![i], |_, i| i)[0])
+        };
+        read_ahead(2, next, |item| {
+            seen = item;
+            item < 5
+        });
+        assert_eq!(seen, 5);
+    }
 }

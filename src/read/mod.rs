@@ -37,6 +37,7 @@ use crate::space::grid::Grid;
 mod arrange;
 mod attribute;
 mod binary;
+mod chunks;
 mod contents;
 mod coordinates;
 mod density;
@@ -212,7 +213,7 @@ fn assemble<T: Real + ::hdf5::H5Type>(arrays: Arrays, grid: Grid, spec: &InputSp
     }
     let grid = match region {
         Some((cut, grid)) => {
-            layer = Box::new(Region::new(layer, cut));
+            layer = Box::new(Region::new(layer, cut, fields.components()));
             grid
         }
         None => grid,
