@@ -146,6 +146,8 @@ fn split<'a, 'o, T: Real>(request: Request<'a, 'o, T>, at: &Window) -> Vec<Item<
         }
     }
     let nx = at.range[0].len();
+    // Whole rows go into one chunk without being cut, whole planes too.
+    let (rows, planes) = (xs.len() == 1, xs.len() == 1 && ys.len() == 1);
     for (c, mut rest) in request.wanted {
         let group = groups.iter().position(|g| *g == c / edge).unwrap_or(0) * zs.len() * ys.len() * xs.len();
         let mut take = |count: usize| {
@@ -154,31 +156,23 @@ fn split<'a, 'o, T: Real>(request: Request<'a, 'o, T>, at: &Window) -> Vec<Item<
             now
         };
         for (k, z) in zs.iter().enumerate() {
-            let layer = group + k * ys.len() * xs.len();
-            // Whole rows, and whole planes, go into one chunk without being cut.
-            let pieces = match (xs.len(), ys.len()) {
-                (1, 1) => 1,
-                (1, _) => z.1.len(),
-                _ => 0,
-            };
+            let layer = &mut items[group + k * ys.len() * xs.len()..][..ys.len() * xs.len()];
             for (j, y) in ys.iter().enumerate() {
-                for i in 0..xs.len() {
-                    let pieces = if pieces == 0 { z.1.len() * y.1.len() } else { pieces };
-                    items[layer + j * xs.len() + i].parts.push((c % edge, Vec::with_capacity(pieces)));
-                }
+                let pieces = if planes { 1 } else { z.1.len() * if rows { 1 } else { y.1.len() } };
+                layer[j * xs.len()..][..xs.len()].iter_mut().for_each(|i| i.parts.push((c % edge, Vec::with_capacity(pieces))));
             }
             let mut put = |place: usize, piece| {
-                if let Some((_, pieces)) = items[layer + place].parts.last_mut() {
+                if let Some((_, pieces)) = layer[place].parts.last_mut() {
                     pieces.push(piece);
                 }
             };
-            if pieces == 1 {
+            if planes {
                 put(0, take(z.1.len() * ys[0].1.len() * nx));
                 continue;
             }
             for _ in z.1.clone() {
                 for (j, y) in ys.iter().enumerate() {
-                    if xs.len() == 1 {
+                    if rows {
                         put(j, take(y.1.len() * nx));
                         continue;
                     }
