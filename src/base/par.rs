@@ -1,7 +1,8 @@
 //! The only file that names the thread library: fixed-order maps over work items, and the pool they run in.
 
 use std::cell::RefCell;
-use std::sync::mpsc::{RecvTimeoutError, TryRecvError, sync_channel};
+use std::sync::atomic::{AtomicBool, Ordering};
+use std::sync::mpsc::{Receiver, RecvTimeoutError, TryRecvError, sync_channel};
 use std::sync::{Arc, OnceLock, Weak};
 use std::time::Duration;
 
@@ -9,7 +10,7 @@ use rayon::prelude::*;
 
 use crate::base::error::{Error, Result};
 
-/// How long one who waits for what is read looks away before helping the pool again.
+/// How long one who waits for what is read sleeps before looking for work in the pool again.
 const PAUSE: Duration = Duration::from_micros(100);
 
 /// The pool of a thread, known to its workers before it is built.
@@ -107,33 +108,58 @@ pub fn join<A: Send, B: Send>(a: impl FnOnce() -> A + Send, b: impl FnOnce() -> 
 /// helps while it waits.
 pub fn read_ahead<T: Send>(depth: usize, mut next: impl FnMut() -> Option<T> + Send, mut each: impl FnMut(T) -> bool) {
     let home = HOME.with(|h| h.borrow().clone());
+    let stop = AtomicBool::new(false);
     std::thread::scope(|scope| {
         let (send, receive) = sync_channel(depth);
-        scope.spawn(move || {
+        let ahead = Ahead { receive, stop: &stop };
+        scope.spawn(|| {
             settle(home);
-            while let Some(item) = next() {
-                if send.send(item).is_err() {
-                    break;
-                }
-            }
+            // The sender goes with this thread, so that its end is seen.
+            let send = send;
+            while !stop.load(Ordering::Relaxed)
+                && let Some(item) = next()
+                && send.send(item).is_ok()
+            {}
         });
-        loop {
-            let item = match receive.try_recv() {
-                Ok(item) => item,
-                Err(TryRecvError::Disconnected) => break,
-                // A worker that only waited would be missing from the pool: with one thread nothing would go on.
-                Err(TryRecvError::Empty) if rayon::yield_now() == Some(rayon::Yield::Executed) => continue,
-                Err(TryRecvError::Empty) => match receive.recv_timeout(PAUSE) {
-                    Ok(item) => item,
-                    Err(RecvTimeoutError::Timeout) => continue,
-                    Err(RecvTimeoutError::Disconnected) => break,
-                },
-            };
+        while let Some(item) = ahead.next() {
             if !each(item) {
                 break;
             }
         }
     });
+}
+
+/// What arrives from who reads ahead.
+struct Ahead<'a, T> {
+    receive: Receiver<T>,
+    stop: &'a AtomicBool,
+}
+
+impl<T> Ahead<'_, T> {
+    /// Waits for an item, and works for the pool meanwhile: a worker that only waited would be missing there, and if it is the
+    /// only one, who reads would wait for it.
+    fn next(&self) -> Option<T> {
+        loop {
+            match self.receive.try_recv() {
+                Ok(item) => return Some(item),
+                Err(TryRecvError::Disconnected) => return None,
+                Err(TryRecvError::Empty) if rayon::yield_now() == Some(rayon::Yield::Executed) => {}
+                Err(TryRecvError::Empty) => match self.receive.recv_timeout(PAUSE) {
+                    Ok(item) => return Some(item),
+                    Err(RecvTimeoutError::Timeout) => {}
+                    Err(RecvTimeoutError::Disconnected) => return None,
+                },
+            }
+        }
+    }
+}
+
+/// Lets the read under way come to its end, also when work ends early or in a panic.
+impl<T> Drop for Ahead<'_, T> {
+    fn drop(&mut self) {
+        self.stop.store(true, Ordering::Relaxed);
+        while self.next().is_some() {}
+    }
 }
 
 #[cfg(test)]
@@ -167,18 +193,28 @@ mod tests {
         }
     }
 
-    #[test]
-    fn reading_ahead_ends_early_without_a_pool() {
-        let mut seen = 0;
-        let mut i = 0;
+    /// Reads numbers through the pool until 5 is worked on.
+    fn until_five(end: impl Fn() -> bool + Send) -> i32 {
+        let (mut seen, mut i) = (0, 0);
         let next = || {
             i += 1;
             Some(map_owned(vec![i], |_, i| i)[0])
         };
         read_ahead(2, next, |item| {
             seen = item;
-            item < 5
+            item < 5 || end()
         });
-        assert_eq!(seen, 5);
+        seen
+    }
+
+    #[test]
+    fn reading_ahead_ends_early() {
+        assert_eq!(until_five(|| false), 5);
+        for threads in [1, 2] {
+            let pool = Pool::new(threads).expect("threads start");
+            assert_eq!(pool.run(|| until_five(|| false)), 5);
+            let failed = std::panic::catch_unwind(|| pool.run(|| until_five(|| panic!("on purpose"))));
+            assert!(failed.is_err());
+        }
     }
 }

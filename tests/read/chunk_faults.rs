@@ -51,11 +51,9 @@ const HINT: &str = "hint: the file is damaged: copy or write it again";
 fn a_damaged_chunk_is_named() {
     let dir = tempfile::tempdir().unwrap();
     let path = dir.path().join("s.h5");
-    for (gzip, checksum, expected) in [
-        (true, false, "gzip data of 960 bytes"),
-        (true, true, "the checksum "),
-        (false, true, "the checksum "),
-    ] {
+    for (gzip, checksum, expected) in
+        [(true, false, "gzip data of 960 bytes"), (true, true, "the checksum "), (false, true, "the checksum ")]
+    {
         let (byte, size) = write(&path, gzip, checksum);
         changed(&path, |bytes| bytes[byte as usize + size / 2..][..8].iter_mut().for_each(|b| *b ^= 0x5a));
         let text = told(dir.path(), &path, 3..9, || {}).expect("a fault");

@@ -115,7 +115,7 @@ impl Pipeline {
             Ok(Status::StreamEnd) => return Err((expected(), format!("{} bytes", scratch.inflate.total_out()))),
             Ok(_) if scratch.inflate.total_out() == length as u64 => return Err((expected(), "more or no end".into())),
             Ok(_) => return Err((expected(), format!("an end after {} bytes", scratch.inflate.total_out()))),
-            Err(e) => return Err((expected(), e.to_string())),
+            Err(_) => return Err((expected(), "damaged ones".into())),
         }
         std::mem::swap(&mut scratch.now, &mut scratch.next);
         Ok(())
@@ -127,13 +127,25 @@ fn unshuffle(width: usize, scratch: &mut Scratch) {
     let (from, to) = (&scratch.now, &mut scratch.next);
     let count = from.len() / width;
     to.resize(from.len(), 0);
-    for (i, value) in to.chunks_exact_mut(width).enumerate() {
-        for (k, byte) in value.iter_mut().enumerate() {
-            *byte = from[k * count + i];
-        }
+    match width {
+        4 => interleave::<4>(from, to),
+        _ => interleave::<8>(from, to),
     }
     to[count * width..].copy_from_slice(&from[count * width..]);
     std::mem::swap(&mut scratch.now, &mut scratch.next);
+}
+
+fn interleave<const W: usize>(from: &[u8], to: &mut [u8]) {
+    let count = from.len() / W;
+    if count == 0 {
+        return;
+    }
+    let values = to.as_chunks_mut::<W>().0;
+    for (k, row) in from.chunks_exact(count).take(W).enumerate() {
+        for (value, byte) in values.iter_mut().zip(row) {
+            value[k] = *byte;
+        }
+    }
 }
 
 /// The checksum of J. Fletcher over words of 16 bits, the more significant byte first, with both sums modulo 65535.

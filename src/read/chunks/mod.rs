@@ -7,16 +7,16 @@
 use std::fs::File;
 use std::path::Path;
 
-use ::hdf5::{Dataset, H5Type};
 use ::hdf5::dataset::{ChunkOpts, Layout};
+use ::hdf5::{Dataset, H5Type};
 
 use crate::base::error::{Error, Result};
 use crate::base::real::Real;
 use crate::read::chunks::filters::Pipeline;
 use crate::read::chunks::index::Index;
 use crate::read::chunks::structure::{Structure, is_big_ieee};
-use crate::read::header::Header;
 use crate::read::hdf5::ChunkedArray;
+use crate::read::header::Header;
 use crate::read::order::{Axes, End};
 use crate::read::superblock;
 
@@ -155,7 +155,9 @@ fn address(dataset: &Dataset) -> Option<u64> {
     let numbers = text.split(|c: char| !c.is_ascii_digit()).filter(|t| !t.is_empty()).filter_map(|t| t.parse().ok());
     match numbers.collect::<Vec<u64>>()[..] {
         [address] => Some(address),
-        ref bytes if bytes.len() >= 8 => Some(bytes[bytes.len() - 16.min(bytes.len())..][..8].iter().rev().fold(0, |sum, b| sum << 8 | (b & 0xff))),
+        ref bytes if bytes.len() >= 8 => {
+            Some(bytes[bytes.len() - 16.min(bytes.len())..][..8].iter().rev().fold(0, |sum, b| sum << 8 | (b & 0xff)))
+        }
         _ => None,
     }
 }
