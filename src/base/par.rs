@@ -213,8 +213,8 @@ mod tests {
         for threads in [1, 2] {
             let pool = Pool::new(threads).expect("threads start");
             assert_eq!(pool.run(|| until_five(|| false)), 5);
-            let failed = std::panic::catch_unwind(|| pool.run(|| until_five(|| panic!("on purpose"))));
-            assert!(failed.is_err());
+            let fail = std::panic::AssertUnwindSafe(|| pool.run(|| until_five(|| panic!("on purpose"))));
+            assert!(std::panic::catch_unwind(fail).is_err());
         }
     }
 }
