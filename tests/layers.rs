@@ -34,6 +34,7 @@ const CONFINED: &[(&[&str], &[&str])] = &[
     (&["::hdf5"], &["read/", "export/hdf5.rs"]),
     (&["::parquet"], &["export/parquet.rs"]),
     (&["ply_rs"], &["export/ply.rs"]),
+    (&["flate2"], &["read/chunks/filters.rs"]),
 ];
 
 const LONGEST: usize = 600;

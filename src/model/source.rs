@@ -78,6 +78,19 @@ pub trait PlaneSource<T: Real>: Send {
     fn held(&self) -> Option<Vec<&[T]>> {
         None
     }
+
+    /// Planes that have to be decoded together (the depth of a compressed chunk), 1 where nothing is decoded: reading fewer at a
+    /// time decodes some values more than once, unless [`reader_bytes`](PlaneSource::reader_bytes) has room for them.
+    fn decoded_planes(&self) -> usize {
+        1
+    }
+
+    /// Bytes the source itself holds at most, besides the slices it fills, when so many planes are read at a time: indices,
+    /// buffers, caches. Asked inside the pool that reads it.
+    fn reader_bytes(&self, planes: usize) -> u64 {
+        let _ = planes;
+        0
+    }
 }
 
 /// A source of either precision.

@@ -72,4 +72,13 @@ impl<T: Real> Layer<T> for Alfvenic<T> {
     fn is_costly(&self) -> bool {
         self.inner.is_costly()
     }
+
+    fn decoded_planes(&self) -> usize {
+        self.inner.decoded_planes()
+    }
+
+    fn reader_bytes(&self, planes: usize) -> u64 {
+        let [nx, ny, _] = self.inner.samples();
+        self.inner.reader_bytes(planes) + (planes * ny * nx * size_of::<T>()) as u64
+    }
 }

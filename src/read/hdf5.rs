@@ -11,6 +11,7 @@ use ndarray::IxDyn;
 use crate::base::error::{Error, Result};
 use crate::read::arrange::arrange;
 use crate::read::attribute::number;
+use crate::read::chunks::StoredChunks;
 use crate::read::coordinates::{self, Coordinates};
 use crate::read::header::{Header, Precision, wrong_type};
 use crate::read::names::{GUESSES, HINT, PLACE, choose, has_place, has_vector};
@@ -27,15 +28,22 @@ const CACHE_LIMIT: usize = 512 << 20;
 /// The library's own default, below which nothing is gained.
 const CACHE_LEAST: usize = 1 << 20;
 
-/// A dataset read through the library: chunked, filtered, or not in native byte order.
+/// A dataset read through the library: in chunks that are not decoded here, or not in native byte order.
 pub(super) struct ChunkedArray {
     header: Header,
     dataset: Dataset,
+    /// Bytes of its chunk cache.
+    cache: usize,
     /// An axis that the dataset does not have.
     put_in: Option<usize>,
 }
 
 impl ChunkedArray {
+    /// Bytes that the library holds of it at most.
+    pub fn cache(&self) -> usize {
+        self.cache
+    }
+
     /// Reads `count` values from `start` along every axis into `out`, slowest axis first.
     pub fn read_block<T: H5Type + Copy>(&self, start: &[usize], count: &[usize], out: &mut [T]) -> Result<()> {
         let axes = (0..start.len()).filter(|&a| Some(a) != self.put_in);
@@ -90,10 +98,15 @@ pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &O
     }
     let time = times(&shelf, spec, &places[0], &datasets[0]);
     let coordinates = coordinates_of(&shelf, spec)?;
-    let plans: Vec<Plan> = places.iter().zip(&datasets).zip(&arrangement.axes).map(|((p, d), axes)| Plan::new(&p.0, d, axes)).collect();
+    let mut plans = Vec::new();
+    for (((place, dataset), header), axes) in places.iter().zip(&datasets).zip(&headers).zip(&arrangement.axes) {
+        plans.push(Plan::new(&place.0, dataset, header, axes));
+    }
 
-    // The chunk cache is settled when a file is opened first: let go of everything, then open again.
-    let cached: Vec<&Plan> = plans.iter().filter(|p| p.layer_chunks > 0).collect();
+    // The chunk cache is settled when a file is opened first: let go of everything, then open again. It is of use only where the
+    // library reads.
+    let chunked = plans.iter().any(|p| p.layer_chunks > 0);
+    let cached: Vec<&Plan> = plans.iter().filter(|p| p.layer_chunks > 0 && p.chunks.is_none()).collect();
     let cache = (!cached.is_empty()).then(|| {
         let share = CACHE_LIMIT / cached.len();
         let bytes = cached.iter().map(|p| p.layer_bytes).max().unwrap_or(0).clamp(CACHE_LEAST, share);
@@ -101,27 +114,34 @@ pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &O
         let slots = if cached.iter().all(|p| p.layer_chunks < 1242) { 12_421 } else { 1_000_003 };
         (slots, bytes)
     });
+    let cache = cache.or(chunked.then_some((0, 0)));
     drop((datasets, shelf));
     let mut files: Vec<(PathBuf, File)> = Vec::new();
     let mut arrays = Vec::new();
     for (((header, axes), plan), (path, item)) in headers.into_iter().zip(arrangement.axes).zip(plans).zip(places) {
         let header = Header { shape: axes.full(&header.shape), ..header };
-        let store = match plan.offset {
-            Some(offset) => {
+        let mut library = || -> Result<ChunkedArray> {
+            let file = match files.iter().find(|(p, _)| *p == path) {
+                Some((_, file)) => file.clone(),
+                None => {
+                    let file = open_file(&path, cache)?;
+                    files.push((path.clone(), file.clone()));
+                    file
+                }
+            };
+            let bytes = cache.map_or(CACHE_LEAST, |(slots, bytes)| bytes + slots * size_of::<usize>());
+            Ok(ChunkedArray { header: header.clone(), dataset: find(&file, &path, &item, HINT)?, cache: bytes, put_in: axes.put_in })
+        };
+        let store = match (plan.offset, plan.chunks) {
+            (Some(offset), _) => {
                 let plain = fs::File::open(&path).map_err(|e| header.fault("cannot open the file").found(e.to_string()))?;
                 Store::Raw(RawArray::new(header.clone(), plain, offset, cfg!(target_endian = "big")))
             }
-            None => {
-                let file = match files.iter().find(|(p, _)| *p == path) {
-                    Some((_, file)) => file.clone(),
-                    None => {
-                        let file = open_file(&path, cache)?;
-                        files.push((path.clone(), file.clone()));
-                        file
-                    }
-                };
-                Store::Library(ChunkedArray { header: header.clone(), dataset: find(&file, &path, &item, HINT)?, put_in: axes.put_in })
+            (None, Some(mut chunks)) => {
+                chunks.library = chunks.has_gaps().then(&mut library).transpose()?;
+                Store::Chunks(Box::new(chunks))
             }
+            (None, None) => Store::Library(library()?),
         };
         arrays.push(Array { header, axes, store, depth: plan.depth, filtered: plan.filtered });
     }
@@ -133,6 +153,8 @@ pub(super) fn open(path: &Path, group: Option<&str>, spec: &InputSpec, order: &O
 struct Plan {
     /// Its first byte, when the values stand in this file in one piece and in native form.
     offset: Option<u64>,
+    /// Its chunks, where they are decoded without the library.
+    chunks: Option<StoredChunks>,
     /// Planes of a chunk.
     depth: usize,
     filtered: bool,
@@ -142,7 +164,7 @@ struct Plan {
 }
 
 impl Plan {
-    fn new(path: &Path, dataset: &Dataset, axes: &Axes) -> Plan {
+    fn new(path: &Path, dataset: &Dataset, header: &Header, axes: &Axes) -> Plan {
         let shape = axes.full(&dataset.shape());
         let dtype = dataset.dtype().ok();
         let native = dtype.as_ref().is_some_and(|t| t.is::<f32>() || t.is::<f64>());
@@ -150,7 +172,8 @@ impl Plan {
         let here = Path::new(&dataset.filename()) == path;
         let contiguous = dataset.layout() == Layout::Contiguous;
         let offset = dataset.offset().filter(|_| native && here && contiguous);
-        let mut plan = Plan { offset, depth: 1, filtered: !dataset.filters().is_empty(), layer_chunks: 0, layer_bytes: 0 };
+        let chunks = StoredChunks::of(path, dataset, header, axes);
+        let mut plan = Plan { offset, chunks, depth: 1, filtered: !dataset.filters().is_empty(), layer_chunks: 0, layer_bytes: 0 };
         if let Some(chunk) = dataset.chunk() {
             let chunk = axes.full(&chunk);
             let z = axes.space[2];

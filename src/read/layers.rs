@@ -19,6 +19,12 @@ pub(super) trait Layer<T>: Send {
 
     /// Whether every read costs much more than copying memory.
     fn is_costly(&self) -> bool;
+
+    /// Planes that have to be decoded together, 1 where nothing is decoded.
+    fn decoded_planes(&self) -> usize;
+
+    /// Bytes held at most when so many planes are read at a time.
+    fn reader_bytes(&self, planes: usize) -> u64;
 }
 
 /// The last layer as a source of planes.
@@ -61,5 +67,13 @@ impl<T: Real> PlaneSource<T> for Delivered<T> {
 
     fn is_costly(&self) -> bool {
         self.layer.is_costly()
+    }
+
+    fn decoded_planes(&self) -> usize {
+        self.layer.decoded_planes()
+    }
+
+    fn reader_bytes(&self, planes: usize) -> u64 {
+        self.layer.reader_bytes(planes)
     }
 }

@@ -14,11 +14,18 @@
 //!
 //! # Cost of a read
 //! Arrays stored without filters, z slowest and x fastest, go from the file straight into the
-//! caller's slices; anything else passes through one buffer of the size of the planes asked for
-//! (three times that for an array with its component axis last). HDF5 chunks are decoded once as
-//! long as planes are read in ascending order and one layer of chunks of every dataset fits the
-//! chunk cache, which is limited to 512 MiB for the whole snapshot; beyond that, read
-//! [`natural_planes`](crate::model::source::PlaneSource::natural_planes) at a time.
+//! caller's slices. HDF5 chunks behind gzip, shuffling and checksums (or none of them) are fetched by
+//! their places in the file and decoded in parallel, those of all arrays together, by the pool of
+//! the thread that reads ([`map_owned`](crate::base::par::map_owned)); values go straight into the
+//! caller's slices, whatever the order of the axes. Each chunk is decoded once as long as
+//! [`decoded_planes`](crate::model::source::PlaneSource::decoded_planes), or a multiple, are read at a time,
+//! or planes in ascending order whose chunks do not exceed 64 MiB, in which case they are kept from one read to the next.
+//!
+//! Anything else passes through one buffer of the size of the planes asked for (three times that for an
+//! array with its component axis last). Chunks behind other filters, or in other files, are read by the HDF5 library, one
+//! thread at a time; it decodes them once as long as planes are read in ascending order and one layer
+//! of chunks of every such dataset fits the chunk cache, which is limited to 512 MiB for the whole snapshot.
+//! What is held is told by [`reader_bytes`](crate::model::source::PlaneSource::reader_bytes).
 
 use std::ffi::OsStr;
 use std::path::Path;
@@ -37,6 +44,7 @@ use crate::space::grid::Grid;
 mod arrange;
 mod attribute;
 mod binary;
+mod chunks;
 mod contents;
 mod coordinates;
 mod density;
@@ -212,7 +220,7 @@ fn assemble<T: Real + ::hdf5::H5Type>(arrays: Arrays, grid: Grid, spec: &InputSp
     }
     let grid = match region {
         Some((cut, grid)) => {
-            layer = Box::new(Region::new(layer, cut));
+            layer = Box::new(Region::new(layer, cut, fields.components()));
             grid
         }
         None => grid,

@@ -12,7 +12,7 @@ use crate::read::header::{Header, Precision};
 const GAP: u64 = 16 << 10;
 
 /// Most bytes read in one go into the buffer.
-const SPAN: u64 = 4 << 20;
+pub(super) const SPAN: u64 = 4 << 20;
 
 /// An array stored in one piece, slowest axis first.
 pub(super) struct RawArray {

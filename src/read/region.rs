@@ -110,6 +110,8 @@ fn positions(axis: usize, stretch: &Stretch, from: f64, to: f64, grid: &Grid) ->
 pub(super) struct Region<T> {
     inner: Box<dyn Layer<T>>,
     cut: Cut,
+    /// Components read at a time, at most.
+    components: usize,
     scratch: Vec<Vec<T>>,
 }
 
@@ -134,9 +136,9 @@ fn parts(first: i64, count: usize, n: usize) -> Vec<Part> {
 }
 
 impl<T: Real> Region<T> {
-    /// The samples `cut` of `inner`.
-    pub fn new(inner: Box<dyn Layer<T>>, cut: Cut) -> Self {
-        Region { inner, cut, scratch: Vec::new() }
+    /// The samples `cut` of the `components` of `inner`.
+    pub fn new(inner: Box<dyn Layer<T>>, cut: Cut, components: usize) -> Self {
+        Region { inner, cut, components, scratch: Vec::new() }
     }
 }
 
@@ -184,6 +186,17 @@ impl<T: Real> Layer<T> for Region<T> {
 
     fn is_costly(&self) -> bool {
         self.inner.is_costly()
+    }
+
+    fn decoded_planes(&self) -> usize {
+        self.inner.decoded_planes().min(self.cut.n[2])
+    }
+
+    fn reader_bytes(&self, planes: usize) -> u64 {
+        let n = self.inner.samples();
+        let apart = |a: usize| parts(self.cut.first[a], self.cut.n[a], n[a]).len() > 1;
+        let scratch = if apart(0) || apart(1) { self.components * planes * self.cut.n[0] * self.cut.n[1] * size_of::<T>() } else { 0 };
+        self.inner.reader_bytes(planes) + scratch as u64
     }
 }
 

@@ -269,4 +269,18 @@ impl<T: Real> Layer<T> for Centred<T> {
     fn is_costly(&self) -> bool {
         true
     }
+
+    fn decoded_planes(&self) -> usize {
+        self.inner.decoded_planes()
+    }
+
+    fn reader_bytes(&self, planes: usize) -> u64 {
+        let [nx, ny, _] = self.faces;
+        let plane = (nx * ny * size_of::<T>()).max(1);
+        let batch = (BATCH_BYTES / plane).max(self.inner.natural_planes());
+        // The batch that is interpolated; the planes held are those of one interpolation, and two batches before the first is let go.
+        let together = batch.min(planes + WIDTH);
+        let held = 2 * (WIDTH + together) * plane;
+        self.inner.reader_bytes(planes.max(together)) + (together * plane + held) as u64
+    }
 }

@@ -21,24 +21,15 @@ pub(super) fn check(path: &Path) -> Result<()> {
     if length == 0 {
         return Err(fault().expected("an HDF5 signature").found("an empty file").hint(TRUNCATED));
     }
-    // The signature stands at 0, or at 512 and its doublings behind a user block.
-    let mut at = 0;
-    loop {
-        let head = bytes(&mut file, at, 8).map_err(io)?;
-        if head == SIGNATURE {
-            break;
-        }
-        if at == 0 && SIGNATURE.starts_with(&head) {
+    let Some(at) = signature(&mut file, length).map_err(io)? else {
+        let head = bytes(&mut file, 0, 8).map_err(io)?;
+        if SIGNATURE.starts_with(&head) {
             return Err(short(fault(), length));
         }
-        at = if at == 0 { 512 } else { at * 2 };
-        if at >= length {
-            let head = bytes(&mut file, 0, 8).map_err(io)?;
-            return Err(fault().expected("an HDF5 signature").found(format!("a file beginning \"{}\"", head.escape_ascii())).hint(
-                "snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need --raw-values and --raw-shape",
-            ));
-        }
-    }
+        return Err(fault().expected("an HDF5 signature").found(format!("a file beginning \"{}\"", head.escape_ascii())).hint(
+            "snapshots are HDF5 files, .npy files or folders of .npy files; files without a header need --raw-values and --raw-shape",
+        ));
+    };
     let block = bytes(&mut file, at, 96).map_err(io)?;
     let (Some(&version), Some(&width)) = (block.get(8), block.get(if block.get(8) < Some(&2) { 13 } else { 9 })) else {
         return Err(short(fault(), length));
@@ -63,6 +54,32 @@ pub(super) fn check(path: &Path) -> Result<()> {
         return Err(fault().expected(format!("{end} bytes, as its header says")).found(format!("{length}")).hint(TRUNCATED));
     }
     Ok(())
+}
+
+/// Where addresses count from, in a file whose addresses and lengths have 8 bytes.
+pub(super) fn base(path: &Path) -> Option<u64> {
+    let mut file = File::open(path).ok()?;
+    let length = file.metadata().ok()?.len();
+    let at = signature(&mut file, length).ok()??;
+    let block = bytes(&mut file, at, 16).ok()?;
+    let widths = match block.get(8)? {
+        0 | 1 => block.get(13..15)?,
+        2 | 3 => block.get(9..11)?,
+        _ => return None,
+    };
+    (widths == [8, 8]).then_some(at)
+}
+
+/// The place of the signature: 0, or 512 and its doublings behind a user block.
+fn signature(file: &mut File, length: u64) -> std::io::Result<Option<u64>> {
+    let mut at = 0;
+    while at < length {
+        if bytes(file, at, 8)? == SIGNATURE {
+            return Ok(Some(at));
+        }
+        at = if at == 0 { 512 } else { at * 2 };
+    }
+    Ok(None)
 }
 
 fn short(fault: Error, length: u64) -> Error {

@@ -202,7 +202,8 @@ fn damaged_hdf5_files() {
     let e = source.read(0, 1, &mut out).unwrap_err();
     assert_eq!(
         e.to_string().replace(&dir.path().display().to_string(), "DIR"),
-        "cannot read values: DIR/s.h5: /velocity: found inflate() failed; hint: the file is damaged: copy or write it again"
+        "cannot read values: DIR/s.h5: /velocity: expected gzip data of 12960 bytes in the chunk that begins at 0,0,0,0, found damaged ones; \
+         hint: the file is damaged: copy or write it again"
     );
 }
 

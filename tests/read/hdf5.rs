@@ -35,7 +35,7 @@ fn write<T: Value>(file: &File, name: &str, axes: &str, first: usize, storage: S
 
 /// Declares all `count` datasets of a closed file big-endian: bit 0 of the bit field of a datatype
 /// message is the byte order (HDF5 File Format Specification 3.0, IV.A.2.d).
-fn declare_big<T: Value>(path: &Path, count: usize) {
+pub fn declare_big<T: Value>(path: &Path, count: usize) {
     let mut bytes = std::fs::read(path).unwrap();
     let places: Vec<usize> = (0..bytes.len()).filter(|&i| bytes[i..].starts_with(&T::MESSAGE)).collect();
     assert_eq!(places.len(), count, "datatype messages in the file");

@@ -1,5 +1,7 @@
 //! Reading snapshots: every storage and axis order comes back value for value, every fault has its exact message.
 
+mod chunk_faults;
+mod chunks;
 mod coordinates;
 mod errors;
 mod files;
