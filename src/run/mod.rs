@@ -8,6 +8,7 @@ mod criteria;
 mod cutouts;
 mod files;
 pub mod gather;
+mod lines;
 mod meshes;
 pub mod parts;
 pub mod passes;
