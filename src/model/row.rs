@@ -6,7 +6,7 @@ use crate::model::columns::{COLUMNS, Col, Kind};
 use crate::model::indicator::INDICATORS;
 
 /// A value of a column: of its own, or (as a [`Cell`]) as it lies in a row.
-#[derive(Debug, Clone, Copy, PartialEq, Default)]
+#[derive(Debug, Clone, PartialEq, Default)]
 pub enum Value<T = String, C = Vec<u64>> {
     /// Not measured.
     #[default]

@@ -374,3 +374,102 @@ fn complete(files: Vec<Table>) -> Result<()> {
     });
     done.into_iter().collect()
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::model::columns::Value as Of;
+
+    const FAMILIES: [&str; 2] = ["vorticity", "q"];
+
+    /// Rows whose values differ in length, more than are held at a time.
+    fn rows() -> Vec<Vec<Row>> {
+        let row = |family: usize, i: i64| {
+            let mut row = Row::default();
+            row.set(Col::Snapshot, Of::Text("s, \"é\"".into()));
+            row.set(Col::Family, Of::Text(FAMILIES[family].into()));
+            row.set(Col::Class, Of::Text(CLASSES[i as usize % 4].into()));
+            row.set(Col::Id, Of::Integer(i + 1));
+            row.set(Col::Cells, Of::Integer(i * i));
+            row.number(Col::Peak, Some((i as f64 + 0.5).sqrt() * 10f64.powi((i % 40) as i32 - 20)));
+            row.number(Col::Level, (i % 3 > 0).then_some(f64::from(i as f32 / 7.0)));
+            row.set(Col::HistogramUVorticity, Of::Counts((0..20).map(|k| (i * k) as u64).collect()));
+            row
+        };
+        [3000, 1500].into_iter().enumerate().map(|(f, n)| (0..n).map(|i| row(f, i)).collect()).collect()
+    }
+
+    /// What a run folder holds after a snapshot was written and joined, file by file.
+    fn joined(rows: &[Vec<Row>], threads: usize, failed: Vec<Value>) -> (Vec<(String, Vec<u8>)>, Vec<FamilyOverview>) {
+        let place = tempfile::tempdir().unwrap();
+        let folder = Folder::create(&place.path().join("run"), false).unwrap();
+        folder.subfolder(PARTS).unwrap();
+        let pool = Pool::new(threads).unwrap();
+        let schema = Schema::default();
+        let tables = Tables { parquet: cfg!(feature = "parquet"), json_lines: true };
+        let families: Vec<Value> = FAMILIES.iter().map(|f| json!({ "family": f, "indicator": f, "level": 1.0, "objects": 5 })).collect();
+        let snapshot = json!({ "snapshot": "s", "families": families });
+        let slices: Vec<&[Row]> = rows.iter().map(Vec::as_slice).collect();
+        pool.run(|| write(&folder, "s", &schema, &common(&json!({})), tables, snapshot, &slices)).unwrap();
+        let part = Part::read(&folder.path(""), "s").unwrap();
+        assert_eq!(part.tables(), tables);
+        let overview = join(&folder, &[part], &schema, tables, failed, &pool).unwrap();
+        let run = folder.finish().unwrap();
+        let names = ["catalogue.csv", "catalogue.jsonl", "catalogue.parquet", "run.json", "columns.json", "parts/s.jsonl", "parts/s.json"];
+        let there = names.iter().filter(|n| run.join(n).is_file());
+        assert_eq!(fs::read_dir(run.join(PARTS)).unwrap().count(), 2, "nothing half written is left");
+        (there.map(|n| (n.to_string(), fs::read(run.join(n)).unwrap())).collect(), overview)
+    }
+
+    /// Reading parts back in chunks gives what the rows themselves would give, whatever the number of threads.
+    #[test]
+    fn tables_are_those_of_the_rows_in_memory() {
+        let rows = rows();
+        let (files, overview) = joined(&rows, 1, Vec::new());
+        for threads in [2, 3] {
+            assert!(joined(&rows, threads, Vec::new()).0 == files, "{threads} threads");
+        }
+        let of = |name: &str| &files.iter().find(|(n, _)| n == name).unwrap().1;
+        let mut text = csv::header(&Schema::default());
+        rows.iter().flatten().for_each(|row| csv::push_row(&mut text, row));
+        assert!(*of("catalogue.csv") == text.into_bytes());
+        let lines = Lines::new(&Schema::default());
+        let text: String = rows.iter().map(|family| lines.text(family)).collect();
+        assert!(text.len() > 4 << 20, "several chunks: {}", text.len());
+        assert!(*of("catalogue.jsonl") == text.into_bytes());
+        assert!(of("catalogue.jsonl") == of("parts/s.jsonl"));
+        #[cfg(feature = "parquet")]
+        {
+            let columns = dictionary::dictionary(&Schema::default())["columns"].to_string();
+            let run = json!({ "program": provenance::program(), "request": {} }).to_string();
+            let metadata = vec![("ropewalk:columns", columns), ("ropewalk:run", run)];
+            let mut direct = ParquetWriter::new(Vec::new(), &Schema::default(), metadata).unwrap();
+            rows.into_iter().for_each(|family| direct.add(family).unwrap());
+            assert!(*of("catalogue.parquet") == direct.finish().unwrap());
+        }
+        let classes: Vec<[u64; 4]> = overview.iter().map(|o| o.classes).collect();
+        assert_eq!(classes, [[750; 4], [375; 4]]);
+    }
+
+    #[test]
+    fn a_part_that_was_cut_or_changed_is_refused() {
+        let place = tempfile::tempdir().unwrap();
+        let (files, _) = joined(&rows(), 2, Vec::new());
+        fs::create_dir(place.path().join(PARTS)).unwrap();
+        let lines = &files.iter().find(|(n, _)| n == "parts/s.jsonl").unwrap().1;
+        let about = &files.iter().find(|(n, _)| n == "parts/s.json").unwrap().1;
+        fs::write(place.path().join("parts/s.json"), about).unwrap();
+        let refused = |bytes: &[u8]| {
+            fs::write(place.path().join("parts/s.jsonl"), bytes).unwrap();
+            let folder = Folder::create(&place.path().join("run"), false).unwrap();
+            let part = Part::read(place.path(), "s").unwrap();
+            join(&folder, &[part], &Schema::default(), Tables::default(), Vec::new(), &Pool::new(2).unwrap()).err().map(|e| e.to_string())
+        };
+        assert_eq!(refused(lines), None);
+        let last = lines[..lines.len() - 1].iter().rposition(|&b| b == b'\n').unwrap() + 1;
+        let told = refused(&lines[..last]).unwrap();
+        assert!(told.contains("expected 4500 rows") && told.contains("found 4499"), "{told}");
+        let told = refused(&lines[..last + 100]).unwrap();
+        assert!(told.contains("line 4500"), "{told}");
+    }
+}
