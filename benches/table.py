@@ -50,6 +50,10 @@ def once(command):
     return {"wall": wall, "cpu": usage.ru_utime + usage.ru_stime, "peak": usage.ru_maxrss / 1024, "out": out}
 
 
+def threads(line):
+    return f"{line['threads']} thread" + "s" * (line["threads"] != 1)
+
+
 class Case:
     """A command, and what is taken from each of its runs besides time and memory."""
 
@@ -230,7 +234,7 @@ class Bench:
 
     def line_sweep(self):
         for t in self.inside(self.a.bench, "sweep", "--field", self.field(self.a.small), "--runs", str(self.a.runs), "--level", str(LEVEL)):
-            what = f"{t['line']}: {t['what']}, {t['threads']} threads"
+            what = f"{t['line']}: {t['what']}, {threads(t)}"
             if t["line"] == "copy":
                 self.row(what, "wall", f"{t['seconds']:.4f} s, {t['read_and_written_gb_per_s']:.1f} GB/s")
             else:
@@ -255,7 +259,7 @@ class Bench:
             if parts:
                 stages = [parts["times"][k]["wall_median"] for k in ("label_cc3d", "periodic_merge", "sizes_bincount")]
                 theirs, ratio = f"{sum(stages):.3f} s ({' + '.join(f'{s:.3f}' for s in stages)})", f"{sum(stages) / ours:.1f}"
-            self.row(f"labels and counts, {n}^3, {p['threads']} threads", "wall", f"{ours:.4f} s", theirs, ratio, {1: "1x", 2: "3x"}.get(p["threads"], ""))
+            self.row(f"labels and counts, {n}^3, {threads(p)}", "wall", f"{ours:.4f} s", theirs, ratio, {1: "1x", 2: "3x"}.get(p["threads"], ""))
         if parts:
             self.row("", "objects", str(before[0]["objects"]), str(parts["periodic_count"]), "", "the same but for rounding of the level")
 
@@ -269,15 +273,15 @@ class Bench:
                 s = parts["times"]["marching_cubes_lewiner"]["wall_median"]
                 theirs, ratio = f"{s:.3f} s, {parts['mesh_size']['vertices']} vertices", f"{s / t['seconds']:.1f}"
             more = "".join(f", {t[key]} {key}" for key in ("vertices", "triangles", "open_edges") if key in t)
-            self.row(f"isosurfaces, {t.get('what', '')}, {t['threads']} threads", "wall", f"{t['seconds']:.4f} s{more}", theirs, ratio, "5x, closed")
+            self.row(f"isosurfaces, {t.get('what', '')}, {threads(t)}", "wall", f"{t['seconds']:.4f} s{more}", theirs, ratio, "5x, closed")
 
     def line_giant(self):
         lines = self.inside(self.a.bench, "giant", "--runs", str(self.a.runs), "--size", str(self.a.small))
         for many, one in zip(lines[::2], lines[1::2]):
-            what = f"one object of half the cells, {one['threads']} threads"
-            cells = f"{one['cells']:.0f} cells, largest {100 * one['largest_holds']:.0f} %"
-            self.row(what, f"wall over many objects ({cells})", f"{one['seconds']:.3f} s", f"{many['seconds']:.3f} s (ours, {many['objects']} objects)",
-                     f"{one['seconds'] / many['seconds']:.2f}", "at most 1.5")
+            what = f"one object of half the cells, {threads(one)}"
+            said = [f"{x['seconds']:.3f} s ({x['objects']} objects, {x['cells']:.0f} cells, largest {100 * x['largest_holds']:.1f} %)" for x in (one, many)]
+            said[1] = "ours: " + said[1]
+            self.row(what, "wall over many objects", *said, f"{one['seconds'] / many['seconds']:.2f}", "at most 1.5")
             self.row("", "shape pass alone", f"{one['shapes_seconds']:.3f} s", f"{many['shapes_seconds']:.3f} s",
                      f"{one['shapes_seconds'] / many['shapes_seconds']:.2f}")
 

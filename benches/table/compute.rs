@@ -2,7 +2,7 @@
 
 use std::hint::black_box;
 
-use ropewalk::base::par::{self, Pool};
+use ropewalk::base::par;
 use serde_json::json;
 
 use crate::{Asked, medians, seconds, tell};
@@ -11,7 +11,7 @@ use crate::{Asked, medians, seconds, tell};
 const PIECES: usize = 240;
 
 pub fn run(asked: &Asked) -> Result<(), String> {
-    let pools: Vec<Pool> = asked.threads.iter().map(|&n| Pool::new(n).map_err(|e| e.to_string())).collect::<Result<_, _>>()?;
+    let pools = asked.pools()?;
     let times = medians(asked.runs, pools.len(), |k| {
         seconds(|| {
             pools[k].run(|| par::map_range(PIECES, |p| black_box(piece(p as u64))));
@@ -23,10 +23,10 @@ pub fn run(asked: &Asked) -> Result<(), String> {
     Ok(())
 }
 
-/// About a million steps of a generator (xorshift, Marsaglia 2003), which no optimiser shortens.
+/// Many steps of a generator (xorshift, Marsaglia 2003), which no optimiser shortens.
 fn piece(seed: u64) -> u64 {
     let mut v = seed | 1;
-    for _ in 0..1_500_000 {
+    for _ in 0..600_000 {
         v ^= v << 13;
         v ^= v >> 7;
         v ^= v << 17;

@@ -2,7 +2,7 @@
 
 use std::hint::black_box;
 
-use ropewalk::base::par::{self, Pool};
+use ropewalk::base::par;
 use ropewalk::detect::{ClosedTile, Criterion, Labeller, TileSweep};
 use ropewalk::math::stats::Scale;
 use ropewalk::model::object::{SUMS, Scales};
@@ -30,7 +30,7 @@ pub fn run(asked: &Asked) -> Result<(), String> {
     let square: f64 = values.iter().map(|&v| f64::from(v) * f64::from(v)).sum();
     let level = asked.level * (square / values.len() as f64).sqrt();
     let grid = Grid::periodic([n; 3], [std::f64::consts::TAU; 3]);
-    let pools: Vec<Pool> = asked.threads.iter().map(|&n| Pool::new(n).map_err(|e| e.to_string())).collect::<Result<_, _>>()?;
+    let pools = asked.pools()?;
     let mut found = (0, 0);
     let times = medians(asked.runs, pools.len(), |k| seconds(|| found = pools[k].run(|| label(&grid, &values, level))));
     for (threads, seconds) in asked.threads.iter().zip(times) {

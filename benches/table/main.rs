@@ -5,6 +5,8 @@
 
 use std::time::Instant;
 
+use ropewalk::base::par::Pool;
+
 mod compute;
 mod copy;
 mod giant;
@@ -24,6 +26,13 @@ struct Asked {
     threads: Vec<usize>,
     /// Cells along each axis of made fields.
     size: usize,
+}
+
+impl Asked {
+    /// A pool for each number of threads.
+    fn pools(&self) -> Result<Vec<Pool>, String> {
+        self.threads.iter().map(|&n| Pool::new(n).map_err(|e| e.to_string())).collect()
+    }
 }
 
 const LINES: [&str; 5] = ["compute", "copy", "sweep", "labels", "giant"];

@@ -4,7 +4,7 @@ use std::hint::black_box;
 use std::path::PathBuf;
 use std::sync::Arc;
 
-use ropewalk::base::par::{self, Pool};
+use ropewalk::base::par;
 use ropewalk::derive::{Deriver, Plan, Scratch};
 use ropewalk::detect::{ClosedTile, Criterion, TileSweep};
 use ropewalk::math::diff::Scheme;
@@ -21,7 +21,8 @@ use ropewalk::space::runs::Connectivity;
 use ropewalk::space::slab::{Batch, Block};
 use serde_json::json;
 
-use crate::{Asked, copy, medians, seconds, tell};
+use crate::copy::Copy;
+use crate::{Asked, medians, seconds, tell};
 
 /// Planes of halo that the widest difference takes.
 const HALO: usize = 4;
@@ -87,10 +88,10 @@ fn sets(fields: Fields) -> Vec<Set> {
 
 pub fn run(asked: &Asked) -> Result<(), String> {
     let planes = Planes::read(asked)?;
-    let pools: Vec<Pool> = asked.threads.iter().map(|&n| Pool::new(n).map_err(|e| e.to_string())).collect::<Result<_, _>>()?;
+    let pools = asked.pools()?;
     for set in sets(planes.fields) {
         let components = set.fields.components();
-        let copied = copy::of(asked, &planes, components)?;
+        let mut copy = Copy::new(&planes, components);
         let batches = [planes.batch(components)];
         let plan = Plan {
             indicators: set.indicators.clone(),
@@ -105,11 +106,17 @@ pub fn run(asked: &Asked) -> Result<(), String> {
         let deriver = Deriver::<f32>::new(&planes.grid, set.fields, plan);
         let work = Work { grid: &planes.grid, deriver: &deriver, batches: &batches, need: set.need };
         let criteria = work.criteria(asked.level, set.indicators.len());
-        let mut runs = 0;
-        let times = medians(asked.runs, pools.len(), |k| seconds(|| runs = pools[k].run(|| work.sweep(&criteria))));
-        for ((threads, seconds), copied) in asked.threads.iter().zip(times).zip(copied) {
-            let more = json!({ "times_a_copy": seconds / copied, "cells_per_s": planes.grid.cells() as f64 / seconds, "tiles_with_objects": runs });
-            tell("sweep", set.name, *threads, seconds, more);
+        let mut tiles = 0;
+        // Copies and sweeps in turns.
+        let times = medians(asked.runs, 2 * pools.len(), |k| {
+            let pool = &pools[k % pools.len()];
+            if k < pools.len() { seconds(|| copy.run(pool)) } else { seconds(|| tiles = pool.run(|| work.sweep(&criteria))) }
+        });
+        let (copied, swept) = times.split_at(pools.len());
+        copy.tell(asked, copied);
+        for ((threads, seconds), copied) in asked.threads.iter().zip(swept).zip(copied) {
+            let more = json!({ "times_a_copy": seconds / copied, "cells_per_s": planes.grid.cells() as f64 / seconds, "tiles": tiles });
+            tell("sweep", set.name, *threads, *seconds, more);
         }
     }
     Ok(())
