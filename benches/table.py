@@ -20,6 +20,7 @@ import shutil
 import statistics
 import subprocess
 import sys
+import tempfile
 import time
 
 HERE = os.path.dirname(os.path.abspath(__file__))
@@ -39,14 +40,16 @@ def say(text):
 # ------------------------------------------------------------------ running programs
 def once(command):
     """Wall s, CPU s, peak MiB and standard output of a command."""
-    start = time.perf_counter()
-    child = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE if not sys.stderr.isatty() else None, text=True)
-    out, errors = child.stdout.read(), child.stderr.read() if child.stderr else ""
-    _, status, usage = os.wait4(child.pid, 0)
-    wall = time.perf_counter() - start
-    child.returncode = os.waitstatus_to_exitcode(status)
-    if child.returncode != 0:
-        stop(f"exit code {child.returncode} of {' '.join(command)}\n{errors}")
+    with tempfile.TemporaryFile("w+") as errors:
+        start = time.perf_counter()
+        child = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=errors, text=True)
+        out = child.stdout.read()
+        _, status, usage = os.wait4(child.pid, 0)
+        wall = time.perf_counter() - start
+        child.returncode = os.waitstatus_to_exitcode(status)
+        if child.returncode != 0:
+            errors.seek(0)
+            stop(f"exit code {child.returncode} of {' '.join(command)}\n{errors.read()}")
     return {"wall": wall, "cpu": usage.ru_utime + usage.ru_stime, "peak": usage.ru_maxrss / 1024, "out": out}
 
 
@@ -69,8 +72,10 @@ def alternately(cases, runs, warm=True):
             run = once(case.command)
             run.update(case.more(run))
             del run["out"]
-            say(f"  {name}: " + ", ".join(f"{key} {value:.3g}" for key, value in run.items()) + (" (not counted)" if warm and k == 0 else ""))
-            if not (warm and k == 0):
+            counted = k > 0 or not warm
+            figures = ", ".join(f"{key} {value:.3g}" for key, value in run.items())
+            say(f"  {name}: {figures}{'' if counted else ' (not counted)'}")
+            if counted:
                 taken[name].append(run)
     RAW.append({name: runs for name, runs in taken.items()})
     return {name: {key: statistics.median(r[key] for r in rows) for key in rows[0]} for name, rows in taken.items()}
@@ -124,14 +129,16 @@ class Bench:
             with open(os.path.join(out, "timing.json")) as f:
                 told = json.load(f)
             figures = {f"{s['stage']} s": s["seconds"] for s in told["stages"]}
-            figures.update({key: value for key, value in told.items() if key.startswith("bytes_") and isinstance(value, (int, float))})
+            numbers = {key: value for key, value in told.items() if isinstance(value, (int, float))}
+            figures.update({key: value for key, value in numbers.items() if key.startswith("bytes_")})
             return figures
 
         return Case(command, timing)
 
     def baseline(self, n, scheme="fd8", magnetic=False):
         command = [self.python(), self.script("peer_pipeline.py"), self.field(n), "--out", os.path.join(self.a.data, "baseline")]
-        command += ["--derivative", scheme, "--fields", "needed", "--overlap", "--threshold-rms", str(LEVEL), "--min-voxels", str(MIN_CELLS)]
+        command += ["--derivative", scheme, "--fields", "needed", "--overlap"]
+        command += ["--threshold-rms", str(LEVEL), "--min-voxels", str(MIN_CELLS)]
         command += [] if magnetic else ["--no-b"]
 
         def stages(run):
@@ -197,7 +204,8 @@ class Bench:
         figures = self.compare({"unlimited": self.ours(n), "limited": self.ours(n, "--memory", limit)}, n)
         self.against(f"{n}^3, u, order 8, --memory {limit}", figures, "limited", "", "7x less")
         slower = figures["limited"]["wall"] / figures["unlimited"]["wall"]
-        self.row("", "over unlimited time", f"{figures['limited']['wall']:.3f} s", f"{figures['unlimited']['wall']:.3f} s", f"{slower:.2f}", "at most 1.3")
+        both = [f"{figures[name]['wall']:.3f} s" for name in ("limited", "unlimited")]
+        self.row("", "over unlimited time", *both, f"{slower:.2f}", "at most 1.3")
 
     def line_256ub(self):
         n = self.a.small
@@ -217,7 +225,8 @@ class Bench:
         self.against(f"{n}^3, u, order 8", figures, "ours", "9x")
         self.against(f"the same, --memory {limit}", figures, "limited", "", "under it")
         ratio = figures["ours"]["wall"] / figures["half"]["wall"]
-        self.row("", f"over our time at {n // 2}^3", f"{figures['ours']['wall']:.3f} s", f"{figures['half']['wall']:.3f} s", f"{ratio:.2f}", "at most 8.5")
+        both = [f"{figures[name]['wall']:.3f} s" for name in ("ours", "half")]
+        self.row("", f"over our time at {n // 2}^3", *both, f"{ratio:.2f}", "at most 8.5")
 
     def line_1024(self):
         n, limit = 4 * self.a.small, self.a.large_memory
@@ -226,14 +235,18 @@ class Bench:
         o, half = figures["ours"], figures["half"]
         self.row(f"{n}^3, u, order 8, --memory {limit}", "wall", f"{o['wall']:.1f} s")
         self.row("", "peak memory", f"{o['peak']:.0f} MiB", "", "", "completes")
-        self.row("", f"over our time at {n // 2}^3", f"{o['wall']:.1f} s", f"{half['wall']:.1f} s", f"{o['wall'] / half['wall']:.2f}", "at most 8.5")
+        both = [f"{x['wall']:.1f} s" for x in (o, half)]
+        self.row("", f"over our time at {n // 2}^3", *both, f"{o['wall'] / half['wall']:.2f}", "at most 8.5")
         read = o.get("bytes_read")
         size = os.path.getsize(self.field(n))
-        told = f"{read / o['wall'] / 1e9:.2f} GB/s ({read / size:.2f} times the file)" if read else f"{size / o['wall'] / 1e9:.2f} GB/s of input"
+        told = f"{size / o['wall'] / 1e9:.2f} GB/s of input"
+        if read:
+            told = f"{read / o['wall'] / 1e9:.2f} GB/s ({read / size:.2f} times the file)"
         self.row("", "read rate over the whole run", told, "", "", "stated")
 
     def line_sweep(self):
-        for t in self.inside(self.a.bench, "sweep", "--field", self.field(self.a.small), "--runs", str(self.a.runs), "--level", str(LEVEL)):
+        words = ["--field", self.field(self.a.small), "--runs", str(self.a.runs), "--level", str(LEVEL)]
+        for t in self.inside(self.a.bench, "sweep", *words):
             what = f"{t['line']}: {t['what']}, {threads(t)}"
             if t["line"] == "copy":
                 self.row(what, "wall", f"{t['seconds']:.4f} s, {t['read_and_written_gb_per_s']:.1f} GB/s")
@@ -244,7 +257,8 @@ class Bench:
     def parts(self):
         if not self.has_baseline():
             return None
-        command = [self.python(), self.script("bench_parts.py"), self.field(self.a.small), "--reps", str(self.a.runs), "--levels", "2", "--skip-slow"]
+        command = [self.python(), self.script("bench_parts.py"), self.field(self.a.small)]
+        command += ["--reps", str(self.a.runs), "--levels", "2", "--skip-slow"]
         return json.loads(once(command)["out"].strip().splitlines()[-1])
 
     def line_labels(self):
@@ -259,7 +273,8 @@ class Bench:
             if parts:
                 stages = [parts["times"][k]["wall_median"] for k in ("label_cc3d", "periodic_merge", "sizes_bincount")]
                 theirs, ratio = f"{sum(stages):.3f} s ({' + '.join(f'{s:.3f}' for s in stages)})", f"{sum(stages) / ours:.1f}"
-            self.row(f"labels and counts, {n}^3, {threads(p)}", "wall", f"{ours:.4f} s", theirs, ratio, {1: "1x", 2: "3x"}.get(p["threads"], ""))
+            goal = {1: "1x", 2: "3x"}.get(p["threads"], "")
+            self.row(f"labels and counts, {n}^3, {threads(p)}", "wall", f"{ours:.4f} s", theirs, ratio, goal)
         if parts:
             self.row("", "objects", str(before[0]["objects"]), str(parts["periodic_count"]), "", "the same but for rounding of the level")
 
@@ -279,7 +294,8 @@ class Bench:
         lines = self.inside(self.a.bench, "giant", "--runs", str(self.a.runs), "--size", str(self.a.small))
         for many, one in zip(lines[::2], lines[1::2]):
             what = f"one object of half the cells, {threads(one)}"
-            said = [f"{x['seconds']:.3f} s ({x['objects']} objects, {x['cells']:.0f} cells, largest {100 * x['largest_holds']:.1f} %)" for x in (one, many)]
+            cells = lambda x: f"{x['objects']} objects, {x['cells']:.0f} cells, largest {100 * x['largest_holds']:.1f} %"
+            said = [f"{x['seconds']:.3f} s ({cells(x)})" for x in (one, many)]
             said[1] = "ours: " + said[1]
             self.row(what, "wall over many objects", *said, f"{one['seconds'] / many['seconds']:.2f}", "at most 1.5")
             self.row("", "shape pass alone", f"{one['shapes_seconds']:.3f} s", f"{many['shapes_seconds']:.3f} s",
@@ -288,12 +304,16 @@ class Bench:
     def line_threads(self):
         n = self.a.small
         loop = lambda run: {"loop": json.loads(run["out"].splitlines()[-1])["seconds"]}
-        compute = lambda threads: Case([self.a.bench or stop("threads need --bench"), "compute", "--runs", "1", "--threads", str(threads)], loop)
-        cases = {"loop 1": compute(1), "ours 1": self.ours(n, "--threads", "1"), "loop 2": compute(2), "ours 2": self.ours(n, "--threads", "2")}
+        bench = self.a.bench or stop("threads need --bench")
+        cases = {}
+        for threads in ("1", "2"):
+            cases[f"loop {threads}"] = Case([bench, "compute", "--runs", "1", "--threads", threads], loop)
+            cases[f"ours {threads}"] = self.ours(n, "--threads", threads)
         f = alternately(cases, self.a.runs)
         loop, ours = f["loop 1"]["loop"] / f["loop 2"]["loop"], f["ours 1"]["wall"] / f["ours 2"]["wall"]
-        self.row(f"2 threads over 1, {n}^3, u, order 8", "speed-up", f"{ours:.2f} ({f['ours 1']['wall']:.3f} s, {f['ours 2']['wall']:.3f} s)",
-                 f"{loop:.2f} (loop without memory)", f"{100 * ours / loop:.0f} %", "90 %")
+        told = f"{ours:.2f} ({f['ours 1']['wall']:.3f} s, {f['ours 2']['wall']:.3f} s)"
+        share = f"{100 * ours / loop:.0f} %"
+        self.row(f"2 threads over 1, {n}^3, u, order 8", "speed-up", told, f"{loop:.2f} (loop without memory)", share, "90 %")
 
 
 VORTICITY = """
@@ -332,13 +352,15 @@ def machine(a):
     with open("/proc/meminfo") as f:
         memory = int(f.readline().split()[1]) / 2**20
     out = [
-        f"{time.strftime('%Y-%m-%d %H:%M', time.gmtime())} UTC, {cpu} ({flags}), {len(os.sched_getaffinity(0))} cores, {memory:.1f} GiB, "
-        f"{platform.system()} {platform.release()}, load {os.getloadavg()[0]:.2f} at the end",
-        f"{first([a.program, '--version'])}; medians of {a.runs} (of {a.large_runs} for the largest), programs alternately, page cache warm",
+        f"{time.strftime('%Y-%m-%d %H:%M', time.gmtime())} UTC, {cpu} ({flags}), {len(os.sched_getaffinity(0))} cores, "
+        f"{memory:.1f} GiB, {platform.system()} {platform.release()}, load {os.getloadavg()[0]:.2f} at the end",
+        f"{first([a.program, '--version'])}; medians of {a.runs} (of {a.large_runs} for the largest), "
+        "programs alternately, page cache warm",
     ]
     if a.python:
         names = "numpy scipy scikit-image h5py connected-components-3d edt numba pandas"
-        ask = "import sys, importlib.metadata as m\nprint('Python', sys.version.split()[0], *[f'{n} {m.version(n)}' for n in sys.argv[1].split()])"
+        ask = "import sys, importlib.metadata as m\n"
+        ask += "print('Python', sys.version.split()[0], *[f'{n} {m.version(n)}' for n in sys.argv[1].split()])"
         out.append("baseline: " + first([a.python, "-c", ask, names]))
     return out
 
