@@ -31,8 +31,8 @@ fn push_standard(out: &mut String, v: f64, plain: bool) {
     }
 }
 
-/// Whether a number may lie exactly between two of 16 digits: its own 17 digits end in 5. With `f` bits behind the point it has as
-/// many decimals, the last of them a 5.
+/// Whether a number may lie exactly between two texts of 16 or 17 digits: it has one digit more itself, and that is a 5. With `f`
+/// bits behind the point it has as many decimals, the last of them a 5.
 fn may_be_halfway(magnitude: f64) -> bool {
     /// From here on numbers need not have bits behind the point.
     const LARGE: f64 = 1e15;
@@ -44,7 +44,7 @@ fn may_be_halfway(magnitude: f64) -> bool {
     let decimals = 52 - power - i64::from((bits & ((1 << 52) - 1) | 1 << 52).trailing_zeros());
     // Decimal power of the leading digit, or one less.
     let leading = (power * 30103).div_euclid(100_000);
-    (16 - leading - decimals) as u64 <= 1
+    (15..=17).contains(&(leading + decimals))
 }
 
 /// Appends a whole number.
@@ -98,6 +98,7 @@ mod tests {
     #[test]
     fn halfway_numbers_are_as_the_standard_library_writes_them() {
         assert_eq!(text(f64::from(94.209015f32)), "94.20901489257813");
+        assert_eq!(text(f64::from(157.19229f32)), "157.19229125976563");
         let mut state = 1u64;
         for _ in 0..1_000_000 {
             // A linear congruential generator (Knuth's MMIX constants, value from memory).
