@@ -32,7 +32,8 @@ const CONFINED: &[(&[&str], &[&str])] = &[
     (&["toml"], &["run/config/file.rs"]),
     // Reading and writing have one home each.
     (&["::hdf5"], &["read/", "export/hdf5.rs"]),
-    (&["::parquet"], &["export/parquet.rs"]),
+    (&["::parquet", "::bytes"], &["export/parquet.rs"]),
+    (&["zmij"], &["export/digits.rs"]),
     (&["ply_rs"], &["export/ply.rs"]),
     (&["flate2"], &["read/chunks/filters.rs"]),
 ];

@@ -3,6 +3,7 @@
 pub mod atomic;
 pub mod csv;
 pub mod cutout;
+pub mod digits;
 pub mod hdf5;
 pub mod json;
 pub mod jsonl;

@@ -1,5 +1,7 @@
 //! The one registry of catalogue columns: name, unit, definition, source, and the stage that fills it.
 
+pub use crate::model::row::{Cell, Counts, Row, Value};
+
 /// Unit of a column in terms of the user's own units.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Unit {
@@ -65,6 +67,19 @@ impl Stage {
     }
 }
 
+/// What the values of a column are.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Kind {
+    /// Words.
+    Text,
+    /// Whole numbers.
+    Integer,
+    /// Numbers.
+    Number,
+    /// Counts a bin, separated by spaces in text.
+    Counts,
+}
+
 /// One column of the catalogue.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct Column {
@@ -78,6 +93,23 @@ pub struct Column {
     pub source: &'static str,
     /// What fills it.
     pub stage: Stage,
+}
+
+impl Column {
+    /// What its values are.
+    pub const fn kind(&self) -> Kind {
+        match self.unit {
+            Unit::Text => Kind::Text,
+            Unit::Count if is_histogram(self.name.as_bytes()) => Kind::Counts,
+            Unit::Count => Kind::Integer,
+            _ => Kind::Number,
+        }
+    }
+}
+
+/// Whether a name begins with `histogram_`.
+const fn is_histogram(name: &[u8]) -> bool {
+    matches!(name.split_at_checked(10), Some((b"histogram_", _)))
 }
 
 macro_rules! columns {
@@ -169,80 +201,6 @@ columns! {
     Wraps "wraps" Text Tallies "Axes along which the object closes on itself through the periodic box." "";
     OpenFaces "open_faces" Text Tallies "Open faces of the box that the object touches." "";
     Flags "flags" Text Run "Why values are missing or to be read with care: wraps, open, additive_only, under_resolved (shapefinder_thickness below 3 cells), marginal (3 to 5 cells), fragmented (cells that touch at edges or corners only, so that the isosurface is in several pieces: too thin for the grid), curvature_not_positive, undefined_direction, wall (where an object grown from its peak meets another, more than 5 % of its boundary: its surface is not its own), plane (a plane snapshot: no volume, no surface, nothing across it; of fields that lie in the plane no cosines with a curl), no_guide (the mean magnetic field is below 1 % of the fluctuations), no_velocity, no_magnetic, no_viscosity, no_resistivity, no_time." "";
-}
-
-/// A value of a column.
-#[derive(Debug, Clone, PartialEq, Default)]
-pub enum Value {
-    /// Not measured.
-    #[default]
-    Missing,
-    /// Words; an empty text is a value (no axes, no flags), not a missing one.
-    Text(String),
-    /// A whole number.
-    Integer(i64),
-    /// A number; never NaN or infinite.
-    Number(f64),
-    /// Counts a bin.
-    Counts(Vec<u64>),
-}
-
-impl Value {
-    /// A number where there is a finite one.
-    pub fn number(v: Option<f64>) -> Value {
-        v.filter(|v| v.is_finite()).map_or(Value::Missing, Value::Number)
-    }
-
-    /// The number, whole or not.
-    pub fn as_f64(&self) -> Option<f64> {
-        match self {
-            Value::Number(v) => Some(*v),
-            Value::Integer(v) => Some(*v as f64),
-            _ => None,
-        }
-    }
-}
-
-/// One row of the catalogue: every column of the registry, then three for each companion (mean, smallest, largest).
-#[derive(Debug, Clone, PartialEq)]
-pub struct Row(Vec<Value>);
-
-impl Default for Row {
-    fn default() -> Self {
-        Row(vec![Value::Missing; COLUMNS.len()])
-    }
-}
-
-impl Row {
-    /// Sets a column.
-    pub fn set(&mut self, column: Col, value: Value) {
-        self.0[column as usize] = value;
-    }
-
-    /// Adds the mean, the smallest and the largest value of the next companion.
-    pub fn push_companion(&mut self, values: [Option<f64>; 3]) {
-        self.0.extend(values.map(Value::number));
-    }
-
-    /// Sets a column to a number, missing where there is none.
-    pub fn number(&mut self, column: Col, value: Option<f64>) {
-        self.set(column, Value::number(value));
-    }
-
-    /// A column.
-    pub fn get(&self, column: Col) -> &Value {
-        &self.0[column as usize]
-    }
-
-    /// A row read back: values in the order of its schema.
-    pub fn from_values(values: Vec<Value>) -> Row {
-        Row(values)
-    }
-
-    /// All columns in the order of [`crate::model::schema::Schema::columns`].
-    pub fn values(&self) -> &[Value] {
-        &self.0
-    }
 }
 
 #[cfg(test)]

@@ -6,6 +6,7 @@ pub mod family;
 pub mod indicator;
 pub mod object;
 pub mod request;
+pub mod row;
 pub mod rows;
 pub mod schema;
 pub mod sink;

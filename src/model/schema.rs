@@ -1,6 +1,8 @@
 //! The columns of one catalogue: those of the registry, and three for every companion that was asked for.
 
-use crate::model::columns::{COLUMNS, Unit};
+pub use crate::model::columns::Kind;
+
+use crate::model::columns::COLUMNS;
 use crate::model::indicator::Indicator;
 
 /// A column as tables and dictionaries need it.
@@ -20,19 +22,6 @@ pub struct ColumnInfo {
     pub kind: Kind,
 }
 
-/// What the values of a column are.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Kind {
-    /// Words.
-    Text,
-    /// Whole numbers.
-    Integer,
-    /// Numbers.
-    Number,
-    /// Counts a bin, separated by spaces in text.
-    Counts,
-}
-
 /// Which companions a catalogue has.
 #[derive(Debug, Clone, PartialEq, Eq, Default)]
 pub struct Schema {
@@ -49,12 +38,7 @@ impl Schema {
             definition: c.definition.to_string(),
             source: c.source.to_string(),
             stage: c.stage.text(),
-            kind: match c.unit {
-                Unit::Text => Kind::Text,
-                Unit::Count if c.name.starts_with("histogram_") => Kind::Counts,
-                Unit::Count => Kind::Integer,
-                _ => Kind::Number,
-            },
+            kind: c.kind(),
         });
         fixed.chain(self.companions.iter().flat_map(|i| companion_columns(*i))).collect()
     }

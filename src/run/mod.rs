@@ -10,6 +10,7 @@ mod detect_pass;
 mod files;
 pub mod gather;
 mod kept;
+mod lines;
 pub mod machine;
 mod memory;
 mod meshes;

@@ -92,7 +92,7 @@ fn equal_spacing_as_coordinates_changes_nothing() {
         assert!(!a.rows(k).is_empty());
         assert_eq!(a.rows(k).len(), b.rows(k).len());
         for (r, s) in a.rows(k).iter().zip(b.rows(k)) {
-            for (i, (v, w)) in r.values().iter().zip(s.values()).enumerate() {
+            for (i, (v, w)) in r.values().iter().zip(&s.values()).enumerate() {
                 // Two of the moments are equal here: round-off chooses the axes.
                 if COLUMNS[i].name.starts_with("axis_") {
                     continue;

@@ -73,7 +73,7 @@ fn same(a: &Outcome, b: &Outcome, change: &Change, peak: impl Fn(f64) -> f64) {
             let wanted = peak(number(row, Col::Peak));
             let distance = |r: &&Row| (number(r, Col::Peak) - wanted).abs();
             let other = b.rows(k).iter().min_by(|p, q| distance(p).total_cmp(&distance(q))).unwrap();
-            for (i, (v, w)) in row.values().iter().zip(other.values()).enumerate() {
+            for (i, (v, w)) in row.values().iter().zip(&other.values()).enumerate() {
                 let name = COLUMNS.get(i).map_or("companion", |c| c.name);
                 match (v, w) {
                     (Value::Number(v), Value::Number(w)) => {
@@ -215,7 +215,7 @@ fn units_scale_by_their_powers() {
         };
         assert_eq!(a.rows(k).len(), b.rows(k).len(), "{f}");
         for (p, q) in a.rows(k).iter().zip(b.rows(k)) {
-            for (i, (x, y)) in p.values().iter().zip(q.values()).enumerate() {
+            for (i, (x, y)) in p.values().iter().zip(&q.values()).enumerate() {
                 match (x, y) {
                     (Value::Number(x), Value::Number(y)) => {
                         let want = x * factor(i);

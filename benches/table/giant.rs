@@ -1,0 +1,115 @@
+//! One object that holds half of all cells beyond the level, beside as many cells in many objects: a lattice of balls with arms
+//! along the axes, which end a little before those of their neighbours, or in half of the box join them.
+
+use std::sync::Mutex;
+use std::time::Instant;
+
+use ropewalk::base::observe::Observe;
+use ropewalk::base::par::Pool;
+use ropewalk::model::request::{Family, Request, Surfaces};
+use ropewalk::model::sink::NoFiles;
+use ropewalk::model::source::{AnySource, Fields, MemorySource};
+use ropewalk::run::analysis::{Execution, Snapshot, analyse};
+use ropewalk::space::grid::Grid;
+use serde_json::json;
+
+use crate::{Asked, medians, tell};
+
+/// Cells of one unit of the lattice along each axis, and in it the radius of the ball and that of the arms.
+const UNIT: usize = 16;
+const BALL: f32 = 5.0;
+const ARM: f32 = 2.2;
+/// Where an arm ends, from the centre, so that it touches nothing: the unit ends at 8.
+const END: f32 = 6.8;
+
+pub fn run(asked: &Asked) -> Result<(), String> {
+    let n = asked.size / UNIT * UNIT;
+    if n < 4 * UNIT {
+        return Err(format!("--size {} is less than {}", asked.size, 4 * UNIT));
+    }
+    let grid = Grid::periodic([n; 3], [std::f64::consts::TAU; 3]);
+    let family = Family::parse("field: field > 1").map_err(|e| e.to_string())?;
+    let request = Request { families: vec![family], min_cells: 1, surfaces: Surfaces::None, ..Request::default() };
+    let fields = [lattice(n, false), lattice(n, true)];
+    for &threads in &asked.threads {
+        let pool = Pool::new(threads).map_err(|e| e.to_string())?;
+        let mut told = [json!({}), json!({})];
+        let mut shapes = [Vec::new(), Vec::new()];
+        let times = medians(asked.runs, 2, |k| {
+            let still = vec![0.0f32; fields[k].len()];
+            let source = MemorySource::new(grid.clone(), Fields::MAGNETIC, vec![fields[k].clone(), still.clone(), still]);
+            let snapshot = Snapshot { name: "bench".into(), time: None, components: Vec::new() };
+            let clock = Shapes::default();
+            let start = Instant::now();
+            let source = AnySource::F32(Box::new(source));
+            let done = pool.run(|| analyse(source, snapshot, &request, &Execution::default(), &clock, &mut NoFiles));
+            let seconds = start.elapsed().as_secs_f64();
+            let Ok(done) = done else { panic!("the lattice cannot be analysed") };
+            let rows = &done.families[0].rows;
+            let cells = rows.iter().filter_map(|r| r.get(ropewalk::model::columns::Col::Cells).as_f64());
+            let (all, largest) = cells.fold((0.0, 0.0f64), |(all, largest), c| (all + c, largest.max(c)));
+            shapes[k].push(clock.seconds());
+            told[k] = json!({ "objects": rows.len(), "cells": all, "largest_holds": largest / all });
+            seconds
+        });
+        for (k, what) in ["many objects", "one object of half the cells"].into_iter().enumerate() {
+            // The first run is not counted.
+            told[k]["shapes_seconds"] = crate::median(shapes[k][1..].to_vec()).into();
+            tell("giant", what, threads, times[k], told[k].clone());
+        }
+    }
+    Ok(())
+}
+
+/// The field: 1 plus the distance into the nearest ball or arm, in cells.
+fn lattice(n: usize, joined: bool) -> Vec<f32> {
+    let half = UNIT as f32 / 2.0 - 0.5;
+    let place = |i: usize| (i % UNIT) as f32 - half;
+    let mut out = Vec::with_capacity(n * n * n);
+    for z in 0..n {
+        for y in 0..n {
+            for x in 0..n {
+                let (at, p) = ([x, y, z], [place(x), place(y), place(z)]);
+                let radius = p.iter().map(|v| v * v).sum::<f32>();
+                let mut depth = BALL - radius.sqrt();
+                for a in 0..3 {
+                    let across = (radius - p[a] * p[a]).sqrt();
+                    // Arms go on into the next unit, but not through a face of the box or of the joined half.
+                    let ahead = if p[a] > 0.0 { at[a] / UNIT + 1 } else { at[a] / UNIT };
+                    let last = if a == 2 { n / UNIT / 2 } else { n / UNIT };
+                    let open = joined && at[2] < n / 2 && ahead > 0 && ahead < last;
+                    let along = if open { f32::INFINITY } else { END - p[a].abs() };
+                    depth = depth.max((ARM - across).min(along));
+                }
+                out.push((1.0 + depth).max(0.0));
+            }
+        }
+    }
+    out
+}
+
+/// Seconds of the shape pass.
+#[derive(Default)]
+struct Shapes(Mutex<(Option<Instant>, f64)>);
+
+impl Shapes {
+    fn seconds(&self) -> f64 {
+        self.0.lock().map_or(f64::NAN, |s| s.1)
+    }
+}
+
+impl Observe for Shapes {
+    fn stage(&self, name: &str, _total: u64) {
+        if let Ok(mut s) = self.0.lock() {
+            s.0 = (name == "shapes").then(Instant::now);
+        }
+    }
+
+    fn done(&self) {
+        if let Ok(mut s) = self.0.lock()
+            && let Some(since) = s.0.take()
+        {
+            s.1 += since.elapsed().as_secs_f64();
+        }
+    }
+}
