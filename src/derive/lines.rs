@@ -6,7 +6,7 @@ use crate::base::error::Result;
 use crate::base::observe::Observe;
 use crate::base::par;
 use crate::base::real::Real;
-use crate::math::fft::{LineDerivative, LineScratch};
+use crate::math::lines::{LineDerivative, LineScratch};
 use crate::model::source::{Fields, PlaneSource};
 use crate::space::grid::Grid;
 use crate::space::slab::Block;

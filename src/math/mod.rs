@@ -11,6 +11,8 @@ mod isocubes;
 mod isomesher;
 pub mod isosurface;
 mod isotable;
+pub mod lanes;
+pub mod lines;
 pub mod moments;
 pub mod scheme;
 pub mod stats;

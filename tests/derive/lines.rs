@@ -3,7 +3,8 @@
 use std::f64::consts::TAU;
 
 use ropewalk::base::real::Real;
-use ropewalk::math::fft::{Complex, LineDerivative, LinePower, LineScratch, wavenumber};
+use ropewalk::math::fft::{Complex, wavenumber};
+use ropewalk::math::lines::{LineDerivative, LinePower, LineScratch};
 
 /// Repeatable numbers in (-1, 1) without a generator: fractional parts of multiples of √2.
 fn samples(len: usize) -> Vec<f64> {
@@ -61,9 +62,9 @@ fn line_derivatives_equal_the_defining_sums() {
 #[test]
 fn line_power_is_parseval_and_finds_waves() {
     for n in [12, 15] {
-        let mut line: Vec<f64> = (0..n).map(|i| 2.0 + 3.0 * (TAU * 4.0 * i as f64 / n as f64).sin()).collect();
+        let line: Vec<f64> = (0..n).map(|i| 2.0 + 3.0 * (TAU * 4.0 * i as f64 / n as f64).sin()).collect();
         let mut power = vec![0.0; n / 2 + 1];
-        LinePower::new(n).add(&mut line, &mut power, &mut LineScratch::default());
+        LinePower::new(n).add(&line, &mut power, &mut LineScratch::default());
         for (m, p) in power.iter().enumerate() {
             let wanted = [4.0, 0.0, 0.0, 0.0, 4.5].get(m).copied().unwrap_or(0.0);
             assert!((p - wanted).abs() < 1e-14, "{m}: {p}");
