@@ -5,3 +5,4 @@ pub mod error;
 pub mod observe;
 pub mod par;
 pub mod real;
+pub mod scratch;

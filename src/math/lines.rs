@@ -77,9 +77,9 @@ impl<T: Real> LineDerivative<T> {
         assert!(lines.len().is_multiple_of(n) && lines.len() == out.len(), "expected lines of {n} samples, got {}", lines.len());
         let entries = scratch.entries(self.0.dft.buffer());
         for (lines, out) in lines.chunks(n * TOGETHER).zip(out.chunks_mut(n * TOGETHER)) {
-            gather(lines, &mut entries[..n]);
+            gather(lines, |line| line[0], &mut entries[..n]);
             self.0.dft.turned(&self.0.factors, entries);
-            scatter(&entries[..n], out);
+            scatter(&entries[..n], out, |v| v);
         }
     }
 
@@ -130,39 +130,48 @@ impl<T: Real> LineDerivative<T> {
     }
 }
 
-/// At most [`TOGETHER`] lines that follow each other, each measured from its first value, side by side.
-fn gather<T: Real>(lines: &[T], entries: &mut [Lane<T>]) {
+/// At most [`TOGETHER`] lines that follow each other, each measured from a base of its own, side by side.
+pub(super) fn gather<T: Real, U: Real>(lines: &[T], base: impl Fn(&[T]) -> U, entries: &mut [Lane<U>]) {
     let n = entries.len();
     if lines.len() < n * TOGETHER {
         entries.fill(Lane::ZERO);
     }
     for (l, line) in lines.chunks_exact(n).enumerate() {
-        let base = line[0];
+        let base = base(line);
+        let value = |v: T| U::of(v.wide()) - base;
         if l < LANES {
             for (e, &v) in entries.iter_mut().zip(line) {
-                e.re[l] = v - base;
+                e.re[l] = value(v);
             }
         } else {
             for (e, &v) in entries.iter_mut().zip(line) {
-                e.im[l - LANES] = v - base;
+                e.im[l - LANES] = value(v);
             }
         }
     }
 }
 
-/// The same back.
-fn scatter<T: Real>(entries: &[Lane<T>], lines: &mut [T]) {
+/// Lines side by side, one after the other; every value as `value` makes it.
+pub(super) fn scatter<T: Copy, U>(entries: &[Lane<T>], lines: &mut [U], value: impl Fn(T) -> U) {
     for (l, line) in lines.chunks_exact_mut(entries.len()).enumerate() {
         if l < LANES {
             for (v, e) in line.iter_mut().zip(entries) {
-                *v = e.re[l];
+                *v = value(e.re[l]);
             }
         } else {
             for (v, e) in line.iter_mut().zip(entries) {
-                *v = e.im[l - LANES];
+                *v = value(e.im[l - LANES]);
             }
         }
     }
+}
+
+/// The coefficients F and G of the real lines f and g of lane `l`, from those of f + ig at m and -m: Z_m = F + iG, and the conjugate
+/// of Z_-m is F - iG.
+#[inline(always)]
+pub(super) fn both(there: &Lane<f64>, back: &Lane<f64>, l: usize) -> [[f64; 2]; 2] {
+    let (a, b) = ([there.re[l], there.im[l]], [back.re[l], back.im[l]]);
+    [[0.5 * (a[0] + b[0]), 0.5 * (a[1] - b[1])], [0.5 * (a[1] + b[1]), 0.5 * (b[0] - a[0])]]
 }
 
 /// Power spectra of periodic lines of one length.
@@ -182,10 +191,7 @@ impl LinePower {
     /// When `n` is 0.
     pub fn new(n: usize) -> LinePower {
         let dft = Dft::new(n);
-        let mut places = vec![0; n];
-        for (place, &m) in dft.order().iter().enumerate() {
-            places[m] = place;
-        }
+        let places = dft.places();
         LinePower(Arc::new(Power { dft, places }))
     }
 
@@ -206,16 +212,13 @@ impl LinePower {
             for (base, line) in bases.iter_mut().zip(lines.chunks_exact(n)) {
                 *base = line[0];
             }
-            gather(lines, &mut entries[..n]);
+            gather(lines, |line| line[0], &mut entries[..n]);
             dft.forward(entries);
             for (m, p) in power.iter_mut().enumerate() {
                 let (there, back) = (&entries[places[m]], &entries[places[(n - m) % n]]);
-                // F and G of f + ig: Z_m = F + iG, and the conjugate of Z_-m is F - iG.
                 let mut squares = [0.0; TOGETHER];
                 for l in 0..LANES {
-                    let (a, b) = ((there.re[l], there.im[l]), (back.re[l], back.im[l]));
-                    let mut f = [0.5 * (a.0 + b.0), 0.5 * (a.1 - b.1)];
-                    let mut g = [0.5 * (a.1 + b.1), 0.5 * (b.0 - a.0)];
+                    let [mut f, mut g] = both(there, back, l);
                     if m == 0 {
                         f[0] += n as f64 * bases[l];
                         g[0] += n as f64 * bases[l + LANES];

@@ -14,6 +14,7 @@ mod isotable;
 pub mod lanes;
 pub mod lines;
 pub mod moments;
+pub mod planewise;
 pub mod scheme;
 pub mod stats;
 pub mod surface;

@@ -6,7 +6,7 @@ use std::sync::Arc;
 use crate::base::error::{Error, Result};
 use crate::base::observe::Observe;
 use crate::base::real::Real;
-use crate::derive::{Deriver, Plan, ZLines, fewest_samples, filter, z_lines};
+use crate::derive::{Deriver, Plan, Room, ZLines, fewest_samples, filter, z_lines};
 use crate::model::request::{Family, Frame, Request};
 use crate::model::source::{Fields, MemorySource, PlaneSource};
 use crate::model::statistics::{Scan, Survey};
@@ -87,15 +87,16 @@ impl<T: Real> Ready<T> {
         let plan = derived(&families, request);
         let mut ready =
             Ready { source, grid, fields, families, ranges, buffers: Buffers::default(), plan, z_lines: None, stored_digest: None };
+        let room = Room { bytes: execution.memory, scratch: execution.scratch.as_deref() };
         if let Some(filter) = &request.filter {
             // Bad cells and the digest are those of what is stored.
             let (scan, _) = ready.pass(observe).survey(None, true, &[], 0)?;
             reject_bad_cells(&scan, snapshot)?;
             ready.stored_digest = Some(scan.digest);
-            ready.source = Box::new(filter::filtered(&mut *ready.source, filter, observe)?);
+            ready.source = filter::filtered(&mut *ready.source, filter, &room, observe)?;
         }
         if let Some(wanted) = ready.deriver([0.0; 3], None).wanted_z_lines() {
-            ready.z_lines = Some(Arc::new(z_lines(&mut *ready.source, &wanted, observe)?));
+            ready.z_lines = Some(Arc::new(z_lines(&mut *ready.source, &wanted, &room, observe)?));
         }
         Ok(ready)
     }

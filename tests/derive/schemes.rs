@@ -10,7 +10,7 @@ use ropewalk::model::source::Fields;
 use ropewalk::run::stream::{Buffers, block_ranges, blocks};
 use ropewalk::space::grid::Grid;
 
-use crate::common::{TAU, Vector, close, each_row, plan, positions, sampled, whole};
+use crate::common::{ALL_ROOM, TAU, Vector, close, each_row, plan, positions, sampled, whole};
 
 const ALL: [Scheme; 6] = [Scheme::Fd2, Scheme::Fd4, Scheme::Fd6, Scheme::Fd8, Scheme::Opt, Scheme::Spectral];
 
@@ -113,7 +113,7 @@ fn parts_of_rows_are_the_same_bits() {
         for scheme in ALL {
             let need = Need { strain: true, truncation: true, divergence: true, ..Need::default() };
             let deriver = Deriver::<f32>::new(&grid, Fields::VELOCITY, plan(scheme, &[I::Swirling]));
-            let lines = deriver.wanted_z_lines().map(|wanted| z_lines(&mut source, &wanted, &Silent).unwrap().into());
+            let lines = deriver.wanted_z_lines().map(|wanted| z_lines(&mut source, &wanted, &ALL_ROOM, &Silent).unwrap().into());
             let deriver = deriver.with_z_lines(lines);
             let ranges = block_ranges(&source, Some(4));
             let (mut a, mut b) = (Scratch::default(), Scratch::default());
