@@ -555,6 +555,26 @@ mod tests {
         }
     }
 
+    /// What the kernels chosen at run time make is what they make without wider vectors.
+    #[test]
+    fn the_width_of_vectors_changes_no_bit() {
+        fn check<T: Real>(n: usize) {
+            let dft = Dft::<T>::new(n);
+            let mut chosen = lines(&dft);
+            let mut plain = chosen.clone();
+            forward(&dft.smooth.passes, &mut chosen);
+            dft.smooth.passes.iter().for_each(|p| one_pass::<T, false>(p, &mut plain));
+            assert!(chosen.iter().zip(&plain).all(|(a, b)| (a.re, a.im) == (b.re, b.im)), "{n}");
+            inverse(&dft.smooth.passes, &mut chosen);
+            dft.smooth.passes.iter().rev().for_each(|p| one_pass::<T, true>(p, &mut plain));
+            assert!(chosen.iter().zip(&plain).all(|(a, b)| (a.re, a.im) == (b.re, b.im)), "{n}, back");
+        }
+        for n in [2, 12, 60, 77, 128, 256, 720, 1024, 1001] {
+            check::<f32>(n);
+            check::<f64>(n);
+        }
+    }
+
     /// Turns are symmetric to the last bit, and those of eighths are exact.
     #[test]
     fn turns_keep_their_symmetries() {

