@@ -31,47 +31,52 @@ impl<T: Real> Lane<T> {
     pub const ZERO: Lane<T> = Lane { re: [T::ZERO; LANES], im: [T::ZERO; LANES] };
 
     #[inline(always)]
-    fn at(&self, l: usize) -> Pair<T> {
-        [self.re[l], self.im[l]]
+    fn plus(self, other: Self) -> Self {
+        Lane { re: each(|l| self.re[l] + other.re[l]), im: each(|l| self.im[l] + other.im[l]) }
     }
 
     #[inline(always)]
-    fn put(&mut self, l: usize, v: Pair<T>) {
-        [self.re[l], self.im[l]] = v;
+    fn minus(self, other: Self) -> Self {
+        Lane { re: each(|l| self.re[l] - other.re[l]), im: each(|l| self.im[l] - other.im[l]) }
     }
 
+    /// Times a real number.
     #[inline(always)]
-    fn each(&mut self, f: impl Fn(Pair<T>) -> Pair<T>) {
-        for l in 0..LANES {
-            self.put(l, f(self.at(l)));
+    fn scaled(self, k: T) -> Self {
+        Lane { re: each(|l| k * self.re[l]), im: each(|l| k * self.im[l]) }
+    }
+
+    /// Times w, or the conjugate of w.
+    #[inline(always)]
+    fn times<const CONJUGATE: bool>(self, [c, s]: Pair<T>) -> Self {
+        let Lane { re, im } = self;
+        if CONJUGATE {
+            Lane { re: each(|l| re[l] * c + im[l] * s), im: each(|l| im[l] * c - re[l] * s) }
+        } else {
+            Lane { re: each(|l| re[l] * c - im[l] * s), im: each(|l| re[l] * s + im[l] * c) }
         }
     }
+
+    /// Times i k.
+    #[inline(always)]
+    fn turned(self, k: T) -> Self {
+        Lane { re: each(|l| -(k * self.im[l])), im: each(|l| k * self.re[l]) }
+    }
+
+    /// Times -i forward, i on the way back.
+    #[inline(always)]
+    fn quarter<const BACK: bool>(self) -> Self {
+        if BACK { Lane { re: each(|l| -self.im[l]), im: self.re } } else { Lane { re: self.im, im: each(|l| -self.re[l]) } }
+    }
+}
+
+#[inline(always)]
+fn each<T>(f: impl Fn(usize) -> T) -> [T; LANES] {
+    std::array::from_fn(f)
 }
 
 /// Real and imaginary part.
 type Pair<T> = [T; 2];
-
-#[inline(always)]
-fn add<T: Real>(a: Pair<T>, b: Pair<T>) -> Pair<T> {
-    [a[0] + b[0], a[1] + b[1]]
-}
-
-#[inline(always)]
-fn sub<T: Real>(a: Pair<T>, b: Pair<T>) -> Pair<T> {
-    [a[0] - b[0], a[1] - b[1]]
-}
-
-/// a w, or a times the conjugate of w.
-#[inline(always)]
-fn times<T: Real, const CONJUGATE: bool>(a: Pair<T>, w: Pair<T>) -> Pair<T> {
-    if CONJUGATE { [a[0] * w[0] + a[1] * w[1], a[1] * w[0] - a[0] * w[1]] } else { [a[0] * w[0] - a[1] * w[1], a[0] * w[1] + a[1] * w[0]] }
-}
-
-/// -i a forward, i a backward.
-#[inline(always)]
-fn quarter<T: Real, const BACK: bool>(a: Pair<T>) -> Pair<T> {
-    if BACK { [-a[1], a[0]] } else { [a[1], -a[0]] }
-}
 
 /// cos and sin of 2π i/n, the quadrant taken off exactly.
 fn turn(i: usize, n: usize) -> [f64; 2] {
@@ -178,12 +183,12 @@ impl<T: Real> Dft<T> {
         let mut kernel = vec![Lane::<f64>::ZERO; len];
         for (j, &[re, im]) in turns.iter().enumerate() {
             for at in [j, (len - j) % len] {
-                kernel[at].put(0, [re, -im]);
+                (kernel[at].re[0], kernel[at].im[0]) = (re, -im);
             }
         }
         forward(&Smooth::new(len).expect("its factors were looked at").passes, &mut kernel);
         let narrow = |[re, im]: Pair<f64>, scale: f64| [T::of(re * scale), T::of(im * scale)];
-        let spectrum = kernel.iter().map(|k| narrow(k.at(0), 1.0 / len as f64)).collect();
+        let spectrum = kernel.iter().map(|k| narrow([k.re[0], k.im[0]], 1.0 / len as f64)).collect();
         let chirp = Chirp { turns: turns.into_iter().map(|t| narrow(t, 1.0)).collect(), spectrum, order: (0..n).collect() };
         Dft { smooth: plan(len), chirp: Some(chirp), n }
     }
@@ -248,7 +253,7 @@ impl<T: Real> Dft<T> {
         }
         self.forward(data);
         for (x, &k) in data.iter_mut().zip(factors) {
-            x.each(|[re, im]| [-(k * im), k * re]);
+            *x = x.turned(k);
         }
         self.inverse(data);
     }
@@ -258,42 +263,20 @@ impl<T: Real> Dft<T> {
     }
 }
 
-/// Butterflies of 4; twiddles before them on the way back, after them forward.
+/// Butterflies of 4.
 #[inline(always)]
-fn four<T: Real, const BACK: bool, const TWIDDLES: bool>(x: [&mut Lane<T>; 4], w: &[Pair<T>; 3]) {
-    let [x0, x1, x2, x3] = x;
-    for l in 0..LANES {
-        let (a, mut b, mut c, mut d) = (x0.at(l), x1.at(l), x2.at(l), x3.at(l));
-        if BACK && TWIDDLES {
-            b = times::<T, true>(b, w[0]);
-            c = times::<T, true>(c, w[1]);
-            d = times::<T, true>(d, w[2]);
-        }
-        let [y0, mut y1, mut y2, mut y3] = four_of::<T, BACK>([a, b, c, d]);
-        if !BACK && TWIDDLES {
-            y1 = times::<T, false>(y1, w[0]);
-            y2 = times::<T, false>(y2, w[1]);
-            y3 = times::<T, false>(y3, w[2]);
-        }
-        x0.put(l, y0);
-        x1.put(l, y1);
-        x2.put(l, y2);
-        x3.put(l, y3);
-    }
+fn four<T: Real, const BACK: bool>([a, b, c, d]: [Lane<T>; 4]) -> [Lane<T>; 4] {
+    let (t0, t1, t2, t3) = (a.plus(c), a.minus(c), b.plus(d), b.minus(d).quarter::<BACK>());
+    [t0.plus(t2), t1.plus(t3), t0.minus(t2), t1.minus(t3)]
 }
 
-#[inline(always)]
-fn four_of<T: Real, const BACK: bool>([a, b, c, d]: [Pair<T>; 4]) -> [Pair<T>; 4] {
-    let (t0, t1, t2, t3) = (add(a, c), sub(a, c), add(b, d), quarter::<T, BACK>(sub(b, d)));
-    [add(t0, t2), add(t1, t3), sub(t0, t2), sub(t1, t3)]
-}
-
+/// Twiddles come before butterflies on the way back, after them forward.
 #[inline(always)]
 fn fours<T: Real, const BACK: bool>(pass: &Pass<T>, data: &mut [Lane<T>]) {
     let m = pass.m;
     if m == 1 {
         for x in data.as_chunks_mut::<4>().0 {
-            four::<T, BACK, false>(x.each_mut(), &[[T::ZERO; 2]; 3]);
+            *x = four::<T, BACK>(*x);
         }
         return;
     }
@@ -301,7 +284,13 @@ fn fours<T: Real, const BACK: bool>(pass: &Pass<T>, data: &mut [Lane<T>]) {
         let (ab, cd) = block.split_at_mut(2 * m);
         let ((a, b), (c, d)) = (ab.split_at_mut(m), cd.split_at_mut(m));
         for ((((x0, x1), x2), x3), w) in a.iter_mut().zip(b).zip(c).zip(d).zip(pass.twiddles.as_chunks::<3>().0) {
-            four::<T, BACK, true>([x0, x1, x2, x3], w);
+            if BACK {
+                let x = [*x0, x1.times::<true>(w[0]), x2.times::<true>(w[1]), x3.times::<true>(w[2])];
+                [*x0, *x1, *x2, *x3] = four::<T, true>(x);
+            } else {
+                let y = four::<T, false>([*x0, *x1, *x2, *x3]);
+                [*x0, *x1, *x2, *x3] = [y[0], y[1].times::<false>(w[0]), y[2].times::<false>(w[1]), y[3].times::<false>(w[2])];
+            }
         }
     }
 }
@@ -309,31 +298,23 @@ fn fours<T: Real, const BACK: bool>(pass: &Pass<T>, data: &mut [Lane<T>]) {
 #[inline(always)]
 fn threes<T: Real, const BACK: bool>(pass: &Pass<T>, data: &mut [Lane<T>]) {
     let m = pass.m;
-    let [half, height] = [pass.roots[1][0], pass.roots[1][1]];
+    // cos and -sin of 120°.
+    let [half, height] = pass.roots[1];
     for block in data.chunks_exact_mut(3 * m) {
         let (a, bc) = block.split_at_mut(m);
         let (b, c) = bc.split_at_mut(m);
         for (((x0, x1), x2), w) in a.iter_mut().zip(b).zip(c).zip(pass.twiddles.as_chunks::<2>().0) {
-            for l in 0..LANES {
-                let (a, mut b, mut c) = (x0.at(l), x1.at(l), x2.at(l));
-                if BACK {
-                    b = times::<T, true>(b, w[0]);
-                    c = times::<T, true>(c, w[1]);
-                }
-                let (sum, across) = (add(b, c), sub(b, c));
-                let middle = [a[0] + half * sum[0], a[1] + half * sum[1]];
-                // height is -sin 60°: forward i height (b - c) is -i sin 60° (b - c).
-                let across = [height * across[0], height * across[1]];
-                let side = if BACK { [across[1], -across[0]] } else { [-across[1], across[0]] };
-                let (mut y1, mut y2) = (add(middle, side), sub(middle, side));
-                if !BACK {
-                    y1 = times::<T, false>(y1, w[0]);
-                    y2 = times::<T, false>(y2, w[1]);
-                }
-                x0.put(l, add(a, sum));
-                x1.put(l, y1);
-                x2.put(l, y2);
+            let (mut b, mut c) = (*x1, *x2);
+            if BACK {
+                (b, c) = (b.times::<true>(w[0]), c.times::<true>(w[1]));
             }
+            let (sum, middle) = (b.plus(c), x0.plus(b.plus(c).scaled(half)));
+            let side = b.minus(c).turned(if BACK { -height } else { height });
+            let (mut y1, mut y2) = (middle.plus(side), middle.minus(side));
+            if !BACK {
+                (y1, y2) = (y1.times::<false>(w[0]), y2.times::<false>(w[1]));
+            }
+            [*x0, *x1, *x2] = [x0.plus(sum), y1, y2];
         }
     }
 }
@@ -343,18 +324,9 @@ fn twos<T: Real, const BACK: bool>(pass: &Pass<T>, data: &mut [Lane<T>]) {
     for block in data.chunks_exact_mut(2 * pass.m) {
         let (a, b) = block.split_at_mut(pass.m);
         for ((x0, x1), &w) in a.iter_mut().zip(b).zip(&pass.twiddles) {
-            for l in 0..LANES {
-                let (a, mut b) = (x0.at(l), x1.at(l));
-                if BACK {
-                    b = times::<T, true>(b, w);
-                }
-                let mut y1 = sub(a, b);
-                if !BACK {
-                    y1 = times::<T, false>(y1, w);
-                }
-                x0.put(l, add(a, b));
-                x1.put(l, y1);
-            }
+            let other = if BACK { x1.times::<true>(w) } else { *x1 };
+            let difference = x0.minus(other);
+            [*x0, *x1] = [x0.plus(other), if BACK { difference } else { difference.times::<false>(w) }];
         }
     }
 }
@@ -369,19 +341,16 @@ fn sums<T: Real, const BACK: bool>(pass: &Pass<T>, data: &mut [Lane<T>]) {
             for q in 0..radix {
                 x[q] = block[j + q * m];
                 if BACK && q > 0 {
-                    x[q].each(|v| times::<T, true>(v, w[q - 1]));
+                    x[q] = x[q].times::<true>(w[q - 1]);
                 }
             }
             for q in 0..radix {
                 let mut sum = x[0];
                 for (s, x) in x[..radix].iter().enumerate().skip(1) {
-                    let w = pass.roots[q * s % radix];
-                    for l in 0..LANES {
-                        sum.put(l, add(sum.at(l), times::<T, BACK>(x.at(l), w)));
-                    }
+                    sum = sum.plus(x.times::<BACK>(pass.roots[q * s % radix]));
                 }
                 if !BACK && q > 0 {
-                    sum.each(|v| times::<T, false>(v, w[q - 1]));
+                    sum = sum.times::<false>(w[q - 1]);
                 }
                 block[j + q * m] = sum;
             }
@@ -437,20 +406,12 @@ fn there_and_back<T: Real>(passes: &[Pass<T>], factors: &[T], data: &mut [Lane<T
         }
         if ends_on_four {
             for (x, k) in part.as_chunks_mut::<4>().0.iter_mut().zip(k.as_chunks::<4>().0) {
-                let [x0, x1, x2, x3] = x;
-                for l in 0..LANES {
-                    let y = four_of::<T, false>([x0.at(l), x1.at(l), x2.at(l), x3.at(l)]);
-                    let y = std::array::from_fn(|q| [-(k[q] * y[q][1]), k[q] * y[q][0]]);
-                    let y = four_of::<T, true>(y);
-                    x0.put(l, y[0]);
-                    x1.put(l, y[1]);
-                    x2.put(l, y[2]);
-                    x3.put(l, y[3]);
-                }
+                let y = four::<T, false>(*x);
+                *x = four::<T, true>([y[0].turned(k[0]), y[1].turned(k[1]), y[2].turned(k[2]), y[3].turned(k[3])]);
             }
         } else {
             for (x, &k) in part.iter_mut().zip(k) {
-                x.each(|[re, im]| [-(k * im), k * re]);
+                *x = x.turned(k);
             }
         }
         for pass in rest.iter().rev() {
@@ -467,20 +428,20 @@ fn there_and_back<T: Real>(passes: &[Pass<T>], factors: &[T], data: &mut [Lane<T
 fn convolve<T: Real, const BACK: bool>(smooth: &Smooth<T>, chirp: &Chirp<T>, data: &mut [Lane<T>]) {
     let (line, behind) = data.split_at_mut(chirp.turns.len());
     for (x, &w) in line.iter_mut().zip(&chirp.turns) {
-        x.each(|v| times::<T, BACK>(v, w));
+        *x = x.times::<BACK>(w);
     }
     behind.fill(Lane::ZERO);
     for pass in &smooth.passes {
         one_pass::<T, false>(pass, data);
     }
     for (x, &w) in data.iter_mut().zip(&chirp.spectrum) {
-        x.each(|v| times::<T, BACK>(v, w));
+        *x = x.times::<BACK>(w);
     }
     for pass in smooth.passes.iter().rev() {
         one_pass::<T, true>(pass, data);
     }
     for (x, &w) in data.iter_mut().zip(&chirp.turns) {
-        x.each(|v| times::<T, BACK>(v, w));
+        *x = x.times::<BACK>(w);
     }
 }
 
@@ -548,7 +509,7 @@ mod tests {
             dft.turned(&factors, &mut whole);
             dft.forward(&mut steps);
             for (x, &k) in steps.iter_mut().zip(&factors) {
-                x.each(|[re, im]| [-(k * im), k * re]);
+                *x = x.turned(k);
             }
             dft.inverse(&mut steps);
             assert!(whole[..n].iter().zip(&steps).all(|(a, b)| (a.re, a.im) == (b.re, b.im)), "{n}");

@@ -13,6 +13,9 @@ use crate::math::lanes::{Dft, LANES, Lane};
 /// Real lines that are transformed together.
 pub const TOGETHER: usize = 2 * LANES;
 
+/// Entries that lines are spread over at a time: they stay in the nearest cache until all lines are.
+const FEW: usize = 16;
+
 /// The exact derivative of periodic lines of one length: f̂_m becomes i k_m f̂_m, the Nyquist wave of an even length, whose
 /// derivative has no sign, becomes 0. Cheap to copy, shared freely between threads.
 #[derive(Clone)]
@@ -108,12 +111,9 @@ impl<T: Real> LineDerivative<T> {
         for first in (0..width).step_by(TOGETHER) {
             let here = first..(first + TOGETHER).min(width);
             // A large mean would cost digits of what varies: each line is measured from its first value.
-            let mut base = [T::ZERO; TOGETHER];
-            base[..here.len()].copy_from_slice(&from.map_or(&*to[0], |f| f[0])[here.clone()]);
+            let base = padded(&from.map_or(&*to[0], |f| f[0])[here.clone()]);
             for (i, entry) in entries[..n].iter_mut().enumerate() {
-                let row = &from.map_or(&*to[i], |f| f[i])[here.clone()];
-                let mut values = base;
-                values[..row.len()].copy_from_slice(row);
+                let values = padded(&from.map_or(&*to[i], |f| f[i])[here.clone()]);
                 for l in 0..LANES {
                     entry.re[l] = values[l] - base[l];
                     entry.im[l] = values[l + LANES] - base[l + LANES];
@@ -122,12 +122,23 @@ impl<T: Real> LineDerivative<T> {
             dft.turned(factors, entries);
             for (row, entry) in to.iter_mut().zip(&*entries) {
                 let row = &mut row[here.clone()];
-                let (re, im) = row.split_at_mut(LANES.min(row.len()));
-                re.copy_from_slice(&entry.re[..re.len()]);
-                im.copy_from_slice(&entry.im[..im.len()]);
+                match <&mut [T; TOGETHER]>::try_from(&mut *row) {
+                    Ok(row) => {
+                        for l in 0..LANES {
+                            (row[l], row[l + LANES]) = (entry.re[l], entry.im[l]);
+                        }
+                    }
+                    Err(_) => row.iter_mut().zip(entry.re.iter().chain(&entry.im)).for_each(|(v, e)| *v = *e),
+                }
             }
         }
     }
+}
+
+/// Values with zeros behind; whole stretches, which are most, go by a copy of known length.
+#[inline(always)]
+fn padded<T: Real>(values: &[T]) -> [T; TOGETHER] {
+    <&[T; TOGETHER]>::try_from(values).copied().unwrap_or_else(|_| std::array::from_fn(|l| values.get(l).copied().unwrap_or(T::ZERO)))
 }
 
 /// At most [`TOGETHER`] lines that follow each other, each measured from a base of its own, side by side.
@@ -136,16 +147,18 @@ pub(super) fn gather<T: Real, U: Real>(lines: &[T], base: impl Fn(&[T]) -> U, en
     if lines.len() < n * TOGETHER {
         entries.fill(Lane::ZERO);
     }
-    for (l, line) in lines.chunks_exact(n).enumerate() {
-        let base = base(line);
-        let value = |v: T| U::of(v.wide()) - base;
-        if l < LANES {
-            for (e, &v) in entries.iter_mut().zip(line) {
-                e.re[l] = value(v);
-            }
-        } else {
-            for (e, &v) in entries.iter_mut().zip(line) {
-                e.im[l - LANES] = value(v);
+    let mut bases = [U::ZERO; TOGETHER];
+    for (b, line) in bases.iter_mut().zip(lines.chunks_exact(n)) {
+        *b = base(line);
+    }
+    for (k, few) in entries.chunks_mut(FEW).enumerate() {
+        for (l, line) in lines.chunks_exact(n).enumerate() {
+            let values = few.iter_mut().zip(&line[k * FEW..]);
+            let value = |v: T| U::of(v.wide()) - bases[l];
+            if l < LANES {
+                values.for_each(|(e, &v)| e.re[l] = value(v));
+            } else {
+                values.for_each(|(e, &v)| e.im[l - LANES] = value(v));
             }
         }
     }
@@ -153,14 +166,13 @@ pub(super) fn gather<T: Real, U: Real>(lines: &[T], base: impl Fn(&[T]) -> U, en
 
 /// Lines side by side, one after the other; every value as `value` makes it.
 pub(super) fn scatter<T: Copy, U>(entries: &[Lane<T>], lines: &mut [U], value: impl Fn(T) -> U) {
-    for (l, line) in lines.chunks_exact_mut(entries.len()).enumerate() {
-        if l < LANES {
-            for (v, e) in line.iter_mut().zip(entries) {
-                *v = value(e.re[l]);
-            }
-        } else {
-            for (v, e) in line.iter_mut().zip(entries) {
-                *v = value(e.im[l - LANES]);
+    for (k, few) in entries.chunks(FEW).enumerate() {
+        for (l, line) in lines.chunks_exact_mut(entries.len()).enumerate() {
+            let values = line[k * FEW..].iter_mut().zip(few);
+            if l < LANES {
+                values.for_each(|(v, e)| *v = value(e.re[l]));
+            } else {
+                values.for_each(|(v, e)| *v = value(e.im[l - LANES]));
             }
         }
     }
