@@ -53,7 +53,8 @@ impl Needs {
         {
             return Ok(Choice::Folder(folder));
         }
-        let mut hint = format!("{} more memory (--memory)", size(self.memory - room.bytes));
+        let need = if room.scratch.is_some() { self.memory_with_scratch } else { self.memory };
+        let mut hint = format!("a --memory that is larger by {}", rounded_up(need - room.bytes));
         if room.scratch.is_none() {
             let (least, disk) = (size(self.memory_with_scratch), size(self.disk));
             hint += &format!(", or a folder for what does not fit, with which {least} of memory do and {disk} of disk are filled");
@@ -61,11 +62,10 @@ impl Needs {
         if !alternative.is_empty() {
             hint += &format!(", or {alternative}");
         }
-        let need = if room.scratch.is_some() { self.memory_with_scratch } else { self.memory };
         Err(Error::limit("cannot go on within the memory budget")
             .item(what)
             .expected(format!("at most {}", size(room.bytes)))
-            .found(format!("a need of {} ({})", size(need), rounded_up(need)))
+            .found(format!("a need of {}", size(need)))
             .hint(hint))
     }
 }

@@ -123,7 +123,7 @@ fn what_fits_nowhere_is_refused_with_figures_and_what_else_there_is() {
     };
     let told = refused(122_879, None);
     for part in [
-        "spectral derivatives along z: expected at most 120.0 KiB, found a need of 120.0 KiB (1MiB)",
+        "spectral derivatives along z: expected at most 120.0 KiB, found a need of 120.0 KiB; hint: a --memory that is larger by 1MiB",
         "a folder for what does not fit, with which 3.8 KiB of memory do and 120.0 KiB of disk are filled",
         "--derivative fd8, which derives waves up to k dx = 1.34 within 1 % and leaves out 35 % of the gradient variance",
         "run.json of such a run states the share of the snapshot itself",
