@@ -6,3 +6,4 @@ pub mod observe;
 pub mod pages;
 pub mod par;
 pub mod real;
+pub mod scratch;

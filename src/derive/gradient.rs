@@ -60,6 +60,9 @@ impl<'a, T: Real> Place<'a, T> {
         let stencil = &self.stencils[axis];
         let plane = |z: isize| self.block.plane(component, z);
         match axis {
+            0 if pick == Pick::Scheme && stencil.line().is_some() => {
+                out.copy_from_slice(self.part(self.ready.along(component, 0, self.z), self.y));
+            }
             0 => {
                 let whole = &plane(self.z as isize)[self.y * self.nx..(self.y + 1) * self.nx];
                 stencil.along(pick, whole, self.x.clone(), &mut buffers.row, out);
@@ -68,12 +71,15 @@ impl<'a, T: Real> Place<'a, T> {
                 let here = plane(self.z as isize);
                 let wrapped = |y: isize| self.part(here, y.rem_euclid(self.ny as isize) as usize);
                 match stencil.support(self.y, pick) {
-                    Support::Line => out.copy_from_slice(self.part(self.ready.along_y(component, self.z), self.y)),
+                    Support::Line => out.copy_from_slice(self.part(self.ready.along(component, 1, self.z), self.y)),
                     support => across(support, self.y, wrapped, out),
                 }
             }
             _ => match (stencil.support(self.z, pick), self.z_lines) {
-                (Support::Line, Some(lines)) => out.copy_from_slice(self.part(lines.plane(component, self.z), self.y)),
+                (Support::Line, Some(lines)) => {
+                    let plane = lines.plane(component, self.z).unwrap_or_else(|| self.ready.along(component, 2, self.z));
+                    out.copy_from_slice(self.part(plane, self.y));
+                }
                 (Support::Line, None) => panic!("transforms along z need the lines of the whole box"),
                 (support, _) => across(support, self.z, |z| self.part(plane(z), self.y), out),
             },

@@ -7,6 +7,7 @@ mod gradient;
 mod indicator;
 mod invariants;
 mod lines;
+mod pencils;
 
 use std::ops::Range;
 use std::sync::Arc;
@@ -23,8 +24,9 @@ use crate::space::slab::Block;
 use alignment::pair;
 use gradient::{Buffers, Gradient, Place};
 use indicator::{Sources, Wants};
-use lines::Pool;
-pub use lines::{Prepared, ZLines, z_lines, z_lines_bytes};
+use lines::{Lines, Pool};
+pub use lines::{Prepared, ZLines, z_lines, z_lines_bytes, z_lines_needs, z_lines_stay};
+pub use pencils::{Needs, Room};
 
 /// What is derived and how.
 #[derive(Debug, Clone, PartialEq)]
@@ -43,7 +45,8 @@ pub struct Plan {
     pub viscosity: Option<f64>,
     /// Magnetic diffusivity, as the viscosity.
     pub resistivity: Option<f64>,
-    /// Whether everything is computed by one path on every machine.
+    /// Whether everything is computed by one path on every machine. Nothing changes here: no row kernel and no transform depends
+    /// on the machine.
     pub portable: bool,
 }
 
@@ -191,19 +194,29 @@ impl<T: Real> Deriver<T> {
     /// # Errors
     /// `Output` when what was put aside in a file cannot be read again.
     pub fn prepare(&self, block: &Block<'_, T>, need: Need) -> Result<Prepared<T>> {
-        let Some(line) = self.stencils[1].line() else { return Ok(Prepared::nothing(&self.pool)) };
         let w = self.wants(need);
         let mut wanted = Vec::new();
+        // Of a vector the six that its curl takes, or all nine.
+        let vector = |curl: bool, full: bool| (0..3).map(move |c| std::array::from_fn(|a| if a == c { full } else { curl }));
         if self.fields.velocity {
-            wanted.extend([w.vorticity, w.full, w.vorticity]);
+            wanted.extend(vector(w.vorticity, w.full));
         }
         if self.fields.magnetic {
-            wanted.extend([w.current, w.current && (need.divergence || need.truncation), w.current]);
+            wanted.extend(vector(w.current, w.current && (need.divergence || need.truncation)));
         }
         if self.fields.buoyancy {
-            wanted.push(w.buoyancy_gradient);
+            wanted.push([w.buoyancy_gradient; 3]);
         }
-        Ok(Prepared::along_lines(line, block, &wanted, self.n[0], &self.pool))
+        let z_lines = self.z_lines.as_deref().filter(|z| !z.is_in_memory()).map(Lines::File);
+        let lines = [self.stencils[0].line().map(Lines::Rows), self.stencils[1].line().map(Lines::Columns), z_lines];
+        Prepared::new(&lines, block, &wanted, self.n[0], &self.pool)
+    }
+
+    /// Bytes that [`Deriver::prepare`] takes at most for a block of so many planes; those along z where they are in a file.
+    pub fn prepared_bytes(&self, planes: usize, z_in_file: bool) -> u64 {
+        let axes = [self.stencils[0].line().is_some(), self.stencils[1].line().is_some(), z_in_file && self.stencils[2].line().is_some()];
+        let arrays = self.fields.components() * axes.iter().filter(|a| **a).count() * planes;
+        (arrays * self.n[0] * self.n[1] * size_of::<T>()) as u64
     }
 
     /// Derives the cells `x` of row `y` of plane `z` of the block into `scratch.rows`.

@@ -6,8 +6,8 @@
 use std::ops::Range;
 
 use crate::base::real::Real;
-use crate::math::fft::{LineDerivative, LineScratch};
 use crate::math::fornberg::fornberg;
+use crate::math::lines::{LineDerivative, LineScratch};
 pub use crate::math::scheme::{HALF, Scheme, modified_wavenumber};
 
 /// Samples a stencil reads at most.

@@ -1,4 +1,4 @@
-//! Fourier transforms of periodic real fields, whole boxes and single lines; the only file that names the FFT library.
+//! Fourier transforms of periodic real fields, whole boxes; the only file that names the FFT library.
 //!
 //! Conventions, used by everything that touches a spectrum:
 //!
@@ -10,15 +10,12 @@
 //!   hold n_x/2 + 1 (rounded down) coefficients along x: f̂_{-m} is the conjugate of f̂_m.
 //! * Entry i along an axis of n samples is the signed wavenumber [`wavenumber`]`(i, n)`.
 
-use std::any::Any;
-use std::f64::consts::TAU;
 use std::sync::{Arc, Mutex};
 
 use realfft::{ComplexToReal, RealFftPlanner, RealToComplex};
-use rustfft::{Fft, FftNum, FftPlanner};
+use rustfft::{Fft, FftPlanner};
 
 use crate::base::par;
-use crate::base::real::Real;
 
 /// A double-precision complex number with fields `re` and `im`.
 pub type Complex = rustfft::num_complex::Complex<f64>;
@@ -257,208 +254,10 @@ fn columns(plan: &dyn Fft<f64>, rows: &mut [&mut [Complex]], scratch: &mut Scrat
     }
 }
 
-/// The exact derivative of periodic lines of one length: f̂_m becomes i k_m f̂_m, the Nyquist wave of an even length, whose
-/// derivative has no sign, becomes 0. Cheap to copy, shared freely between threads.
-#[derive(Clone)]
-pub struct LineDerivative<T>(Arc<dyn Lines<T>>);
-
-impl<T> std::fmt::Debug for LineDerivative<T> {
-    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
-        f.write_str("LineDerivative")
-    }
-}
-
-/// Buffers of one worker that transforms lines.
-#[derive(Debug, Clone)]
-pub struct LineScratch<T> {
-    real: Vec<T>,
-    lines: Vec<rustfft::num_complex::Complex<T>>,
-    work: Vec<rustfft::num_complex::Complex<T>>,
-}
-
-impl<T> Default for LineScratch<T> {
-    fn default() -> Self {
-        LineScratch { real: Vec::new(), lines: Vec::new(), work: Vec::new() }
-    }
-}
-
-impl<T: Real> LineDerivative<T> {
-    /// Lines of `n` samples `spacing` apart.
-    ///
-    /// # Panics
-    /// When `n` is 0.
-    pub fn new(n: usize, spacing: f64) -> Self {
-        // The library knows f32 and f64 by a trait of its own; the storage precision is one of the two.
-        let single: Box<dyn Any> = Box::new(LineDerivative::<f32>(Arc::new(Planned::<f32>::new(n, spacing))));
-        let either = single.downcast::<Self>().or_else(|_| {
-            let double: Box<dyn Any> = Box::new(LineDerivative::<f64>(Arc::new(Planned::<f64>::new(n, spacing))));
-            double.downcast::<Self>()
-        });
-        *either.expect("a storage precision is f32 or f64")
-    }
-
-    /// The derivative of one line.
-    ///
-    /// # Panics
-    /// When a slice has another length than planned.
-    pub fn row(&self, line: &[T], out: &mut [T], scratch: &mut LineScratch<T>) {
-        self.0.row(line, out, scratch);
-    }
-
-    /// The derivatives of all columns of a set of rows: sample i of every line lies in `from[i]`.
-    ///
-    /// # Panics
-    /// When the number of rows is not the length planned, or rows differ in length.
-    pub fn columns(&self, from: &[&[T]], to: &mut [&mut [T]], scratch: &mut LineScratch<T>) {
-        self.0.columns(Some(from), to, scratch);
-    }
-
-    /// As [`LineDerivative::columns`], in place.
-    ///
-    /// # Panics
-    /// As there.
-    pub fn columns_in_place(&self, rows: &mut [&mut [T]], scratch: &mut LineScratch<T>) {
-        self.0.columns(None, rows, scratch);
-    }
-}
-
-trait Lines<T>: Send + Sync {
-    fn row(&self, line: &[T], out: &mut [T], scratch: &mut LineScratch<T>);
-    fn columns(&self, from: Option<&[&[T]]>, to: &mut [&mut [T]], scratch: &mut LineScratch<T>);
-}
-
-struct Planned<T> {
-    real_forward: Arc<dyn RealToComplex<T>>,
-    real_inverse: Arc<dyn ComplexToReal<T>>,
-    forward: Arc<dyn Fft<T>>,
-    inverse: Arc<dyn Fft<T>>,
-    /// k_m / n, the factor of both transforms included.
-    factors: Vec<T>,
-    work_len: usize,
-}
-
-impl<T: Real + FftNum> Planned<T> {
-    fn new(n: usize, spacing: f64) -> Self {
-        assert!(n > 0, "expected lines of at least 1 sample");
-        let mut real = RealFftPlanner::new();
-        let mut complex = FftPlanner::new();
-        let (real_forward, real_inverse) = (real.plan_fft_forward(n), real.plan_fft_inverse(n));
-        let (forward, inverse) = (complex.plan_fft_forward(n), complex.plan_fft_inverse(n));
-        let factor = |i: usize| if 2 * i == n { 0.0 } else { TAU * wavenumber(i, n) as f64 / (n as f64 * spacing) / n as f64 };
-        let lens = [real_forward.get_scratch_len(), real_inverse.get_scratch_len()];
-        let work_len = [forward.get_inplace_scratch_len(), inverse.get_inplace_scratch_len()].into_iter().chain(lens).max().unwrap_or(0);
-        Planned { real_forward, real_inverse, forward, inverse, factors: (0..n).map(|i| T::of(factor(i))).collect(), work_len }
-    }
-}
-
-impl<T: Real + FftNum> Lines<T> for Planned<T> {
-    fn row(&self, line: &[T], out: &mut [T], scratch: &mut LineScratch<T>) {
-        let half = line.len() / 2 + 1;
-        let zero = rustfft::num_complex::Complex::new(T::ZERO, T::ZERO);
-        scratch.real.clear();
-        // A large mean would cost digits of what varies.
-        let base = line[0];
-        scratch.real.extend(line.iter().map(|&v| v - base));
-        scratch.lines.resize(half.max(scratch.lines.len()), zero);
-        scratch.work.resize(self.work_len.max(scratch.work.len()), zero);
-        let spectrum = &mut scratch.lines[..half];
-        self.real_forward.process_with_scratch(&mut scratch.real, spectrum, &mut scratch.work).expect("line lengths are those planned");
-        for (c, &k) in spectrum.iter_mut().zip(&self.factors) {
-            (c.re, c.im) = (-(k * c.im), k * c.re);
-        }
-        // The library refuses what a line that overflowed leaves here.
-        spectrum[0].im = T::ZERO;
-        if line.len().is_multiple_of(2) {
-            spectrum[half - 1].im = T::ZERO;
-        }
-        self.real_inverse.process_with_scratch(spectrum, out, &mut scratch.work).expect("line lengths are those planned");
-    }
-
-    /// Columns go in pairs, as real and imaginary part of one complex line: the derivative of f + ig is f' + ig'.
-    fn columns(&self, from: Option<&[&[T]]>, to: &mut [&mut [T]], scratch: &mut LineScratch<T>) {
-        let n = self.factors.len();
-        assert!(to.len() == n && from.is_none_or(|f| f.len() == n), "expected {n} rows, got {}", to.len());
-        // So many pairs together that each row gives and takes two cache lines.
-        let pairs = 64 / size_of::<T>();
-        let zero = rustfft::num_complex::Complex::new(T::ZERO, T::ZERO);
-        scratch.lines.resize((pairs * n).max(scratch.lines.len()), zero);
-        scratch.work.resize(self.work_len.max(scratch.work.len()), zero);
-        let width = to[0].len();
-        for first in (0..width).step_by(2 * pairs) {
-            let here = first..(first + 2 * pairs).min(width);
-            let count = here.len().div_ceil(2);
-            let lines = &mut scratch.lines[..count * n];
-            // As in a row: each line is measured from its first value.
-            scratch.real.clear();
-            scratch.real.extend_from_slice(&from.map_or(&*to[0], |f| f[0])[here.clone()]);
-            let (bases, last_base) = scratch.real.as_chunks::<2>();
-            for i in 0..n {
-                let row = &from.map_or(&*to[i], |f| f[i])[here.clone()];
-                let (both, single) = row.as_chunks::<2>();
-                for (b, &[re, im]) in both.iter().enumerate() {
-                    lines[b * n + i] = rustfft::num_complex::Complex::new(re - bases[b][0], im - bases[b][1]);
-                }
-                if let [last] = single {
-                    lines[(count - 1) * n + i] = rustfft::num_complex::Complex::new(*last - last_base[0], T::ZERO);
-                }
-            }
-            self.forward.process_with_scratch(lines, &mut scratch.work);
-            for line in lines.chunks_exact_mut(n) {
-                for (c, &k) in line.iter_mut().zip(&self.factors) {
-                    (c.re, c.im) = (-(k * c.im), k * c.re);
-                }
-            }
-            self.inverse.process_with_scratch(lines, &mut scratch.work);
-            for (i, row) in to.iter_mut().enumerate() {
-                let (both, single) = row[here.clone()].as_chunks_mut::<2>();
-                for (b, pair) in both.iter_mut().enumerate() {
-                    *pair = [lines[b * n + i].re, lines[b * n + i].im];
-                }
-                if let [last] = single {
-                    *last = lines[(count - 1) * n + i].re;
-                }
-            }
-        }
-    }
-}
-
-/// Power spectra of periodic lines of one length.
-#[derive(Clone)]
-pub struct LinePower {
-    plan: Arc<dyn RealToComplex<f64>>,
-}
-
-impl LinePower {
-    /// Lines of `n` samples.
-    ///
-    /// # Panics
-    /// When `n` is 0.
-    pub fn new(n: usize) -> LinePower {
-        assert!(n > 0, "expected lines of at least 1 sample");
-        LinePower { plan: RealFftPlanner::new().plan_fft_forward(n) }
-    }
-
-    /// Adds |f̂_m|² + |f̂_-m|² of a line to `power[m]`, m from 0 to n/2: all together the line's mean square. The line is used as
-    /// workspace.
-    ///
-    /// # Panics
-    /// When a slice has the wrong length.
-    pub fn add(&self, line: &mut [f64], power: &mut [f64], scratch: &mut LineScratch<f64>) {
-        let n = line.len();
-        assert_eq!(power.len(), n / 2 + 1, "wavenumbers");
-        scratch.lines.resize((n / 2 + 1).max(scratch.lines.len()), Complex::default());
-        scratch.work.resize(self.plan.get_scratch_len().max(scratch.work.len()), Complex::default());
-        let spectrum = &mut scratch.lines[..n / 2 + 1];
-        self.plan.process_with_scratch(line, spectrum, &mut scratch.work).expect("line lengths are those planned");
-        let scale = 1.0 / (n * n) as f64;
-        for (m, (p, c)) in power.iter_mut().zip(spectrum).enumerate() {
-            *p += if m == 0 || 2 * m == n { 1.0 } else { 2.0 } * scale * c.norm_sqr();
-        }
-    }
-}
-
 #[cfg(test)]
 mod tests {
+    use std::f64::consts::TAU;
+
     use super::*;
 
     /// Repeatable numbers in (-1, 1) without a generator: fractional parts of multiples of √2.

@@ -52,6 +52,14 @@ pub struct RunConfig {
     pub replace: bool,
 }
 
+impl RunConfig {
+    /// How snapshots will be worked on: what does not fit has a place in the run folder, if nowhere else.
+    pub(super) fn planned(&self) -> Execution {
+        let scratch = self.execution.scratch.clone().or_else(|| Some(self.output.clone()));
+        Execution { scratch, ..self.execution.clone() }
+    }
+}
+
 /// What came out.
 pub struct Outcome {
     /// The run folder.
@@ -87,7 +95,7 @@ fn run(config: &RunConfig, clock: &Clock<'_>) -> Result<Outcome> {
     let mut failed: Vec<(SnapshotRef, Error)> = Vec::new();
     let mut usable = Vec::new();
     for path in &config.snapshots {
-        match read::open(path, &config.input).and_then(|o| check(&o, &path.path, config)) {
+        match read::open(path, &config.input).and_then(|o| pool.run(move || check(&o, &path.path, config))) {
             Ok(name) => usable.push((path.clone(), name)),
             Err(e) => failed.push((path.clone(), e)),
         }
@@ -152,7 +160,7 @@ fn run(config: &RunConfig, clock: &Clock<'_>) -> Result<Outcome> {
 pub(super) fn check(opened: &Opened, path: &Path, config: &RunConfig) -> Result<String> {
     config.request.families_for(opened.source.fields()).map_err(|e| e.at(path))?;
     check_grid(opened.source.grid(), &opened.name, &config.request).map_err(|e| e.at(path))?;
-    memory::check(&opened.source, &opened.name, &config.request, &config.execution).map_err(|e| e.at(path))?;
+    memory::check(&opened.source, &opened.name, &config.request, &config.planned()).map_err(|e| e.at(path))?;
     Ok(opened.name.clone())
 }
 

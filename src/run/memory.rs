@@ -5,7 +5,7 @@ use std::ops::Range;
 use crate::base::budget::{rounded_up, size};
 use crate::base::error::{Error, Result};
 use crate::base::real::Real;
-use crate::derive::Deriver;
+use crate::derive::{Deriver, Plan, Room, filter, z_lines_needs, z_lines_stay};
 use crate::model::request::{Family, Request};
 use crate::model::source::{AnySource, PlaneSource};
 use crate::run::analysis::Execution;
@@ -21,8 +21,16 @@ const BLOCKS: u64 = 5;
 pub struct Arrangement {
     /// The blocks that planes are worked on in.
     pub ranges: Vec<Range<usize>>,
-    /// Bytes of the planes that are in memory at once.
+    /// Bytes of the planes that are in memory at once, of what is prepared from them, and of who reads them.
     pub blocks: u64,
+    /// Bytes that the filter may take.
+    pub filter_room: u64,
+    /// Bytes of filtered fields, where they stay in memory.
+    pub filtered: u64,
+    /// Bytes that derivatives along z may take.
+    pub lines_room: u64,
+    /// Bytes of them, where they stay in memory.
+    pub lines: u64,
     /// Whether all planes are kept when they are first read.
     pub keep_planes: bool,
     /// Bytes of all planes.
@@ -31,29 +39,37 @@ pub struct Arrangement {
     pub keep_indicators: bool,
     /// Bytes of these.
     pub indicators: u64,
+    /// Bytes of files for what stays in none.
+    pub disk: u64,
+    /// Bytes that are left for objects.
+    pub objects: u64,
 }
 
 /// Shares out a budget.
 ///
-/// Kept come first: planes that are costly to read, then indicators, then other planes. At least a quarter of what remains is left for
-/// objects.
+/// What the request cannot do without comes first, in memory or else in files (filtered fields, derivatives along z); then what saves
+/// most: planes that are costly to read, indicators, other planes. A quarter of what there is each time is left.
 ///
 /// # Errors
-/// `Limit` when not even the thinnest blocks fit.
+/// `Limit` when not even the thinnest blocks fit, or what cannot be done without.
 pub fn arrange<T: Real>(
     source: &dyn PlaneSource<T>,
+    plan: &Plan,
+    request: &Request,
     families: &[Family],
-    halo: usize,
-    wanted: Option<usize>,
-    memory: u64,
+    execution: &Execution,
     name: &str,
 ) -> Result<Arrangement> {
-    let grid = source.grid();
-    let planes = grid.cells().saturating_mul((source.fields().components() * size_of::<T>()) as u64);
-    let indicators = kept_bytes(grid, families, size_of::<T>());
-    let ranges = block_ranges(source, wanted, halo, memory / BLOCKS);
-    let thickest = ranges.iter().map(ExactSizeIterator::len).max().unwrap_or(0);
-    let blocks = alive(source, thickest, halo);
+    let (grid, fields, memory) = (source.grid(), source.fields(), execution.memory);
+    let deriver = Deriver::<T>::new(grid, fields, plan.clone());
+    let (halo, width) = (deriver.halo(), size_of::<T>());
+    let planes = grid.cells().saturating_mul((fields.components() * width) as u64);
+    let indicators = kept_bytes(grid, families, width);
+    let spectral = deriver.wanted_z_lines().is_some();
+    let cost =
+        |thickness: usize| alive(source, thickness, halo) + source.reader_bytes(thickness) + deriver.prepared_bytes(thickness, spectral);
+    let ranges = block_ranges(source, execution.block_planes, |thickness| cost(thickness) <= memory / BLOCKS);
+    let blocks = cost(ranges.iter().map(ExactSizeIterator::len).max().unwrap_or(0));
     if blocks > memory {
         return Err(Error::limit("cannot analyse the snapshot within the memory budget")
             .item(name)
@@ -65,29 +81,68 @@ pub fn arrange<T: Real>(
             )));
     }
     let mut left = memory - blocks;
+    let scratch = execution.scratch.as_deref();
+    let together = source.natural_planes().clamp(1, grid.n[2]);
+    let (mut filter_room, mut filtered, mut lines_room, mut lines) = (0, 0, 0, 0);
+    let mut disk = 0;
+    if request.filter.is_some() {
+        filter_room = left;
+        if filter::stays(grid, fields, width, together, &Room { bytes: left, scratch })? {
+            filtered = planes;
+            left -= planes;
+        } else {
+            disk += filter::filter_needs(grid, fields, width, together).disk;
+        }
+    }
+    if spectral {
+        lines_room = left;
+        if z_lines_stay(grid, fields, width, together, &Room { bytes: left, scratch })? {
+            lines = z_lines_needs(grid, fields, width, together).memory;
+            left -= lines;
+        } else {
+            disk += z_lines_needs(grid, fields, width, together).disk;
+        }
+    }
+    // A file takes memory of its own while it is made.
+    let crowded = (request.filter.is_some() && filtered == 0) || (spectral && lines == 0);
     let mut take = |bytes: u64| {
-        let fits = bytes <= left / 4 * 3;
+        let fits = !crowded && bytes <= left / 4 * 3;
         if fits {
             left -= bytes;
         }
         fits
     };
-    let held = source.held().is_some();
-    let costly = source.is_costly() && !held && take(planes);
+    let may_keep = source.held().is_none() && request.filter.is_none();
+    let costly = may_keep && source.is_costly() && take(planes);
     let keep_indicators = take(indicators);
-    let keep_planes = costly || (!held && !source.is_costly() && take(planes));
-    Ok(Arrangement { ranges, blocks, keep_planes, planes, keep_indicators, indicators })
+    let keep_planes = costly || (may_keep && !source.is_costly() && take(planes));
+    if keep_planes && spectral {
+        lines_room = lines;
+    }
+    Ok(Arrangement {
+        ranges,
+        blocks,
+        filter_room,
+        filtered,
+        lines_room,
+        lines,
+        keep_planes,
+        planes,
+        keep_indicators,
+        indicators,
+        disk,
+        objects: left,
+    })
 }
 
-/// Whether a snapshot can be analysed within the budget, as far as its headers tell.
+/// Whether a snapshot can be analysed within the budget, as far as its headers tell. Call inside the pool that will do it.
 ///
 /// # Errors
 /// `Limit` when it cannot; `Usage` when the request does not fit the fields.
 pub fn check(source: &AnySource, name: &str, request: &Request, execution: &Execution) -> Result<()> {
     fn typed<T: Real>(source: &dyn PlaneSource<T>, name: &str, request: &Request, execution: &Execution) -> Result<()> {
         let families = request.families_for(source.fields())?;
-        let halo = Deriver::<T>::new(source.grid(), source.fields(), derived(&families, request)).halo();
-        arrange(source, &families, halo, execution.block_planes, execution.memory, name).map(|_| ())
+        arrange(source, &derived(&families, request), request, &families, execution, name).map(|_| ())
     }
     match source {
         AnySource::F32(s) => typed(&**s, name, request, execution),

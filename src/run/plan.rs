@@ -5,9 +5,9 @@ use std::path::PathBuf;
 
 use crate::base::budget::size;
 use crate::base::error::{Error, Kind, Result};
+use crate::base::par::{self, Pool};
 use crate::base::real::Real;
-use crate::derive::filter::filter_bytes;
-use crate::derive::{Deriver, z_lines_bytes};
+use crate::derive::Deriver;
 use crate::model::request::{CutOuts, Extent, Family, Outputs, Request, Surfaces};
 use crate::model::snapshot::SnapshotRef;
 use crate::model::source::{AnySource, Fields, PlaneSource};
@@ -15,6 +15,7 @@ use crate::read::{self, Opened};
 use crate::run::analysis::Execution;
 use crate::run::catalogue::{RunConfig, check, none_usable, tell_apart};
 use crate::run::cutouts::HELD_BYTES;
+use crate::run::machine::{PROGRAM_BYTES, THREAD_BYTES};
 use crate::run::memory::{Arrangement, arrange};
 use crate::run::parts::{PARTS, Tables};
 use crate::run::ready::derived;
@@ -23,8 +24,6 @@ use crate::space::grid::Grid;
 
 /// Bytes that the patch and surface of an open object take a cell, roughly.
 const OBJECT_BYTES: u64 = 200;
-/// What the program and its libraries take before any plane is read, roughly.
-const PROGRAM_BYTES: u64 = 30 << 20;
 
 /// What a run would do.
 #[derive(Debug, Clone, PartialEq)]
@@ -87,6 +86,8 @@ pub struct PassPlan {
 /// An estimate of the memory one snapshot takes, in bytes.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct Memory {
+    /// Buffers of the threads.
+    pub threads: u64,
     /// Blocks of planes that are read ahead, worked on, or kept as halo.
     pub blocks: u64,
     /// The whole snapshot, where it is read once and kept.
@@ -97,6 +98,8 @@ pub struct Memory {
     pub filter: u64,
     /// Spectral derivatives along z.
     pub spectral: u64,
+    /// Files for what does not fit; not part of the memory.
+    pub disk: u64,
     /// Open objects and their surfaces, at most: one of the largest size that is measured, or the box.
     pub objects: u64,
     /// Planes of cut-outs that are held until they are written, at most.
@@ -106,7 +109,15 @@ pub struct Memory {
 impl Memory {
     /// All of it, with what the program itself takes.
     pub fn total(&self) -> u64 {
-        PROGRAM_BYTES + self.blocks + self.kept + self.indicators + self.filter + self.spectral + self.objects + self.cut_outs
+        PROGRAM_BYTES
+            + self.threads
+            + self.blocks
+            + self.kept
+            + self.indicators
+            + self.filter
+            + self.spectral
+            + self.objects
+            + self.cut_outs
     }
 }
 
@@ -137,9 +148,10 @@ pub fn plan(config: &RunConfig) -> Result<Plan> {
     let mut unusable: Vec<(SnapshotRef, Error)> = Vec::new();
     let mut usable = Vec::new();
     let mut opened = Vec::new();
+    let pool = Pool::new(config.threads)?;
     for snapshot in &config.snapshots {
         let one = read::open(snapshot, &config.input)
-            .and_then(|o| check(&o, &snapshot.path, config).and_then(|name| Ok((looked_at(&o, snapshot, config)?, name))));
+            .and_then(|o| pool.run(move || check(&o, &snapshot.path, config).and_then(|name| Ok((looked_at(&o, snapshot, config)?, name)))));
         match one {
             Ok((seen, name)) => {
                 usable.push((snapshot.clone(), name));
@@ -173,7 +185,7 @@ pub fn plan(config: &RunConfig) -> Result<Plan> {
 
 /// The plan of one snapshot; its name follows.
 fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Result<SnapshotPlan> {
-    let (request, execution, outputs) = (&config.request, &config.execution, &config.outputs);
+    let (request, execution, outputs) = (&config.request, &config.planned(), &config.outputs);
     let grid = opened.source.grid().clone();
     let fields = opened.source.fields();
     let families = request.families_for(fields).map_err(|e| e.at(&snapshot.path))?;
@@ -184,11 +196,13 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
     let plane = grid.plane_cells() as u64 * fields.components() as u64 * width as u64;
     let whole = plane * grid.n[2] as u64;
     let memory = Memory {
+        threads: THREAD_BYTES * par::threads() as u64,
         blocks: arrangement.blocks,
         kept: if arrangement.keep_planes { whole } else { 0 },
         indicators: if arrangement.keep_indicators { arrangement.indicators } else { 0 },
-        filter: request.filter.map_or(0, |_| filter_bytes(&grid, fields, width)),
-        spectral: if spectral { z_lines_bytes(&grid, fields, width) } else { 0 },
+        filter: arrangement.filtered,
+        spectral: arrangement.lines,
+        disk: arrangement.disk,
         objects: object_bytes(&grid, fields, request, &families, width),
         cut_outs: cut_out_bytes(&outputs.cut_outs, families.len(), &grid, (fields.components() + 1) * width),
     };
@@ -240,13 +254,14 @@ fn source<T: Real>(
     request: &Request,
     execution: &Execution,
 ) -> Result<Source> {
-    let deriver = Deriver::<T>::new(source.grid(), source.fields(), derived(families, request));
+    let plan = derived(families, request);
+    let deriver = Deriver::<T>::new(source.grid(), source.fields(), plan.clone());
     Ok(Source {
         precision: T::NAME,
         width: size_of::<T>(),
         halo: deriver.halo(),
         spectral: deriver.wanted_z_lines().is_some(),
-        arrangement: arrange(source, families, deriver.halo(), execution.block_planes, execution.memory, name)?,
+        arrangement: arrange(source, &plan, request, families, execution, name)?,
     })
 }
 
@@ -422,7 +437,7 @@ fn told(s: &SnapshotPlan) -> Vec<String> {
 fn parts(s: &SnapshotPlan) -> Vec<String> {
     let m = &s.memory;
     [
-        ("the program itself", PROGRAM_BYTES),
+        ("the program itself", PROGRAM_BYTES + m.threads),
         ("blocks of planes", m.blocks),
         ("the snapshot, kept", m.kept),
         ("indicators, kept", m.indicators),
@@ -430,6 +445,7 @@ fn parts(s: &SnapshotPlan) -> Vec<String> {
         ("derivatives along z", m.spectral),
         ("objects, at most", m.objects),
         ("cut-outs, at most", m.cut_outs),
+        ("on disk meanwhile", m.disk),
     ]
     .into_iter()
     .filter(|(_, n)| *n > 0)

@@ -1,12 +1,13 @@
 //! A checked source and its survey: what has to be known before levels are settled.
 
+use std::path::PathBuf;
 use std::sync::Arc;
 
 use crate::base::budget::Budget;
 use crate::base::error::{Error, Result};
 use crate::base::observe::Observe;
 use crate::base::real::Real;
-use crate::derive::{Deriver, Plan, ZLines, fewest_samples, filter, z_lines};
+use crate::derive::{Deriver, Plan, Room, ZLines, fewest_samples, filter, z_lines};
 use crate::model::request::{Family, Frame, Request};
 use crate::model::source::{Fields, MemorySource, PlaneSource};
 use crate::model::statistics::{Alignment, Scan, Survey};
@@ -63,6 +64,7 @@ pub(super) struct Ready<T> {
     budget: Budget,
     buffers: Buffers<T>,
     plan: Plan,
+    scratch: Option<PathBuf>,
     /// Derivatives along z of the whole box, where the scheme takes them line by line.
     z_lines: Option<Arc<ZLines<T>>>,
     /// Digest of what is stored, where something else is surveyed.
@@ -83,19 +85,28 @@ impl<T: Real> Ready<T> {
         let families = request.families_for(fields)?;
         check_grid(&grid, &snapshot.name, request)?;
         let plan = derived(&families, request);
-        let halo = Deriver::<T>::new(&grid, fields, plan.clone()).halo();
-        let arrangement = arrange(&*source, &families, halo, execution.block_planes, execution.memory, &snapshot.name)?;
-        let taken = arrangement.blocks
-            + if arrangement.keep_planes { arrangement.planes } else { 0 }
-            + if arrangement.keep_indicators { arrangement.indicators } else { 0 };
-        let budget = Budget::new(execution.memory - taken);
+        let arrangement = arrange(&*source, &plan, request, &families, execution, &snapshot.name)?;
+        let budget = Budget::new(arrangement.objects);
         let buffers = Buffers::default();
-        let mut ready = Ready { source, grid, fields, families, arrangement, budget, buffers, plan, z_lines: None, stored_digest: None };
+        let mut ready = Ready {
+            source,
+            grid,
+            fields,
+            families,
+            arrangement,
+            budget,
+            buffers,
+            plan,
+            scratch: execution.scratch.clone(),
+            z_lines: None,
+            stored_digest: None,
+        };
         if let Some(filter) = &request.filter {
             // Bad cells and the digest are those of what is stored.
             let scan = ready.scan(snapshot, observe)?;
             ready.stored_digest = Some(scan.digest);
-            ready.source = Box::new(filter::filtered(&mut *ready.source, filter, observe)?);
+            let room = Room { bytes: ready.arrangement.filter_room, scratch: execution.scratch.as_deref() };
+            ready.source = filter::filtered(&mut *ready.source, filter, &room, observe)?;
         }
         Ok(ready)
     }
@@ -162,7 +173,8 @@ pub(super) fn surveyed<T: Real>(
     let weight = weight(&ready.grid);
     let mut scan = ready.scan(snapshot, observe)?;
     if let Some(wanted) = ready.deriver([0.0; 3], None).wanted_z_lines() {
-        ready.z_lines = Some(Arc::new(z_lines(&mut *ready.source, &wanted, observe)?));
+        let room = Room { bytes: ready.arrangement.lines_room, scratch: ready.scratch.as_deref() };
+        ready.z_lines = Some(Arc::new(z_lines(&mut *ready.source, &wanted, &room, observe)?));
     }
     let frame = match request.frame {
         Frame::Box => whole::mean_velocity(&scan, weight, fields),

@@ -17,9 +17,8 @@ use crate::space::slab::{Batch, Block};
 const BLOCK_BYTES: usize = 6 << 20;
 
 /// The blocks of a pass: of the thickness asked for, else of a multiple of the file's natural depth near `BLOCK_BYTES`, or as thin as
-/// `most` bytes for all that is alive at once ([`alive`]) demand. The first blocks are thinner where the file does not mind, so that
-/// work begins before much is read.
-pub fn block_ranges<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>, halo: usize, most: u64) -> Vec<Range<usize>> {
+/// they must be to `fit`. The first blocks are thinner where the file does not mind, so that work begins before much is read.
+pub fn block_ranges<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>, fit: impl Fn(usize) -> bool) -> Vec<Range<usize>> {
     let n = source.grid().n[2];
     if let Some(k) = wanted {
         return cut(n, k.clamp(1, n), false);
@@ -28,7 +27,7 @@ pub fn block_ranges<T: Real>(source: &dyn PlaneSource<T>, wanted: Option<usize>,
     let fits = (BLOCK_BYTES / plane.max(1)).clamp(4, 64);
     let natural = source.natural_planes().max(1);
     let mut thickness = (fits.max(natural) / natural * natural).clamp(1, n);
-    while thickness > 1 && alive(source, thickness, halo) > most {
+    while thickness > 1 && !fit(thickness) {
         thickness = if thickness > natural { thickness - natural } else { thickness / 2 };
     }
     cut(n, thickness, natural == 1)

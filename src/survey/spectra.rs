@@ -4,7 +4,7 @@ use std::f64::consts::TAU;
 
 use crate::base::par;
 use crate::base::real::Real;
-use crate::math::fft::{LinePower, LineScratch};
+use crate::math::lines::{LinePower, LineScratch};
 use crate::math::scheme::{Scheme, modified_wavenumber};
 use crate::model::source::Fields;
 use crate::model::statistics::{GradientLoss, LineSpectra};
@@ -83,16 +83,15 @@ impl<T: Real> SpectraSum<T> {
                 let z = planes[i / self.components];
                 let plane = block.plane(i % self.components, z as isize);
                 let mut sum = vec![0.0; length];
-                let (mut line, mut scratch) = (Vec::new(), LineScratch::default());
+                let mut lines = Vec::new();
                 for at in (shift(z, *strides)..across).step_by(strides[0]) {
-                    line.clear();
                     if a == 0 {
-                        line.extend(plane[at * nx..(at + 1) * nx].iter().map(|v| v.wide()));
+                        lines.extend(plane[at * nx..(at + 1) * nx].iter().map(|v| v.wide()));
                     } else {
-                        line.extend(plane[at..].iter().step_by(nx).map(|v| v.wide()));
+                        lines.extend(plane[at..].iter().step_by(nx).map(|v| v.wide()));
                     }
-                    power.add(&mut line, &mut sum, &mut scratch);
                 }
+                power.add(&lines, &mut sum, &mut LineScratch::default());
                 sum
             });
             for (i, part) in parts.iter().enumerate() {
@@ -123,12 +122,11 @@ impl<T: Real> SpectraSum<T> {
                 let parts = par::map_range(groups * self.components, |i| {
                     let (component, group) = (&columns[i / groups], i % groups);
                     let mut sum = vec![0.0; nz / 2 + 1];
-                    let (mut line, mut scratch) = (Vec::new(), LineScratch::default());
+                    let mut together = Vec::new();
                     for at in group * GROUP..((group + 1) * GROUP).min(lines) {
-                        line.clear();
-                        line.extend(component[at..].iter().step_by(lines).map(|v| v.wide()));
-                        power.add(&mut line, &mut sum, &mut scratch);
+                        together.extend(component[at..].iter().step_by(lines).map(|v| v.wide()));
                     }
+                    power.add(&together, &mut sum, &mut LineScratch::default());
                     sum
                 });
                 for (i, part) in parts.iter().enumerate() {

@@ -2,7 +2,7 @@
 
 use ropewalk::base::observe::Silent;
 use ropewalk::base::real::Real;
-use ropewalk::derive::{Deriver, Plan, Scratch, z_lines};
+use ropewalk::derive::{Deriver, Plan, Room, Scratch, z_lines};
 use ropewalk::model::request::{Indicator, Scheme};
 use ropewalk::model::rows::{Need, Rows};
 use ropewalk::model::source::{Fields, MemorySource, PlaneSource};
@@ -12,6 +12,9 @@ use ropewalk::space::grid::Grid;
 pub type Vector = [f64; 3];
 
 pub const TAU: f64 = std::f64::consts::TAU;
+
+/// Room for everything, in memory.
+pub const ALL_ROOM: Room<'static> = Room { bytes: u64::MAX, scratch: None };
 
 pub fn plan(scheme: Scheme, indicators: &[Indicator]) -> Plan {
     Plan {
@@ -47,18 +50,24 @@ pub fn sampled<T: Real, const C: usize>(grid: &Grid, fields: Fields, f: impl Fn(
 }
 
 /// Derives every row in blocks of `planes` and gives it to `each` with its y and z.
-pub fn each_row<T: Real>(
+pub fn each_row<T: Real>(source: &mut MemorySource<T>, plan: &Plan, need: Need, planes: usize, each: impl FnMut(usize, usize, &Rows<T>)) {
+    each_row_within(source, plan, need, planes, &ALL_ROOM, each);
+}
+
+/// The same with derivatives along z kept where there is room.
+pub fn each_row_within<T: Real>(
     source: &mut MemorySource<T>,
     plan: &Plan,
     need: Need,
     planes: usize,
+    room: &Room<'_>,
     mut each: impl FnMut(usize, usize, &Rows<T>),
 ) {
     let grid = source.grid().clone();
     let deriver = Deriver::<T>::new(&grid, source.fields(), plan.clone());
-    let lines = deriver.wanted_z_lines().map(|wanted| z_lines(source, &wanted, &Silent).unwrap().into());
+    let lines = deriver.wanted_z_lines().map(|wanted| z_lines(source, &wanted, room, &Silent).unwrap().into());
     let deriver = deriver.with_z_lines(lines);
-    let ranges = block_ranges(&*source, Some(planes), 0, u64::MAX);
+    let ranges = block_ranges(&*source, Some(planes), |_| true);
     let mut scratch = Scratch::default();
     let run = |block: &ropewalk::space::slab::Block<'_, T>| {
         let ready = deriver.prepare(block, need)?;

@@ -6,4 +6,5 @@ mod fields;
 mod filter;
 mod lines;
 mod loss;
+mod room;
 mod schemes;

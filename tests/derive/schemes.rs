@@ -10,7 +10,7 @@ use ropewalk::model::source::Fields;
 use ropewalk::run::stream::{Buffers, block_ranges, blocks};
 use ropewalk::space::grid::Grid;
 
-use crate::common::{TAU, Vector, close, each_row, plan, positions, sampled, whole};
+use crate::common::{ALL_ROOM, TAU, Vector, close, each_row, plan, positions, sampled, whole};
 
 const ALL: [Scheme; 6] = [Scheme::Fd2, Scheme::Fd4, Scheme::Fd6, Scheme::Fd8, Scheme::Opt, Scheme::Spectral];
 
@@ -113,9 +113,9 @@ fn parts_of_rows_are_the_same_bits() {
         for scheme in ALL {
             let need = Need { strain: true, truncation: true, divergence: true, ..Need::default() };
             let deriver = Deriver::<f32>::new(&grid, Fields::VELOCITY, plan(scheme, &[I::Swirling]));
-            let lines = deriver.wanted_z_lines().map(|wanted| z_lines(&mut source, &wanted, &Silent).unwrap().into());
+            let lines = deriver.wanted_z_lines().map(|wanted| z_lines(&mut source, &wanted, &ALL_ROOM, &Silent).unwrap().into());
             let deriver = deriver.with_z_lines(lines);
-            let ranges = block_ranges(&source, Some(4), 0, u64::MAX);
+            let ranges = block_ranges(&source, Some(4), |_| true);
             let (mut a, mut b) = (Scratch::default(), Scratch::default());
             let check = |block: &ropewalk::space::slab::Block<'_, f32>| {
                 let ready = deriver.prepare(block, need)?;
@@ -187,4 +187,25 @@ fn where_a_scheme_gives_way_is_said() {
 fn memory_for_z_lines_is_known_beforehand() {
     let grid = Grid::periodic([1024; 3], [1.0; 3]);
     assert_eq!(z_lines_bytes(&grid, Fields::VELOCITY, 4), 12 << 30);
+}
+
+/// One path serves every machine already: asking for it changes no bit.
+#[test]
+fn portable_plans_derive_the_same_bits() {
+    let grid = Grid::periodic([18, 15, 20], [TAU, 1.0, 2.0]);
+    let mut source = sampled::<f32, 3>(&grid, Fields::VELOCITY, rough);
+    for scheme in ALL {
+        let [usual, portable] = [false, true].map(|portable| {
+            let need = Need { strain: true, divergence: true, truncation: true, ..Need::default() };
+            let plan = ropewalk::derive::Plan { portable, ..plan(scheme, &[I::Lambda2]) };
+            let mut bits: Vec<u32> = Vec::new();
+            each_row(&mut source, &plan, need, 6, |_, _, r| {
+                for row in [&r.w2, &r.strain2, &r.div_u, &r.div_u_miss, &r.indicators[0]] {
+                    bits.extend(row.iter().map(|v| v.to_bits()));
+                }
+            });
+            bits
+        });
+        assert!(usual == portable, "{scheme:?}");
+    }
 }
