@@ -5,7 +5,7 @@ use std::path::PathBuf;
 use std::sync::Arc;
 
 use ropewalk::base::par;
-use ropewalk::derive::{Deriver, Plan, Scratch};
+use ropewalk::derive::{Ahead, Deriver, Plan, Scratch};
 use ropewalk::detect::{ClosedTile, Criterion, TileSweep};
 use ropewalk::math::diff::Scheme;
 use ropewalk::math::stats::Scale;
@@ -145,6 +145,7 @@ impl Work<'_> {
             let mut scratch = Scratch::default();
             let mut state = begin(y0, y1, z0);
             for z in z0..z1 {
+                scratch.expect(Ahead { rows: y0..y1, planes: z..z + 1 });
                 for y in y0..y1 {
                     self.deriver.row(&block, &ready, z, y, 0..nx, self.need, &mut scratch);
                     each(&mut state, &scratch, y, z);

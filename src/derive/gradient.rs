@@ -3,6 +3,7 @@
 use std::ops::Range;
 
 use crate::base::real::Real;
+use crate::derive::group::Groups;
 use crate::derive::lines::{Prepared, ZLines};
 use crate::math::diff::{AxisStencil, HALF, Pick, RowScratch, Support, WIDTH, difference, weighted};
 use crate::space::slab::Block;
@@ -22,11 +23,12 @@ impl<T> Default for Gradient<T> {
 pub struct Buffers<T> {
     row: RowScratch<T>,
     other: Vec<T>,
+    pub groups: Groups<T>,
 }
 
 impl<T: Real> Default for Buffers<T> {
     fn default() -> Self {
-        Buffers { row: RowScratch::default(), other: Vec::new() }
+        Buffers { row: RowScratch::default(), other: Vec::new(), groups: Groups::default() }
     }
 }
 
@@ -59,6 +61,8 @@ impl<'a, T: Real> Place<'a, T> {
         out.resize(self.x.len(), T::ZERO);
         let stencil = &self.stencils[axis];
         let plane = |z: isize| self.block.plane(component, z);
+        let whole = self.x.len() == self.nx && pick == Pick::Scheme;
+        let at = (component, self.y, self.z);
         match axis {
             0 if pick == Pick::Scheme && stencil.line().is_some() => {
                 out.copy_from_slice(self.part(self.ready.along(component, 0, self.z), self.y));
@@ -70,11 +74,15 @@ impl<'a, T: Real> Place<'a, T> {
             1 => {
                 let here = plane(self.z as isize);
                 let wrapped = |y: isize| self.part(here, y.rem_euclid(self.ny as isize) as usize);
+                if whole && buffers.groups.along_y(at, stencil, wrapped, out) {
+                    return;
+                }
                 match stencil.support(self.y, pick) {
                     Support::Line => out.copy_from_slice(self.part(self.ready.along(component, 1, self.z), self.y)),
                     support => across(support, self.y, wrapped, out),
                 }
             }
+            _ if whole && buffers.groups.along_z(at, stencil, |z| self.part(plane(z), self.y), out) => {}
             _ => match (stencil.support(self.z, pick), self.z_lines) {
                 (Support::Line, Some(lines)) => {
                     let plane = lines.plane(component, self.z).unwrap_or_else(|| self.ready.along(component, 2, self.z));

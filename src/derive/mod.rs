@@ -4,6 +4,7 @@ mod alignment;
 mod criteria;
 pub mod filter;
 mod gradient;
+mod group;
 mod indicator;
 mod invariants;
 mod lines;
@@ -22,6 +23,8 @@ use crate::space::grid::Grid;
 use crate::space::slab::Block;
 
 use alignment::pair;
+pub use group::Ahead;
+
 use gradient::{Buffers, Gradient, Place};
 use indicator::{Sources, Wants};
 use lines::{Lines, Pool};
@@ -97,6 +100,13 @@ impl<T: Real> Default for Scratch<T> {
             buffers: Buffers::default(),
             rows: Rows::default(),
         }
+    }
+}
+
+impl<T: Real> Scratch<T> {
+    /// What will be asked of a block from now on; asked for in this order, it is made faster.
+    pub fn expect(&mut self, ahead: Ahead) {
+        self.buffers.groups.expect(ahead);
     }
 }
 

@@ -133,14 +133,14 @@ impl Contour {
         for &[a, b] in &self.edges {
             let d = self.vector(a, b);
             let d = [d[0] * spacing[0], d[1] * spacing[1]];
-            perimeter += d[0].hypot(d[1]);
+            perimeter += libm::hypot(d[0], d[1]);
             outgoing[a as usize] = Some(d);
             incoming[b as usize] = Some(d);
         }
         let (mut turning, mut open_ends) = (0.0, 0);
         for (i, o) in incoming.iter().zip(&outgoing) {
             match (i, o) {
-                (Some(i), Some(o)) => turning += (i[0] * o[1] - i[1] * o[0]).atan2(i[0] * o[0] + i[1] * o[1]),
+                (Some(i), Some(o)) => turning += libm::atan2(i[0] * o[1] - i[1] * o[0], i[0] * o[0] + i[1] * o[1]),
                 _ => open_ends += 1,
             }
         }
@@ -179,7 +179,7 @@ impl Contour {
                 place = [place[0] + d[0], place[1] + d[1]];
                 let here = points.len() as u32 - 1;
                 let begin: [f64; 2] = points[first as usize];
-                if to as usize == start && (place[0] - begin[0]).hypot(place[1] - begin[1]) < 0.5 {
+                if to as usize == start && libm::hypot(place[0] - begin[0], place[1] - begin[1]) < 0.5 {
                     edges.push([here, first]);
                     break;
                 }
@@ -207,7 +207,7 @@ impl Contour {
             }
         }
         let unit = |v: [f64; 2]| {
-            let l = v[0].hypot(v[1]);
+            let l = libm::hypot(v[0], v[1]);
             if l > 0.0 { [v[0] / l, v[1] / l] } else { [0.0; 2] }
         };
         source.iter().map(|&s| unit(sums[s as usize])).collect()

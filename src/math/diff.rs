@@ -322,6 +322,45 @@ pub fn difference<T: Real>(out: &mut [T], minus: [&[T]; HALF], plus: [&[T]; HALF
     }
 }
 
+/// Rows that four neighbouring ones read at most.
+pub const FOUR: usize = 4 + 2 * HALF;
+
+/// [`difference`] of four neighbouring rows at once, with the same bits: `rows[HALF + k]` stands at the place of the k-th.
+///
+/// # Panics
+/// When `terms` is 0 or above [`HALF`], or a slice is too short.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
+pub fn four<T: Real>(a: &mut [T], b: &mut [T], c: &mut [T], d: &mut [T], rows: [&[T]; FOUR], w: &[T; HALF], terms: usize) {
+    match terms {
+        1 => four_of::<T, 1>(a, b, c, d, rows, w),
+        2 => four_of::<T, 2>(a, b, c, d, rows, w),
+        3 => four_of::<T, 3>(a, b, c, d, rows, w),
+        4 => four_of::<T, 4>(a, b, c, d, rows, w),
+        _ => panic!("expected 1 to {HALF} terms, got {terms}"),
+    }
+}
+
+#[inline(always)]
+fn four_of<T: Real, const TERMS: usize>(a: &mut [T], b: &mut [T], c: &mut [T], d: &mut [T], rows: [&[T]; FOUR], w: &[T; HALF]) {
+    let n = a.len();
+    let (b, c, d) = (&mut b[..n], &mut c[..n], &mut d[..n]);
+    let rows = rows.map(|s| &s[..n]);
+    let [w0, w1, w2, w3] = *w;
+    for i in 0..n {
+        let v: [T; FOUR] = std::array::from_fn(|k| rows[k][i]);
+        let one = |k: usize| {
+            let term = |w: T, t: usize| w * (v[HALF + k + t] - v[HALF + k - t]);
+            match TERMS {
+                1 => term(w0, 1),
+                2 => term(w0, 1) + term(w1, 2),
+                3 => (term(w0, 1) + term(w1, 2)) + term(w2, 3),
+                _ => (term(w0, 1) + term(w1, 2)) + (term(w2, 3) + term(w3, 4)),
+            }
+        };
+        (a[i], b[i], c[i], d[i]) = (one(0), one(1), one(2), one(3));
+    }
+}
+
 /// `out = sum_k w[k] rows[k]` over the first `span` rows, element by element.
 ///
 /// # Panics

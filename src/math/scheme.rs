@@ -117,7 +117,7 @@ pub fn modified_wavenumber(scheme: Scheme, k_dx: f64) -> f64 {
 }
 
 fn of_weights(weights: &[f64; HALF], k_dx: f64) -> f64 {
-    2.0 * weights.iter().enumerate().map(|(i, w)| w * ((i + 1) as f64 * k_dx).sin()).sum::<f64>()
+    2.0 * weights.iter().enumerate().map(|(i, w)| w * libm::sin((i + 1) as f64 * k_dx)).sum::<f64>()
 }
 
 #[cfg(test)]

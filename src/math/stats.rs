@@ -21,7 +21,11 @@ pub struct Scale {
 impl Scale {
     /// A scale for values of magnitude at most `bound` (with a factor 4 to spare); 1 where the bound is 0.
     pub fn for_bound(bound: f64) -> Scale {
-        let exponent = if bound > 0.0 && bound.is_finite() { bound.log2().ceil() as i32 } else { 0 };
+        let exponent = match libm::frexp(bound) {
+            _ if !(bound > 0.0 && bound.is_finite()) => 0,
+            (half, e) if half == 0.5 => e - 1,
+            (_, e) => e,
+        };
         let e = (60 - exponent).clamp(-1000, 1000);
         Scale { up: 2f64.powi(e), down: 2f64.powi(-e) }
     }

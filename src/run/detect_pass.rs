@@ -6,7 +6,7 @@ use crate::base::budget::Reserved;
 use crate::base::error::Result;
 use crate::base::par;
 use crate::base::real::Real;
-use crate::derive::{Deriver, Scratch};
+use crate::derive::{Ahead, Deriver, Scratch};
 use crate::detect::{ClosedTile, Criterion, Labeller, TileSweep};
 use crate::model::object::Detected;
 use crate::model::rows::Need;
@@ -89,6 +89,7 @@ impl<T: Real> Pass<'_, T> {
                         let mut scratch = Scratch::default();
                         let mut sweeps = sweeps(rows_y, &block.z);
                         for z in block.z.clone() {
+                            scratch.expect(Ahead { rows: rows_y.clone(), planes: z..z + 1 });
                             for y in rows_y.clone() {
                                 deriver.row(block, &ready, z, y, 0..grid.n[0], Need::default(), &mut scratch);
                                 grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);

@@ -40,6 +40,12 @@ impl<T: Real> Pass<'_, T> {
     }
 }
 
+/// Planes in the groups that rows are derived in.
+pub(super) fn groups(z: &Range<usize>) -> Vec<Range<usize>> {
+    const TOGETHER: usize = 4;
+    z.clone().step_by(TOGETHER).map(|k| k..(k + TOGETHER).min(z.end)).collect()
+}
+
 /// The stretches of a row that cover what is wanted of it, nearby ones joined: deriving a few cells more is cheaper than
 /// beginning anew.
 pub(super) fn joined(row: &[Wanted]) -> Vec<Range<usize>> {

@@ -150,8 +150,9 @@ pub fn plan(config: &RunConfig) -> Result<Plan> {
     let mut opened = Vec::new();
     let pool = Pool::new(config.threads)?;
     for snapshot in &config.snapshots {
-        let one = read::open(snapshot, &config.input)
-            .and_then(|o| pool.run(move || check(&o, &snapshot.path, config).and_then(|name| Ok((looked_at(&o, snapshot, config)?, name)))));
+        let one = read::open(snapshot, &config.input).and_then(|o| {
+            pool.run(move || check(&o, &snapshot.path, config).and_then(|name| Ok((looked_at(&o, snapshot, config)?, name))))
+        });
         match one {
             Ok((seen, name)) => {
                 usable.push((snapshot.clone(), name));

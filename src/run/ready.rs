@@ -2,6 +2,7 @@
 
 use std::path::PathBuf;
 use std::sync::Arc;
+use std::time::Instant;
 
 use crate::base::budget::Budget;
 use crate::base::error::{Error, Result};
@@ -113,13 +114,29 @@ impl<T: Real> Ready<T> {
 
     /// Reads everything once, and keeps the planes where that is arranged.
     fn scan(&mut self, snapshot: &Snapshot, observe: &dyn Observe) -> Result<Scan> {
-        let keep = self.arrangement.keep_planes;
+        let keep = self.arrangement.keep_planes && (self.source.is_costly() || self.is_slow()?);
         let (scan, planes) = self.pass(observe).scan(keep)?;
         reject_bad_cells(&scan, snapshot)?;
         if let Some(planes) = planes {
             self.source = Box::new(MemorySource::new(self.grid.clone(), self.fields, planes));
         }
         Ok(scan)
+    }
+
+    /// Whether reading takes longer than memory of our own would: what the system has in its cache is read again for less.
+    fn is_slow(&mut self) -> Result<bool> {
+        const BYTES_PER_SECOND: f64 = 1.5e9;
+        if self.source.held().is_some() {
+            return Ok(false);
+        }
+        let planes = self.arrangement.ranges.last().map_or(0, ExactSizeIterator::len);
+        let cells = planes * self.grid.plane_cells();
+        let mut values = vec![vec![T::ZERO; cells]; self.fields.components()];
+        let mut slices: Vec<&mut [T]> = values.iter_mut().map(Vec::as_mut_slice).collect();
+        let began = Instant::now();
+        self.source.read(self.grid.n[2] - planes, self.grid.n[2], &mut slices)?;
+        let bytes = (cells * slices.len() * size_of::<T>()) as f64;
+        Ok(began.elapsed().as_secs_f64() * BYTES_PER_SECOND > bytes)
     }
 
     /// What derives rows from its planes.

@@ -7,13 +7,13 @@ use crate::base::error::Result;
 use crate::base::pages::Pages;
 use crate::base::par;
 use crate::base::real::Real;
-use crate::derive::{Deriver, Scratch};
+use crate::derive::{Ahead, Deriver, Scratch};
 use crate::math::stats::Quantiles;
 use crate::model::request::{Family, Level};
 use crate::model::rows::Need;
 use crate::model::statistics::{Alignment, Scan, Survey};
 use crate::run::kept::Kept;
-use crate::run::passes::Pass;
+use crate::run::passes::{Pass, groups};
 use crate::run::stream::{self, blocks};
 use crate::space::slab::Block;
 use crate::survey::scan::{self, ScanSum};
@@ -97,36 +97,34 @@ impl<T: Real> Pass<'_, T> {
                 let parts = par::map_owned(places, |t, mut places| {
                     let mut counts = take(&quantiles).unwrap_or_else(|| wanted.iter().map(|w| w.then(Quantiles::default)).collect());
                     let mut scratch = Scratch::default();
-                    let mut places = places.iter_mut();
-                    let per_plane: Vec<(Survey, Alignment)> = block
-                        .z
-                        .clone()
-                        .map(|z| {
-                            let mut part = (moments::empty(families, companions), Alignment::default());
-                            for y in tiles[t].clone() {
-                                let sampled = y % moments::SAMPLE_ROWS == 0;
-                                let need = Need { truncation: sampled, ..every };
-                                deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);
-                                grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
-                                let rows = &scratch.rows;
-                                moments::add_row(&mut part.0, rows, sampled, deriver.inner(y, z));
-                                if alignment {
-                                    box_alignment::add_row(&mut part.1, rows);
-                                }
-                                for (q, row) in counts.iter_mut().zip(&rows.indicators) {
-                                    match (q, rows.weights.as_slice()) {
-                                        (None, _) => {}
-                                        (Some(q), []) => q.add(row),
-                                        (Some(q), weights) => q.add_weighted(row, weights),
-                                    }
-                                }
-                                if let Some(row) = places.next() {
-                                    row.iter_mut().for_each(|(family, to)| to.copy_from_slice(&rows.indicators[*family]));
+                    let mut per_plane: Vec<(Survey, Alignment)> =
+                        block.z.clone().map(|_| (moments::empty(families, companions), Alignment::default())).collect();
+                    for planes in groups(&block.z) {
+                        scratch.expect(Ahead { rows: tiles[t].clone(), planes: planes.clone() });
+                        for (y, z) in tiles[t].clone().flat_map(|y| planes.clone().map(move |z| (y, z))) {
+                            let part = &mut per_plane[z - block.z.start];
+                            let sampled = y % moments::SAMPLE_ROWS == 0;
+                            let need = Need { truncation: sampled, ..every };
+                            deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);
+                            grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
+                            let rows = &scratch.rows;
+                            moments::add_row(&mut part.0, rows, sampled, deriver.inner(y, z));
+                            if alignment {
+                                box_alignment::add_row(&mut part.1, rows);
+                            }
+                            for (q, row) in counts.iter_mut().zip(&rows.indicators) {
+                                match (q, rows.weights.as_slice()) {
+                                    (None, _) => {}
+                                    (Some(q), []) => q.add(row),
+                                    (Some(q), weights) => q.add_weighted(row, weights),
                                 }
                             }
-                            part
-                        })
-                        .collect();
+                            let place = (z - block.z.start) * tiles[t].len() + y - tiles[t].start;
+                            if let Some(row) = places.get_mut(place) {
+                                row.iter_mut().for_each(|(family, to)| to.copy_from_slice(&rows.indicators[*family]));
+                            }
+                        }
+                    }
                     give(&quantiles, counts);
                     per_plane
                 });

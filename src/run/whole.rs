@@ -94,7 +94,7 @@ pub fn kolmogorov(survey: &Survey, fields: Fields, request: &Request) -> Option<
         Some(2.0 * nu * survey.velocity.strain2 / n + ohmic)
     };
     let epsilon = request.dissipation.or_else(from_gradients)?;
-    (epsilon > 0.0 && nu > 0.0).then(|| (nu.powi(3) / epsilon).powf(0.25))
+    (epsilon > 0.0 && nu > 0.0).then(|| (nu.powi(3) / epsilon).sqrt().sqrt())
 }
 
 /// The viscosity that integrals of 2ν S:S are made with: as given, else, without a magnetic field, the effective one ε/(2⟨S:S⟩) of the
