@@ -255,32 +255,100 @@ mod tests {
         MemorySource::new(grid, fields, (0..3).map(|c| (0..cells).map(|i| (i / p * 10 + c) as f64).collect()).collect())
     }
 
+    /// A source that has to be read, and counts how often each plane is.
+    struct Read {
+        inner: MemorySource<f64>,
+        costly: bool,
+        natural: usize,
+        counts: Vec<usize>,
+    }
+
+    impl PlaneSource<f64> for Read {
+        fn grid(&self) -> &Grid {
+            self.inner.grid()
+        }
+
+        fn fields(&self) -> Fields {
+            self.inner.fields()
+        }
+
+        fn read(&mut self, z0: usize, z1: usize, out: &mut [&mut [f64]]) -> Result<()> {
+            self.counts[z0..z1].iter_mut().for_each(|c| *c += 1);
+            self.inner.read(z0, z1, out)
+        }
+
+        fn natural_planes(&self) -> usize {
+            self.natural
+        }
+
+        fn is_costly(&self) -> bool {
+            self.costly
+        }
+    }
+
+    fn check(s: &mut dyn PlaneSource<f64>, ranges: &[Range<usize>], periodic: bool) {
+        let n = s.grid().n[2];
+        let stencil = AxisStencil::<f64>::new(Scheme::Fd8, n, 1.0, periodic);
+        let reach = |z: Range<usize>| z.map(|k| stencil.reach(k)).fold((isize::MAX, isize::MIN), |a, b| (a.0.min(b.0), a.1.max(b.1)));
+        let mut seen = Vec::new();
+        blocks(s, ranges, HALF, reach, &Buffers::default(), &Silent, |block| {
+            for z in block.z.clone() {
+                let (low, high) = stencil.reach(z);
+                for k in low..high {
+                    let want = k.rem_euclid(n as isize) * 10;
+                    for c in 0..3 {
+                        assert_eq!(block.plane(c, k)[5], want as f64 + c as f64);
+                    }
+                }
+                seen.push(z);
+            }
+            Ok(())
+        })
+        .unwrap();
+        assert_eq!(seen, (0..n).collect::<Vec<_>>(), "{ranges:?}, periodic {periodic}");
+    }
+
     #[test]
     fn every_block_sees_its_planes_and_their_halo() {
+        let n = 11;
         for periodic in [true, false] {
             for thickness in [1, 2, 3, 5, 7, 11, 64] {
-                let n = 11;
-                let mut s = source([9, 9, n], periodic);
-                let stencil = AxisStencil::<f64>::new(Scheme::Fd8, n, 1.0, periodic);
-                let reach =
-                    |z: Range<usize>| z.map(|k| stencil.reach(k)).fold((isize::MAX, isize::MIN), |a, b| (a.0.min(b.0), a.1.max(b.1)));
-                let mut seen = Vec::new();
-                blocks(&mut s, &cut(n, thickness.min(n), thickness > 4), HALF, reach, &Buffers::default(), &Silent, |block| {
-                    for z in block.z.clone() {
-                        let (low, high) = stencil.reach(z);
-                        for k in low..high {
-                            let want = k.rem_euclid(n as isize) * 10;
-                            for c in 0..3 {
-                                assert_eq!(block.plane(c, k)[5], want as f64 + c as f64);
-                            }
-                        }
-                        seen.push(z);
-                    }
-                    Ok(())
-                })
-                .unwrap();
-                assert_eq!(seen, (0..n).collect::<Vec<_>>(), "thickness {thickness}, periodic {periodic}");
+                let ranges = cut(n, thickness.min(n), thickness > 4);
+                check(&mut source([9, 9, n], periodic), &ranges, periodic);
+                for costly in [true, false] {
+                    let mut s = Read { inner: source([9, 9, n], periodic), costly, natural: 1, counts: vec![0; n] };
+                    check(&mut s, &ranges, periodic);
+                    let twice = s.counts.iter().filter(|c| **c > 1).count();
+                    assert_eq!(twice, if periodic && !costly { 2 * HALF } else { 0 }, "costly {costly}, {ranges:?}");
+                }
             }
         }
+    }
+
+    /// The planes said to be alive bound what is really held: every batch that is not given back.
+    #[test]
+    fn blocks_are_as_thin_as_they_must_be() {
+        let s = Read { inner: source([64, 64, 40], true), costly: true, natural: 8, counts: vec![0; 40] };
+        let ranges = |fit: &dyn Fn(usize) -> bool| block_ranges(&s, None, fit);
+        assert_eq!(ranges(&|_| true)[0].len(), 40);
+        assert_eq!(ranges(&|k| k <= 20)[0].len(), 16);
+        assert_eq!(ranges(&|k| k <= 5)[0].len(), 4);
+        assert_eq!(ranges(&|_| false)[0].len(), 1);
+        assert_eq!(alive(&s, 8, 4), (4 * 8 + 2 * 4 + 2 * 8) * 64 * 64 * 3 * 8);
+    }
+
+    #[test]
+    fn what_is_kept_is_what_is_read() {
+        let mut s = Read { inner: source([5, 3, 11], true), costly: false, natural: 1, counts: vec![0; 11] };
+        let mut seen = 0;
+        let kept = kept(&mut s, &cut(11, 4, false), &Silent, |block| {
+            assert_eq!(block.plane(1, block.z.start as isize)[7], block.z.start as f64 * 10.0 + 1.0);
+            seen += block.z.len();
+            Ok(())
+        });
+        let kept = kept.unwrap();
+        let held = s.inner.held().unwrap();
+        assert!(seen == 11 && s.counts.iter().all(|c| *c == 1));
+        assert!(kept.iter().zip(held).all(|(a, b)| **a == *b));
     }
 }

@@ -3,16 +3,18 @@
 use std::f64::consts::TAU;
 use std::fmt::Write;
 use std::io::Cursor;
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 use crate::common::{BOTH, Outcome, Precision, stored, text, try_run};
+use ropewalk::base::error::{Kind, Result};
 use ropewalk::base::par::Pool;
+use ropewalk::base::real::Real;
 use ropewalk::export::csv;
 use ropewalk::export::ply::{Joins, PlyWriter};
 use ropewalk::model::columns::Col;
 use ropewalk::model::contents::Sum;
 use ropewalk::model::request::{Family, Filter, FilterShape, Indicator, Request, Scheme};
-use ropewalk::model::source::AnySource;
+use ropewalk::model::source::{AnySource, Fields, PlaneSource};
 use ropewalk::read::{InputSpec, open};
 use ropewalk::run::analysis::Execution;
 use ropewalk::space::grid::Grid;
@@ -71,6 +73,77 @@ fn bytes(o: &Outcome) -> Vec<u8> {
     all
 }
 
+/// A source that has to be read, planes being cheapest in some number: chunked files behave so.
+struct Streamed<T>(Box<dyn PlaneSource<T>>, usize);
+
+impl<T: Real> PlaneSource<T> for Streamed<T> {
+    fn grid(&self) -> &Grid {
+        self.0.grid()
+    }
+
+    fn fields(&self) -> Fields {
+        self.0.fields()
+    }
+
+    fn read(&mut self, z0: usize, z1: usize, out: &mut [&mut [T]]) -> Result<()> {
+        self.0.read(z0, z1, out)
+    }
+
+    fn natural_planes(&self) -> usize {
+        self.1
+    }
+
+    fn is_costly(&self) -> bool {
+        self.1 > 1
+    }
+}
+
+fn streamed(source: AnySource, natural: usize) -> AnySource {
+    match source {
+        AnySource::F32(s) => AnySource::F32(Box::new(Streamed(s, natural))),
+        AnySource::F64(s) => AnySource::F64(Box::new(Streamed(s, natural))),
+    }
+}
+
+/// Any budget that does, kept in memory or streamed, plain or chunked: the same bytes. Budgets that do not are refused.
+fn same_in_any_memory(source: impl Fn() -> AnySource + Sync, request: &Request, scratch: &Path) {
+    let one = |source: AnySource, memory: u64| {
+        let execution = Execution { memory, scratch: Some(scratch.to_path_buf()), ..Execution::default() };
+        Pool::new(2).unwrap().run(|| try_run(source, request, &execution).map(|o| bytes(&o)))
+    };
+    let reference = one(source(), 4 << 30).unwrap();
+    let mut done = 0;
+    let mut refused = 0;
+    for memory in (0..24).map(|k| (2f64.powi(27) * 0.75f64.powi(k)) as u64) {
+        for natural in [0, 1, 5] {
+            let source = if natural == 0 { source() } else { streamed(source(), natural) };
+            match one(source, memory) {
+                Ok(got) => {
+                    let at = got.iter().zip(&reference).position(|(a, b)| a != b);
+                    assert!(at.is_none() && got.len() == reference.len(), "{memory} bytes, natural {natural}: differs at byte {at:?}");
+                    done += 1;
+                }
+                Err(e) => {
+                    assert!(e.kind() == Kind::Limit && e.to_string().contains("--memory"), "{memory} bytes: {e}");
+                    refused += 1;
+                }
+            }
+        }
+    }
+    assert!(done > 30 && refused > 3, "{done} {refused}");
+}
+
+#[test]
+fn any_memory_gives_the_same_bytes() {
+    let scratch = tempfile::tempdir().unwrap();
+    let spectral = Request { scheme: Scheme::Spectral, ..requested() };
+    let filtered = Request { filter: Some(Filter { shape: FilterShape::Sharp, width: 0.4 }), ..requested() };
+    for request in [requested(), spectral] {
+        same_in_any_memory(random::<f32>, &request, scratch.path());
+    }
+    same_in_any_memory(|| boxed::<f32>([true; 3]), &filtered, scratch.path());
+}
+
 /// Runs every combination and compares with one thread and blocks of one plane.
 fn same(source: impl Fn() -> AnySource + Sync, request: &Request, combinations: impl Iterator<Item = (usize, Option<usize>)>) {
     let one = |threads: usize, block_planes: Option<usize>| {
@@ -116,8 +189,12 @@ fn requested() -> Request {
 }
 
 fn random<T: Precision>() -> AnySource {
+    boxed::<T>([true, false, true])
+}
+
+fn boxed<T: Precision>(periodic: [bool; 3]) -> AnySource {
     let n = [32, 28, 36];
-    let grid = Grid::periodic(n, [TAU, 5.5, 7.1]).with_periodic([true, false, true]);
+    let grid = Grid::periodic(n, [TAU, 5.5, 7.1]).with_periodic(periodic);
     let field = |seed| solenoidal(n, [TAU, 5.5, 7.1], seed, |k| k * (-k / 3.0).exp(), 0.2);
     let components: Vec<Vec<f64>> = field(5).into_iter().chain(field(6)).collect();
     stored::<T>(grid.clone(), BOTH, &components)
