@@ -1,0 +1,178 @@
+//! Joins the slabs of a surface into one, with the numbers a single walk would have given.
+
+use std::ops::Range;
+
+use crate::base::par;
+use crate::math::isomesher::{NONE, Slab};
+use crate::math::isosurface::{EdgeRef, Isosurface, Part};
+
+/// The surface made by one walk.
+pub(super) fn single(mut slab: Slab) -> Isosurface {
+    let edges = slab.edges.len();
+    for (i, &first) in slab.fans.iter().enumerate() {
+        let sides = (slab.centre_starts[i + 1] - slab.centre_starts[i]) as usize;
+        for triangle in &mut slab.triangles[first as usize..][..sides] {
+            triangle[2] = (edges + i) as u32;
+        }
+    }
+    slab.points.append(&mut slab.centre_points);
+    let parts = vec![Part { vertices: 0..edges, centres: edges..slab.points.len(), triangles: 0..slab.triangles.len() }];
+    Isosurface {
+        period: slab.period,
+        points: slab.points,
+        triangles: slab.triangles,
+        edges: slab.edges,
+        centre_starts: slab.centre_starts,
+        centre_vertices: slab.centre_vertices,
+        behind: slab.behind,
+        parts,
+    }
+}
+
+/// What a slab fills of the surface.
+struct Task<'a> {
+    slab: &'a Slab,
+    /// Slab index of each vertex to its index in the surface.
+    renumbered: &'a [u32],
+    part: &'a Part,
+    points: &'a mut [[f64; 3]],
+    edges: &'a mut [EdgeRef],
+    centre_points: &'a mut [[f64; 3]],
+    centre_vertices: &'a mut [u32],
+    triangles: &'a mut [[u32; 3]],
+    behind: &'a mut [[u32; 3]],
+}
+
+/// The surface of several slabs, in the order of their layers.
+///
+/// A single walk meets the vertices of a plane between two slabs in the lower one, so those keep the number they have there and
+/// the upper slab's own vertices follow in their order; across the seam the first slab comes before the last.
+pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
+    let mut parts: Vec<Part> = Vec::with_capacity(slabs.len());
+    let (mut vertices, mut triangles) = (0, 0);
+    for s in &slabs {
+        let own = s.edges.len() - s.borrowed.len();
+        parts.push(Part { vertices: vertices..vertices + own, centres: 0..0, triangles: triangles..triangles + s.triangles.len() });
+        (vertices, triangles) = (vertices + own, triangles + s.triangles.len());
+    }
+    let edges = vertices;
+    for (p, s) in parts.iter_mut().zip(&slabs) {
+        p.centres = vertices..vertices + s.centre_points.len();
+        vertices = p.centres.end;
+    }
+    assert!(vertices.max(triangles) < NONE as usize, "isosurface: expected fewer than 2^32 vertices and triangles, got {vertices}, {triangles}");
+
+    // Own vertices first: a borrowed one is always another slab's own.
+    let own: Vec<Vec<u32>> = par::map_range(slabs.len(), |k| {
+        let mut out = Vec::with_capacity(slabs[k].edges.len());
+        let mut id = parts[k].vertices.start as u32;
+        for run in own_runs(&slabs[k]) {
+            out.resize(run.start, NONE);
+            out.extend(run.map(|_| {
+                id += 1;
+                id - 1
+            }));
+        }
+        out
+    });
+    let owner = |k: usize, plane: usize| if plane == 0 { 0 } else { k - 1 };
+    let renumbered: Vec<Vec<u32>> = par::map_range(slabs.len(), |k| {
+        let mut out = own[k].clone();
+        out.resize(slabs[k].edges.len(), NONE);
+        for &(here, plane, edge) in &slabs[k].borrowed {
+            let from = owner(k, plane);
+            out[here as usize] = own[from][slabs[from].vertex(plane, edge) as usize];
+        }
+        out
+    });
+
+    let mut out = Isosurface {
+        period: slabs[0].period,
+        points: vec![[0.0; 3]; vertices],
+        triangles: vec![[0; 3]; triangles],
+        edges: vec![EdgeRef { a: 0, b: 0, t: 0.0 }; edges],
+        centre_starts: vec![0],
+        centre_vertices: vec![0; slabs.iter().map(|s| s.centre_vertices.len()).sum()],
+        behind: vec![[0; 3]; triangles],
+        parts: Vec::new(),
+    };
+    for s in &slabs {
+        let before = *out.centre_starts.last().expect("a first start");
+        out.centre_starts.extend(s.centre_starts[1..].iter().map(|c| before + c));
+    }
+    let (mut points, mut centre_points) = out.points.split_at_mut(edges);
+    let (mut edges, mut centre_vertices) = (&mut out.edges[..], &mut out.centre_vertices[..]);
+    let (mut triangles, mut behind) = (&mut out.triangles[..], &mut out.behind[..]);
+    let mut tasks = Vec::with_capacity(slabs.len());
+    for (k, slab) in slabs.iter().enumerate() {
+        let part = &parts[k];
+        tasks.push(Task {
+            slab,
+            renumbered: &renumbered[k],
+            part,
+            points: points.split_off_mut(..part.vertices.len()).expect("as counted"),
+            edges: edges.split_off_mut(..part.vertices.len()).expect("as counted"),
+            centre_points: centre_points.split_off_mut(..part.centres.len()).expect("as counted"),
+            centre_vertices: centre_vertices.split_off_mut(..slab.centre_vertices.len()).expect("as counted"),
+            triangles: triangles.split_off_mut(..part.triangles.len()).expect("as counted"),
+            behind: behind.split_off_mut(..part.triangles.len()).expect("as counted"),
+        });
+    }
+    par::map_owned(tasks, |k, task| {
+        let (slab, part) = (task.slab, task.part);
+        fill(task);
+        // Sides at a plane between slabs: what the other slab left there.
+        slab.loose
+            .iter()
+            .filter_map(|&(triangle, side, place)| {
+                let (vertex, face) = (place / 4, place as usize % 4);
+                let at = slab.borrowed.binary_search_by_key(&vertex, |b| b.0).ok()?;
+                let (_, plane, edge) = slab.borrowed[at];
+                let from = owner(k, plane);
+                let other = slabs[from].last[slabs[from].vertex(plane, edge) as usize][face];
+                let here = part.triangles.start + triangle as usize;
+                (other != NONE).then_some((here, side, other + parts[from].triangles.start as u32))
+            })
+            .collect::<Vec<_>>()
+    })
+    .into_iter()
+    .flatten()
+    .for_each(|(triangle, side, other)| out.behind[triangle][usize::from(side)] = other);
+    out.parts = parts;
+    out
+}
+
+/// The slab's own vertices, in runs between the borrowed ones.
+fn own_runs(slab: &Slab) -> impl Iterator<Item = Range<usize>> + '_ {
+    let ends = slab.borrowed.iter().map(|b| b.0 as usize).chain([slab.edges.len()]);
+    let mut start = 0;
+    ends.map(move |end| std::mem::replace(&mut start, end + 1)..end)
+}
+
+fn fill(task: Task) {
+    let Task { slab, renumbered, part, points, edges, centre_points, centre_vertices, triangles, behind } = task;
+    let mut at = 0;
+    for run in own_runs(slab) {
+        let to = at..at + run.len();
+        points[to.clone()].copy_from_slice(&slab.points[run.clone()]);
+        edges[to.clone()].copy_from_slice(&slab.edges[run]);
+        at = to.end;
+    }
+    centre_points.copy_from_slice(&slab.centre_points);
+    for (to, &v) in centre_vertices.iter_mut().zip(&slab.centre_vertices) {
+        *to = renumbered[v as usize];
+    }
+    for (to, t) in triangles.iter_mut().zip(&slab.triangles) {
+        *to = t.map(|v| if v == NONE { NONE } else { renumbered[v as usize] });
+    }
+    for (i, &first) in slab.fans.iter().enumerate() {
+        let sides = (slab.centre_starts[i + 1] - slab.centre_starts[i]) as usize;
+        for triangle in &mut triangles[first as usize..][..sides] {
+            triangle[2] = (part.centres.start + i) as u32;
+        }
+    }
+    let base = part.triangles.start as u32;
+    for (to, b) in behind.iter_mut().zip(&slab.behind) {
+        *to = b.map(|t| if t == NONE { NONE } else { t + base });
+    }
+}
