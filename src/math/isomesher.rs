@@ -4,7 +4,7 @@
 use crate::base::real::Real;
 use crate::math::isocubes::next;
 use crate::math::isosurface::{EdgeRef, cross, dot};
-use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, TABLE, Table};
+use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, Loop, TABLE, Table};
 use crate::space::patch::PatchShape;
 
 /// Vertices keep this distance from the cell centres, in cells, so that no triangle shrinks to nothing.
@@ -68,6 +68,8 @@ pub(super) struct Slab {
     pub borrowed: Vec<(u32, usize, usize)>,
     /// Sides without a triangle that came before, on cubes at a foreign plane: triangle, side, place in `last`.
     pub loose: Vec<(u32, u8, u32)>,
+    /// For each edge vertex one of a lower index in the same piece of the slab's surface, or itself.
+    pub parents: Vec<u32>,
     /// The last triangle on each of the four cube faces at every edge vertex.
     pub last: Vec<[u32; 4]>,
     /// Three vertex indices (edges along x, y, z) a stored cell, for a few planes at a time, each in its slot.
@@ -83,11 +85,57 @@ impl Slab {
         if self.period[2].is_some() && plane == 0 { 2 } else { plane & 1 }
     }
 
+    /// Notes that the vertices of a loop belong to one piece; new ones have no parent yet.
+    #[inline(always)]
+    fn hang_together(&mut self, ids: &[u32]) {
+        // Nearly always those that are not new have one parent.
+        let (mut low, mut high) = (NONE, 0);
+        for &id in ids {
+            let parent = self.parents[id as usize];
+            low = low.min(parent);
+            high = high.max(parent.wrapping_add(1));
+        }
+        if low == NONE {
+            low = ids.iter().copied().fold(NONE, u32::min);
+        } else if high != low + 1 {
+            low = NONE;
+            for &id in ids {
+                if self.parents[id as usize] != NONE {
+                    low = match low {
+                        NONE => root(&mut self.parents, id),
+                        _ => join(&mut self.parents, low, id),
+                    };
+                }
+            }
+        }
+        for &id in ids {
+            let parent = &mut self.parents[id as usize];
+            *parent = (*parent).min(low);
+        }
+    }
+
     /// The vertex on an edge: 3 × cell within the plane + axis. The plane is the slab's last, or the first of all.
     pub fn vertex(&self, plane: usize, edge: usize) -> u32 {
         let slot = self.slot(plane);
         if self.held[slot] == plane { self.vertices[slot * self.slot_len + edge] } else { NONE }
     }
+}
+
+/// The first of all vertices known to be in the piece of `v`; shortens the way there.
+pub(super) fn root(parents: &mut [u32], mut v: u32) -> u32 {
+    while parents[v as usize] != v {
+        let up = parents[parents[v as usize] as usize];
+        parents[v as usize] = up;
+        v = up;
+    }
+    v
+}
+
+/// Makes one piece of two; returns its root.
+pub(super) fn join(parents: &mut [u32], a: u32, b: u32) -> u32 {
+    let (a, b) = (root(parents, a), root(parents, b));
+    parents[a.max(b) as usize] = a.min(b);
+    a.min(b)
 }
 
 impl<'a, T: Real> Mesher<'a, T> {
@@ -121,6 +169,7 @@ impl<'a, T: Real> Mesher<'a, T> {
                 centre_vertices: Vec::new(),
                 borrowed: Vec::new(),
                 loose: Vec::new(),
+                parents: Vec::with_capacity(expected),
                 last: Vec::with_capacity(expected),
                 vertices: vec![NONE; slots * 3 * largest],
                 slot_len: 3 * largest,
@@ -170,31 +219,48 @@ impl<'a, T: Real> Mesher<'a, T> {
             let (ac, bd) = (height(a) * height(c), height(b) * height(d));
             if mask >> a & 1 == 1 { ac > bd } else { bd > ac }
         };
-        let mut ids = [NONE; LONGEST];
-        let mut spots = [[0.0; 3]; LONGEST];
         for l in table.loops(mask, joined) {
-            let n = l.len as usize;
-            for k in 0..n {
-                let edge = EDGES[l.edges[k] as usize];
-                let (corner, axis) = (edge.corner as usize, edge.axis as usize);
-                let slot = (3 * cells[corner] + axis).wrapping_add(self.shift[corner >> 1 & 1]);
-                let mut id = self.slab.vertices[slot];
-                if id == NONE {
-                    id = self.slab.edges.len() as u32;
-                    self.slab.vertices[slot] = id;
-                    let upper = corner | AXIS_BIT[axis];
-                    let (a, b) = (height(corner), height(upper));
-                    let t = (a / (a - b)).clamp(CLEARANCE, 1.0 - CLEARANCE);
-                    self.add_vertex(x, corner, axis, [cells[corner], cells[upper]], t);
-                }
-                ids[k] = id;
-                spots[k] = CORNERS[corner];
-                spots[k][axis] = self.slab.edges[id as usize].t;
+            // One decision on the length, and no loops of unknown length after it.
+            match l.len {
+                3 => self.polygon::<3>(l, mask, x, &cells),
+                4 => self.polygon::<4>(l, mask, x, &cells),
+                5 => self.polygon::<5>(l, mask, x, &cells),
+                _ => self.polygon::<LONGEST>(l, mask, x, &cells),
             }
-            self.cap(&ids[..n], &spots[..n], &l.keys, x);
         }
     }
 
+    /// Makes the vertices of a loop of at most `N`, those that are not there yet, and closes it.
+    #[inline]
+    fn polygon<const N: usize>(&mut self, l: &Loop, mask: u8, x: i32, cells: &[usize; 8]) {
+        let n = if N == LONGEST { l.len as usize } else { N };
+        let mut ids = [NONE; N];
+        let mut spots = [[0.0; 3]; N];
+        for k in 0..n {
+            let edge = EDGES[l.edges[k] as usize];
+            let (corner, axis) = (edge.corner as usize, edge.axis as usize);
+            let slot = (3 * cells[corner] + axis).wrapping_add(self.shift[corner >> 1 & 1]);
+            let mut id = self.slab.vertices[slot];
+            if id == NONE {
+                id = self.slab.edges.len() as u32;
+                self.slab.vertices[slot] = id;
+                let upper = corner | AXIS_BIT[axis];
+                let height = |corner: usize| height(mask, corner, self.values[cells[corner]].wide() - self.level);
+                let (a, b) = (height(corner), height(upper));
+                let t = (a / (a - b)).clamp(CLEARANCE, 1.0 - CLEARANCE);
+                self.add_vertex(x, corner, axis, [cells[corner], cells[upper]], t);
+            }
+            ids[k] = id;
+            if N != 3 {
+                spots[k] = CORNERS[corner];
+                spots[k][axis] = self.slab.edges[id as usize].t;
+            }
+        }
+        self.slab.hang_together(&ids[..n]);
+        self.cap(&ids[..n], &spots[..n], &l.keys, x);
+    }
+
+    #[inline]
     fn add_vertex(&mut self, x: i32, corner: usize, axis: usize, cells: [usize; 2], t: f64) {
         let slab = &mut self.slab;
         let side = corner >> 1 & 1;
@@ -209,10 +275,11 @@ impl<'a, T: Real> Mesher<'a, T> {
         slab.points.push(point);
         slab.edges.push(EdgeRef { a: cells[0] as u32, b: cells[1] as u32, t });
         slab.last.push([NONE; 4]);
+        slab.parents.push(NONE);
     }
 
     /// Closes a loop by triangles. `ids` and `spots` are its vertices, the latter relative to the cube's lower corner.
-    #[inline]
+    #[inline(always)]
     fn cap(&mut self, ids: &[u32], spots: &[[f64; 3]], keys: &[u8; LONGEST], x: i32) {
         let first = self.slab.triangles.len() as u32;
         match (ids, apex(spots)) {
@@ -221,14 +288,13 @@ impl<'a, T: Real> Mesher<'a, T> {
                 self.slab.triangles.push([a, b, c]);
                 self.slab.behind.push(s);
             }
-            (&[a, b, c, d], Some(0)) => {
-                let (s, t) = ([0, 1].map(|k| self.meet(ids, keys, k, first, k)), [2, 3].map(|k| self.meet(ids, keys, k, first + 1, k - 1)));
+            (_, Some(apex)) if ids.len() == 4 => {
+                // Which diagonal is shorter is as good as random: no branch on it.
+                let turn = |k: usize| (k + apex) & 3;
+                let [a, b, c, d] = [0, 1, 2, 3].map(|k| ids[turn(k)]);
+                let s = [0, 1].map(|k| self.meet(ids, keys, turn(k), first, k));
+                let t = [2, 3].map(|k| self.meet(ids, keys, turn(k), first + 1, k - 1));
                 self.slab.triangles.extend([[a, b, c], [a, c, d]]);
-                self.slab.behind.extend([[s[0], s[1], NONE], [first, t[0], t[1]]]);
-            }
-            (&[a, b, c, d], Some(_)) => {
-                let (s, t) = ([1, 2].map(|k| self.meet(ids, keys, k, first, k - 1)), [(3, 1), (0, 2)].map(|(k, side)| self.meet(ids, keys, k, first + 1, side)));
-                self.slab.triangles.extend([[b, c, d], [b, d, a]]);
                 self.slab.behind.extend([[s[0], s[1], NONE], [first, t[0], t[1]]]);
             }
             (_, Some(apex)) => {
@@ -288,7 +354,7 @@ fn height(mask: u8, corner: usize, above: f64) -> f64 {
 }
 
 /// The loop vertex from which a fan of chords closes the loop, or `None` when it takes a centre vertex.
-#[inline]
+#[inline(always)]
 fn apex(p: &[[f64; 3]]) -> Option<usize> {
     match p.len() {
         3 => Some(0),

@@ -26,6 +26,14 @@ pub struct EdgeRef {
     pub t: f64,
 }
 
+impl EdgeRef {
+    /// The value of a stored field here, linear along the edge.
+    #[inline]
+    pub fn of<T: Real>(&self, field: &[T]) -> f64 {
+        (1.0 - self.t) * field[self.a as usize].wide() + self.t * field[self.b as usize].wide()
+    }
+}
+
 /// Triangles over shared vertices, counter-clockwise seen from outside (the low side).
 ///
 /// The first `edges.len()` vertices lie on grid edges, in the order of `edges`. The remaining ones are centre
@@ -51,6 +59,8 @@ pub struct Isosurface {
     /// For each side 0-1, 1-2, 2-0 of each triangle the triangle across, where that has a lower index or, in a ring about a centre
     /// vertex, is the first; else `u32::MAX`. Every pair stands once, at the triangle whose turn comes when both are known.
     pub(super) behind: Vec<[u32; 3]>,
+    /// For each edge vertex another of the same piece of the surface, of lower index, or itself for the first of a piece.
+    pub(super) parents: Vec<u32>,
     /// What was made together, in order: small surfaces have one part. Work on a large one is shared out by these.
     pub(super) parts: Vec<Part>,
 }
@@ -104,14 +114,15 @@ impl Isosurface {
     /// # Panics
     /// When `field` has fewer values than the patch has stored cells.
     pub fn interpolate<T: Real>(&self, field: &[T]) -> Vec<f64> {
-        let mut out = Vec::with_capacity(self.points.len());
-        out.extend(self.edges.iter().map(|e| (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()));
-        for i in 0..self.centres() {
-            let around = self.centre(i);
-            let sum: f64 = around.iter().map(|&v| out[v as usize]).sum();
-            out.push(sum / around.len() as f64);
-        }
-        out
+        let edges = self.edges.iter().map(|e| e.of(field));
+        edges.chain((0..self.centres()).map(|i| self.centre_of(i, field))).collect()
+    }
+
+    /// The value of a stored field at the centre vertex `edges.len() + i`.
+    pub fn centre_of<T: Real>(&self, i: usize, field: &[T]) -> f64 {
+        let around = self.centre(i);
+        let sum: f64 = around.iter().map(|&v| self.edges[v as usize].of(field)).sum();
+        sum / around.len() as f64
     }
 
     /// The shortest vector from vertex `a` to vertex `b` modulo the periods, in cells.

@@ -3,7 +3,7 @@
 use std::ops::Range;
 
 use crate::base::par;
-use crate::math::isomesher::{NONE, Slab};
+use crate::math::isomesher::{NONE, Slab, join};
 use crate::math::isosurface::{EdgeRef, Isosurface, Part};
 
 /// The surface made by one walk.
@@ -25,6 +25,7 @@ pub(super) fn single(mut slab: Slab) -> Isosurface {
         centre_starts: slab.centre_starts,
         centre_vertices: slab.centre_vertices,
         behind: slab.behind,
+        parents: slab.parents,
         parts,
     }
 }
@@ -41,6 +42,7 @@ struct Task<'a> {
     centre_vertices: &'a mut [u32],
     triangles: &'a mut [[u32; 3]],
     behind: &'a mut [[u32; 3]],
+    parents: &'a mut [u32],
 }
 
 /// The surface of several slabs, in the order of their layers.
@@ -94,6 +96,7 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
         centre_starts: vec![0],
         centre_vertices: vec![0; slabs.iter().map(|s| s.centre_vertices.len()).sum()],
         behind: vec![[0; 3]; triangles],
+        parents: vec![0; edges],
         parts: Vec::new(),
     };
     for s in &slabs {
@@ -102,7 +105,7 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
     }
     let (mut points, mut centre_points) = out.points.split_at_mut(edges);
     let (mut edges, mut centre_vertices) = (&mut out.edges[..], &mut out.centre_vertices[..]);
-    let (mut triangles, mut behind) = (&mut out.triangles[..], &mut out.behind[..]);
+    let (mut triangles, mut behind, mut parents) = (&mut out.triangles[..], &mut out.behind[..], &mut out.parents[..]);
     let mut tasks = Vec::with_capacity(slabs.len());
     for (k, slab) in slabs.iter().enumerate() {
         let part = &parts[k];
@@ -116,6 +119,7 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
             centre_vertices: centre_vertices.split_off_mut(..slab.centre_vertices.len()).expect("as counted"),
             triangles: triangles.split_off_mut(..part.triangles.len()).expect("as counted"),
             behind: behind.split_off_mut(..part.triangles.len()).expect("as counted"),
+            parents: parents.split_off_mut(..part.vertices.len()).expect("as counted"),
         });
     }
     par::map_owned(tasks, |k, task| {
@@ -138,6 +142,11 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
     .into_iter()
     .flatten()
     .for_each(|(triangle, side, other)| out.behind[triangle][usize::from(side)] = other);
+    for (slab, renumbered) in slabs.iter().zip(&renumbered) {
+        for &(here, _, _) in &slab.borrowed {
+            join(&mut out.parents, renumbered[here as usize], renumbered[slab.parents[here as usize] as usize]);
+        }
+    }
     out.parts = parts;
     out
 }
@@ -150,12 +159,15 @@ fn own_runs(slab: &Slab) -> impl Iterator<Item = Range<usize>> + '_ {
 }
 
 fn fill(task: Task) {
-    let Task { slab, renumbered, part, points, edges, centre_points, centre_vertices, triangles, behind } = task;
+    let Task { slab, renumbered, part, points, edges, centre_points, centre_vertices, triangles, behind, parents } = task;
     let mut at = 0;
     for run in own_runs(slab) {
         let to = at..at + run.len();
         points[to.clone()].copy_from_slice(&slab.points[run.clone()]);
-        edges[to.clone()].copy_from_slice(&slab.edges[run]);
+        edges[to.clone()].copy_from_slice(&slab.edges[run.clone()]);
+        for (to, &p) in parents[to.clone()].iter_mut().zip(&slab.parents[run]) {
+            *to = renumbered[p as usize];
+        }
         at = to.end;
     }
     centre_points.copy_from_slice(&slab.centre_points);

@@ -75,9 +75,16 @@ pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]
 fn one_piece(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> Piece {
     let (mut area, mut volume, mut bending, mut pairs) = (0.0, 0.0, 0.0, 0);
     for_strips(surface, spacing, normals, |_, strip| {
-        strip.area.iter().for_each(|a| area += a);
-        strip.volume.iter().for_each(|v| volume += v);
-        strip.bend.iter().for_each(|b| bending += b);
+        // Side by side: each of the sums waits for its own last addition only.
+        let (beside, rest) = strip.bend.split_at(strip.area.len().min(strip.bend.len()));
+        let all = strip.area.iter().zip(&strip.volume);
+        let mut bends = beside.iter();
+        for (a, v) in all {
+            area += a;
+            volume += v;
+            bending += bends.next().unwrap_or(&0.0);
+        }
+        rest.iter().for_each(|b| bending += b);
         pairs += strip.bend.len() as i64;
     });
     let euler_surface = surface.points.len() as i64 - pairs + surface.triangles.len() as i64;
@@ -152,10 +159,17 @@ struct Strip {
     vertex: Vec<u32>,
     /// Half the length of each edge times the signed angle between its triangles.
     bend: Vec<f64>,
-    /// Of each edge the square of its length, and the sine and cosine of its angle up to the areas and, the sine, the length.
+    scratch: Scratch,
+}
+
+/// Of each edge the square of its length, and the sine and cosine of its angle up to the areas and, the sine, the length.
+#[derive(Default)]
+struct Scratch {
     square: Vec<f64>,
     sine: Vec<f64>,
     cosine: Vec<f64>,
+    /// Sides of the triangles that have one behind them, counted through.
+    sides: Vec<u32>,
 }
 
 impl Strip {
@@ -167,33 +181,59 @@ impl Strip {
     }
 
     fn extend(&mut self, surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]], range: Range<usize>) {
-        self.square.clear();
-        self.sine.clear();
-        self.cosine.clear();
-        let from = self.bend.len();
-        for t in range {
-            let (triangle, n) = (surface.triangles[t], normals[t]);
-            // p0·(p1 × p2) = p0·((p1 - p0) × (p2 - p0))
-            self.area.push(0.5 * dot(n, n).sqrt());
-            self.volume.push(dot(scaled(surface.vector(0, triangle[0]), spacing), n) / 6.0);
-            let behind = surface.behind[t];
-            for side in 0..3 {
-                if behind[side] == NONE {
-                    continue;
-                }
-                let (a, b) = (triangle[side], triangle[(side + 1) % 3]);
-                let m = normals[behind[side] as usize];
-                // From the lower vertex to the upper; first the triangle that runs this way.
-                let (lower, upper, up, down) = if a < b { (a, b, n, m) } else { (b, a, m, n) };
-                let along = scaled(surface.vector(lower, upper), spacing);
-                self.vertex.push(lower);
-                self.square.push(dot(along, along));
-                self.sine.push(dot(along, cross(up, down)));
-                self.cosine.push(dot(up, down));
-            }
+        let (triangles, known) = (self.area.len(), self.bend.len());
+        let room = 3 * range.len();
+        self.area.resize(triangles + range.len(), 0.0);
+        self.volume.resize(triangles + range.len(), 0.0);
+        self.vertex.resize(known + room, 0);
+        let scratch = &mut self.scratch;
+        for list in [&mut scratch.square, &mut scratch.sine, &mut scratch.cosine] {
+            list.resize(list.len().max(room), 0.0);
         }
-        self.bend.resize(self.vertex.len(), 0.0);
-        bends(&self.square, &self.sine, &self.cosine, &mut self.bend[from..]);
+        let (square, sine, cosine) = (&mut scratch.square[..room], &mut scratch.sine[..room], &mut scratch.cosine[..room]);
+        let (area, volume, vertex) = (&mut self.area[triangles..], &mut self.volume[triangles..], &mut self.vertex[known..]);
+        let corners = surface.triangles[range.clone()].iter().zip(&normals[range.clone()]);
+        for ((triangle, n), (area, volume)) in corners.zip(area.iter_mut().zip(volume)) {
+            // p0·(p1 × p2) = p0·((p1 - p0) × (p2 - p0))
+            *area = dot(*n, *n);
+            *volume = dot(scaled(surface.vector(0, triangle[0]), spacing), *n);
+        }
+        // Whether there is a triangle behind a side is as good as random: no branch on it.
+        let mut edges = 0;
+        scratch.sides.resize(scratch.sides.len().max(room), 0);
+        let sides = &mut scratch.sides[..room];
+        for (k, behind) in surface.behind[range.clone()].as_flattened().iter().enumerate() {
+            sides[edges] = k as u32;
+            edges += usize::from(*behind != NONE);
+        }
+        let behind = surface.behind[range.clone()].as_flattened();
+        for (k, side) in sides[..edges].iter().enumerate() {
+            let side = *side as usize;
+            let (t, from) = (range.start + side / 3, side % 3);
+            let triangle = &surface.triangles[t];
+            let (a, b) = (triangle[from], triangle[if from == 2 { 0 } else { from + 1 }]);
+            let (n, m) = (&normals[t], &normals[behind[side] as usize]);
+            let along = scaled(surface.vector(a, b), spacing);
+            vertex[k] = a;
+            square[k] = dot(along, along);
+            sine[k] = dot(along, cross(*n, *m));
+            cosine[k] = dot(*n, *m);
+        }
+        self.vertex.truncate(known + edges);
+        self.bend.resize(known + edges, 0.0);
+        shares(area, &mut self.volume[triangles..]);
+        bends(&square[..edges], &sine[..edges], &cosine[..edges], &mut self.bend[known..]);
+    }
+}
+
+/// From squares of normals and products with them to areas and shares of the volume.
+#[multiversion::multiversion(targets("x86_64+avx2"))]
+fn shares(area: &mut [f64], volume: &mut [f64]) {
+    for a in area {
+        *a = 0.5 * a.sqrt();
+    }
+    for v in volume {
+        *v /= 6.0;
     }
 }
 
@@ -215,41 +255,24 @@ fn bends(square: &[f64], sine: &[f64], cosine: &[f64], out: &mut [f64]) {
     }
 }
 
-/// The connected piece of every vertex, numbered by their first vertex, and how many there are.
+/// The connected piece of every vertex, numbered by their first vertex, and how many there are; no list where there is one.
 fn pieces(surface: &Isosurface) -> (Vec<u32>, usize) {
-    let mut parent: Vec<u32> = (0..surface.points.len() as u32).collect();
-    fn root(parent: &mut [u32], mut v: u32) -> u32 {
-        while parent[v as usize] != v {
-            parent[v as usize] = parent[parent[v as usize] as usize];
-            v = parent[v as usize];
-        }
-        v
+    let first = |v: usize| surface.parents[v] as usize == v;
+    let count = (0..surface.parents.len()).filter(|&v| first(v)).count();
+    if count == 1 {
+        return (Vec::new(), 1);
     }
-    for &[a, b, c] in &surface.triangles {
-        // Nearly always all three hang under one vertex already.
-        let up = parent[a as usize];
-        if parent[b as usize] == up && parent[c as usize] == up {
-            continue;
-        }
-        let mut top = root(&mut parent, a);
-        for v in [b, c] {
-            let other = root(&mut parent, v);
-            parent[top.max(other) as usize] = top.min(other);
-            top = top.min(other);
-        }
+    // The parent comes before, so it has its number already.
+    let mut piece_of = Vec::with_capacity(surface.points.len());
+    let mut found = 0;
+    for (v, &parent) in surface.parents.iter().enumerate() {
+        piece_of.push(if first(v) { found } else { piece_of[parent as usize] });
+        found += u32::from(first(v));
     }
-    // The root is the smallest vertex of its piece, so it has its number before any other asks for it.
-    let mut count = 0;
-    for v in 0..parent.len() {
-        let up = parent[v] as usize;
-        if up == v {
-            parent[v] = count;
-            count += 1;
-        } else {
-            parent[v] = parent[up];
-        }
+    for i in 0..surface.centres() {
+        piece_of.push(piece_of[surface.centre(i)[0] as usize]);
     }
-    (parent, count as usize)
+    (piece_of, count)
 }
 
 /// Whether an angle, of which sine and cosine are known up to a common factor, is 45 degrees or more.
