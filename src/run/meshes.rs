@@ -1,7 +1,7 @@
 //! Writes the meshes of a snapshot into the run folder as they are finished.
 
 use std::fs::File;
-use std::io::BufWriter;
+use std::io::{self, BufWriter};
 
 use crate::base::error::{Error, Result};
 use crate::export::atomic::Folder;
@@ -21,11 +21,22 @@ pub struct MeshFiles<'a> {
     joins: Joins,
     /// Every file begun, helper files included.
     begun: Vec<String>,
-    together: Vec<Option<PlyWriter<BufWriter<File>, File>>>,
+    together: Vec<Option<Writer<'a>>>,
 }
 
-/// Where the faces wait while vertices are written.
+/// Opens the helper file of a mesh file.
+type Helper<'a> = Box<dyn FnMut() -> io::Result<File> + Send + 'a>;
+
+type Writer<'a> = PlyWriter<BufWriter<File>, File, Helper<'a>>;
+
+/// Where the faces wait while vertices are written, when there are too many to keep.
 const FACES: &str = ".faces";
+
+/// Bytes of faces, over all files written at a time, that wait in memory: some five million triangles.
+const FACES_KEPT: usize = 64 << 20;
+
+/// Bytes that small meshes wait for before they are written.
+const BUFFER: usize = 1 << 18;
 
 impl<'a> MeshFiles<'a> {
     /// Prepares the files of a snapshot; `surfaces` must not be [`Surfaces::None`].
@@ -66,9 +77,10 @@ impl<'a> MeshFiles<'a> {
         }
     }
 
-    fn open(&mut self, name: &str, family: usize) -> Result<PlyWriter<BufWriter<File>, File>> {
-        let out = BufWriter::with_capacity(1 << 16, self.folder.file(name)?);
-        let faces = self.folder.file(&format!("{name}{FACES}"))?;
+    fn open(&mut self, name: &str, family: usize) -> Result<Writer<'a>> {
+        let out = BufWriter::with_capacity(BUFFER, self.folder.file(name)?);
+        let (folder, beside) = (self.folder, format!("{name}{FACES}"));
+        let helper: Helper<'a> = Box::new(move || folder.file(&beside).map_err(io::Error::other));
         self.begun.extend([name.to_string(), format!("{name}{FACES}")]);
         let comments = vec![
             format!("ropewalk {}", env!("CARGO_PKG_VERSION")),
@@ -76,16 +88,17 @@ impl<'a> MeshFiles<'a> {
             format!("snapshot {}", self.snapshot.replace(char::is_control, " ")),
             format!("family {}", self.families[family]),
         ];
-        PlyWriter::new(out, faces, self.joins, self.values.clone(), comments).map_err(|e| self.failed(name, &e))
+        PlyWriter::new(out, FACES_KEPT / self.families.len().max(1), helper, self.joins, self.values.clone(), comments).map_err(|e| self.failed(name, &e))
     }
 
     fn failed(&self, name: &str, e: &std::io::Error) -> Error {
         Error::output("cannot write a mesh").at(self.folder.path(name)).found(e.to_string())
     }
 
-    fn close(&self, name: &str, writer: PlyWriter<BufWriter<File>, File>) -> Result<()> {
+    fn close(&self, name: &str, writer: Writer<'a>) -> Result<()> {
+        let has_helper = writer.has_helper();
         writer.finish().map_err(|e| self.failed(name, &e))?;
-        self.folder.remove(&format!("{name}{FACES}"))
+        if has_helper { self.folder.remove(&format!("{name}{FACES}")) } else { Ok(()) }
     }
 
     /// Completes the files.
