@@ -21,7 +21,7 @@ pub(super) fn extract<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> 
 }
 
 /// As [`extract`], with slabs of at least `least` segments.
-fn extract_in_slabs<T: Real>(shape: &PatchShape, values: &[T], level: f64, least: usize) -> Isosurface {
+pub(super) fn extract_in_slabs<T: Real>(shape: &PatchShape, values: &[T], level: f64, least: usize) -> Isosurface {
     let rows = Rows::new(shape);
     let layers = rows.layers(shape.period[2]);
     let slabs = rows.slabs(&layers, least);

@@ -188,3 +188,69 @@ fn fill(task: Task) {
         *to = b.map(|t| if t == NONE { NONE } else { t + base });
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::base::par::Pool;
+    use crate::math::isocubes::extract_in_slabs;
+    use crate::math::surface::measure;
+    use crate::space::patch::{Interval, PatchShape};
+
+    /// All cells of a rough random field above a level as one object, and the values around them.
+    fn percolating(n: usize, share: u64, periodic: [bool; 3]) -> (PatchShape, Vec<f32>) {
+        let mut state = 5u64;
+        let mut field = vec![0.0f32; n * n * n];
+        for v in &mut field {
+            state = state.wrapping_mul(6364136223846793005).wrapping_add(1442695040888963407);
+            *v = ((state >> 33) % 1000) as f32 - (1000 - share) as f32;
+        }
+        // Layers without any cell: a slab may begin where no other ends.
+        field[n * n * 5..n * n * 7].fill(-1.0);
+        let mut object: Vec<Interval> = Vec::new();
+        for (i, _) in field.iter().enumerate().filter(|(_, v)| **v > 0.0) {
+            let [x, y, z] = [i % n, i / n % n, i / n / n].map(|c| c as i32);
+            match object.last_mut() {
+                Some(l) if (l.z, l.y, l.x + l.len as i32) == (z, y, x) => l.len += 1,
+                _ => object.push(Interval { z, y, x, len: 1 }),
+            }
+        }
+        let period = periodic.map(|p| p.then_some(n as i32));
+        let shape = PatchShape::around(object, 1, [n; 3], periodic, period);
+        let m = n as i32;
+        let value = |x: i32, s: &crate::space::patch::Segment| field[((s.z * m + s.y) * m + x) as usize];
+        let values = shape.stored.iter().flat_map(|s| (s.x..s.x + s.len as i32).map(move |x| value(x, s))).collect();
+        (shape, values)
+    }
+
+    /// What the numbering says, without the parts and the way pieces are noted.
+    fn bare(s: &Isosurface) -> Isosurface {
+        Isosurface { parts: Vec::new(), parents: Vec::new(), ..s.clone() }
+    }
+
+    /// Slabs of one layer or several, on any number of threads, against the single walk.
+    #[test]
+    fn slabs_are_welded_to_the_surface_of_one_walk() {
+        let spacing = [1.0, 0.8, 1.3];
+        for periodic in [[false; 3], [true; 3], [false, true, true], [true, false, false]] {
+            for share in [300, 30] {
+                let (shape, values) = percolating(20, share, periodic);
+                let whole = extract_in_slabs(&shape, &values, 0.0, usize::MAX);
+                assert_eq!(whole.parts.len(), 1);
+                let areas = whole.area_vectors(spacing);
+                let (measures, normals) = (measure(&whole, spacing), whole.vertex_normals(&areas));
+                for (least, threads) in [(1, 1), (1, 2), (1, 3), (40, 2), (150, 3), (400, 2)] {
+                    let pool = Pool::new(threads).unwrap();
+                    pool.run(|| {
+                        let welded = extract_in_slabs(&shape, &values, 0.0, least);
+                        assert!(welded.parts.len() > 1 || least > 40);
+                        assert_eq!(bare(&welded), bare(&whole));
+                        assert_eq!(welded.area_vectors(spacing), areas);
+                        assert_eq!(welded.vertex_normals(&areas), normals);
+                        assert_eq!(measure(&welded, spacing), measures, "{periodic:?} {share} {least}");
+                    });
+                }
+            }
+        }
+    }
+}

@@ -25,7 +25,7 @@ fn fields(n: [usize; 3]) -> Vec<(&'static str, Field)> {
 
 /// The definition of a closed, consistently wound manifold, checked with maps: every directed edge once with its
 /// reverse once, and the triangles at a vertex form one ring. Returns the vertex, edge and triangle counts.
-fn check_manifold(surface: &Isosurface) -> (usize, usize, usize) {
+pub fn check_manifold(surface: &Isosurface) -> (usize, usize, usize) {
     let mut directed: HashMap<(u32, u32), u32> = HashMap::new();
     for t in &surface.triangles {
         for k in 0..3 {
