@@ -84,7 +84,8 @@ fn patches(level: f32) -> Vec<(PatchShape, Vec<f32>)> {
         .map(|object| {
             let shape = PatchShape::around(object, 1, [N; 3], [false; 3], [None; 3]);
             let row = |z: i32, y: i32| (z as usize * N + y as usize) * N;
-            let values = shape.stored.iter().flat_map(|s| field[row(s.z, s.y) + s.x as usize..][..s.len as usize].iter().copied()).collect();
+            let values =
+                shape.stored.iter().flat_map(|s| field[row(s.z, s.y) + s.x as usize..][..s.len as usize].iter().copied()).collect();
             (shape, values)
         })
         .collect()

@@ -19,11 +19,11 @@ pub enum Joins {
 
 /// Writes meshes one after the other into one file whose counts are known only at the end.
 ///
-/// Vertices go straight to the output behind a header of fixed length; faces wait in memory, and beyond a number of bytes in a
-/// helper that is opened then. [`PlyWriter::finish`] appends them and rewrites the header with the final counts.
-pub struct PlyWriter<W, S, F> {
+/// Vertices go straight to the output behind a header of fixed length; faces wait in memory and, beyond
+/// [`PlyWriter::keeping`], in a helper. [`PlyWriter::finish`] appends them and rewrites the header with the final counts.
+pub struct PlyWriter<W, S> {
     out: W,
-    faces: Faces<S, F>,
+    faces: Faces<S>,
     joins: Joins,
     values: Vec<&'static str>,
     comments: Vec<String>,
@@ -33,37 +33,34 @@ pub struct PlyWriter<W, S, F> {
 }
 
 /// Faces that wait for the last vertex, in order: first those in the helper, then those in memory.
-struct Faces<S, F> {
+struct Faces<S> {
     kept: Vec<Vec<u8>>,
     bytes: usize,
     /// Bytes that may wait in memory.
     limit: usize,
-    helper: Option<S>,
-    open: F,
+    helper: S,
+    helped: bool,
 }
 
-impl<S: Read + Write + Seek, F: FnMut() -> io::Result<S>> Faces<S, F> {
+impl<S: Read + Write + Seek> Faces<S> {
     fn push(&mut self, packed: Vec<u8>) -> io::Result<()> {
         self.bytes += packed.len();
         self.kept.push(packed);
         if self.bytes > self.limit {
-            let helper = match &mut self.helper {
-                Some(helper) => helper,
-                none => none.insert((self.open)()?),
-            };
             for packed in self.kept.drain(..) {
-                helper.write_all(&packed)?;
+                self.helper.write_all(&packed)?;
             }
             self.bytes = 0;
+            self.helped = true;
         }
         Ok(())
     }
 
     fn write_to(&mut self, out: &mut impl Write) -> io::Result<()> {
-        if let Some(helper) = &mut self.helper {
-            helper.flush()?;
-            helper.seek(SeekFrom::Start(0))?;
-            io::copy(helper, out)?;
+        if self.helped {
+            self.helper.flush()?;
+            self.helper.seek(SeekFrom::Start(0))?;
+            io::copy(&mut self.helper, out)?;
         }
         self.kept.drain(..).try_for_each(|packed| out.write_all(&packed))
     }
@@ -72,25 +69,27 @@ impl<S: Read + Write + Seek, F: FnMut() -> io::Result<S>> Faces<S, F> {
 /// Room for digits of the two counts, so that the header keeps its length.
 const COUNT_DIGITS: usize = 20;
 
-impl<W: Write + Seek, S: Read + Write + Seek, F: FnMut() -> io::Result<S>> PlyWriter<W, S, F> {
-    /// Starts a file. `values` names the vertex values behind position and normal; `comments` go into the header. Up to `limit`
-    /// bytes of faces wait in memory; `helper` opens, at most once, what takes them beyond that.
+/// Bytes of faces that wait in memory unless the caller says otherwise: some five million triangles.
+pub const FACES_KEPT: usize = 64 << 20;
+
+impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
+    /// Starts a file. `values` names the vertex values behind position and normal; `comments` go into the header; `helper` takes
+    /// the faces that are too many to keep.
     ///
     /// # Errors
     /// Those of the output.
-    pub fn new(
-        mut out: W,
-        limit: usize,
-        helper: F,
-        joins: Joins,
-        values: Vec<&'static str>,
-        comments: Vec<String>,
-    ) -> io::Result<Self> {
+    pub fn new(mut out: W, helper: S, joins: Joins, values: Vec<&'static str>, comments: Vec<String>) -> io::Result<Self> {
         let header = header(joins, &values, &comments, 0, 0, 0)?;
         let header_bytes = header.len() + 2 * COUNT_DIGITS;
         out.write_all(&vec![b' '; header_bytes])?;
-        let faces = Faces { kept: Vec::new(), bytes: 0, limit, helper: None, open: helper };
+        let faces = Faces { kept: Vec::new(), bytes: 0, limit: FACES_KEPT, helper, helped: false };
         Ok(PlyWriter { out, faces, joins, values, comments, header_bytes, vertex_count: 0, face_count: 0 })
+    }
+
+    /// Lets at most so many bytes of faces wait in memory.
+    pub fn keeping(mut self, bytes: usize) -> Self {
+        self.faces.limit = bytes;
+        self
     }
 
     /// Appends meshes in order.
@@ -113,11 +112,6 @@ impl<W: Write + Seek, S: Read + Write + Seek, F: FnMut() -> io::Result<S>> PlyWr
             self.faces.push(faces)?;
         }
         Ok(())
-    }
-
-    /// Whether faces wait in the helper.
-    pub fn has_helper(&self) -> bool {
-        self.faces.helper.is_some()
     }
 
     /// Appends the faces, writes the header and hands the output back.
@@ -227,12 +221,11 @@ mod tests {
             edges: Vec::new(),
         };
         let file = |limit: usize| {
-            let helper = || Ok(Cursor::new(Vec::new()));
-            let mut w =
-                PlyWriter::new(Cursor::new(Vec::new()), limit, helper, Joins::Triangles, vec!["indicator"], vec!["a test".into()]).unwrap();
+            let (out, helper) = (Cursor::new(Vec::new()), Cursor::new(Vec::new()));
+            let mut w = PlyWriter::new(out, helper, Joins::Triangles, vec!["indicator"], vec!["a test".into()]).unwrap().keeping(limit);
             w.add(&[mesh(7, 0.25)]).unwrap();
             w.add(&[mesh(9, 0.75)]).unwrap();
-            assert_eq!(w.has_helper(), limit < 26);
+            assert_eq!(w.faces.helped, limit < 26);
             w.finish().unwrap().into_inner()
         };
         let bytes = file(26);

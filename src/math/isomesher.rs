@@ -140,14 +140,7 @@ pub(super) fn join(parents: &mut [u32], a: u32, b: u32) -> u32 {
 
 impl<'a, T: Real> Mesher<'a, T> {
     /// A mesher for the given layers, pairs of stored planes; `starts` are the first stored cells of all planes and one past the last.
-    pub fn new(
-        shape: &PatchShape,
-        values: &'a [T],
-        level: f64,
-        starts: &'a [usize],
-        layers: &[[usize; 2]],
-        slabs: usize,
-    ) -> Mesher<'a, T> {
+    pub fn new(shape: &PatchShape, values: &'a [T], level: f64, starts: &'a [usize], layers: &[[usize; 2]], slabs: usize) -> Mesher<'a, T> {
         let largest = layers.iter().flatten().map(|&p| starts[p + 1] - starts[p]).max().unwrap_or(0);
         let slots = if shape.period[2].is_some() { 3 } else { 2 };
         // Every interval has two crossings along x, rough surfaces have as many along y and z; two triangles a vertex.

@@ -62,7 +62,10 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
         p.centres = vertices..vertices + s.centre_points.len();
         vertices = p.centres.end;
     }
-    assert!(vertices.max(triangles) < NONE as usize, "isosurface: expected fewer than 2^32 vertices and triangles, got {vertices}, {triangles}");
+    assert!(
+        vertices.max(triangles) < NONE as usize,
+        "isosurface: expected fewer than 2^32 vertices and triangles, got {vertices}, {triangles}"
+    );
 
     // Own vertices first: a borrowed one is always another slab's own.
     let own: Vec<Vec<u32>> = par::map_range(slabs.len(), |k| {

@@ -53,7 +53,8 @@ pub fn measure(surface: &Isosurface, spacing: [f64; 3]) -> SurfaceMeasures {
 pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]]) -> SurfaceMeasures {
     let (piece_of, count) = pieces(surface);
     // The usual case is summed in registers.
-    let parts = if count == 1 { vec![one_piece(surface, spacing, normals)] } else { several_pieces(surface, spacing, normals, &piece_of, count) };
+    let parts =
+        if count == 1 { vec![one_piece(surface, spacing, normals)] } else { several_pieces(surface, spacing, normals, &piece_of, count) };
     let pairs = surface.behind.iter().flatten().filter(|&&t| t != NONE).count();
     let open_edges = 3 * surface.triangles.len() - 2 * pairs;
     let closed = open_edges == 0 && surface.period == [None; 3];

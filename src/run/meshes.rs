@@ -1,11 +1,11 @@
 //! Writes the meshes of a snapshot into the run folder as they are finished.
 
 use std::fs::File;
-use std::io::{self, BufWriter};
+use std::io::{self, BufWriter, Read, Seek, SeekFrom, Write};
 
 use crate::base::error::{Error, Result};
 use crate::export::atomic::Folder;
-use crate::export::ply::{Joins, PlyWriter};
+use crate::export::ply::{FACES_KEPT, Joins, PlyWriter};
 use crate::model::request::{Family, Indicator, Surfaces};
 use crate::model::sink::ObjectSink;
 use crate::model::source::Fields;
@@ -19,21 +19,62 @@ pub struct MeshFiles<'a> {
     values: Vec<&'static str>,
     each: bool,
     joins: Joins,
-    /// Every file begun, helper files included.
+    /// Every file begun.
     begun: Vec<String>,
     together: Vec<Option<Writer<'a>>>,
 }
 
-/// Opens the helper file of a mesh file.
-type Helper<'a> = Box<dyn FnMut() -> io::Result<File> + Send + 'a>;
+type Writer<'a> = PlyWriter<BufWriter<File>, Helper<'a>>;
 
-type Writer<'a> = PlyWriter<BufWriter<File>, File, Helper<'a>>;
+/// The file where the faces wait that are too many to keep; made when the first are written.
+struct Helper<'a> {
+    folder: &'a Folder,
+    name: String,
+    file: Option<File>,
+}
 
-/// Where the faces wait while vertices are written, when there are too many to keep.
+impl Helper<'_> {
+    fn opened(&mut self) -> io::Result<&mut File> {
+        match &mut self.file {
+            Some(file) => Ok(file),
+            none => Ok(none.insert(self.folder.file(&self.name).map_err(io::Error::other)?)),
+        }
+    }
+}
+
+impl Read for Helper<'_> {
+    fn read(&mut self, out: &mut [u8]) -> io::Result<usize> {
+        self.opened()?.read(out)
+    }
+}
+
+impl Write for Helper<'_> {
+    fn write(&mut self, bytes: &[u8]) -> io::Result<usize> {
+        self.opened()?.write(bytes)
+    }
+
+    fn flush(&mut self) -> io::Result<()> {
+        self.opened()?.flush()
+    }
+}
+
+impl Seek for Helper<'_> {
+    fn seek(&mut self, to: SeekFrom) -> io::Result<u64> {
+        self.opened()?.seek(to)
+    }
+}
+
+impl Drop for Helper<'_> {
+    fn drop(&mut self) {
+        if self.file.take().is_some() {
+            // Of no use any more, whether its faces were copied or writing failed.
+            let _ = self.folder.remove(&self.name);
+        }
+    }
+}
+
+/// What is added to the name of a mesh file for its helper.
 const FACES: &str = ".faces";
-
-/// Bytes of faces, over all files written at a time, that wait in memory: some five million triangles.
-const FACES_KEPT: usize = 64 << 20;
 
 /// Bytes that small meshes wait for before they are written.
 const BUFFER: usize = 1 << 18;
@@ -79,16 +120,16 @@ impl<'a> MeshFiles<'a> {
 
     fn open(&mut self, name: &str, family: usize) -> Result<Writer<'a>> {
         let out = BufWriter::with_capacity(BUFFER, self.folder.file(name)?);
-        let (folder, beside) = (self.folder, format!("{name}{FACES}"));
-        let helper: Helper<'a> = Box::new(move || folder.file(&beside).map_err(io::Error::other));
-        self.begun.extend([name.to_string(), format!("{name}{FACES}")]);
+        let helper = Helper { folder: self.folder, name: format!("{name}{FACES}"), file: None };
+        self.begun.push(name.to_string());
         let comments = vec![
             format!("ropewalk {}", env!("CARGO_PKG_VERSION")),
             // A line break would end the comment and spoil the header.
             format!("snapshot {}", self.snapshot.replace(char::is_control, " ")),
             format!("family {}", self.families[family]),
         ];
-        PlyWriter::new(out, FACES_KEPT / self.families.len().max(1), helper, self.joins, self.values.clone(), comments).map_err(|e| self.failed(name, &e))
+        let writer = PlyWriter::new(out, helper, self.joins, self.values.clone(), comments).map_err(|e| self.failed(name, &e))?;
+        Ok(writer.keeping(FACES_KEPT / self.families.len().max(1)))
     }
 
     fn failed(&self, name: &str, e: &std::io::Error) -> Error {
@@ -96,9 +137,8 @@ impl<'a> MeshFiles<'a> {
     }
 
     fn close(&self, name: &str, writer: Writer<'a>) -> Result<()> {
-        let has_helper = writer.has_helper();
         writer.finish().map_err(|e| self.failed(name, &e))?;
-        if has_helper { self.folder.remove(&format!("{name}{FACES}")) } else { Ok(()) }
+        Ok(())
     }
 
     /// Completes the files.
@@ -118,7 +158,7 @@ impl<'a> MeshFiles<'a> {
     /// Removes what was begun, after a failure.
     pub fn abandon(self) {
         for name in &self.begun {
-            // The failure that led here is what gets reported; helper files of finished meshes are gone already.
+            // The failure that led here is what gets reported.
             let _ = self.folder.remove(name);
         }
     }
