@@ -145,7 +145,7 @@ impl<'a, T: Real> Mesher<'a, T> {
         let slots = if shape.period[2].is_some() { 3 } else { 2 };
         // Every interval has two crossings along x, rough surfaces have as many along y and z; two triangles a vertex.
         // A third more saves most surfaces from being copied to a larger place.
-        let expected = 8 * shape.object.len() / slabs;
+        let expected = (if slabs > 1 { 14 } else { 8 }) * shape.object.len() / slabs;
         Mesher {
             values,
             level,

@@ -133,6 +133,8 @@ impl Isosurface {
             let d = q[axis] - p[axis];
             match self.period[axis] {
                 None => d,
+                // Nearly all are shorter than half a period: no division for those.
+                Some(n) if d.abs() < 0.5 * n as f64 => d,
                 Some(n) => d - n as f64 * (d / n as f64).round(),
             }
         })

@@ -4,7 +4,7 @@ use std::ops::Range;
 
 use crate::base::par;
 use crate::math::isomesher::{NONE, Slab, join};
-use crate::math::isosurface::{EdgeRef, Isosurface, Part};
+use crate::math::isosurface::{Isosurface, Part};
 
 /// The surface made by one walk.
 pub(super) fn single(mut slab: Slab) -> Isosurface {
@@ -37,7 +37,6 @@ struct Task<'a> {
     renumbered: &'a [u32],
     part: &'a Part,
     points: &'a mut [[f64; 3]],
-    edges: &'a mut [EdgeRef],
     centre_points: &'a mut [[f64; 3]],
     centre_vertices: &'a mut [u32],
     triangles: &'a mut [[u32; 3]],
@@ -67,26 +66,21 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
         "isosurface: expected fewer than 2^32 vertices and triangles, got {vertices}, {triangles}"
     );
 
-    // Own vertices first: a borrowed one is always another slab's own.
-    let own: Vec<Vec<u32>> = par::map_range(slabs.len(), |k| {
-        let mut out = Vec::with_capacity(slabs[k].edges.len());
-        let mut id = parts[k].vertices.start as u32;
-        for run in own_runs(&slabs[k]) {
-            out.resize(run.start, NONE);
-            out.extend(run.map(|_| {
-                id += 1;
-                id - 1
-            }));
-        }
-        out
-    });
+    // A borrowed vertex is always another slab's own: of the one below, or across the seam of the first.
     let owner = |k: usize, plane: usize| if plane == 0 { 0 } else { k - 1 };
     let renumbered: Vec<Vec<u32>> = par::map_range(slabs.len(), |k| {
-        let mut out = own[k].clone();
-        out.resize(slabs[k].edges.len(), NONE);
-        for &(here, plane, edge) in &slabs[k].borrowed {
-            let from = owner(k, plane);
-            out[here as usize] = own[from][slabs[from].vertex(plane, edge) as usize];
+        let mut out = Vec::with_capacity(slabs[k].edges.len());
+        let mut id = parts[k].vertices.start as u32;
+        let mut borrowed = slabs[k].borrowed.iter();
+        for run in own_runs(&slabs[k]) {
+            out.extend(id..id + run.len() as u32);
+            id += run.len() as u32;
+            out.extend(borrowed.next().map(|&(_, plane, edge)| {
+                let from = owner(k, plane);
+                let there = slabs[from].vertex(plane, edge);
+                let foreign = slabs[from].borrowed.partition_point(|b| b.0 < there);
+                (parts[from].vertices.start - foreign) as u32 + there
+            }));
         }
         out
     });
@@ -95,7 +89,7 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
         period: slabs[0].period,
         points: vec![[0.0; 3]; vertices],
         triangles: vec![[0; 3]; triangles],
-        edges: vec![EdgeRef { a: 0, b: 0, t: 0.0 }; edges],
+        edges: Vec::with_capacity(edges),
         centre_starts: vec![0],
         centre_vertices: vec![0; slabs.iter().map(|s| s.centre_vertices.len()).sum()],
         behind: vec![[0; 3]; triangles],
@@ -103,11 +97,12 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
         parts: Vec::new(),
     };
     for s in &slabs {
+        own_runs(s).for_each(|run| out.edges.extend_from_slice(&s.edges[run]));
         let before = *out.centre_starts.last().expect("a first start");
         out.centre_starts.extend(s.centre_starts[1..].iter().map(|c| before + c));
     }
     let (mut points, mut centre_points) = out.points.split_at_mut(edges);
-    let (mut edges, mut centre_vertices) = (&mut out.edges[..], &mut out.centre_vertices[..]);
+    let mut centre_vertices = &mut out.centre_vertices[..];
     let (mut triangles, mut behind, mut parents) = (&mut out.triangles[..], &mut out.behind[..], &mut out.parents[..]);
     let mut tasks = Vec::with_capacity(slabs.len());
     for (k, slab) in slabs.iter().enumerate() {
@@ -117,7 +112,6 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
             renumbered: &renumbered[k],
             part,
             points: points.split_off_mut(..part.vertices.len()).expect("as counted"),
-            edges: edges.split_off_mut(..part.vertices.len()).expect("as counted"),
             centre_points: centre_points.split_off_mut(..part.centres.len()).expect("as counted"),
             centre_vertices: centre_vertices.split_off_mut(..slab.centre_vertices.len()).expect("as counted"),
             triangles: triangles.split_off_mut(..part.triangles.len()).expect("as counted"),
@@ -162,12 +156,11 @@ fn own_runs(slab: &Slab) -> impl Iterator<Item = Range<usize>> + '_ {
 }
 
 fn fill(task: Task) {
-    let Task { slab, renumbered, part, points, edges, centre_points, centre_vertices, triangles, behind, parents } = task;
+    let Task { slab, renumbered, part, points, centre_points, centre_vertices, triangles, behind, parents } = task;
     let mut at = 0;
     for run in own_runs(slab) {
         let to = at..at + run.len();
         points[to.clone()].copy_from_slice(&slab.points[run.clone()]);
-        edges[to.clone()].copy_from_slice(&slab.edges[run.clone()]);
         for (to, &p) in parents[to.clone()].iter_mut().zip(&slab.parents[run]) {
             *to = renumbered[p as usize];
         }
