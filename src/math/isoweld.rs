@@ -132,7 +132,7 @@ pub(super) fn weld(slabs: Vec<Slab>) -> Isosurface {
                 let from = owner(k, plane);
                 let other = slabs[from].last[slabs[from].vertex(plane, edge) as usize][face];
                 let here = part.triangles.start + triangle as usize;
-                (other != NONE).then_some((here, side, other + parts[from].triangles.start as u32))
+                (other != NONE).then(|| (here, side, other + parts[from].triangles.start as u32))
             })
             .collect::<Vec<_>>()
     })
