@@ -19,11 +19,11 @@ pub enum Joins {
 
 /// Writes meshes one after the other into one file whose counts are known only at the end.
 ///
-/// Vertices go straight to the output behind a header of fixed length; faces wait in `faces` and are appended by
-/// [`PlyWriter::finish`], which rewrites the header with the final counts.
+/// Vertices go straight to the output behind a header of fixed length; faces wait in memory and, beyond
+/// [`PlyWriter::keeping`], in a helper. [`PlyWriter::finish`] appends them and rewrites the header with the final counts.
 pub struct PlyWriter<W, S> {
     out: W,
-    faces: S,
+    faces: Faces<S>,
     joins: Joins,
     values: Vec<&'static str>,
     comments: Vec<String>,
@@ -32,19 +32,64 @@ pub struct PlyWriter<W, S> {
     face_count: u64,
 }
 
+/// Faces that wait for the last vertex, in order: first those in the helper, then those in memory.
+struct Faces<S> {
+    kept: Vec<Vec<u8>>,
+    bytes: usize,
+    /// Bytes that may wait in memory.
+    limit: usize,
+    helper: S,
+    helped: bool,
+}
+
+impl<S: Read + Write + Seek> Faces<S> {
+    fn push(&mut self, packed: Vec<u8>) -> io::Result<()> {
+        self.bytes += packed.len();
+        self.kept.push(packed);
+        if self.bytes > self.limit {
+            for packed in self.kept.drain(..) {
+                self.helper.write_all(&packed)?;
+            }
+            self.bytes = 0;
+            self.helped = true;
+        }
+        Ok(())
+    }
+
+    fn write_to(&mut self, out: &mut impl Write) -> io::Result<()> {
+        if self.helped {
+            self.helper.flush()?;
+            self.helper.seek(SeekFrom::Start(0))?;
+            io::copy(&mut self.helper, out)?;
+        }
+        self.kept.drain(..).try_for_each(|packed| out.write_all(&packed))
+    }
+}
+
 /// Room for digits of the two counts, so that the header keeps its length.
 const COUNT_DIGITS: usize = 20;
 
+/// Bytes of faces that wait in memory unless the caller says otherwise: some five million triangles.
+pub const FACES_KEPT: usize = 64 << 20;
+
 impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
-    /// Starts a file. `values` names the vertex values behind position and normal; `comments` go into the header.
+    /// Starts a file. `values` names the vertex values behind position and normal; `comments` go into the header; `helper` takes
+    /// the faces that are too many to keep.
     ///
     /// # Errors
     /// Those of the output.
-    pub fn new(mut out: W, faces: S, joins: Joins, values: Vec<&'static str>, comments: Vec<String>) -> io::Result<Self> {
+    pub fn new(mut out: W, helper: S, joins: Joins, values: Vec<&'static str>, comments: Vec<String>) -> io::Result<Self> {
         let header = header(joins, &values, &comments, 0, 0, 0)?;
         let header_bytes = header.len() + 2 * COUNT_DIGITS;
         out.write_all(&vec![b' '; header_bytes])?;
+        let faces = Faces { kept: Vec::new(), bytes: 0, limit: FACES_KEPT, helper, helped: false };
         Ok(PlyWriter { out, faces, joins, values, comments, header_bytes, vertex_count: 0, face_count: 0 })
+    }
+
+    /// Lets at most so many bytes of faces wait in memory.
+    pub fn keeping(mut self, bytes: usize) -> Self {
+        self.faces.limit = bytes;
+        self
     }
 
     /// Appends meshes in order.
@@ -64,7 +109,7 @@ impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
         let packed = par::map(meshes, |i, m| (pack_vertices(m), pack_faces(m, bases[i] as u32)));
         for (vertices, faces) in packed {
             self.out.write_all(&vertices)?;
-            self.faces.write_all(&faces)?;
+            self.faces.push(faces)?;
         }
         Ok(())
     }
@@ -74,9 +119,7 @@ impl<W: Write + Seek, S: Read + Write + Seek> PlyWriter<W, S> {
     /// # Errors
     /// Those of the output.
     pub fn finish(mut self) -> io::Result<W> {
-        self.faces.flush()?;
-        self.faces.seek(SeekFrom::Start(0))?;
-        io::copy(&mut self.faces, &mut self.out)?;
+        self.faces.write_to(&mut self.out)?;
         let bare = header(self.joins, &self.values, &self.comments, self.vertex_count, self.face_count, 0)?;
         let full = header(self.joins, &self.values, &self.comments, self.vertex_count, self.face_count, self.header_bytes - bare.len())?;
         self.out.seek(SeekFrom::Start(0))?;
@@ -127,29 +170,33 @@ fn header(joins: Joins, values: &[&'static str], comments: &[String], vertices: 
 
 fn pack_vertices(m: &SurfaceMesh) -> Vec<u8> {
     let width = 4 * (6 + m.values.len() + 1);
-    let mut out = Vec::with_capacity(m.positions.len() * width);
+    let mut out = vec![0; m.positions.len() * width];
     let id = (m.id as u32).to_le_bytes();
-    for i in 0..m.positions.len() {
-        for v in m.positions[i].iter().chain(&m.normals[i]) {
-            out.extend_from_slice(&v.to_le_bytes());
+    let (records, _) = out.as_chunks_mut::<4>();
+    for (i, record) in records.chunks_exact_mut(width / 4).enumerate() {
+        for (to, v) in record[..3].iter_mut().zip(&m.positions[i]) {
+            *to = v.to_le_bytes();
         }
-        for values in &m.values {
-            out.extend_from_slice(&values[i].to_le_bytes());
+        for (to, v) in record[3..6].iter_mut().zip(&m.normals[i]) {
+            *to = v.to_le_bytes();
         }
-        out.extend_from_slice(&id);
+        let (last, values) = record[6..].split_last_mut().expect("room for the number of the object");
+        for (to, v) in values.iter_mut().zip(&m.values) {
+            *to = v[i].to_le_bytes();
+        }
+        *last = id;
     }
     out
 }
 
 /// Triangles, or edges: a mesh has one of them.
 fn pack_faces(m: &SurfaceMesh, base: u32) -> Vec<u8> {
-    let mut out = Vec::with_capacity(m.triangles.len() * 13);
-    for t in &m.triangles {
-        let mut record = [3u8; 13];
+    const RECORD: usize = 13;
+    let mut out = vec![3; m.triangles.len() * RECORD];
+    for (record, t) in out.as_chunks_mut::<RECORD>().0.iter_mut().zip(&m.triangles) {
         for (k, v) in t.iter().enumerate() {
             record[1 + 4 * k..5 + 4 * k].copy_from_slice(&(v + base).to_le_bytes());
         }
-        out.extend_from_slice(&record);
     }
     for v in m.edges.iter().flatten() {
         out.extend_from_slice(&(v + base).to_le_bytes());
@@ -173,12 +220,16 @@ mod tests {
             triangles: vec![[0, 1, 2]],
             edges: Vec::new(),
         };
-        let mut w =
-            PlyWriter::new(Cursor::new(Vec::new()), Cursor::new(Vec::new()), Joins::Triangles, vec!["indicator"], vec!["a test".into()])
-                .unwrap();
-        w.add(&[mesh(7, 0.25)]).unwrap();
-        w.add(&[mesh(9, 0.75)]).unwrap();
-        let bytes = w.finish().unwrap().into_inner();
+        let file = |limit: usize| {
+            let (out, helper) = (Cursor::new(Vec::new()), Cursor::new(Vec::new()));
+            let mut w = PlyWriter::new(out, helper, Joins::Triangles, vec!["indicator"], vec!["a test".into()]).unwrap().keeping(limit);
+            w.add(&[mesh(7, 0.25)]).unwrap();
+            w.add(&[mesh(9, 0.75)]).unwrap();
+            assert_eq!(w.faces.helped, limit < 26);
+            w.finish().unwrap().into_inner()
+        };
+        let bytes = file(26);
+        assert!([0, 13, 20].iter().all(|&limit| file(limit) == bytes));
         let parser = ply_rs::parser::Parser::<DefaultElement>::new();
         let ply = parser.read_ply(&mut Cursor::new(bytes)).unwrap();
         let vertices = &ply.payload["vertex"];

@@ -1,37 +1,50 @@
 //! Walks the cubes around an object, plane by plane and row by row, and has those at its surface triangulated.
+//!
+//! The surface of a large object is made in slabs of consecutive planes, at the same time, and welded. What is a slab depends on the
+//! patch alone, and the welded surface is the one a single walk makes.
 
+use std::ops::Range;
+
+use crate::base::par;
 use crate::base::real::Real;
 use crate::math::isomesher::Mesher;
 use crate::math::isosurface::Isosurface;
-use crate::space::patch::{Interval, PatchShape, Segment};
+use crate::math::isoweld;
+use crate::space::patch::PatchShape;
+
+/// Stored segments a slab holds at least, except the last: some ten thousand vertices.
+const SLAB: usize = 4096;
 
 /// See [`crate::math::isosurface::isosurface`].
 pub(super) fn extract<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
-    let object = Rows::new(shape.object.iter().map(|i| (i.z, i.y)));
-    let stored = Rows::new(shape.stored.iter().map(|s| (s.z, s.y)));
-    let mut plane_starts: Vec<usize> = stored.planes.iter().map(|p| shape.stored[stored.rows[p.first].first].start).collect();
-    plane_starts.push(shape.cells);
-    let mut mesher = Mesher::new(shape, values, level, plane_starts);
-    let mut walk = Walk { shape, inside: mark_inside(shape), rows: Vec::new(), spans: Vec::new() };
-    let period = shape.period[2];
-    for z in cubes_below(object.planes.iter().map(|p| p.at), period) {
-        let above = next(z, period);
-        let (Some(low), Some(high)) = (stored.plane(z), stored.plane(above)) else {
-            continue;
-        };
-        mesher.enter_plane([z, above], [low, high]);
-        let own = [z, above].map(|z| match object.plane(z) {
-            Some(plane) => object.rows_of(plane),
-            None => &[],
-        });
-        walk.plane(&mut mesher, own, [low, high].map(|p| stored.rows_of(p)));
-    }
-    mesher.finish()
+    extract_in_slabs(shape, values, level, SLAB)
 }
 
-/// 1 for the object's own cells, parallel to the stored cells.
+/// As [`extract`], with slabs of at least `least` segments.
+pub(super) fn extract_in_slabs<T: Real>(shape: &PatchShape, values: &[T], level: f64, least: usize) -> Isosurface {
+    let rows = Rows::new(shape);
+    let layers = rows.layers(shape.period[2]);
+    let slabs = rows.slabs(&layers, least);
+    let walk = Walk { shape, rows: &rows, inside: mark_inside(shape) };
+    let mesh = |k: usize| {
+        let span = slabs[k].clone();
+        let begins = span.start > 0 && layers[span.start - 1][1] == layers[span.start][0];
+        let mut mesher = Mesher::new(shape, values, level, &rows.starts, &layers[span.clone()], slabs.len());
+        for at in span.clone() {
+            let [low, high] = layers[at];
+            // Planes whose vertices another slab makes: the one below, and across the seam the first.
+            let foreign = [begins && at == span.start, k > 0 && high == 0];
+            mesher.enter_plane([low, high].map(|p| rows.planes[p].at), [low, high], foreign);
+            walk.layer(&mut mesher, [low, high]);
+        }
+        mesher.finish()
+    };
+    if slabs.len() < 2 { isoweld::single(mesh(0)) } else { isoweld::weld(par::map_range(slabs.len(), mesh)) }
+}
+
+/// 1 for the object's own cells, parallel to the stored cells; a few zeros more, so that words can be read up to the last cell.
 fn mark_inside(shape: &PatchShape) -> Vec<u8> {
-    let mut inside = vec![0; shape.cells];
+    let mut inside = vec![0; shape.cells + WORD];
     let mut segments = shape.stored.iter();
     let mut segment = segments.next();
     for i in &shape.object {
@@ -50,7 +63,7 @@ fn mark_inside(shape: &PatchShape) -> Vec<u8> {
     inside
 }
 
-/// A group of consecutive entries sharing a coordinate: the intervals of a row, or the rows of a plane.
+/// A group of consecutive entries sharing a coordinate: the segments of a row, or the rows of a plane.
 #[derive(Debug, Clone, Copy)]
 struct Line {
     at: i32,
@@ -58,37 +71,68 @@ struct Line {
     end: usize,
 }
 
-/// Rows and planes of a list sorted by (z, y, x).
+/// Rows and planes of the stored segments.
 struct Rows {
     planes: Vec<Line>,
     rows: Vec<Line>,
+    /// First stored cell of each plane, and one past the last.
+    starts: Vec<usize>,
 }
 
 impl Rows {
-    fn new(keys: impl Iterator<Item = (i32, i32)>) -> Rows {
-        let (mut planes, mut rows): (Vec<Line>, Vec<Line>) = (Vec::new(), Vec::new());
-        for (i, (z, y)) in keys.enumerate() {
-            let new_plane = planes.last().is_none_or(|p| p.at != z);
+    fn new(shape: &PatchShape) -> Rows {
+        let mut out = Rows { planes: Vec::new(), rows: Vec::new(), starts: Vec::new() };
+        for (i, s) in shape.stored.iter().enumerate() {
+            let new_plane = out.planes.last().is_none_or(|p| p.at != s.z);
             if new_plane {
-                planes.push(Line { at: z, first: rows.len(), end: rows.len() });
+                out.planes.push(Line { at: s.z, first: out.rows.len(), end: out.rows.len() });
+                out.starts.push(s.start);
             }
-            if new_plane || rows.last().is_none_or(|r| r.at != y) {
-                rows.push(Line { at: y, first: i, end: i });
-                planes.last_mut().expect("a plane was pushed").end = rows.len();
+            if new_plane || out.rows.last().is_none_or(|r| r.at != s.y) {
+                out.rows.push(Line { at: s.y, first: i, end: i });
+                out.planes.last_mut().expect("a plane was pushed").end = out.rows.len();
             }
-            rows.last_mut().expect("a row was pushed").end = i + 1;
+            out.rows.last_mut().expect("a row was pushed").end = i + 1;
         }
-        Rows { planes, rows }
-    }
-
-    /// Index of the plane at `z`.
-    fn plane(&self, z: i32) -> Option<usize> {
-        self.planes.binary_search_by_key(&z, |p| p.at).ok()
+        out.starts.push(shape.cells);
+        out
     }
 
     fn rows_of(&self, plane: usize) -> &[Line] {
         &self.rows[self.planes[plane].first..self.planes[plane].end]
     }
+
+    /// Stored planes with the one after them: between these lie cubes.
+    fn layers(&self, period: Option<i32>) -> Vec<[usize; 2]> {
+        pairs(&self.planes, period).collect()
+    }
+
+    /// Spans of layers with about equally many segments.
+    fn slabs(&self, layers: &[[usize; 2]], least: usize) -> Vec<Range<usize>> {
+        let mut out = Vec::new();
+        let (mut first, mut segments) = (0, 0);
+        for (k, &[low, _]) in layers.iter().enumerate() {
+            let rows = self.rows_of(low);
+            segments += rows[rows.len() - 1].end - rows[0].first;
+            if segments >= least || k + 1 == layers.len() {
+                out.push(first..k + 1);
+                (first, segments) = (k + 1, 0);
+            }
+        }
+        if out.is_empty() {
+            out.push(0..0);
+        }
+        out
+    }
+}
+
+/// Places of every line and of the one at the next coordinate, where there is one.
+fn pairs(lines: &[Line], period: Option<i32>) -> impl Iterator<Item = [usize; 2]> {
+    (0..lines.len()).filter_map(move |i| {
+        let after = next(lines[i].at, period);
+        let k = if after == 0 && lines[i].at != -1 { 0 } else { i + 1 };
+        lines.get(k).is_some_and(|l| l.at == after).then_some([i, k])
+    })
 }
 
 /// The coordinate after `at`.
@@ -96,154 +140,95 @@ pub(super) fn next(at: i32, period: Option<i32>) -> i32 {
     if period == Some(at + 1) { 0 } else { at + 1 }
 }
 
-/// The coordinate before `at`.
-fn previous(at: i32, period: Option<i32>) -> i32 {
-    match period {
-        Some(n) if at == 0 => n - 1,
-        _ => at - 1,
-    }
-}
+/// Cells looked at together.
+const WORD: usize = 8;
 
-/// Lower coordinates of the cubes touching any of the given ascending coordinates, ascending.
-fn cubes_below(at: impl Iterator<Item = i32>, period: Option<i32>) -> Vec<i32> {
-    let mut cubes = Vec::new();
-    for c in at {
-        cubes.extend([previous(c, period), c]);
-    }
-    cubes.sort_unstable();
-    cubes.dedup();
-    cubes
-}
-
-/// Finds lines by ascending coordinate, each search going on from the last.
-#[derive(Debug, Clone, Copy, Default)]
-struct Cursor(usize);
-
-impl Cursor {
-    fn find(&mut self, lines: &[Line], at: i32) -> Option<Line> {
-        while lines.get(self.0).is_some_and(|l| l.at < at) {
-            self.0 += 1;
-        }
-        lines.get(self.0).copied().filter(|l| l.at == at)
-    }
-}
-
-/// The walk through the cubes, with its scratch lists.
+/// The walk through the cubes.
 struct Walk<'a> {
     shape: &'a PatchShape,
+    rows: &'a Rows,
     /// 1 for the object's own cells, parallel to the stored cells.
     inside: Vec<u8>,
-    rows: Vec<i32>,
-    /// Spans of cubes (first, last) along x.
-    spans: Vec<(i32, i32)>,
 }
 
 impl Walk<'_> {
-    /// Visits all cubes between two planes: `own` holds the object's rows in them, `cells` the stored rows.
-    fn plane<T: Real>(&mut self, mesher: &mut Mesher<T>, own: [&[Line]; 2], cells: [&[Line]; 2]) {
-        let period = self.shape.period[1];
-        self.rows.clear();
-        for line in own.into_iter().flatten() {
-            self.rows.extend([previous(line.at, period), line.at]);
-        }
-        self.rows.sort_unstable();
-        self.rows.dedup();
-
-        let mut own_cursors = [Cursor::default(); 4];
-        let mut cell_cursors = [Cursor::default(); 4];
-        for i in 0..self.rows.len() {
-            let low = self.rows[i];
-            let y = [low, next(low, period)];
-            // Row r of a cube row lies at y[r & 1] in plane r >> 1, like the corner bits.
-            let find = |cursors: &mut [Cursor; 4], lines: [&[Line]; 2], r: usize| {
-                let (lines, at) = (lines[r >> 1], y[r & 1]);
-                if at < low {
-                    // Beyond the seam: the first row, behind the cursor.
-                    return lines.first().copied().filter(|l| l.at == at);
-                }
-                cursors[r].find(lines, at)
-            };
-            let stored = [0, 1, 2, 3].map(|r| find(&mut cell_cursors, cells, r));
-            let object = [0, 1, 2, 3].map(|r| find(&mut own_cursors, own, r));
+    /// Visits all cubes between two planes.
+    fn layer<T: Real>(&self, mesher: &mut Mesher<T>, planes: [usize; 2]) {
+        let [low, high] = planes.map(|p| self.rows.rows_of(p));
+        let mut at = 0;
+        for [i, k] in pairs(low, self.shape.period[1]) {
+            let y = [low[i].at, low[k].at];
+            while high.get(at).is_some_and(|l| l.at < y[0]) {
+                at += 1;
+            }
+            let after = if k > i { at + 1 } else { 0 };
             // A row beyond an open face is not stored: the surface ends here.
-            let [Some(a), Some(b), Some(c), Some(d)] = stored else {
-                continue;
-            };
-            gather_spans(&mut self.spans, &self.shape.object, object, self.shape.period[0]);
-            mesher.enter_row(y);
-            self.row(mesher, [a, b, c, d]);
+            let (Some(c), Some(d)) = (high.get(at), high.get(after)) else { continue };
+            if [c.at, d.at] == y {
+                mesher.enter_row(y);
+                // Row r of a cube row lies at y[r & 1] in plane r >> 1, like the corner bits.
+                self.row(mesher, [low[i], low[k], *c, *d]);
+            }
         }
     }
 
-    /// Visits the cubes of the gathered spans over four rows of stored segments.
+    /// Visits the cubes with all corners in four rows of stored segments.
     fn row<T: Real>(&self, mesher: &mut Mesher<T>, rows: [Line; 4]) {
         let stored = &self.shape.stored;
-        let period = self.shape.period[0];
         let mut at = rows.map(|r| r.first);
-        for &(first, last) in &self.spans {
-            let seam = period == Some(last + 1);
-            let last_plain = if seam { last - 1 } else { last };
-            if first <= last_plain {
-                // A cell the dilation stores in all four rows, also where an open face clips the span's first cell.
-                let probe = if period.is_some() { first } else { first + 1 };
-                let (mut low, mut high) = (first, last_plain + 1);
-                let segments: [Segment; 4] = std::array::from_fn(|r| {
-                    while at[r] + 1 < rows[r].end && stored[at[r] + 1].x <= probe {
-                        at[r] += 1;
-                    }
-                    let s = stored[at[r]];
-                    low = low.max(s.x);
-                    high = high.min(s.x + s.len as i32 - 1);
-                    s
-                });
-                if low < high {
-                    let cells = segments.map(|s| s.start + (low - s.x) as usize);
-                    self.cubes(mesher, low, (high - low) as usize, cells, cells.map(|c| c + 1));
+        while (0..4).all(|r| at[r] < rows[r].end) {
+            let segments = at.map(|k| &stored[k]);
+            let ends = segments.map(|s| s.x + s.len as i32);
+            let low = segments.iter().map(|s| s.x).fold(i32::MIN, i32::max);
+            let high = ends.into_iter().fold(i32::MAX, i32::min);
+            if high - low > 1 {
+                self.cubes(mesher, low, (high - low - 1) as usize, segments.map(|s| s.start + (low - s.x) as usize));
+            }
+            for r in 0..4 {
+                at[r] += (ends[r] == high) as usize;
+            }
+        }
+        if let Some(n) = self.shape.period[0] {
+            let (first, last) = (rows.map(|r| stored[r.first]), rows.map(|r| stored[r.end - 1]));
+            if (0..4).all(|r| first[r].x == 0 && last[r].x + last[r].len as i32 == n) {
+                let (near, far) = (last.map(|s| s.start + s.len as usize - 1), first.map(|s| s.start));
+                let column = |cells: [usize; 4]| (0..4).fold(0, |m, r| m | self.inside[cells[r]] << r);
+                let mask = column(near) | column(far) << 4;
+                if mask != 0 && mask != 255 {
+                    mesher.cube(mask, n - 1, [near[0], near[1], near[2], near[3], far[0], far[1], far[2], far[3]]);
                 }
             }
-            if seam {
-                let near = rows.map(|r| stored[r.end - 1].start + stored[r.end - 1].len as usize - 1);
-                self.cubes(mesher, last, 1, near, rows.map(|r| stored[r.first].start));
-            }
         }
     }
 
-    /// Visits `count` cubes from `x` on; `near` and `far` are the stored indices of the first cube's corners at lower
-    /// and upper x, in row order.
-    fn cubes<T: Real>(&self, mesher: &mut Mesher<T>, x: i32, count: usize, near: [usize; 4], far: [usize; 4]) {
-        let ahead = far.map(|first| &self.inside[first..first + count]);
-        let mut left = (0..4).fold(0, |m, r| m | self.inside[near[r]] << r);
-        for j in 0..count {
-            let right = (0..4).fold(0, |m, r| m | ahead[r][j] << r);
-            let mask = left | right << 4;
-            left = right;
-            if mask != 0 && mask != 255 {
-                let (n, f) = (near, far);
-                let cells = [n[0], n[1], n[2], n[3], f[0], f[1], f[2], f[3]].map(|c| c + j);
-                mesher.cube(mask, x + j as i32, cells);
+    /// Visits `count` cubes from `x` on; `near` are the stored indices of the first cube's corners at lower x, in row order.
+    fn cubes<T: Real>(&self, mesher: &mut Mesher<T>, x: i32, count: usize, near: [usize; 4]) {
+        const LOW: u64 = 0x7f7f_7f7f_7f7f_7f7f;
+        /// The high bit of every byte that is zero.
+        fn zeros(v: u64) -> u64 {
+            !(((v & LOW) + LOW) | v | LOW)
+        }
+        let mut done = 0;
+        while done < count {
+            // Eight columns of four corners, a byte each, are seven cubes.
+            let column = |r: usize| {
+                let from = near[r] + done;
+                let bytes: [u8; WORD] = self.inside[from..from + WORD].try_into().expect("eight bytes");
+                u64::from_le_bytes(bytes) << r
+            };
+            let columns = column(0) | column(1) | column(2) | column(3);
+            let masks = columns | columns >> 8 << 4;
+            let cubes = (count - done).min(WORD - 1);
+            let mut crossed = !(zeros(masks) | zeros(!masks)) & !LOW & ((1 << (8 * cubes)) - 1);
+            while crossed != 0 {
+                let byte = crossed.trailing_zeros() as usize / 8;
+                crossed &= crossed - 1;
+                let j = done + byte;
+                let n = near.map(|c| c + j);
+                let cells = [n[0], n[1], n[2], n[3], n[0] + 1, n[1] + 1, n[2] + 1, n[3] + 1];
+                mesher.cube((masks >> (8 * byte)) as u8, x + j as i32, cells);
             }
+            done += cubes;
         }
     }
-}
-
-/// Spans of cubes (first, last) along x that touch the object in one of four rows, ascending, disjoint, not adjacent.
-fn gather_spans(spans: &mut Vec<(i32, i32)>, object: &[Interval], rows: [Option<Line>; 4], period: Option<i32>) {
-    spans.clear();
-    for line in rows.into_iter().flatten() {
-        for i in &object[line.first..line.end] {
-            let last = i.x + i.len as i32 - 1;
-            match period {
-                Some(n) if i.x == 0 => spans.extend([(0, last), (n - 1, n - 1)]),
-                _ => spans.push((i.x - 1, last)),
-            }
-        }
-    }
-    spans.sort_unstable();
-    spans.dedup_by(|span, before| {
-        let touch = span.0 <= before.1 + 1;
-        if touch {
-            before.1 = before.1.max(span.1);
-        }
-        touch
-    });
 }

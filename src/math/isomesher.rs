@@ -1,9 +1,10 @@
-//! Triangulates one cube at a time: welded vertices on grid edges, face decisions, caps of the loops.
+//! Triangulates one cube at a time: welded vertices on grid edges, face decisions, caps of the loops, and which triangles meet
+//! at an edge.
 
 use crate::base::real::Real;
 use crate::math::isocubes::next;
-use crate::math::isosurface::{EdgeRef, Isosurface, cross, dot};
-use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, TABLE, Table};
+use crate::math::isosurface::{EdgeRef, cross, dot};
+use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, Loop, TABLE, Table};
 use crate::space::patch::PatchShape;
 
 /// Vertices keep this distance from the cell centres, in cells, so that no triangle shrinks to nothing.
@@ -31,73 +32,164 @@ const CORNERS: [[f64; 3]; 8] = [
 /// The vertices of a loop of five from each apex on.
 const FAN_OF_FIVE: [[usize; 5]; 5] = [[0, 1, 2, 3, 4], [1, 2, 3, 4, 0], [2, 3, 4, 0, 1], [3, 4, 0, 1, 2], [4, 0, 1, 2, 3]];
 
-const NONE: u32 = u32::MAX;
+/// No vertex, or no triangle.
+pub(super) const NONE: u32 = u32::MAX;
 
-/// The growing surface and the vertex indices of the planes of cells at hand.
+/// The vertex indices of the planes of cells at hand, and the surface that grows.
 pub(super) struct Mesher<'a, T> {
     values: &'a [T],
     level: f64,
     table: &'static Table,
-    surface: Isosurface,
-    /// First triangle of each centre vertex's fan: the centre's index is known when all edge vertices are counted.
-    fans: Vec<u32>,
-    centre_points: Vec<[f64; 3]>,
+    slab: Slab,
+    /// What to add to 3 × stored index for the position in `slab.vertices`, for the lower and the upper plane.
+    shift: [usize; 2],
+    y: [i32; 2],
+    z: [i32; 2],
+    /// Whether the vertices in the lower and in the upper plane belong to another slab.
+    foreign: [bool; 2],
+    starts: &'a [usize],
+}
+
+/// The surface of some consecutive layers of cubes. Vertices are numbered within it, those that belong to another slab included.
+pub(super) struct Slab {
+    pub period: [Option<i32>; 3],
+    pub points: Vec<[f64; 3]>,
+    pub edges: Vec<EdgeRef>,
+    /// The third vertex of a triangle at a centre is `NONE`: its index is known when all edge vertices are counted.
+    pub triangles: Vec<[u32; 3]>,
+    /// For each side 0-1, 1-2, 2-0 of each triangle the triangle across, where that came before.
+    pub behind: Vec<[u32; 3]>,
+    /// First triangle of each centre vertex's fan.
+    pub fans: Vec<u32>,
+    pub centre_points: Vec<[f64; 3]>,
+    pub centre_starts: Vec<u32>,
+    pub centre_vertices: Vec<u32>,
+    /// Vertices that belong to another slab: index here, stored plane, 3 × cell within the plane + axis. Ascending.
+    pub borrowed: Vec<(u32, usize, usize)>,
+    /// Sides without a triangle that came before, on cubes at a foreign plane: triangle, side, place in `last`.
+    pub loose: Vec<(u32, u8, u32)>,
+    /// For each edge vertex one of a lower index in the same piece of the slab's surface, or itself.
+    pub parents: Vec<u32>,
+    /// The last triangle on each of the four cube faces at every edge vertex.
+    pub last: Vec<[u32; 4]>,
     /// Three vertex indices (edges along x, y, z) a stored cell, for a few planes at a time, each in its slot.
     vertices: Vec<u32>,
     slot_len: usize,
     /// Which stored plane each slot holds. The last slot keeps the first plane for the cubes across the seam.
     held: [usize; 3],
-    /// First stored cell of each plane, and one past the last.
-    plane_starts: Vec<usize>,
-    /// What to add to 3 × stored index for the position in `vertices`, for the lower and the upper plane.
-    shift: [usize; 2],
-    y: [i32; 2],
-    z: [i32; 2],
+}
+
+impl Slab {
+    /// Where the vertices of a stored plane are kept.
+    fn slot(&self, plane: usize) -> usize {
+        if self.period[2].is_some() && plane == 0 { 2 } else { plane & 1 }
+    }
+
+    /// Notes that the vertices of a loop belong to one piece; new ones have no parent yet.
+    #[inline(always)]
+    fn hang_together(&mut self, ids: &[u32]) {
+        // Nearly always those that are not new have one parent.
+        let (mut low, mut high) = (NONE, 0);
+        for &id in ids {
+            let parent = self.parents[id as usize];
+            low = low.min(parent);
+            high = high.max(parent.wrapping_add(1));
+        }
+        if low == NONE {
+            low = ids.iter().copied().fold(NONE, u32::min);
+        } else if high != low + 1 {
+            low = NONE;
+            for &id in ids {
+                if self.parents[id as usize] != NONE {
+                    low = match low {
+                        NONE => root(&mut self.parents, id),
+                        _ => join(&mut self.parents, low, id),
+                    };
+                }
+            }
+        }
+        for &id in ids {
+            let parent = &mut self.parents[id as usize];
+            *parent = (*parent).min(low);
+        }
+    }
+
+    /// The vertex on an edge: 3 × cell within the plane + axis. The plane is the slab's last, or the first of all.
+    pub fn vertex(&self, plane: usize, edge: usize) -> u32 {
+        let slot = self.slot(plane);
+        if self.held[slot] == plane { self.vertices[slot * self.slot_len + edge] } else { NONE }
+    }
+}
+
+/// The first of all vertices known to be in the piece of `v`; shortens the way there.
+pub(super) fn root(parents: &mut [u32], mut v: u32) -> u32 {
+    while parents[v as usize] != v {
+        let up = parents[parents[v as usize] as usize];
+        parents[v as usize] = up;
+        v = up;
+    }
+    v
+}
+
+/// Makes one piece of two; returns its root.
+pub(super) fn join(parents: &mut [u32], a: u32, b: u32) -> u32 {
+    let (a, b) = (root(parents, a), root(parents, b));
+    parents[a.max(b) as usize] = a.min(b);
+    a.min(b)
 }
 
 impl<'a, T: Real> Mesher<'a, T> {
-    pub fn new(shape: &PatchShape, values: &'a [T], level: f64, plane_starts: Vec<usize>) -> Mesher<'a, T> {
-        let largest = plane_starts.windows(2).map(|w| w[1] - w[0]).max().unwrap_or(0);
+    /// A mesher for the given layers, pairs of stored planes; `starts` are the first stored cells of all planes and one past the last.
+    pub fn new(shape: &PatchShape, values: &'a [T], level: f64, starts: &'a [usize], layers: &[[usize; 2]], slabs: usize) -> Mesher<'a, T> {
+        let largest = layers.iter().flatten().map(|&p| starts[p + 1] - starts[p]).max().unwrap_or(0);
         let slots = if shape.period[2].is_some() { 3 } else { 2 };
         // Every interval has two crossings along x, rough surfaces have as many along y and z; two triangles a vertex.
         // A third more saves most surfaces from being copied to a larger place.
-        let expected = 8 * shape.object.len();
+        let expected = (if slabs > 1 { 14 } else { 8 }) * shape.object.len() / slabs;
         Mesher {
             values,
             level,
             table: &TABLE,
-            surface: Isosurface {
+            slab: Slab {
                 period: shape.period,
                 points: Vec::with_capacity(expected),
-                triangles: Vec::with_capacity(2 * expected),
                 edges: Vec::with_capacity(expected),
+                triangles: Vec::with_capacity(2 * expected),
+                behind: Vec::with_capacity(2 * expected),
+                fans: Vec::new(),
+                centre_points: Vec::new(),
                 centre_starts: vec![0],
                 centre_vertices: Vec::new(),
+                borrowed: Vec::new(),
+                loose: Vec::new(),
+                parents: Vec::with_capacity(expected),
+                last: Vec::with_capacity(expected),
+                vertices: vec![NONE; slots * 3 * largest],
+                slot_len: 3 * largest,
+                held: [usize::MAX; 3],
             },
-            fans: Vec::new(),
-            centre_points: Vec::new(),
-            vertices: vec![NONE; slots * 3 * largest],
-            slot_len: 3 * largest,
-            held: [usize::MAX; 3],
-            plane_starts,
             shift: [0; 2],
             y: [0; 2],
             z: [0; 2],
+            foreign: [false; 2],
+            starts,
         }
     }
 
-    /// Goes on to the cubes between two planes: their coordinates and their places among the stored planes.
-    pub fn enter_plane(&mut self, z: [i32; 2], planes: [usize; 2]) {
+    /// Goes on to the cubes between two planes: their coordinates, their places among the stored planes, and which belong to
+    /// another slab.
+    pub fn enter_plane(&mut self, z: [i32; 2], planes: [usize; 2], foreign: [bool; 2]) {
         self.z = z;
+        self.foreign = foreign;
+        let slab = &mut self.slab;
         for (k, plane) in planes.into_iter().enumerate() {
-            let last_slot = self.surface.period[2].is_some() && plane == 0;
-            let slot = if last_slot { 2 } else { plane & 1 };
-            let begin = slot * self.slot_len;
-            let first = self.plane_starts[plane];
-            if self.held[slot] != plane {
-                self.held[slot] = plane;
-                let cells = self.plane_starts[plane + 1] - first;
-                self.vertices[begin..begin + 3 * cells].fill(NONE);
+            let slot = slab.slot(plane);
+            let begin = slot * slab.slot_len;
+            let first = self.starts[plane];
+            if slab.held[slot] != plane {
+                slab.held[slot] = plane;
+                let cells = self.starts[plane + 1] - first;
+                slab.vertices[begin..begin + 3 * cells].fill(NONE);
             }
             self.shift[k] = begin.wrapping_sub(3 * first);
         }
@@ -120,81 +212,131 @@ impl<'a, T: Real> Mesher<'a, T> {
             let (ac, bd) = (height(a) * height(c), height(b) * height(d));
             if mask >> a & 1 == 1 { ac > bd } else { bd > ac }
         };
-        let mut ids = [NONE; LONGEST];
-        let mut spots = [[0.0; 3]; LONGEST];
         for l in table.loops(mask, joined) {
-            let n = l.len as usize;
-            for k in 0..n {
-                let edge = EDGES[l.edges[k] as usize];
-                let (corner, axis) = (edge.corner as usize, edge.axis as usize);
-                let slot = (3 * cells[corner] + axis).wrapping_add(self.shift[corner >> 1 & 1]);
-                let mut id = self.vertices[slot];
-                if id == NONE {
-                    id = self.surface.edges.len() as u32;
-                    self.vertices[slot] = id;
-                    let upper = corner | AXIS_BIT[axis];
-                    let (a, b) = (height(corner), height(upper));
-                    let t = (a / (a - b)).clamp(CLEARANCE, 1.0 - CLEARANCE);
-                    self.add_vertex(x, corner, axis, [cells[corner], cells[upper]], t);
-                }
-                ids[k] = id;
-                spots[k] = CORNERS[corner];
-                spots[k][axis] = self.surface.edges[id as usize].t;
+            // One decision on the length, and no loops of unknown length after it.
+            match l.len {
+                3 => self.polygon::<3>(l, mask, x, &cells),
+                4 => self.polygon::<4>(l, mask, x, &cells),
+                5 => self.polygon::<5>(l, mask, x, &cells),
+                _ => self.polygon::<LONGEST>(l, mask, x, &cells),
             }
-            self.cap(&ids[..n], &spots[..n], x);
         }
     }
 
+    /// Makes the vertices of a loop of at most `N`, those that are not there yet, and closes it.
+    #[inline]
+    fn polygon<const N: usize>(&mut self, l: &Loop, mask: u8, x: i32, cells: &[usize; 8]) {
+        let n = if N == LONGEST { l.len as usize } else { N };
+        let mut ids = [NONE; N];
+        let mut spots = [[0.0; 3]; N];
+        for k in 0..n {
+            let edge = EDGES[l.edges[k] as usize];
+            let (corner, axis) = (edge.corner as usize, edge.axis as usize);
+            let slot = (3 * cells[corner] + axis).wrapping_add(self.shift[corner >> 1 & 1]);
+            let mut id = self.slab.vertices[slot];
+            if id == NONE {
+                id = self.slab.edges.len() as u32;
+                self.slab.vertices[slot] = id;
+                let upper = corner | AXIS_BIT[axis];
+                let height = |corner: usize| height(mask, corner, self.values[cells[corner]].wide() - self.level);
+                let (a, b) = (height(corner), height(upper));
+                let t = (a / (a - b)).clamp(CLEARANCE, 1.0 - CLEARANCE);
+                self.add_vertex(x, corner, axis, [cells[corner], cells[upper]], t);
+            }
+            ids[k] = id;
+            if N != 3 {
+                spots[k] = CORNERS[corner];
+                spots[k][axis] = self.slab.edges[id as usize].t;
+            }
+        }
+        self.slab.hang_together(&ids[..n]);
+        self.cap(&ids[..n], &spots[..n], &l.keys, x);
+    }
+
+    #[inline]
     fn add_vertex(&mut self, x: i32, corner: usize, axis: usize, cells: [usize; 2], t: f64) {
-        let x = if corner & AXIS_BIT[0] == 0 { x } else { next(x, self.surface.period[0]) };
-        let mut point = [x, self.y[corner & 1], self.z[corner >> 1 & 1]].map(f64::from);
+        let slab = &mut self.slab;
+        let side = corner >> 1 & 1;
+        if self.foreign[side] && axis != 2 {
+            // The seam alone leads to a foreign upper plane, the first.
+            let plane = if side == 1 { 0 } else { self.starts.partition_point(|&s| s <= cells[0]) - 1 };
+            slab.borrowed.push((slab.edges.len() as u32, plane, 3 * (cells[0] - self.starts[plane]) + axis));
+        }
+        let x = if corner & AXIS_BIT[0] == 0 { x } else { next(x, slab.period[0]) };
+        let mut point = [x, self.y[corner & 1], self.z[side]].map(f64::from);
         point[axis] += t;
-        self.surface.points.push(point);
-        self.surface.edges.push(EdgeRef { a: cells[0] as u32, b: cells[1] as u32, t });
+        slab.points.push(point);
+        slab.edges.push(EdgeRef { a: cells[0] as u32, b: cells[1] as u32, t });
+        slab.last.push([NONE; 4]);
+        slab.parents.push(NONE);
     }
 
     /// Closes a loop by triangles. `ids` and `spots` are its vertices, the latter relative to the cube's lower corner.
-    #[inline]
-    fn cap(&mut self, ids: &[u32], spots: &[[f64; 3]], x: i32) {
-        let triangles = &mut self.surface.triangles;
+    #[inline(always)]
+    fn cap(&mut self, ids: &[u32], spots: &[[f64; 3]], keys: &[u8; LONGEST], x: i32) {
+        let first = self.slab.triangles.len() as u32;
         match (ids, apex(spots)) {
-            (&[a, b, c], _) => triangles.push([a, b, c]),
-            (&[a, b, c, d], Some(0)) => triangles.extend([[a, b, c], [a, c, d]]),
-            (&[a, b, c, d], Some(_)) => triangles.extend([[b, c, d], [b, d, a]]),
-            (_, Some(first)) => {
-                let [a, b, c, d, e] = FAN_OF_FIVE[first].map(|k| ids[k]);
-                triangles.extend([[a, b, c], [a, c, d], [a, d, e]]);
+            (&[a, b, c], _) => {
+                let s = [0, 1, 2].map(|k| self.meet(ids, keys, k, first, k));
+                self.slab.triangles.push([a, b, c]);
+                self.slab.behind.push(s);
+            }
+            (_, Some(apex)) if ids.len() == 4 => {
+                // Which diagonal is shorter is as good as random: no branch on it.
+                let turn = |k: usize| (k + apex) & 3;
+                let [a, b, c, d] = [0, 1, 2, 3].map(|k| ids[turn(k)]);
+                let s = [0, 1].map(|k| self.meet(ids, keys, turn(k), first, k));
+                let t = [2, 3].map(|k| self.meet(ids, keys, turn(k), first + 1, k - 1));
+                self.slab.triangles.extend([[a, b, c], [a, c, d]]);
+                self.slab.behind.extend([[s[0], s[1], NONE], [first, t[0], t[1]]]);
+            }
+            (_, Some(apex)) => {
+                let turned = FAN_OF_FIVE[apex];
+                let [a, b, c, d, e] = turned.map(|k| ids[k]);
+                let mut s = [NONE; 5];
+                for (k, (triangle, side)) in [(0, 0), (0, 1), (1, 1), (2, 1), (2, 2)].into_iter().enumerate() {
+                    s[k] = self.meet(ids, keys, turned[k], first + triangle, side);
+                }
+                self.slab.triangles.extend([[a, b, c], [a, c, d], [a, d, e]]);
+                self.slab.behind.extend([[s[0], s[1], NONE], [first, s[2], NONE], [first + 1, s[3], s[4]]]);
             }
             (_, None) => {
-                self.fans.push(triangles.len() as u32);
-                let mut before = ids[ids.len() - 1];
-                for &id in ids {
-                    triangles.push([before, id, NONE]);
-                    before = id;
+                let n = ids.len();
+                for k in 0..n {
+                    let (triangle, before) = (first + k as u32, (k + n - 1) % n);
+                    let rim = self.meet(ids, keys, before, triangle, 0);
+                    self.slab.triangles.push([ids[before], ids[k], NONE]);
+                    let onward = if k + 1 == n { first } else { NONE };
+                    let back = if k == 0 { NONE } else { triangle - 1 };
+                    self.slab.behind.push([rim, onward, back]);
                 }
+                let slab = &mut self.slab;
+                slab.fans.push(first);
                 let base = [x, self.y[0], self.z[0]].map(f64::from);
-                self.centre_points.push(std::array::from_fn(|axis| {
+                slab.centre_points.push(std::array::from_fn(|axis| {
                     let sum: f64 = spots.iter().map(|p| p[axis]).sum();
                     base[axis] + sum / spots.len() as f64
                 }));
-                self.surface.centre_vertices.extend_from_slice(ids);
-                self.surface.centre_starts.push(self.surface.centre_vertices.len() as u32);
+                slab.centre_vertices.extend_from_slice(ids);
+                slab.centre_starts.push(slab.centre_vertices.len() as u32);
             }
         }
     }
 
-    /// Numbers the centre vertices behind the edge vertices.
-    pub fn finish(mut self) -> Isosurface {
-        let surface = &mut self.surface;
-        for (i, &first) in self.fans.iter().enumerate() {
-            let id = (surface.edges.len() + i) as u32;
-            let sides = surface.centre(i).len();
-            for triangle in &mut surface.triangles[first as usize..][..sides] {
-                triangle[2] = id;
-            }
+    /// Leaves a triangle at segment `k` of a loop, one of its sides, and returns the one that was left there from the other cube.
+    #[inline(always)]
+    fn meet(&mut self, ids: &[u32], keys: &[u8; LONGEST], k: usize, triangle: u32, side: usize) -> u32 {
+        let (vertex, face) = (ids[keys[k] as usize >> 2], keys[k] & 3);
+        let before = std::mem::replace(&mut self.slab.last[vertex as usize][face as usize], triangle);
+        if self.foreign != [false; 2] && before == NONE {
+            self.slab.loose.push((triangle, side as u8, 4 * vertex + u32::from(face)));
         }
-        surface.points.append(&mut self.centre_points);
-        self.surface
+        before
+    }
+
+    /// The slab when all its layers are done.
+    pub fn finish(self) -> Slab {
+        self.slab
     }
 }
 
@@ -205,7 +347,7 @@ fn height(mask: u8, corner: usize, above: f64) -> f64 {
 }
 
 /// The loop vertex from which a fan of chords closes the loop, or `None` when it takes a centre vertex.
-#[inline]
+#[inline(always)]
 fn apex(p: &[[f64; 3]]) -> Option<usize> {
     match p.len() {
         3 => Some(0),

@@ -4,9 +4,12 @@
 //! (Nielson & Hamann 1991) and no tunnels inside a cube, so that it is always a closed two-dimensional manifold
 //! except where the object leaves the box through an open face.
 
+use std::ops::Range;
+
+use crate::base::par;
 use crate::base::real::Real;
-use crate::math::halfedge;
 use crate::math::isocubes;
+use crate::math::isomesher::NONE;
 use crate::math::unwrap;
 use crate::space::patch::PatchShape;
 
@@ -21,6 +24,14 @@ pub struct EdgeRef {
     pub b: u32,
     /// Position between them: 0 at `a`, 1 at `b`; within [1e-4, 1 - 1e-4].
     pub t: f64,
+}
+
+impl EdgeRef {
+    /// The value of a stored field here, linear along the edge.
+    #[inline]
+    pub fn of<T: Real>(&self, field: &[T]) -> f64 {
+        (1.0 - self.t) * field[self.a as usize].wide() + self.t * field[self.b as usize].wide()
+    }
 }
 
 /// Triangles over shared vertices, counter-clockwise seen from outside (the low side).
@@ -45,7 +56,26 @@ pub struct Isosurface {
     pub(super) centre_starts: Vec<u32>,
     /// Edge vertices around each centre vertex.
     pub(super) centre_vertices: Vec<u32>,
+    /// For each side 0-1, 1-2, 2-0 of each triangle the triangle across, where that has a lower index or, in a ring about a centre
+    /// vertex, is the first; else `u32::MAX`. Every pair stands once, at the triangle whose turn comes when both are known.
+    pub(super) behind: Vec<[u32; 3]>,
+    /// For each edge vertex another of the same piece of the surface, of lower index, or itself for the first of a piece.
+    pub(super) parents: Vec<u32>,
+    /// What was made together, in order: small surfaces have one part. Work on a large one is shared out by these.
+    pub(super) parts: Vec<Part>,
 }
+
+/// Vertices and triangles made together: edge vertices, centre vertices, triangles. Triangles of a part have vertices of their own
+/// and of parts before.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) struct Part {
+    pub vertices: Range<usize>,
+    pub centres: Range<usize>,
+    pub triangles: Range<usize>,
+}
+
+/// Triangles a worker goes through at a time.
+const TRIANGLES: usize = 1 << 14;
 
 /// Extracts the surface `values = level` around the object's own cells.
 ///
@@ -84,14 +114,15 @@ impl Isosurface {
     /// # Panics
     /// When `field` has fewer values than the patch has stored cells.
     pub fn interpolate<T: Real>(&self, field: &[T]) -> Vec<f64> {
-        let mut out = Vec::with_capacity(self.points.len());
-        out.extend(self.edges.iter().map(|e| (1.0 - e.t) * field[e.a as usize].wide() + e.t * field[e.b as usize].wide()));
-        for i in 0..self.centres() {
-            let around = self.centre(i);
-            let sum: f64 = around.iter().map(|&v| out[v as usize]).sum();
-            out.push(sum / around.len() as f64);
-        }
-        out
+        let edges = self.edges.iter().map(|e| e.of(field));
+        edges.chain((0..self.centres()).map(|i| self.centre_of(i, field))).collect()
+    }
+
+    /// The value of a stored field at the centre vertex `edges.len() + i`.
+    pub fn centre_of<T: Real>(&self, i: usize, field: &[T]) -> f64 {
+        let around = self.centre(i);
+        let sum: f64 = around.iter().map(|&v| self.edges[v as usize].of(field)).sum();
+        sum / around.len() as f64
     }
 
     /// The shortest vector from vertex `a` to vertex `b` modulo the periods, in cells.
@@ -102,6 +133,8 @@ impl Isosurface {
             let d = q[axis] - p[axis];
             match self.period[axis] {
                 None => d,
+                // Nearly all are shorter than half a period: no division for those.
+                Some(n) if d.abs() < 0.5 * n as f64 => d,
                 Some(n) => d - n as f64 * (d / n as f64).round(),
             }
         })
@@ -116,7 +149,16 @@ impl Isosurface {
 
     /// Twice the area of every triangle times its outward unit normal, in physical units for the given spacing.
     pub fn area_vectors(&self, spacing: [f64; 3]) -> Vec<[f64; 3]> {
-        self.triangles.iter().map(|&t| self.area_vector(t, spacing)).collect()
+        if self.parts.len() < 2 {
+            return self.triangles.iter().map(|&t| self.area_vector(t, spacing)).collect();
+        }
+        let mut out = vec![[0.0; 3]; self.triangles.len()];
+        par::for_chunks(&mut out, TRIANGLES, |k, chunk| {
+            for (to, &t) in chunk.iter_mut().zip(&self.triangles[k * TRIANGLES..]) {
+                *to = self.area_vector(t, spacing);
+            }
+        });
+        out
     }
 
     /// Unit outward vertex normals in physical space, the area-weighted mean over the triangles at each vertex, from
@@ -125,19 +167,44 @@ impl Isosurface {
     /// A vertex whose triangles cancel exactly has the zero vector.
     pub fn vertex_normals(&self, area_vectors: &[[f64; 3]]) -> Vec<[f64; 3]> {
         let mut normals = vec![[0.0; 3]; self.points.len()];
-        for (triangle, area) in self.triangles.iter().zip(area_vectors) {
-            for &v in triangle {
-                for axis in 0..3 {
-                    normals[v as usize][axis] += area[axis];
+        if let [_] = &self.parts[..] {
+            for (triangle, area) in self.triangles.iter().zip(area_vectors) {
+                for &v in triangle {
+                    add(&mut normals[v as usize], area);
                 }
             }
+            normals.iter_mut().for_each(unit);
+            return normals;
         }
-        for n in &mut normals {
-            let length = dot(*n, *n).sqrt();
-            if length > 0.0 {
-                *n = n.map(|c| c / length);
+        // Each part sums at its own vertices. What its triangles add to those of parts before comes later in the order of triangles
+        // and is added afterwards, part by part.
+        let (mut vertices, mut centres) = normals.split_at_mut(self.edges.len());
+        let mut own = Vec::with_capacity(self.parts.len());
+        for p in &self.parts {
+            let vertices = vertices.split_off_mut(..p.vertices.len()).expect("parts hold all vertices");
+            own.push((p, vertices, centres.split_off_mut(..p.centres.len()).expect("parts hold all centres")));
+        }
+        let late = par::map_owned(own, |_, (part, vertices, centres)| {
+            let mut late = Vec::new();
+            let triangles = part.triangles.clone();
+            for (triangle, area) in self.triangles[triangles.clone()].iter().zip(&area_vectors[triangles]) {
+                for &v in triangle {
+                    let at = v as usize;
+                    if at < part.vertices.start {
+                        late.push((v, *area));
+                    } else if at < part.vertices.end {
+                        add(&mut vertices[at - part.vertices.start], area);
+                    } else {
+                        add(&mut centres[at - part.centres.start], area);
+                    }
+                }
             }
+            late
+        });
+        for (v, area) in late.iter().flatten() {
+            add(&mut normals[*v as usize], area);
         }
+        par::for_chunks(&mut normals, TRIANGLES, |_, chunk| chunk.iter_mut().for_each(unit));
         normals
     }
 
@@ -149,14 +216,32 @@ impl Isosurface {
 
     /// For each triangle the triangles across its edges 0-1, 1-2 and 2-0; `u32::MAX` where there is none.
     pub fn neighbours(&self) -> Vec<[u32; 3]> {
-        let mut across = vec![[u32::MAX; 3]; self.triangles.len()];
-        halfedge::for_each_edge(self.points.len(), &self.triangles, |_, _, sides| {
-            if let [a, b] = *sides {
-                across[a.triangle()][a.side()] = b.triangle() as u32;
-                across[b.triangle()][b.side()] = a.triangle() as u32;
+        let mut across = self.behind.clone();
+        for (i, behind) in self.behind.iter().enumerate() {
+            for side in 0..3 {
+                if behind[side] != NONE {
+                    let end = self.triangles[i][(side + 1) % 3];
+                    let other = behind[side] as usize;
+                    // The other triangle runs along the edge the other way.
+                    let begin = self.triangles[other].iter().position(|&v| v == end).expect("both triangles have the edge");
+                    across[other][begin] = i as u32;
+                }
             }
-        });
+        }
         across
+    }
+}
+
+fn add(sum: &mut [f64; 3], v: &[f64; 3]) {
+    for axis in 0..3 {
+        sum[axis] += v[axis];
+    }
+}
+
+fn unit(v: &mut [f64; 3]) {
+    let length = dot(*v, *v).sqrt();
+    if length > 0.0 {
+        *v = v.map(|c| c / length);
     }
 }
 

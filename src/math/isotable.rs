@@ -40,6 +40,10 @@ pub(super) struct Loop {
     pub len: u8,
     /// Indices into [`EDGES`], in order around the loop.
     pub edges: [u8; LONGEST],
+    /// For each segment, from an edge to the next around the loop: the place in the loop of the edge it is filed under (upper bits)
+    /// and which of the four faces at that edge it lies on (lower two bits). Both cubes at a face file a segment under
+    /// the same grid edge and number, so each finds what the other left there.
+    pub keys: [u8; LONGEST],
 }
 
 /// Loops for all masks and decisions.
@@ -113,6 +117,7 @@ fn edge_between(a: u8, b: u8) -> usize {
 /// Appends the loops of one cube; bit f of `joined` holds the decision of ambiguous face f.
 fn trace(mask: u8, joined: u8, loops: &mut Vec<Loop>) {
     let mut next = [None; 12];
+    let mut face_of = [0; 12];
     for face in 0..6 {
         let corners = FACES[face];
         let entering = |i: usize| !inside(mask, corners[i % 4]) && inside(mask, corners[(i + 1) % 4]);
@@ -124,10 +129,11 @@ fn trace(mask: u8, joined: u8, loops: &mut Vec<Loop>) {
             let exit = steps.find(|s| leaving(i + s)).expect("a face is left as often as entered");
             let edge = |i: usize| edge_between(corners[i % 4], corners[(i + 1) % 4]);
             next[edge(i)] = Some(edge(i + exit) as u8);
+            face_of[edge(i)] = face;
         }
     }
     for start in 0..12 {
-        let mut traced = Loop { len: 0, edges: [0; LONGEST] };
+        let mut traced = Loop { len: 0, edges: [0; LONGEST], keys: [0; LONGEST] };
         let mut at = start;
         while let Some(following) = next[at].take() {
             traced.edges[traced.len as usize] = at as u8;
@@ -135,9 +141,25 @@ fn trace(mask: u8, joined: u8, loops: &mut Vec<Loop>) {
             at = following as usize;
         }
         if traced.len > 0 {
+            let n = traced.len as usize;
+            for k in 0..n {
+                let face = face_of[traced.edges[k] as usize];
+                // Segments run opposite ways in the two cubes: the first edge as seen from the cube below the face.
+                let at = if face % 2 == 1 { k } else { (k + 1) % n };
+                traced.keys[k] = (at as u8) << 2 | side_of_edge(traced.edges[at] as usize, face);
+            }
             loops.push(traced);
         }
     }
+}
+
+/// Number, among the four faces at a grid edge, of a face of the cube that has both.
+fn side_of_edge(edge: usize, face: usize) -> u8 {
+    let CubeEdge { corner, axis } = EDGES[edge];
+    let (b, c) = ((axis as usize + 1) % 3, (axis as usize + 2) % 3);
+    let high = |axis: usize| (corner as usize & AXIS_BIT[axis] != 0) as u8;
+    // A face across one of these axes lies along the other, on the side where the cube is.
+    if face / 2 == b { high(c) } else { 2 + high(b) }
 }
 
 const fn cube_edges() -> [CubeEdge; 12] {

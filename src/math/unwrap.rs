@@ -83,6 +83,7 @@ fn image_beside(surface: &Isosurface, known: u32, image: [i32; 3], v: u32) -> [i
     let (p, q) = (surface.points[known as usize], surface.points[v as usize]);
     std::array::from_fn(|axis| match surface.period[axis] {
         None => 0,
+        Some(n) if (q[axis] - p[axis]).abs() < 0.5 * n as f64 => image[axis],
         Some(n) => image[axis] - ((q[axis] - p[axis]) / n as f64).round() as i32,
     })
 }

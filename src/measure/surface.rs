@@ -1,5 +1,6 @@
 //! The isosurface (in a plane the contour) of one object: its geometry, and the mesh with values at its vertices.
 
+use crate::base::par;
 use crate::base::real::Real;
 use crate::math::contour::{ContourMeasures, contour};
 use crate::math::isosurface::{Isosurface, isosurface};
@@ -57,7 +58,7 @@ pub fn shape<T: Real>(grid: &Grid, patch: &Patch<T>, trace: Trace) -> Shaped {
     straighten(grid, &mut surface.points);
     let area_vectors = surface.area_vectors(grid.spacing);
     let measures = measure_with(&surface, grid.spacing, &area_vectors);
-    let mesh = trace.with_mesh.then(|| mesh(grid, patch, &surface, &area_vectors, up, trace.id));
+    let mesh = trace.with_mesh.then(|| mesh(grid, patch, surface, &area_vectors, up, trace.id));
     Shaped { object: patch.object, outline: Outline::Surface(measures), mesh }
 }
 
@@ -87,12 +88,18 @@ fn plane_shape<T: Real>(grid: &Grid, patch: &Patch<T>, trace: Trace, up: f64) ->
     let measures = contour.measure(spacing);
     let mesh = trace.with_mesh.then(|| {
         let (points, edges, source) = contour.laid_out();
-        let values = vertex_values(patch, up, |k| contour.interpolate(patch.field(k)));
+        let recipe = Recipe::new(patch, up);
+        let mut values = vec![Vec::with_capacity(source.len()); recipe.values()];
+        for &s in &source {
+            let (a, b, t) = contour.cells[s as usize];
+            let at = |f: &[T]| (1.0 - t) * f[a as usize].wide() + t * f[b as usize].wide();
+            recipe.vertex(at, |k, value| values[k].push(value));
+        }
         SurfaceMesh {
             id: trace.id,
             positions: points.iter().map(|p| place(grid, [p[0], p[1], 0.0])).collect(),
             normals: contour.normals(spacing, &source).into_iter().map(|n| [n[0] as f32, n[1] as f32, 0.0]).collect(),
-            values: values.iter().map(|v| source.iter().map(|&s| v[s as usize]).collect()).collect(),
+            values,
             triangles: Vec::new(),
             edges,
         }
@@ -100,64 +107,134 @@ fn plane_shape<T: Real>(grid: &Grid, patch: &Patch<T>, trace: Trace, up: f64) ->
     Shaped { object: patch.object, outline: Outline::Contour(measures), mesh }
 }
 
-/// The values at the vertices in the order of [`SurfaceMesh::value_names`]; `at` interpolates a field of the patch.
-fn vertex_values<T: Real>(patch: &Patch<T>, up: f64, at: impl Fn(usize) -> Vec<f64>) -> Vec<Vec<f32>> {
-    let mut values: Vec<Vec<f32>> = vec![at(0).iter().map(|&v| (up * v) as f32).collect()];
-    let vector = |first: usize| -> [Vec<f64>; 3] { std::array::from_fn(|c| at(first + c)) };
-    let fields = patch.fields;
-    let mut next = 1;
-    let mut flow = None;
-    if fields.velocity {
-        let (u, w) = (vector(next), vector(next + 3));
-        next += 6;
-        values.push((0..u[0].len()).map(|i| dot(&u, &u, i).sqrt() as f32).collect());
-        values.push(cosine(&u, &w));
-        flow = Some(u);
+/// How the fields of a patch become the values at a vertex, in the order of [`SurfaceMesh::value_names`].
+struct Recipe<'a, T> {
+    up: f64,
+    velocity: bool,
+    magnetic: bool,
+    fields: Vec<&'a [T]>,
+}
+
+impl<'a, T: Real> Recipe<'a, T> {
+    fn new(patch: &'a Patch<T>, up: f64) -> Recipe<'a, T> {
+        let fields = (0..patch.carried()).map(|k| patch.field(k)).collect();
+        Recipe { up, velocity: patch.fields.velocity, magnetic: patch.fields.magnetic, fields }
     }
-    if fields.magnetic {
-        let (b, j) = (vector(next), vector(next + 3));
-        next += 6;
-        values.push(cosine(&j, &b));
-        if let Some(u) = &flow {
-            values.push(cosine(u, &b));
+
+    /// Number of values.
+    fn values(&self) -> usize {
+        let vectors = 6 * (usize::from(self.velocity) + usize::from(self.magnetic));
+        let made = 2 * usize::from(self.velocity) + usize::from(self.magnetic) + usize::from(self.velocity && self.magnetic);
+        self.fields.len() - vectors + made
+    }
+
+    /// Calls `put` with each value in turn; `at` interpolates a field.
+    #[inline(always)]
+    fn vertex(&self, at: impl Fn(&[T]) -> f64, mut put: impl FnMut(usize, f32)) {
+        let mut place = 0;
+        let mut put = |v: f64| {
+            put(place, v as f32);
+            place += 1;
+        };
+        let vector = |first: usize| -> [f64; 3] { std::array::from_fn(|c| at(self.fields[first + c])) };
+        put(self.up * at(self.fields[0]));
+        let mut next = 1;
+        let mut flow = None;
+        if self.velocity {
+            let (u, w) = (vector(next), vector(next + 3));
+            next += 6;
+            put(dot(u, u).sqrt());
+            put(cosine(u, w));
+            flow = Some(u);
+        }
+        if self.magnetic {
+            let (b, j) = (vector(next), vector(next + 3));
+            next += 6;
+            put(cosine(j, b));
+            if let Some(u) = flow {
+                put(cosine(u, b));
+            }
+        }
+        for field in &self.fields[next..] {
+            put(at(field));
         }
     }
-    for k in next..patch.carried() {
-        values.push(at(k).iter().map(|&v| v as f32).collect());
+}
+
+fn dot(a: [f64; 3], b: [f64; 3]) -> f64 {
+    a[0] * b[0] + a[1] * b[1] + a[2] * b[2]
+}
+
+/// Cosine between two vectors, NaN where one vanishes: a missing value in a binary format.
+fn cosine(a: [f64; 3], b: [f64; 3]) -> f64 {
+    dot(a, b) / (dot(a, a) * dot(b, b)).sqrt()
+}
+
+/// Vertices whose values are worked out by one worker.
+const VERTICES: usize = 1 << 14;
+
+/// The values at all vertices of a surface, each vertex visited once.
+fn vertex_values<T: Real>(recipe: &Recipe<T>, surface: &Isosurface) -> Vec<Vec<f32>> {
+    let count = surface.points.len();
+    let mut values = vec![vec![0.0f32; count]; recipe.values()];
+    let edges = surface.edges.len();
+    let fill = |first: usize, out: &mut [&mut [f32]]| {
+        let len = out[0].len();
+        for i in 0..len {
+            let v = first + i;
+            match surface.edges.get(v) {
+                Some(e) => recipe.vertex(|f| e.of(f), |k, value| out[k][i] = value),
+                None => recipe.vertex(|f| surface.centre_of(v - edges, f), |k, value| out[k][i] = value),
+            }
+        }
+    };
+    if count <= VERTICES {
+        fill(0, &mut values.iter_mut().map(|v| &mut v[..]).collect::<Vec<_>>());
+        return values;
     }
+    let mut columns: Vec<_> = values.iter_mut().map(|v| v.chunks_mut(VERTICES)).collect();
+    let tasks: Vec<Vec<&mut [f32]>> =
+        (0..count.div_ceil(VERTICES)).map(|_| columns.iter_mut().filter_map(Iterator::next).collect()).collect();
+    par::map_owned(tasks, |k, mut out| fill(k * VERTICES, &mut out));
     values
 }
 
-fn mesh<T: Real>(grid: &Grid, patch: &Patch<T>, surface: &Isosurface, area_vectors: &[[f64; 3]], up: f64, id: u64) -> SurfaceMesh {
+/// Maps a list, on several workers where it is long.
+fn mapped<A: Sync, B: Send + Copy + Default>(list: &[A], f: impl Fn(&A) -> B + Sync + Send) -> Vec<B> {
+    if list.len() <= VERTICES {
+        return list.iter().map(f).collect();
+    }
+    let mut out = vec![B::default(); list.len()];
+    par::for_chunks(&mut out, VERTICES, |k, chunk| {
+        for (to, from) in chunk.iter_mut().zip(&list[k * VERTICES..]) {
+            *to = f(from);
+        }
+    });
+    out
+}
+
+fn mesh<T: Real>(grid: &Grid, patch: &Patch<T>, surface: Isosurface, area_vectors: &[[f64; 3]], up: f64, id: u64) -> SurfaceMesh {
     let normals = surface.vertex_normals(area_vectors);
-    let values = vertex_values(patch, up, |k| surface.interpolate(patch.field(k)));
+    let values = vertex_values(&Recipe::new(patch, up), &surface);
     let single = |n: [f64; 3]| n.map(|v| v as f32);
+    let edges = Vec::new();
     if patch.shape.period == [None; 3] {
         return SurfaceMesh {
             id,
-            positions: surface.points.iter().map(|&p| place(grid, p)).collect(),
-            normals: normals.into_iter().map(single).collect(),
+            positions: mapped(&surface.points, |&p| place(grid, p)),
+            normals: mapped(&normals, |&n| single(n)),
             values,
-            triangles: surface.triangles.clone(),
-            edges: Vec::new(),
+            triangles: surface.triangles,
+            edges,
         };
     }
     let open = surface.unwrapped();
     SurfaceMesh {
         id,
-        positions: open.points.iter().map(|&p| place(grid, p)).collect(),
-        normals: open.source.iter().map(|&s| single(normals[s as usize])).collect(),
-        values: values.iter().map(|v| open.source.iter().map(|&s| v[s as usize]).collect()).collect(),
+        positions: mapped(&open.points, |&p| place(grid, p)),
+        normals: mapped(&open.source, |&s| single(normals[s as usize])),
+        values: values.iter().map(|v| mapped(&open.source, |&s| v[s as usize])).collect(),
         triangles: open.triangles,
-        edges: Vec::new(),
+        edges,
     }
-}
-
-fn dot(a: &[Vec<f64>; 3], b: &[Vec<f64>; 3], i: usize) -> f64 {
-    a[0][i] * b[0][i] + a[1][i] * b[1][i] + a[2][i] * b[2][i]
-}
-
-/// Cosine at every vertex, NaN where a vector vanishes: a missing value in a binary format.
-fn cosine(a: &[Vec<f64>; 3], b: &[Vec<f64>; 3]) -> Vec<f32> {
-    (0..a[0].len()).map(|i| (dot(a, b, i) / (dot(a, a, i) * dot(b, b, i)).sqrt()) as f32).collect()
 }

@@ -1,11 +1,11 @@
 //! Writes the meshes of a snapshot into the run folder as they are finished.
 
 use std::fs::File;
-use std::io::BufWriter;
+use std::io::{self, BufWriter, Read, Seek, SeekFrom, Write};
 
 use crate::base::error::{Error, Result};
 use crate::export::atomic::Folder;
-use crate::export::ply::{Joins, PlyWriter};
+use crate::export::ply::{FACES_KEPT, Joins, PlyWriter};
 use crate::model::request::{Family, Indicator, Surfaces};
 use crate::model::sink::ObjectSink;
 use crate::model::source::Fields;
@@ -19,13 +19,65 @@ pub struct MeshFiles<'a> {
     values: Vec<&'static str>,
     each: bool,
     joins: Joins,
-    /// Every file begun, helper files included.
+    /// Every file begun.
     begun: Vec<String>,
-    together: Vec<Option<PlyWriter<BufWriter<File>, File>>>,
+    together: Vec<Option<Writer<'a>>>,
 }
 
-/// Where the faces wait while vertices are written.
+type Writer<'a> = PlyWriter<BufWriter<File>, Helper<'a>>;
+
+/// The file where the faces wait that are too many to keep; made when the first are written.
+struct Helper<'a> {
+    folder: &'a Folder,
+    name: String,
+    file: Option<File>,
+}
+
+impl Helper<'_> {
+    fn opened(&mut self) -> io::Result<&mut File> {
+        match &mut self.file {
+            Some(file) => Ok(file),
+            none => Ok(none.insert(self.folder.file(&self.name).map_err(io::Error::other)?)),
+        }
+    }
+}
+
+impl Read for Helper<'_> {
+    fn read(&mut self, out: &mut [u8]) -> io::Result<usize> {
+        self.opened()?.read(out)
+    }
+}
+
+impl Write for Helper<'_> {
+    fn write(&mut self, bytes: &[u8]) -> io::Result<usize> {
+        self.opened()?.write(bytes)
+    }
+
+    fn flush(&mut self) -> io::Result<()> {
+        self.opened()?.flush()
+    }
+}
+
+impl Seek for Helper<'_> {
+    fn seek(&mut self, to: SeekFrom) -> io::Result<u64> {
+        self.opened()?.seek(to)
+    }
+}
+
+impl Drop for Helper<'_> {
+    fn drop(&mut self) {
+        if self.file.take().is_some() {
+            // Of no use any more, whether its faces were copied or writing failed.
+            let _ = self.folder.remove(&self.name);
+        }
+    }
+}
+
+/// What is added to the name of a mesh file for its helper.
 const FACES: &str = ".faces";
+
+/// Bytes that small meshes wait for before they are written.
+const BUFFER: usize = 1 << 18;
 
 impl<'a> MeshFiles<'a> {
     /// Prepares the files of a snapshot; `surfaces` must not be [`Surfaces::None`].
@@ -66,26 +118,27 @@ impl<'a> MeshFiles<'a> {
         }
     }
 
-    fn open(&mut self, name: &str, family: usize) -> Result<PlyWriter<BufWriter<File>, File>> {
-        let out = BufWriter::with_capacity(1 << 16, self.folder.file(name)?);
-        let faces = self.folder.file(&format!("{name}{FACES}"))?;
-        self.begun.extend([name.to_string(), format!("{name}{FACES}")]);
+    fn open(&mut self, name: &str, family: usize) -> Result<Writer<'a>> {
+        let out = BufWriter::with_capacity(BUFFER, self.folder.file(name)?);
+        let helper = Helper { folder: self.folder, name: format!("{name}{FACES}"), file: None };
+        self.begun.push(name.to_string());
         let comments = vec![
             format!("ropewalk {}", env!("CARGO_PKG_VERSION")),
             // A line break would end the comment and spoil the header.
             format!("snapshot {}", self.snapshot.replace(char::is_control, " ")),
             format!("family {}", self.families[family]),
         ];
-        PlyWriter::new(out, faces, self.joins, self.values.clone(), comments).map_err(|e| self.failed(name, &e))
+        let writer = PlyWriter::new(out, helper, self.joins, self.values.clone(), comments).map_err(|e| self.failed(name, &e))?;
+        Ok(writer.keeping(FACES_KEPT / self.families.len().max(1)))
     }
 
     fn failed(&self, name: &str, e: &std::io::Error) -> Error {
         Error::output("cannot write a mesh").at(self.folder.path(name)).found(e.to_string())
     }
 
-    fn close(&self, name: &str, writer: PlyWriter<BufWriter<File>, File>) -> Result<()> {
+    fn close(&self, name: &str, writer: Writer<'a>) -> Result<()> {
         writer.finish().map_err(|e| self.failed(name, &e))?;
-        self.folder.remove(&format!("{name}{FACES}"))
+        Ok(())
     }
 
     /// Completes the files.
@@ -105,7 +158,7 @@ impl<'a> MeshFiles<'a> {
     /// Removes what was begun, after a failure.
     pub fn abandon(self) {
         for name in &self.begun {
-            // The failure that led here is what gets reported; helper files of finished meshes are gone already.
+            // The failure that led here is what gets reported.
             let _ = self.folder.remove(name);
         }
     }
