@@ -40,7 +40,7 @@ fn derivative_across_rows(bencher: Bencher, scheme: Scheme) {
     let mut out = vec![0.0; N];
     bencher
         .counter(divan::counter::ItemsCount::new(N))
-        .bench_local(|| difference(&mut out, [&r, &r, &r, &r], [&r, &r, &r, &r], weights, terms));
+        .bench_local(|| difference(&mut out, [&r, &r, &r, &r], [&r, &r, &r, &r], weights, terms, std::slice::from_ref(&(0..N))));
 }
 
 #[divan::bench(args = [Scheme::Fd8, Scheme::Spectral])]
@@ -48,7 +48,9 @@ fn derivative_along_row(bencher: Bencher, scheme: Scheme) {
     let r = row();
     let s = AxisStencil::<f32>::new(scheme, N, 0.1, true);
     let (mut out, mut scratch) = (vec![0.0; N], RowScratch::default());
-    bencher.counter(divan::counter::ItemsCount::new(N)).bench_local(|| s.along(Pick::Scheme, &r, 0..N, &mut scratch, &mut out));
+    bencher
+        .counter(divan::counter::ItemsCount::new(N))
+        .bench_local(|| s.along(Pick::Scheme, &r, std::slice::from_ref(&(0..N)), &mut scratch, &mut out));
 }
 
 #[divan::bench]

@@ -132,3 +132,48 @@ impl<T: Real> Group<T> {
         true
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::math::diff::{Scheme, difference};
+
+    /// What is made in fours has the bits of what is made one by one, at the ends of open axes too.
+    #[test]
+    fn four_rows_at_once_have_the_same_bits() {
+        let (n, width) = (13, 21);
+        let rows: Vec<Vec<f32>> = (0..n).map(|y| (0..width).map(|x| (x as f32 * 0.37 + y as f32 * 1.7).sin()).collect()).collect();
+        for scheme in [Scheme::Fd2, Scheme::Fd4, Scheme::Fd6, Scheme::Fd8, Scheme::Opt] {
+            for periodic in [true, false] {
+                let stencil = AxisStencil::<f32>::new(scheme, n, 0.3, periodic);
+                let row = |y: isize| rows[y.rem_euclid(n as isize) as usize].as_slice();
+                let mut made = 0;
+                for ahead in [Ahead { rows: 0..n, planes: 2..6 }, Ahead { rows: 3..10, planes: 5..7 }] {
+                    let mut groups = Groups::default();
+                    groups.expect(ahead.clone());
+                    for (y, z) in ahead.rows.clone().flat_map(|y| ahead.planes.clone().map(move |z| (y, z))) {
+                        let one = |at: usize| {
+                            let Support::Central { weights, terms } = stencil.support(at, Pick::Scheme) else { return None };
+                            let offset = |k: usize| (k + 1).min(terms) as isize;
+                            let minus = std::array::from_fn(|k| row(at as isize - offset(k)));
+                            let plus = std::array::from_fn(|k| row(at as isize + offset(k)));
+                            let mut out = vec![0.0; width];
+                            difference(&mut out, minus, plus, weights, terms, std::slice::from_ref(&(0..width)));
+                            Some(out)
+                        };
+                        let mut out = Vec::new();
+                        if groups.along_y((1, y, z), &stencil, row, &mut out) {
+                            assert_eq!(Some(&out), one(y).as_ref(), "{scheme:?} y {y}");
+                            made += 1;
+                        }
+                        if groups.along_z((1, y, z), &stencil, row, &mut out) {
+                            assert_eq!(Some(&out), one(z).as_ref(), "{scheme:?} z {z}");
+                            made += 1;
+                        }
+                    }
+                }
+                assert!(made > 20, "{scheme:?} {periodic}: {made}");
+            }
+        }
+    }
+}

@@ -240,10 +240,25 @@ impl<T: Real> Deriver<T> {
         need: Need,
         scratch: &mut Scratch<T>,
     ) {
+        self.pieces(block, ready, z, y, std::slice::from_ref(&x), need, scratch);
+    }
+
+    /// The same for several ascending stretches of a row; their cells stand one after the other in `scratch.rows`.
+    pub fn pieces(
+        &self,
+        block: &Block<'_, T>,
+        ready: &Prepared<T>,
+        z: usize,
+        y: usize,
+        pieces: &[Range<usize>],
+        need: Need,
+        scratch: &mut Scratch<T>,
+    ) {
         let Scratch { velocity, magnetic, buoyancy, fluctuation, buffers, rows } = scratch;
         let wants = self.wants(need);
         let [nx, ny, _] = self.n;
-        let place = Place { stencils: &self.stencils, block, ready, z_lines: self.z_lines.as_deref(), z, y, x: &x, nx, ny };
+        let len = pieces.iter().map(ExactSizeIterator::len).sum();
+        let place = Place { stencils: &self.stencils, block, ready, z_lines: self.z_lines.as_deref(), z, y, pieces, len, nx, ny };
         if wants.vorticity {
             place.gradient(0, wants.full, buffers, velocity);
             invariants::curl(velocity, &mut rows.w, &mut rows.w2);
@@ -258,7 +273,7 @@ impl<T: Real> Deriver<T> {
             rows.u[c].clear();
             if wants.velocity {
                 let f = self.frame[c];
-                rows.u[c].extend(place.values(c).iter().map(|&v| v - f));
+                place.values(c).for_each(|part| rows.u[c].extend(part.iter().map(|&v| v - f)));
             }
         }
         let first = self.fields.first_magnetic();
@@ -274,12 +289,12 @@ impl<T: Real> Deriver<T> {
         for c in 0..3 {
             rows.b[c].clear();
             if wants.field {
-                rows.b[c].extend_from_slice(place.values(first + c));
+                place.values(first + c).for_each(|part| rows.b[c].extend_from_slice(part));
             }
         }
         rows.buoyancy.clear();
         if self.fields.buoyancy {
-            rows.buoyancy.extend_from_slice(place.values(self.fields.components() - 1));
+            place.values(self.fields.components() - 1).for_each(|part| rows.buoyancy.extend_from_slice(part));
         }
         if wants.buoyancy_gradient {
             for a in 0..3 {

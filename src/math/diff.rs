@@ -210,52 +210,47 @@ impl<T: Real> AxisStencil<T> {
         self.half
     }
 
-    /// Derivative along a row of `n` values at the positions `x`.
+    /// Derivative along a row of `n` values at the positions of `pieces`, one after the other.
     ///
     /// # Panics
-    /// When `out` is not as long as `x`, or `x` leaves `0..n`.
-    pub fn along(&self, pick: Pick, row: &[T], x: Range<usize>, scratch: &mut RowScratch<T>, out: &mut [T]) {
+    /// When `out` is not as long as all pieces together, or one leaves `0..n`.
+    pub fn along(&self, pick: Pick, row: &[T], pieces: &[Range<usize>], scratch: &mut RowScratch<T>, out: &mut [T]) {
         debug_assert_eq!(row.len(), self.n);
-        assert_eq!(out.len(), x.len(), "positions");
+        assert_eq!(out.len(), pieces.iter().map(ExactSizeIterator::len).sum::<usize>(), "positions");
         let central = match (&self.kind, pick) {
             (Kind::Flat, _) => return out.fill(T::ZERO),
-            (Kind::Stretched, _) => return self.along_stretched(pick, row, x, out),
-            (Kind::Lines(line), Pick::Scheme) if x.len() == self.n => return line.row(row, out, &mut scratch.line),
+            (Kind::Stretched, _) => return each(pieces, out, |x, out| self.along_stretched(pick, row, x, out)),
             (Kind::Lines(line), Pick::Scheme) => {
                 scratch.padded.resize(self.n, T::ZERO);
                 line.row(row, &mut scratch.padded, &mut scratch.line);
-                return out.copy_from_slice(&scratch.padded[x]);
+                return each(pieces, out, |x, out| out.copy_from_slice(&scratch.padded[x]));
             }
             (_, Pick::Scheme) => &self.scheme,
             (_, Pick::Comparison) => &self.comparison,
         };
         let (n, half) = (self.n, self.half);
-        let (source, shift) = if x.start >= half && x.end + half <= n {
-            (row, 0)
+        let padded = &mut scratch.padded;
+        padded.clear();
+        if matches!(self.kind, Kind::Open) {
+            padded.resize(half, T::ZERO);
+            padded.extend_from_slice(row);
+            padded.resize(n + 2 * half, T::ZERO);
         } else {
-            let padded = &mut scratch.padded;
-            padded.clear();
-            if matches!(self.kind, Kind::Open) {
-                padded.resize(half, T::ZERO);
-                padded.extend_from_slice(row);
-                padded.resize(n + 2 * half, T::ZERO);
-            } else {
-                padded.extend_from_slice(&row[n - half..]);
-                padded.extend_from_slice(row);
-                padded.extend_from_slice(&row[..half]);
-            }
-            (padded.as_slice(), half)
-        };
-        let (from, to) = (x.start + shift, x.end + shift);
+            padded.extend_from_slice(&row[n - half..]);
+            padded.extend_from_slice(row);
+            padded.extend_from_slice(&row[..half]);
+        }
         // Terms that do not count repeat the last one, so that no sample outside is touched.
         let offset = |k: usize| (k + 1).min(central.terms);
-        let minus = std::array::from_fn(|k| &source[from - offset(k)..to - offset(k)]);
-        let plus = std::array::from_fn(|k| &source[from + offset(k)..to + offset(k)]);
-        difference(out, minus, plus, &central.weights, central.terms);
+        let minus = std::array::from_fn(|k| &padded[half - offset(k)..][..n]);
+        let plus = std::array::from_fn(|k| &padded[half + offset(k)..][..n]);
+        difference(out, minus, plus, &central.weights, central.terms, pieces);
         if matches!(self.kind, Kind::Open) {
-            for i in (0..half).chain(n - half..n).filter(|i| x.contains(i)) {
-                out[i - x.start] = self.at_window(pick, row, i);
-            }
+            each(pieces, out, |x, out| {
+                for i in (0..half).chain(n - half..n).filter(|i| x.contains(i)) {
+                    out[i - x.start] = self.at_window(pick, row, i);
+                }
+            });
         }
     }
 
@@ -286,39 +281,50 @@ fn terms(weights: &[f64; HALF]) -> usize {
     weights.iter().filter(|&&w| w != 0.0).count()
 }
 
-/// `out = sum_k w[k] (plus[k] - minus[k])` over the first `terms` offsets, element by element; exactly antisymmetric under exchange
-/// of the sides.
+/// Calls `f` with every piece and its part of `out`, in which pieces stand one after the other.
+pub fn each<T>(pieces: &[Range<usize>], mut out: &mut [T], mut f: impl FnMut(Range<usize>, &mut [T])) {
+    for x in pieces {
+        let (here, rest) = out.split_at_mut(x.len());
+        f(x.clone(), here);
+        out = rest;
+    }
+}
+
+/// `out = sum_k w[k] (plus[k] - minus[k])` over the first `terms` offsets, element by element, at the positions of `pieces`, which stand one
+/// after the other in `out`; exactly antisymmetric under exchange of the sides.
 ///
 /// # Panics
 /// When `terms` is 0 or above [`HALF`], or a slice is too short.
 #[multiversion::multiversion(targets("x86_64+avx2"))]
-pub fn difference<T: Real>(out: &mut [T], minus: [&[T]; HALF], plus: [&[T]; HALF], w: &[T; HALF], terms: usize) {
+pub fn difference<T: Real>(out: &mut [T], minus: [&[T]; HALF], plus: [&[T]; HALF], w: &[T; HALF], terms: usize, pieces: &[Range<usize>]) {
+    let mut first = 0;
+    for x in pieces {
+        let here = &mut out[first..first + x.len()];
+        first += x.len();
+        let (minus, plus) = (minus.map(|s| &s[x.start..x.end]), plus.map(|s| &s[x.start..x.end]));
+        match terms {
+            1 => difference_of::<T, 1>(here, minus, plus, w),
+            2 => difference_of::<T, 2>(here, minus, plus, w),
+            3 => difference_of::<T, 3>(here, minus, plus, w),
+            4 => difference_of::<T, 4>(here, minus, plus, w),
+            _ => panic!("expected 1 to {HALF} terms, got {terms}"),
+        }
+    }
+}
+
+#[inline(always)]
+fn difference_of<T: Real, const TERMS: usize>(out: &mut [T], minus: [&[T]; HALF], plus: [&[T]; HALF], w: &[T; HALF]) {
     let n = out.len();
     let [m0, m1, m2, m3] = minus.map(|s| &s[..n]);
     let [p0, p1, p2, p3] = plus.map(|s| &s[..n]);
     let [w0, w1, w2, w3] = *w;
-    match terms {
-        1 => {
-            for i in 0..n {
-                out[i] = w0 * (p0[i] - m0[i]);
-            }
-        }
-        2 => {
-            for i in 0..n {
-                out[i] = w0 * (p0[i] - m0[i]) + w1 * (p1[i] - m1[i]);
-            }
-        }
-        3 => {
-            for i in 0..n {
-                out[i] = (w0 * (p0[i] - m0[i]) + w1 * (p1[i] - m1[i])) + w2 * (p2[i] - m2[i]);
-            }
-        }
-        4 => {
-            for i in 0..n {
-                out[i] = (w0 * (p0[i] - m0[i]) + w1 * (p1[i] - m1[i])) + (w2 * (p2[i] - m2[i]) + w3 * (p3[i] - m3[i]));
-            }
-        }
-        _ => panic!("expected 1 to {HALF} terms, got {terms}"),
+    for i in 0..n {
+        out[i] = match TERMS {
+            1 => w0 * (p0[i] - m0[i]),
+            2 => w0 * (p0[i] - m0[i]) + w1 * (p1[i] - m1[i]),
+            3 => (w0 * (p0[i] - m0[i]) + w1 * (p1[i] - m1[i])) + w2 * (p2[i] - m2[i]),
+            _ => (w0 * (p0[i] - m0[i]) + w1 * (p1[i] - m1[i])) + (w2 * (p2[i] - m2[i]) + w3 * (p3[i] - m3[i])),
+        };
     }
 }
 
@@ -423,7 +429,7 @@ mod tests {
 
     fn derivative<T: Real>(axis: &AxisStencil<T>, pick: Pick, f: &[T]) -> Vec<T> {
         let mut out = vec![T::ZERO; f.len()];
-        axis.along(pick, f, 0..f.len(), &mut RowScratch::default(), &mut out);
+        axis.along(pick, f, std::slice::from_ref(&(0..f.len())), &mut RowScratch::default(), &mut out);
         out
     }
 
@@ -437,7 +443,7 @@ mod tests {
                     let whole = derivative(&s, pick, &f);
                     for (a, b) in [(0, 1), (0, 7), (2, 5), (3, 20), (4, 36), (5, 6), (30, 37), (36, 40), (39, 40), (7, 7)] {
                         let mut part = vec![0.0; b - a];
-                        s.along(pick, &f, a..b, &mut RowScratch::default(), &mut part);
+                        s.along(pick, &f, std::slice::from_ref(&(a..b)), &mut RowScratch::default(), &mut part);
                         assert_eq!(part, whole[a..b], "{scheme:?} {pick:?} {a}..{b}");
                     }
                 }

@@ -171,16 +171,21 @@ impl<T: Real> Patches<T> {
         self.deliveries[tile].iter().map(|d| Wanted { z: d.z as usize, y: d.y as usize, x: d.x as usize, len: d.len as usize })
     }
 
-    /// Hands the derived cells `x` of row (z, y) to every patch that wants some of them; what is wanted lies inside or
-    /// outside `x`, never across its ends.
-    pub fn deliver(&self, tile: usize, z: usize, y: usize, x: &Range<usize>, rows: &Rows<T>) {
+    /// Hands derived cells of row (z, y) to every patch that wants some of them. `rows` holds the cells of `pieces`, ascending stretches of the row,
+    /// one after the other; they cover all that is wanted.
+    pub fn deliver(&self, tile: usize, z: usize, y: usize, pieces: &[Range<usize>], rows: &Rows<T>) {
         let list = &self.deliveries[tile];
-        let from = list.partition_point(|d| (d.z as usize, d.y as usize, d.x as usize) < (z, y, x.start));
-        for d in list[from..].iter().take_while(|d| (d.z as usize, d.y as usize) == (z, y) && (d.x as usize) < x.end) {
+        let from = list.partition_point(|d| (d.z as usize, d.y as usize) < (z, y));
+        let (mut piece, mut first) = (0, 0);
+        for d in list[from..].iter().take_while(|d| (d.z as usize, d.y as usize) == (z, y)) {
+            while pieces[piece].end <= d.x as usize {
+                first += pieces[piece].len();
+                piece += 1;
+            }
             let open = &self.open[d.patch as usize];
             let mut values = open.values.lock().unwrap_or_else(PoisonError::into_inner);
             let cells = open.shape.cells;
-            let (at, len) = (d.x as usize - x.start, d.len as usize);
+            let (at, len) = (first + d.x as usize - pieces[piece].start, d.len as usize);
             let mut field = 0;
             let mut put = |row: &[T]| {
                 let to = field * cells + d.start;

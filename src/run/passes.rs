@@ -46,16 +46,27 @@ pub(super) fn groups(z: &Range<usize>) -> Vec<Range<usize>> {
     z.clone().step_by(TOGETHER).map(|k| k..(k + TOGETHER).min(z.end)).collect()
 }
 
-/// The stretches of a row that cover what is wanted of it, nearby ones joined: deriving a few cells more is cheaper than
-/// beginning anew.
-pub(super) fn joined(row: &[Wanted]) -> Vec<Range<usize>> {
-    const GAP: usize = 24;
-    let mut out: Vec<Range<usize>> = Vec::new();
+/// The stretches of a row of `n` cells that cover what is wanted of it, nearby ones joined: deriving a few cells more is cheaper than
+/// beginning anew, and lanes that are half full cost as much as full ones.
+pub(super) fn joined(row: &[Wanted], n: usize, out: &mut Vec<Range<usize>>) {
+    const GAP: usize = 8;
+    const LANES: usize = 8;
+    out.clear();
     for w in row {
+        let (start, end) = (w.x / LANES * LANES, (w.x + w.len).next_multiple_of(LANES).min(n));
         match out.last_mut() {
-            Some(last) if w.x <= last.end + GAP => last.end = last.end.max(w.x + w.len),
-            _ => out.push(w.x..w.x + w.len),
+            Some(last) if start <= last.end + GAP => last.end = last.end.max(end),
+            _ => out.push(start..end),
         }
     }
-    out
+}
+
+/// Where cell `x` of a row stands among pieces of it that stand one after the other; `at` is the piece it was found in last, and what is asked for
+/// ascends.
+pub(super) fn place(pieces: &[Range<usize>], at: &mut (usize, usize), x: usize) -> usize {
+    while pieces[at.0].end <= x {
+        at.1 += pieces[at.0].len();
+        at.0 += 1;
+    }
+    at.1 + x - pieces[at.0].start
 }

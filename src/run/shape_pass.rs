@@ -16,7 +16,7 @@ use crate::model::rows::Need;
 use crate::model::sink::ObjectSink;
 use crate::model::source::Fields;
 use crate::model::surface::SurfaceMesh;
-use crate::run::passes::{Pass, joined};
+use crate::run::passes::{Pass, joined, place};
 use crate::run::stream::blocks;
 use crate::run::waves::{Cost, group_bytes, waves};
 use crate::space::grid::Grid;
@@ -163,7 +163,7 @@ impl<T: Real> Shaping<'_, T> {
             let mut wanted: Vec<Wanted> = patches.iter().flat_map(|p| p.wanted(t)).collect();
             wanted.sort_unstable();
             let mut rest = wanted.as_slice();
-            let mut cells: Vec<Wanted> = Vec::new();
+            let (mut cells, mut pieces): (Vec<Wanted>, Vec<Range<usize>>) = Default::default();
             for z in block.z.clone() {
                 for y in self.tiles[t].clone() {
                     let count = rest.iter().take_while(|w| (w.z, w.y) == (z, y)).count();
@@ -178,30 +178,33 @@ impl<T: Real> Shaping<'_, T> {
                         }
                         cells.sort_unstable();
                     }
-                    for x in joined(&cells) {
-                        let need = match (self.summing, here.is_empty()) {
-                            (true, false) => both,
-                            (true, true) => of_sums,
-                            _ => of_patches,
-                        };
-                        self.deriver.row(block, &ready, z, y, x.clone(), need, &mut scratch);
-                        for p in patches {
-                            p.deliver(t, z, y, &x, &scratch.rows);
-                        }
-                        if self.summing {
-                            self.grid.relative_weights(x.clone(), y, z, &mut scratch.rows.weights);
-                            let families = found.iter().zip(self.criteria).zip(self.contents).zip(&mut left_out);
-                            for (((f, c), sums), left_out) in families {
-                                let row = f.members.row(y, z);
-                                let from = row.partition_point(|m| (m.x0 as usize) < x.start);
-                                for m in row[from..].iter().take_while(|m| (m.x0 as usize) < x.end) {
-                                    let at = (m.x0 as usize - x.start, m.x1 as usize - x.start);
-                                    if m.object == LEFT_OUT {
-                                        left_out.add_cells(&scratch.rows, c.family, &c.scales, at);
-                                    } else {
-                                        lock(&sums[m.object as usize]).add_cells(&scratch.rows, c.family, &c.scales, at);
-                                    }
-                                }
+                    if cells.is_empty() {
+                        continue;
+                    }
+                    joined(&cells, self.grid.n[0], &mut pieces);
+                    let need = match (self.summing, here.is_empty()) {
+                        (true, false) => both,
+                        (true, true) => of_sums,
+                        _ => of_patches,
+                    };
+                    self.deriver.pieces(block, &ready, z, y, &pieces, need, &mut scratch);
+                    for p in patches {
+                        p.deliver(t, z, y, &pieces, &scratch.rows);
+                    }
+                    if !self.summing {
+                        continue;
+                    }
+                    self.weights(&pieces, y, z, &mut scratch.rows.weights);
+                    let families = found.iter().zip(self.criteria).zip(self.contents).zip(&mut left_out);
+                    for (((f, c), sums), left_out) in families {
+                        let mut last = (0, 0);
+                        for m in f.members.row(y, z) {
+                            let first = place(&pieces, &mut last, m.x0 as usize);
+                            let at = (first, first + (m.x1 - m.x0) as usize);
+                            if m.object == LEFT_OUT {
+                                left_out.add_cells(&scratch.rows, c.family, &c.scales, at);
+                            } else {
+                                lock(&sums[m.object as usize]).add_cells(&scratch.rows, c.family, &c.scales, at);
                             }
                         }
                     }
@@ -212,6 +215,18 @@ impl<T: Real> Shaping<'_, T> {
             }
         });
         Ok(())
+    }
+
+    /// Volumes of the cells of some pieces of a row over that of the largest cell, one after the other; none where all are equal.
+    fn weights(&self, pieces: &[Range<usize>], y: usize, z: usize, out: &mut Vec<f64>) {
+        out.clear();
+        if self.grid.is_stretched() {
+            let mut part = Vec::new();
+            for x in pieces {
+                self.grid.relative_weights(x.clone(), y, z, &mut part);
+                out.append(&mut part);
+            }
+        }
     }
 
     /// Meshes and measures complete patches of a family.

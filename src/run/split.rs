@@ -108,13 +108,13 @@ impl<T: Real> Pass<'_, T> {
             let ready = deriver.prepare(block, Need::default())?;
             par::map_range(tiles.len(), |t| {
                 let mut scratch = Scratch::default();
+                let mut pieces = Vec::new();
                 let mut wanted: Vec<Wanted> = patches.wanted(t).collect();
                 wanted.sort_unstable();
                 for row in wanted.chunk_by(|a, b| (a.z, a.y) == (b.z, b.y)) {
-                    for x in joined(row) {
-                        deriver.row(block, &ready, row[0].z, row[0].y, x.clone(), Need::default(), &mut scratch);
-                        patches.deliver(t, row[0].z, row[0].y, &x, &scratch.rows);
-                    }
+                    joined(row, grid.n[0], &mut pieces);
+                    deriver.pieces(block, &ready, row[0].z, row[0].y, &pieces, Need::default(), &mut scratch);
+                    patches.deliver(t, row[0].z, row[0].y, &pieces, &scratch.rows);
                 }
             });
             let done = patches.end_block(block.z.end);

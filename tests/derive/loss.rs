@@ -44,7 +44,7 @@ fn sampled_lines_tell_the_loss_of_all() {
         let mut out = vec![0.0; N];
         let mut sum = 0.0;
         for row in u[0].chunks_exact(N) {
-            axis.along(Pick::Scheme, row, 0..N, &mut RowScratch::default(), &mut out);
+            axis.along(Pick::Scheme, row, std::slice::from_ref(&(0..N)), &mut RowScratch::default(), &mut out);
             sum += out.iter().map(|v| v * v).sum::<f64>();
         }
         sum

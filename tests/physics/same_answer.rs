@@ -124,13 +124,13 @@ fn same_in_any_memory(source: impl Fn() -> AnySource + Sync, request: &Request, 
                     done += 1;
                 }
                 Err(e) => {
-                    assert!(e.kind() == Kind::Limit && e.to_string().contains("--memory"), "{memory} bytes: {e}");
+                    assert!(e.kind() == Kind::Limit && e.to_string().contains("memory"), "{memory} bytes: {e}");
                     refused += 1;
                 }
             }
         }
     }
-    assert!(done > 30 && refused > 3, "{done} {refused}");
+    assert!(done > 20 && refused > 3, "{done} {refused}");
 }
 
 #[test]
