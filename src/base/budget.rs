@@ -51,16 +51,14 @@ impl Budget {
     /// `Limit` with the figures where they are not left; `what` says what they are for, `hint` what to change besides the limit.
     pub fn reserve(&self, bytes: u64, what: &str, hint: &str) -> Result<Reserved<'_>> {
         self.offer(bytes).ok_or_else(|| {
-            let taken = self.taken.load(Ordering::Relaxed);
+            let need = self.taken.load(Ordering::Relaxed).saturating_add(bytes);
+            let more = rounded_up(need.saturating_sub(self.limit()));
+            let or = if hint.is_empty() { "" } else { ", or " };
             Error::limit("cannot go on within the memory budget")
                 .item(what)
                 .expected(format!("at most {}", size(self.limit())))
-                .found(format!("a need of {}", size(taken.saturating_add(bytes))))
-                .hint(format!(
-                    "--memory {} or more{}{hint}",
-                    rounded_up(taken.saturating_add(bytes)),
-                    if hint.is_empty() { "" } else { ", or " }
-                ))
+                .found(format!("a need of {}", size(need)))
+                .hint(format!("give {more} more with --memory{or}{hint}"))
         })
     }
 }
@@ -111,7 +109,7 @@ mod tests {
         assert_eq!((first.bytes(), b.left()), (60, 40));
         let e = b.reserve(50, "patches", "a smaller --max-object-cells").expect_err("too much");
         let told = e.to_string();
-        assert!(told.contains("at most 100 B") && told.contains("a need of 110 B") && told.contains("--memory 1MiB or more"), "{told}");
+        assert!(told.contains("at most 100 B") && told.contains("a need of 110 B") && told.contains("1MiB more with --memory"), "{told}");
         drop(first);
         assert_eq!(b.left(), 100);
     }

@@ -90,7 +90,7 @@ pub struct Memory {
     pub threads: u64,
     /// Blocks of planes that are read ahead, worked on, or kept as halo.
     pub blocks: u64,
-    /// The whole snapshot, where it is read once and kept.
+    /// The whole snapshot, where it is read once and kept: costly ones always, others where reading them turns out to be slow.
     pub kept: u64,
     /// The families' indicators, where they are kept.
     pub indicators: u64,
@@ -208,8 +208,10 @@ fn looked_at(opened: &Opened, snapshot: &SnapshotRef, config: &RunConfig) -> Res
         cut_outs: cut_out_bytes(&outputs.cut_outs, families.len(), &grid, (fields.components() + 1) * width),
     };
     // Planes beyond both periodic faces are read again.
-    let halo = if opened_costly(&opened.source) { 0 } else { 2 * halo as u64 * plane };
-    let reading = Reading { whole, halo, keep_planes: arrangement.keep_planes, keep_indicators: arrangement.keep_indicators, spectral };
+    let costly = opened_costly(&opened.source);
+    let halo = if costly { 0 } else { 2 * halo as u64 * plane };
+    let Arrangement { keep_planes, keep_indicators, filtered, .. } = arrangement;
+    let reading = Reading { whole, halo, keep_planes: keep_planes && costly, filtered: filtered > 0, keep_indicators, spectral };
     let passes = passes(&families, outputs, request, &reading);
     let components = fields.names();
     Ok(SnapshotPlan {
@@ -282,6 +284,8 @@ struct Reading {
     halo: u64,
     /// Whether the snapshot is read once and kept.
     keep_planes: bool,
+    /// Whether filtered fields are in memory.
+    filtered: bool,
     /// Whether the families' indicators are kept from the survey to the detection.
     keep_indicators: bool,
     /// Whether derivatives along z are taken of whole lines.
@@ -301,7 +305,7 @@ fn passes(families: &[Family], outputs: &Outputs, request: &Request, reading: &R
         in_memory = reading.keep_planes;
         if request.filter.is_some() {
             add("filter", reading.whole, in_memory);
-            in_memory = true;
+            in_memory = reading.filtered;
             add("read", reading.whole, in_memory);
         }
         if reading.spectral {
@@ -440,7 +444,7 @@ fn parts(s: &SnapshotPlan) -> Vec<String> {
     [
         ("the program itself", PROGRAM_BYTES + m.threads),
         ("blocks of planes", m.blocks),
-        ("the snapshot, kept", m.kept),
+        ("the snapshot at most", m.kept),
         ("indicators, kept", m.indicators),
         ("filtered fields", m.filter),
         ("derivatives along z", m.spectral),

@@ -2,6 +2,7 @@
 
 use std::path::Path;
 
+use ropewalk::base::error::Kind;
 use ropewalk::model::request::{CutOuts, Family, Outputs, Request, Scheme, Surfaces};
 use ropewalk::model::snapshot::SnapshotRef;
 use ropewalk::read::InputSpec;
@@ -57,7 +58,7 @@ fn the_demo_is_planned() {
     }
     assert_eq!(plan.snapshots.iter().map(|s| s.time).collect::<Vec<_>>(), [Some(1.5), Some(1.6), Some(1.7)]);
     assert_eq!(passes(&plan), [("read", WHOLE), ("survey", 0), ("detection", 0), ("shapes", 0)]);
-    assert_eq!(plan.bytes(), 3 * WHOLE);
+    assert_eq!(plan.bytes(), 3 * WHOLE, "compressed: read once, and kept");
     assert_eq!(plan.memory(), plan.snapshots[0].memory.total());
     assert_eq!(plan.place, Where::Free);
     let files = [
@@ -79,15 +80,24 @@ fn the_demo_is_planned() {
 #[test]
 fn passes_follow_the_request() {
     let mut c = config(vec![demo("mhd_0001.h5")]);
-    // Nothing is kept: every pass reads all planes, and 4 more beyond each periodic face (differences of order 8).
-    c.execution = Execution { memory: 0, block_planes: Some(8), scratch: None };
-    let whole = WHOLE + 8 * PLANE;
     let of = |c: &RunConfig| plan(c).expect("a plan");
-    assert_eq!(passes(&of(&c)), [("survey", whole), ("detection", whole), ("shapes", whole)]);
-    assert_eq!(of(&c).snapshots[0].memory.blocks, 4 * 8 * PLANE);
-    c.input.periodic = [true, true, false];
-    assert_eq!(passes(&of(&c)), [("survey", WHOLE), ("detection", WHOLE), ("shapes", WHOLE)]);
-    c.input.periodic = [true; 3];
+    c.execution = Execution { block_planes: Some(8), ..Execution::default() };
+    // Indicators are kept where they fit, and planes that have to be decoded.
+    let kept = of(&c);
+    assert_eq!(passes(&kept), [("read", WHOLE), ("survey", 0), ("detection", 0), ("shapes", 0)]);
+    let Memory { blocks, indicators, kept, .. } = kept.snapshots[0].memory;
+    assert_eq!((indicators, kept), (2 * 64 * PLANE / 6, WHOLE));
+    // The block, its halo, what is read ahead, and the ends that stand beyond the periodic faces too; and what decodes them.
+    assert!(blocks > (4 * 8 + 2 * 4 + 2 * 8) * PLANE, "{blocks}");
+    // With no more than that nothing is kept: every pass reads all planes.
+    c.execution.memory = blocks;
+    assert_eq!(passes(&of(&c)), [("read", WHOLE), ("survey", WHOLE), ("detection", WHOLE), ("shapes", WHOLE)]);
+    // Less is refused, with what would do.
+    c.execution.memory = blocks - 1;
+    let refused = plan(&c).expect_err("too little");
+    assert_eq!(refused.kind(), Kind::Limit);
+    assert!(refused.to_string().contains("for the thinnest blocks of planes and their halo; hint: --memory "), "{refused}");
+    c.execution.memory = 2 * blocks;
 
     c.request.scheme = Scheme::Fd2;
     let families = ["h: helicity > 2 rms", "v: vorticity > 3 run-rms", "t: current > 0.5 peak"];
@@ -98,15 +108,16 @@ fn passes_follow_the_request() {
     let names: Vec<&str> = asked.snapshots[0].passes.iter().map(|p| p.name).collect();
     assert_eq!(names, ["read", "survey", "read", "survey", "detection", "peaks", "sums", "cut-outs", "shapes"]);
     // Two boxes of each of three families, of six components and the indicator.
-    let Memory { blocks, kept, objects, cut_outs, .. } = asked.snapshots[0].memory;
+    let Memory { threads, blocks, kept, indicators, objects, cut_outs, .. } = asked.snapshots[0].memory;
     assert_eq!(cut_outs, 2 * 3 * 7 * 64 * 64 * 64 * 4);
-    assert_eq!(asked.memory(), (30 << 20) + blocks + kept + objects + cut_outs);
+    assert_eq!(asked.memory(), (32 << 20) + threads + blocks + kept + indicators + objects + cut_outs);
     // 64 MiB are held at most.
     let many = RunConfig { outputs: Outputs { cut_outs: CutOuts::Largest(9), ..c.outputs.clone() }, ..c.clone() };
     assert_eq!(of(&many).snapshots[0].memory.cut_outs, 64 << 20);
     assert_eq!(asked.files[..5], ["catalogue.csv", "catalogue.jsonl", "columns.json", "run.json", "timing.json"]);
     assert_eq!(asked.files[7..10], ["surfaces/mhd_0001/h/ID.ply", "labels/mhd_0001/h.h5", "cutouts/mhd_0001/h/ID.h5"]);
 
+    c.execution = Execution { block_planes: Some(8), ..Execution::default() };
     c.request = Request {
         scheme: Scheme::Spectral,
         filter: Some("sharp 0.5").map(|t| ropewalk::model::request::Filter::parse(t).expect("a filter")),
@@ -118,11 +129,16 @@ fn passes_follow_the_request() {
     c.outputs = Outputs::default();
     let whole_field = of(&c);
     let reads: Vec<(&str, bool)> = passes(&whole_field).iter().map(|(n, b)| (*n, *b > 0)).collect();
-    let wanted = [("read", true), ("filter", true), ("lines", false), ("survey", false), ("detection", false), ("shapes", false)];
+    let names = ["read", "filter", "read", "lines", "survey", "detection", "shapes"];
+    let wanted: Vec<(&str, bool)> = names.into_iter().enumerate().map(|(k, n)| (n, k < 2)).collect();
     assert_eq!(reads, wanted);
-    let Memory { spectral, filter, .. } = whole_field.snapshots[0].memory;
-    assert_eq!(spectral, WHOLE, "derivatives along z of all components");
-    assert!(filter > WHOLE && filter < 3 * WHOLE, "{filter}");
+    let Memory { spectral, filter, disk, .. } = whole_field.snapshots[0].memory;
+    assert_eq!((spectral, filter, disk), (WHOLE, WHOLE, 0), "derivatives along z of all components, and these filtered");
+    // With less memory they are put aside in files, which the run folder has room for.
+    c.execution = Execution { memory: 12 << 20, ..Execution::default() };
+    let Memory { spectral, filter, disk, .. } = of(&c).snapshots[0].memory;
+    assert_eq!((spectral, filter), (0, 0));
+    assert!(disk > 2 * WHOLE, "{disk}");
 }
 
 /// A run goes through the passes that were planned (label volumes are written without one) and leaves the files that were planned, `ID` standing for one or more.
@@ -179,7 +195,7 @@ fn the_plan_is_printed_and_nothing_is_done() {
 1 of 1 snapshots can be used; nothing was read but headers, nothing is written.
 
 snapshot             samples x y z      type  components                     time    to read     memory
-good                 16 x 16 x 16       f32   u,v,w                                216.0 KiB   31.2 MiB
+good                 16 x 16 x 16       f32   u,v,w                                192.0 KiB   49.4 MiB
 
 Box
   lengths 6.283185307179586, 6.283185307179586, 6.283185307179586
@@ -191,17 +207,20 @@ Families
   v: vorticity > 2.2 rms
 
 Passes
+  read         48.0 KiB
   survey       72.0 KiB
-  detection    72.0 KiB
+  detection   in memory
   shapes       72.0 KiB
 
 Memory
-  the program itself     30.0 MiB
-  blocks of planes       96.0 KiB
+  the program itself     48.0 MiB
+  blocks of planes      144.0 KiB
+  the snapshot at most   48.0 KiB
+  indicators, kept       16.0 KiB
   objects, at most        1.2 MiB
 
-To read in all: 216.0 KiB of uncompressed values
-Memory: about 31.2 MiB, of which objects take what they need; an estimate
+To read in all: 192.0 KiB of uncompressed values
+Memory: about 49.4 MiB, of which objects take what they need; an estimate
 
 Run folder out: new
   catalogue.csv

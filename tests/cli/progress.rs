@@ -22,7 +22,7 @@ fn every_stage_is_told_at_its_beginning_and_end() {
         .collect();
     let mut wanted = vec!["- open".to_string()];
     for s in ["good", "second"] {
-        wanted.extend(["open", "survey", "detection", "shapes", "files", "tables"].map(|stage| format!("{s} {stage}")));
+        wanted.extend(["open", "read", "survey", "detection", "shapes", "files", "tables"].map(|stage| format!("{s} {stage}")));
     }
     wanted.push("second tables".into());
     let wanted: Vec<String> = wanted.iter().flat_map(|w| [format!("begin {w}"), format!("end {w}")]).collect();

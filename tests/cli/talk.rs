@@ -49,5 +49,5 @@ fn a_wrong_axis_order_is_warned_about() {
 fn verbose_names_the_stages() {
     let place = Place::with_snapshot();
     let ran = place.succeed(&format!("catalogue good.h5 {OPTIONS} -v"));
-    assert_eq!(ran.err, "open\nopen\nsurvey: 16 planes\ndetection: 16 planes\nshapes: 16 planes\nfiles\ntables\ntables\n");
+    assert_eq!(ran.err, "open\nopen\nread: 16 planes\nsurvey: 16 planes\ndetection: 16 planes\nshapes: 16 planes\nfiles\ntables\ntables\n");
 }
