@@ -136,9 +136,9 @@ fn passes_follow_the_request() {
     assert_eq!((spectral, filter, disk), (WHOLE, WHOLE, 0), "derivatives along z of all components, and these filtered");
     // With less memory they are put aside in files, which the run folder has room for.
     c.execution = Execution { memory: 12 << 20, ..Execution::default() };
-    let Memory { spectral, filter, disk, .. } = of(&c).snapshots[0].memory;
-    assert_eq!((spectral, filter), (0, 0));
-    assert!(disk > 2 * WHOLE, "{disk}");
+    let Memory { filter, disk, .. } = of(&c).snapshots[0].memory;
+    assert_eq!(filter, 0);
+    assert!(disk > WHOLE, "{disk}");
 }
 
 /// A run goes through the passes that were planned (label volumes are written without one) and leaves the files that were planned, `ID` standing for one or more.
