@@ -1,5 +1,6 @@
 //! One object that holds half of all cells beyond the level, beside as many cells in many objects: a lattice of balls with arms
-//! along the axes, which end a little before those of their neighbours, or in half of the box join them.
+//! along the axes, which end a little before those of their neighbours, or in half of the box join them, there alone or through the
+//! faces of the box too.
 
 use std::sync::Mutex;
 use std::time::Instant;
@@ -29,30 +30,41 @@ pub fn run(asked: &Asked) -> Result<(), String> {
     }
     let grid = Grid::periodic([n; 3], [std::f64::consts::TAU; 3]);
     let family = Family::parse("field: field > 1").map_err(|e| e.to_string())?;
-    let request = Request { families: vec![family], min_cells: 1, surfaces: Surfaces::None, ..Request::default() };
-    let fields = [lattice(n, false), lattice(n, true)];
+    let fields = [Joined::Nowhere, Joined::Inside, Joined::Through].map(|joined| lattice(n, joined));
+    for surfaces in [Surfaces::None, Surfaces::Each] {
+        let meshes = surfaces == Surfaces::Each;
+        let request = Request { families: vec![family.clone()], min_cells: 1, surfaces, ..Request::default() };
+        compare(asked, &grid, &fields, &request, meshes)?;
+    }
+    Ok(())
+}
+
+/// Times the analysis of each of the fields.
+fn compare(asked: &Asked, grid: &Grid, fields: &[Vec<f32>; 3], request: &Request, meshes: bool) -> Result<(), String> {
     for &threads in &asked.threads {
         let pool = Pool::new(threads).map_err(|e| e.to_string())?;
-        let mut told = [json!({}), json!({})];
-        let mut shapes = [Vec::new(), Vec::new()];
-        let times = medians(asked.runs, 2, |k| {
+        let mut told = [json!({}), json!({}), json!({})];
+        let mut shapes = [Vec::new(), Vec::new(), Vec::new()];
+        let times = medians(asked.runs, 3, |k| {
             let still = vec![0.0f32; fields[k].len()];
             let source = MemorySource::new(grid.clone(), Fields::MAGNETIC, vec![fields[k].clone(), still.clone(), still]);
             let snapshot = Snapshot { name: "bench".into(), time: None, components: Vec::new() };
             let clock = Shapes::default();
             let start = Instant::now();
             let source = AnySource::F32(Box::new(source));
-            let done = pool.run(|| analyse(source, snapshot, &request, &Execution::default(), &clock, &mut NoFiles));
+            let done = pool.run(|| analyse(source, snapshot, request, &Execution::default(), &clock, &mut NoFiles));
             let seconds = start.elapsed().as_secs_f64();
             let Ok(done) = done else { panic!("the lattice cannot be analysed") };
             let rows = &done.families[0].rows;
             let cells = rows.iter().filter_map(|r| r.get(ropewalk::model::columns::Col::Cells).as_f64());
             let (all, largest) = cells.fold((0.0, 0.0f64), |(all, largest), c| (all + c, largest.max(c)));
             shapes[k].push(clock.seconds());
-            told[k] = json!({ "objects": rows.len(), "cells": all, "largest_holds": largest / all });
+            told[k] = json!({ "objects": rows.len(), "cells": all, "largest_holds": largest / all, "meshes": meshes });
             seconds
         });
-        for (k, what) in ["many objects", "one object of half the cells"].into_iter().enumerate() {
+        for (k, what) in
+            ["many objects", "one object of half the cells", "one object of half the cells that closes on itself"].into_iter().enumerate()
+        {
             // The first run is not counted.
             told[k]["shapes_seconds"] = crate::median(shapes[k][1..].to_vec()).into();
             tell("giant", what, threads, times[k], told[k].clone());
@@ -61,8 +73,18 @@ pub fn run(asked: &Asked) -> Result<(), String> {
     Ok(())
 }
 
+/// Where the arms of neighbours join.
+#[derive(Clone, Copy, PartialEq)]
+enum Joined {
+    Nowhere,
+    /// In the lower half of the box, but not through its faces.
+    Inside,
+    /// In the lower half of the box and through its faces along x and y.
+    Through,
+}
+
 /// The field: 1 plus the distance into the nearest ball or arm, in cells.
-fn lattice(n: usize, joined: bool) -> Vec<f32> {
+fn lattice(n: usize, joined: Joined) -> Vec<f32> {
     let half = UNIT as f32 / 2.0 - 0.5;
     let place = |i: usize| (i % UNIT) as f32 - half;
     let mut out = Vec::with_capacity(n * n * n);
@@ -74,10 +96,11 @@ fn lattice(n: usize, joined: bool) -> Vec<f32> {
                 let mut depth = BALL - radius.sqrt();
                 for a in 0..3 {
                     let across = (radius - p[a] * p[a]).sqrt();
-                    // Arms go on into the next unit, but not through a face of the box or of the joined half.
+                    // Arms go on into the next unit, but not along z out of the half of the box that is joined.
                     let ahead = if p[a] > 0.0 { at[a] / UNIT + 1 } else { at[a] / UNIT };
                     let last = if a == 2 { n / UNIT / 2 } else { n / UNIT };
-                    let open = joined && at[2] < n / 2 && ahead > 0 && ahead < last;
+                    let through = joined == Joined::Through && a != 2;
+                    let open = joined != Joined::Nowhere && at[2] < n / 2 && (through || (ahead > 0 && ahead < last));
                     let along = if open { f32::INFINITY } else { END - p[a].abs() };
                     depth = depth.max((ARM - across).min(along));
                 }

@@ -1,45 +1,38 @@
 //! Walks the cubes around an object, plane by plane and row by row, and has those at its surface triangulated.
 //!
-//! The surface of a large object is made in slabs of consecutive planes, at the same time, and welded. What is a slab depends on the
-//! patch alone, and the welded surface is the one a single walk makes.
+//! While passing them, the walk notes borders between planes: what lies between two of them is a part of the surface. Measuring a
+//! large surface is shared out by its parts. Where the borders are depends on the patch alone.
 
 use std::ops::Range;
 
-use crate::base::par;
 use crate::base::real::Real;
 use crate::math::isomesher::Mesher;
 use crate::math::isosurface::Isosurface;
-use crate::math::isoweld;
 use crate::space::patch::PatchShape;
 
-/// Stored segments a slab holds at least, except the last: some ten thousand vertices.
-const SLAB: usize = 4096;
+/// Stored segments a part holds at least, except the last: some ten thousand vertices.
+const PART: usize = 4096;
 
 /// See [`crate::math::isosurface::isosurface`].
 pub(super) fn extract<T: Real>(shape: &PatchShape, values: &[T], level: f64) -> Isosurface {
-    extract_in_slabs(shape, values, level, SLAB)
+    extract_in_parts(shape, values, level, PART)
 }
 
-/// As [`extract`], with slabs of at least `least` segments.
-pub(super) fn extract_in_slabs<T: Real>(shape: &PatchShape, values: &[T], level: f64, least: usize) -> Isosurface {
+/// As [`extract`], with parts of at least `least` segments.
+fn extract_in_parts<T: Real>(shape: &PatchShape, values: &[T], level: f64, least: usize) -> Isosurface {
     let rows = Rows::new(shape);
     let layers = rows.layers(shape.period[2]);
-    let slabs = rows.slabs(&layers, least);
+    let parts = rows.parts(&layers, least);
     let walk = Walk { shape, rows: &rows, inside: mark_inside(shape) };
-    let mesh = |k: usize| {
-        let span = slabs[k].clone();
-        let begins = span.start > 0 && layers[span.start - 1][1] == layers[span.start][0];
-        let mut mesher = Mesher::new(shape, values, level, &rows.starts, &layers[span.clone()], slabs.len());
-        for at in span.clone() {
-            let [low, high] = layers[at];
-            // Planes whose vertices another slab makes: the one below, and across the seam the first.
-            let foreign = [begins && at == span.start, k > 0 && high == 0];
-            mesher.enter_plane([low, high].map(|p| rows.planes[p].at), [low, high], foreign);
+    let mut mesher = Mesher::new(shape, values, level, &rows.starts);
+    for part in parts {
+        for &[low, high] in &layers[part] {
+            mesher.enter_plane([low, high].map(|p| rows.planes[p].at), [low, high]);
             walk.layer(&mut mesher, [low, high]);
         }
-        mesher.finish()
-    };
-    if slabs.len() < 2 { isoweld::single(mesh(0)) } else { isoweld::weld(par::map_range(slabs.len(), mesh)) }
+        mesher.end_part();
+    }
+    mesher.finish()
 }
 
 /// 1 for the object's own cells, parallel to the stored cells; a few zeros more, so that words can be read up to the last cell.
@@ -108,7 +101,7 @@ impl Rows {
     }
 
     /// Spans of layers with about equally many segments.
-    fn slabs(&self, layers: &[[usize; 2]], least: usize) -> Vec<Range<usize>> {
+    fn parts(&self, layers: &[[usize; 2]], least: usize) -> Vec<Range<usize>> {
         let mut out = Vec::new();
         let (mut first, mut segments) = (0, 0);
         for (k, &[low, _]) in layers.iter().enumerate() {
@@ -229,6 +222,68 @@ impl Walk<'_> {
                 mesher.cube((masks >> (8 * byte)) as u8, x + j as i32, cells);
             }
             done += cubes;
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::base::par::Pool;
+    use crate::math::surface::measure;
+    use crate::space::patch::Interval;
+
+    /// All cells of a rough random field above a level as one object, and the values around them.
+    fn percolating(n: usize, share: u64, periodic: [bool; 3]) -> (PatchShape, Vec<f32>) {
+        let mut state = 5u64;
+        let mut field = vec![0.0f32; n * n * n];
+        for v in &mut field {
+            state = state.wrapping_mul(6364136223846793005).wrapping_add(1442695040888963407);
+            *v = ((state >> 33) % 1000) as f32 - (1000 - share) as f32;
+        }
+        // Layers without any cell: a part may begin where no other ends.
+        field[n * n * 5..n * n * 7].fill(-1.0);
+        let mut object: Vec<Interval> = Vec::new();
+        for (i, _) in field.iter().enumerate().filter(|(_, v)| **v > 0.0) {
+            let [x, y, z] = [i % n, i / n % n, i / n / n].map(|c| c as i32);
+            match object.last_mut() {
+                Some(l) if (l.z, l.y, l.x + l.len as i32) == (z, y, x) => l.len += 1,
+                _ => object.push(Interval { z, y, x, len: 1 }),
+            }
+        }
+        let period = periodic.map(|p| p.then_some(n as i32));
+        let shape = PatchShape::around(object, 1, [n; 3], periodic, period);
+        let m = n as i32;
+        let value = |x: i32, s: &crate::space::patch::Segment| field[((s.z * m + s.y) * m + x) as usize];
+        let values = shape.stored.iter().flat_map(|s| (s.x..s.x + s.len as i32).map(move |x| value(x, s))).collect();
+        (shape, values)
+    }
+
+    /// Parts of one layer or several, on any number of threads, against the whole surface as one part.
+    #[test]
+    fn parts_change_nothing() {
+        let spacing = [1.0, 0.8, 1.3];
+        for periodic in [[false; 3], [true; 3], [false, true, true], [true, false, false]] {
+            for share in [300, 30] {
+                let (shape, values) = percolating(20, share, periodic);
+                let whole = extract_in_parts(&shape, &values, 0.0, usize::MAX);
+                assert_eq!(whole.parts.len(), 1);
+                let areas = whole.area_vectors(spacing);
+                let (measures, normals) = (measure(&whole, spacing), whole.vertex_normals(&areas));
+                for (least, threads) in [(1, 1), (1, 2), (1, 3), (40, 2), (150, 3), (400, 2)] {
+                    let pool = Pool::new(threads).unwrap();
+                    pool.run(|| {
+                        let cut = extract_in_parts(&shape, &values, 0.0, least);
+                        assert!(cut.parts.len() > 1 || least > 40);
+                        assert_eq!(cut.parts.iter().map(|p| p.triangles.len()).sum::<usize>(), cut.triangles.len());
+                        assert_eq!(cut.parts.iter().map(|p| p.vertices.len() + p.centres.len()).sum::<usize>(), cut.points.len());
+                        assert_eq!(Isosurface { parts: whole.parts.clone(), ..cut.clone() }, whole);
+                        assert_eq!(cut.area_vectors(spacing), areas);
+                        assert_eq!(cut.vertex_normals(&areas), normals);
+                        assert_eq!(measure(&cut, spacing), measures, "{periodic:?} {share} {least}");
+                    });
+                }
+            }
         }
     }
 }

@@ -1,9 +1,9 @@
-//! Triangulates one cube at a time: welded vertices on grid edges, face decisions, caps of the loops, and which triangles meet
+//! Triangulates one cube at a time: shared vertices on grid edges, face decisions, caps of the loops, and which triangles meet
 //! at an edge.
 
 use crate::base::real::Real;
 use crate::math::isocubes::next;
-use crate::math::isosurface::{EdgeRef, cross, dot};
+use crate::math::isosurface::{EdgeRef, Isosurface, Part, cross, dot};
 use crate::math::isotable::{AXIS_BIT, EDGES, FACES, LONGEST, Loop, TABLE, Table};
 use crate::space::patch::PatchShape;
 
@@ -40,38 +40,34 @@ pub(super) struct Mesher<'a, T> {
     values: &'a [T],
     level: f64,
     table: &'static Table,
-    slab: Slab,
-    /// What to add to 3 × stored index for the position in `slab.vertices`, for the lower and the upper plane.
+    sheet: Sheet,
+    /// What to add to 3 × stored index for the position in `sheet.vertices`, for the lower and the upper plane.
     shift: [usize; 2],
     y: [i32; 2],
     z: [i32; 2],
-    /// Whether the vertices in the lower and in the upper plane belong to another slab.
-    foreign: [bool; 2],
     starts: &'a [usize],
 }
 
-/// The surface of some consecutive layers of cubes. Vertices are numbered within it, those that belong to another slab included.
-pub(super) struct Slab {
-    pub period: [Option<i32>; 3],
-    pub points: Vec<[f64; 3]>,
-    pub edges: Vec<EdgeRef>,
+/// The surface of the layers of cubes so far.
+struct Sheet {
+    period: [Option<i32>; 3],
+    points: Vec<[f64; 3]>,
+    edges: Vec<EdgeRef>,
     /// The third vertex of a triangle at a centre is `NONE`: its index is known when all edge vertices are counted.
-    pub triangles: Vec<[u32; 3]>,
+    triangles: Vec<[u32; 3]>,
     /// For each side 0-1, 1-2, 2-0 of each triangle the triangle across, where that came before.
-    pub behind: Vec<[u32; 3]>,
+    behind: Vec<[u32; 3]>,
     /// First triangle of each centre vertex's fan.
-    pub fans: Vec<u32>,
-    pub centre_points: Vec<[f64; 3]>,
-    pub centre_starts: Vec<u32>,
-    pub centre_vertices: Vec<u32>,
-    /// Vertices that belong to another slab: index here, stored plane, 3 × cell within the plane + axis. Ascending.
-    pub borrowed: Vec<(u32, usize, usize)>,
-    /// Sides without a triangle that came before, on cubes at a foreign plane: triangle, side, place in `last`.
-    pub loose: Vec<(u32, u8, u32)>,
-    /// For each edge vertex one of a lower index in the same piece of the slab's surface, or itself.
-    pub parents: Vec<u32>,
+    fans: Vec<u32>,
+    centre_points: Vec<[f64; 3]>,
+    centre_starts: Vec<u32>,
+    centre_vertices: Vec<u32>,
+    /// For each edge vertex one of a lower index in the same piece of the surface, or itself.
+    parents: Vec<u32>,
     /// The last triangle on each of the four cube faces at every edge vertex.
-    pub last: Vec<[u32; 4]>,
+    last: Vec<[u32; 4]>,
+    /// How many edge vertices, centre vertices and triangles there were at the end of each part.
+    ends: Vec<[usize; 3]>,
     /// Three vertex indices (edges along x, y, z) a stored cell, for a few planes at a time, each in its slot.
     vertices: Vec<u32>,
     slot_len: usize,
@@ -79,7 +75,7 @@ pub(super) struct Slab {
     held: [usize; 3],
 }
 
-impl Slab {
+impl Sheet {
     /// Where the vertices of a stored plane are kept.
     fn slot(&self, plane: usize) -> usize {
         if self.period[2].is_some() && plane == 0 { 2 } else { plane & 1 }
@@ -113,16 +109,10 @@ impl Slab {
             *parent = (*parent).min(low);
         }
     }
-
-    /// The vertex on an edge: 3 × cell within the plane + axis. The plane is the slab's last, or the first of all.
-    pub fn vertex(&self, plane: usize, edge: usize) -> u32 {
-        let slot = self.slot(plane);
-        if self.held[slot] == plane { self.vertices[slot * self.slot_len + edge] } else { NONE }
-    }
 }
 
 /// The first of all vertices known to be in the piece of `v`; shortens the way there.
-pub(super) fn root(parents: &mut [u32], mut v: u32) -> u32 {
+fn root(parents: &mut [u32], mut v: u32) -> u32 {
     while parents[v as usize] != v {
         let up = parents[parents[v as usize] as usize];
         parents[v as usize] = up;
@@ -132,25 +122,25 @@ pub(super) fn root(parents: &mut [u32], mut v: u32) -> u32 {
 }
 
 /// Makes one piece of two; returns its root.
-pub(super) fn join(parents: &mut [u32], a: u32, b: u32) -> u32 {
+fn join(parents: &mut [u32], a: u32, b: u32) -> u32 {
     let (a, b) = (root(parents, a), root(parents, b));
     parents[a.max(b) as usize] = a.min(b);
     a.min(b)
 }
 
 impl<'a, T: Real> Mesher<'a, T> {
-    /// A mesher for the given layers, pairs of stored planes; `starts` are the first stored cells of all planes and one past the last.
-    pub fn new(shape: &PatchShape, values: &'a [T], level: f64, starts: &'a [usize], layers: &[[usize; 2]], slabs: usize) -> Mesher<'a, T> {
-        let largest = layers.iter().flatten().map(|&p| starts[p + 1] - starts[p]).max().unwrap_or(0);
+    /// A mesher for the cubes of a patch; `starts` are the first stored cells of all planes and one past the last.
+    pub fn new(shape: &PatchShape, values: &'a [T], level: f64, starts: &'a [usize]) -> Mesher<'a, T> {
+        let largest = starts.windows(2).map(|w| w[1] - w[0]).max().unwrap_or(0);
         let slots = if shape.period[2].is_some() { 3 } else { 2 };
         // Every interval has two crossings along x, rough surfaces have as many along y and z; two triangles a vertex.
-        // A third more saves most surfaces from being copied to a larger place.
-        let expected = (if slabs > 1 { 14 } else { 8 }) * shape.object.len() / slabs;
+        // A third more saves most surfaces from being moved to a larger place. What is not used is never touched.
+        let expected = 8 * shape.object.len();
         Mesher {
             values,
             level,
             table: &TABLE,
-            slab: Slab {
+            sheet: Sheet {
                 period: shape.period,
                 points: Vec::with_capacity(expected),
                 edges: Vec::with_capacity(expected),
@@ -160,10 +150,9 @@ impl<'a, T: Real> Mesher<'a, T> {
                 centre_points: Vec::new(),
                 centre_starts: vec![0],
                 centre_vertices: Vec::new(),
-                borrowed: Vec::new(),
-                loose: Vec::new(),
                 parents: Vec::with_capacity(expected),
                 last: Vec::with_capacity(expected),
+                ends: Vec::new(),
                 vertices: vec![NONE; slots * 3 * largest],
                 slot_len: 3 * largest,
                 held: [usize::MAX; 3],
@@ -171,25 +160,22 @@ impl<'a, T: Real> Mesher<'a, T> {
             shift: [0; 2],
             y: [0; 2],
             z: [0; 2],
-            foreign: [false; 2],
             starts,
         }
     }
 
-    /// Goes on to the cubes between two planes: their coordinates, their places among the stored planes, and which belong to
-    /// another slab.
-    pub fn enter_plane(&mut self, z: [i32; 2], planes: [usize; 2], foreign: [bool; 2]) {
+    /// Goes on to the cubes between two planes: their coordinates and their places among the stored planes.
+    pub fn enter_plane(&mut self, z: [i32; 2], planes: [usize; 2]) {
         self.z = z;
-        self.foreign = foreign;
-        let slab = &mut self.slab;
+        let sheet = &mut self.sheet;
         for (k, plane) in planes.into_iter().enumerate() {
-            let slot = slab.slot(plane);
-            let begin = slot * slab.slot_len;
+            let slot = sheet.slot(plane);
+            let begin = slot * sheet.slot_len;
             let first = self.starts[plane];
-            if slab.held[slot] != plane {
-                slab.held[slot] = plane;
+            if sheet.held[slot] != plane {
+                sheet.held[slot] = plane;
                 let cells = self.starts[plane + 1] - first;
-                slab.vertices[begin..begin + 3 * cells].fill(NONE);
+                sheet.vertices[begin..begin + 3 * cells].fill(NONE);
             }
             self.shift[k] = begin.wrapping_sub(3 * first);
         }
@@ -233,10 +219,10 @@ impl<'a, T: Real> Mesher<'a, T> {
             let edge = EDGES[l.edges[k] as usize];
             let (corner, axis) = (edge.corner as usize, edge.axis as usize);
             let slot = (3 * cells[corner] + axis).wrapping_add(self.shift[corner >> 1 & 1]);
-            let mut id = self.slab.vertices[slot];
+            let mut id = self.sheet.vertices[slot];
             if id == NONE {
-                id = self.slab.edges.len() as u32;
-                self.slab.vertices[slot] = id;
+                id = self.sheet.edges.len() as u32;
+                self.sheet.vertices[slot] = id;
                 let upper = corner | AXIS_BIT[axis];
                 let height = |corner: usize| height(mask, corner, self.values[cells[corner]].wide() - self.level);
                 let (a, b) = (height(corner), height(upper));
@@ -246,97 +232,124 @@ impl<'a, T: Real> Mesher<'a, T> {
             ids[k] = id;
             if N != 3 {
                 spots[k] = CORNERS[corner];
-                spots[k][axis] = self.slab.edges[id as usize].t;
+                spots[k][axis] = self.sheet.edges[id as usize].t;
             }
         }
-        self.slab.hang_together(&ids[..n]);
+        self.sheet.hang_together(&ids[..n]);
         self.cap(&ids[..n], &spots[..n], &l.keys, x);
     }
 
     #[inline]
     fn add_vertex(&mut self, x: i32, corner: usize, axis: usize, cells: [usize; 2], t: f64) {
-        let slab = &mut self.slab;
+        let sheet = &mut self.sheet;
         let side = corner >> 1 & 1;
-        if self.foreign[side] && axis != 2 {
-            // The seam alone leads to a foreign upper plane, the first.
-            let plane = if side == 1 { 0 } else { self.starts.partition_point(|&s| s <= cells[0]) - 1 };
-            slab.borrowed.push((slab.edges.len() as u32, plane, 3 * (cells[0] - self.starts[plane]) + axis));
-        }
-        let x = if corner & AXIS_BIT[0] == 0 { x } else { next(x, slab.period[0]) };
+        let x = if corner & AXIS_BIT[0] == 0 { x } else { next(x, sheet.period[0]) };
         let mut point = [x, self.y[corner & 1], self.z[side]].map(f64::from);
         point[axis] += t;
-        slab.points.push(point);
-        slab.edges.push(EdgeRef { a: cells[0] as u32, b: cells[1] as u32, t });
-        slab.last.push([NONE; 4]);
-        slab.parents.push(NONE);
+        sheet.points.push(point);
+        sheet.edges.push(EdgeRef { a: cells[0] as u32, b: cells[1] as u32, t });
+        sheet.last.push([NONE; 4]);
+        sheet.parents.push(NONE);
     }
 
     /// Closes a loop by triangles. `ids` and `spots` are its vertices, the latter relative to the cube's lower corner.
     #[inline(always)]
     fn cap(&mut self, ids: &[u32], spots: &[[f64; 3]], keys: &[u8; LONGEST], x: i32) {
-        let first = self.slab.triangles.len() as u32;
+        let first = self.sheet.triangles.len() as u32;
         match (ids, apex(spots)) {
             (&[a, b, c], _) => {
-                let s = [0, 1, 2].map(|k| self.meet(ids, keys, k, first, k));
-                self.slab.triangles.push([a, b, c]);
-                self.slab.behind.push(s);
+                let s = [0, 1, 2].map(|k| self.meet(ids, keys, k, first));
+                self.sheet.triangles.push([a, b, c]);
+                self.sheet.behind.push(s);
             }
             (_, Some(apex)) if ids.len() == 4 => {
                 // Which diagonal is shorter is as good as random: no branch on it.
                 let turn = |k: usize| (k + apex) & 3;
                 let [a, b, c, d] = [0, 1, 2, 3].map(|k| ids[turn(k)]);
-                let s = [0, 1].map(|k| self.meet(ids, keys, turn(k), first, k));
-                let t = [2, 3].map(|k| self.meet(ids, keys, turn(k), first + 1, k - 1));
-                self.slab.triangles.extend([[a, b, c], [a, c, d]]);
-                self.slab.behind.extend([[s[0], s[1], NONE], [first, t[0], t[1]]]);
+                let s = [0, 1].map(|k| self.meet(ids, keys, turn(k), first));
+                let t = [2, 3].map(|k| self.meet(ids, keys, turn(k), first + 1));
+                self.sheet.triangles.extend([[a, b, c], [a, c, d]]);
+                self.sheet.behind.extend([[s[0], s[1], NONE], [first, t[0], t[1]]]);
             }
             (_, Some(apex)) => {
                 let turned = FAN_OF_FIVE[apex];
                 let [a, b, c, d, e] = turned.map(|k| ids[k]);
                 let mut s = [NONE; 5];
-                for (k, (triangle, side)) in [(0, 0), (0, 1), (1, 1), (2, 1), (2, 2)].into_iter().enumerate() {
-                    s[k] = self.meet(ids, keys, turned[k], first + triangle, side);
+                for (k, triangle) in [0, 0, 1, 2, 2].into_iter().enumerate() {
+                    s[k] = self.meet(ids, keys, turned[k], first + triangle);
                 }
-                self.slab.triangles.extend([[a, b, c], [a, c, d], [a, d, e]]);
-                self.slab.behind.extend([[s[0], s[1], NONE], [first, s[2], NONE], [first + 1, s[3], s[4]]]);
+                self.sheet.triangles.extend([[a, b, c], [a, c, d], [a, d, e]]);
+                self.sheet.behind.extend([[s[0], s[1], NONE], [first, s[2], NONE], [first + 1, s[3], s[4]]]);
             }
             (_, None) => {
                 let n = ids.len();
                 for k in 0..n {
                     let (triangle, before) = (first + k as u32, (k + n - 1) % n);
-                    let rim = self.meet(ids, keys, before, triangle, 0);
-                    self.slab.triangles.push([ids[before], ids[k], NONE]);
+                    let rim = self.meet(ids, keys, before, triangle);
+                    self.sheet.triangles.push([ids[before], ids[k], NONE]);
                     let onward = if k + 1 == n { first } else { NONE };
                     let back = if k == 0 { NONE } else { triangle - 1 };
-                    self.slab.behind.push([rim, onward, back]);
+                    self.sheet.behind.push([rim, onward, back]);
                 }
-                let slab = &mut self.slab;
-                slab.fans.push(first);
+                let sheet = &mut self.sheet;
+                sheet.fans.push(first);
                 let base = [x, self.y[0], self.z[0]].map(f64::from);
-                slab.centre_points.push(std::array::from_fn(|axis| {
+                sheet.centre_points.push(std::array::from_fn(|axis| {
                     let sum: f64 = spots.iter().map(|p| p[axis]).sum();
                     base[axis] + sum / spots.len() as f64
                 }));
-                slab.centre_vertices.extend_from_slice(ids);
-                slab.centre_starts.push(slab.centre_vertices.len() as u32);
+                sheet.centre_vertices.extend_from_slice(ids);
+                sheet.centre_starts.push(sheet.centre_vertices.len() as u32);
             }
         }
     }
 
-    /// Leaves a triangle at segment `k` of a loop, one of its sides, and returns the one that was left there from the other cube.
+    /// Leaves a triangle at segment `k` of a loop and returns the one that was left there from the other cube.
     #[inline(always)]
-    fn meet(&mut self, ids: &[u32], keys: &[u8; LONGEST], k: usize, triangle: u32, side: usize) -> u32 {
+    fn meet(&mut self, ids: &[u32], keys: &[u8; LONGEST], k: usize, triangle: u32) -> u32 {
         let (vertex, face) = (ids[keys[k] as usize >> 2], keys[k] & 3);
-        let before = std::mem::replace(&mut self.slab.last[vertex as usize][face as usize], triangle);
-        if self.foreign != [false; 2] && before == NONE {
-            self.slab.loose.push((triangle, side as u8, 4 * vertex + u32::from(face)));
-        }
-        before
+        std::mem::replace(&mut self.sheet.last[vertex as usize][face as usize], triangle)
     }
 
-    /// The slab when all its layers are done.
-    pub fn finish(self) -> Slab {
-        self.slab
+    /// Ends a part of the surface.
+    ///
+    /// # Panics
+    /// When there are 2^32 vertices or triangles.
+    pub fn end_part(&mut self) {
+        let sheet = &mut self.sheet;
+        let (vertices, centres, triangles) = (sheet.edges.len(), sheet.fans.len(), sheet.triangles.len());
+        let most = (vertices + centres).max(triangles);
+        assert!(most < NONE as usize, "isosurface: expected fewer than 2^32 vertices and triangles, got {most}");
+        sheet.ends.push([vertices, centres, triangles]);
+    }
+
+    /// The surface when all layers are done and the last part has ended.
+    pub fn finish(self) -> Isosurface {
+        let mut sheet = self.sheet;
+        let edges = sheet.edges.len();
+        for (i, &first) in sheet.fans.iter().enumerate() {
+            let sides = (sheet.centre_starts[i + 1] - sheet.centre_starts[i]) as usize;
+            for triangle in &mut sheet.triangles[first as usize..][..sides] {
+                triangle[2] = (edges + i) as u32;
+            }
+        }
+        sheet.points.append(&mut sheet.centre_points);
+        let mut before = [0; 3];
+        let part = |end: [usize; 3]| {
+            let [v, c, t] = std::mem::replace(&mut before, end);
+            Part { vertices: v..end[0], centres: edges + c..edges + end[1], triangles: t..end[2] }
+        };
+        Isosurface {
+            period: sheet.period,
+            points: sheet.points,
+            triangles: sheet.triangles,
+            edges: sheet.edges,
+            centre_starts: sheet.centre_starts,
+            centre_vertices: sheet.centre_vertices,
+            behind: sheet.behind,
+            parents: sheet.parents,
+            parts: sheet.ends.into_iter().map(part).collect(),
+        }
     }
 }
 

@@ -61,11 +61,11 @@ pub struct Isosurface {
     pub(super) behind: Vec<[u32; 3]>,
     /// For each edge vertex another of the same piece of the surface, of lower index, or itself for the first of a piece.
     pub(super) parents: Vec<u32>,
-    /// What was made together, in order: small surfaces have one part. Work on a large one is shared out by these.
+    /// What lies between some planes, in order: small surfaces have one part. Work on a large one is shared out by these.
     pub(super) parts: Vec<Part>,
 }
 
-/// Vertices and triangles made together: edge vertices, centre vertices, triangles. Triangles of a part have vertices of their own
+/// Vertices and triangles that follow one another: edge vertices, centre vertices, triangles. Triangles of a part have vertices of their own
 /// and of parts before.
 #[derive(Debug, Clone, PartialEq)]
 pub(super) struct Part {
@@ -210,6 +210,11 @@ impl Isosurface {
 
     /// The surface without triangles across a seam: along axes with a period, positions continue from triangle to
     /// triangle, and vertices are repeated where the surface meets itself a period further on.
+    ///
+    /// A surface of more than 2^18 triangles is cut at the faces of the box instead, which takes one pass in the order of triangles:
+    /// every triangle keeps its first vertex where it is stored and has the nearest images of the other two. Vertices come in the
+    /// order in which they are stored, then the repeated ones in the order of their first use. One that is needed beyond a face alone
+    /// is not repeated but moved there.
     pub fn unwrapped(&self) -> Unwrapped {
         unwrap::unwrap(self)
     }

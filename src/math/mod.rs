@@ -10,7 +10,6 @@ mod isocubes;
 mod isomesher;
 pub mod isosurface;
 mod isotable;
-mod isoweld;
 pub mod lanes;
 pub mod lines;
 pub mod moments;

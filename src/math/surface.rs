@@ -55,8 +55,10 @@ pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]
     // The usual case is summed in registers.
     let parts =
         if count == 1 { vec![one_piece(surface, spacing, normals)] } else { several_pieces(surface, spacing, normals, &piece_of, count) };
-    let pairs = surface.behind.iter().flatten().filter(|&&t| t != NONE).count();
-    let open_edges = 3 * surface.triangles.len() - 2 * pairs;
+    // Every piece counted its edges between two triangles.
+    let counted: i64 = parts.iter().map(|p| p.euler_surface).sum();
+    let pairs = (surface.points.len() + surface.triangles.len()) as i64 - counted;
+    let open_edges = (3 * surface.triangles.len() as i64 - 2 * pairs) as usize;
     let closed = open_edges == 0 && surface.period == [None; 3];
     let total = |f: fn(&Piece) -> f64| parts.iter().map(f).sum::<f64>();
     let bodies: Vec<&Piece> = parts.iter().filter(|p| closed && p.volume > 0.0).collect();
@@ -65,7 +67,7 @@ pub fn measure_with(surface: &Isosurface, spacing: [f64; 3], normals: &[[f64; 3]
         area: total(|p| p.area),
         volume: closed.then(|| total(|p| p.volume)),
         mean_curvature_integral: total(|p| p.mean_curvature_integral),
-        euler_surface: parts.iter().map(|p| p.euler_surface).sum::<i64>() - open_edges as i64,
+        euler_surface: counted - open_edges as i64,
         bodies: bodies.len(),
         handles: if closed { parts.iter().map(|p| 1 - p.euler_surface / 2).sum() } else { 0 },
         largest: bodies.into_iter().max_by(larger).copied(),

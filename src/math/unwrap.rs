@@ -1,8 +1,16 @@
-//! Lays a surface on the torus out in space, cut where it meets itself a period further on.
+//! Lays a surface on the torus out in space: a small one cut where it meets itself a period further on, a large one at the faces
+//! of the box.
 
-use std::collections::VecDeque;
+use std::collections::{HashMap, VecDeque};
 
+use crate::base::par;
 use crate::math::isosurface::Isosurface;
+
+/// Surfaces of more triangles are cut at the faces of the box.
+const WALKED: usize = 1 << 18;
+
+/// Triangles a worker goes through at a time.
+const TRIANGLES: usize = 1 << 14;
 
 /// A surface laid out without triangles across a seam.
 #[derive(Debug, Clone, Default, PartialEq)]
@@ -28,6 +36,12 @@ pub(super) fn unwrap(surface: &Isosurface) -> Unwrapped {
     if surface.period == [None; 3] {
         return Unwrapped { points: surface.points.clone(), triangles: surface.triangles.clone(), source: (0..count as u32).collect() };
     }
+    if surface.triangles.len() > WALKED { cut_at_faces(surface) } else { walk(surface) }
+}
+
+/// From triangle to triangle across their edges, so that the surface stays in one piece as far as it can.
+fn walk(surface: &Isosurface) -> Unwrapped {
+    let count = surface.points.len();
     let across = surface.neighbours();
     let mut copies: Vec<Copy> = Vec::with_capacity(count);
     let mut newest = vec![NONE; count];
@@ -45,8 +59,7 @@ pub(super) fn unwrap(surface: &Isosurface) -> Unwrapped {
             at = copies.len() as u32;
             copies.push(Copy { image, next: newest[v as usize] });
             newest[v as usize] = at;
-            let p = surface.points[v as usize];
-            out.points.push(std::array::from_fn(|axis| p[axis] + (image[axis] * surface.period[axis].unwrap_or(0)) as f64));
+            out.points.push(point_at(surface, v, image));
             out.source.push(v);
         }
         at
@@ -76,6 +89,55 @@ pub(super) fn unwrap(surface: &Isosurface) -> Unwrapped {
         }
     }
     out
+}
+
+/// Every triangle where its first vertex is stored. A walk would go through memory at random; here all but the triangles across a
+/// face are copied.
+fn cut_at_faces(surface: &Isosurface) -> Unwrapped {
+    let triangles = &surface.triangles;
+    let count = surface.points.len();
+    let across: Vec<Vec<(usize, [[i32; 3]; 3])>> = par::map_range(triangles.len().div_ceil(TRIANGLES), |k| {
+        let first = k * TRIANGLES;
+        let span = &triangles[first..triangles.len().min(first + TRIANGLES)];
+        let images = span.iter().map(|t| t.map(|v| image_beside(surface, t[0], [0; 3], v)));
+        images.enumerate().filter(|(_, images)| *images != [[0; 3]; 3]).map(|(i, images)| (first + i, images)).collect()
+    });
+    // Which vertices are needed where they are stored.
+    let mut stays = vec![false; count];
+    let mut crossing = across.iter().flatten().peekable();
+    for (i, t) in triangles.iter().enumerate() {
+        let images = crossing.next_if(|(at, _)| *at == i).map_or([[0; 3]; 3], |c| c.1);
+        for (&v, image) in t.iter().zip(images) {
+            stays[v as usize] |= image == [0; 3];
+        }
+    }
+    let mut out = Unwrapped { points: surface.points.clone(), triangles: triangles.clone(), source: (0..count as u32).collect() };
+    let mut placed: HashMap<(u32, [i32; 3]), u32> = HashMap::new();
+    for (i, images) in across.into_iter().flatten() {
+        let corners = triangles[i];
+        for (k, image) in images.into_iter().enumerate().filter(|(_, image)| *image != [0; 3]) {
+            let v = corners[k];
+            out.triangles[i][k] = *placed.entry((v, image)).or_insert_with(|| {
+                let point = point_at(surface, v, image);
+                if !stays[v as usize] {
+                    // A tip beyond a face, needed there alone: it moves.
+                    stays[v as usize] = true;
+                    out.points[v as usize] = point;
+                    return v;
+                }
+                out.points.push(point);
+                out.source.push(v);
+                out.source.len() as u32 - 1
+            });
+        }
+    }
+    out
+}
+
+/// Where a vertex lies at an image.
+fn point_at(surface: &Isosurface, v: u32, image: [i32; 3]) -> [f64; 3] {
+    let p = surface.points[v as usize];
+    std::array::from_fn(|axis| p[axis] + (image[axis] * surface.period[axis].unwrap_or(0)) as f64)
 }
 
 /// The image of `v` nearest to `known` at its given image.

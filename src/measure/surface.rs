@@ -65,9 +65,11 @@ pub fn shape<T: Real>(grid: &Grid, patch: &Patch<T>, trace: Trace) -> Shaped {
 /// Moves points of a stretched grid to where they would have the same position if spacing were equal.
 fn straighten(grid: &Grid, points: &mut [[f64; 3]]) {
     for a in (0..3).filter(|&a| grid.stretched[a].is_some()) {
-        for p in points.iter_mut() {
-            p[a] = (grid.position(a, p[a]) - grid.origin[a]) / grid.spacing[a];
-        }
+        par::for_chunks(points, VERTICES, |_, chunk| {
+            for p in chunk {
+                p[a] = (grid.position(a, p[a]) - grid.origin[a]) / grid.spacing[a];
+            }
+        });
     }
 }
 

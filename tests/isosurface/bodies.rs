@@ -303,7 +303,7 @@ fn ball_across_the_faces_equals_the_shifted_ball() {
 }
 
 /// Checks an unwrapped surface: no long triangle, same area and orientation, few repeated vertices.
-fn check_unwrapped(surface: &Isosurface, spacing: Vector) {
+pub fn check_unwrapped(surface: &Isosurface, spacing: Vector) {
     let laid = surface.unwrapped();
     assert_eq!(laid.triangles.len(), surface.triangles.len());
     assert_eq!(laid.points.len(), laid.source.len());
