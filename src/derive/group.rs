@@ -103,10 +103,8 @@ impl<T: Real> Group<T> {
         out: &mut Vec<T>,
     ) -> bool {
         let is_here = |g: &Group<T>| (g.first..g.first + 4).contains(&at) && g.there[at - g.first];
-        if !is_here(self) {
-            if at < from || at + 4 > to || !self.make(at, stencil, row) {
-                return false;
-            }
+        if !is_here(self) && (at < from || at + 4 > to || !self.make(at, stencil, row)) {
+            return false;
         }
         let k = at - self.first;
         self.there[k] = false;

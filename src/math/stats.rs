@@ -23,7 +23,7 @@ impl Scale {
     pub fn for_bound(bound: f64) -> Scale {
         let exponent = match libm::frexp(bound) {
             _ if !(bound > 0.0 && bound.is_finite()) => 0,
-            (half, e) if half == 0.5 => e - 1,
+            (0.5, e) => e - 1,
             (_, e) => e,
         };
         let e = (60 - exponent).clamp(-1000, 1000);

@@ -199,8 +199,8 @@ fn sums(c: &Context, object: &Object, r: &mut Row, flags: &mut Vec<&str>) {
             r.number(Col::LorentzSin2Fluct, ratio(sum(Sum::Lorentz2Fluct), sum(Sum::Current2Field2Fluct)));
         }
     }
-    let undirected = (c.fields.velocity && !c.in_plane[0] && r.get(Col::LambSin2) == &Value::Missing)
-        || (c.fields.magnetic && !c.in_plane[1] && r.get(Col::LorentzSin2) == &Value::Missing);
+    let undirected = (c.fields.velocity && !c.in_plane[0] && r.get(Col::LambSin2) == Value::Missing)
+        || (c.fields.magnetic && !c.in_plane[1] && r.get(Col::LorentzSin2) == Value::Missing);
     if undirected {
         flags.push("undefined_direction");
     }

@@ -77,7 +77,7 @@ pub struct Rows<T> {
 }
 
 impl<T> Rows<T> {
-    /// The cosines in the order of [`crate::model::object::COSINES`].
+    /// The cosines in the order of [`crate::model::contents::COSINES`].
     pub fn cosines(&self) -> [&[T]; 5] {
         [&self.cos_uw, &self.cos_jb, &self.cos_ub, &self.cos_jb_fluct, &self.cos_ub_fluct]
     }

@@ -120,7 +120,7 @@ pub struct Survey {
 /// Alignment of vectors over a set of cells.
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct Alignment {
-    /// Cosines in the order of [`crate::model::object::COSINES`].
+    /// Cosines in the order of [`crate::model::contents::COSINES`].
     pub cosines: [Cosine; 5],
     /// Sum of |u×ω|².
     pub lamb2: f64,
