@@ -282,7 +282,7 @@ fn one(
     let snapshot = Snapshot { name: name.to_string(), time: opened.time, components: opened.components };
     let families = request.families_for(fields)?;
     let flat = opened.source.grid().is_flat();
-    let mut files = SnapshotFiles::new(folder, name, families, fields, flat, request, &config.outputs, clock)?;
+    let mut files = SnapshotFiles::new(folder, name, families, fields, flat, request, &config.outputs, execution.memory, clock)?;
     match analyse(opened.source, snapshot, request, execution, clock, &mut files) {
         Ok(mut analysis) => {
             clock.stage("files", 0);

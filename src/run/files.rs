@@ -14,6 +14,7 @@ use crate::model::request::{CutOuts, Family, Outputs, Request, Surfaces};
 use crate::model::sink::{CutPlanes, FamilyObjects, ObjectSink};
 use crate::model::source::Fields;
 use crate::model::surface::SurfaceMesh;
+use crate::run::memory::faces_kept;
 use crate::run::meshes::MeshFiles;
 use crate::space::cut::CutBox;
 
@@ -47,12 +48,22 @@ impl<'a> SnapshotFiles<'a> {
         flat: bool,
         request: &Request,
         outputs: &'a Outputs,
+        memory: u64,
         observe: &'a dyn Observe,
     ) -> Result<Self> {
         let meshes = if request.surfaces == Surfaces::None {
             None
         } else {
-            Some(MeshFiles::new(folder, snapshot, families, fields, &request.mesh_values, request.surfaces, flat)?)
+            Some(MeshFiles::new(
+                folder,
+                snapshot,
+                families,
+                fields,
+                &request.mesh_values,
+                request.surfaces,
+                flat,
+                faces_kept(memory) as usize,
+            )?)
         };
         let named = if let CutOuts::Named(list) = &outputs.cut_outs { list.len() } else { 0 };
         let (cuts, open) = (Vec::new(), VecDeque::new());

@@ -6,7 +6,8 @@ use crate::base::budget::{rounded_up, size};
 use crate::base::error::{Error, Result};
 use crate::base::real::Real;
 use crate::derive::{Deriver, Plan, Room, filter, z_lines_needs, z_lines_stay};
-use crate::model::request::{Family, Request};
+use crate::export::ply::FACES_KEPT;
+use crate::model::request::{Family, Request, Surfaces};
 use crate::model::source::{AnySource, PlaneSource};
 use crate::run::analysis::Execution;
 use crate::run::kept::kept_bytes;
@@ -45,6 +46,11 @@ pub struct Arrangement {
     pub objects: u64,
 }
 
+/// Bytes of the faces of mesh files that wait in memory until all vertices are written.
+pub fn faces_kept(memory: u64) -> u64 {
+    (memory / 16).min(FACES_KEPT as u64)
+}
+
 /// Shares out a budget.
 ///
 /// What the request cannot do without comes first, in memory or else in files (filtered fields, derivatives along z); then what saves
@@ -81,6 +87,9 @@ pub fn arrange<T: Real>(
             )));
     }
     let mut left = memory - blocks;
+    if request.surfaces == Surfaces::Together {
+        left = left.saturating_sub(faces_kept(memory));
+    }
     let scratch = execution.scratch.as_deref();
     let together = source.natural_planes().clamp(1, grid.n[2]);
     let (mut filter_room, mut filtered, mut lines_room, mut lines) = (0, 0, 0, 0);

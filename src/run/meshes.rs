@@ -5,7 +5,7 @@ use std::io::{self, BufWriter, Read, Seek, SeekFrom, Write};
 
 use crate::base::error::{Error, Result};
 use crate::export::atomic::Folder;
-use crate::export::ply::{FACES_KEPT, Joins, PlyWriter};
+use crate::export::ply::{Joins, PlyWriter};
 use crate::model::request::{Family, Indicator, Surfaces};
 use crate::model::sink::ObjectSink;
 use crate::model::source::Fields;
@@ -22,6 +22,7 @@ pub struct MeshFiles<'a> {
     /// Every file begun.
     begun: Vec<String>,
     together: Vec<Option<Writer<'a>>>,
+    faces_kept: usize,
 }
 
 type Writer<'a> = PlyWriter<BufWriter<File>, Helper<'a>>;
@@ -80,7 +81,7 @@ const FACES: &str = ".faces";
 const BUFFER: usize = 1 << 18;
 
 impl<'a> MeshFiles<'a> {
-    /// Prepares the files of a snapshot; `surfaces` must not be [`Surfaces::None`].
+    /// Prepares the files of a snapshot, of whose faces up to `faces_kept` bytes wait in memory; `surfaces` must not be [`Surfaces::None`].
     pub fn new(
         folder: &'a Folder,
         snapshot: &str,
@@ -89,6 +90,7 @@ impl<'a> MeshFiles<'a> {
         extras: &[Indicator],
         surfaces: Surfaces,
         flat: bool,
+        faces_kept: usize,
     ) -> Result<Self> {
         folder.subfolder(&format!("surfaces/{snapshot}"))?;
         if surfaces == Surfaces::Each {
@@ -99,6 +101,7 @@ impl<'a> MeshFiles<'a> {
         let together = families.iter().map(|_| None).collect();
         let values = SurfaceMesh::value_names(fields, extras);
         Ok(MeshFiles {
+            faces_kept,
             folder,
             snapshot: snapshot.to_string(),
             families,
@@ -129,7 +132,7 @@ impl<'a> MeshFiles<'a> {
             format!("family {}", self.families[family]),
         ];
         let writer = PlyWriter::new(out, helper, self.joins, self.values.clone(), comments).map_err(|e| self.failed(name, &e))?;
-        Ok(writer.keeping(FACES_KEPT / self.families.len().max(1)))
+        Ok(writer.keeping(self.faces_kept / self.families.len().max(1)))
     }
 
     fn failed(&self, name: &str, e: &std::io::Error) -> Error {

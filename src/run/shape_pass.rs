@@ -22,6 +22,9 @@ use crate::run::waves::{Cost, group_bytes, waves};
 use crate::space::grid::Grid;
 use crate::space::slab::Block;
 
+/// Bytes of an object besides its cells: what it is known by, what it holds, its measured outline and its row.
+const OBJECT_BYTES: u64 = 2560;
+
 /// Which objects get a surface and a mesh.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct ShapePlan {
@@ -66,6 +69,8 @@ impl<T: Real> Pass<'_, T> {
         let extras = if meshes { plan.mesh_extras.clone() } else { Vec::new() };
         let tiles = self.tiles();
         let carried = Patches::<T>::carried(fields, extras.len()) * size_of::<T>();
+        let objects: usize = found.iter().map(|f| f.objects.len()).sum();
+        let _objects = self.budget.reserve(objects as u64 * OBJECT_BYTES, "objects and their rows", "a larger --min-cells")?;
         let left = self.budget.left();
         let cost = Cost { values: vec![carried as u64; found.len()], max_cells: plan.max_cells, left };
         let waves = waves(&grid, found, &self.ranges, &cost)?;
