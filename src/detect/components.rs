@@ -60,7 +60,8 @@ impl Labeller {
         // Parent, offset and spans of the sets, slot, frame and object of a component.
         const COMPONENT: usize = size_of::<Tally>() + 48;
         let rows = self.rows.len() * (size_of::<(usize, usize)>() + size_of::<usize>());
-        (self.runs.capacity() * RUN + self.tallies.capacity() * COMPONENT + rows) as u64
+        // What arrays have room for beyond their ends is never touched.
+        (self.runs.len() * RUN + self.tallies.len() * COMPONENT + rows) as u64
     }
 
     fn row(&self, y: usize, z: usize) -> &[Run] {

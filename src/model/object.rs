@@ -151,6 +151,14 @@ pub struct Detected {
     pub members: Members,
 }
 
+impl Detected {
+    /// Bytes that the cells take.
+    pub fn bytes(&self) -> u64 {
+        let intervals: usize = self.objects.iter().map(|o| o.intervals.capacity()).sum();
+        (intervals * size_of::<Interval>()) as u64 + self.members.bytes()
+    }
+}
+
 /// The member of a row that belongs to an object left out for its size.
 pub const LEFT_OUT: u32 = u32::MAX;
 

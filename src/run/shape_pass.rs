@@ -71,6 +71,7 @@ impl<T: Real> Pass<'_, T> {
         let carried = Patches::<T>::carried(fields, extras.len()) * size_of::<T>();
         let objects: usize = found.iter().map(|f| f.objects.len()).sum();
         let _objects = self.budget.reserve(objects as u64 * OBJECT_BYTES, "objects and their rows", "a larger --min-cells")?;
+        let _cells = self.budget.reserve(found.iter().map(Detected::bytes).sum(), "cells beyond the level", "a stronger level")?;
         let left = self.budget.left();
         let cost = Cost { values: vec![carried as u64; found.len()], max_cells: plan.max_cells, left };
         let waves = waves(&grid, found, &self.ranges, &cost)?;
