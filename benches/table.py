@@ -293,7 +293,7 @@ class Bench:
     def line_giant(self):
         lines = self.inside(self.a.bench, "giant", "--runs", str(self.a.runs), "--size", str(self.a.small))
         for many, one in zip(lines[::2], lines[1::2]):
-            what = f"one object of half the cells, {threads(one)}"
+            what = f"{one['what']}{', with meshes' if one.get('meshes') else ''}, {threads(one)}"
             cells = lambda x: f"{x['objects']} objects, {x['cells']:.0f} cells, largest {100 * x['largest_holds']:.1f} %"
             said = [f"{x['seconds']:.3f} s ({cells(x)})" for x in (one, many)]
             said[1] = "ours: " + said[1]
