@@ -125,7 +125,7 @@ impl<T: Real> Ready<T> {
 
     /// Whether reading takes longer than memory of our own would: what the system has in its cache is read again for less.
     fn is_slow(&mut self) -> Result<bool> {
-        const BYTES_PER_SECOND: f64 = 1e9;
+        const BYTES_PER_SECOND: f64 = 4e8;
         if self.source.held().is_some() {
             return Ok(false);
         }
