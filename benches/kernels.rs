@@ -129,7 +129,6 @@ fn indicator_of_eight_planes(bencher: Bencher, name: &str) {
         mean_field: None,
         viscosity: None,
         resistivity: None,
-        portable: false,
     };
     let deriver = Deriver::<f32>::new(&grid, Fields::VELOCITY, plan);
     let mut scratch = Scratch::default();

@@ -98,7 +98,6 @@ pub fn run(asked: &Asked) -> Result<(), String> {
             mean_field: None,
             viscosity: None,
             resistivity: None,
-            portable: false,
         };
         let deriver = Deriver::<f32>::new(&planes.grid, set.fields, plan);
         let work = Work { grid: &planes.grid, deriver: &deriver, batches: &batches, need: set.need };

@@ -48,9 +48,6 @@ pub struct Plan {
     pub viscosity: Option<f64>,
     /// Magnetic diffusivity, as the viscosity.
     pub resistivity: Option<f64>,
-    /// Whether everything is computed by one path on every machine. Nothing changes here: no row kernel and no transform depends
-    /// on the machine.
-    pub portable: bool,
 }
 
 /// The fewest samples that an axis of a grid must have for a scheme.
@@ -114,7 +111,7 @@ impl<T: Real> Deriver<T> {
     /// # Panics
     /// When an axis has fewer than [`fewest_samples`].
     pub fn new(grid: &Grid, fields: Fields, plan: Plan) -> Self {
-        let Plan { indicators, extras, scheme, frame, mean_field, viscosity, resistivity, portable: _ } = plan;
+        let Plan { indicators, extras, scheme, frame, mean_field, viscosity, resistivity } = plan;
         let stencils = std::array::from_fn(|a| match &grid.stretched[a] {
             _ if a == 2 && grid.is_flat() => AxisStencil::flat(),
             Some(s) => AxisStencil::stretched(scheme, &s.positions),

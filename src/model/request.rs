@@ -163,7 +163,7 @@ pub struct Request {
     pub surfaces: Surfaces,
     /// Objects of fewer cells get no mesh. Default 0: every listed object.
     pub surface_min_cells: u64,
-    /// Whether everything is computed by one path on every machine, the slowest, instead of the fastest each one has.
+    /// Whether everything is computed by one path on every machine; so far nothing has to be given up for it, and it is recorded.
     pub portable: bool,
 }
 

@@ -12,7 +12,6 @@ use crate::model::request::Family;
 use crate::model::rows::Need;
 use crate::model::sink::{CutPlanes, FamilyObjects, ObjectSink};
 use crate::run::passes::Pass;
-use crate::run::stream::blocks;
 use crate::space::cut::CutBox;
 use crate::space::slab::Block;
 
@@ -67,8 +66,7 @@ impl<T: Real> Pass<'_, T> {
         let grid = self.source.grid().clone();
         self.observe.stage("cut-outs", grid.n[2] as u64);
         let values = (self.source.fields().components() + 1) * size_of::<T>();
-        let reach = |z| deriver.reach(z);
-        blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
+        self.stream(deriver, |block| {
             let pieces = pieces(wanted, block.z.clone());
             if pieces.is_empty() {
                 return Ok(());

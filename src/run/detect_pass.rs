@@ -12,7 +12,6 @@ use crate::model::object::Detected;
 use crate::model::rows::Need;
 use crate::run::kept::Kept;
 use crate::run::passes::Pass;
-use crate::run::stream::blocks;
 
 /// Planes and rows of a tile where indicators are in memory.
 const TILE: [usize; 2] = [16, 64];
@@ -76,32 +75,24 @@ impl<T: Real> Pass<'_, T> {
             }
         } else {
             let tiles = self.tiles();
-            blocks(
-                self.source,
-                &self.ranges,
-                deriver.halo(),
-                |z| deriver.reach(z),
-                self.buffers,
-                self.observe,
-                |block| {
-                    let ready = deriver.prepare(block, Need::default())?;
-                    add(par::map(&tiles, |_, rows_y| {
-                        let mut scratch = Scratch::default();
-                        let mut sweeps = sweeps(rows_y, &block.z);
-                        for z in block.z.clone() {
-                            scratch.expect(Ahead { rows: rows_y.clone(), planes: z..z + 1 });
-                            for y in rows_y.clone() {
-                                deriver.row(block, &ready, z, y, 0..grid.n[0], Need::default(), &mut scratch);
-                                grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
-                                for (sweep, c) in sweeps.iter_mut().zip(criteria) {
-                                    sweep.add_row(&grid, &scratch.rows.indicators[c.family], &scratch.rows.weights, y, z);
-                                }
+            self.stream(deriver, |block| {
+                let ready = deriver.prepare(block, Need::default())?;
+                add(par::map(&tiles, |_, rows_y| {
+                    let mut scratch = Scratch::default();
+                    let mut sweeps = sweeps(rows_y, &block.z);
+                    for z in block.z.clone() {
+                        scratch.expect(Ahead { rows: rows_y.clone(), planes: z..z + 1 });
+                        for y in rows_y.clone() {
+                            deriver.row(block, &ready, z, y, 0..grid.n[0], Need::default(), &mut scratch);
+                            grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
+                            for (sweep, c) in sweeps.iter_mut().zip(criteria) {
+                                sweep.add_row(&grid, &scratch.rows.indicators[c.family], &scratch.rows.weights, y, z);
                             }
                         }
-                        sweeps.into_iter().map(TileSweep::close).collect()
-                    }))
-                },
-            )?;
+                    }
+                    sweeps.into_iter().map(TileSweep::close).collect()
+                }))
+            })?;
         }
         let found = par::map_owned(labellers, |k, l| l.finish(min_cells[k]));
         self.observe.done();

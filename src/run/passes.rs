@@ -3,12 +3,15 @@
 use std::ops::Range;
 
 use crate::base::budget::Budget;
+use crate::base::error::Result;
 use crate::base::observe::Observe;
 use crate::base::real::Real;
+use crate::derive::Deriver;
 use crate::measure::patches::Wanted;
 use crate::model::source::PlaneSource;
-use crate::run::stream::Buffers;
+use crate::run::stream::{Buffers, blocks};
 use crate::space::grid::Grid;
+use crate::space::slab::Block;
 
 /// Everything a pass needs besides its own request.
 pub struct Pass<'a, T> {
@@ -34,6 +37,11 @@ fn tiles(grid: &Grid, components: usize, value_bytes: usize) -> Vec<Range<usize>
 }
 
 impl<T: Real> Pass<'_, T> {
+    /// Streams the planes through `each`, block by block with the halo that derivatives take.
+    pub(super) fn stream(&mut self, deriver: &Deriver<T>, each: impl FnMut(&Block<'_, T>) -> Result<()>) -> Result<()> {
+        blocks(self.source, &self.ranges, deriver.halo(), |z| deriver.reach(z), self.buffers, self.observe, each)
+    }
+
     /// Rows a work item.
     pub(super) fn tiles(&self) -> Vec<Range<usize>> {
         tiles(self.source.grid(), self.source.fields().components(), size_of::<T>())

@@ -48,7 +48,6 @@ pub(super) fn derived(families: &[Family], request: &Request) -> Plan {
         mean_field: None,
         viscosity: request.viscosity,
         resistivity: request.resistivity,
-        portable: request.portable,
     }
 }
 

@@ -17,7 +17,6 @@ use crate::model::sink::ObjectSink;
 use crate::model::source::Fields;
 use crate::model::surface::SurfaceMesh;
 use crate::run::passes::{Pass, joined, place};
-use crate::run::stream::blocks;
 use crate::run::waves::{Cost, group_bytes, waves};
 use crate::space::grid::Grid;
 use crate::space::slab::Block;
@@ -88,39 +87,31 @@ impl<T: Real> Pass<'_, T> {
                 .zip(wave)
                 .map(|((c, f), objects)| Patches::new(grid.clone(), c.family, c.side, fields, extras.clone(), &f.objects, objects))
                 .collect();
-            blocks(
-                self.source,
-                &self.ranges,
-                deriver.halo(),
-                |z| deriver.reach(z),
-                self.buffers,
-                self.observe,
-                |block| {
-                    for (p, f) in patches.iter_mut().zip(found.iter_mut()) {
-                        p.begin_block(block.z.clone(), &tiles, &mut f.objects);
-                    }
-                    // The meshes made before are written while rows are derived.
-                    let waiting = std::mem::take(&mut pending);
-                    let (written, derived) = par::join(|| write(waiting, sink), || shaping.derive(block, &patches, found));
-                    written.and(derived)?;
-                    for (k, p) in patches.iter_mut().enumerate() {
-                        let mut done = p.end_block(block.z.end);
-                        while !done.is_empty() {
-                            let later = done.split_off(group(&done, group_bytes(left)));
-                            let waiting = std::mem::take(&mut pending);
-                            let (written, mut shaped) = par::join(|| write(waiting, sink), || shaping.measure(k, done, &found[k]));
-                            written?;
-                            done = later;
-                            pending.push((k, shaped.iter_mut().filter_map(|s| s.mesh.take()).collect()));
-                            for s in shaped {
-                                let place = s.object;
-                                out[k][place] = Some(s);
-                            }
+            self.stream(deriver, |block| {
+                for (p, f) in patches.iter_mut().zip(found.iter_mut()) {
+                    p.begin_block(block.z.clone(), &tiles, &mut f.objects);
+                }
+                // The meshes made before are written while rows are derived.
+                let waiting = std::mem::take(&mut pending);
+                let (written, derived) = par::join(|| write(waiting, sink), || shaping.derive(block, &patches, found));
+                written.and(derived)?;
+                for (k, p) in patches.iter_mut().enumerate() {
+                    let mut done = p.end_block(block.z.end);
+                    while !done.is_empty() {
+                        let later = done.split_off(group(&done, group_bytes(left)));
+                        let waiting = std::mem::take(&mut pending);
+                        let (written, mut shaped) = par::join(|| write(waiting, sink), || shaping.measure(k, done, &found[k]));
+                        written?;
+                        done = later;
+                        pending.push((k, shaped.iter_mut().filter_map(|s| s.mesh.take()).collect()));
+                        for s in shaped {
+                            let place = s.object;
+                            out[k][place] = Some(s);
                         }
                     }
-                    Ok(())
-                },
-            )?;
+                }
+                Ok(())
+            })?;
             write(std::mem::take(&mut pending), sink)?;
             self.observe.done();
         }

@@ -15,7 +15,6 @@ use crate::model::request::Side;
 use crate::model::rows::Need;
 use crate::model::source::Fields;
 use crate::run::passes::{Pass, joined};
-use crate::run::stream::blocks;
 
 /// A stretch of a row that belongs to a part.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
@@ -102,8 +101,7 @@ impl<T: Real> Pass<'_, T> {
         let mut patches: Patches<T> =
             Patches::new(grid.clone(), criterion.family, criterion.side, Fields::default(), Vec::new(), &regions.objects, all);
         let mut out: Vec<(usize, Vec<Grown>)> = Vec::new();
-        let reach = |z| deriver.reach(z);
-        blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
+        self.stream(deriver, |block| {
             patches.begin_block(block.z.clone(), &tiles, &mut regions.objects);
             let ready = deriver.prepare(block, Need::default())?;
             par::map_range(tiles.len(), |t| {
@@ -132,8 +130,7 @@ impl<T: Real> Pass<'_, T> {
         let tiles = self.tiles();
         let mut tallies = vec![Tally::empty(); count];
         self.observe.stage("sums", grid.n[2] as u64);
-        let reach = |z| deriver.reach(z);
-        blocks(self.source, &self.ranges, deriver.halo(), reach, self.buffers, self.observe, |block| {
+        self.stream(deriver, |block| {
             let ready = deriver.prepare(block, Need::default())?;
             let sums = par::map(&tiles, |_, rows_y| {
                 let mut scratch = Scratch::default();

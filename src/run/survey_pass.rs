@@ -81,65 +81,57 @@ impl<T: Real> Pass<'_, T> {
         let wanted: Vec<bool> = families.iter().map(|f| f.levels().iter().any(|l| matches!(l, Level::Volume(_)))).collect();
         let quantiles: Mutex<Vec<Vec<Option<Quantiles>>>> = Mutex::new(Vec::new());
         let every = Need { extras: companions > 0, alignment, ..SURVEY };
-        blocks(
-            self.source,
-            &self.ranges,
-            deriver.halo(),
-            |z| deriver.reach(z),
-            self.buffers,
-            self.observe,
-            |block| {
-                let ready = deriver.prepare(block, Need { truncation: true, ..every })?;
-                let places = match &mut kept {
-                    Some(kept) => kept.rows(block.z.clone(), &tiles),
-                    None => tiles.iter().map(|_| Vec::new()).collect(),
-                };
-                let parts = par::map_owned(places, |t, mut places| {
-                    let mut counts = take(&quantiles).unwrap_or_else(|| wanted.iter().map(|w| w.then(Quantiles::default)).collect());
-                    let mut scratch = Scratch::default();
-                    let mut per_plane: Vec<(Survey, Alignment)> =
-                        block.z.clone().map(|_| (moments::empty(families, companions), Alignment::default())).collect();
-                    for planes in groups(&block.z) {
-                        scratch.expect(Ahead { rows: tiles[t].clone(), planes: planes.clone() });
-                        for (y, z) in tiles[t].clone().flat_map(|y| planes.clone().map(move |z| (y, z))) {
-                            let part = &mut per_plane[z - block.z.start];
-                            let sampled = y % moments::SAMPLE_ROWS == 0;
-                            let need = Need { truncation: sampled, ..every };
-                            deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);
-                            grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
-                            let rows = &scratch.rows;
-                            moments::add_row(&mut part.0, rows, sampled, deriver.inner(y, z));
-                            if alignment {
-                                box_alignment::add_row(&mut part.1, rows);
-                            }
-                            for (q, row) in counts.iter_mut().zip(&rows.indicators) {
-                                match (q, rows.weights.as_slice()) {
-                                    (None, _) => {}
-                                    (Some(q), []) => q.add(row),
-                                    (Some(q), weights) => q.add_weighted(row, weights),
-                                }
-                            }
-                            let place = (z - block.z.start) * tiles[t].len() + y - tiles[t].start;
-                            if let Some(row) = places.get_mut(place) {
-                                row.iter_mut().for_each(|(family, to)| to.copy_from_slice(&rows.indicators[*family]));
+        self.stream(deriver, |block| {
+            let ready = deriver.prepare(block, Need { truncation: true, ..every })?;
+            let places = match &mut kept {
+                Some(kept) => kept.rows(block.z.clone(), &tiles),
+                None => tiles.iter().map(|_| Vec::new()).collect(),
+            };
+            let parts = par::map_owned(places, |t, mut places| {
+                let mut counts = take(&quantiles).unwrap_or_else(|| wanted.iter().map(|w| w.then(Quantiles::default)).collect());
+                let mut scratch = Scratch::default();
+                let mut per_plane: Vec<(Survey, Alignment)> =
+                    block.z.clone().map(|_| (moments::empty(families, companions), Alignment::default())).collect();
+                for planes in groups(&block.z) {
+                    scratch.expect(Ahead { rows: tiles[t].clone(), planes: planes.clone() });
+                    for (y, z) in tiles[t].clone().flat_map(|y| planes.clone().map(move |z| (y, z))) {
+                        let part = &mut per_plane[z - block.z.start];
+                        let sampled = y % moments::SAMPLE_ROWS == 0;
+                        let need = Need { truncation: sampled, ..every };
+                        deriver.row(block, &ready, z, y, 0..grid.n[0], need, &mut scratch);
+                        grid.relative_weights(0..grid.n[0], y, z, &mut scratch.rows.weights);
+                        let rows = &scratch.rows;
+                        moments::add_row(&mut part.0, rows, sampled, deriver.inner(y, z));
+                        if alignment {
+                            box_alignment::add_row(&mut part.1, rows);
+                        }
+                        for (q, row) in counts.iter_mut().zip(&rows.indicators) {
+                            match (q, rows.weights.as_slice()) {
+                                (None, _) => {}
+                                (Some(q), []) => q.add(row),
+                                (Some(q), weights) => q.add_weighted(row, weights),
                             }
                         }
+                        let place = (z - block.z.start) * tiles[t].len() + y - tiles[t].start;
+                        if let Some(row) = places.get_mut(place) {
+                            row.iter_mut().for_each(|(family, to)| to.copy_from_slice(&rows.indicators[*family]));
+                        }
                     }
-                    give(&quantiles, counts);
-                    per_plane
-                });
-                for k in 0..block.z.len() {
-                    let mut plane = (moments::empty(families, companions), Alignment::default());
-                    for tile in &parts {
-                        moments::merge(&mut plane.0, &tile[k].0);
-                        plane.1.merge(&tile[k].1);
-                    }
-                    moments::merge(&mut survey, &plane.0);
-                    whole.merge(&plane.1);
                 }
-                Ok(())
-            },
-        )?;
+                give(&quantiles, counts);
+                per_plane
+            });
+            for k in 0..block.z.len() {
+                let mut plane = (moments::empty(families, companions), Alignment::default());
+                for tile in &parts {
+                    moments::merge(&mut plane.0, &tile[k].0);
+                    plane.1.merge(&tile[k].1);
+                }
+                moments::merge(&mut survey, &plane.0);
+                whole.merge(&plane.1);
+            }
+            Ok(())
+        })?;
         while let Some(counts) = take(&quantiles) {
             for (s, q) in survey.indicators.iter_mut().zip(counts) {
                 match (&mut s.quantiles, q) {

@@ -25,7 +25,6 @@ pub fn plan(scheme: Scheme, indicators: &[Indicator]) -> Plan {
         mean_field: None,
         viscosity: None,
         resistivity: None,
-        portable: false,
     }
 }
 

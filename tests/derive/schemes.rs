@@ -188,24 +188,3 @@ fn memory_for_z_lines_is_known_beforehand() {
     let grid = Grid::periodic([1024; 3], [1.0; 3]);
     assert_eq!(z_lines_bytes(&grid, Fields::VELOCITY, 4), 12 << 30);
 }
-
-/// One path serves every machine already: asking for it changes no bit.
-#[test]
-fn portable_plans_derive_the_same_bits() {
-    let grid = Grid::periodic([18, 15, 20], [TAU, 1.0, 2.0]);
-    let mut source = sampled::<f32, 3>(&grid, Fields::VELOCITY, rough);
-    for scheme in ALL {
-        let [usual, portable] = [false, true].map(|portable| {
-            let need = Need { strain: true, divergence: true, truncation: true, ..Need::default() };
-            let plan = ropewalk::derive::Plan { portable, ..plan(scheme, &[I::Lambda2]) };
-            let mut bits: Vec<u32> = Vec::new();
-            each_row(&mut source, &plan, need, 6, |_, _, r| {
-                for row in [&r.w2, &r.strain2, &r.div_u, &r.div_u_miss, &r.indicators[0]] {
-                    bits.extend(row.iter().map(|v| v.to_bits()));
-                }
-            });
-            bits
-        });
-        assert!(usual == portable, "{scheme:?}");
-    }
-}

@@ -380,7 +380,7 @@ pub const SETTINGS: [Setting; 51] = [
         Key::Portable,
         ("physics", "portable"),
         ("portable", "yes|no"),
-        "Compute by one path on every machine, the slowest, so that the bytes are the same on all of them; else each takes the fastest it has",
+        "Ask for one path on every machine, so that the bytes are the same on all of them, and have run.json say so; so far nothing has to be given up for it",
         ("true", "yes"),
     )
     .switch()
